@@ -1,0 +1,5 @@
+"""The commands (see workflow for the work)."""
+
+
+def main() -> None:
+    """Entry point."""
