@@ -1,0 +1,400 @@
+"""A file and its mapping to a canonical table: the one place where cells become values."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+from sms_resource.findings import Findings
+from sms_resource.loaders.headers import element_of_header, find_header, nearest, same_unit
+from sms_resource.loaders.parsing import (
+    COORDINATE_CODES,
+    MISSING_CODES,
+    Parsed,
+    parse_identifiers,
+    parse_numbers,
+)
+from sms_resource.loaders.places import mark, report_rows
+from sms_resource.loaders.reading import RawTable, read_table
+from sms_resource.loaders.source import TableSource
+from sms_resource.loaders.tables import (
+    BELOW_DETECTION,
+    BLANK,
+    GRADE_ROLES,
+    MEASURED,
+    SCHEMAS,
+    Column,
+    element_columns,
+    empty_table,
+)
+from sms_resource.loaders.words import METHOD_WORDS, WORDS, allowed, plain_word
+from sms_resource.units import ELEMENTS, column_element, element_column, grade_factor, known_unit
+
+
+def load_table(
+    source: TableSource, role: str, elements: tuple[str, ...] = (), optional_elements: tuple[str, ...] = ()
+) -> tuple[pd.DataFrame, Findings]:
+    """Read a file into the canonical table of ``role``.
+
+    Parameters
+    ----------
+    source : TableSource
+    role : str
+        A key of ``SCHEMAS``.
+    elements : tuple of str
+        Elements that a table of grades must have.
+    optional_elements : tuple of str
+        Elements that are read where the file has them, and noted where it has not.
+
+    Returns
+    -------
+    frame : DataFrame
+        All columns of the role; as many rows as the file has records, none where it could not be read.
+    findings : Findings
+    """
+    raw, findings = read_table(source)
+    wanted = tuple(dict.fromkeys((*elements, *optional_elements))) if role in GRADE_ROLES else ()
+    if raw is None:
+        return mark(empty_table(role, wanted), source.name, {}), findings
+    return _Maker(source, role, raw, findings, wanted, frozenset(elements)).make(), findings
+
+
+class _Maker:
+    """One pass over the columns of one table."""
+
+    def __init__(
+        self,
+        source: TableSource,
+        role: str,
+        raw: RawTable,
+        findings: Findings,
+        elements: tuple[str, ...],
+        needed: frozenset[str],
+    ) -> None:
+        self.source, self.role, self.raw, self.findings = source, role, raw, findings
+        self.elements, self.needed = elements, needed
+        self.file = source.name
+        self.mapping = {self._plain(key): header for key, header in source.columns.items()}
+        self.constants = {self._plain(key): value for key, value in source.constants.items()}
+        self.headers: dict[str, str] = {}
+        self.results: dict[str, Parsed] = {}
+
+    @staticmethod
+    def _plain(key: str) -> str:
+        """An element stands under its column, whichever way it is named."""
+        plain = key.strip().casefold()
+        return element_column(plain) if plain in ELEMENTS else plain
+
+    def make(self) -> pd.DataFrame:
+        """The canonical frame."""
+        self._check_mapping()
+        data: dict[str, Any] = {}
+        for column in SCHEMAS[self.role]:
+            data[column.name] = self._values(column)
+            if column.kind == "result":
+                parsed = self.results.get(column.name)
+                blank = np.full(len(self.raw.rows), BLANK, dtype=np.int8)
+                data[f"{column.name}_status"] = parsed.status if parsed else blank
+                data[f"{column.name}_limit"] = parsed.limit if parsed else np.full(len(self.raw.rows), np.nan)
+        if self.role in GRADE_ROLES:
+            for element in self.elements:
+                data.update(self._grades(element))
+        frame = pd.DataFrame(data) if len(self.raw.rows) else empty_table(self.role, self.elements)
+        frame["source_row"] = self.raw.rows
+        for column in SCHEMAS[self.role]:
+            if column.kind in ("identifier", "text"):
+                frame[column.name] = frame[column.name].astype("str")
+        self._note_unused()
+        return mark(frame, self.file, self.headers)
+
+    # -- the mapping ------------------------------------------------------------------------------------
+
+    def _check_mapping(self) -> None:
+        known = [column.name for column in SCHEMAS[self.role]]
+        grades = self.role in GRADE_ROLES
+        for given in (self.mapping, self.constants):
+            for key in given:
+                if key not in known and not (grades and column_element(key)):
+                    near = nearest(key, known + (list(ELEMENTS) if grades else []))
+                    self.findings.error(
+                        "mapping-unknown",
+                        f"The study maps {key!r}, which is no column of {self.role}.",
+                        f"Did you mean {near!r}?" if near else f"Columns are: {', '.join(known)}.",
+                        file=self.file,
+                        column=key,
+                    )
+        for key, unit in self.source.units.items():
+            if key.casefold() not in ELEMENTS and column_element(key.casefold()) is None:
+                self.findings.error(
+                    "mapping-unknown",
+                    f"The study gives a unit for {key!r}, which is no element.",
+                    f"Elements are: {', '.join(ELEMENTS)}.",
+                    file=self.file,
+                    column=key,
+                )
+            elif not known_unit(unit):
+                self.findings.error(
+                    "unit-unknown",
+                    f"The unit {unit!r} of {key} is not known.",
+                    "Use one of %, ppm, ppb, g/t, mg/kg, kg/t, oz/t.",
+                    file=self.file,
+                    column=self.mapping.get(self._plain(key), key),
+                )
+
+    def _header(self, name: str, *, required: bool, quiet: bool = False) -> str | None:
+        """The file's column for a canonical one; a finding where a column that must be there is not."""
+        declared = self.mapping.get(name)
+        found = find_header(declared or name, self.raw.headers)
+        if len(found) > 1:
+            self.findings.error(
+                "column-duplicate",
+                f"The file has {len(found)} columns that may be {name}: {', '.join(found)}.",
+                "Rename one of them, or name the right one in the study.",
+                file=self.file,
+                row=self.source.header_row,
+                column=found[0],
+            )
+        if found:
+            self.headers[name] = found[0]
+            return found[0]
+        if (required or declared) and not quiet and name not in self.constants:
+            near = nearest(declared or name, self.raw.headers)
+            self.findings.error(
+                "column-missing",
+                f"There is no column {declared or name!r}"
+                + (f" for {name}" if declared else "")
+                + f". The file has: {', '.join(h for h in self.raw.headers if h)[:300]}.",
+                (f"The nearest is {near!r}: " if near else "")
+                + f'map it in the study with columns = {{ {name} = "..." }}.',
+                file=self.file,
+                row=self.source.header_row,
+                column=declared or name,
+            )
+        return None
+
+    def _note_unused(self) -> None:
+        used = set(self.headers.values())
+        unused = [header for header in self.raw.headers if header and header not in used]
+        if unused:
+            self.findings.note(
+                "columns-unused", f"Columns that were not read: {', '.join(unused)}.", file=self.file
+            )
+
+    # -- values -----------------------------------------------------------------------------------------
+
+    def _values(self, column: Column) -> Any:
+        count = len(self.raw.rows)
+        place = {"easting": 0, "northing": 1}.get(column.name)
+        from_points = place is not None and self.raw.points is not None
+        header = self._header(column.name, required=column.required and not from_points)
+        text = column.kind in ("identifier", "text")
+        if header is None:
+            if place is not None and self.raw.points is not None:
+                return self.raw.points[place].to_numpy(dtype=np.float64)
+            constant = self.constants.get(column.name)
+            if text:
+                word = column.default if constant is None else str(constant)
+                return self._words(column.name, [word] * count)
+            return self._constant(column.name, constant)
+        if column.name in self.constants:
+            self.findings.warning(
+                "constant-ignored",
+                f"The study gives a constant for {column.name}, but the file has it; the file was followed.",
+                "Take the constant out of the study.",
+                file=self.file,
+                column=header,
+            )
+        if text:
+            return self._words(column.name, self._identifiers(header, column))
+        codes = COORDINATE_CODES if column.kind == "coordinate" else MISSING_CODES
+        result = column.kind == "result"
+        parsed = parse_numbers(self.raw.column(header), decimal=self.raw.decimal, codes=codes, limits=result)
+        self._report(parsed, header)
+        if result:
+            self.results[column.name] = parsed
+        return parsed.values
+
+    def _constant(self, name: str, constant: str | float | None) -> np.ndarray:
+        value = np.nan
+        if constant is not None:
+            try:
+                value = float(constant)
+            except ValueError:
+                self.findings.error(
+                    "not-a-number",
+                    f"The constant {constant!r} of {name} is not a number.",
+                    "Write a plain number in the study.",
+                    file=self.file,
+                    column=name,
+                )
+        return np.full(len(self.raw.rows), value)
+
+    def _identifiers(self, header: str, column: Column) -> list[str]:
+        texts, numeric, dates = parse_identifiers(self.raw.column(header))
+        where: dict[str, Any] = {"file": self.file, "column": header}
+        rows = self.raw.rows
+        if dates:
+            report_rows(
+                self.findings, "error", "date-in-identifier", rows[dates],
+                lambda i: f"The name is stored as a date ({texts[dates[i]]}).",
+                "The spreadsheet has turned a name into a date: format the column as text and enter it again.", **where,
+            )  # fmt: skip
+        if numeric and column.kind == "identifier":
+            self.findings.note(
+                "identifier-number",
+                f"{len(numeric)} names are stored as numbers, so leading zeros may be lost.",
+                "Format the column as text in the source if names have leading zeros.",
+                row=int(rows[numeric[0]]),
+                **where,
+            )
+        if column.kind == "identifier" and column.required:
+            blank = [i for i, text in enumerate(texts) if not text]
+            report_rows(
+                self.findings, "error", "identifier-missing", rows[blank],
+                f"The row has no {column.name}.", "Complete the row, or remove it.", **where,
+            )  # fmt: skip
+        return texts
+
+    def _words(self, name: str, texts: list[str]) -> list[str]:
+        """Canonical words of the columns that take only a few."""
+        if name == "method":
+            return [METHOD_WORDS.get(plain_word(text), text.strip().lower()) for text in texts]
+        if name == "element":
+            return [_element_word(text) for text in texts]
+        if name not in WORDS:
+            return texts
+        known = WORDS[name]
+        bad = [i for i, text in enumerate(texts) if plain_word(text) not in known and text not in known]
+        header = self.headers.get(name, name)
+        report_rows(
+            self.findings, "error", "word-unknown", self.raw.rows[bad],
+            lambda i: f"“{texts[bad[i]]}” is not a word for {name}.",
+            f"Use one of: {allowed(name)}.", file=self.file, column=header,
+        )  # fmt: skip
+        return [known.get(plain_word(text), known.get(text, text)) for text in texts]
+
+    def _report(self, parsed: Parsed, header: str) -> None:
+        rows = self.raw.rows
+        groups: dict[str, list[int]] = {}
+        for i in sorted(parsed.problems):
+            groups.setdefault(parsed.problems[i][0], []).append(i)
+        for code, at in groups.items():
+            # a first data row without any number is most often a row of units
+            units_row = at[0] == 0 and len(at) == 1 and len(rows) > 3 and code == "not-a-number"
+            remedy = parsed.problems[at[0]][2]
+            remedy += " If this is a row of units, remove it." if units_row else ""
+            report_rows(
+                self.findings, "error", code, rows[at], [parsed.problems[i][1] for i in at], remedy,
+                file=self.file, column=header,
+            )  # fmt: skip
+        coded = np.flatnonzero(parsed.coded)
+        if len(coded):
+            from sms_resource.loaders.places import spans
+
+            self.findings.warning(
+                "missing-code",
+                f"{len(coded)} cells hold a code such as -999 in place of a value; they were read as blank "
+                f"(rows {spans(rows[coded])}).",
+                "Leave the cells empty.",
+                file=self.file,
+                row=int(rows[coded[0]]),
+                column=header,
+            )
+
+    # -- grades -----------------------------------------------------------------------------------------
+
+    def _grades(self, element: str) -> dict[str, Any]:
+        """The three columns of one element, in its canonical unit."""
+        name = element_column(element)
+        count = len(self.raw.rows)
+        header = self._element_header(element, name)
+        if header is None:
+            value = self._constant(name, self.constants.get(name))
+            status = np.where(np.isnan(value), BLANK, MEASURED).astype(np.int8)
+            return dict(zip(element_columns((element,)), (value, status, np.full(count, np.nan))))
+        self.headers[name] = header
+        parsed = parse_numbers(self.raw.column(header), decimal=self.raw.decimal, limits=True)
+        self._report(parsed, header)
+        factor = self._factor(element, name, header)
+        limits = self.source.detection_limits
+        bare = (parsed.status == BELOW_DETECTION) & np.isnan(parsed.limit)
+        if element in limits or name in limits:
+            parsed.limit[bare] = limits.get(element, limits.get(name, np.nan))
+        elif bare.any():
+            report_rows(
+                self.findings, "error", "detection-limit-missing", self.raw.rows[bare],
+                "The result is below detection, but the limit is not given.",
+                "Write the limit into the cell, such as <0.01, or give detection_limits in the study.",
+                file=self.file, column=header,
+            )  # fmt: skip
+        return {
+            name: parsed.values * factor,
+            f"{name}_status": parsed.status,
+            f"{name}_limit": parsed.limit * factor,
+        }
+
+    def _element_header(self, element: str, name: str) -> str | None:
+        needed = element in self.needed and self.role == "assays"
+        if name in self.mapping:
+            return self._header(name, required=True)
+        candidates = [h for h in self.raw.headers if (element_of_header(h) or ("",))[0] == element]
+        if len(candidates) > 1:
+            self.findings.error(
+                "column-duplicate",
+                f"The file has {len(candidates)} columns that may be {element}: {', '.join(candidates)}.",
+                f'Name the right one in the study with columns = {{ {element} = "..." }}.',
+                file=self.file,
+                row=self.source.header_row,
+                column=candidates[0],
+            )
+        if candidates:
+            return candidates[0]
+        if name in self.constants:
+            return None
+        if needed:
+            return self._header(name, required=True)
+        self.findings.add(
+            "warning" if element in self.needed else "note",
+            "element-missing",
+            f"The file has no column of {element}; it is blank in all rows.",
+            f'Map it in the study with columns = {{ {element} = "..." }} if it has.',
+            file=self.file,
+            column=name,
+        )
+        return None
+
+    def _factor(self, element: str, name: str, header: str) -> float:
+        """Factor from the file's unit to the element's own; 1 with an error where the unit is not known."""
+        unit_of = {self._plain(key): unit for key, unit in self.source.units.items()}
+        declared = unit_of.get(name)
+        stated = (element_of_header(header) or (element, None))[1]
+        if declared is not None and known_unit(declared):
+            if stated is not None and not same_unit(declared, stated):
+                self.findings.warning(
+                    "unit-contradicts-header",
+                    f"The study says {element} is in {declared}, the header says {stated}; the study was followed.",
+                    "Correct the one that is wrong.",
+                    file=self.file,
+                    row=self.source.header_row,
+                    column=header,
+                )
+            return grade_factor(declared, ELEMENTS[element])
+        if stated is not None:
+            return grade_factor(stated, ELEMENTS[element])
+        if declared is None:
+            self.findings.error(
+                "unit-missing",
+                f"Neither the header {header!r} nor the study states the unit of {element}.",
+                f'Write units = {{ {element} = "%" }} or whatever it is in.',
+                file=self.file,
+                row=self.source.header_row,
+                column=header,
+            )
+        return 1.0
+
+
+def _element_word(text: str) -> str:
+    found = element_of_header(text)
+    return found[0] if found else text.strip().lower()
