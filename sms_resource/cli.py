@@ -1,5 +1,276 @@
-"""The commands (see workflow for the work)."""
+"""The commands: the only place that prints, asks and exits."""
+
+from __future__ import annotations
+
+import json
+import os
+import sys
+from pathlib import Path
+from typing import Annotated, Any
+
+import typer
+
+from sms_resource import __version__
+
+DONE, FAULTY, USAGE, INTERRUPTED = 0, 1, 2, 130
+
+app = typer.Typer(
+    name="sms-resource",
+    help="Estimate tonnes and grades of a seafloor massive sulphide deposit, with every assumption visible.",
+    no_args_is_help=True,
+    add_completion=False,
+    pretty_exceptions_enable=False,
+    rich_markup_mode=None,
+)
+
+StudyArgument = Annotated[Path, typer.Argument(help="The study file (TOML).", show_default=False)]
+OutOption = Annotated[Path, typer.Option("--out", "-o", help="Folder of the results.")]
+JsonOption = Annotated[bool, typer.Option("--json", help="Print the findings as JSON and nothing else.")]
+QuietOption = Annotated[bool, typer.Option("--quiet", "-q", help="Print findings of errors only.")]
+ThreadsOption = Annotated[
+    int | None, typer.Option("--threads", min=1, help="Threads; all cores if not given. Results do not depend on it.")
+]
+CacheOption = Annotated[bool, typer.Option("--cache/--no-cache", help="Use outputs of stages that were made before.")]
+
+
+def _version(wanted: bool) -> None:
+    if wanted:
+        typer.echo(__version__)
+        raise typer.Exit(DONE)
+
+
+@app.callback()
+def common(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version and leave.")
+    ] = False,
+) -> None:
+    """Estimate tonnes and grades of a seafloor massive sulphide deposit, with every assumption visible."""
+
+
+@app.command()
+def new(
+    files: Annotated[list[Path], typer.Argument(help="The data files, in any order.", show_default=False)],
+    out: Annotated[Path, typer.Option("--out", "-o", help="Study file to write.")] = Path("study.toml"),
+    force: Annotated[bool, typer.Option("--force", help="Replace a file that exists.")] = False,
+) -> None:
+    """Write a commented study file from data files: guesses columns, units and coordinate system, and says so."""
+    from sms_resource.workflow import new_study
+
+    if out.exists() and not force:
+        _fail_usage(f"{out} exists; give another name with --out, or --force to replace it")
+    missing = [str(path) for path in files if not path.is_file()]
+    if missing:
+        _fail_usage(f"no such file: {', '.join(missing)}")
+    made = new_study(files, out)
+    console = _console()
+    console.print(f"Wrote {out}", highlight=False, markup=False)
+    _print_guesses(console, made.guesses)
+    if made.open_questions:
+        console.print("\nTo decide before a run (each is marked in the file):", markup=False)
+        for question in made.open_questions:
+            console.print(f"  - {question}", highlight=False, markup=False)
+    console.print(f"\nNext: sms-resource check {out}", highlight=False, markup=False)
+
+
+@app.command()
+def check(study: StudyArgument, as_json: JsonOption = False, quiet: QuietOption = False) -> None:
+    """Read the study and its data, and list everything that is wrong with them."""
+    from sms_resource.workflow import check_study
+
+    loaded = _load(study, as_json)
+    findings = check_study(loaded)
+    if as_json:
+        _print_json(findings.to_records())
+    else:
+        console = _console()
+        _print_findings(console, findings, quiet)
+        counts = findings.counts()
+        console.print(
+            f"{counts['error']} errors, {counts['warning']} warnings, {counts['note']} notes", highlight=False
+        )
+    raise typer.Exit(FAULTY if findings.has_errors else DONE)
+
+
+@app.command()
+def run(
+    study: StudyArgument,
+    out: OutOption = Path("results"),
+    as_json: JsonOption = False,
+    quiet: QuietOption = False,
+    threads: ThreadsOption = None,
+    cache: CacheOption = True,
+) -> None:
+    """Run the whole estimate, from files to the draft report."""
+    from sms_resource.workflow import NotResultsError, run_study
+    from sms_resource.workflow.stage import Silent
+
+    loaded = _load(study, as_json)
+    console = _console(stderr=as_json)
+    progress = Silent() if as_json or quiet else _Lines(console)
+    try:
+        result = run_study(loaded, out=out, progress=progress, threads=threads, cache=cache)
+    except NotResultsError as error:
+        _fail_usage(f"{error}; give another folder with --out")
+    except OSError as error:
+        _fail_usage(f"the results cannot be written: {error}")
+    if as_json:
+        _print_json(result.findings.to_records())
+    else:
+        _print_findings(console, result.findings, quiet=True)
+        if not quiet:
+            _print_summary(console, result)
+    raise typer.Exit(FAULTY if result.findings.has_errors else DONE)
+
+
+@app.command()
+def view(
+    results: Annotated[Path, typer.Argument(help="Folder of results of a run.")] = Path("results"),
+    screenshot: Annotated[Path | None, typer.Option(help="Draw into this PNG file instead of a window.")] = None,
+    variable: Annotated[str | None, typer.Option(help="Grade to colour by, such as cu or cu_pct.")] = None,
+    cutoff: Annotated[float | None, typer.Option(help="Show blocks at or above this grade.")] = None,
+    exaggeration: Annotated[float, typer.Option(min=0.1, max=50, help="Vertical exaggeration.")] = 1.0,
+) -> None:
+    """Open the seafloor, the blocks above a cut-off and the holes in a window."""
+    from sms_resource.workflow import view_results
+
+    message = view_results(
+        results, screenshot=screenshot, variable=variable, cutoff=cutoff, exaggeration=exaggeration
+    )
+    if message:
+        typer.echo(message, err=True)
+        raise typer.Exit(FAULTY)
+    if screenshot:
+        typer.echo(f"Wrote {screenshot}")
+
+
+def _fail_usage(message: str) -> Any:
+    typer.echo(f"sms-resource: {message}", err=True)
+    raise typer.Exit(USAGE)
+
+
+def _load(path: Path, as_json: bool) -> Any:
+    """The study, or the list of its faults and exit 1."""
+    from sms_resource.study import StudyError, load_study
+
+    try:
+        return load_study(path)
+    except StudyError as error:
+        if as_json:
+            _print_json(error.findings.to_records())
+        else:
+            _print_findings(_console(stderr=True), error.findings, quiet=False)
+        raise typer.Exit(FAULTY) from None
+
+
+def _print_json(content: Any) -> None:
+    json.dump(content, sys.stdout, indent=1, ensure_ascii=False)
+    sys.stdout.write("\n")
+
+
+def _console(stderr: bool = False) -> Any:
+    from rich.console import Console
+
+    return Console(stderr=stderr, soft_wrap=False, width=None if sys.stdout.isatty() else 110)
+
+
+class _Lines:
+    """One line a stage: what it did, and how long it took."""
+
+    def __init__(self, console: Any) -> None:
+        self.console = console
+        self.status: Any = None
+
+    def started(self, name: str, label: str) -> None:
+        """Show what is under way, where a person watches."""
+        if self.console.is_terminal:
+            self.status = self.console.status(f"{label} …")
+            self.status.start()
+
+    def finished(self, name: str, seconds: float, detail: str, from_cache: bool) -> None:
+        """Print the line of the stage."""
+        if self.status is not None:
+            self.status.stop()
+            self.status = None
+        kept = " (kept from before)" if from_cache else ""
+        self.console.print(f"{name:<11}{seconds:7.2f} s  {detail}{kept}", highlight=False, markup=False)
+
+
+_STYLES = {"error": "bold red", "warning": "yellow", "note": "dim"}
+
+
+def _print_findings(console: Any, findings: Any, quiet: bool) -> None:
+    """Findings by kind; many of one kind are folded after the first few, and counted."""
+    from rich.text import Text
+
+    most = 8
+    seen: dict[tuple[str, str, str | None], int] = {}
+    for severity in ("error",) if quiet else ("error", "warning", "note"):
+        for item in findings.of(severity):
+            kind = (severity, item.code, item.file)
+            seen[kind] = seen.get(kind, 0) + 1
+            if seen[kind] > most:
+                continue
+            line = Text(f"{severity} ", style=_STYLES[severity])
+            line.append(f"[{item.code}] ", style="bold")
+            line.append(f"{item.where}: " if item.where else "")
+            line.append(item.message)
+            if item.remedy:
+                line.append(f"  -> {item.remedy}", style="cyan")
+            console.print(line, highlight=False)
+    for (severity, code, file), count in seen.items():
+        if count > most:
+            rest = f"{severity} [{code}] {file or ''}: and {count - most} more; --json lists every one"
+            console.print(rest, highlight=False, markup=False, style=_STYLES[severity])
+
+
+def _print_guesses(console: Any, guesses: Any) -> None:
+    from rich.table import Table
+
+    table = Table(title="What was guessed, and why", title_justify="left")
+    for name in ("file", "what", "guess", "because"):
+        table.add_column(name, overflow="fold")
+    for guess in guesses:
+        table.add_row(guess.file, guess.what, guess.value, guess.because)
+    console.print(table)
+
+
+def _print_summary(console: Any, result: Any) -> None:
+    from rich.table import Table
+
+    counts = result.findings.counts()
+    if result.out is None:
+        console.print(
+            f"\nNot run: {counts['error']} errors. Earlier results, if any, are as they were.", style="bold red"
+        )
+        return
+    summary = result.summary
+    table = Table(title=summary.title, title_justify="left", caption=summary.caption, caption_justify="left")
+    for number, name in enumerate(summary.columns):
+        table.add_column(name, justify="left" if number == 0 else "right")
+    for row in summary.rows:
+        table.add_row(*row)
+    console.print()
+    console.print(table)
+    console.print(
+        f"Findings: {counts['error']} errors, {counts['warning']} warnings, {counts['note']} notes "
+        f"(in {result.out / 'findings.json'})",
+        highlight=False, markup=False, soft_wrap=True,
+    )  # fmt: skip
+    console.print(f"Report:   {result.out / 'report.html'}", highlight=False, markup=False, soft_wrap=True)
 
 
 def main() -> None:
-    """Entry point."""
+    """Run the command line; a fault of the user never shows a traceback."""
+    try:
+        app()
+    except KeyboardInterrupt:
+        sys.stderr.write("sms-resource: stopped; earlier results are as they were\n")
+        sys.exit(INTERRUPTED)
+    except BrokenPipeError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        sys.exit(DONE)
+
+
+if __name__ == "__main__":
+    main()

@@ -93,7 +93,7 @@ class Assays(Section):
     """[assays]: how values that are not plain numbers are used."""
 
     below_detection: Literal["half", "zero", "as_is", "ros"] = key(
-        "half", "Value of a result below detection: half the limit, zero, the limit, or regression on order statistics (ros).",
+        "half", "Value of a result below detection: half the limit, zero, the limit, or from order statistics (ros).",
         alternatives=("zero", "as_is", "ros"),
     )  # fmt: skip
     over_limit: Literal["at_limit", "missing"] = key(

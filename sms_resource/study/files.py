@@ -30,6 +30,10 @@ class TableFile(Section):
         "elevation",
         "Whether vertical positions are elevations (negative below sea level) or depths (positive down).",
     )
+    header_row: int = key(1, "Row of the column names.", ge=1, decision=False)
+    detection_limits: dict[str, float] = key(
+        {}, "Detection limit of each element in the file's unit, for results that say only \"bdl\"."
+    )
     constants: dict[str, str | float] = key(
         {}, 'Values for columns that the file lacks, such as method = "laboratory".'
     )

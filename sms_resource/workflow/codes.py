@@ -1,0 +1,12 @@
+"""Codes of the findings that the stages themselves make, each with its meaning."""
+
+CODES: dict[str, str] = {
+    "blocks-beyond-search": "Blocks were estimated from samples beyond every search pass.",
+    "blocks-not-estimated": "Blocks have no estimate of some metal.",
+    "equivalent-refused": "A metal equivalent or a value cannot be made from what the study states.",
+    "neighbourhood-study": "What the study of neighbourhoods recommends.",
+    "no-composites": "No sample lies in a domain of the body.",
+    "outline-proposed": "The outline of the body was proposed by the tool.",
+    "top-cut-proposed": "Top cuts that the tool proposes were applied.",
+    "validation-flag": "A check of the estimate is outside its limit.",
+}

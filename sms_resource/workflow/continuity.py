@@ -1,0 +1,162 @@
+"""Stage variograms: cut grades, weights against clusters, and a variogram for each metal in each domain."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+from sms_resource.units import element_column
+from sms_resource.workflow.evidence import metal_columns
+from sms_resource.workflow.stage import Context
+from sms_resource.workflow.state import BlockState, BodyState, EvidenceState, VariogramState
+
+
+def variograms(context: Context) -> VariogramState:
+    """Infer the continuity of every metal in every domain of the body."""
+    evidence: EvidenceState = context.done["composite"]
+    block_state: BlockState = context.done["blocks"]
+    body_state: BodyState = context.done["body"]
+    config = context.config
+    metals = metal_columns(config)
+    samples = body_samples(evidence.composites, block_state.frame, config)
+    samples, cuts = cut_grades(samples, evidence.tables["top_cut_study"], config)
+    spacing = hole_spacing(evidence.collars, body_state.outline)
+    scans: list[pd.DataFrame] = []
+    inferences: dict[tuple[str, str], Any] = {}
+    weights = np.ones(len(samples))
+    for domain in config.domains.sulphide:
+        chosen = (samples["domain"] == domain).to_numpy()
+        part = samples[chosen]
+        places = part[["x", "y", "z"]].to_numpy(dtype=float)
+        weights[chosen], scan = decluster(part, metals[0], spacing, domain)
+        scans.append(scan)
+        for metal in metals:
+            known = part[metal].notna().to_numpy()
+            if not known.any():
+                context.findings.error(
+                    "no-composites", f"domain '{domain}' has no {metal} sample",
+                    "Take the domain out of domains.sulphide or map another code to it.", file=context.study.path.name,
+                )  # fmt: skip
+                continue
+            inference = infer(part, places, metal, known, weights[chosen], spacing, config)
+            context.findings.extend(inference.findings)
+            inferences[(domain, metal)] = inference
+    samples = samples.assign(declustering_weight=weights)
+    assumed = sum(1 for item in inferences.values() if item.assumed)
+    context.detail = f"{len(inferences)} variograms, {assumed} with assumed parts; hole spacing {spacing:.0f} m"
+    return VariogramState(
+        samples=samples, inferences=inferences, cuts=cuts, scans=pd.concat(scans, ignore_index=True),
+        facts={"hole_spacing_m": spacing},
+    )  # fmt: skip
+
+
+def body_samples(composites: pd.DataFrame, frame: Any, config: Any) -> pd.DataFrame:
+    """Composites of the body, with their place in the vertical frame as x, y, z."""
+    inside = composites[composites["domain"].isin(config.domains.sulphide) & (composites["weight"] > 0)]
+    inside = inside.reset_index(drop=True)
+    places = frame.forward(inside[["easting", "northing", "elevation"]].to_numpy(dtype=float))
+    inside = inside.assign(x=places[:, 0], y=places[:, 1], z=places[:, 2])
+    return inside[np.isfinite(places).all(axis=1)].reset_index(drop=True)
+
+
+def cut_grades(
+    samples: pd.DataFrame, proposals: pd.DataFrame, config: Any
+) -> tuple[pd.DataFrame, pd.DataFrame]:
+    """Apply the top cuts that the study decides on."""
+    from sms_resource.samples.topcuts import apply_top_cuts
+
+    choice = config.top_cuts
+    cuts: dict[tuple[str, str], float] = {}
+    if choice.apply == "given":
+        cuts = {
+            (domain, element_column(element)): value
+            for domain, elements in choice.cuts.items()
+            for element, value in elements.items()
+        }
+    elif choice.apply == "proposed":
+        rows = proposals.dropna(subset=["cut"])
+        cuts = {(str(row.domain), str(row.metal)): float(row.cut) for row in rows.itertuples()}
+    return apply_top_cuts(samples, cuts)
+
+
+def hole_spacing(collars: pd.DataFrame, outline: Any) -> float:
+    """Typical distance between drill sites inside the outline: median of nearest sites, twins left out."""
+    from scipy.spatial import cKDTree
+    from shapely import contains_xy
+
+    places = collars[["easting", "northing"]].drop_duplicates().to_numpy(dtype=float)
+    near = contains_xy(outline.buffer(25.0), places[:, 0], places[:, 1])
+    places = places[near] if near.sum() >= 3 else places
+    if len(places) < 2:
+        return 20.0
+    distances = cKDTree(places).query(places, k=min(6, len(places)))[0][:, 1:]
+    distances = np.where(distances < 5.0, np.nan, distances)
+    first = np.nanmin(np.where(np.isnan(distances), np.inf, distances), axis=1)
+    first = first[np.isfinite(first)]
+    return float(np.median(first)) if len(first) else 20.0
+
+
+def decluster(part: pd.DataFrame, metal: str, spacing: float, domain: str) -> tuple[np.ndarray, pd.DataFrame]:
+    """Weights against clusters of holes, from cells of the hole spacing; the scan of sizes is kept for the report."""
+    from sms_resource.samples.declustering import cell_declustering
+
+    known = part[metal].notna().to_numpy()
+    weights = np.ones(len(part))
+    if known.sum() < 3:
+        return weights, pd.DataFrame({"domain": [], "metal": [], "cell_size_m": [], "mean": []})
+    places = part.loc[known, ["x", "y", "z"]].to_numpy(dtype=float)
+    values = part.loc[known, metal].to_numpy(dtype=float)
+    sizes = spacing * np.array([0.25, 0.5, 0.75, 1.0, 1.25, 1.5, 2.0, 3.0, 4.0])
+    made = cell_declustering(places, values, sizes=sizes, cell_size=spacing)
+    weights[known] = made.weights
+    scan = made.scan.assign(domain=domain, metal=metal)
+    return weights, scan
+
+
+def infer(
+    part: pd.DataFrame,
+    places: np.ndarray,
+    metal: str,
+    known: np.ndarray,
+    weights: np.ndarray,
+    spacing: float,
+    config: Any,
+) -> Any:
+    """Variogram of one metal in one domain, with what the study fixes."""
+    from sms_resource.geostatistics import VariogramSettings, infer_variogram
+
+    choice = config.variograms
+    element = metal.partition("_")[0]
+    domain = str(part["domain"].iloc[0])
+    fixed = choice.models.get(domain, {}).get(element)
+    settings = VariogramSettings(
+        shape=(fixed.shape if fixed and fixed.shape else choice.shape),
+        measure=choice.measure,
+        estimator=choice.estimator,
+        lag_horizontal_m=choice.lag_horizontal_m or spacing,
+        lag_vertical_m=choice.lag_vertical_m or config.composites.length_m,
+        min_pairs=choice.least_pairs,
+        min_composites_horizontal=choice.least_composites,
+        azimuth=choice.azimuth_deg,
+        plunge=choice.plunge_deg,
+        tilt=choice.tilt_deg,
+        assumed_horizontal_m=choice.assumed_horizontal_m,
+        assumed_vertical_m=choice.assumed_vertical_m,
+        assumed_nugget_share=choice.assumed_nugget_share,
+        jackknife=choice.intervals,
+        nugget=fixed.nugget if fixed else None,
+        nugget_share=fixed.nugget_share if fixed else None,
+        total_sill=fixed.total_sill if fixed else None,
+        ranges=fixed.ranges_m if fixed else None,
+        structures=tuple((s.shape, s.sill, s.ranges_m) for s in fixed.structures) if fixed and fixed.structures else None,
+        range_factor=choice.range_factor,
+    )
+    return infer_variogram(
+        places[known],
+        part.loc[known, metal].to_numpy(dtype=float),
+        part.loc[known, "hole_id"].to_numpy(dtype=object),
+        settings,
+        weights=weights[known],
+    )

@@ -1,0 +1,130 @@
+"""Stages load and check: from the files of a study to typed tables, and what is wrong with them."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from sms_resource.loaders.tables import LoadedData
+from sms_resource.study.files import GridFile, LayerFile, TableFile
+from sms_resource.workflow.stage import Context
+
+
+def table_source(context: Context, table: TableFile) -> Any:
+    """What the loaders need to know of one table of the study."""
+    from sms_resource.loaders.source import TableSource
+
+    return TableSource(
+        path=context.study.resolve(table.file),
+        shown_as=table.file,
+        sheet=table.sheet,
+        layer=table.layer,
+        delimiter=table.delimiter,
+        decimal=table.decimal,
+        encoding=table.encoding,
+        columns=dict(table.columns),
+        units=dict(table.units),
+        vertical=table.vertical,
+        constants=dict(table.constants),
+        detection_limits=dict(table.detection_limits),
+        header_row=table.header_row,
+    )
+
+
+def load(context: Context) -> LoadedData:
+    """Read every file of the study."""
+    from sms_resource.loaders.drilling import load_drilling
+    from sms_resource.loaders.laboratory import load_laboratory
+    from sms_resource.loaders.points import load_points
+    from sms_resource.loaders.surface_samples import load_dredges, load_surface
+
+    data = context.config.data
+    metals = context.config.metals
+    elements = (*metals.estimate, *(name for name in metals.summarise if name not in metals.estimate))
+
+    def source(table: TableFile | None) -> Any:
+        return None if table is None else table_source(context, table)
+
+    drill, found = load_drilling(
+        source(data.collars),
+        source(data.surveys),
+        runs=source(data.runs),
+        lithology=source(data.lithology),
+        assays=source(data.assays),
+        densities=source(data.densities),
+        elements=elements,
+    )
+    context.findings.extend(found)
+    loaded: dict[str, Any] = {"drill": drill}
+    for field, table, reader in (
+        ("surface", data.surface_samples, lambda item: load_surface(item, elements)),
+        ("dredges", data.dredges, lambda item: load_dredges(item, elements)),
+        ("laboratory", data.laboratory, load_laboratory),
+        ("base_points", data.base_points, load_points),
+    ):
+        if table is not None:
+            loaded[field], found = reader(source(table))
+            context.findings.extend(found)
+    loaded["seafloor"] = _grid(context, data.bathymetry)
+    if data.base_grid is not None:
+        loaded["base_grid"] = _grid(context, data.base_grid)
+    loaded["outline"] = _layer(context, data.outline, "outline")
+    loaded["exclusions"] = _layer(context, data.exclusions, "exclusions")
+    loaded["files"] = context.study.files()
+    context.detail = f"{len(drill.collars)} holes, {len(drill.assays)} assays"
+    return LoadedData(**loaded)
+
+
+def _grid(context: Context, grid: GridFile) -> Any:
+    from sms_resource.loaders.bathymetry import load_grid
+
+    surface, found = load_grid(
+        context.study.resolve(grid.file),
+        shown_as=grid.file,
+        crs=grid.crs,
+        target_crs=context.config.study.crs,
+        vertical=grid.vertical,
+        band=grid.band,
+        uncertainty_band=grid.uncertainty_band,
+    )
+    context.findings.extend(found)
+    return surface
+
+
+def _layer(context: Context, layer: LayerFile | None, role: str) -> Any:
+    if layer is None:
+        return None
+    from sms_resource.loaders.boundaries import load_exclusions, load_outline
+
+    reader = load_exclusions if role == "exclusions" else load_outline
+    options: dict[str, Any] = {"columns": dict(layer.columns)} if role == "exclusions" else {}
+    frame, found = reader(
+        context.study.resolve(layer.file),
+        shown_as=layer.file,
+        layer=layer.layer,
+        crs=context.config.study.crs,
+        file_crs=layer.crs,
+        reproject=layer.reproject,
+        **options,
+    )
+    context.findings.extend(found)
+    return frame
+
+
+def check(context: Context) -> dict[str, int]:
+    """Hold the data against the guards and against each other."""
+    from sms_resource.loaders.checks import CheckSettings, check_data
+
+    data: LoadedData = context.done["load"]
+    checks = context.config.checks
+    settings = CheckSettings(
+        warn_above=dict(checks.warn_above),
+        error_above=dict(checks.error_above),
+        collar_tolerance_m=checks.collar_tolerance_m,
+        far_below_m=checks.far_below_m,
+        recovery_limit_pct=checks.recovery_limit_pct,
+        twin_distance_m=checks.twin_distance_m,
+    )
+    context.findings.extend(check_data(data, settings=settings))
+    counts = context.findings.counts()
+    context.detail = f"{counts['error']} errors, {counts['warning']} warnings, {counts['note']} notes"
+    return counts

@@ -1,0 +1,113 @@
+"""The manifest of a run: what went in, what came out, with which versions."""
+
+from __future__ import annotations
+
+import importlib.metadata
+import json
+import platform
+import sys
+from pathlib import Path
+from typing import Any
+
+from sms_resource import __version__
+from sms_resource.study import Study
+from sms_resource.workflow.stage import StageRecord, code_fingerprint, file_hash
+
+_LIBRARIES = (
+    "numpy", "scipy", "pandas", "numba", "scikit-gstat", "pyvista", "geopandas", "shapely", "rasterio", "pyproj",
+    "pyogrio", "pyarrow", "pydantic", "matplotlib", "jinja2", "gsw", "xarray", "xlsxwriter", "typst",
+)  # fmt: skip
+
+
+def versions() -> dict[str, str]:
+    """Version of the package, of Python and of the libraries that make the numbers."""
+    found = {"sms_resource": __version__, "python": platform.python_version()}
+    for name in _LIBRARIES:
+        try:
+            found[name] = importlib.metadata.version(name)
+        except importlib.metadata.PackageNotFoundError:
+            found[name] = "not installed"
+    return found
+
+
+def input_hashes(study: Study) -> dict[str, dict[str, Any]]:
+    """Hash, size and place of every input file, by role, the study itself first."""
+    entries: dict[str, dict[str, Any]] = {}
+    folder = study.folder.resolve()
+    for role, file in {"study": study.path.name, **study.files()}.items():
+        path = study.resolve(file)
+        if not path.is_file():
+            continue
+        entries[role] = {
+            "file": file,
+            "sha256": file_hash(path),
+            "bytes": path.stat().st_size,
+            "outside_folder": not path.is_relative_to(folder),
+        }
+    return entries
+
+
+def output_hashes(folder: Path) -> dict[str, str]:
+    """SHA-256 of every file of a folder, by its relative path; the manifest itself is left out."""
+    return {
+        path.relative_to(folder).as_posix(): file_hash(path)
+        for path in sorted(folder.rglob("*"))
+        if path.is_file() and path.name != "manifest.json"
+    }
+
+
+def write_manifest(
+    folder: Path,
+    study: Study,
+    inputs: dict[str, dict[str, Any]],
+    records: list[StageRecord],
+    facts: dict[str, Any],
+) -> Path:
+    """Write manifest.json into a folder of results.
+
+    Parameters
+    ----------
+    folder : Path
+        Where the results are.
+    study : Study
+    inputs : dict
+        From :func:`input_hashes`.
+    records : list of StageRecord
+    facts : dict
+        Anything else a reader of the results needs, such as the summary of the table of tonnes.
+    """
+    content = {
+        "format": 1,
+        "study": {
+            "name": study.config.study.name,
+            "file": study.path.name,
+            "folder": str(study.folder),
+            "seed": study.config.study.seed,
+            "resolved": study.config.model_dump(mode="json"),
+            "given": json.loads(json.dumps(study.given, default=str)),
+        },
+        "inputs": inputs,
+        "outputs": output_hashes(folder),
+        "versions": versions(),
+        "code": code_fingerprint(),
+        "platform": {"system": platform.system(), "machine": platform.machine(), "python": sys.version.split()[0]},
+        "stages": [
+            {"name": r.name, "seconds": round(r.seconds, 3), "from_cache": r.from_cache, "key": r.key, "detail": r.detail}
+            for r in records
+        ],
+        **facts,
+    }
+    path = folder / "manifest.json"
+    path.write_text(json.dumps(content, indent=1, ensure_ascii=False), encoding="utf-8")
+    return path
+
+
+def read_manifest(folder: Path) -> dict[str, Any]:
+    """The manifest of a folder of results.
+
+    Raises
+    ------
+    FileNotFoundError
+        If the folder holds no results.
+    """
+    return json.loads((folder / "manifest.json").read_text(encoding="utf-8"))

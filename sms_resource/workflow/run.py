@@ -1,0 +1,149 @@
+"""Run a study: all stages in order, and the results put in their place when they are whole."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from sms_resource.findings import Findings
+from sms_resource.study import Study
+from sms_resource.workflow.folder import ResultFolder
+from sms_resource.workflow.manifest import input_hashes
+from sms_resource.workflow.stage import Outcome, Progress, StageCache, run_stages
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from sms_resource.workflow.summary import Summary
+
+
+@dataclass
+class Result:
+    """What a run has made.
+
+    Attributes
+    ----------
+    findings : Findings
+        Everything that the checks and the stages found.
+    out : Path or None
+        Folder of the results; None where errors stopped the run.
+    block_model : BlockModel or None
+        ``.frame`` has one row a block; ``.to_pyvista()``, ``.to_xarray()``, ``.to_geodataframe()``.
+    grade_tonnage : DataFrame or None
+        Tonnes and grades by cut-off and proposed class.
+    variograms : dict
+        VariogramInference by (domain, metal column).
+    summary : Summary or None
+        The table of tonnes at the study's cut-off, rounded and worded for print.
+    stages : dict
+        Outputs of the stages by name, for notebooks.
+    """
+
+    findings: Findings
+    out: Path | None = None
+    block_model: Any = None
+    grade_tonnage: pd.DataFrame | None = None
+    variograms: dict[tuple[str, str], Any] = field(default_factory=dict)
+    summary: Summary | None = None
+    stages: dict[str, Any] = field(default_factory=dict)
+
+    def __repr__(self) -> str:
+        return f"Result({self.out}, {self.findings!r})"
+
+
+def check_study(study: Study) -> Findings:
+    """Read the data of a study and list everything that is wrong with it.
+
+    Parameters
+    ----------
+    study : Study
+
+    Returns
+    -------
+    Findings
+    """
+    from sms_resource.workflow.stages import CHECK_STAGES
+
+    return run_stages(CHECK_STAGES, study, keep_on=True).findings
+
+
+def default_cache() -> StageCache | None:
+    """The cache of stages of this user; None where no folder for it can be made."""
+    from sms_resource.cache import Cache
+
+    try:
+        return Cache()
+    except OSError:
+        return None
+
+
+def run_study(
+    study: Study,
+    out: str | Path | None = "results",
+    *,
+    progress: Progress | None = None,
+    threads: int | None = None,
+    cache: bool | StageCache = True,
+) -> Result:
+    """Run the whole estimate of a study.
+
+    Parameters
+    ----------
+    study : Study
+    out : str or Path, optional
+        Folder of the results. It is replaced as a whole when the run is whole; None writes nothing.
+    progress : Progress, optional
+        Told of each stage.
+    threads : int, optional
+        Threads of the kernels; results do not depend on it.
+    cache : bool or StageCache
+        Whether outputs of stages made before are used.
+
+    Returns
+    -------
+    Result
+        Where ``findings.has_errors``, nothing was written and ``out`` is None.
+
+    Raises
+    ------
+    NotResultsError
+        If ``out`` holds something that is not a result.
+    """
+    from sms_resource.workflow.stages import ESTIMATE_STAGES
+
+    store = (default_cache() if cache else None) if isinstance(cache, bool) else cache
+    inputs = input_hashes(study)
+    threads = threads or study.config.kriging.threads
+
+    def stages() -> Outcome:
+        hashes = {role: entry["sha256"] for role, entry in inputs.items() if role != "study"}
+        return run_stages(ESTIMATE_STAGES, study, progress=progress, store=store, threads=threads, files=hashes)
+
+    if out is None:
+        return _result(study, stages(), None)
+    with ResultFolder(out) as folder:
+        outcome = stages()
+        if outcome.findings.has_errors:
+            return Result(outcome.findings)
+        from sms_resource.workflow.publish import write_results
+
+        summary = write_results(folder.staging, study, outcome, inputs, progress)
+        folder.publish()
+    result = _result(study, outcome, summary)
+    result.out = folder.out
+    return result
+
+
+def _result(study: Study, outcome: Outcome, summary: Any) -> Result:
+    if outcome.findings.has_errors:
+        return Result(outcome.findings)
+    done = outcome.done
+    return Result(
+        findings=outcome.findings,
+        block_model=done["blocks"].model.with_frame(done["classify"].frame),
+        grade_tonnage=done["classify"].grade_tonnage,
+        variograms=done["variograms"].inferences,
+        summary=summary,
+        stages=done,
+    )

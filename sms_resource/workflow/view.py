@@ -1,0 +1,36 @@
+"""Open results in a window."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from sms_resource.workflow.folder import is_results, recover
+
+
+def view_results(
+    folder: Path,
+    *,
+    screenshot: Path | None = None,
+    variable: str | None = None,
+    cutoff: float | None = None,
+    exaggeration: float = 1.0,
+) -> str | None:
+    """Show results in a window, or draw them into a file.
+
+    Returns
+    -------
+    str or None
+        What is wrong, and what to do, where nothing could be shown.
+    """
+    recover(Path(folder).absolute())
+    if not is_results(Path(folder)):
+        return f"{folder} holds no results. Make them with: sms-resource run STUDY --out {folder}"
+    from sms_resource.viewer import ViewerUnavailable, open_scene
+
+    try:
+        open_scene(
+            folder, screenshot=screenshot, variable=variable, cutoff=cutoff, exaggeration=exaggeration
+        )
+    except (ViewerUnavailable, ValueError, OSError) as error:
+        return str(error)
+    return None
