@@ -8,7 +8,8 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.findings import Findings
-from sms_resource.loaders.headers import element_of_header, find_header, nearest, same_unit
+from sms_resource.loaders.grades import grade_columns
+from sms_resource.loaders.headers import element_of_header, find_header, nearest
 from sms_resource.loaders.parsing import (
     COORDINATE_CODES,
     MISSING_CODES,
@@ -20,17 +21,14 @@ from sms_resource.loaders.places import mark, report_rows
 from sms_resource.loaders.reading import RawTable, read_table
 from sms_resource.loaders.source import TableSource
 from sms_resource.loaders.tables import (
-    BELOW_DETECTION,
     BLANK,
     GRADE_ROLES,
-    MEASURED,
     SCHEMAS,
     Column,
-    element_columns,
     empty_table,
 )
 from sms_resource.loaders.words import METHOD_WORDS, WORDS, allowed, plain_word
-from sms_resource.units import ELEMENTS, column_element, element_column, grade_factor, known_unit
+from sms_resource.units import ELEMENTS, column_element, element_column, known_unit
 
 
 def load_table(
@@ -58,10 +56,10 @@ def load_table(
     wanted = tuple(dict.fromkeys((*elements, *optional_elements))) if role in GRADE_ROLES else ()
     if raw is None:
         return mark(empty_table(role, wanted), source.name, {}), findings
-    return _Maker(source, role, raw, findings, wanted, frozenset(elements)).make(), findings
+    return TableMaker(source, role, raw, findings, wanted, frozenset(elements)).make(), findings
 
 
-class _Maker:
+class TableMaker:
     """One pass over the columns of one table."""
 
     def __init__(
@@ -76,13 +74,13 @@ class _Maker:
         self.source, self.role, self.raw, self.findings = source, role, raw, findings
         self.elements, self.needed = elements, needed
         self.file = source.name
-        self.mapping = {self._plain(key): header for key, header in source.columns.items()}
-        self.constants = {self._plain(key): value for key, value in source.constants.items()}
+        self.mapping = {self.plain(key): header for key, header in source.columns.items()}
+        self.constants = {self.plain(key): value for key, value in source.constants.items()}
         self.headers: dict[str, str] = {}
         self.results: dict[str, Parsed] = {}
 
     @staticmethod
-    def _plain(key: str) -> str:
+    def plain(key: str) -> str:
         """An element stands under its column, whichever way it is named."""
         plain = key.strip().casefold()
         return element_column(plain) if plain in ELEMENTS else plain
@@ -100,7 +98,7 @@ class _Maker:
                 data[f"{column.name}_limit"] = parsed.limit if parsed else np.full(len(self.raw.rows), np.nan)
         if self.role in GRADE_ROLES:
             for element in self.elements:
-                data.update(self._grades(element))
+                data.update(grade_columns(self, element))
         frame = pd.DataFrame(data) if len(self.raw.rows) else empty_table(self.role, self.elements)
         frame["source_row"] = self.raw.rows
         for column in SCHEMAS[self.role]:
@@ -140,10 +138,10 @@ class _Maker:
                     f"The unit {unit!r} of {key} is not known.",
                     "Use one of %, ppm, ppb, g/t, mg/kg, kg/t, oz/t.",
                     file=self.file,
-                    column=self.mapping.get(self._plain(key), key),
+                    column=self.mapping.get(self.plain(key), key),
                 )
 
-    def _header(self, name: str, *, required: bool, quiet: bool = False) -> str | None:
+    def header(self, name: str, *, required: bool, quiet: bool = False) -> str | None:
         """The file's column for a canonical one; a finding where a column that must be there is not."""
         declared = self.mapping.get(name)
         found = find_header(declared or name, self.raw.headers)
@@ -188,7 +186,7 @@ class _Maker:
         count = len(self.raw.rows)
         place = {"easting": 0, "northing": 1}.get(column.name)
         from_points = place is not None and self.raw.points is not None
-        header = self._header(column.name, required=column.required and not from_points)
+        header = self.header(column.name, required=column.required and not from_points)
         text = column.kind in ("identifier", "text")
         if header is None:
             if place is not None and self.raw.points is not None:
@@ -197,7 +195,7 @@ class _Maker:
             if text:
                 word = column.default if constant is None else str(constant)
                 return self._words(column.name, [word] * count)
-            return self._constant(column.name, constant)
+            return self.constant(column.name, constant)
         if column.name in self.constants:
             self.findings.warning(
                 "constant-ignored",
@@ -211,12 +209,13 @@ class _Maker:
         codes = COORDINATE_CODES if column.kind == "coordinate" else MISSING_CODES
         result = column.kind == "result"
         parsed = parse_numbers(self.raw.column(header), decimal=self.raw.decimal, codes=codes, limits=result)
-        self._report(parsed, header)
+        self.report(parsed, header)
         if result:
             self.results[column.name] = parsed
         return parsed.values
 
-    def _constant(self, name: str, constant: str | float | None) -> np.ndarray:
+    def constant(self, name: str, constant: str | float | None) -> np.ndarray:
+        """A column of one value; NaN where the study gives none."""
         value = np.nan
         if constant is not None:
             try:
@@ -275,7 +274,8 @@ class _Maker:
         )  # fmt: skip
         return [known.get(plain_word(text), known.get(text, text)) for text in texts]
 
-    def _report(self, parsed: Parsed, header: str) -> None:
+    def report(self, parsed: Parsed, header: str) -> None:
+        """Findings of the cells of one column that are no numbers, and of codes for missing."""
         rows = self.raw.rows
         groups: dict[str, list[int]] = {}
         for i in sorted(parsed.problems):
@@ -302,97 +302,6 @@ class _Maker:
                 row=int(rows[coded[0]]),
                 column=header,
             )
-
-    # -- grades -----------------------------------------------------------------------------------------
-
-    def _grades(self, element: str) -> dict[str, Any]:
-        """The three columns of one element, in its canonical unit."""
-        name = element_column(element)
-        count = len(self.raw.rows)
-        header = self._element_header(element, name)
-        if header is None:
-            value = self._constant(name, self.constants.get(name))
-            status = np.where(np.isnan(value), BLANK, MEASURED).astype(np.int8)
-            return dict(zip(element_columns((element,)), (value, status, np.full(count, np.nan))))
-        self.headers[name] = header
-        parsed = parse_numbers(self.raw.column(header), decimal=self.raw.decimal, limits=True)
-        self._report(parsed, header)
-        factor = self._factor(element, name, header)
-        limits = self.source.detection_limits
-        bare = (parsed.status == BELOW_DETECTION) & np.isnan(parsed.limit)
-        if element in limits or name in limits:
-            parsed.limit[bare] = limits.get(element, limits.get(name, np.nan))
-        elif bare.any():
-            report_rows(
-                self.findings, "error", "detection-limit-missing", self.raw.rows[bare],
-                "The result is below detection, but the limit is not given.",
-                "Write the limit into the cell, such as <0.01, or give detection_limits in the study.",
-                file=self.file, column=header,
-            )  # fmt: skip
-        return {
-            name: parsed.values * factor,
-            f"{name}_status": parsed.status,
-            f"{name}_limit": parsed.limit * factor,
-        }
-
-    def _element_header(self, element: str, name: str) -> str | None:
-        needed = element in self.needed and self.role == "assays"
-        if name in self.mapping:
-            return self._header(name, required=True)
-        candidates = [h for h in self.raw.headers if (element_of_header(h) or ("",))[0] == element]
-        if len(candidates) > 1:
-            self.findings.error(
-                "column-duplicate",
-                f"The file has {len(candidates)} columns that may be {element}: {', '.join(candidates)}.",
-                f'Name the right one in the study with columns = {{ {element} = "..." }}.',
-                file=self.file,
-                row=self.source.header_row,
-                column=candidates[0],
-            )
-        if candidates:
-            return candidates[0]
-        if name in self.constants:
-            return None
-        if needed:
-            return self._header(name, required=True)
-        self.findings.add(
-            "warning" if element in self.needed else "note",
-            "element-missing",
-            f"The file has no column of {element}; it is blank in all rows.",
-            f'Map it in the study with columns = {{ {element} = "..." }} if it has.',
-            file=self.file,
-            column=name,
-        )
-        return None
-
-    def _factor(self, element: str, name: str, header: str) -> float:
-        """Factor from the file's unit to the element's own; 1 with an error where the unit is not known."""
-        unit_of = {self._plain(key): unit for key, unit in self.source.units.items()}
-        declared = unit_of.get(name)
-        stated = (element_of_header(header) or (element, None))[1]
-        if declared is not None and known_unit(declared):
-            if stated is not None and not same_unit(declared, stated):
-                self.findings.warning(
-                    "unit-contradicts-header",
-                    f"The study says {element} is in {declared}, the header says {stated}; the study was followed.",
-                    "Correct the one that is wrong.",
-                    file=self.file,
-                    row=self.source.header_row,
-                    column=header,
-                )
-            return grade_factor(declared, ELEMENTS[element])
-        if stated is not None:
-            return grade_factor(stated, ELEMENTS[element])
-        if declared is None:
-            self.findings.error(
-                "unit-missing",
-                f"Neither the header {header!r} nor the study states the unit of {element}.",
-                f'Write units = {{ {element} = "%" }} or whatever it is in.',
-                file=self.file,
-                row=self.source.header_row,
-                column=header,
-            )
-        return 1.0
 
 
 def _element_word(text: str) -> str:
