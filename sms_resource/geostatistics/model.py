@@ -74,7 +74,9 @@ class Structure:
             raise ValueError(f"shape {self.shape!r} is not one of {', '.join(SHAPE_CODES)}")
         sill = float(self.sill)
         if not math.isfinite(sill) or sill < 0.0:
-            raise ValueError(f"sill of a {self.shape} structure is {self.sill!r}; wanted a number of zero or more")
+            raise ValueError(
+                f"sill of a {self.shape} structure is {self.sill!r}; wanted a number of zero or more"
+            )
         given: Any = self.ranges
         ranges = (given,) * 3 if np.ndim(given) == 0 else tuple(given)
         if len(ranges) != 3:

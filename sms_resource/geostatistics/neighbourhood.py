@@ -77,7 +77,9 @@ class Neighbourhood:
             if getattr(self, name) is not None:
                 object.__setattr__(self, name, _whole(name, getattr(self, name), 1))
         if self.max_samples > 1000:
-            raise ValueError(f"max_samples is {self.max_samples}; wanted at most 1000 (None takes all samples)")
+            raise ValueError(
+                f"max_samples is {self.max_samples}; wanted at most 1000 (None takes all samples)"
+            )
         if self.min_samples > self.max_samples:
             raise ValueError(f"min_samples {self.min_samples} is more than max_samples {self.max_samples}")
         if self.min_holes > self.max_samples:

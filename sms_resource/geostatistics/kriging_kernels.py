@@ -1,0 +1,393 @@
+"""The kriging systems: covariances, factorisation and weights, eight blocks side by side.
+
+Let K hold the covariances between the samples of a block, k those between the samples and the block, and 1 be
+a column of ones. With K = L L', a = L^-1 k and b = L^-1 1, ordinary kriging (Matheron 1963; Journel &
+Huijbregts 1978, chapter V) is
+
+    mu = (b.a - 1) / (b.b)          Lagrange multiplier of K w + mu 1 = k
+    w  = L'^-1 (a - mu b)
+    variance = C(V, V) - w.k - mu
+
+so one factor serves every block that sees the same samples, and every column with the same model.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from numba import njit, prange
+
+from .lane_kernels import (
+    LANES, add, div, exponential, fma, fnma, load, mul, root, splat, store, sub, where_less,
+)  # fmt: skip
+
+SPHERICAL, EXPONENTIAL, GAUSSIAN = 0, 1, 2
+DONE, SINGULAR, NOT_FINITE = 0, 3, 4
+_SAME_PLACE = 1e-12  # squared metres, see model.COINCIDENT_M
+_SMALLEST_PIVOT = 1e-11  # of the sill: beyond this the weights keep fewer than some five digits
+_FAR = 1e100  # where an empty slot of a pack stands, so that it covaries with nothing
+
+
+@njit(cache=True, error_model="numpy")
+def _covariance(shape, sill, squared):
+    """Covariance of one structure from the squared distance in units of its range."""
+    if shape == SPHERICAL:
+        h = root(squared)
+        h = where_less(h, splat(1.0), h, splat(1.0))
+        return mul(splat(sill), fnma(h, fnma(mul(h, h), splat(0.5), splat(1.5)), splat(1.0)))
+    if shape == EXPONENTIAL:
+        return mul(splat(sill), exponential(mul(root(squared), splat(-3.0))))
+    return mul(splat(sill), exponential(mul(squared, splat(-3.0))))
+
+
+@njit(cache=True, error_model="numpy")
+def _fill_matrix(at, n, shapes, sills, inverse, total_sill, matrix):
+    """Lower triangle of K, row by row: element (i, j) stands at (i (i + 1) / 2 + j) packs."""
+    for i in range(n):
+        row = i * (i + 1) // 2
+        x = load(at, (3 * i) * LANES)
+        y = load(at, (3 * i + 1) * LANES)
+        z = load(at, (3 * i + 2) * LANES)
+        for j in range(i):
+            dx = sub(x, load(at, (3 * j) * LANES))
+            dy = sub(y, load(at, (3 * j + 1) * LANES))
+            dz = sub(z, load(at, (3 * j + 2) * LANES))
+            value = splat(0.0)
+            for s in range(shapes.size):
+                u = mul(dx, splat(inverse[s, 0]))
+                v = mul(dy, splat(inverse[s, 1]))
+                w = mul(dz, splat(inverse[s, 2]))
+                squared = fma(u, u, fma(v, v, mul(w, w)))
+                value = add(value, _covariance(shapes[s], sills[s], squared))
+            store(matrix, (row + j) * LANES, value)
+        store(matrix, (row + i) * LANES, splat(total_sill))
+
+
+@njit(cache=True, error_model="numpy")
+def _factorise(matrix, n, inverse_pivot):
+    """Cholesky factor of the packed K in place, inverse diagonal apart; the smallest squared pivots.
+
+    Left-looking; four rows at a time share the loads of the pivot row and keep four sums in flight.
+    """
+    smallest = splat(math.inf)
+    for j in range(n):
+        pivot_row = (j * (j + 1) // 2) * LANES
+        pivot = load(matrix, pivot_row + j * LANES)
+        for k in range(j):
+            element = load(matrix, pivot_row + k * LANES)
+            pivot = fnma(element, element, pivot)
+        smallest = where_less(pivot, smallest, pivot, smallest)
+        scale = div(splat(1.0), root(pivot))
+        store(inverse_pivot, j * LANES, scale)
+        i = j + 1
+        while i + 3 < n:
+            r0 = (i * (i + 1) // 2) * LANES
+            r1 = r0 + (i + 1) * LANES
+            r2 = r1 + (i + 2) * LANES
+            r3 = r2 + (i + 3) * LANES
+            s0 = load(matrix, r0 + j * LANES)
+            s1 = load(matrix, r1 + j * LANES)
+            s2 = load(matrix, r2 + j * LANES)
+            s3 = load(matrix, r3 + j * LANES)
+            for k in range(j):
+                element = load(matrix, pivot_row + k * LANES)
+                s0 = fnma(load(matrix, r0 + k * LANES), element, s0)
+                s1 = fnma(load(matrix, r1 + k * LANES), element, s1)
+                s2 = fnma(load(matrix, r2 + k * LANES), element, s2)
+                s3 = fnma(load(matrix, r3 + k * LANES), element, s3)
+            store(matrix, r0 + j * LANES, mul(s0, scale))
+            store(matrix, r1 + j * LANES, mul(s1, scale))
+            store(matrix, r2 + j * LANES, mul(s2, scale))
+            store(matrix, r3 + j * LANES, mul(s3, scale))
+            i += 4
+        while i < n:
+            r0 = (i * (i + 1) // 2) * LANES
+            s0 = load(matrix, r0 + j * LANES)
+            for k in range(j):
+                s0 = fnma(load(matrix, r0 + k * LANES), load(matrix, pivot_row + k * LANES), s0)
+            store(matrix, r0 + j * LANES, mul(s0, scale))
+            i += 1
+    return smallest
+
+
+@njit(cache=True, error_model="numpy")
+def _forward(matrix, n, inverse_pivot, right, out):
+    """out = L^-1 right, and the squared length of out."""
+    length = splat(0.0)
+    for i in range(n):
+        row = (i * (i + 1) // 2) * LANES
+        value = load(right, i * LANES)
+        for k in range(i):
+            value = fnma(load(matrix, row + k * LANES), load(out, k * LANES), value)
+        value = mul(value, load(inverse_pivot, i * LANES))
+        store(out, i * LANES, value)
+        length = fma(value, value, length)
+    return length
+
+
+@njit(cache=True, error_model="numpy")
+def _backward(matrix, n, inverse_pivot, out):
+    """out = L'^-1 out, in place."""
+    for i in range(n - 1, -1, -1):
+        row = (i * (i + 1) // 2) * LANES
+        value = mul(load(out, i * LANES), load(inverse_pivot, i * LANES))
+        store(out, i * LANES, value)
+        for k in range(i):
+            store(out, k * LANES, fnma(load(matrix, row + k * LANES), value, load(out, k * LANES)))
+
+
+@njit(cache=True, error_model="numpy")
+def _block_covariances(at, n, where, offsets, shapes, sills, inverse, out):
+    """k for blocks: the mean over the discretisation points, without the nugget.
+
+    ``offsets`` (s, p, 3) holds the points relative to the centre, in the axes of the model and in units of
+    the ranges of each structure.
+    """
+    tx, ty, tz = load(where, 0), load(where, LANES), load(where, 2 * LANES)
+    points = offsets.shape[1]
+    for i in range(n):
+        dx = sub(load(at, (3 * i) * LANES), tx)
+        dy = sub(load(at, (3 * i + 1) * LANES), ty)
+        dz = sub(load(at, (3 * i + 2) * LANES), tz)
+        value = splat(0.0)
+        for s in range(shapes.size):
+            ux = mul(dx, splat(inverse[s, 0]))
+            uy = mul(dy, splat(inverse[s, 1]))
+            uz = mul(dz, splat(inverse[s, 2]))
+            part = splat(0.0)
+            if shapes[s] == SPHERICAL:
+                for p in range(points):
+                    u = sub(ux, splat(offsets[s, p, 0]))
+                    v = sub(uy, splat(offsets[s, p, 1]))
+                    w = sub(uz, splat(offsets[s, p, 2]))
+                    h = root(fma(u, u, fma(v, v, mul(w, w))))
+                    h = where_less(h, splat(1.0), h, splat(1.0))
+                    # 1 - h (1.5 - 0.5 h^2); the 1 is added once at the end
+                    part = fma(h, fnma(mul(h, h), splat(0.5), splat(1.5)), part)
+                part = mul(sub(splat(float(points)), part), splat(sills[s]))
+            else:
+                for p in range(points):
+                    u = sub(ux, splat(offsets[s, p, 0]))
+                    v = sub(uy, splat(offsets[s, p, 1]))
+                    w = sub(uz, splat(offsets[s, p, 2]))
+                    squared = fma(u, u, fma(v, v, mul(w, w)))
+                    part = add(part, _covariance(shapes[s], sills[s], squared))
+            value = add(value, part)
+        store(out, i * LANES, mul(value, splat(1.0 / points)))
+
+
+@njit(cache=True, error_model="numpy")
+def _point_covariances(at, n, where, shapes, sills, inverse, nugget, out):
+    """k for points, with the nugget at zero distance; the smallest squared distance in square metres."""
+    tx, ty, tz = load(where, 0), load(where, LANES), load(where, 2 * LANES)
+    nearest = splat(math.inf)
+    for i in range(n):
+        dx = sub(load(at, (3 * i) * LANES), tx)
+        dy = sub(load(at, (3 * i + 1) * LANES), ty)
+        dz = sub(load(at, (3 * i + 2) * LANES), tz)
+        plain = fma(dx, dx, fma(dy, dy, mul(dz, dz)))
+        nearest = where_less(plain, nearest, plain, nearest)
+        value = where_less(splat(_SAME_PLACE), plain, splat(0.0), splat(nugget))
+        for s in range(shapes.size):
+            u = mul(dx, splat(inverse[s, 0]))
+            v = mul(dy, splat(inverse[s, 1]))
+            w = mul(dz, splat(inverse[s, 2]))
+            squared = fma(u, u, fma(v, v, mul(w, w)))
+            value = add(value, _covariance(shapes[s], sills[s], squared))
+        store(out, i * LANES, value)
+    return nearest
+
+
+@njit(parallel=True, cache=True, error_model="numpy")
+def krige(
+    samples, values, targets, found, reach, count, order, starts, sizes,
+    shapes, sills, inverse, nugget, axes, offsets, block_variance, ordinary, means, thresholds, limit, workers,
+    rows, columns, estimate, variance, lagrange, slope, efficiency, negative, status, room,
+):  # fmt: skip
+    """Krige targets whose samples have been found.
+
+    Parameters
+    ----------
+    samples : (3, n) float64, sample coordinates along the axes of the model, in metres
+    values : (m, n) float64, values of the columns that share this model
+    targets : (c, 3) float64, local coordinates in metres (not rotated)
+    found, reach, count : what the search left, see ``search_samples``
+    order : (q,) int64, targets to krige, those with the same samples next to each other
+    starts, sizes : (g,) int64, runs of ``order`` that see the same samples; runs of like size are neighbours
+    shapes, sills : (s,) of the structures; inverse : (s, 3) one over their ranges
+    nugget : float
+    axes : (3, 3) rows are the axes of the model
+    offsets : (s, p, 3) discretisation points in units of the ranges; p = 0 for points
+    block_variance : float, C(V, V), or the total sill for points
+    ordinary : bool; False is simple kriging with ``means`` (m,)
+    thresholds : (m,) values above count as the threshold where ``reach`` is beyond ``limit`` (m)
+    rows : (c,) int64, output row of each target; columns : (m,) int64, output columns
+    estimate ... status : (b, k) outputs
+    room : (workers, w) float64 work space, w >= LANES * (s (s + 1) / 2 + 8 s + 16) for s samples
+    """
+    points = offsets.shape[1]
+    total_sill = nugget + sills.sum()
+    batches = (starts.size + LANES - 1) // LANES
+    widest = found.shape[1]
+    for worker in prange(workers):
+        mine = room[worker]
+        matrix = mine[: LANES * (widest * (widest + 1) // 2)]
+        rest = mine[LANES * (widest * (widest + 1) // 2) :]
+        step = LANES * widest
+        at = rest[: 3 * step]
+        inverse_pivot = rest[3 * step : 4 * step]
+        ones = rest[4 * step : 5 * step]
+        b = rest[5 * step : 6 * step]
+        right = rest[6 * step : 7 * step]
+        weights = rest[7 * step : 8 * step]
+        rest = rest[8 * step :]
+        where = rest[: 3 * LANES]
+        pivots = rest[3 * LANES : 4 * LANES]
+        multiplier = rest[4 * LANES : 5 * LANES]
+        explained = rest[5 * LANES : 6 * LANES]
+        closest = rest[6 * LANES : 7 * LANES]
+        for batch in range(worker, batches, workers):
+            first_run = batch * LANES
+            runs = min(LANES, starts.size - first_run)
+            n = 0
+            longest = 0
+            for lane in range(runs):
+                n = max(n, count[order[starts[first_run + lane]]])
+                longest = max(longest, sizes[first_run + lane])
+            for lane in range(LANES):
+                # a pack that is not full repeats its last run and writes it once
+                row = order[starts[first_run + min(lane, runs - 1)]]
+                for i in range(n):
+                    if i < count[row]:
+                        sample = found[row, i]
+                        for axis in range(3):
+                            at[(3 * i + axis) * LANES + lane] = samples[axis, sample]
+                        ones[i * LANES + lane] = 1.0
+                    else:
+                        for axis in range(3):
+                            at[(3 * i + axis) * LANES + lane] = _FAR * (i + 1.0)
+                        ones[i * LANES + lane] = 0.0
+            _fill_matrix(at, n, shapes, sills, inverse, total_sill, matrix)
+            store(pivots, 0, _factorise(matrix, n, inverse_pivot))
+            bb = _forward(matrix, n, inverse_pivot, ones, b)
+
+            for turn in range(longest):
+                for lane in range(LANES):
+                    run = first_run + min(lane, runs - 1)
+                    row = order[starts[run] + min(turn, sizes[run] - 1)]
+                    for axis in range(3):
+                        where[axis * LANES + lane] = (
+                            axes[axis, 0] * targets[row, 0]
+                            + axes[axis, 1] * targets[row, 1]
+                            + axes[axis, 2] * targets[row, 2]
+                        )
+                if points > 0:
+                    _block_covariances(at, n, where, offsets, shapes, sills, inverse, right)
+                    store(closest, 0, splat(math.inf))
+                else:
+                    store(closest, 0, _point_covariances(at, n, where, shapes, sills, inverse, nugget, right))
+                _forward(matrix, n, inverse_pivot, right, weights)
+                mu = splat(0.0)
+                if ordinary:
+                    ab = splat(-1.0)
+                    for i in range(n):
+                        ab = fma(load(weights, i * LANES), load(b, i * LANES), ab)
+                    mu = div(ab, bb)
+                    for i in range(n):
+                        reduced = fnma(mu, load(b, i * LANES), load(weights, i * LANES))
+                        store(weights, i * LANES, reduced)
+                store(multiplier, 0, mu)
+                _backward(matrix, n, inverse_pivot, weights)
+                wk = splat(0.0)
+                for i in range(n):
+                    wk = fma(load(weights, i * LANES), load(right, i * LANES), wk)
+                store(explained, 0, wk)
+
+                for lane in range(runs):
+                    run = first_run + lane
+                    if turn >= sizes[run]:
+                        continue
+                    row = order[starts[run] + turn]
+                    out = rows[row]
+                    if not pivots[lane] > _SMALLEST_PIVOT * total_sill:
+                        for c in range(columns.size):
+                            status[out, columns[c]] = SINGULAR
+                        continue
+                    exact = closest[lane] <= _SAME_PLACE
+                    if exact:
+                        # a point on a sample: the system gives weight one; leave no rounding in it
+                        for i in range(count[row]):
+                            dx = at[(3 * i) * LANES + lane] - where[lane]
+                            dy = at[(3 * i + 1) * LANES + lane] - where[LANES + lane]
+                            dz = at[(3 * i + 2) * LANES + lane] - where[2 * LANES + lane]
+                            here = dx * dx + dy * dy + dz * dz <= _SAME_PLACE
+                            weights[i * LANES + lane] = 1.0 if here else 0.0
+                        multiplier[lane] = 0.0
+                        explained[lane] = block_variance
+                    below_zero = 0.0
+                    for i in range(count[row]):
+                        below_zero += min(weights[i * LANES + lane], 0.0)
+                    factor = multiplier[lane]
+                    kriged = block_variance - explained[lane] - factor
+                    # rounding may leave a hair below zero
+                    kriged = max(kriged, 0.0) if kriged > -1e-6 * total_sill else math.nan
+                    gain = block_variance - kriged
+                    for c in range(columns.size):
+                        column = columns[c]
+                        total = 0.0
+                        for i in range(count[row]):
+                            value = values[c, found[row, i]]
+                            if value > thresholds[c] and reach[row, i] > limit:
+                                value = thresholds[c]
+                            total += weights[i * LANES + lane] * (value - means[c])
+                        total += means[c]
+                        if not (math.isfinite(total) and math.isfinite(kriged)):
+                            status[out, column] = NOT_FINITE
+                            continue
+                        status[out, column] = DONE
+                        estimate[out, column] = total
+                        variance[out, column] = kriged
+                        lagrange[out, column] = factor
+                        slope[out, column] = (gain + abs(factor)) / (gain + 2.0 * abs(factor))
+                        efficiency[out, column] = gain / block_variance if block_variance > 0.0 else math.nan
+                        negative[out, column] = below_zero
+
+
+@njit(parallel=True, cache=True, error_model="numpy")
+def covariances_to_targets(
+    samples, targets, shapes, sills, inverse, nugget, axes, offsets, workers, out, room
+):
+    """k between all samples and each target, for the estimate from all samples.
+
+    ``out`` (c, n) receives the covariances; ``room`` (workers, LANES * (4 n + 3)) is work space. The rest as in
+    ``krige``.
+    """
+    n = samples.shape[1]
+    points = offsets.shape[1]
+    batches = (targets.shape[0] + LANES - 1) // LANES
+    for worker in prange(workers):
+        at = room[worker, : 3 * n * LANES]
+        right = room[worker, 3 * n * LANES : 4 * n * LANES]
+        where = room[worker, 4 * n * LANES :]
+        for i in range(n):
+            for axis in range(3):
+                store(at, (3 * i + axis) * LANES, splat(samples[axis, i]))
+        for batch in range(worker, batches, workers):
+            first = batch * LANES
+            lanes = min(LANES, targets.shape[0] - first)
+            for lane in range(LANES):
+                row = first + min(lane, lanes - 1)
+                for axis in range(3):
+                    where[axis * LANES + lane] = (
+                        axes[axis, 0] * targets[row, 0]
+                        + axes[axis, 1] * targets[row, 1]
+                        + axes[axis, 2] * targets[row, 2]
+                    )
+            if points > 0:
+                _block_covariances(at, n, where, offsets, shapes, sills, inverse, right)
+            else:
+                _point_covariances(at, n, where, shapes, sills, inverse, nugget, right)
+            for lane in range(lanes):
+                for i in range(n):
+                    out[first + lane, i] = right[i * LANES + lane]

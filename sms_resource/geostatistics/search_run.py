@@ -1,0 +1,197 @@
+"""Search for the samples of many targets: the passes, the order of work, and what was found."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from .neighbourhood import Neighbourhood
+from .search_kernels import (
+    ENOUGH,
+    MOST_SAMPLES,
+    SHELLS,
+    hash_sets,
+    mark_new_sets,
+    search_samples,
+)
+
+FloatArray = NDArray[np.float64]
+Int32Array = NDArray[np.int32]
+Int64Array = NDArray[np.int64]
+
+CHUNK = 32768  # targets in work at one time: some 20 MB, whatever the number of targets
+_LONGEST_RUN = 8  # targets that share one factorisation before it is made again
+_UNLIMITED = 1 << 30
+
+
+@contextmanager
+def using_threads(threads: int) -> Iterator[None]:
+    """Let numba use ``threads`` threads, and give back what was set before."""
+    import numba
+
+    before = numba.get_num_threads()
+    numba.set_num_threads(threads)
+    try:
+        yield
+    finally:
+        numba.set_num_threads(before)
+
+
+def along(axes: FloatArray, points: FloatArray) -> FloatArray:
+    """Components of (n, 3) points along the rows of ``axes``, as a (3, n) array."""
+    x, y, z = points.T
+    return np.ascontiguousarray(np.stack([row[0] * x + row[1] * y + row[2] * z for row in axes]))
+
+
+def near_order(points: FloatArray) -> Int64Array:
+    """An order of (n, 3) points in which neighbours in space mostly follow each other (Morton 1966)."""
+    if len(points) < 3:
+        return np.arange(len(points))
+    low = points.min(axis=0)
+    extent = float((points - low).max())
+    cells = ((points - low) * (1023.0 / extent if extent > 0.0 else 0.0)).astype(np.uint64)
+    key = np.zeros(len(points), dtype=np.uint64)
+    for axis in range(3):
+        bits = cells[:, axis]
+        for shift, mask in ((16, 0x30000FF), (8, 0x300F00F), (4, 0x30C30C3), (2, 0x9249249)):
+            bits = (bits | (bits << np.uint64(shift))) & np.uint64(mask)
+        key |= bits << np.uint64(axis)
+    return np.argsort(key, kind="stable")
+
+
+@dataclass
+class Found:
+    """What the search found for the c targets of one chunk; see ``search_samples`` for the arrays."""
+
+    samples: Int32Array
+    reach: FloatArray
+    count: Int32Array
+    hole_count: Int32Array
+    nearest: FloatArray
+    status: NDArray[np.int8]
+    pass_number: NDArray[np.int8]
+
+    def runs(self) -> tuple[Int64Array, Int64Array, Int64Array]:
+        """Targets with enough samples, ordered so that those with the same samples are next to each other.
+
+        Returns
+        -------
+        order : (q,) targets
+        starts, sizes : runs of ``order`` that see the same samples, the longest first
+        """
+        hashes = np.empty(len(self.count), dtype=np.uint64)
+        hash_sets(self.samples, self.count, self.status, hashes)
+        usable = np.flatnonzero(self.status == ENOUGH)
+        order = usable[np.argsort(hashes[usable], kind="stable")].astype(np.int64)
+        if not len(order):
+            return order, order, order
+        is_new = np.empty(len(order), dtype=np.bool_)
+        mark_new_sets(self.samples, self.count, order, is_new)
+        starts = np.flatnonzero(is_new)
+        sizes = np.diff(np.append(starts, len(order)))
+        pieces = -(-sizes // _LONGEST_RUN)
+        part = np.arange(pieces.sum()) - np.repeat(np.cumsum(pieces) - pieces, pieces)
+        first = np.repeat(starts, pieces) + part * _LONGEST_RUN
+        length = np.minimum(np.repeat(sizes, pieces) - part * _LONGEST_RUN, _LONGEST_RUN)
+        longest_first = np.argsort(-length, kind="stable")
+        return order, first[longest_first], length[longest_first]
+
+
+class Finder:
+    """The search of one set of samples under one or several passes.
+
+    Parameters
+    ----------
+    points : (n, 3) local coordinates of the samples, metres
+    holes : (n,) numbers of their holes
+    passes : neighbourhoods to try in turn
+    threads : int
+    """
+
+    def __init__(
+        self, points: FloatArray, holes: Int32Array, passes: Sequence[Neighbourhood], threads: int
+    ) -> None:
+        if len(points) >= MOST_SAMPLES:
+            raise ValueError(
+                f"coordinates holds {len(points)} samples; the search takes up to {MOST_SAMPLES}"
+            )
+        self.passes = list(passes)
+        self.threads = threads
+        self._holes = np.ascontiguousarray(holes, dtype=np.int32)
+        self._plain = np.ascontiguousarray(points.T)
+        self._scaled = [along(item.axes, points) / np.array(item.radii)[:, None] for item in self.passes]
+        n = len(points)
+        self._room = np.empty((threads, 3, max(n, SHELLS + 1)), dtype=np.int64)
+        self._keys = np.empty((threads, max(n, 1)), dtype=np.int64)
+        self.capacity = max(min(item.max_samples, max(n, 1)) for item in self.passes)
+
+    def find(
+        self, targets: FloatArray, skip_hole: Int32Array | None = None, skip_sample: Int32Array | None = None
+    ) -> Found:
+        """Samples for (c, 3) local targets, in the order given; neighbours should follow each other."""
+        c = len(targets)
+        none = np.full(c, -1, dtype=np.int32)
+        out = Found(
+            np.zeros((c, self.capacity), dtype=np.int32),
+            np.zeros((c, self.capacity)),
+            np.zeros(c, dtype=np.int32),
+            np.zeros(c, dtype=np.int32),
+            np.full(c, np.nan),
+            np.ones(c, dtype=np.int8),
+            np.zeros(c, dtype=np.int8),
+        )
+        if not len(self._holes):
+            return out
+        finite = np.isfinite(targets).all(axis=1)
+        rows = np.flatnonzero(finite)
+        with using_threads(self.threads):
+            for number, (item, scaled) in enumerate(zip(self.passes, self._scaled), start=1):
+                if not len(rows):
+                    break
+                limits = np.array(
+                    [
+                        min(item.max_samples, self.capacity),
+                        item.min_samples,
+                        item.max_per_hole or _UNLIMITED,
+                        item.min_holes,
+                        item.sector_count,
+                        item.sector_limit,
+                    ],
+                    dtype=np.int64,
+                )
+                search_samples(
+                    scaled,
+                    self._plain,
+                    self._holes,
+                    np.ascontiguousarray(along(item.axes, targets).T / np.array(item.radii)),
+                    targets,
+                    rows,
+                    none if skip_hole is None else skip_hole,
+                    none if skip_sample is None else skip_sample,
+                    limits,
+                    item.radii[0],
+                    self.threads,
+                    out.samples,
+                    out.reach,
+                    out.count,
+                    out.hole_count,
+                    out.nearest,
+                    out.status,
+                    self._room,
+                    self._keys,
+                )
+                out.pass_number[rows[out.status[rows] == ENOUGH]] = number
+                rows = rows[out.status[rows] != ENOUGH]
+        return out
+
+
+def target_chunks(targets: FloatArray, origin: FloatArray) -> Iterator[tuple[Int64Array, FloatArray]]:
+    """Chunks of (b, 3) targets: their rows, neighbours in space together, and their local coordinates."""
+    for first in range(0, len(targets), CHUNK):
+        local = np.asarray(targets[first : first + CHUNK], dtype=float) - origin
+        order = near_order(np.where(np.isfinite(local), local, 0.0))
+        yield order + first, np.ascontiguousarray(local[order])
