@@ -6,11 +6,13 @@ polygon's edges that lie in the cell or to the right of it, so no polygon is eve
 
 from __future__ import annotations
 
+from typing import Any
+
 import numba
 import numpy as np
 from numpy.typing import NDArray
 
-Array = NDArray[np.float64]
+Array = NDArray[Any]
 
 
 @numba.njit(cache=True)

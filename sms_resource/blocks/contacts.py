@@ -80,7 +80,16 @@ def base_contacts(
                 row=collar.get("source_row"),
             )
             continue
-        rows.append(_contact(collar, logged, sulphide, end_tolerance_m, waste_note_m, findings))
+        rows.append(
+            _contact(
+                {str(k): v for k, v in collar.items()},
+                logged,
+                sulphide,
+                end_tolerance_m,
+                waste_note_m,
+                findings,
+            )
+        )
     frame = pd.DataFrame(rows, columns=CONTACT_COLUMNS)
     if frame.empty:
         return frame, findings

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
 
-Array = NDArray[np.float64]
+Array = NDArray[Any]
 
 
 @dataclass(frozen=True, eq=False)

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from sms_resource.blocks.grid import SurfaceGrid
 
-Array = NDArray[np.float64]
+Array = NDArray[Any]
 
 
 def slope(grid: SurfaceGrid, footprint_m: float = 5.0) -> SurfaceGrid:

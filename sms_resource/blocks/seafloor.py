@@ -14,7 +14,7 @@ from sms_resource.findings import Findings
 
 __all__ = ["hillshade", "prepare_seafloor", "reproject", "resample", "roughness", "slope"]
 
-Array = NDArray[np.float64]
+Array = NDArray[Any]
 COARSE_CELL_M = 10.0  # ship sonar at depth sees 20 to 50 m; a mound is 50 to 300 m across
 
 

@@ -1,0 +1,184 @@
+"""Volume, categories and audit of a body; contacts honoured on its lattice."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from sms_resource.blocks.base import ThicknessData
+from sms_resource.blocks.body_inputs import refine
+from sms_resource.blocks.grid import SurfaceGrid
+from sms_resource.blocks.honour import honour
+from sms_resource.blocks.polygons import CellMoments, lattice_moments, polygon_edges
+from sms_resource.findings import Findings
+
+Array = NDArray[Any]
+CATEGORIES = ("drilled", "sideways", "downwards")
+FINEST_NODES = 3_000_000
+STEEP = 3.0  # nodes round a hole may be moved by this many times what the hole was missed by, and 0.5 m
+
+
+def outline_moments(grid: SurfaceGrid, outline: Any) -> CellMoments:
+    """Exact shares of the cells between nodes inside an outline; cells next to a node without a value hold none."""
+    edges = polygon_edges(outline)
+    scaled = (edges - np.array([grid.x0, grid.y0] * 2)) / np.array([grid.dx, grid.dy] * 2)
+    ny, nx = grid.shape
+    moments = lattice_moments(scaled, ny - 1, nx - 1)
+    good = np.isfinite(grid.values)
+    whole = good[:-1, :-1] & good[1:, :-1] & good[:-1, 1:] & good[1:, 1:]
+    return CellMoments(
+        *(np.where(whole, part, 0.0) for part in (moments.area, moments.s, moments.t, moments.st))
+    )
+
+
+def cell_volumes(values: Array, moments: CellMoments, cell_area: float) -> Array:
+    """Exact integral of a bilinear surface over outline and cell (ny - 1, nx - 1)."""
+    nodes = np.nan_to_num(values)
+    a = nodes[:-1, :-1]
+    b = nodes[:-1, 1:] - a
+    c = nodes[1:, :-1] - a
+    d = nodes[1:, 1:] - nodes[1:, :-1] - b
+    return (a * moments.area + b * moments.s + c * moments.t + d * moments.st) * cell_area
+
+
+def measure(
+    top: SurfaceGrid,
+    thickness: SurfaceGrid,
+    known: SurfaceGrid,
+    distance: SurfaceGrid,
+    outline: Any,
+    reach_m: float,
+) -> tuple[float, pd.DataFrame]:
+    """Volume in m3, and its split into drilled, extrapolated sideways and extrapolated downwards."""
+    moments = outline_moments(top, outline)
+    area = top.dx * top.dy
+    whole = cell_volumes(thickness.values, moments, area)
+    above = np.minimum(cell_volumes(np.minimum(known.values, thickness.values), moments, area), whole)
+    s, t = moments.centroid()
+    rows, columns = np.indices(s.shape)
+    far = distance.sample(top.x0 + (columns + s) * top.dx, top.y0 + (rows + t) * top.dy) > reach_m
+    volume = float(whole.sum())
+    parts = [float(above[~far].sum()), float(whole[far].sum()), float((whole - above)[~far].sum())]
+    share = [part / volume if volume > 0 else 0.0 for part in parts]
+    return volume, pd.DataFrame({"category": CATEGORIES, "volume_m3": parts, "share": share})
+
+
+def hole_distance(top: SurfaceGrid, contacts: pd.DataFrame) -> SurfaceGrid:
+    """Distance in plan from every node to the nearest hole, in m; infinite where there is no hole."""
+    if len(contacts) == 0:
+        return top.with_values(np.full(top.shape, 1e9))
+    from scipy.spatial import cKDTree
+
+    x, y = top.mesh()
+    tree = cKDTree(contacts[["easting", "northing"]].to_numpy(dtype=np.float64))
+    return top.with_values(tree.query(np.column_stack([x.ravel(), y.ravel()]))[0].reshape(top.shape))
+
+
+def honour_holes(
+    top: SurfaceGrid,
+    surfaces: tuple[SurfaceGrid, SurfaceGrid, SurfaceGrid],
+    holes: ThicknessData,
+    names: list[str],
+    findings: Findings,
+) -> tuple[SurfaceGrid, SurfaceGrid, SurfaceGrid, SurfaceGrid]:
+    """Make thickness and known thickness honour the holes, on a finer lattice where holes crowd.
+
+    Holes in one cell can contradict each other on a bilinear grid, or tear at its corners; the lattice is then
+    halved until they do not. Holes at one and the same place that contradict each other are reported.
+
+    Returns
+    -------
+    (top, thickness, known, sigma)
+    """
+    thickness, known, sigma = surfaces
+    x, y, target, at_least = holes.x, holes.y, holes.thickness, holes.is_open
+    x, y, target, at_least = _one_place(x, y, target, at_least, names, findings)
+    while True:
+        done, missed = honour(thickness, x, y, target, at_least)
+        got = thickness.sample(x, y)
+        gap = np.where(at_least, np.maximum(target - got, 0.0), np.abs(target - got))
+        limit = STEEP * (gap.max() if gap.size else 0.0) + 0.5
+        torn = float(np.abs(done.values - thickness.values).max()) > limit
+        if (not missed.any() and not torn) or 4 * thickness.values.size > FINEST_NODES:
+            break
+        top, thickness, known, sigma = (refine(grid, 2, 2) for grid in (top, thickness, known, sigma))
+    if missed.any():
+        worst = int(np.argmax(missed))
+        findings.warning(
+            "contacts-joined",
+            f"{int((missed > 0).sum())} contacts stand closer together than the finest grid ({top.dx:.3g} m) can "
+            f"tell apart; the worst is missed by {missed[worst]:.3f} m at {x[worst]:.2f}, {y[worst]:.2f}",
+            "check twin holes for their position, or leave one out",
+        )
+    held, _ = honour(known, x, y, target, np.zeros(len(x), dtype=bool))
+    return top, done, known.with_values(np.minimum(held.values, done.values)), sigma
+
+
+def _one_place(
+    x: Array, y: Array, target: Array, at_least: Array, names: list[str], findings: Findings
+) -> tuple[Array, Array, Array, Array]:
+    """Join holes at one and the same place: contacts by their mean, lower bounds by the greatest."""
+    place = np.round(np.column_stack([x, y]), 3)
+    unique, group = np.unique(place, axis=0, return_inverse=True)
+    group = group.reshape(-1)
+    if len(unique) == len(x):
+        return x, y, target, at_least
+    keep: list[int] = []
+    target = target.copy()
+    for n in range(len(unique)):
+        members = np.flatnonzero(group == n)
+        reached = members[~at_least[members]]
+        chosen = int(reached[0]) if reached.size else int(members[np.argmax(target[members])])
+        if reached.size:
+            values = target[members]
+            target[chosen] = float(target[reached].mean())
+            clash = (
+                np.abs(target[reached] - target[chosen]).max() > 1e-6 or values.max() > target[chosen] + 1e-6
+            )
+            if clash:
+                findings.warning(
+                    "contacts-joined",
+                    f"holes {', '.join(names[m] for m in members)} stand at one place and disagree on the thickness "
+                    f"({values.min():.2f} to {values.max():.2f} m); the mean of those that reached the base, "
+                    f"{target[chosen]:.2f} m, is taken",
+                    "check their positions",
+                )
+        keep.append(chosen)
+    index = np.array(sorted(keep))
+    return x[index], y[index], target[index], at_least[index]
+
+
+def audit_contacts(contacts: pd.DataFrame, thickness: SurfaceGrid, top: SurfaceGrid) -> pd.DataFrame:
+    """What each contact asks and what the body has there, in m."""
+    x, y = (contacts[name].to_numpy(dtype=np.float64) for name in ("easting", "northing"))
+    got = thickness.sample(x, y) if len(contacts) else np.zeros(0)
+    asked = contacts["thickness_m"].to_numpy(dtype=np.float64)
+    is_open = (contacts["kind"] == "open").to_numpy()
+    off = got - asked
+    return pd.DataFrame({
+        "hole_id": contacts["hole_id"].to_numpy(), "easting": x, "northing": y, "kind": contacts["kind"].to_numpy(),
+        "thickness_m": asked, "body_thickness_m": got,
+        "base_elevation": (top.sample(x, y) if len(contacts) else got) - got,
+        "extrapolated_m": np.where(is_open, off, 0.0),
+        "missed_m": np.where(is_open, np.maximum(-off, 0.0), np.abs(off)),
+        "honoured": np.where(is_open, off >= 0.0, np.abs(off) <= 1e-6),
+    })  # fmt: skip
+
+
+def report_gaps(top: SurfaceGrid, outline: Any, findings: Findings) -> None:
+    """Say how much of the outline has no seafloor."""
+    moments = outline_moments(top, outline)
+    covered = float(moments.area.sum()) * top.dx * top.dy
+    gap = outline.area - covered
+    if covered <= 0:
+        findings.error("outline-no-seafloor", "no cell inside the outline has a seafloor",
+                       "check the grid's nodata value, or mend it")  # fmt: skip
+    elif gap > 1e-6 * outline.area:
+        findings.warning(
+            "outline-no-seafloor",
+            f"{gap:.0f} m2 of the outline ({100 * gap / outline.area:.2g} %) has no seafloor and holds no volume",
+            "mend the grid",
+        )
