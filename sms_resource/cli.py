@@ -28,9 +28,12 @@ OutOption = Annotated[Path, typer.Option("--out", "-o", help="Folder of the resu
 JsonOption = Annotated[bool, typer.Option("--json", help="Print the findings as JSON and nothing else.")]
 QuietOption = Annotated[bool, typer.Option("--quiet", "-q", help="Print findings of errors only.")]
 ThreadsOption = Annotated[
-    int | None, typer.Option("--threads", min=1, help="Threads; all cores if not given. Results do not depend on it.")
+    int | None,
+    typer.Option("--threads", min=1, help="Threads; all cores if not given. Results do not depend on it."),
 ]
-CacheOption = Annotated[bool, typer.Option("--cache/--no-cache", help="Use outputs of stages that were made before.")]
+CacheOption = Annotated[
+    bool, typer.Option("--cache/--no-cache", help="Use outputs of stages that were made before.")
+]
 
 
 def _version(wanted: bool) -> None:
@@ -126,7 +129,9 @@ def run(
 @app.command()
 def view(
     results: Annotated[Path, typer.Argument(help="Folder of results of a run.")] = Path("results"),
-    screenshot: Annotated[Path | None, typer.Option(help="Draw into this PNG file instead of a window.")] = None,
+    screenshot: Annotated[
+        Path | None, typer.Option(help="Draw into this PNG file instead of a window.")
+    ] = None,
     variable: Annotated[str | None, typer.Option(help="Grade to colour by, such as cu or cu_pct.")] = None,
     cutoff: Annotated[float | None, typer.Option(help="Show blocks at or above this grade.")] = None,
     exaggeration: Annotated[float, typer.Option(min=0.1, max=50, help="Vertical exaggeration.")] = 1.0,
@@ -241,7 +246,8 @@ def _print_summary(console: Any, result: Any) -> None:
     counts = result.findings.counts()
     if result.out is None:
         console.print(
-            f"\nNot run: {counts['error']} errors. Earlier results, if any, are as they were.", style="bold red"
+            f"\nNot run: {counts['error']} errors. Earlier results, if any, are as they were.",
+            style="bold red",
         )
         return
     summary = result.summary

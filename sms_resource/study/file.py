@@ -171,6 +171,9 @@ def _fault_finding(fault: dict[str, Any], rows: dict[str, int], name: str) -> Fi
         table = ".".join(place[:-1]) or "the top level"
         return Finding("error", "study-unknown-key", f"'{place[-1]}' is not a key of {table}",
                        nearest(place[-1], known_keys(place[:-1])), name, row, dotted)  # fmt: skip
+    if fault["type"] == "missing" and place[-1].isdigit():
+        short = f"'{'.'.join(place[:-1])}' has too few values"
+        return Finding("error", "study-value", short, describe(place), name, row, dotted)
     if fault["type"] == "missing":
         return Finding("error", "study-missing-key", f"'{dotted}' must be given", f"Add it: {describe(place)}", name,
                        row, dotted)  # fmt: skip
@@ -217,6 +220,12 @@ def known_keys(place: list[str]) -> list[str]:
     """Keys that may stand in the table at ``place``."""
     model = _section_at(place)
     return list(model.model_fields) if model else []
+
+
+def is_key(dotted: str) -> bool:
+    """Whether a dotted name is a key of the study file (inside tables with names of the user's too)."""
+    *table, last = dotted.split(".")
+    return last in known_keys(table) or (bool(table) and not known_keys(table) and is_key(".".join(table)))
 
 
 def describe(place: list[str]) -> str:
@@ -284,7 +293,7 @@ def _check_sense(study: Study, rows: dict[str, int], findings: Findings) -> None
         fault("prospects.judged", "study-value-missing", "the prospects are said to be judged, but not by whom and on what",
               "Fill prospects.by and prospects.basis, or set judged = false.")  # fmt: skip
     for dotted in config.reasons:
-        if not describe(dotted.split(".")):
+        if not is_key(dotted):
             fault(f"reasons.{dotted}", "study-unknown-key", f"a reason is given for '{dotted}', which is not a key",
                   "Name a key of the study.")  # fmt: skip
     _check_crs(study, fault)

@@ -32,7 +32,7 @@ class TableFile(Section):
     )
     header_row: int = key(1, "Row of the column names.", ge=1, decision=False)
     detection_limits: dict[str, float] = key(
-        {}, "Detection limit of each element in the file's unit, for results that say only \"bdl\"."
+        {}, 'Detection limit of each element in the file\'s unit, for results that say only "bdl".'
     )
     constants: dict[str, str | float] = key(
         {}, 'Values for columns that the file lacks, such as method = "laboratory".'
@@ -44,6 +44,7 @@ class GridFile(Section):
 
     file: str = key(..., "Path of the file, relative to the study file.", decision=False)
     crs: str | None = key(None, 'Coordinate system, where the file has none inside, such as "EPSG:32702".')
+    reproject: bool = key(False, "Whether to reproject a grid that is in another coordinate system.")
     vertical: Literal["elevation", "depth"] = key(
         "elevation", "Whether cells hold elevations or depths (positive down)."
     )

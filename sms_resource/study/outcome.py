@@ -11,27 +11,48 @@ from sms_resource.study.base import Section, key
 
 
 class Classes(Section):
-    """[classes]: criteria by which classes are proposed. A CP decides."""
+    """[classes]: criteria by which classes are proposed. A CP decides; no code sets these numbers."""
 
+    judged_on: str = key("cu", "Element whose kriging decides slope, holes and distance.")
     indicated_within_m: float = key(
-        20.0, "Mean distance to holes within which a block may be Indicated.", gt=0
+        20.0, "Distance to the nearest sample within which a block may be Indicated.", gt=0
     )
     indicated_holes: int = key(3, "Holes that must inform an Indicated block.", ge=1)
+    indicated_samples: int = key(6, "Samples that must inform an Indicated block.", ge=1)
     indicated_slope: float = key(0.6, "Least slope of regression of an Indicated block.", ge=0, le=1)
     inferred_within_m: float = key(
         50.0, "Distance to the nearest sample within which a block may be Inferred.", gt=0
     )
-    inferred_holes: int = key(1, "Holes that must inform an Inferred block.", ge=1)
-    judged_on: str = key("cu", "Element whose kriging decides slope, holes and distance.")
-    least_recovery_pct: float = key(
-        60.0, "Mean recovery of a domain under which its blocks go down one class.", ge=0, le=100
-    )
+    inferred_holes: int = key(2, "Holes that must inform an Inferred block.", ge=1)
+    inferred_samples: int = key(2, "Samples that must inform an Inferred block.", ge=1)
     allow_measured: bool = key(False, "Whether Measured may be proposed at all.")
     measured_within_m: float = key(10.0, "Distance within which a block may be Measured.", gt=0)
     measured_holes: int = key(5, "Holes that must inform a Measured block.", ge=1)
+    measured_samples: int = key(10, "Samples that must inform a Measured block.", ge=1)
     measured_slope: float = key(0.9, "Least slope of regression of a Measured block.", ge=0, le=1)
-    smooth: bool = key(True, "Whether classes are smoothed to connected volumes.")
-    downgrade: bool = key(True, "Whether the downgrade rules apply.")
+    least_recovery_pct: float = key(
+        60.0, "Mean recovery of a domain under which its blocks go down one class.", ge=0, le=100
+    )
+    caution_recovery_pct: float = key(
+        80.0, "Mean recovery under which blocks stay Inferred unless no bias is shown.", ge=0, le=100
+    )
+    holes_in_range: int = key(
+        3, "Holes within the variogram range under which blocks go down one class.", ge=0
+    )
+    least_slope: float = key(0.5, "Slope of regression under which blocks go down one class.", ge=0, le=1)
+    position_share: float = key(
+        0.5,
+        "Standard error of position, as a share of the block, above which blocks go down one class.",
+        gt=0,
+    )
+    rules_off: tuple[str, ...] = key(
+        (), "Codes of downgrade rules that the study switches off, each with a reason."
+    )
+    floor: Literal["unclassified", "inferred"] = key(
+        "inferred", "Lowest class that a downgrade rule may lead to."
+    )
+    smooth: bool = key(True, "Whether classes are smoothed to connected volumes.", alternatives=(False,))
+    least_volume_m3: float = key(500.0, "Least volume of a connected class.", ge=0)
 
 
 class Cutoff(Section):

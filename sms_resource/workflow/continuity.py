@@ -45,7 +45,9 @@ def variograms(context: Context) -> VariogramState:
             inferences[(domain, metal)] = inference
     samples = samples.assign(declustering_weight=weights)
     assumed = sum(1 for item in inferences.values() if item.assumed)
-    context.detail = f"{len(inferences)} variograms, {assumed} with assumed parts; hole spacing {spacing:.0f} m"
+    context.detail = (
+        f"{len(inferences)} variograms, {assumed} with assumed parts; hole spacing {spacing:.0f} m"
+    )
     return VariogramState(
         samples=samples, inferences=inferences, cuts=cuts, scans=pd.concat(scans, ignore_index=True),
         facts={"hole_spacing_m": spacing},
@@ -150,7 +152,9 @@ def infer(
         nugget_share=fixed.nugget_share if fixed else None,
         total_sill=fixed.total_sill if fixed else None,
         ranges=fixed.ranges_m if fixed else None,
-        structures=tuple((s.shape, s.sill, s.ranges_m) for s in fixed.structures) if fixed and fixed.structures else None,
+        structures=tuple((s.shape, s.sill, s.ranges_m) for s in fixed.structures)
+        if fixed and fixed.structures
+        else None,
         range_factor=choice.range_factor,
     )
     return infer_variogram(

@@ -17,7 +17,11 @@ from sms_resource.workflow.state import BlockState, DensityState, EstimateState,
 
 DETAILS = ("variance", "slope_of_regression", "kriging_efficiency", "sample_count", "hole_count", "nearest_distance",
            "negative_weight_sum", "pass_number")  # fmt: skip
-_SHORT = {"slope_of_regression": "slope", "kriging_efficiency": "efficiency", "nearest_distance": "nearest_distance_m"}
+_SHORT = {
+    "slope_of_regression": "slope",
+    "kriging_efficiency": "efficiency",
+    "nearest_distance": "nearest_distance_m",
+}
 
 
 def estimate(context: Context) -> EstimateState:
@@ -52,7 +56,11 @@ def estimate(context: Context) -> EstimateState:
         )  # fmt: skip
     context.detail = f"{len(frame):,} blocks, {len(metals)} metals, {len(config.domains.sulphide)} domains"
     return EstimateState(
-        frame=frame, companions=companions, targets=targets, statistics=pass_statistics(frame), neighbourhoods=parts
+        frame=frame,
+        companions=companions,
+        targets=targets,
+        statistics=pass_statistics(frame),
+        neighbourhoods=parts,
     )
 
 
@@ -80,7 +88,11 @@ def neighbourhoods(state: VariogramState, domain: str, config: Any) -> list[Any]
             for (name, _), item in state.inferences.items()
             if name == domain and item.model.structures
         ]
-        radii = tuple(float(value) for value in choice.range_factor * np.mean(ranges, axis=0)) if ranges else (30.0, 30.0, 4.0)
+        radii = (
+            tuple(float(value) for value in choice.range_factor * np.mean(ranges, axis=0))
+            if ranges
+            else (30.0, 30.0, 4.0)
+        )
     common = dict(
         max_samples=choice.most_samples, max_per_hole=choice.most_per_hole, sectors=choice.sectors,
         max_per_sector=choice.most_per_sector, azimuth=angles.azimuth_deg, plunge=angles.plunge_deg, tilt=angles.tilt_deg,
@@ -96,7 +108,9 @@ def neighbourhoods(state: VariogramState, domain: str, config: Any) -> list[Any]
     ]
     if choice.fill:
         far = 1e4 / max(radii)
-        hoods.append(Neighbourhood(tuple(far * radius for radius in radii), min_samples=1, min_holes=1, **common))
+        hoods.append(
+            Neighbourhood(tuple(far * radius for radius in radii), min_samples=1, min_holes=1, **common)
+        )
     return hoods
 
 
@@ -113,7 +127,8 @@ def _restraint(config: Any, metals: list[str]) -> Any:
     if not above:
         return None
     return HighGradeRestraint(
-        threshold=tuple(above.get(metal, np.inf) for metal in metals), distance_fraction=config.search.restrain_beyond
+        threshold=tuple(above.get(metal, np.inf) for metal in metals),
+        distance_fraction=config.search.restrain_beyond,
     )
 
 
@@ -188,7 +203,11 @@ def krige_domains(
             lead = leading[used] == domain
             _keep_details(details, result, used, lead, metals, len(targets))
         grades[domain] = pd.DataFrame(table, columns=metals)
-    return grades, {(domain, str(n)): hood for domain, list_ in hoods.items() for n, hood in enumerate(list_)}, details
+    return (
+        grades,
+        {(domain, str(n)): hood for domain, list_ in hoods.items() for n, hood in enumerate(list_)},
+        details,
+    )
 
 
 def _keep_details(

@@ -41,7 +41,17 @@ def composite_options(config: Any) -> dict[str, Any]:
 
 def composite(context: Context) -> EvidenceState:
     """Position the holes, join assays to runs and logs, make composites, and describe the evidence."""
-    from sms_resource.samples import associations, desurvey, domains, position, quality, recovery, surface, topcuts, twins
+    from sms_resource.samples import (
+        associations,
+        desurvey,
+        domains,
+        position,
+        quality,
+        recovery,
+        surface,
+        topcuts,
+        twins,
+    )
     from sms_resource.samples.assays import resolve_assays
     from sms_resource.samples.composites import composite as make_composites
 
@@ -130,10 +140,17 @@ def domain_table(data: LoadedData, config: Any) -> pd.DataFrame:
     from sms_resource.samples.domains import domain_intervals
 
     if config.domains.codes:
-        return domain_intervals(data.drill.lithology, dict(config.domains.codes), default=config.domains.unlogged)
+        return domain_intervals(
+            data.drill.lithology, dict(config.domains.codes), default=config.domains.unlogged
+        )
     collars = data.drill.collars
     return pd.DataFrame(
-        {"hole_id": collars["hole_id"], "from_m": 0.0, "to_m": collars["length_m"], "domain": config.domains.sulphide[0]}
+        {
+            "hole_id": collars["hole_id"],
+            "from_m": 0.0,
+            "to_m": collars["length_m"],
+            "domain": config.domains.sulphide[0],
+        }
     )
 
 

@@ -97,5 +97,9 @@ def domain_shares(frame: Any, domains: tuple[str, ...]) -> dict[str, np.ndarray]
     shares = {}
     for domain in domains:
         column = f"share_{domain}"
-        shares[domain] = frame[column].to_numpy(dtype=float) if column in frame else (frame["domain"] == domain).to_numpy(float)
+        shares[domain] = (
+            frame[column].to_numpy(dtype=float)
+            if column in frame
+            else (frame["domain"] == domain).to_numpy(float)
+        )
     return shares

@@ -39,7 +39,7 @@ def load(context: Context) -> LoadedData:
 
     data = context.config.data
     metals = context.config.metals
-    elements = (*metals.estimate, *(name for name in metals.summarise if name not in metals.estimate))
+    extra = tuple(name for name in metals.summarise if name not in metals.estimate)
 
     def source(table: TableFile | None) -> Any:
         return None if table is None else table_source(context, table)
@@ -51,13 +51,14 @@ def load(context: Context) -> LoadedData:
         lithology=source(data.lithology),
         assays=source(data.assays),
         densities=source(data.densities),
-        elements=elements,
+        elements=metals.estimate,
+        summarise=extra,
     )
     context.findings.extend(found)
     loaded: dict[str, Any] = {"drill": drill}
     for field, table, reader in (
-        ("surface", data.surface_samples, lambda item: load_surface(item, elements)),
-        ("dredges", data.dredges, lambda item: load_dredges(item, elements)),
+        ("surface", data.surface_samples, lambda item: load_surface(item, metals.estimate, extra)),
+        ("dredges", data.dredges, lambda item: load_dredges(item, metals.estimate, extra)),
         ("laboratory", data.laboratory, load_laboratory),
         ("base_points", data.base_points, load_points),
     ):
@@ -67,8 +68,8 @@ def load(context: Context) -> LoadedData:
     loaded["seafloor"] = _grid(context, data.bathymetry)
     if data.base_grid is not None:
         loaded["base_grid"] = _grid(context, data.base_grid)
-    loaded["outline"] = _layer(context, data.outline, "outline")
-    loaded["exclusions"] = _layer(context, data.exclusions, "exclusions")
+    loaded["outline"] = read_layer(context, data.outline, "outline")
+    loaded["exclusions"] = read_layer(context, data.exclusions, "exclusions")
     loaded["files"] = context.study.files()
     context.detail = f"{len(drill.collars)} holes, {len(drill.assays)} assays"
     return LoadedData(**loaded)
@@ -80,8 +81,9 @@ def _grid(context: Context, grid: GridFile) -> Any:
     surface, found = load_grid(
         context.study.resolve(grid.file),
         shown_as=grid.file,
-        crs=grid.crs,
-        target_crs=context.config.study.crs,
+        crs=context.config.study.crs,
+        declared_crs=grid.crs,
+        reproject=grid.reproject,
         vertical=grid.vertical,
         band=grid.band,
         uncertainty_band=grid.uncertainty_band,
@@ -90,19 +92,23 @@ def _grid(context: Context, grid: GridFile) -> Any:
     return surface
 
 
-def _layer(context: Context, layer: LayerFile | None, role: str) -> Any:
+def read_layer(context: Context, layer: LayerFile | None, role: str) -> Any:
     if layer is None:
         return None
-    from sms_resource.loaders.boundaries import load_exclusions, load_outline
+    from sms_resource.loaders import boundaries
 
-    reader = load_exclusions if role == "exclusions" else load_outline
-    options: dict[str, Any] = {"columns": dict(layer.columns)} if role == "exclusions" else {}
+    reader: Any = {
+        "outline": boundaries.load_outline,
+        "exclusions": boundaries.load_exclusions,
+        "class_overrides": boundaries.load_overrides,
+    }[role]
+    options: dict[str, Any] = {} if role == "outline" else {"columns": dict(layer.columns)}
     frame, found = reader(
         context.study.resolve(layer.file),
         shown_as=layer.file,
         layer=layer.layer,
         crs=context.config.study.crs,
-        file_crs=layer.crs,
+        declared_crs=layer.crs,
         reproject=layer.reproject,
         **options,
     )

@@ -90,9 +90,19 @@ def write_manifest(
         "outputs": output_hashes(folder),
         "versions": versions(),
         "code": code_fingerprint(),
-        "platform": {"system": platform.system(), "machine": platform.machine(), "python": sys.version.split()[0]},
+        "platform": {
+            "system": platform.system(),
+            "machine": platform.machine(),
+            "python": sys.version.split()[0],
+        },
         "stages": [
-            {"name": r.name, "seconds": round(r.seconds, 3), "from_cache": r.from_cache, "key": r.key, "detail": r.detail}
+            {
+                "name": r.name,
+                "seconds": round(r.seconds, 3),
+                "from_cache": r.from_cache,
+                "key": r.key,
+                "detail": r.detail,
+            }
             for r in records
         ],
         **facts,

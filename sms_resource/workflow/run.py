@@ -70,10 +70,10 @@ def check_study(study: Study) -> Findings:
 
 def default_cache() -> StageCache | None:
     """The cache of stages of this user; None where no folder for it can be made."""
-    from sms_resource.cache import Cache
+    from sms_resource.cache import StageCache as DiskCache
 
     try:
-        return Cache()
+        return DiskCache()
     except OSError:
         return None
 
@@ -118,7 +118,9 @@ def run_study(
 
     def stages() -> Outcome:
         hashes = {role: entry["sha256"] for role, entry in inputs.items() if role != "study"}
-        return run_stages(ESTIMATE_STAGES, study, progress=progress, store=store, threads=threads, files=hashes)
+        return run_stages(
+            ESTIMATE_STAGES, study, progress=progress, store=store, threads=threads, files=hashes
+        )
 
     if out is None:
         return _result(study, stages(), None)

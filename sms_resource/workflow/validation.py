@@ -115,7 +115,9 @@ def swath_tables(
     sample_places = turned(state.samples[["x", "y", "z"]].to_numpy(dtype=float), blocks)
     tables = []
     for number, axis in enumerate(("easting", "northing", "height")):
-        width = config.validation.swath_m if config.validation.swath_m and number < 2 else 2.0 * grid.size[number]
+        width = (
+            config.validation.swath_m if config.validation.swath_m and number < 2 else 2.0 * grid.size[number]
+        )
         for metal in metals:
             table = swath(
                 block_places[:, number],
@@ -131,7 +133,9 @@ def swath_tables(
     return pd.concat(tables, ignore_index=True)
 
 
-def support_curves(made: EstimateState, state: VariogramState, blocks: BlockState, config: Any) -> pd.DataFrame:
+def support_curves(
+    made: EstimateState, state: VariogramState, blocks: BlockState, config: Any
+) -> pd.DataFrame:
     """What the blocks' grade-tonnage curve would be without smoothing, by two models of change of support."""
     from sms_resource.geostatistics import block_variance, change_of_support
     from sms_resource.workflow.estimation import frame_size
@@ -155,7 +159,9 @@ def support_curves(made: EstimateState, state: VariogramState, blocks: BlockStat
             weights=part["declustering_weight"].to_numpy(dtype=float),
         )
         tonnes = made.frame.loc[made.frame["domain"] == domain, "dry_tonnes"].sum()
-        tables.append(curves.assign(domain=domain, metal=metal, variance_ratio=factor, domain_dry_tonnes=tonnes))
+        tables.append(
+            curves.assign(domain=domain, metal=metal, variance_ratio=factor, domain_dry_tonnes=tonnes)
+        )
     return pd.concat(tables, ignore_index=True) if tables else pd.DataFrame()
 
 
@@ -202,7 +208,11 @@ def totals(frame: pd.DataFrame, metals: list[str], config: Any) -> dict[str, flo
         for metal in metals:
             values = frame.loc[chosen, metal].to_numpy(dtype=float)
             known = np.isfinite(values)
-            mean = float(np.average(values[known], weights=dry[known])) if known.any() and dry[known].sum() else np.nan
+            mean = (
+                float(np.average(values[known], weights=dry[known]))
+                if known.any() and dry[known].sum()
+                else np.nan
+            )
             found[f"{metal}{suffix}"] = mean
     return found
 
@@ -223,7 +233,9 @@ def geometry_table(body: BodyState, made: EstimateState, config: Any) -> pd.Data
     from sms_resource.blocks.uncertainty import geometry_uncertainty
 
     mean_density = float(made.frame["dry_tonnes"].sum() / made.frame["volume_m3"].sum())
-    return geometry_uncertainty(body.body, dry_density_tpm3=mean_density, seafloor_sigma_m=config.seafloor.sigma_m)
+    return geometry_uncertainty(
+        body.body, dry_density_tpm3=mean_density, seafloor_sigma_m=config.seafloor.sigma_m
+    )
 
 
 def neighbourhood_table(context: Context) -> pd.DataFrame:

@@ -28,9 +28,7 @@ def view_results(
     from sms_resource.viewer import ViewerUnavailable, open_scene
 
     try:
-        open_scene(
-            folder, screenshot=screenshot, variable=variable, cutoff=cutoff, exaggeration=exaggeration
-        )
+        open_scene(folder, screenshot=screenshot, variable=variable, cutoff=cutoff, exaggeration=exaggeration)
     except (ViewerUnavailable, ValueError, OSError) as error:
         return str(error)
     return None

@@ -1,0 +1,74 @@
+"""The stages in order, and what of the study each depends on."""
+
+from __future__ import annotations
+
+from sms_resource.workflow import continuity, estimation, evidence, geometry, load, outcome, validation
+from sms_resource.workflow.stage import Stage
+
+_SAMPLES = ("metals", "domains", "composites")
+
+LOAD = Stage("load", "Reading the files", ("study", "data", "metals"), (), load.load, reads_files=True)
+CHECK = Stage("check", "Checking the data", ("checks", "metals"), ("load",), load.check)
+COMPOSITE = Stage(
+    "composite",
+    "Joining samples",
+    ("study", "assays", "position", "seafloor", "checks", *_SAMPLES),
+    ("load", "check"),
+    evidence.composite,
+)
+DENSITY = Stage(
+    "density", "Fitting densities", ("density", "metals", "domains"), ("load", "composite"), evidence.density
+)
+BODY = Stage(
+    "body",
+    "Bounding the body",
+    ("study", "seafloor", "body", "domains", "surface_samples"),
+    ("load", "composite"),
+    geometry.body,
+)
+BLOCKS = Stage("blocks", "Filling the blocks", ("blocks", "domains"), ("composite", "body"), geometry.blocks)
+VARIOGRAMS = Stage(
+    "variograms",
+    "Inferring continuity",
+    ("variograms", "top_cuts", *_SAMPLES),
+    ("composite", "body", "blocks"),
+    continuity.variograms,
+)
+ESTIMATE = Stage(
+    "estimate",
+    "Estimating blocks",
+    ("search", "kriging", "variograms", "metals", "domains"),
+    ("blocks", "density", "variograms"),
+    estimation.estimate,
+)
+VALIDATE = Stage(
+    "validate",
+    "Checking the estimate",
+    (
+        "study",
+        "validation",
+        "search",
+        "kriging",
+        "variograms",
+        "top_cuts",
+        "cutoff",
+        "seafloor",
+        "classes",
+        *_SAMPLES,
+    ),
+    ("load", "composite", "body", "blocks", "density", "variograms", "estimate"),
+    validation.validate,
+)
+CLASSIFY = Stage(
+    "classify",
+    "Proposing classes",
+    ("study", "data", "prospects", "position", "classes", "screens", "cutoff", "value", "density", "seafloor",
+     "surface_samples", "metals", "domains"),
+    ("load", "composite", "density", "body", "blocks", "variograms", "estimate"),
+    outcome.classify,
+)  # fmt: skip
+
+CHECK_STAGES = (LOAD, CHECK)
+ESTIMATE_STAGES = (
+    LOAD, CHECK, COMPOSITE, DENSITY, BODY, BLOCKS, VARIOGRAMS, ESTIMATE, VALIDATE, CLASSIFY,
+)  # fmt: skip
