@@ -1,0 +1,453 @@
+"""Dry and wet density for blocks: low, base and high, by domain or from grades."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import Any, Literal
+
+import numpy as np
+import pandas as pd
+from numpy.typing import ArrayLike, NDArray
+
+from sms_resource.findings import Findings
+from sms_resource.samples.intervals import names, numbers
+from sms_resource.samples.mineralogy import NormSettings, norm
+from sms_resource.samples.moisture import PORE_WATER_TPM3
+
+Floats = NDArray[np.float64]
+Method = Literal["measured_mean", "regression", "mineralogy", "assigned"]
+Case = Literal["low", "base", "high"]
+CASES: tuple[Case, ...] = ("low", "base", "high")
+
+FEW_DENSITIES = 10
+LEAST_FOR_OWN_MEAN = 3
+
+
+@dataclass(frozen=True)
+class Regression:
+    """Dry density as a straight line of grades: coefficients, their fit and where they were seen."""
+
+    predictors: tuple[str, ...]
+    coefficients: Floats
+    inverse: Floats
+    residual_sd: float
+    r_squared: float
+    count: int
+    quantile: float
+    least: Floats
+    greatest: Floats
+
+    def statement(self) -> str:
+        """The equation and its fit as text."""
+        terms = " ".join(f"{c:+.4f} {p}" for c, p in zip(self.coefficients[1:], self.predictors))
+        return (
+            f"dry density (t/m3) = {self.coefficients[0]:.3f} {terms}; n {self.count}, "
+            f"R2 {self.r_squared:.2f}, residual SD {self.residual_sd:.3f} t/m3"
+        )
+
+
+@dataclass(frozen=True)
+class DensityModel:
+    """Density for blocks.
+
+    Attributes
+    ----------
+    method : str
+    by_domain : DataFrame
+        domain, dry_low, dry_base, dry_high, wet_low, wet_base, wet_high (t/m3), water_tpm3 (mass of pore water
+        in a cubic metre), n, basis.
+    findings : Findings
+    regression : Regression or None
+    """
+
+    method: Method
+    by_domain: pd.DataFrame
+    findings: Findings
+    pore_water_tpm3: float = PORE_WATER_TPM3
+    regression: Regression | None = None
+    norm_settings: NormSettings = field(default_factory=NormSettings)
+    porosity: pd.DataFrame | None = None
+
+    def predict(
+        self, domain: ArrayLike, grades: pd.DataFrame | None = None, *, case: Case = "base"
+    ) -> tuple[Floats, Floats]:
+        """Dry and wet density (t/m3) of blocks.
+
+        Parameters
+        ----------
+        domain : array-like of str, shape (b,)
+        grades : DataFrame, optional
+            Estimated grades of the blocks, for "regression" and "mineralogy"; a block without them takes the value of
+            its domain.
+        case : "low", "base" or "high"
+
+        Returns
+        -------
+        dry, wet : ndarray, shape (b,)
+            Wet is dry and the water in the pores. NaN where a domain is not known to the model.
+
+        Raises
+        ------
+        ValueError
+            If the case is not known or grades have another length than domain.
+        """
+        if case not in CASES:
+            raise ValueError(f"case must be one of {', '.join(CASES)}, not {case!r}")
+        wanted = np.asarray(domain, dtype=object)
+        at = pd.Index(self.by_domain["domain"]).get_indexer(pd.Index(wanted))
+        dry = np.append(self.by_domain[f"dry_{case}"].to_numpy(np.float64), np.nan)[at]
+        wet = np.append(self.by_domain[f"wet_{case}"].to_numpy(np.float64), np.nan)[at]
+        if grades is None:
+            return dry, wet
+        if len(grades) != len(wanted):
+            raise ValueError(f"grades have {len(grades)} rows, domain has {len(wanted)}")
+        if self.regression is not None:
+            own = _predict(self.regression, grades, case)
+            water = wet - dry
+            use = np.isfinite(own) & (own > 0)
+            return np.where(use, own, dry), np.where(use, own + water, wet)
+        if self.porosity is not None:
+            return self._from_minerals(at, grades, case, dry, wet)
+        return dry, wet
+
+    def _from_minerals(
+        self, at: NDArray[np.int64], grades: pd.DataFrame, case: Case, dry: Floats, wet: Floats
+    ) -> tuple[Floats, Floats]:
+        assert self.porosity is not None
+        known = np.isfinite(numbers(grades, "cu_pct")) & np.isfinite(numbers(grades, "fe_pct"))
+        grain = norm(grades, self.norm_settings)["grain_density_tpm3"].to_numpy(np.float64)
+        # the lightest case has the most pores
+        pores = np.append(self.porosity[_OPPOSITE[case]].to_numpy(np.float64), np.nan)[at]
+        own = grain * (1.0 - pores)
+        use = known & np.isfinite(own)
+        return np.where(use, own, dry), np.where(use, own + pores * self.pore_water_tpm3, wet)
+
+    def extrapolated(self, grades: pd.DataFrame) -> NDArray[np.bool_]:
+        """Rows whose grades lie outside the range that the regression saw; all False for other methods."""
+        if self.regression is None:
+            return np.zeros(len(grades), dtype=bool)
+        x = np.column_stack([numbers(grades, name) for name in self.regression.predictors])
+        with np.errstate(invalid="ignore"):
+            return ((x < self.regression.least) | (x > self.regression.greatest)).any(axis=1)
+
+
+_OPPOSITE: dict[Case, str] = {"low": "high", "base": "base", "high": "low"}
+
+
+def fit_density(
+    table: Any,
+    method: Method = "measured_mean",
+    *,
+    domains: Sequence[str] | None = None,
+    predictors: Sequence[str] = ("cu_pct", "zn_pct", "fe_pct"),
+    assigned: Mapping[str, Any] | None = None,
+    porosity: Mapping[str, Any] | None = None,
+    grades: pd.DataFrame | None = None,
+    confidence: float = 0.90,
+    pore_water_tpm3: float = PORE_WATER_TPM3,
+    norm_settings: NormSettings | None = None,
+) -> DensityModel:
+    """Model of dry and wet density for blocks.
+
+    Parameters
+    ----------
+    table : DensityTable or DataFrame
+        From `density.density_table`.
+    method : "measured_mean", "regression", "mineralogy" or "assigned"
+        Mean of each domain; a line on grades; minerals of the norm with a porosity by domain; given values.
+    domains : sequence of str, optional
+        Domains that need a density; by default those of the table and of ``assigned`` and ``porosity``.
+    predictors : sequence of str
+        Grade columns of the regression.
+    assigned : mapping
+        domain to a number, (low, base, high), or a mapping with dry (or dry_low, dry_base, dry_high) and porosity.
+        With the other methods it serves domains without samples.
+    porosity : mapping
+        domain to a fraction or (low, base, high), for "mineralogy" and wherever the water is not measured.
+    grades : DataFrame, optional
+        domain and element columns (composites) for the grain density of each domain under "mineralogy".
+    confidence : float
+        Of the interval of low and high.
+
+    Raises
+    ------
+    ValueError
+        If the method is not known, confidence is not between 0 and 1, or what a method needs is not given.
+
+    Notes
+    -----
+    "measured_mean": low and high are the t interval of the mean; a domain with fewer than 3 samples takes the mean of
+    all, with the spread of single samples as its interval. "regression": ordinary least squares with the interval of
+    its mean. Fewer than 10 samples in a domain are a finding.
+    """
+    if method not in ("measured_mean", "regression", "mineralogy", "assigned"):
+        raise ValueError(
+            f"method must be 'measured_mean', 'regression', 'mineralogy' or 'assigned', not {method!r}"
+        )
+    if not 0.0 < confidence < 1.0:
+        raise ValueError(f"confidence must lie between 0 and 1, not {confidence}")
+    frame: pd.DataFrame = table if isinstance(table, pd.DataFrame) else table.frame
+    given = {str(k): _assigned(str(k), v, porosity, pore_water_tpm3) for k, v in (assigned or {}).items()}
+    pores = {str(k): _three(f"porosity of {k}", v) for k, v in (porosity or {}).items()}
+    for name, values in pores.items():
+        if not (values[0] >= 0 and values[2] < 1):
+            raise ValueError(f"porosity of {name} must be a fraction from 0 to below 1, not {values}")
+    measured = frame.loc[np.isfinite(numbers(frame, "dry_density_tpm3"))]
+    wanted = (
+        [str(d) for d in domains]
+        if domains is not None
+        else sorted({*names(measured["domain"]), *given, *pores})
+    )
+    findings = Findings()
+    settings = norm_settings or NormSettings()
+    if method == "assigned":
+        rows = [_assigned_row(name, given.get(name), measured, confidence, findings) for name in wanted]
+        return DensityModel(method, _frame(rows), findings, pore_water_tpm3)
+    if method == "mineralogy":
+        rows, pore_frame = _mineral_rows(
+            wanted, pores, given, grades, frame, pore_water_tpm3, settings, findings
+        )
+        return DensityModel(
+            method, _frame(rows), findings, pore_water_tpm3, norm_settings=settings, porosity=pore_frame
+        )
+    rows = [
+        _measured_row(name, measured, given.get(name), pores.get(name), confidence, pore_water_tpm3, findings)
+        for name in wanted
+    ]
+    fitted = _fit(measured, predictors, confidence, findings) if method == "regression" else None
+    return DensityModel(method, _frame(rows), findings, pore_water_tpm3, regression=fitted)
+
+
+def _measured_row(
+    name: str,
+    measured: pd.DataFrame,
+    given: tuple[Floats, Floats] | None,
+    pores: Floats | None,
+    confidence: float,
+    water_density: float,
+    findings: Findings,
+) -> dict[str, object]:
+    from scipy.special import stdtrit
+
+    dry_all, wet_all = numbers(measured, "dry_density_tpm3"), numbers(measured, "wet_density_tpm3")
+    own = names(measured["domain"]) == name
+    n = int(own.sum())
+    if n < LEAST_FOR_OWN_MEAN and given is not None:
+        findings.warning(
+            "density-assigned",
+            f"Domain {name} has {n} densities and takes the assigned one, {given[0][1]:.2f} t/m3 dry",
+            "Measure densities of this domain.",
+        )
+        return _row(name, given[0], given[1], n, "assigned")
+    use = own if n >= LEAST_FOR_OWN_MEAN else np.ones(len(measured), dtype=bool)
+    dry = dry_all[use]
+    if len(dry) == 0:
+        findings.error(
+            "density-unmeasured",
+            f"Domain {name} has no density and none is assigned",
+            "Measure it, or assign a dry density (low, base, high) in the study.",
+        )
+        return _row(name, np.full(3, np.nan), np.full(3, np.nan), 0, "none")
+    mean = float(dry.mean())
+    sd = float(dry.std(ddof=1)) if len(dry) > 1 else 0.1 * mean
+    t = float(stdtrit(max(len(dry) - 1, 1), 0.5 + confidence / 2))
+    if n >= LEAST_FOR_OWN_MEAN:
+        half, basis = t * sd / np.sqrt(len(dry)), f"mean of {n} measured"
+        if n < FEW_DENSITIES:
+            findings.warning(
+                "density-few",
+                f"Domain {name} has only {n} densities: {mean:.2f} t/m3 dry, "
+                f"{mean - half:.2f} to {mean + half:.2f} at {100 * confidence:.0f} %",
+                "Low and high run through to the tonnes; measure more.",
+            )
+    else:
+        # a domain without samples of its own may lie anywhere among the single samples of the others
+        half, basis = t * sd * np.sqrt(1.0 + 1.0 / len(dry)), f"mean of all {len(dry)} measured"
+        findings.warning(
+            "density-unmeasured",
+            f"Domain {name} has {n} densities and takes the mean of all {len(dry)}, {mean:.2f} t/m3 dry, with a "
+            "wide interval",
+            "Measure densities of this domain, or assign one in the study.",
+        )
+    values = np.array([max(mean - half, 0.0), mean, mean + half])
+    pairs = use & np.isfinite(wet_all)
+    if pairs.any():
+        water = float((wet_all[pairs] - dry_all[pairs]).mean())
+    elif pores is not None:
+        water = float(pores[1]) * water_density
+    else:
+        water = np.nan
+        findings.warning(
+            "density-wet-only",
+            f"Domain {name} has dry densities only, so its wet density and wet tonnes are not known",
+            "Measure wet densities, or give the porosity of the domain.",
+        )
+    return _row(name, values, values + water, n, basis)
+
+
+def _assigned_row(
+    name: str,
+    given: tuple[Floats, Floats] | None,
+    measured: pd.DataFrame,
+    confidence: float,
+    findings: Findings,
+) -> dict[str, object]:
+    n = int((names(measured["domain"]) == name).sum())
+    if given is None:
+        findings.error(
+            "density-unmeasured",
+            f"Domain {name} has no assigned density",
+            "Assign a dry density (low, base, high) in the study.",
+        )
+        return _row(name, np.full(3, np.nan), np.full(3, np.nan), n, "none")
+    findings.warning(
+        "density-assigned",
+        f"Domain {name}: {given[0][1]:.2f} t/m3 dry is assigned, {given[0][0]:.2f} to {given[0][2]:.2f}",
+        "An assigned density rests on no sample of this deposit.",
+    )
+    return _row(name, given[0], given[1], n, "assigned")
+
+
+def _mineral_rows(
+    wanted: Sequence[str],
+    pores: Mapping[str, Floats],
+    given: Mapping[str, tuple[Floats, Floats]],
+    grades: pd.DataFrame | None,
+    frame: pd.DataFrame,
+    water_density: float,
+    settings: NormSettings,
+    findings: Findings,
+) -> tuple[list[dict[str, object]], pd.DataFrame]:
+    source = grades if grades is not None else frame
+    known = source.loc[np.isfinite(numbers(source, "cu_pct")) & np.isfinite(numbers(source, "fe_pct"))]
+    minerals = norm(known, settings)
+    over = int((minerals["sum_pct"] > 102.0).sum())
+    if over:
+        findings.warning(
+            "norm-over-100",
+            f"In {over} of {len(known)} samples the norm needs more than the whole rock",
+            "Choose another copper mineral, or check the assays.",
+        )
+    grain_all = minerals["grain_density_tpm3"].to_numpy(np.float64)
+    domain = names(known["domain"]) if "domain" in known else np.full(len(known), "", dtype=object)
+    rows, table = [], []
+    for name in wanted:
+        here = grain_all[domain == name]
+        porosity = pores.get(name)
+        if porosity is None or (len(here) == 0 and len(grain_all) == 0):
+            if name in given:
+                rows.append(_row(name, *given[name], 0, "assigned"))
+            else:
+                findings.error(
+                    "density-unmeasured",
+                    f"Domain {name} has no porosity, or no assays with Cu and Fe, to make a density from minerals",
+                    "Give the porosity (low, base, high) of the domain in the study, or assign a density.",
+                )
+                rows.append(_row(name, np.full(3, np.nan), np.full(3, np.nan), 0, "none"))
+            table.append({"domain": name, "low": np.nan, "base": np.nan, "high": np.nan})
+            continue
+        grain = float(here.mean() if len(here) else grain_all.mean())
+        dry = grain * (1.0 - porosity[::-1])
+        rows.append(_row(name, dry, dry + porosity[::-1] * water_density, len(here), "minerals and porosity"))
+        table.append({"domain": name, "low": porosity[0], "base": porosity[1], "high": porosity[2]})
+    return rows, pd.DataFrame(table, columns=["domain", "low", "base", "high"])
+
+
+def _fit(
+    measured: pd.DataFrame, predictors: Sequence[str], confidence: float, findings: Findings
+) -> Regression | None:
+    from scipy.special import stdtrit
+
+    y = numbers(measured, "dry_density_tpm3")
+    x = (
+        np.column_stack([numbers(measured, name) for name in predictors])
+        if predictors
+        else np.empty((len(y), 0))
+    )
+    use = np.isfinite(x).all(axis=1)
+    x, y = x[use], y[use]
+    design = np.column_stack([np.ones(len(y)), x])
+    freedom = len(y) - design.shape[1]
+    if not predictors or freedom < 3 or np.linalg.matrix_rank(design) < design.shape[1]:
+        findings.warning(
+            "density-regression",
+            f"{len(y)} densities with {', '.join(predictors) or 'no predictor'} beside them are too few, or too "
+            "alike, for a regression; the means of the domains are used",
+            "Take fewer predictors, or the method measured_mean.",
+        )
+        return None
+    inverse = np.linalg.inv(design.T @ design)
+    coefficients = inverse @ design.T @ y
+    residual = y - design @ coefficients
+    sd = float(np.sqrt(residual @ residual / freedom))
+    spread = float(((y - y.mean()) ** 2).sum())
+    fitted = Regression(
+        tuple(predictors), coefficients, inverse, sd, 1.0 - float(residual @ residual) / spread if spread else 0.0,
+        len(y), float(stdtrit(freedom, 0.5 + confidence / 2)), x.min(axis=0), x.max(axis=0),
+    )  # fmt: skip
+    weak = fitted.r_squared < 0.3
+    (findings.warning if weak else findings.note)(
+        "density-regression",
+        fitted.statement() + ("; grades explain little of it" if weak else ""),
+        "Compare with the means of the domains." if weak else "",
+    )
+    return fitted
+
+
+def _predict(fit: Regression, grades: pd.DataFrame, case: Case) -> Floats:
+    x = np.column_stack([np.ones(len(grades)), *(numbers(grades, name) for name in fit.predictors)])
+    mean = x @ fit.coefficients
+    if case == "base":
+        return mean
+    half = (
+        fit.quantile * fit.residual_sd * np.sqrt(np.maximum(np.einsum("ij,jk,ik->i", x, fit.inverse, x), 0.0))
+    )
+    return mean - half if case == "low" else mean + half
+
+
+def _assigned(
+    name: str, value: Any, porosity: Mapping[str, Any] | None, water_density: float
+) -> tuple[Floats, Floats]:
+    """Dry and wet (low, base, high) of an assigned density."""
+    pores: Any = (porosity or {}).get(name)
+    if isinstance(value, Mapping):
+        pores = value.get("porosity", pores)
+        dry = value.get("dry", [value.get(f"dry_{case}", value.get("dry_base")) for case in CASES])
+    else:
+        dry = value
+    values = _three(f"density of {name}", dry)
+    if not 0 < values[0] <= values[2] <= 7.6:
+        raise ValueError(f"assigned density of {name} must lie above 0 and at most at 7.6 t/m3, not {values}")
+    if isinstance(value, Mapping) and ("wet" in value or "wet_base" in value):
+        wet = _three(f"wet density of {name}", value.get("wet", value.get("wet_base")))
+        if np.any(wet < values):
+            raise ValueError(f"assigned wet density of {name} is below its dry density")
+        return values, wet
+    if pores is None:
+        return values, np.full(3, np.nan)
+    return values, values + _three(f"porosity of {name}", pores)[1] * water_density
+
+
+def _three(what: str, value: Any) -> Floats:
+    """(low, base, high) from a number or three."""
+    result = np.atleast_1d(np.asarray(value, dtype=np.float64))
+    if result.shape == (1,):
+        result = np.repeat(result, 3)
+    if result.shape != (3,) or not np.all(np.isfinite(result)) or np.any(np.diff(result) < 0):
+        raise ValueError(f"{what} must be a number or (low, base, high) in ascending order, not {value!r}")
+    return result
+
+
+def _row(name: str, dry: Floats, wet: Floats, n: int, basis: str) -> dict[str, object]:
+    row: dict[str, object] = {"domain": name}
+    row.update({f"dry_{case}": float(v) for case, v in zip(CASES, dry)})
+    row.update({f"wet_{case}": float(v) for case, v in zip(CASES, wet)})
+    return {**row, "water_tpm3": float(wet[1] - dry[1]), "n": n, "basis": basis}
+
+
+def _frame(rows: list[dict[str, object]]) -> pd.DataFrame:
+    columns = [
+        "domain", "dry_low", "dry_base", "dry_high", "wet_low", "wet_base", "wet_high", "water_tpm3", "n", "basis",
+    ]  # fmt: skip
+    return pd.DataFrame(rows, columns=columns)

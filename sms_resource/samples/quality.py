@@ -1,0 +1,456 @@
+"""Laboratory quality control: reference materials, blanks, duplicates and the check laboratory, with a verdict each."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from sms_resource.findings import Findings
+from sms_resource.samples.intervals import names, numbers
+from sms_resource.samples.pairs import cv_average, half_absolute_relative_difference, reduced_major_axis
+from sms_resource.samples.reference_materials import (
+    BIAS_CAUTION_PCT,
+    BIAS_FAILED_PCT,
+    FAMILY_ERROR,
+    LEAST_RESULTS,
+    batch_bias,
+    control_charts,
+    material_bias,
+)
+from sms_resource.units import element_column
+
+Floats = NDArray[np.float64]
+
+# CVavg in percent that is good, and that is still acceptable, by element and stage (values recalled from memory).
+# Field duplicates carry the deposit's own variation and take the limits of coarse ones times 1.5 (common practice).
+PAIR_LIMITS: dict[str, dict[str, tuple[float, float]]] = {
+    "base": {"field": (15.0, 22.5), "coarse": (10.0, 15.0), "pulp": (5.0, 10.0)},
+    "precious": {"field": (22.5, 37.5), "coarse": (15.0, 25.0), "pulp": (7.5, 15.0)},
+}
+PRECIOUS = ("au", "ag")
+STAGES = ("field", "coarse", "pulp")
+BLANK_LIMITS = 5.0
+LEAST_PAIRS = 10
+ASPECTS = ("reference materials", "blanks", "duplicates", "check laboratory")
+
+
+@dataclass(frozen=True)
+class LaboratoryQuality:
+    """What the inserts of the laboratory say.
+
+    Attributes
+    ----------
+    references : DataFrame
+        Control charts (`reference_materials.control_charts`).
+    materials : DataFrame
+        Bias by material.
+    batches : DataFrame
+        Bias by batch, with the verdict.
+    blanks : DataFrame
+        Each blank with its limit, grade_before and failed.
+    duplicates : DataFrame
+        Statistics by element and stage.
+    duplicate_pairs, check_pairs : DataFrame
+        element, stage, batch, original, repeat.
+    checks : DataFrame
+        Reduced major axis by element.
+    rates : DataFrame
+        Inserts by kind and element: count, and share of samples in percent where assays are known.
+    verdicts : DataFrame
+        element, aspect, verdict ("good", "caution", "failed", "missing"), figures.
+    findings : Findings
+    """
+
+    references: pd.DataFrame
+    materials: pd.DataFrame
+    batches: pd.DataFrame
+    blanks: pd.DataFrame
+    duplicates: pd.DataFrame
+    duplicate_pairs: pd.DataFrame
+    checks: pd.DataFrame
+    check_pairs: pd.DataFrame
+    rates: pd.DataFrame
+    verdicts: pd.DataFrame
+    findings: Findings
+
+    def verdict(self, element: str) -> str:
+        """The worst verdict of an element over its aspects, missing counting as caution."""
+        found = set(self.verdicts.loc[self.verdicts["element"] == element, "verdict"])
+        if "failed" in found:
+            return "failed"
+        return "caution" if found & {"caution", "missing"} or not found else "good"
+
+
+def laboratory_quality(
+    laboratory: pd.DataFrame,
+    assays: pd.DataFrame | None = None,
+    *,
+    elements: tuple[str, ...] | None = None,
+    detection_limits: Mapping[str, float] | None = None,
+    blank_limits: float = BLANK_LIMITS,
+    family_error: float = FAMILY_ERROR,
+    pair_limits: Mapping[str, Mapping[str, tuple[float, float]]] | None = None,
+    confidence: float = 0.95,
+) -> LaboratoryQuality:
+    """Judge the laboratory by its inserts.
+
+    Parameters
+    ----------
+    laboratory : DataFrame
+        kind ("reference", "blank", "duplicate", "check"), batch, sequence, sample_id, original_sample_id, material,
+        stage, element, value, value_status, value_limit, expected, expected_sd.
+        The original result of a duplicate or check is that of ``original_sample_id`` in ``assays`` or among the rows of
+        this table; where neither has it, ``expected`` is taken.
+    assays : DataFrame, optional
+        sample_id and element columns: originals of pairs, the grade before a blank (``original_sample_id`` of the blank
+        names the sample before it), and the rate of inserts.
+    elements : tuple of str, optional
+        Elements to judge, such as "cu"; by default those of ``laboratory``. An aspect without rows is "missing".
+    detection_limits : mapping of element to value, optional
+        For blanks; by default the greatest limit that the element's rows below detection name.
+    blank_limits : float
+        A blank fails beyond this many detection limits.
+    family_error : float
+        See `reference_materials.batch_bias`.
+    pair_limits : mapping, optional
+        element to stage to (good, acceptable) CVavg in percent, in place of `PAIR_LIMITS`.
+    """
+    findings = Findings()
+    table = laboratory.reset_index(drop=True)
+    element = table["element"].astype(str).str.lower()
+    table = table.assign(element=element, value=_plain(table))
+    wanted = elements if elements is not None else tuple(dict.fromkeys(element))
+    table = table.loc[table["element"].isin(wanted)]
+    kinds = {kind: table.loc[table["kind"] == kind] for kind in ("reference", "blank", "duplicate", "check")}
+
+    charts = control_charts(kinds["reference"], findings)
+    materials, batches = material_bias(charts), batch_bias(charts, family_error=family_error)
+    blanks = _blanks(kinds["blank"], table, assays, detection_limits or {}, blank_limits)
+    originals = _originals(table, assays)
+    duplicate_pairs = _pairs(kinds["duplicate"], originals, "duplicate", findings)
+    check_pairs = _pairs(kinds["check"], originals, "check", findings)
+    duplicates = _duplicates(duplicate_pairs, pair_limits or {})
+    checks = _checks(check_pairs, confidence)
+    verdicts = pd.DataFrame(
+        [
+            line
+            for name in wanted
+            for line in (
+                _reference_verdict(name, materials, batches, findings),
+                _blank_verdict(name, blanks, findings),
+                _duplicate_verdict(name, duplicates, findings),
+                _check_verdict(name, checks, findings),
+            )
+        ],
+        columns=["element", "aspect", "verdict", "figures"],
+    )
+    for aspect in ASPECTS:
+        none = verdicts.loc[(verdicts["aspect"] == aspect) & (verdicts["verdict"] == "missing"), "element"]
+        if len(none):
+            findings.warning(
+                "quality-missing",
+                f"No {aspect} for {', '.join(none)}",
+                "Bring the inserts of the laboratory, or say in the report why there are none.",
+            )
+    return LaboratoryQuality(
+        charts, materials, batches, blanks, duplicates, duplicate_pairs, checks, check_pairs,
+        _rates(kinds, assays, wanted), verdicts, findings,
+    )  # fmt: skip
+
+
+def _plain(table: pd.DataFrame) -> Floats:
+    """Values with half the limit below detection and the limit above it."""
+    value = numbers(table, "value")
+    if "value_status" in table and "value_limit" in table:
+        status, limit = np.nan_to_num(numbers(table, "value_status"), nan=3.0), numbers(table, "value_limit")
+        value = np.where(status == 1, limit / 2, np.where(status == 2, limit, value))
+    return value
+
+
+def _originals(table: pd.DataFrame, assays: pd.DataFrame | None) -> dict[tuple[str, str], float]:
+    found: dict[tuple[str, str], float] = {}
+    for name, sample, value in zip(table["element"], table["sample_id"], table["value"]):
+        if str(sample):
+            found[(str(name), str(sample))] = float(value)
+    if assays is not None and "sample_id" in assays:
+        identifiers = [str(s) for s in assays["sample_id"]]
+        for name in dict.fromkeys(table["element"]):
+            column = element_column(str(name))
+            if column in assays:
+                found.update(zip(((str(name), s) for s in identifiers), numbers(assays, column).tolist()))
+    return found
+
+
+def _pairs(
+    rows: pd.DataFrame, originals: Mapping[tuple[str, str], float], kind: str, findings: Findings
+) -> pd.DataFrame:
+    fallback = numbers(rows, "expected")
+    first = np.array(
+        [
+            originals.get((str(e), str(o)), np.nan)
+            for e, o in zip(rows["element"], rows["original_sample_id"])
+        ],
+        dtype=np.float64,
+    )
+    first = np.where(np.isfinite(first), first, fallback)
+    lost = ~np.isfinite(first)
+    if lost.any():
+        which = rows.loc[lost, "original_sample_id"].astype(str).iloc[0]
+        findings.warning(
+            "quality-unmatched",
+            f"{int(lost.sum())} of {len(rows)} {kind} results name an original that has no result, the first {which!r}",
+            "Check the names of the original samples.",
+            row=rows["source_row"].loc[lost].iloc[0] if "source_row" in rows else None,
+        )
+    return pd.DataFrame(
+        {
+            "element": names(rows["element"]), "stage": names(rows["stage"]), "batch": names(rows["batch"]),
+            "sample_id": names(rows["sample_id"]), "original": first, "repeat": numbers(rows, "value"),
+        }
+    ).loc[~lost].reset_index(drop=True)  # fmt: skip
+
+
+def _blanks(
+    rows: pd.DataFrame,
+    table: pd.DataFrame,
+    assays: pd.DataFrame | None,
+    given: Mapping[str, float],
+    factor: float,
+) -> pd.DataFrame:
+    limits = {}
+    for name in dict.fromkeys(rows["element"]):
+        known = numbers(table.loc[table["element"] == name], "value_limit")
+        status = numbers(table.loc[table["element"] == name], "value_status")
+        known = known[(status == 1) & np.isfinite(known)]
+        limits[name] = float(given.get(name, known.max() if len(known) else np.nan))
+    detection = np.array([limits[name] for name in rows["element"]], dtype=np.float64)
+    originals = _originals(table, assays)
+    before = np.array(
+        [
+            originals.get((str(e), str(o)), np.nan)
+            for e, o in zip(rows["element"], rows["original_sample_id"])
+        ],
+        dtype=np.float64,
+    )
+    value = numbers(rows, "value")
+    with np.errstate(invalid="ignore"):
+        failed = value > factor * detection
+    columns = [
+        c for c in ("element", "material", "batch", "sequence", "sample_id", "source_row") if c in rows
+    ]
+    return rows[columns].assign(
+        value=value, detection_limit=detection, limit=factor * detection, grade_before=before, failed=failed,
+        judged=np.isfinite(value) & np.isfinite(detection),
+    ).reset_index(drop=True)  # fmt: skip
+
+
+def _duplicates(pairs: pd.DataFrame, given: Mapping[str, Mapping[str, tuple[float, float]]]) -> pd.DataFrame:
+    rows = []
+    for (name, stage), part in pairs.groupby(["element", "stage"], sort=True):
+        a, b = numbers(part, "original"), numbers(part, "repeat")
+        hard = half_absolute_relative_difference(a, b)
+        n = len(hard)
+        default = PAIR_LIMITS["precious" if name in PRECIOUS else "base"]
+        good, acceptable = given.get(str(name), {}).get(str(stage), default.get(str(stage), default["field"]))
+        cv = cv_average(a, b)
+        rows.append(
+            {
+                "element": name, "stage": stage, "n": n, "cv_avg_pct": cv,
+                "hard_mean_pct": float(hard.mean()) if n else np.nan,
+                "hard_p90_pct": float(np.quantile(hard, 0.9)) if n else np.nan,
+                "hard_within_10_share": float(np.mean(hard <= 10.0)) if n else np.nan,
+                "mean_original": float(np.nanmean(a)) if n else np.nan,
+                "mean_repeat": float(np.nanmean(b)) if n else np.nan,
+                "good_pct": good, "acceptable_pct": acceptable, "verdict": _pair_verdict(n, cv, good, acceptable),
+            }
+        )  # fmt: skip
+    columns = [
+        "element", "stage", "n", "cv_avg_pct", "hard_mean_pct", "hard_p90_pct", "hard_within_10_share",
+        "mean_original", "mean_repeat", "good_pct", "acceptable_pct", "verdict",
+    ]  # fmt: skip
+    return pd.DataFrame(rows, columns=columns)
+
+
+def _pair_verdict(n: int, cv: float, good: float, acceptable: float) -> str:
+    if n < LEAST_PAIRS or not np.isfinite(cv):
+        return "caution"
+    if cv <= good:
+        return "good"
+    return "caution" if cv <= acceptable else "failed"
+
+
+def _checks(pairs: pd.DataFrame, confidence: float) -> pd.DataFrame:
+    rows = []
+    for name, part in pairs.groupby("element", sort=True):
+        a, b = numbers(part, "original"), numbers(part, "repeat")
+        use = np.isfinite(a) & np.isfinite(b)
+        row: dict[str, object] = {"element": name, "n": int(use.sum())}
+        if use.any():
+            row["mean_original"], row["mean_check"] = float(a[use].mean()), float(b[use].mean())
+            row["bias_pct"] = (
+                100.0 * (float(b[use].mean() / a[use].mean()) - 1.0) if a[use].mean() > 0 else np.nan
+            )
+        try:
+            fit = reduced_major_axis(a, b, confidence=confidence)
+        except ValueError:
+            row["verdict"] = "caution"
+        else:
+            row.update(
+                slope=fit.slope, slope_low=fit.slope_low, slope_high=fit.slope_high, intercept=fit.intercept,
+                intercept_low=fit.intercept_low, intercept_high=fit.intercept_high, correlation=fit.correlation,
+            )  # fmt: skip
+            one = fit.slope_low <= 1.0 <= fit.slope_high
+            bias = abs(float(row["bias_pct"]))  # type: ignore[arg-type]
+            row["verdict"] = (
+                "caution" if fit.count < LEAST_PAIRS else
+                "failed" if bias > 10.0 and not one else
+                "good" if one and bias <= 5.0 else "caution"
+            )  # fmt: skip
+        rows.append(row)
+    columns = [
+        "element", "n", "mean_original", "mean_check", "bias_pct", "slope", "slope_low", "slope_high", "intercept",
+        "intercept_low", "intercept_high", "correlation", "verdict",
+    ]  # fmt: skip
+    return pd.DataFrame(rows).reindex(columns=columns)
+
+
+Line = tuple[str, str, str, str]
+
+
+def _reference_verdict(name: str, materials: pd.DataFrame, batches: pd.DataFrame, findings: Findings) -> Line:
+    part = materials.loc[materials["element"] == name]
+    own = batches.loc[batches["element"] == name]
+    count = int(part["n"].sum())
+    if not count:
+        return name, ASPECTS[0], "missing", ""
+    failures = int(part["failures"].sum())
+    bias = numbers(part, "bias_pct")
+    beyond = (numbers(part, "bias_low_pct") > 0) | (numbers(part, "bias_high_pct") < 0)
+    worst = float(np.nanmax(np.abs(bias)))
+    accused = [str(b) for b in own.loc[own["verdict"] == "accused", "batch"]]
+    for batch in accused:
+        row = own.loc[own["batch"] == batch].iloc[0]
+        findings.warning(
+            "quality-batch-bias",
+            f"{name.capitalize()}: batch {batch} is biased by {row['mean_z']:+.1f} SD over {row['n']} reference results "
+            f"(p {row['p_adjusted']:.1g} after allowing for all batches)",
+            "Have the batch assayed again, or leave it out.",
+        )
+    if failures:
+        findings.note(
+            "quality-reference-fail",
+            f"{name.capitalize()}: {failures} of {count} reference results fail (beyond 3 SD, or two in a row beyond 2)",
+        )
+    for row in part.loc[beyond & (np.abs(bias) > BIAS_CAUTION_PCT)].to_dict("records"):
+        findings.warning(
+            "quality-bias",
+            f"{name.capitalize()}: the laboratory is {row['bias_pct']:+.1f} % off {row['material']} "
+            f"({row['bias_low_pct']:+.1f} to {row['bias_high_pct']:+.1f} %)",
+            "Ask the laboratory; a bias of grade is a bias of metal.",
+        )
+    serious = beyond & (np.abs(bias) > BIAS_FAILED_PCT) & (numbers(part, "n") >= LEAST_RESULTS)
+    if accused or serious.any():
+        verdict = "failed"
+    elif (
+        count < LEAST_RESULTS or (beyond & (np.abs(bias) > BIAS_CAUTION_PCT)).any() or failures > 0.05 * count
+    ):
+        verdict = "caution"
+    else:
+        verdict = "good"
+    text = f"{count} results, {failures} failed, greatest bias {worst:.1f} %"
+    if accused:
+        text += f", biased batches: {', '.join(accused)}"
+    return name, ASPECTS[0], verdict, text
+
+
+def _blank_verdict(name: str, blanks: pd.DataFrame, findings: Findings) -> Line:
+    from scipy.stats import spearmanr
+
+    part = blanks.loc[(blanks["element"] == name) & blanks["judged"]]
+    if not len(part):
+        return name, ASPECTS[1], "missing", ""
+    failed = int(part["failed"].sum())
+    text = f"{len(part)} blanks, {failed} over {part['limit'].iloc[0]:g}"
+    for row in part.loc[part["failed"]].to_dict("records"):
+        before = f", after a sample of {row['grade_before']:g}" if np.isfinite(row["grade_before"]) else ""
+        findings.warning(
+            "quality-blank-fail",
+            f"{name.capitalize()}: blank {row['sample_id']} holds {row['value']:g}, over {row['limit']:g}{before}",
+            "Look for carry-over from the sample before, and for mixed labels.",
+            row=row.get("source_row"),
+        )
+    pair = part.loc[np.isfinite(numbers(part, "grade_before"))]
+    if len(pair) >= 8 and pair["value"].nunique() > 1 and pair["grade_before"].nunique() > 1:
+        answer = spearmanr(pair["grade_before"], pair["value"])
+        text += f", rank correlation with the grade before {answer.statistic:.2f} (p {answer.pvalue:.2g})"
+        if answer.pvalue < 0.01 and answer.statistic > 0:
+            findings.warning(
+                "quality-carry-over",
+                f"{name.capitalize()}: blanks follow the grade of the sample before: rank correlation "
+                f"{answer.statistic:.2f}, p {answer.pvalue:.2g}, {len(pair)} blanks",
+                "Ask the laboratory to clean between samples.",
+            )
+    share = failed / len(part)
+    return name, ASPECTS[1], "good" if failed == 0 else "caution" if share <= 0.05 else "failed", text
+
+
+def _duplicate_verdict(name: str, duplicates: pd.DataFrame, findings: Findings) -> Line:
+    part = duplicates.loc[duplicates["element"] == name]
+    if not len(part):
+        return name, ASPECTS[2], "missing", ""
+    texts = []
+    for row in part.to_dict("records"):
+        texts.append(
+            f"{row['stage'] or 'stage not given'}: CVavg {row['cv_avg_pct']:.1f} % of {row['n']} pairs"
+        )
+        if row["verdict"] == "failed":
+            findings.warning(
+                "quality-duplicate",
+                f"{name.capitalize()}: {row['stage']} duplicates have a CVavg of {row['cv_avg_pct']:.1f} %, over the "
+                f"acceptable {row['acceptable_pct']:g} %",
+                "Look at sampling and preparation at that stage.",
+            )
+    found = set(part["verdict"])
+    verdict = "failed" if "failed" in found else "caution" if "caution" in found else "good"
+    return name, ASPECTS[2], verdict, "; ".join(texts)
+
+
+def _check_verdict(name: str, checks: pd.DataFrame, findings: Findings) -> Line:
+    part = checks.loc[checks["element"] == name]
+    if not len(part) or not int(part["n"].iloc[0]):
+        return name, ASPECTS[3], "missing", ""
+    row = part.iloc[0]
+    text = (
+        f"{row['n']} pairs, bias {row['bias_pct']:+.1f} %, reduced major axis slope {row['slope']:.3f} "
+        f"({row['slope_low']:.3f} to {row['slope_high']:.3f})"
+    )
+    if row["verdict"] == "failed":
+        findings.warning(
+            "quality-check-laboratory",
+            f"{name.capitalize()}: the check laboratory differs: {text}",
+            "Find out which laboratory is right before the grades are used.",
+        )
+    return name, ASPECTS[3], str(row["verdict"]), text
+
+
+def _rates(
+    kinds: Mapping[str, pd.DataFrame], assays: pd.DataFrame | None, elements: tuple[str, ...]
+) -> pd.DataFrame:
+    rows = []
+    for kind, part in kinds.items():
+        for name in elements:
+            own = part.loc[part["element"] == name]
+            column = element_column(name)
+            samples = (
+                int(np.isfinite(numbers(assays, column)).sum())
+                if assays is not None and column in assays
+                else 0
+            )
+            for stage in dict.fromkeys(own["stage"]) if kind == "duplicate" else [""]:
+                count = int((own["stage"] == stage).sum()) if kind == "duplicate" else len(own)
+                rows.append((kind, stage, name, count, 100.0 * count / samples if samples else np.nan))
+    return pd.DataFrame(rows, columns=["kind", "stage", "element", "inserts", "share_pct"])

@@ -1,0 +1,267 @@
+"""Core recovery: runs joined to samples by depth, and whether grade goes with recovery."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from sms_resource.findings import Findings
+from sms_resource.samples.desurvey import HolePaths
+from sms_resource.samples.intervals import cut_holes, names, numbers, overlap_pairs, valid_intervals
+
+Floats = NDArray[np.float64]
+Integers = NDArray[np.int64]
+
+# Bands of recovery (common practice, no source): lower edge in percent and what it means.
+BANDS: tuple[tuple[float, str], ...] = (
+    (90.0, "good"),
+    (80.0, "caution"),
+    (50.0, "flagged"),
+    (0.0, "missing"),
+)
+LEAST_SAMPLES = 8
+
+
+def recovered_lengths(runs: pd.DataFrame) -> Floats:
+    """Recovered length (m) of each run: as measured, else from the percentage; NaN where neither is given."""
+    length = numbers(runs, "to_m") - numbers(runs, "from_m")
+    measured = numbers(runs, "recovered_length_m")
+    return np.where(np.isfinite(measured), measured, numbers(runs, "recovery_pct") / 100.0 * length)
+
+
+def join_recovery(intervals: pd.DataFrame, runs: pd.DataFrame) -> pd.DataFrame:
+    """Give each interval the recovery of the runs that it lies in.
+
+    Parameters
+    ----------
+    intervals : DataFrame
+        hole_id, from_m, to_m and anything else.
+    runs : DataFrame
+        hole_id, from_m, to_m, recovered_length_m and/or recovery_pct.
+
+    Returns
+    -------
+    DataFrame
+        ``intervals`` with recovered_length_m (core in the interval, spread evenly over each run) and recovery_pct
+        (of the part that lies in runs); NaN where no run with a known recovery covers it.
+    """
+    result = intervals.copy()
+    result["recovered_length_m"] = np.nan
+    result["recovery_pct"] = np.nan
+    ours = valid_intervals(intervals.assign(_row=np.arange(len(intervals))), "intervals")
+    known = valid_intervals(runs, "runs")
+    got = recovered_lengths(known)
+    known, got = known.loc[np.isfinite(got)].reset_index(drop=True), got[np.isfinite(got)]
+    if ours.empty or known.empty:
+        return result
+    left, right, shared = overlap_pairs(ours, known)
+    rate = got / (numbers(known, "to_m") - numbers(known, "from_m"))
+    row = ours["_row"].to_numpy()[left]
+    covered = np.bincount(row, shared, len(intervals))
+    core = np.bincount(row, shared * rate[right], len(intervals))
+    some = covered > 0
+    result["recovered_length_m"] = np.where(some, core, np.nan)
+    result["recovery_pct"] = np.divide(100.0 * core, covered, out=np.full(len(core), np.nan), where=some)
+    return result
+
+
+def recovered_on_pieces(
+    length: Floats, run: Integers, assayed: NDArray[np.bool_], recovered: Floats, run_length: Floats
+) -> Floats:
+    """Core of each run shared among the pieces of hole that it was cut into; sums to the run's core exactly.
+
+    Assayed pieces are filled first, since core that was sampled was not lost; what is left goes to the rest. Pieces
+    outside runs, or in runs without a known recovery, are NaN.
+    """
+    result = np.full(len(length), np.nan)
+    inside = run >= 0
+    count = len(run_length)
+    if count == 0 or not inside.any():
+        return result
+    sampled = np.bincount(run[inside], length[inside] * assayed[inside], count)
+    rest = np.bincount(run[inside], length[inside] * ~assayed[inside], count)
+    total = sampled + rest
+    over = recovered >= total
+    first = np.where(over, np.divide(recovered, total, out=np.ones(count), where=total > 0), 1.0)
+    first = np.where(
+        ~over & (recovered < sampled),
+        np.divide(recovered, sampled, out=np.zeros(count), where=sampled > 0),
+        first,
+    )
+    left = np.maximum(recovered - sampled, 0.0)
+    second = np.where(over, first, np.divide(left, rest, out=np.zeros(count), where=rest > 0))
+    unknown = ~np.isfinite(recovered)
+    first[unknown], second[unknown] = np.nan, np.nan
+    result[inside] = length[inside] * np.where(assayed[inside], first[run[inside]], second[run[inside]])
+    return result
+
+
+def recovery_bias(
+    samples: pd.DataFrame, metals: Sequence[str], *, significance: float = 0.05
+) -> pd.DataFrame:
+    """Whether grade goes with recovery: Spearman's rank correlation by domain and metal.
+
+    Parameters
+    ----------
+    samples : DataFrame
+        Composites, or assays after `join_recovery`: domain (optional), recovery_pct and the metals.
+    significance : float
+        p-value below which a correlation is called one.
+
+    Returns
+    -------
+    DataFrame
+        domain, metal, n, spearman, p_value, mean_low (grade where recovery is in its lower half), mean_high,
+        verdict in plain words. Core loss is selective (Annels & Dominy 2003, Applied Earth Science 112(3)), and the
+        sign is not known beforehand.
+    """
+    from scipy.stats import spearmanr
+
+    domain = names(samples["domain"]) if "domain" in samples else np.full(len(samples), "all", dtype=object)
+    recovery = numbers(samples, "recovery_pct")
+    rows = []
+    for name in sorted(set(domain)):
+        for metal in metals:
+            grade = numbers(samples, metal)
+            use = (domain == name) & np.isfinite(grade) & np.isfinite(recovery)
+            n = int(use.sum())
+            rho = p = low = high = np.nan
+            if n >= 2:
+                lower = recovery[use] <= np.median(recovery[use])
+                low = float(grade[use][lower].mean())
+                high = float(grade[use][~lower].mean()) if (~lower).any() else np.nan
+            if n >= LEAST_SAMPLES and np.ptp(recovery[use]) > 0 and np.ptp(grade[use]) > 0:
+                answer = spearmanr(recovery[use], grade[use])
+                rho, p = float(answer.statistic), float(answer.pvalue)
+            rows.append(
+                {
+                    "domain": name, "metal": metal, "n": n, "spearman": rho, "p_value": p,
+                    "mean_low": low, "mean_high": high, "verdict": _verdict(n, rho, p, significance),
+                }
+            )  # fmt: skip
+    columns = ["domain", "metal", "n", "spearman", "p_value", "mean_low", "mean_high", "verdict"]
+    return pd.DataFrame(rows, columns=columns)
+
+
+def _verdict(n: int, rho: float, p: float, significance: float) -> str:
+    if not np.isfinite(rho):
+        return f"cannot be judged on {n} samples"
+    if p >= significance:
+        return "no link between grade and recovery is seen"
+    if rho > 0:
+        return "grade rises with recovery: lost core is probably poorer, and recovered grade overstates"
+    return "grade falls with recovery: lost core is probably richer, and recovered grade understates"
+
+
+def recovery_summary(
+    runs: pd.DataFrame, domains: pd.DataFrame | None = None
+) -> tuple[pd.DataFrame, Findings]:
+    """Recovery by domain, weighted by length, with the length in each band; findings on low and over-full runs."""
+    from sms_resource.samples.domains import domain_at
+
+    findings = Findings()
+    good = valid_intervals(runs, "runs", findings)
+    length = numbers(good, "to_m") - numbers(good, "from_m")
+    core = recovered_lengths(good)
+    percent = np.divide(100.0 * core, length, out=np.full(len(length), np.nan), where=length > 0)
+    domain = (
+        names(domain_at(good, domains))
+        if domains is not None and len(domains)
+        else np.full(len(good), "all", object)
+    )
+    for at in np.flatnonzero(percent > 110.0):
+        findings.error(
+            "recovery-over-100",
+            f"Hole {good['hole_id'].iloc[at]}, {good['from_m'].iloc[at]:g} to {good['to_m'].iloc[at]:g} m has a "
+            f"recovery of {percent[at]:.0f} %",
+            "Check the run's depths and the length of its core; up to 110 % is accepted.",
+            row=good["source_row"].iloc[at] if "source_row" in good else None,
+        )
+    some = int(((percent > 100.0 + 1e-6) & (percent <= 110.0)).sum())
+    if some:
+        findings.warning(
+            "recovery-over-100", f"{some} runs have a recovery of 100 to 110 %", "Check their depths."
+        )
+    rows = []
+    for name in [*sorted(set(domain)), "all"] if set(domain) != {"all"} else ["all"]:
+        here = ((domain == name) | (name == "all")) & np.isfinite(core)
+        total = float(length[here].sum())
+        row: dict[str, object] = {
+            "domain": name, "runs": int(here.sum()), "length_m": total,
+            "recovered_length_m": float(core[here].sum()),
+            "recovery_pct": 100.0 * float(core[here].sum()) / total if total else np.nan,
+            "lost_runs": int((here & (core <= 0)).sum()),
+        }  # fmt: skip
+        upper = np.inf
+        for edge, label in BANDS:
+            band = here & (percent >= edge) & (percent < upper)
+            row[f"{label}_pct"] = 100.0 * float(length[band].sum()) / total if total else np.nan
+            upper = edge
+        rows.append(row)
+        mean = float(row["recovery_pct"])  # type: ignore[arg-type]
+        if np.isfinite(mean) and mean < 80.0:
+            findings.warning(
+                "recovery-low",
+                f"Mean recovery of {'all holes' if name == 'all' else f'domain {name}'} is {mean:.0f} % over "
+                f"{total:.0f} m",
+                "Compare the treatments of lost core; under 80 % supports no more than Inferred unless no bias is shown.",
+            )
+    return pd.DataFrame(rows), findings
+
+
+def sticks(
+    assays: pd.DataFrame,
+    runs: pd.DataFrame,
+    domains: pd.DataFrame,
+    paths: HolePaths,
+    metals: Sequence[str],
+) -> pd.DataFrame:
+    """Holes as sticks for logs and sections, with a gap wherever core is lost.
+
+    Each piece of hole between two boundaries of sample, run or domain is drawn in two parts: the share that was
+    recovered, with its grade, and below it the share that was lost, with recovery 0 and no grade. Where in a run
+    the loss happened is not known; the lengths are true, the order within a piece is a way of drawing.
+
+    Returns
+    -------
+    DataFrame
+        hole_id, from_m, to_m, recovery_pct (of the run; 0 where lost, NaN where not known), domain, metals,
+        x_from, y_from, z_from, x_to, y_to, z_to.
+    """
+    good = [valid_intervals(table, "table") for table in (assays, runs, domains)]
+    pieces = cut_holes(good)
+    sample, run, logged = pieces.rows
+    covered = (sample >= 0) | (run >= 0) | (logged >= 0)
+    run_length = numbers(good[1], "to_m") - numbers(good[1], "from_m")
+    core = recovered_on_pieces(pieces.length, run, sample >= 0, recovered_lengths(good[1]), run_length)
+    share = np.clip(np.where(np.isfinite(core), core / pieces.length, 1.0), 0.0, 1.0)
+    middle = np.where(
+        share <= 0, pieces.start, np.where(share >= 1, pieces.end, pieces.start + share * pieces.length)
+    )
+    percent = np.append(100.0 * recovered_lengths(good[1]) / run_length, np.nan)[run]
+    parts = []
+    for lost, start, end in ((False, pieces.start, middle), (True, middle, pieces.end)):
+        at = np.flatnonzero(covered & (end > start))
+        frame = pd.DataFrame(
+            {
+                "hole_id": pieces.holes[pieces.hole[at]],
+                "from_m": start[at],
+                "to_m": end[at],
+                "recovery_pct": 0.0 if lost else percent[at],
+                "domain": np.append(names(good[2]["domain"]), "unlogged")[logged[at]],
+            }
+        )
+        for metal in metals:
+            frame[metal] = np.nan if lost else np.append(numbers(good[0], metal), np.nan)[sample[at]]
+        parts.append(frame)
+    result = pd.concat(parts, ignore_index=True).sort_values(
+        ["hole_id", "from_m"], kind="stable", ignore_index=True
+    )
+    for ending, column in (("from", "from_m"), ("to", "to_m")):
+        xyz = paths.positions(names(result["hole_id"]), result[column])
+        for axis, name in enumerate("xyz"):
+            result[f"{name}_{ending}"] = xyz[:, axis]
+    return result
