@@ -1,1 +1,32 @@
-"""Room: reporting."""
+"""Reports: figures, cautions, the web page, and the pack that a Competent Person takes away.
+
+Takes only frames, mappings and small types (``ReportData``), so that it serves a notebook as well as a run.
+"""
+
+from sms_resource.reporting.data import (
+    BodyEvidence,
+    Classes,
+    Estimation,
+    Evidence,
+    LaboratoryEvidence,
+    ReportData,
+    RunRecord,
+    Subject,
+    ValueEvidence,
+    VariogramRecord,
+)
+from sms_resource.reporting.report import write_report
+
+__all__ = [
+    "BodyEvidence",
+    "Classes",
+    "Estimation",
+    "Evidence",
+    "LaboratoryEvidence",
+    "ReportData",
+    "RunRecord",
+    "Subject",
+    "ValueEvidence",
+    "VariogramRecord",
+    "write_report",
+]

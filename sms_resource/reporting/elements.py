@@ -1,0 +1,212 @@
+"""The report as a tree of plain pieces, so that the web page and the printed pages say the same.
+
+Text is plain everywhere; each writer escapes it for its own format.
+"""
+
+from __future__ import annotations
+
+import math
+import re
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import Any
+
+import pandas as pd
+
+from sms_resource.reporting.rounding import NO_VALUE, group_digits
+from sms_resource.reporting.style import Drawing
+from sms_resource.units import column_element, element_label
+
+
+@dataclass(frozen=True)
+class Paragraph:
+    """Running text. ``kind``: "text", "lead" (larger), "note" (small)."""
+
+    text: str
+    kind: str = "text"
+
+
+@dataclass(frozen=True)
+class Heading:
+    """A heading inside a section."""
+
+    text: str
+
+
+@dataclass(frozen=True)
+class Bullets:
+    """A list of short sentences."""
+
+    items: tuple[str, ...]
+
+
+@dataclass(frozen=True)
+class Facts:
+    """Labels and values."""
+
+    pairs: tuple[tuple[str, str], ...]
+
+
+@dataclass(frozen=True)
+class Table:
+    """A table of finished texts. ``numeric`` marks the columns set to the right; ``strong`` rows that sum up."""
+
+    title: str
+    columns: tuple[str, ...]
+    rows: tuple[tuple[str, ...], ...]
+    numeric: tuple[bool, ...]
+    note: str = ""
+    strong: tuple[int, ...] = ()
+    key: str = ""
+
+
+@dataclass(frozen=True)
+class Picture:
+    """A figure in its place."""
+
+    drawing: Drawing
+
+
+@dataclass(frozen=True)
+class CautionBox:
+    """One caution: what it says, and the figures that set it off."""
+
+    title: str
+    text: str
+    figures: str
+    always: bool = False
+
+
+@dataclass(frozen=True)
+class Slot:
+    """Where the figures of given keys go, or those whose key begins so, once they are drawn."""
+
+    keys: tuple[str, ...]
+
+
+Block = Slot | Paragraph | Heading | Bullets | Facts | Table | Picture | CautionBox
+
+
+@dataclass(frozen=True)
+class Section:
+    """One part of the report."""
+
+    key: str
+    title: str
+    blocks: tuple[Block, ...] = ()
+
+
+@dataclass(frozen=True)
+class Document:
+    """The whole report: the first screen, then the sections."""
+
+    title: str
+    subtitle: str
+    label: str
+    summary: tuple[Block, ...]
+    sections: tuple[Section, ...]
+    facts: Mapping[str, str] = field(default_factory=dict)
+
+    def drawings(self) -> list[Drawing]:
+        """All figures in the order of the pages."""
+        blocks = [*self.summary, *(block for section in self.sections for block in section.blocks)]
+        return [block.drawing for block in blocks if isinstance(block, Picture)]
+
+
+_SUFFIXES = (
+    ("_dry_tonnes", "dry tonnes (t)"), ("dry_tonnes", "dry tonnes (t)"), ("wet_tonnes", "wet tonnes (t)"),
+    ("_tpm3", "(t/m³)"), ("_m3", "(m³)"), ("_m2", "(m²)"), ("_pct", "(%)"), ("_gpt", "(g/t)"), ("_ppm", "(ppm)"),
+    ("_deg", "(°)"), ("_m", "(m)"), ("_g", "(g)"), ("_seconds", "(s)"),
+)  # fmt: skip
+_WORDS = {
+    "n": "count", "p_value": "p", "spearman": "rank correlation", "dry_low": "dry, low (t/m³)",
+    "dry_base": "dry, base (t/m³)", "dry_high": "dry, high (t/m³)", "wet_base": "wet, base (t/m³)",
+    "wet_low": "wet, low (t/m³)", "wet_high": "wet, high (t/m³)",
+    "seconds": "time (s)", "cv": "coefficient of variation", "hole_id": "hole", "sample_id": "sample",
+}  # fmt: skip
+
+
+def column_label(column: str) -> str:
+    """A column name as a person reads it, with its unit: ``length_m`` becomes ``Length (m)``."""
+    name = str(column)
+    if name in _WORDS:
+        label = _WORDS[name]
+    elif column_element(name):
+        return element_label(name)
+    else:
+        label = name.replace("_", " ")
+        for suffix, text in _SUFFIXES:
+            if name.endswith(suffix):
+                label = f"{name[: -len(suffix)].replace('_', ' ')} {text}".strip()
+                break
+    return label[:1].upper() + label[1:]
+
+
+def number_text(value: Any, digits: int = 3) -> str:
+    """A number for a working table: ``digits`` significant figures, whole numbers whole, NaN as a dash."""
+    if value is None or (isinstance(value, float) and not math.isfinite(value)):
+        return NO_VALUE
+    number = float(value)
+    if number == int(number) and abs(number) < 1e15:
+        return group_digits(f"{int(number)}")
+    size = math.floor(math.log10(abs(number)))
+    if size < -4:
+        return f"{number:.{digits - 1}e}".replace("-", "−")
+    return group_digits(f"{number:.{max(0, digits - 1 - size)}f}")
+
+
+def cell_text(value: Any, digits: int = 3) -> str:
+    """Any value of a frame as text; missing is a dash, metals are named as people name them."""
+    if isinstance(value, bool) or type(value).__name__ == "bool":
+        return "yes" if value else "no"
+    if isinstance(value, str):
+        return element_label(value) if column_element(value) else value
+    if isinstance(value, Sequence):
+        return ", ".join(cell_text(item, digits) for item in value)
+    if value is None or value is pd.NaT or value is pd.NA:
+        return NO_VALUE
+    if isinstance(value, (int, float)) or hasattr(value, "dtype"):
+        return number_text(float(value), digits)
+    return str(value)
+
+
+def frame_table(
+    frame: pd.DataFrame,
+    title: str,
+    *,
+    columns: Sequence[str] | None = None,
+    labels: Mapping[str, str] | None = None,
+    digits: int = 3,
+    note: str = "",
+    most: int = 60,
+    key: str = "",
+) -> Table:
+    """Turn a frame into a table of texts; beyond ``most`` rows the note says how many were left to the files."""
+    chosen = [name for name in (columns or frame.columns) if name in frame.columns and name != "source_row"]
+    names = {**{name: column_label(name) for name in chosen}, **(labels or {})}
+    shown = frame[chosen].head(most)
+    rows = tuple(
+        tuple(cell_text(value, digits) for value in record)
+        for record in shown.itertuples(index=False, name=None)
+    )
+    if len(frame) > most:
+        note = f"{note} The first {most} of {len(frame)} rows; the data files hold all.".strip()
+    numeric = tuple(
+        pd.api.types.is_numeric_dtype(shown[name]) and not pd.api.types.is_bool_dtype(shown[name])
+        for name in chosen
+    )
+    return Table(title, tuple(names[name] for name in chosen), rows, numeric, note, key=key)
+
+
+def plain_words(text: str) -> str:
+    """Collapse white space, so that text from files cannot break a layout."""
+    return re.sub(r"\s+", " ", str(text)).strip()
+
+
+def facts_from(mapping: Mapping[str, Any] | None) -> Facts | None:
+    """Labels and values from a mapping; None where it is empty."""
+    if not mapping:
+        return None
+    return Facts(
+        tuple((column_label(str(key)), plain_words(cell_text(value, 4))) for key, value in mapping.items())
+    )

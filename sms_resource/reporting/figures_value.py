@@ -1,0 +1,314 @@
+"""Tonnes and value as pictures: grade-tonnage, waterfalls, geometry, tornado, heat map."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+import pandas as pd
+
+from sms_resource.reporting import style
+from sms_resource.reporting.data import ReportData, has
+from sms_resource.reporting.elements import column_label
+from sms_resource.reporting.rounding import cutoff_phrase, mass_unit, significant_text
+from sms_resource.reporting.style import Drawing
+from sms_resource.reporting.tonnage import whole_domain
+from sms_resource.units import column_element, element_label
+
+
+def variable_label(variable: str) -> str:
+    """Axis label of a cut-off variable: ``Cu (%)`` or words with the unit."""
+    return element_label(variable) if column_element(variable) else column_label(variable)
+
+
+def grade_tonnage(data: ReportData) -> Drawing | None:
+    """Dry tonnes and grades against the cut-off, one panel a class."""
+    table = data.value.grade_tonnage
+    if table is None or not has(table, "cutoff", "proposed_class", "dry_tonnes"):
+        return None
+    rows = whole_domain(table)
+    wanted = (data.subject.cutoff or {}).get("variable")
+    variable = str(
+        wanted
+        if wanted is not None
+        else rows["cutoff_variable"].iloc[0]
+        if "cutoff_variable" in rows
+        else "cutoff"
+    )
+    if "cutoff_variable" in rows and (rows["cutoff_variable"] == variable).any():
+        rows = rows[rows["cutoff_variable"] == variable]
+    names = sorted(
+        rows.loc[rows["dry_tonnes"] > 0, "proposed_class"].astype(str).unique(), key=style.class_rank
+    )[:6]
+    metals = [m for m in data.subject.metals if m in rows]
+    if not names or not metals:
+        return None
+    across = 2 if len(names) > 1 else 1
+    down = -(-len(names) // across)
+    figure, axes = style.new_figure(5.0 * across, 3.3 * down + 0.3, down, across)
+    for panel, (axis, name) in enumerate(zip(axes.ravel(), names)):
+        part = rows[rows["proposed_class"].astype(str) == name].sort_values("cutoff")
+        unit, scale = mass_unit(float(part["dry_tonnes"].max()))
+        axis.fill_between(
+            part["cutoff"],
+            part["dry_tonnes"] / scale,
+            color=style.class_colour(name) if name.lower() != "all" else "#d5dae0",
+            alpha=0.75,
+            lw=0,
+            step=None,
+        )
+        axis.plot(
+            part["cutoff"], part["dry_tonnes"] / scale, color=style.INK, lw=1.2, label="dry tonnes (left)"
+        )
+        axis.set_ylim(0, float(part["dry_tonnes"].max()) / scale * 1.08 or 1.0)
+        axis.set_xlim(float(part["cutoff"].min()), float(part["cutoff"].max()))
+        axis.set_xlabel(f"Cut-off, {variable_label(variable)}")
+        axis.set_ylabel(f"Dry tonnes above ({unit} dry)")
+        axis.set_title("All classes" if name.lower() == "all" else f"{name} (proposed)")
+        right = axis.twinx()
+        right.spines["right"].set_visible(True)
+        for number, metal in enumerate(metals):
+            start = part[metal].dropna()
+            relative = part[metal] / start.iloc[0] if len(start) and start.iloc[0] else part[metal] * np.nan
+            right.plot(part["cutoff"], relative, color=style.LINES[number % 7], ls=("-", "--", "-.", ":")[number % 4], lw=1.4,
+                       label=f"{element_label(metal).rpartition(' (')[0]} grade" if panel == 0 else None)  # fmt: skip
+            if len(start):
+                right.annotate(f"{start.iloc[0]:.3g} {element_label(metal).rpartition(' (')[2].rstrip(')')} {element_label(metal).rpartition(' (')[0]}", (0.98, 0.06 + 0.075 * number),
+                               xycoords="axes fraction", ha="right", fontsize=6.8, color=style.LINES[number % 7])  # fmt: skip
+        right.set_ylabel("Grade above / grade at the lowest cut-off (ratio)")
+        right.set_ylim(bottom=0)
+        cutoff = (data.subject.cutoff or {}).get("value")
+        if cutoff is not None and variable == wanted:
+            axis.axvline(
+                float(cutoff),
+                color="#d55e00",
+                lw=1,
+                ls=":",
+                label="cut-off of the study" if panel == 0 else None,
+            )
+        if panel == 0:
+            left_handles, left_names = axis.get_legend_handles_labels()
+            right_handles, right_names = right.get_legend_handles_labels()
+            figure.legend(
+                left_handles + right_handles, left_names + right_names, loc="outside lower center", ncols=6
+            )
+    for axis in axes.ravel()[len(names) :]:
+        axis.set_axis_off()
+    return Drawing("grade_tonnage", "tonnes", f"Tonnes and grade against cut-off ({data.tally_label})",
+                   "Block support, no dilution. Grades are drawn as a ratio to their value at the lowest cut-off, so that four metals share an "
+                   "axis; the numbers in the panel are those values.", "Grade-tonnage curves, one panel for each proposed class.", figure, rows)  # fmt: skip
+
+
+def _waterfall(
+    data: ReportData, frame: pd.DataFrame, key: str, section: str, title: str, caption: str, total: str
+) -> Drawing:
+    values = frame["dry_tonnes"].to_numpy(float)
+    kinds = (
+        frame["kind"].astype(str).to_numpy()
+        if "kind" in frame
+        else np.array([total if i in (0, len(frame) - 1) else "step" for i in range(len(frame))])
+    )
+    unit, scale = mass_unit(float(np.nanmax(np.abs(values))) if len(values) else 1.0)
+    figure, axes = style.new_figure(8.6, 0.42 * len(frame) + 1.3)
+    axis = axes[0, 0]
+    level = 0.0
+    for number, (value, kind, step) in enumerate(zip(values, kinds, frame["step"].astype(str))):
+        y = len(frame) - 1 - number
+        if kind == total:
+            axis.barh(y, value / scale, color="#4f6d7a", height=0.62)
+            level = value
+            axis.text(value / scale, y, f" {significant_text(value / scale, 3)}", va="center", fontsize=7.5)
+        else:
+            axis.barh(
+                y, value / scale, left=level / scale, color="#d9915b" if value < 0 else "#6fa58f", height=0.62
+            )
+            right = max(level, level + value) / scale
+            axis.text(right, y, f" {value / scale:+.3g}", va="center", fontsize=7.5)
+            level += value
+        axis.plot(
+            [level / scale, level / scale], [y - 1 + 0.31, y - 0.31], color=style.QUIET, lw=0.6
+        ) if number < len(frame) - 1 else None
+    axis.set_yticks(range(len(frame)), list(frame["step"].astype(str))[::-1])
+    axis.set_ylim(-0.6, len(frame) - 0.4)
+    axis.set_xlabel(f"Dry tonnes ({unit} dry), {data.tally_label}")
+    axis.margins(x=0.12)
+    axis.set_xlim(left=0)
+    return Drawing(key, section, title, caption, f"Waterfall of dry tonnes: {title.lower()}.", figure, frame)
+
+
+def waterfall(data: ReportData) -> Drawing | None:
+    """What each screen takes, from the body to what remains."""
+    frame = data.body.waterfall
+    if frame is None or not has(frame, "step", "dry_tonnes"):
+        return None
+    return _waterfall(
+        data,
+        frame,
+        "waterfall",
+        "tonnes",
+        "From the body to what the screens leave",
+        "Each bar is what a screen takes in dry tonnes; nothing is dropped in silence.",
+        "total",
+    )
+
+
+def changes(data: ReportData) -> Drawing | None:
+    """What changed since another run, and which decision caused it."""
+    frame = data.record.changes
+    if frame is None or not has(frame, "step", "dry_tonnes"):
+        return None
+    return _waterfall(
+        data,
+        frame,
+        "changes",
+        "ledger",
+        "What changed since the other run",
+        f"Compared with {data.record.against or 'another run'}.",
+        "total",
+    )
+
+
+def geometry(data: ReportData) -> Drawing | None:
+    """Change of dry tonnes with base, seafloor and outline."""
+    frame = data.body.geometry_uncertainty
+    if frame is None or not has(frame, "case", "change_pct"):
+        return None
+    figure, axes = style.new_figure(7.4, 0.36 * len(frame) + 1.1)
+    axis = axes[0, 0]
+    place = np.arange(len(frame))[::-1]
+    change = frame["change_pct"].to_numpy(float)
+    axis.barh(place, change, color=np.where(change < 0, "#d9915b", "#6fa58f"), height=0.6)
+    for y, value in zip(place, change):
+        axis.annotate(
+            f"{value:+.1f} %",
+            (value, y),
+            xytext=(4 if value >= 0 else -4, 0),
+            textcoords="offset points",
+            va="center",
+            ha="left" if value >= 0 else "right",
+            fontsize=7,
+        )
+    axis.axvline(0, color=style.INK, lw=0.9)
+    axis.set_yticks(place, list(frame["case"].astype(str)))
+    axis.set_xlabel("Change of dry tonnes of the body (%)")
+    axis.margins(x=0.18)
+    return Drawing(
+        "geometry",
+        "body",
+        "What the geometry is worth",
+        "Dry tonnes of the body when one surface or the outline moves by the stated amount.",
+        "Bars of change in dry tonnes by case.",
+        figure,
+        frame,
+    )
+
+
+def measure_label(measure: str) -> str:
+    """What a measure of a scenario is called on an axis."""
+    if measure in ("dry_tonnes", "wet_tonnes"):
+        return f"{measure.partition('_')[0].capitalize()} tonnes above cut-off"
+    return element_label(measure) if column_element(measure) else column_label(measure)
+
+
+def tornado(data: ReportData) -> Drawing | None:
+    """Ranked effect of each decision on dry tonnes, grade and metal, in percent of the base."""
+    frame = data.value.tornado
+    if frame is None or not has(frame, "decision", "measure", "low", "base", "high"):
+        return None
+    measures = list(dict.fromkeys(frame["measure"].astype(str)))[:3]
+    spread = frame.assign(size=((frame["high"] - frame["low"]).abs() / frame["base"].abs()).fillna(0.0))
+    names = (
+        spread.groupby("decision", sort=True)["size"]
+        .max()
+        .sort_values(ascending=False, kind="stable")
+        .index[:14]
+    )
+    figure, axes = style.new_figure(
+        3.1 * len(measures) + 2.0, 0.34 * len(names) + 1.2, 1, len(measures), sharey=True
+    )
+    for axis, measure in zip(axes[0], measures):
+        part = (
+            frame[frame["measure"] == measure]
+            .drop_duplicates("decision")
+            .set_index("decision")
+            .reindex(names)
+        )
+        for number, (_, row) in enumerate(part.iterrows()):
+            y = len(names) - 1 - number
+            if not math.isfinite(float(row["base"])) or not row["base"]:
+                continue
+            for side, colour, label in (("low", "#d9915b", "low_label"), ("high", "#6fa58f", "high_label")):
+                value = 100 * (float(row[side]) / float(row["base"]) - 1)
+                axis.barh(y, value, color=colour, height=0.62)
+                if label in row and isinstance(row[label], str):
+                    axis.annotate(
+                        row[label][:22],
+                        (value, y),
+                        xytext=(3 if value >= 0 else -3, 0),
+                        textcoords="offset points",
+                        va="center",
+                        ha="left" if value >= 0 else "right",
+                        fontsize=5.8,
+                    )
+        axis.axvline(0, color=style.INK, lw=0.9)
+        axis.set_xlabel(f"{measure_label(measure)}: change (%)")
+        axis.margins(x=0.3)
+    axes[0, 0].set_yticks(range(len(names)), [str(n).replace("_", " ")[:44] for n in names][::-1])
+    return Drawing("tornado", "scenarios", f"What moves the estimate ({data.tally_label})", f"Each decision moved alone to its low (orange) and high (green) alternative; at {data.cutoff_text}.",
+                   "Tornado of the effect of each decision.", figure, frame)  # fmt: skip
+
+
+def heat_map(data: ReportData) -> Drawing | None:
+    """A two-way grid of scenarios as a heat map with the numbers written in."""
+    frame = data.value.heat_map
+    if frame is None or not has(frame, "x", "y", "value"):
+        return None
+    grid = frame.pivot_table(index="y", columns="x", values="value", aggfunc="first")
+    labels = data.value.heat_map_labels
+    figure, axes = style.new_figure(
+        min(9.5, 0.85 * grid.shape[1] + 2.4), min(8.0, 0.48 * grid.shape[0] + 1.5)
+    )
+    axis = axes[0, 0]
+    values = grid.to_numpy(float)
+    scale, unit_note = 1.0, ""
+    if "tonnes" in labels[2].lower():
+        unit, scale = mass_unit(float(np.nanmax(values)))
+        unit_note = f" ({unit})"
+    image = axis.imshow(values / scale, origin="lower", aspect="auto", cmap=style.SURFACE_MAP)
+    middle = 0.5 * (np.nanmin(values) + np.nanmax(values))
+    if values.size <= 150:
+        for (row, column), value in np.ndenumerate(values):
+            if np.isfinite(value):
+                axis.text(
+                    column,
+                    row,
+                    significant_text(value / scale, 3),
+                    ha="center",
+                    va="center",
+                    fontsize=7,
+                    color="white" if value < middle else style.INK,
+                )
+    ticks = (
+        [(f"{v:g}" if isinstance(v, (int, float)) else str(v)) for v in grid.columns],
+        [(f"{v:g}" if isinstance(v, (int, float)) else str(v)) for v in grid.index],
+    )
+    axis.set_xticks(range(grid.shape[1]), ticks[0])
+    axis.set_yticks(range(grid.shape[0]), ticks[1])
+    axis.set_xlabel(labels[0])
+    axis.set_ylabel(labels[1])
+    figure.colorbar(image, ax=axis, label=f"{labels[2]}{unit_note}")
+    return Drawing(
+        "heat_map",
+        "scenarios",
+        f"{labels[2]} by {labels[0].lower()} and {labels[1].lower()} ({data.tally_label})",
+        "Each cell is one scenario run.",
+        "Heat map of a grid of scenarios.",
+        figure,
+        frame,
+    )
+
+
+def cutoff_words(data: ReportData) -> str:
+    """The study's cut-off as a phrase."""
+    given = data.subject.cutoff or {}
+    return cutoff_phrase(given.get("variable"), given.get("value"))

@@ -1,0 +1,208 @@
+"""How every figure looks, and how it is saved: same study, same bytes.
+
+matplotlib's object interface only; its settings are borrowed for the time of drawing and given back.
+Colours: viridis and cividis (perceptually even, read in grey and by colour-blind eyes; Nuñez et al. 2018,
+doi:10.1371/journal.pone.0199239) and the set of Okabe & Ito (2008) for lines; markers and hatches repeat
+what a colour says.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+import pandas as pd
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+    from matplotlib.figure import Figure
+
+DPI = 130
+GRADE_MAP = "viridis"
+SURFACE_MAP = "cividis"
+INK = "#1f2328"
+QUIET = "#6b7177"
+RULE = "#c9cdd1"
+LINES = ("#0072b2", "#d55e00", "#009e73", "#cc79a7", "#56b4e9", "#e69f00", "#5b5b5b")
+MARKERS = ("o", "s", "^", "D", "v", "P", "X")
+CLASS_ORDER = ("Measured", "Indicated", "Inferred", "unclassified")
+CLASS_COLOURS = {
+    "measured": "#0b3c49",
+    "indicated": "#1f7a8c",
+    "inferred": "#9cc9cf",
+    "unclassified": "#dedad2",
+}
+CLASS_HATCHES = {"measured": "", "indicated": "", "inferred": "//", "unclassified": ".."}
+VERDICT_COLOURS = {"good": "#009e73", "caution": "#e69f00", "failed": "#d55e00", "missing": "#8a8f94"}
+
+SETTINGS: dict[str, Any] = {
+    "svg.hashsalt": "sms_resource",
+    "svg.fonttype": "path",
+    "font.family": ["DejaVu Sans"],
+    "font.size": 8.5,
+    "axes.titlesize": 9.0,
+    "axes.titleweight": "normal",
+    "axes.titlelocation": "left",
+    "axes.labelsize": 8.5,
+    "axes.edgecolor": QUIET,
+    "axes.labelcolor": INK,
+    "axes.linewidth": 0.7,
+    "axes.spines.top": False,
+    "axes.spines.right": False,
+    "text.color": INK,
+    "xtick.color": INK,
+    "ytick.color": INK,
+    "xtick.labelsize": 7.5,
+    "ytick.labelsize": 7.5,
+    "xtick.major.width": 0.7,
+    "ytick.major.width": 0.7,
+    "grid.color": "#e6e8ea",
+    "grid.linewidth": 0.6,
+    "legend.fontsize": 7.5,
+    "legend.frameon": False,
+    "lines.linewidth": 1.4,
+    "hatch.linewidth": 0.5,
+    "hatch.color": "#7d8489",
+    "path.simplify": True,
+    "axes.formatter.useoffset": False,
+}
+
+
+@dataclass(frozen=True)
+class Drawing:
+    """One finished figure with the words and the numbers that belong to it.
+
+    ``section`` names the part of the report; ``table`` is what was drawn, as a table.
+    """
+
+    key: str
+    section: str
+    title: str
+    caption: str
+    alt: str
+    figure: Figure
+    table: pd.DataFrame
+
+
+@contextmanager
+def borrowed_settings() -> Iterator[None]:
+    """Draw inside this: the settings hold within and are given back after."""
+    import matplotlib
+
+    with matplotlib.rc_context(SETTINGS):
+        yield
+
+
+def new_figure(
+    width: float, height: float, rows: int = 1, columns: int = 1, **subplots: Any
+) -> tuple[Figure, Any]:
+    """A figure (inches) on the Agg canvas with its axes as an array of shape (rows, columns)."""
+    from matplotlib.backends.backend_agg import FigureCanvasAgg
+    from matplotlib.figure import Figure
+
+    figure = Figure(figsize=(width, height), dpi=DPI, facecolor="white", layout="constrained")
+    FigureCanvasAgg(figure)
+    axes = figure.subplots(rows, columns, squeeze=False, **subplots)
+    return figure, axes
+
+
+def save_drawing(drawing: Drawing, folder: Path) -> tuple[bytes, list[Path]]:
+    """Write PNG, SVG and the table as CSV; return the bytes of the PNG and the paths.
+
+    No time, no version and no random name goes into the files.
+    """
+    import io
+
+    folder.mkdir(parents=True, exist_ok=True)
+    (folder / "data").mkdir(exist_ok=True)
+    png, svg = folder / f"{drawing.key}.png", folder / f"{drawing.key}.svg"
+    table = folder / "data" / f"{drawing.key}.csv"
+    figure = drawing.figure
+    figure.get_layout_engine().execute(figure)  # type: ignore[union-attr]
+    figure.set_layout_engine("none")  # placed once, not again for each file
+    buffer = io.BytesIO()
+    figure.savefig(buffer, format="png", dpi=DPI, metadata={"Software": None})
+    content = buffer.getvalue()
+    png.write_bytes(content)
+    figure.savefig(svg, format="svg", dpi=DPI, metadata={"Date": None, "Creator": None})
+    drawing.table.to_csv(table, index=False, lineterminator="\n", float_format="%.10g")
+    return content, [png, svg, table]
+
+
+def nice_length(span: float) -> float:
+    """A round length (1, 2 or 5 times a power of ten) near a fifth of ``span``."""
+    if not span > 0:
+        return 1.0
+    power = 10.0 ** math.floor(math.log10(span / 5.0))
+    return max(power * step for step in (1.0, 2.0, 5.0) if power * step <= span / 4.0)
+
+
+def finish_plan(axes: Axes, *, label: str = "") -> None:
+    """Equal scale, round eastings and northings, scale bar and north arrow."""
+    from matplotlib.ticker import FuncFormatter, MaxNLocator
+
+    axes.set_aspect("equal")
+    x0, x1 = axes.get_xlim()
+    y0, y1 = axes.get_ylim()
+    for axis in (axes.xaxis, axes.yaxis):
+        axis.set_major_locator(MaxNLocator(4, steps=[1, 2, 5, 10]))
+        axis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:,.0f}".replace(",", "\u2009")))
+    axes.set_xlabel("Easting (m)")
+    axes.set_ylabel("Northing (m)")
+    axes.tick_params(axis="y", labelrotation=90)
+    for text in axes.get_yticklabels():
+        text.set_verticalalignment("center")
+    length = nice_length(x1 - x0)
+    height = (y1 - y0) * 0.012
+    left, bottom = x0 + 0.04 * (x1 - x0), y0 + 0.04 * (y1 - y0)
+    halo = dict(facecolor="white", alpha=0.8, edgecolor="none", pad=1.5)
+    axes.fill([left, left + length / 2, left + length / 2, left], [bottom, bottom, bottom + height, bottom + height],
+              color=INK, zorder=20, lw=0.6, ec=INK)  # fmt: skip
+    axes.fill([left + length / 2, left + length, left + length, left + length / 2],
+              [bottom, bottom, bottom + height, bottom + height], fc="white", ec=INK, lw=0.6, zorder=20)  # fmt: skip
+    axes.text(left + length / 2, bottom + 1.8 * height, f"{length:g} m", ha="center", va="bottom", fontsize=7,
+              zorder=20, bbox=halo)  # fmt: skip
+    axes.annotate("N", xy=(0.955, 0.965), xytext=(0.955, 0.865), xycoords="axes fraction", ha="center", va="center",
+                  fontsize=8, zorder=20, bbox=halo,
+                  arrowprops=dict(arrowstyle="-|>", color=INK, lw=1.1, shrinkA=0, shrinkB=0))  # fmt: skip
+    axes.set_xlim(x0, x1)
+    axes.set_ylim(y0, y1)
+    if label:
+        axes.set_title(label)
+
+
+def hillshade(x: Any, y: Any, values: Any, *, azimuth: float = 315.0, altitude: float = 45.0) -> Any:
+    """Lambert shading in 0 to 1, light from ``azimuth`` (degrees clockwise from north); NaN stays NaN."""
+    dy, dx = np.gradient(np.asarray(values, dtype=float), np.asarray(y, float), np.asarray(x, float))
+    a, h = math.radians(azimuth), math.radians(altitude)
+    light = (math.sin(a) * math.cos(h), math.cos(a) * math.cos(h), math.sin(h))
+    shade = (-dx * light[0] - dy * light[1] + light[2]) / np.sqrt(dx**2 + dy**2 + 1.0)
+    return np.clip(shade, 0.0, 1.0)
+
+
+def class_colour(name: Any) -> str:
+    """Fill colour of a proposed class."""
+    return CLASS_COLOURS.get(str(name).lower(), CLASS_COLOURS["unclassified"])
+
+
+def class_rank(name: Any) -> int:
+    """Order of classes: most certain first; what is not known goes last, "all" after it."""
+    names = [item.lower() for item in CLASS_ORDER]
+    key = str(name).lower()
+    return names.index(key) if key in names else (99 if key in ("all", "total") else 50)
+
+
+def grade_limits(values: Any) -> tuple[float, float]:
+    """Colour limits that extreme grades do not stretch: 0 (or the least) to the 97.5th percentile."""
+    array = np.asarray(values, dtype=float)
+    array = array[np.isfinite(array)]
+    if array.size == 0:
+        return 0.0, 1.0
+    high = float(np.quantile(array, 0.975))
+    low = float(min(0.0, array.min()))
+    return (low, high) if high > low else (low, low + 1.0)
