@@ -26,6 +26,14 @@ def spans(rows: Iterable[int]) -> str:
     return ", ".join(parts)
 
 
+def listed(names: Iterable[object], most: int = 40) -> str:
+    """Names with commas between them; beyond ``most`` the rest is counted."""
+    texts = [str(name) for name in names]
+    if len(texts) <= most:
+        return ", ".join(texts)
+    return ", ".join(texts[:most]) + f" and {len(texts) - most} more"
+
+
 def report_rows(
     findings: Findings,
     severity: Severity,
@@ -69,11 +77,22 @@ def report_rows(
         findings.add(severity, code, text(i), remedy, file=file, row=int(row), column=column)
 
 
-def mark(frame: pd.DataFrame, file: str, headers: dict[str, str]) -> pd.DataFrame:
-    """Note on a table which file it is from and what that file calls its columns."""
+def mark(
+    frame: pd.DataFrame, file: str, headers: dict[str, str], reported: dict[str, list[int]] | None = None
+) -> pd.DataFrame:
+    """Note on a table its file, what that file calls its columns, and the cells that already have a finding."""
     frame.attrs["file"] = file
     frame.attrs["headers"] = dict(headers)
+    frame.attrs["reported"] = reported or {}
     return frame
+
+
+def not_reported(frame: pd.DataFrame, column: str) -> np.ndarray:
+    """Rows whose cell in ``column`` has no finding yet, as a mask."""
+    rows = frame.attrs.get("reported", {}).get(column)
+    if not rows:
+        return np.ones(len(frame), dtype=bool)
+    return ~np.isin(frame["source_row"].to_numpy(), rows)
 
 
 def file_of(frame: pd.DataFrame, default: str | None = None) -> str | None:

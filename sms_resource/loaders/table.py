@@ -78,6 +78,7 @@ class TableMaker:
         self.constants = {self.plain(key): value for key, value in source.constants.items()}
         self.headers: dict[str, str] = {}
         self.results: dict[str, Parsed] = {}
+        self.reported: dict[str, list[int]] = {}
 
     @staticmethod
     def plain(key: str) -> str:
@@ -105,7 +106,7 @@ class TableMaker:
             if column.kind in ("identifier", "text"):
                 frame[column.name] = frame[column.name].astype("str")
         self._note_unused()
-        return mark(frame, self.file, self.headers)
+        return mark(frame, self.file, self.headers, self.reported)
 
     # -- the mapping ------------------------------------------------------------------------------------
 
@@ -277,6 +278,9 @@ class TableMaker:
     def report(self, parsed: Parsed, header: str) -> None:
         """Findings of the cells of one column that are no numbers, and of codes for missing."""
         rows = self.raw.rows
+        if parsed.problems:
+            name = next((key for key, value in self.headers.items() if value == header), header)
+            self.reported[name] = [int(rows[i]) for i in sorted(parsed.problems)]
         groups: dict[str, list[int]] = {}
         for i in sorted(parsed.problems):
             groups.setdefault(parsed.problems[i][0], []).append(i)
