@@ -14,7 +14,10 @@ from sms_resource.blocks.body import Body
 from sms_resource.blocks.domains import LayeredDomains
 from sms_resource.blocks.grid import BlockGrid
 from sms_resource.blocks.polygons import lattice_moments, polygon_edges
+from sms_resource.blocks.propose import propose_grid
 from sms_resource.findings import Findings
+
+__all__ = ["BlockModel", "fill_blocks", "propose_grid"]
 
 Array = NDArray[Any]
 MOST_CELLS = 400_000_000  # columns in plan times split squared stays below this
@@ -166,7 +169,8 @@ def fill_blocks(
             f"grid asks for about {guess:.3g} blocks in {ni * nj:.3g} columns; the limit is {most_blocks:,} blocks. "
             f"Use blocks of at least about {edge:.2g} m, or clip the outline"
         )
-    surfaces = [np.ascontiguousarray(g.values) for g in (body.top, body.thickness, body.known, body.distance)]
+    top, thickness = np.ascontiguousarray(body.top.values), np.ascontiguousarray(body.thickness.values)
+    known, distance = np.ascontiguousarray(body.known.values), np.ascontiguousarray(body.distance.values)
     layers = np.ascontiguousarray(domains.depths(body.top))
     lattice = np.array([body.top.x0, body.top.y0, body.top.dx, body.top.dy])
     # The kernels see the covered part of the grid only.
@@ -181,16 +185,19 @@ def fill_blocks(
         moments = lattice_moments(edges * split, rows * split, ni * split, row * split)
         s, t = moments.centroid()
         lowest, highest = (np.zeros((rows, ni), dtype=np.int64) for _ in range(2))
-        where = (moments.area, s, t, split, row, size, axes, origin, lattice)
-        column_ranges(*where, surfaces[0], surfaces[1], grid.shape[2], lowest, highest)
+        column_ranges(
+            moments.area, s, t, split, row, size, axes, origin, lattice, top, thickness, grid.shape[2], lowest,
+            highest,
+        )  # fmt: skip
         count = np.maximum(highest - lowest + 1, 0)
         start = np.concatenate([[0], np.cumsum(count.ravel())[:-1]]).reshape(count.shape)
         total = int(count.sum())
         volume = np.zeros((len(domains.names), total))
         sideways, downwards, moment = np.zeros(total), np.zeros(total), np.zeros(total)
         outside += fill_columns(
-            *where, *surfaces, body.reach_m, layers, lowest, start, count, volume, sideways, downwards, moment
-        )
+            moments.area, s, t, split, row, size, axes, origin, lattice, top, thickness, known, distance,
+            body.reach_m, layers, lowest, start, count, volume, sideways, downwards, moment,
+        )  # fmt: skip
         if total:
             parts.append(_rows(lowest, count, first_i, first_j + row, volume, sideways, downwards, moment))
     inside_share = _plan_share(body, grid)
