@@ -1,10 +1,11 @@
 """Companion estimates from the samples that the search found."""
 
+# mypy: allow-untyped-defs
+
 from __future__ import annotations
 
 import math
 
-import numpy as np
 from numba import njit, prange
 
 _SAME_PLACE = 1e-12  # squared metres, see model.COINCIDENT_M

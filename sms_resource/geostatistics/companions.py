@@ -8,7 +8,7 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from .inputs import Samples, checked_block, checked_samples, checked_threads, points_array
+from .inputs import Samples, checked_block, checked_samples, checked_threads, cross, points_array
 from .model import COINCIDENT_M
 from .neighbourhood import Neighbourhood, as_passes, check_holes
 from .support_variance import discretisation_offsets
@@ -100,7 +100,7 @@ def _by_neighbourhood(
                 radii = np.array(item.radii)
                 with using_threads(workers):
                     companions(
-                        np.ascontiguousarray(samples.values[np.ix_(present, group)].T),
+                        np.ascontiguousarray(samples.values[cross(present, group)].T),
                         along(item.axes, points) / radii[:, None],
                         np.ascontiguousarray(points.T),
                         local,
@@ -131,11 +131,11 @@ def _from_all_samples(
         if not len(present):
             continue
         points = samples.points[present]
-        table = samples.values[np.ix_(present, group)]
+        table = samples.values[cross(present, group)]
         step = max(1, _CHUNK_NUMBERS // len(points))
         for first in range(0, len(local), step):
             chunk = local[first : first + step]
-            place = np.ix_(np.arange(first, first + len(chunk)), group)
+            place = cross(np.arange(first, first + len(chunk)), group)
             squared = ((chunk[:, None, :] - points[None]) ** 2).sum(axis=2)
             out["nearest"][place] = table[np.argmin(squared, axis=1)]
             out["moving_average"][place] = table.mean(axis=0)
@@ -149,4 +149,4 @@ def _from_all_samples(
             out["inverse_distance"][place] = total / len(offsets)
         strange = np.flatnonzero(~np.isfinite(local).all(axis=1))
         for array in out.values():
-            array[np.ix_(strange, group)] = np.nan
+            array[cross(strange, group)] = np.nan

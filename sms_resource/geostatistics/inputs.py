@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import cast
 
@@ -45,7 +46,12 @@ class Samples:
         return array[:, 0] if self.single else array
 
 
-def _rows(flags: NDArray[np.bool_], limit: int = 5) -> str:
+def cross(rows: NDArray[np.integer], columns: Sequence[int]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Index of the block of ``rows`` and ``columns`` of an array."""
+    return np.asarray(rows, dtype=np.int64)[:, None], np.asarray(columns, dtype=np.int64)[None, :]
+
+
+def _rows(flags: ArrayLike, limit: int = 5) -> str:
     found = np.flatnonzero(flags)
     more = f" and {len(found) - limit} more" if len(found) > limit else ""
     return ", ".join(str(row) for row in found[:limit]) + more
@@ -103,8 +109,9 @@ def checked_samples(
         labels = pd.Series(np.asarray(hole_ids))
         if len(labels) != len(points):
             raise ValueError(f"hole_ids has {len(labels)} entries; wanted {len(points)}, one per sample")
-        if labels.isna().any():
-            raise ValueError(f"hole_ids: missing in rows {_rows(labels.isna().to_numpy())}")
+        missing = labels.isna().to_numpy(dtype=bool)
+        if missing.any():
+            raise ValueError(f"hole_ids: missing in rows {_rows(missing)}")
         holes = pd.factorize(labels)[0].astype(np.int32)
     if coincident not in POLICIES:
         raise ValueError(f"coincident {coincident!r} is not one of {', '.join(POLICIES)}")
@@ -147,7 +154,7 @@ def checked_threads(threads: int | None) -> int:
     """
     from numba import config
 
-    available = int(config.NUMBA_NUM_THREADS)
+    available = int(config.NUMBA_NUM_THREADS)  # type: ignore[attr-defined]
     if threads is None:
         return available
     if isinstance(threads, bool) or int(threads) != threads or threads < 1:

@@ -200,11 +200,22 @@ class Outputs:
     def empty(cls, rows: int, columns: int) -> Outputs:
         """NaN for numbers, zero for counts, and "too few samples" until something better is known."""
         shape = (rows, columns)
+
+        def missing() -> FloatArray:
+            return np.full(shape, np.nan)
+
         return cls(
-            *(np.full(shape, np.nan) for _ in range(7)),
-            *(np.zeros(shape, dtype=np.int32) for _ in range(2)),
-            np.ones(shape, dtype=np.int8),
-            np.zeros(shape, dtype=np.int8),
+            estimate=missing(),
+            variance=missing(),
+            lagrange=missing(),
+            slope=missing(),
+            efficiency=missing(),
+            negative=missing(),
+            nearest=missing(),
+            count=np.zeros(shape, dtype=np.int32),
+            holes=np.zeros(shape, dtype=np.int32),
+            status=np.ones(shape, dtype=np.int8),
+            pass_number=np.zeros(shape, dtype=np.int8),
         )
 
     def result(self, samples: Samples) -> KrigingResult:

@@ -1,4 +1,4 @@
-"""The kriging systems: covariances, factorisation and weights, eight blocks side by side.
+"""The kriging systems: factorisation, weights and estimates, eight blocks side by side.
 
 Let K hold the covariances between the samples of a block, k those between the samples and the block, and 1 be
 a column of ones. With K = L L', a = L^-1 k and b = L^-1 1, ordinary kriging (Matheron 1963; Journel &
@@ -11,57 +11,20 @@ Huijbregts 1978, chapter V) is
 so one factor serves every block that sees the same samples, and every column with the same model.
 """
 
+# mypy: allow-untyped-defs
+
 from __future__ import annotations
 
 import math
 
-import numpy as np
 from numba import njit, prange
 
-from .lane_kernels import (
-    LANES, add, div, exponential, fma, fnma, load, mul, root, splat, store, sub, where_less,
-)  # fmt: skip
+from .covariance_kernels import SAME_PLACE, block_covariances, fill_matrix, point_covariances
+from .lane_kernels import LANES, div, fma, fnma, load, mul, root, splat, store, where_less
 
-SPHERICAL, EXPONENTIAL, GAUSSIAN = 0, 1, 2
 DONE, SINGULAR, NOT_FINITE = 0, 3, 4
-_SAME_PLACE = 1e-12  # squared metres, see model.COINCIDENT_M
 _SMALLEST_PIVOT = 1e-11  # of the sill: beyond this the weights keep fewer than some five digits
 _FAR = 1e100  # where an empty slot of a pack stands, so that it covaries with nothing
-
-
-@njit(cache=True, error_model="numpy")
-def _covariance(shape, sill, squared):
-    """Covariance of one structure from the squared distance in units of its range."""
-    if shape == SPHERICAL:
-        h = root(squared)
-        h = where_less(h, splat(1.0), h, splat(1.0))
-        return mul(splat(sill), fnma(h, fnma(mul(h, h), splat(0.5), splat(1.5)), splat(1.0)))
-    if shape == EXPONENTIAL:
-        return mul(splat(sill), exponential(mul(root(squared), splat(-3.0))))
-    return mul(splat(sill), exponential(mul(squared, splat(-3.0))))
-
-
-@njit(cache=True, error_model="numpy")
-def _fill_matrix(at, n, shapes, sills, inverse, total_sill, matrix):
-    """Lower triangle of K, row by row: element (i, j) stands at (i (i + 1) / 2 + j) packs."""
-    for i in range(n):
-        row = i * (i + 1) // 2
-        x = load(at, (3 * i) * LANES)
-        y = load(at, (3 * i + 1) * LANES)
-        z = load(at, (3 * i + 2) * LANES)
-        for j in range(i):
-            dx = sub(x, load(at, (3 * j) * LANES))
-            dy = sub(y, load(at, (3 * j + 1) * LANES))
-            dz = sub(z, load(at, (3 * j + 2) * LANES))
-            value = splat(0.0)
-            for s in range(shapes.size):
-                u = mul(dx, splat(inverse[s, 0]))
-                v = mul(dy, splat(inverse[s, 1]))
-                w = mul(dz, splat(inverse[s, 2]))
-                squared = fma(u, u, fma(v, v, mul(w, w)))
-                value = add(value, _covariance(shapes[s], sills[s], squared))
-            store(matrix, (row + j) * LANES, value)
-        store(matrix, (row + i) * LANES, splat(total_sill))
 
 
 @njit(cache=True, error_model="numpy")
@@ -137,68 +100,6 @@ def _backward(matrix, n, inverse_pivot, out):
             store(out, k * LANES, fnma(load(matrix, row + k * LANES), value, load(out, k * LANES)))
 
 
-@njit(cache=True, error_model="numpy")
-def _block_covariances(at, n, where, offsets, shapes, sills, inverse, out):
-    """k for blocks: the mean over the discretisation points, without the nugget.
-
-    ``offsets`` (s, p, 3) holds the points relative to the centre, in the axes of the model and in units of
-    the ranges of each structure.
-    """
-    tx, ty, tz = load(where, 0), load(where, LANES), load(where, 2 * LANES)
-    points = offsets.shape[1]
-    for i in range(n):
-        dx = sub(load(at, (3 * i) * LANES), tx)
-        dy = sub(load(at, (3 * i + 1) * LANES), ty)
-        dz = sub(load(at, (3 * i + 2) * LANES), tz)
-        value = splat(0.0)
-        for s in range(shapes.size):
-            ux = mul(dx, splat(inverse[s, 0]))
-            uy = mul(dy, splat(inverse[s, 1]))
-            uz = mul(dz, splat(inverse[s, 2]))
-            part = splat(0.0)
-            if shapes[s] == SPHERICAL:
-                for p in range(points):
-                    u = sub(ux, splat(offsets[s, p, 0]))
-                    v = sub(uy, splat(offsets[s, p, 1]))
-                    w = sub(uz, splat(offsets[s, p, 2]))
-                    h = root(fma(u, u, fma(v, v, mul(w, w))))
-                    h = where_less(h, splat(1.0), h, splat(1.0))
-                    # 1 - h (1.5 - 0.5 h^2); the 1 is added once at the end
-                    part = fma(h, fnma(mul(h, h), splat(0.5), splat(1.5)), part)
-                part = mul(sub(splat(float(points)), part), splat(sills[s]))
-            else:
-                for p in range(points):
-                    u = sub(ux, splat(offsets[s, p, 0]))
-                    v = sub(uy, splat(offsets[s, p, 1]))
-                    w = sub(uz, splat(offsets[s, p, 2]))
-                    squared = fma(u, u, fma(v, v, mul(w, w)))
-                    part = add(part, _covariance(shapes[s], sills[s], squared))
-            value = add(value, part)
-        store(out, i * LANES, mul(value, splat(1.0 / points)))
-
-
-@njit(cache=True, error_model="numpy")
-def _point_covariances(at, n, where, shapes, sills, inverse, nugget, out):
-    """k for points, with the nugget at zero distance; the smallest squared distance in square metres."""
-    tx, ty, tz = load(where, 0), load(where, LANES), load(where, 2 * LANES)
-    nearest = splat(math.inf)
-    for i in range(n):
-        dx = sub(load(at, (3 * i) * LANES), tx)
-        dy = sub(load(at, (3 * i + 1) * LANES), ty)
-        dz = sub(load(at, (3 * i + 2) * LANES), tz)
-        plain = fma(dx, dx, fma(dy, dy, mul(dz, dz)))
-        nearest = where_less(plain, nearest, plain, nearest)
-        value = where_less(splat(_SAME_PLACE), plain, splat(0.0), splat(nugget))
-        for s in range(shapes.size):
-            u = mul(dx, splat(inverse[s, 0]))
-            v = mul(dy, splat(inverse[s, 1]))
-            w = mul(dz, splat(inverse[s, 2]))
-            squared = fma(u, u, fma(v, v, mul(w, w)))
-            value = add(value, _covariance(shapes[s], sills[s], squared))
-        store(out, i * LANES, value)
-    return nearest
-
-
 @njit(parallel=True, cache=True, error_model="numpy")
 def krige(
     samples, values, targets, found, reach, count, order, starts, sizes,
@@ -268,7 +169,7 @@ def krige(
                         for axis in range(3):
                             at[(3 * i + axis) * LANES + lane] = _FAR * (i + 1.0)
                         ones[i * LANES + lane] = 0.0
-            _fill_matrix(at, n, shapes, sills, inverse, total_sill, matrix)
+            fill_matrix(at, n, shapes, sills, inverse, total_sill, matrix)
             store(pivots, 0, _factorise(matrix, n, inverse_pivot))
             bb = _forward(matrix, n, inverse_pivot, ones, b)
 
@@ -283,10 +184,10 @@ def krige(
                             + axes[axis, 2] * targets[row, 2]
                         )
                 if points > 0:
-                    _block_covariances(at, n, where, offsets, shapes, sills, inverse, right)
+                    block_covariances(at, n, where, offsets, shapes, sills, inverse, right)
                     store(closest, 0, splat(math.inf))
                 else:
-                    store(closest, 0, _point_covariances(at, n, where, shapes, sills, inverse, nugget, right))
+                    store(closest, 0, point_covariances(at, n, where, shapes, sills, inverse, nugget, right))
                 _forward(matrix, n, inverse_pivot, right, weights)
                 mu = splat(0.0)
                 if ordinary:
@@ -314,14 +215,14 @@ def krige(
                         for c in range(columns.size):
                             status[out, columns[c]] = SINGULAR
                         continue
-                    exact = closest[lane] <= _SAME_PLACE
+                    exact = closest[lane] <= SAME_PLACE
                     if exact:
                         # a point on a sample: the system gives weight one; leave no rounding in it
                         for i in range(count[row]):
                             dx = at[(3 * i) * LANES + lane] - where[lane]
                             dy = at[(3 * i + 1) * LANES + lane] - where[LANES + lane]
                             dz = at[(3 * i + 2) * LANES + lane] - where[2 * LANES + lane]
-                            here = dx * dx + dy * dy + dz * dz <= _SAME_PLACE
+                            here = dx * dx + dy * dy + dz * dz <= SAME_PLACE
                             weights[i * LANES + lane] = 1.0 if here else 0.0
                         multiplier[lane] = 0.0
                         explained[lane] = block_variance
@@ -352,42 +253,3 @@ def krige(
                         slope[out, column] = (gain + abs(factor)) / (gain + 2.0 * abs(factor))
                         efficiency[out, column] = gain / block_variance if block_variance > 0.0 else math.nan
                         negative[out, column] = below_zero
-
-
-@njit(parallel=True, cache=True, error_model="numpy")
-def covariances_to_targets(
-    samples, targets, shapes, sills, inverse, nugget, axes, offsets, workers, out, room
-):
-    """k between all samples and each target, for the estimate from all samples.
-
-    ``out`` (c, n) receives the covariances; ``room`` (workers, LANES * (4 n + 3)) is work space. The rest as in
-    ``krige``.
-    """
-    n = samples.shape[1]
-    points = offsets.shape[1]
-    batches = (targets.shape[0] + LANES - 1) // LANES
-    for worker in prange(workers):
-        at = room[worker, : 3 * n * LANES]
-        right = room[worker, 3 * n * LANES : 4 * n * LANES]
-        where = room[worker, 4 * n * LANES :]
-        for i in range(n):
-            for axis in range(3):
-                store(at, (3 * i + axis) * LANES, splat(samples[axis, i]))
-        for batch in range(worker, batches, workers):
-            first = batch * LANES
-            lanes = min(LANES, targets.shape[0] - first)
-            for lane in range(LANES):
-                row = first + min(lane, lanes - 1)
-                for axis in range(3):
-                    where[axis * LANES + lane] = (
-                        axes[axis, 0] * targets[row, 0]
-                        + axes[axis, 1] * targets[row, 1]
-                        + axes[axis, 2] * targets[row, 2]
-                    )
-            if points > 0:
-                _block_covariances(at, n, where, offsets, shapes, sills, inverse, right)
-            else:
-                _point_covariances(at, n, where, shapes, sills, inverse, nugget, right)
-            for lane in range(lanes):
-                for i in range(n):
-                    out[first + lane, i] = right[i * LANES + lane]

@@ -8,9 +8,11 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from .inputs import Samples
-from .kriging_kernels import LANES, NOT_FINITE, covariances_to_targets, krige
+from .covariance_kernels import covariances_to_targets
+from .inputs import Samples, cross
+from .kriging_kernels import NOT_FINITE, krige
 from .kriging_setup import ModelArrays
+from .lane_kernels import LANES
 from .model import COINCIDENT_M, VariogramModel
 from .neighbourhood import HighGradeRestraint, Neighbourhood
 from .search_run import Finder, Found, target_chunks, using_threads
@@ -57,7 +59,7 @@ def krige_found(
     with using_threads(workers):
         krige(
             np.ascontiguousarray(arrays.samples[:, present]),
-            np.ascontiguousarray(samples.values[np.ix_(present, columns)].T),
+            np.ascontiguousarray(samples.values[cross(present, columns)].T),
             local,
             found.samples,
             found.reach,
@@ -180,12 +182,12 @@ def from_all_samples(
             try:
                 factor = cholesky(matrix, lower=True, overwrite_a=True, check_finite=False)
             except LinAlgError:
-                out.status[np.ix_(finite, alike)] = 3
+                out.status[cross(finite, alike)] = 3
                 continue
             if np.diag(factor).min() ** 2 <= 1e-11 * model.total_sill:
-                out.status[np.ix_(finite, alike)] = 3
+                out.status[cross(finite, alike)] = 3
                 continue
-            table = samples.values[np.ix_(present, alike)]
+            table = samples.values[cross(present, alike)]
             ones = cho_solve((factor, True), np.ones(n), check_finite=False)
             room = np.empty((workers, LANES * (4 * n + 3)))
             for first in range(0, len(finite), chunk):
@@ -238,8 +240,8 @@ def _finish_all(
         slope = (gain + np.abs(mu)) / (gain + 2.0 * np.abs(mu))
         efficiency = np.where(setup.support_variance > 0.0, gain / setup.support_variance, np.nan)
     good = np.isfinite(variance) & np.isfinite(estimate).all(axis=1)
-    place = np.ix_(rows[good], columns)
-    out.estimate[place] = estimate[good]
+    where = cross(rows[good], columns)
+    out.estimate[where] = estimate[good]
     for array, given in (
         (out.variance, variance),
         (out.lagrange, mu),
@@ -247,5 +249,5 @@ def _finish_all(
         (out.efficiency, efficiency),
         (out.negative, np.minimum(weights, 0.0).sum(axis=0)),
     ):
-        array[place] = given[good][:, None]
-    out.status[np.ix_(rows, columns)] = np.where(good, 0, NOT_FINITE)[:, None]
+        array[where] = given[good][:, None]
+    out.status[cross(rows, columns)] = np.where(good, 0, NOT_FINITE)[:, None]

@@ -8,6 +8,8 @@ because it cannot prove that the arrays of a workspace do not overlap.
 With the JIT off (``NUMBA_DISABLE_JIT=1``) the same names are NumPy functions on arrays of eight.
 """
 
+# mypy: allow-untyped-defs
+
 from __future__ import annotations
 
 import numpy as np
@@ -18,7 +20,7 @@ from numba.extending import intrinsic, models, register_model
 
 LANES = 8
 
-if config.DISABLE_JIT:
+if config.DISABLE_JIT:  # type: ignore[attr-defined]
 
     def load(array, start):
         """The eight numbers of ``array`` (flat) from ``start``."""

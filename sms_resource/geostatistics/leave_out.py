@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 
-from .inputs import Samples, checked_samples, checked_threads
+from .inputs import Samples, checked_samples, checked_threads, cross
 from .model import VariogramModel, as_models
 from .neighbourhood import Neighbourhood, as_passes, check_holes
 
@@ -163,13 +163,13 @@ def _from_all_samples(samples: Samples, models: list[VariogramModel], leave: str
                 inverse = inv(system, overwrite_a=True, check_finite=False)
             except LinAlgError:
                 continue
-            table = samples.values[np.ix_(present, alike)]
+            table = samples.values[cross(present, alike)]
             score = inverse[:n, :n] @ table
             for fold in folds:
                 if len(fold) == n:
                     continue
                 covariance = inv(inverse[np.ix_(fold, fold)], check_finite=False)
-                place = np.ix_(present[fold], alike)
+                place = cross(present[fold], alike)
                 estimate[place] = table[fold] - covariance @ score[fold]
                 variance[place] = np.maximum(np.diag(covariance), 0.0)[:, None]
                 count[place] = n - len(fold)

@@ -113,7 +113,8 @@ class Neighbourhood:
 
     def grown(self, factor: float) -> Neighbourhood:
         """The same neighbourhood with all radii times ``factor``, for a next pass."""
-        return replace(self, radii=tuple(r * factor for r in self.radii))
+        major, semi_major, minor = self.radii
+        return replace(self, radii=(major * factor, semi_major * factor, minor * factor))
 
 
 @dataclass(frozen=True, slots=True)

@@ -44,8 +44,8 @@ def settle_coincident(
 
     Such a pair makes the kriging system singular even with a nugget, for the nugget is zero at zero distance.
     "average" takes the mean of what is present in each column, "keep_first" the first that is present; the
-    place and the hole are those of the first. The last array returned holds the rows that were kept. Pairs that never hold values in one column are merged under any
-    policy, for there they do not meet.
+    place and the hole are those of the first. Pairs that never hold values in one column are merged under any
+    policy, for there they do not meet. The last array returned holds the rows that were kept.
 
     Raises
     ------

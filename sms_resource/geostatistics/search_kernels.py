@@ -6,6 +6,8 @@ nearer can come. So the result is that of a full sort by distance over all sampl
 the few shells that matter.
 """
 
+# mypy: allow-untyped-defs
+
 from __future__ import annotations
 
 import math
@@ -189,7 +191,7 @@ def search_samples(
                     if shell == SHELLS - 1:
                         safe = np.int64(1) << 62
                     elif bound > 0.0:
-                        safe = int(max(bound * bound * _STEPS - 4.0, 0.0)) << _INDEX_BITS
+                        safe = np.int64(max(bound * bound * _STEPS - 4.0, 0.0)) << _INDEX_BITS
                     while size > 0 and heap[0] < safe:
                         i = heap[0] & _INDEX_MASK
                         size = _pop(heap, size)
