@@ -49,9 +49,9 @@ class Body:
     known : SurfaceGrid
         Thickness with every open hole held at its end: what lies deeper is extrapolated downwards.
     distance : SurfaceGrid
-        Distance in m to the nearest hole; what lies beyond ``reach_m`` is extrapolated sideways.
+        Distance in m to the nearest hole; what lies beyond ``drilled_within_m`` is extrapolated sideways.
     outline : shapely polygon or multipolygon
-    reach_m : float
+    drilled_within_m : float
     volume_m3 : float
         Exact integral of the thickness over the outline.
     volume_sigma_m3 : float
@@ -73,7 +73,7 @@ class Body:
     known: SurfaceGrid
     distance: SurfaceGrid
     outline: Any
-    reach_m: float
+    drilled_within_m: float
     volume_m3: float
     volume_sigma_m3: float
     categories: pd.DataFrame
@@ -151,7 +151,7 @@ def build_body(
     settings: ThicknessSettings | None = None,
     edge_thickness_m: float | None = 0.0,
     extrapolate_below_m: float = 10.0,
-    reach_m: float | None = None,
+    drilled_within_m: float | None = None,
     base_point_sigma_m: float = 1.0,
 ) -> Body:
     """Build the body from the seafloor, an outline and what the holes say of the base.
@@ -184,7 +184,7 @@ def build_body(
     extrapolate_below_m : float
         The base is held at most so far below the last sulphide of open holes, and of the surface that runs
         through the ends of open holes.
-    reach_m : float, optional
+    drilled_within_m : float, optional
         Beyond this distance from any hole the body counts as extrapolated sideways; None takes the spacing
         of the holes.
     base_point_sigma_m : float
@@ -206,7 +206,7 @@ def build_body(
     ):
         if math.isnan(number) or number < 0:
             raise ValueError(f"{name} must be a length of at least 0 m, not {number!r}")
-    for name, length in (("cell_m", cell_m), ("reach_m", reach_m)):
+    for name, length in (("cell_m", cell_m), ("drilled_within_m", drilled_within_m)):
         if length is not None and not (math.isfinite(length) and length > 0):
             raise ValueError(f"{name} must be a positive length in m, not {length!r}")
     if edge_thickness_m is not None and not (math.isfinite(edge_thickness_m) and edge_thickness_m >= 0):
@@ -221,7 +221,8 @@ def build_body(
     recipe = {
         "seafloor": seafloor, "contacts": contacts, "method": method, "base_points": base_points,
         "base_grid": base_grid, "cell_m": cell_m, "settings": settings, "edge_thickness_m": edge_thickness_m,
-        "extrapolate_below_m": extrapolate_below_m, "reach_m": reach_m, "base_point_sigma_m": base_point_sigma_m,
+        "extrapolate_below_m": extrapolate_below_m, "drilled_within_m": drilled_within_m,
+        "base_point_sigma_m": base_point_sigma_m,
     }  # fmt: skip
     if findings.has_errors:
         return _empty(seafloor, outline, findings, recipe)
@@ -230,7 +231,7 @@ def build_body(
     if findings.has_errors:
         return _empty(seafloor, outline, findings, recipe)
     spacing = hole_spacing(good, outline)
-    reach = reach_m or spacing
+    reach = drilled_within_m or spacing
     holes = ThicknessData(
         good["easting"].to_numpy(dtype=np.float64, copy=True), good["northing"].to_numpy(dtype=np.float64, copy=True),
         good["thickness_m"].to_numpy(dtype=np.float64, copy=True), (good["kind"] == "open").to_numpy(copy=True),
@@ -279,7 +280,7 @@ def build_body(
             "set extrapolate_below_m to what the geology supports",
         )
     record |= {
-        "cell_m": top.dx, "hole_spacing_m": spacing, "reach_m": reach, "extrapolate_below_m": extrapolate_below_m,
+        "cell_m": top.dx, "hole_spacing_m": spacing, "drilled_within_m": reach, "extrapolate_below_m": extrapolate_below_m,
         "volume_cut_by_limit_m3": lost, "contacts_reached": int((good["kind"] == "reached").sum()),
         "contacts_open": int((good["kind"] == "open").sum()), "base_points": len(others),
         "base_grid": base_grid is not None,
@@ -300,7 +301,7 @@ def _assemble(body: Body) -> Body:
     """Base, volume and categories that follow from the top and the thickness."""
     base = body.top.with_values(body.top.values - body.thickness.values)
     volume, categories = measure(
-        body.top, body.thickness, body.known, body.distance, body.outline, body.reach_m
+        body.top, body.thickness, body.known, body.distance, body.outline, body.drilled_within_m
     )
     return replace(body, base=base, volume_m3=volume, categories=categories)
 

@@ -50,7 +50,7 @@ def measure(
     known: SurfaceGrid,
     distance: SurfaceGrid,
     outline: Any,
-    reach_m: float,
+    drilled_within_m: float,
 ) -> tuple[float, pd.DataFrame]:
     """Volume in m3, and its split into drilled, extrapolated sideways and extrapolated downwards."""
     moments = outline_moments(top, outline)
@@ -59,7 +59,7 @@ def measure(
     above = np.minimum(cell_volumes(np.minimum(known.values, thickness.values), moments, area), whole)
     s, t = moments.centroid()
     rows, columns = np.indices(s.shape)
-    far = distance.sample(top.x0 + (columns + s) * top.dx, top.y0 + (rows + t) * top.dy) > reach_m
+    far = distance.sample(top.x0 + (columns + s) * top.dx, top.y0 + (rows + t) * top.dy) > drilled_within_m
     volume = float(whole.sum())
     parts = [float(above[~far].sum()), float(whole[far].sum()), float((whole - above)[~far].sum())]
     share = [part / volume if volume > 0 else 0.0 for part in parts]

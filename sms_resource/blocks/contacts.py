@@ -34,7 +34,8 @@ def base_contacts(
     *,
     end_tolerance_m: float = 0.1,
     waste_note_m: float = 2.0,
-) -> tuple[pd.DataFrame, Findings]:
+    findings: Findings | None = None,
+) -> pd.DataFrame:
     """Base of the sulphide in each hole, as a thickness below the seafloor.
 
     The base is the bottom of the deepest sulphide interval. Where the hole ended in it, the base is not
@@ -56,15 +57,17 @@ def base_contacts(
         A sulphide interval that stops this close to the end of the hole counts as reaching it.
     waste_note_m : float
         Waste between sulphide intervals longer than this is reported.
+    findings : Findings, optional
+        What was found is added to it.
 
     Returns
     -------
-    (DataFrame, Findings)
+    DataFrame
         One row a hole: hole_id, easting, northing, elevation (of the contact), thickness_m (vertical depth
         below the seafloor; NaN where the grid has no value), kind ("reached" | "open"), base_depth_m (down
         the hole), reason, source_row.
     """
-    findings = Findings()
+    findings = Findings() if findings is None else findings
     sulphide = set(sulphide_domains)
     if not sulphide:
         raise ValueError("sulphide_domains must name at least one domain")
@@ -92,7 +95,7 @@ def base_contacts(
         )
     frame = pd.DataFrame(rows, columns=CONTACT_COLUMNS)
     if frame.empty:
-        return frame, findings
+        return frame
     positions = np.asarray(paths.positions(frame["hole_id"].to_numpy(), frame["base_depth_m"].to_numpy()))
     frame["easting"], frame["northing"], frame["elevation"] = positions.T
     thickness = seafloor.sample(positions[:, 0], positions[:, 1]) - positions[:, 2]
@@ -109,7 +112,7 @@ def base_contacts(
                 "match the collars to the seafloor first",
                 row=contact["source_row"],
             )
-    return frame, findings
+    return frame
 
 
 def _contact(

@@ -11,8 +11,8 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.blocks.body import Body
-from sms_resource.blocks.domains import LayeredDomains
 from sms_resource.blocks.grid import BlockGrid
+from sms_resource.blocks.layers import LayeredDomains
 from sms_resource.blocks.polygons import lattice_moments, polygon_edges
 from sms_resource.blocks.propose import propose_grid
 from sms_resource.findings import Findings
@@ -118,6 +118,7 @@ def fill_blocks(
     grid: BlockGrid,
     *,
     domains: LayeredDomains | None = None,
+    single_domain: str = "body",
     split: int | None = None,
     most_blocks: int = MOST_BLOCKS,
 ) -> BlockModel:
@@ -133,7 +134,9 @@ def fill_blocks(
     grid : BlockGrid
         Should cover the body; what it leaves out is a finding.
     domains : LayeredDomains, optional
-        None is one domain, "body".
+        None is one domain throughout.
+    single_domain : str
+        Its name.
     split : int, optional
         None takes sub-columns of about half a cell of the body's surfaces, from 3 to 16 along a side.
     most_blocks : int
@@ -151,7 +154,7 @@ def fill_blocks(
     """
     from sms_resource.blocks.model_kernels import column_ranges, fill_columns
 
-    domains = domains or LayeredDomains(("body",))
+    domains = domains or LayeredDomains((single_domain,))
     if split is not None and split < 1:
         raise ValueError(f"split must be at least 1, not {split!r}")
     if split is None:
@@ -196,7 +199,7 @@ def fill_blocks(
         sideways, downwards, moment = np.zeros(total), np.zeros(total), np.zeros(total)
         outside += fill_columns(
             moments.area, s, t, split, row, size, axes, origin, lattice, top, thickness, known, distance,
-            body.reach_m, layers, lowest, start, count, volume, sideways, downwards, moment,
+            body.drilled_within_m, layers, lowest, start, count, volume, sideways, downwards, moment,
         )  # fmt: skip
         if total:
             parts.append(_rows(lowest, count, first_i, first_j + row, volume, sideways, downwards, moment))

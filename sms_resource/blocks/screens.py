@@ -28,34 +28,46 @@ class ScreenSettings:
 
     Parameters
     ----------
-    max_slope_deg, footprint_m : float
+    slope_max_deg, footprint_m : float
         Steepest seafloor a machine works on, and the edge of the square it stands on.
-    min_thickness_m : float
+    least_thickness_m : float
         Least thickness of the body in a column of blocks (volume over area).
-    min_thickness_grade : float
+    least_thickness_grade : float
         Least thickness times mean grade of ``thickness_grade_column``, in m times the grade's unit.
     thickness_grade_column : str
         Grade column.
-    min_patch_m2 : float
+    least_patch_m2 : float
         Least area of a connected patch of columns (sides in common) that is left by the other screens.
+    exclude_status : tuple of str, optional
+        Only zones with these statuses are taken; None takes all.
+    vent_buffer_m : float, optional
+        Buffer round zones with the status "active_vent", in place of their own.
     """
 
-    max_slope_deg: float | None = None
+    slope_max_deg: float | None = None
     footprint_m: float = 5.0
-    min_thickness_m: float | None = None
-    min_thickness_grade: float | None = None
+    least_thickness_m: float | None = None
+    least_thickness_grade: float | None = None
     thickness_grade_column: str | None = None
-    min_patch_m2: float | None = None
+    least_patch_m2: float | None = None
+    exclude_status: tuple[str, ...] | None = None
+    vent_buffer_m: float | None = None
 
     def __post_init__(self) -> None:
-        for name in ("max_slope_deg", "min_thickness_m", "min_thickness_grade", "min_patch_m2"):
+        for name in (
+            "slope_max_deg",
+            "least_thickness_m",
+            "least_thickness_grade",
+            "least_patch_m2",
+            "vent_buffer_m",
+        ):
             value = getattr(self, name)
             if value is not None and not (math.isfinite(value) and value >= 0):
                 raise ValueError(f"{name} must be at least 0 or None, not {value!r}")
         if self.footprint_m <= 0:
             raise ValueError(f"footprint_m must be a positive length in m, not {self.footprint_m!r}")
-        if self.min_thickness_grade is not None and not self.thickness_grade_column:
-            raise ValueError("thickness_grade_column must name a grade for min_thickness_grade")
+        if self.least_thickness_grade is not None and not self.thickness_grade_column:
+            raise ValueError("thickness_grade_column must name a grade for least_thickness_grade")
 
 
 @dataclass(frozen=True, eq=False)
@@ -125,7 +137,7 @@ def apply_screens(
     frame = model.frame
     needed = [
         *metals,
-        *([settings.thickness_grade_column] if settings.min_thickness_grade is not None else []),
+        *([settings.thickness_grade_column] if settings.least_thickness_grade is not None else []),
     ]
     missing = [column for column in needed if column not in frame]
     if missing:
@@ -134,7 +146,7 @@ def apply_screens(
     columns = plan_columns(model, body)
     steps: list[tuple[str, str, Array]] = []  # name, what, share of each column taken
     left = np.ones(len(columns))
-    for zone in prepare_zones(zones, tenure, body, findings):
+    for zone in prepare_zones(zones, tenure, body, findings, settings.exclude_status, settings.vent_buffer_m):
         share = np.minimum(columns.inside_share(zone.geometry), left)
         steps.append((zone.key, zone.what, share))
         left = left - share
@@ -150,9 +162,9 @@ def apply_screens(
         share = np.where(taken, left, 0.0)
         steps.append((name, what, share))
         left = left - share
-    if settings.min_patch_m2 is not None:
-        share = np.where(_small_patch(columns, left, settings.min_patch_m2), left, 0.0)
-        steps.append(("patch", f"connected patch under {settings.min_patch_m2:g} m²", share))
+    if settings.least_patch_m2 is not None:
+        share = np.where(_small_patch(columns, left, settings.least_patch_m2), left, 0.0)
+        steps.append(("patch", f"connected patch under {settings.least_patch_m2:g} m²", share))
         left = left - share
     left = np.where(left < 1e-12, 0.0, left)
     if len(frame) and not (left > 0).any():
@@ -170,7 +182,7 @@ def _slope_rule(columns: Columns, body: Body, settings: ScreenSettings) -> tuple
     seafloor = body.recipe.get("seafloor", body.top)
     steep = slope(seafloor, settings.footprint_m)
     columns.slope_deg[:] = steep.sample(columns.easting, columns.northing)
-    limit = settings.max_slope_deg
+    limit = settings.slope_max_deg
     if limit is None:
         return None
     what = f"seafloor steeper than {limit:g}° over {settings.footprint_m:g} m"
@@ -178,7 +190,7 @@ def _slope_rule(columns: Columns, body: Body, settings: ScreenSettings) -> tuple
 
 
 def _thickness_rule(columns: Columns, settings: ScreenSettings) -> tuple[str, str, Array] | None:
-    limit = settings.min_thickness_m
+    limit = settings.least_thickness_m
     if limit is None:
         return None
     return "thickness", f"body thinner than {limit:g} m", columns.thickness_m < limit
@@ -187,7 +199,7 @@ def _thickness_rule(columns: Columns, settings: ScreenSettings) -> tuple[str, st
 def _grade_rule(
     columns: Columns, frame: pd.DataFrame, settings: ScreenSettings, density_column: str
 ) -> tuple[str, str, Array] | None:
-    limit, name = settings.min_thickness_grade, settings.thickness_grade_column
+    limit, name = settings.least_thickness_grade, settings.thickness_grade_column
     if limit is None or name is None:
         return None
     tonnes = dry_tonnes(frame, density_column)

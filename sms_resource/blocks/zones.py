@@ -9,6 +9,7 @@ from sms_resource.blocks.body import Body
 from sms_resource.findings import Findings
 
 TENURE = "tenure"
+VENT = "active_vent"
 
 
 @dataclass(frozen=True, eq=False)
@@ -20,7 +21,14 @@ class Zone:
     geometry: Any
 
 
-def prepare_zones(zones: Any, tenure: Any, body: Body, findings: Findings) -> list[Zone]:
+def prepare_zones(
+    zones: Any,
+    tenure: Any,
+    body: Body,
+    findings: Findings,
+    exclude_status: tuple[str, ...] | None = None,
+    vent_buffer_m: float | None = None,
+) -> list[Zone]:
     """Buffered zones inside the outline, in the order given, tenure first, none overlapping an earlier one.
 
     Parameters
@@ -32,6 +40,10 @@ def prepare_zones(zones: Any, tenure: Any, body: Body, findings: Findings) -> li
     body : Body
     findings : Findings
         Zones that cannot be used are added to it.
+    exclude_status : tuple of str, optional
+        Statuses that are taken; None takes all.
+    vent_buffer_m : float, optional
+        Buffer round active vents, in place of their own.
     """
     out: list[Zone] = []
     outline = body.outline
@@ -53,10 +65,14 @@ def prepare_zones(zones: Any, tenure: Any, body: Body, findings: Findings) -> li
     keys: dict[str, int] = {}
     for row in rows:
         status = str(row.get("status", "zone") or "zone")
-        if status == TENURE or not _usable(row, findings):
+        if status == TENURE or (exclude_status is not None and status not in exclude_status):
+            continue
+        if not _usable(row, findings):
             continue
         buffer_m = row.get("buffer_m", 0.0)
         buffer_m = 0.0 if buffer_m is None or buffer_m != buffer_m else float(buffer_m)
+        if status == VENT and vent_buffer_m is not None:
+            buffer_m = vent_buffer_m
         name = str(row.get("name", "") or status)
         area = row["geometry"].buffer(buffer_m) if buffer_m else row["geometry"]
         area = area.intersection(outline)
