@@ -11,10 +11,20 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
+from sms_resource.samples.composite_audit import audit_table, report_composites
+from sms_resource.samples.core_length import recovered_lengths, recovered_on_pieces
 from sms_resource.samples.desurvey import HolePaths
-from sms_resource.samples.intervals import Pieces, cut_holes, names, numbers, report_overlaps, valid_intervals
+from sms_resource.samples.intervals import (
+    Pieces,
+    cut_holes,
+    lengths,
+    names,
+    numbers,
+    report_overlaps,
+    take,
+    valid_intervals,
+)
 from sms_resource.samples.lost_core import LostCore, Treatment, treat_lost_core
-from sms_resource.samples.recovery import recovered_lengths, recovered_on_pieces
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -129,9 +139,9 @@ def composite(
     inside = owner >= 0
     holes = pieces.holes[pieces.hole]
 
-    grades = np.column_stack([_take(numbers(assays, metal), sample) for metal in metals])
-    run_recovery = _take(recovered_lengths(runs) / _length(runs), run)
-    recovered = recovered_on_pieces(pieces.length, run, sample >= 0, recovered_lengths(runs), _length(runs))
+    grades = np.column_stack([take(numbers(assays, metal), sample) for metal in metals])
+    run_recovery = take(recovered_lengths(runs) / lengths(runs), run)
+    recovered = recovered_on_pieces(pieces.length, run, sample >= 0, recovered_lengths(runs), lengths(runs))
     poor = run_recovery * 100.0 < least_recovery_pct
     grades[poor] = np.nan
     middle = paths.positions(holes, (pieces.start + pieces.end) / 2)
@@ -144,7 +154,7 @@ def composite(
         grades=grades,
         metals=list(metals),
         run=run,
-        domain=_take_int(domain_codes, owner),
+        domain=_take_number(domain_codes, owner),
         domain_names=list(domain_names),
         hole=pieces.hole,
         positions=middle,
@@ -153,7 +163,7 @@ def composite(
     )
     weights, amounts = result
     if weighting == "recovered_length_density":
-        factor = _piece_density(_take(numbers(densities, "dry_density_tpm3"), dense), owner, domain_codes)
+        factor = _piece_density(take(numbers(densities, "dry_density_tpm3"), dense), owner, domain_codes)
         weights, amounts = weights * factor[:, None], amounts * factor[:, None]
 
     count = len(plan)
@@ -162,7 +172,7 @@ def composite(
     metal_amount = _sums(place, amounts, count)
     with np.errstate(invalid="ignore", divide="ignore"):
         grade = np.where(metal_weight > 0, metal_amount / metal_weight, np.nan)
-    assayed = np.isfinite(grades).any(axis=1)
+    assayed = np.asarray(np.isfinite(grades).any(axis=1))
     frame = plan.drop(columns="dropped")
     frame["mid_depth_m"] = (frame["from_m"] + frame["to_m"]) / 2
     frame["length_m"] = frame["to_m"] - frame["from_m"]
@@ -177,7 +187,7 @@ def composite(
     frame["easting"], frame["northing"], frame["elevation"] = xyz.T
     frame = frame.assign(**dict(zip(metals, grade.T)), weight=metal_weight.max(axis=1, initial=0.0))
 
-    audit = _audit(assays, runs, first, pieces, kept >= 0, grades, recovered, metals, poor)
+    audit = audit_table(assays, runs, first, pieces, kept >= 0, grades, recovered, metals, poor)
     keep = ~plan["dropped"].to_numpy()
     frame = frame.loc[keep].reset_index(drop=True)
     number = frame.groupby("hole_id", sort=False).cumcount() + 1
@@ -187,7 +197,9 @@ def composite(
         "recovery_pct", "domain", "easting", "northing", "elevation", *metals, "weight",
     ]  # fmt: skip
     metal_weights = pd.DataFrame(metal_weight[keep], columns=list(metals))
-    _report(frame, audit, assays, runs, paths, pieces, assayed, with_run, recovered, metal_weights, findings)
+    report_composites(
+        frame, audit, assays, runs, paths, pieces, assayed, with_run, recovered, metal_weights, findings
+    )
     return Composites(frame[order], audit, metal_weights, findings)
 
 
@@ -204,7 +216,7 @@ def _plan(
         & (domain[1:] == domain[:-1])
         & (pieces.start[1:] == pieces.end[:-1])
     )
-    covered = (np.stack(pieces.rows) >= 0).any(axis=0) if len(pieces) else np.zeros(0, dtype=bool)
+    covered = np.asarray((np.stack(pieces.rows) >= 0).any(axis=0))
     touching[1:] &= covered[1:] & covered[:-1]
     first = np.flatnonzero(~touching)
     last = np.append(first[1:], len(pieces)) - 1 if len(pieces) else first
@@ -244,120 +256,6 @@ def _plan(
     )
 
 
-def _audit(
-    assays: pd.DataFrame,
-    runs: pd.DataFrame,
-    first: Pieces,
-    pieces: Pieces,
-    kept: NDArray[np.bool_],
-    grades: Floats,
-    recovered: Floats,
-    metals: Sequence[str],
-    poor: NDArray[np.bool_],
-) -> pd.DataFrame:
-    """Length, core and metal before and after; ``before`` comes from the tables as they were given."""
-    covered = (np.stack(first.rows) >= 0).any(axis=0) if len(first) else np.zeros(0, dtype=bool)
-    length = pieces.length
-    any_grade = np.isfinite(np.column_stack([numbers(assays, metal) for metal in metals])).any(axis=1)
-    known_run = recovered_lengths(runs)
-    core = np.where(np.isfinite(recovered), recovered, 0.0)
-    assayed = np.isfinite(grades).any(axis=1)
-    refused = np.where(poor & (pieces.rows[0] >= 0), length, 0.0)
-    rows: list[tuple[str, float, float, float]] = [
-        (
-            "length_m",
-            float(first.length[covered].sum()),
-            float(length[kept].sum()),
-            _rest(length, pieces, kept),
-        ),
-        (
-            "recovered_length_m",
-            float(np.nansum(known_run)),
-            float(core[kept].sum()),
-            _rest(core, pieces, kept),
-        ),
-        (
-            "assayed_length_m",
-            float(_length(assays)[any_grade].sum()),
-            float(length[kept & assayed].sum()),
-            _rest(np.where(assayed, length, refused), pieces, kept) + float(refused[kept].sum()),
-        ),
-        ("length_without_assay_m", np.nan, float(length[kept & ~assayed].sum()), np.nan),
-    ]
-    for at, metal in enumerate(metals):
-        product = np.nan_to_num(numbers(assays, metal)) * _length(assays)
-        value = np.nan_to_num(grades[:, at]) * length
-        lost = np.nan_to_num(_take(numbers(assays, metal), pieces.rows[0])) * length * poor
-        rows.append(
-            (
-                f"{metal} x length_m",
-                float(product.sum()),
-                float(value[kept].sum()),
-                _rest(value + lost, pieces, kept) + float(lost[kept].sum()),
-            )
-        )
-    table = pd.DataFrame(rows, columns=["quantity", "before", "in_composites", "dropped"])
-    table["difference"] = table["in_composites"] + table["dropped"] - table["before"]
-    return table
-
-
-def _rest(amount: Floats, pieces: Pieces, kept: NDArray[np.bool_]) -> float:
-    """Sum over the pieces of composites that were dropped."""
-    return float(amount[(pieces.rows[2] >= 0) & ~kept].sum())
-
-
-def _report(
-    frame: pd.DataFrame,
-    audit: pd.DataFrame,
-    assays: pd.DataFrame,
-    runs: pd.DataFrame,
-    paths: HolePaths,
-    pieces: Pieces,
-    assayed: NDArray[np.bool_],
-    with_run: NDArray[np.bool_],
-    recovered: Floats,
-    metal_weights: pd.DataFrame,
-    findings: Findings,
-) -> None:
-    for hole in sorted({str(name) for name in frame["hole_id"]} - {str(name) for name in paths.holes}):
-        findings.error(
-            "assay-without-hole",
-            f"Hole {hole} has intervals but no collar",
-            "Add the collar or correct its name.",
-        )
-    loose = float(pieces.length[assayed & ~with_run].sum())
-    if loose > 0 and len(runs):
-        findings.warning(
-            "recovery-unknown",
-            f"{loose:.1f} m of assayed core lie in no run with a recovery; they weigh their whole length",
-            "Complete the table of runs.",
-        )
-    elif loose > 0:
-        findings.warning(
-            "recovery-unknown",
-            "No recovery is given: every sample weighs its whole length and lost core cannot be treated",
-            "Give the table of runs with recovered lengths.",
-        )
-    empty = assayed & with_run & (np.nan_to_num(recovered) <= 0)
-    for row in np.unique(pieces.rows[0][empty]):
-        line = assays.iloc[int(row)]
-        findings.warning(
-            "assay-in-lost-core",
-            f"Hole {line['hole_id']}, {line['from_m']:g} to {line['to_m']:g} m is assayed where no core was recovered",
-            "Correct the recovery or the depths; where core is weighed, this sample weighs nothing there.",
-            row=line.get("source_row"),
-        )
-    dropped = float(audit.loc[audit["quantity"] == "length_m", "dropped"].iloc[0])
-    if dropped > 0:
-        findings.note("composite-dropped", f"{dropped:.2f} m were dropped as rests that are too short")
-    if not (metal_weights.to_numpy() > 0).any():
-        findings.error(
-            "composite-none",
-            "No composite carries a grade",
-            "Check hole names and depths of assays and runs, and the least recovery.",
-        )
-
-
 def _piece_density(density: Floats, owner: Integers, domain_codes: Integers) -> Floats:
     """Dry density of each piece; where it has none the mean of its domain, else of all, else 1."""
     known = np.isfinite(density) & (owner >= 0)
@@ -394,21 +292,12 @@ def _or_empty(table: pd.DataFrame | None, *more: str) -> pd.DataFrame:
     return pd.DataFrame({name: np.empty(0, dtype=object) for name in (*INTERVAL, *more)})
 
 
-def _length(table: pd.DataFrame) -> Floats:
-    return numbers(table, "to_m") - numbers(table, "from_m")
-
-
-def _take(values: Floats, rows: Integers) -> Floats:
-    """Values by row, NaN where the row is -1."""
-    return np.append(values, np.nan)[rows]
-
-
-def _take_int(values: Integers, rows: Integers) -> Integers:
+def _take_number(values: Integers, rows: Integers) -> Integers:
     return np.append(values, -1)[rows]
 
 
 def _sum(place: Integers, amount: Floats, count: int) -> Floats:
-    return np.bincount(place, amount, count + 1)[:count]
+    return np.bincount(place, amount, count + 1)[:count].astype(np.float64, copy=False)
 
 
 def _sums(place: Integers, amounts: Floats, count: int) -> Floats:

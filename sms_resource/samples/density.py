@@ -3,53 +3,28 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from sms_resource.findings import Findings
+from sms_resource.samples.density_checks import density_findings
 from sms_resource.samples.density_model import DensityModel, fit_density
 from sms_resource.samples.domains import domain_at
 from sms_resource.samples.intervals import names, numbers, overlap_means
 from sms_resource.samples.mineralogy import NormSettings, norm
 from sms_resource.samples.moisture import (
-    PORE_WATER_TPM3,
     SALT_DENSITY_TPM3,
     dry_from_grain,
     dry_without_salt,
     moisture_and_density,
+    pore_water,
     wet_from_porosity,
 )
 
-__all__ = ["DensityModel", "DensityTable", "density_table", "fit_density"]
+__all__ = ["DensityModel", "density_findings", "density_table", "fit_density"]
 
 Floats = NDArray[np.float64]
-
-LIGHTEST_WET_TPM3 = 1.0
-HEAVIEST_TPM3 = 7.6
-
-
-@dataclass(frozen=True)
-class DensityTable:
-    """Density samples made comparable.
-
-    Attributes
-    ----------
-    frame : DataFrame
-        The samples with domain, dry_density_tpm3, wet_density_tpm3, grain_density_tpm3, porosity,
-        dry_basis, wet_basis (how each came about), norm_grain_tpm3 (from the assay beside it), assayed_m and the
-        metals.
-    pore_water_tpm3 : float
-    salinity_gkg : float
-    findings : Findings
-    """
-
-    frame: pd.DataFrame
-    pore_water_tpm3: float
-    salinity_gkg: float
-    findings: Findings
 
 
 def density_table(
@@ -58,13 +33,13 @@ def density_table(
     domains: pd.DataFrame | None,
     *,
     salinity_gkg: float = 35.0,
-    pore_water_tpm3: float = PORE_WATER_TPM3,
+    pore_water_tpm3: float | None = None,
     salt_tpm3: float = SALT_DENSITY_TPM3,
     dry_contains_salt: bool = False,
     porosity: Mapping[str, float] | None = None,
     metals: Sequence[str] | None = None,
     norm_settings: NormSettings | None = None,
-) -> DensityTable:
+) -> pd.DataFrame:
     """Bring measured densities to one basis: dry without salt, and wet.
 
     The first of these that a row allows is used: masses and dry volume (with the salt correction); wet and dry as
@@ -80,15 +55,29 @@ def density_table(
         hole_id, from_m, to_m and metals as plain numbers: joined by depth for regression and mineralogy.
     domains : DataFrame or None
         hole_id, from_m, to_m, domain.
-    salinity_gkg, pore_water_tpm3, salt_tpm3 : float
-        Pore water. For seawater other than the laboratory's see `seawater.seawater_density`; a brine needs both.
+    salinity_gkg, salt_tpm3 : float
+        Salt in pore water (g/kg) and its density.
+    pore_water_tpm3 : float, optional
+        Density of pore water; by default that of seawater of this salinity in the laboratory. A brine needs it.
     dry_contains_salt : bool
         Whether dry densities that are given (not masses) still hold the salt.
     porosity : mapping of domain to fraction, optional
     metals : sequence of str, optional
         Columns of ``assays`` to join; all that are element columns by default.
+
+    Returns
+    -------
+    DataFrame
+        The samples with domain, dry_density_tpm3, wet_density_tpm3, grain_density_tpm3, porosity, dry_basis and
+        wet_basis (how each came about), norm_grain_tpm3 (from the assay beside it), assayed_m and the metals. What is
+        wrong with them is told by `density_findings`.
+
+    Raises
+    ------
+    seawater.SalinityOutOfRange
+        If a brine comes without the density of its water.
     """
-    findings = Findings()
+    water = pore_water(salinity_gkg, pore_water_tpm3)
     frame = densities.reset_index(drop=True).copy()
     frame["domain"] = _domains(frame, domains)
     joined = _join_grades(frame, assays, metals)
@@ -98,7 +87,7 @@ def density_table(
     given = {name: numbers(frame, f"{name}_density_tpm3") for name in ("wet", "dry", "grain")}
     assumed = np.array([float((porosity or {}).get(str(name), np.nan)) for name in frame["domain"]])
     dry, wet, grain, pores, dry_basis, wet_basis = _solve(
-        frame, given, assumed, salinity_gkg, pore_water_tpm3, salt_tpm3, dry_contains_salt
+        frame, given, assumed, salinity_gkg, water, salt_tpm3, dry_contains_salt
     )
     frame["dry_density_tpm3"], frame["wet_density_tpm3"], frame["grain_density_tpm3"] = dry, wet, grain
     frame["porosity"], frame["dry_basis"], frame["wet_basis"] = pores, dry_basis, wet_basis
@@ -107,8 +96,8 @@ def density_table(
     if with_grades.any():
         minerals = norm(frame.loc[with_grades], norm_settings)
         frame.loc[with_grades, "norm_grain_tpm3"] = minerals["grain_density_tpm3"].to_numpy()
-    _check(frame, given, findings)
-    return DensityTable(frame, pore_water_tpm3, salinity_gkg, findings)
+    frame["given_wet_tpm3"] = given["wet"]
+    return frame
 
 
 def _solve(
@@ -145,7 +134,10 @@ def _solve(
         dry_pores = 1.0 - gd / gg
         wet_dry = gw - assumed * water
         ways: list[tuple[tuple[Floats, Floats, Floats, Floats], tuple[str, str]]] = [
-            ((made.dry_tpm3, made.wet_tpm3, made.grain_tpm3, made.porosity), ("masses and volume, salt removed", "masses and volume")),
+            (
+                (made.dry_tpm3, made.wet_tpm3, made.grain_tpm3, made.porosity),
+                ("masses and volume, salt removed", "masses and volume"),
+            ),
             ((salted, gw, both_grain, both_pores), (f"measured{note}", "measured")),
             ((from_grain, gw, gg, grain_pores), ("wet and grain", "measured")),
             ((gd, wet_from_porosity(gd, dry_pores, pore_water_tpm3=water), gg, dry_pores), ("measured", "dry and grain")),
@@ -182,38 +174,3 @@ def _join_grades(
         return pd.DataFrame({"shared_m": np.zeros(len(frame))}, index=frame.index)
     wanted = metals if metals is not None else [c for c in assays.columns if column_element(str(c))]
     return overlap_means(frame, assays, list(wanted))
-
-
-def _check(frame: pd.DataFrame, given: Mapping[str, Floats], findings: Findings) -> None:
-    dry, wet, grain = (numbers(frame, f"{name}_density_tpm3") for name in ("dry", "wet", "grain"))
-    norm_grain = numbers(frame, "norm_grain_tpm3")
-    rows = frame["source_row"] if "source_row" in frame else pd.Series(np.nan, index=frame.index)
-    checks = (
-        (dry > wet, "dry density {dry:.2f} is above wet density {wet:.2f}"),
-        (wet < LIGHTEST_WET_TPM3, "wet density {wet:.2f} is below that of water"),
-        (np.fmax(wet, dry) > HEAVIEST_TPM3, "density {wet:.2f} wet, {dry:.2f} dry is above that of galena"),
-        (dry > grain * 1.001, "dry density {dry:.2f} is above grain density {grain:.2f}"),
-        (dry <= 0, "dry density {dry:.2f} is not positive"),
-        (
-            dry > 1.1 * norm_grain,
-            "dry density {dry:.2f} is above the {norm:.2f} that the minerals of its assay give without any pore",
-        ),
-    )
-    for wrong, text in checks:
-        for at in np.flatnonzero(wrong):
-            hole = frame["hole_id"].iloc[at] if "hole_id" in frame else ""
-            message = text.format(dry=dry[at], wet=wet[at], grain=grain[at], norm=norm_grain[at])
-            findings.warning(
-                "density-impossible",
-                f"Hole {hole}, {frame['from_m'].iloc[at]:g} to {frame['to_m'].iloc[at]:g} m: {message} t/m3",
-                "Check masses, volume, basis (wet or dry) and the assay; correct or remove the sample.",
-                row=rows.iloc[at],
-            )
-    stuck = np.isfinite(given["wet"]) & ~np.isfinite(dry)
-    if stuck.any():
-        findings.warning(
-            "density-wet-only",
-            f"{int(stuck.sum())} of {len(frame)} densities are wet only and cannot be made dry",
-            "Give dry or grain densities, or the porosity of the domain.",
-            row=rows.iloc[int(np.flatnonzero(stuck)[0])],
-        )

@@ -11,40 +11,20 @@ import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 
 from sms_resource.findings import Findings
+from sms_resource.samples.density_checks import density_findings
+from sms_resource.samples.density_regression import CASES, REGRESSORS, Case, Regression, fit_regression
 from sms_resource.samples.intervals import names, numbers
 from sms_resource.samples.mineralogy import NormSettings, norm
-from sms_resource.samples.moisture import PORE_WATER_TPM3
+from sms_resource.samples.moisture import PORE_WATER_TPM3, pore_water
 
 Floats = NDArray[np.float64]
 Method = Literal["measured_mean", "regression", "mineralogy", "assigned"]
-Case = Literal["low", "base", "high"]
-CASES: tuple[Case, ...] = ("low", "base", "high")
 
+COLUMNS = (
+    "domain", "dry_low", "dry_base", "dry_high", "wet_low", "wet_base", "wet_high", "water_tpm3", "n", "basis",
+)  # fmt: skip
 FEW_DENSITIES = 10
 LEAST_FOR_OWN_MEAN = 3
-
-
-@dataclass(frozen=True)
-class Regression:
-    """Dry density as a straight line of grades: coefficients, their fit and where they were seen."""
-
-    predictors: tuple[str, ...]
-    coefficients: Floats
-    inverse: Floats
-    residual_sd: float
-    r_squared: float
-    count: int
-    quantile: float
-    least: Floats
-    greatest: Floats
-
-    def statement(self) -> str:
-        """The equation and its fit as text."""
-        terms = " ".join(f"{c:+.4f} {p}" for c, p in zip(self.coefficients[1:], self.predictors))
-        return (
-            f"dry density (t/m3) = {self.coefficients[0]:.3f} {terms}; n {self.count}, "
-            f"R2 {self.r_squared:.2f}, residual SD {self.residual_sd:.3f} t/m3"
-        )
 
 
 @dataclass(frozen=True)
@@ -68,6 +48,7 @@ class DensityModel:
     regression: Regression | None = None
     norm_settings: NormSettings = field(default_factory=NormSettings)
     porosity: pd.DataFrame | None = None
+    factor: float = 1.0
 
     def predict(
         self, domain: ArrayLike, grades: pd.DataFrame | None = None, *, case: Case = "base"
@@ -103,9 +84,11 @@ class DensityModel:
         if len(grades) != len(wanted):
             raise ValueError(f"grades have {len(grades)} rows, domain has {len(wanted)}")
         if self.regression is not None:
-            own = _predict(self.regression, grades, case)
+            own = self.regression.predict(grades, case) * self.factor
             water = wet - dry
-            use = np.isfinite(own) & (own > 0)
+            # the line was seen in measured domains only
+            assigned = np.append((self.by_domain["basis"] == "assigned").to_numpy(), True)[at]
+            use = np.isfinite(own) & (own > 0) & ~assigned
             return np.where(use, own, dry), np.where(use, own + water, wet)
         if self.porosity is not None:
             return self._from_minerals(at, grades, case, dry, wet)
@@ -119,7 +102,7 @@ class DensityModel:
         grain = norm(grades, self.norm_settings)["grain_density_tpm3"].to_numpy(np.float64)
         # the lightest case has the most pores
         pores = np.append(self.porosity[_OPPOSITE[case]].to_numpy(np.float64), np.nan)[at]
-        own = grain * (1.0 - pores)
+        own = grain * (1.0 - pores) * self.factor
         use = known & np.isfinite(own)
         return np.where(use, own, dry), np.where(use, own + pores * self.pore_water_tpm3, wet)
 
@@ -127,9 +110,7 @@ class DensityModel:
         """Rows whose grades lie outside the range that the regression saw; all False for other methods."""
         if self.regression is None:
             return np.zeros(len(grades), dtype=bool)
-        x = np.column_stack([numbers(grades, name) for name in self.regression.predictors])
-        with np.errstate(invalid="ignore"):
-            return ((x < self.regression.least) | (x > self.regression.greatest)).any(axis=1)
+        return self.regression.outside(grades)
 
 
 _OPPOSITE: dict[Case, str] = {"low": "high", "base": "base", "high": "low"}
@@ -140,35 +121,47 @@ def fit_density(
     method: Method = "measured_mean",
     *,
     domains: Sequence[str] | None = None,
-    predictors: Sequence[str] = ("cu_pct", "zn_pct", "fe_pct"),
-    assigned: Mapping[str, Any] | None = None,
+    metals: Sequence[str] | None = None,
+    predictors: Sequence[str] | None = None,
+    assigned_dry_tpm3: Mapping[str, Any] | None = None,
     porosity: Mapping[str, Any] | None = None,
-    grades: pd.DataFrame | None = None,
+    composites: pd.DataFrame | None = None,
     confidence: float = 0.90,
-    pore_water_tpm3: float = PORE_WATER_TPM3,
+    salinity_gkg: float = 35.0,
+    pore_water_tpm3: float | None = None,
+    least_count: int = FEW_DENSITIES,
+    factor: float = 1.0,
     norm_settings: NormSettings | None = None,
 ) -> DensityModel:
     """Model of dry and wet density for blocks.
 
     Parameters
     ----------
-    table : DensityTable or DataFrame
-        From `density.density_table`.
+    table : DataFrame
+        From `density.density_table`; its findings join those of the model.
     method : "measured_mean", "regression", "mineralogy" or "assigned"
         Mean of each domain; a line on grades; minerals of the norm with a porosity by domain; given values.
     domains : sequence of str, optional
-        Domains that need a density; by default those of the table and of ``assigned`` and ``porosity``.
-    predictors : sequence of str
-        Grade columns of the regression.
-    assigned : mapping
+        Domains that need a density; by default those of the table and of ``assigned_dry_tpm3`` and ``porosity``.
+    metals : sequence of str, optional
+        Grade columns that blocks will have; others are not used as predictors.
+    predictors : sequence of str, optional
+        Grade columns of the regression; by default those of Cu, Zn and Fe that blocks have.
+    assigned_dry_tpm3 : mapping
         domain to a number, (low, base, high), or a mapping with dry (or dry_low, dry_base, dry_high) and porosity.
         With the other methods it serves domains without samples.
     porosity : mapping
         domain to a fraction or (low, base, high), for "mineralogy" and wherever the water is not measured.
-    grades : DataFrame, optional
-        domain and element columns (composites) for the grain density of each domain under "mineralogy".
+    composites : DataFrame, optional
+        domain and element columns for the grain density of each domain under "mineralogy".
     confidence : float
         Of the interval of low and high.
+    salinity_gkg, pore_water_tpm3 : float
+        Pore water, as for `density.density_table`.
+    least_count : int
+        Densities of a domain below which they are called few.
+    factor : float
+        What every dry density is multiplied by; for scenarios. The water in the pores stays.
 
     Raises
     ------
@@ -187,8 +180,11 @@ def fit_density(
         )
     if not 0.0 < confidence < 1.0:
         raise ValueError(f"confidence must lie between 0 and 1, not {confidence}")
-    frame: pd.DataFrame = table if isinstance(table, pd.DataFrame) else table.frame
-    given = {str(k): _assigned(str(k), v, porosity, pore_water_tpm3) for k, v in (assigned or {}).items()}
+    if not factor > 0:
+        raise ValueError(f"factor must be positive, not {factor}")
+    water = pore_water(salinity_gkg, pore_water_tpm3)
+    frame = table
+    given = {str(k): _assigned(str(k), v, porosity, water) for k, v in (assigned_dry_tpm3 or {}).items()}
     pores = {str(k): _three(f"porosity of {k}", v) for k, v in (porosity or {}).items()}
     for name, values in pores.items():
         if not (values[0] >= 0 and values[2] < 1):
@@ -199,24 +195,31 @@ def fit_density(
         if domains is not None
         else sorted({*names(measured["domain"]), *given, *pores})
     )
-    findings = Findings()
+    findings = Findings(density_findings(frame))
     settings = norm_settings or NormSettings()
+    fitted = pore_frame = None
     if method == "assigned":
-        rows = [_assigned_row(name, given.get(name), measured, confidence, findings) for name in wanted]
-        return DensityModel(method, _frame(rows), findings, pore_water_tpm3)
-    if method == "mineralogy":
-        rows, pore_frame = _mineral_rows(
-            wanted, pores, given, grades, frame, pore_water_tpm3, settings, findings
-        )
-        return DensityModel(
-            method, _frame(rows), findings, pore_water_tpm3, norm_settings=settings, porosity=pore_frame
-        )
-    rows = [
-        _measured_row(name, measured, given.get(name), pores.get(name), confidence, pore_water_tpm3, findings)
-        for name in wanted
-    ]
-    fitted = _fit(measured, predictors, confidence, findings) if method == "regression" else None
-    return DensityModel(method, _frame(rows), findings, pore_water_tpm3, regression=fitted)
+        rows = [_assigned_row(name, given.get(name), measured, findings) for name in wanted]
+    elif method == "mineralogy":
+        rows, pore_frame = _mineral_rows(wanted, pores, given, composites, frame, water, settings, findings)
+    else:
+        rows = [
+            _measured_row(
+                name, measured, given.get(name), pores.get(name), confidence, water, least_count, findings
+            )
+            for name in wanted
+        ]
+        if method == "regression":
+            known = [m for m in (metals if metals is not None else REGRESSORS) if m in REGRESSORS]
+            fitted = fit_regression(
+                measured, predictors if predictors is not None else known, confidence, findings
+            )
+    by_domain = pd.DataFrame(rows, columns=list(COLUMNS))
+    for case in CASES:
+        own = (factor - 1.0) * by_domain[f"dry_{case}"]
+        by_domain[f"dry_{case}"] += own
+        by_domain[f"wet_{case}"] += own
+    return DensityModel(method, by_domain, findings, water, fitted, settings, pore_frame, factor)
 
 
 def _measured_row(
@@ -226,6 +229,7 @@ def _measured_row(
     pores: Floats | None,
     confidence: float,
     water_density: float,
+    least_count: int,
     findings: Findings,
 ) -> dict[str, object]:
     from scipy.special import stdtrit
@@ -254,7 +258,7 @@ def _measured_row(
     t = float(stdtrit(max(len(dry) - 1, 1), 0.5 + confidence / 2))
     if n >= LEAST_FOR_OWN_MEAN:
         half, basis = t * sd / np.sqrt(len(dry)), f"mean of {n} measured"
-        if n < FEW_DENSITIES:
+        if n < least_count:
             findings.warning(
                 "density-few",
                 f"Domain {name} has only {n} densities: {mean:.2f} t/m3 dry, "
@@ -290,7 +294,6 @@ def _assigned_row(
     name: str,
     given: tuple[Floats, Floats] | None,
     measured: pd.DataFrame,
-    confidence: float,
     findings: Findings,
 ) -> dict[str, object]:
     n = int((names(measured["domain"]) == name).sum())
@@ -354,58 +357,6 @@ def _mineral_rows(
     return rows, pd.DataFrame(table, columns=["domain", "low", "base", "high"])
 
 
-def _fit(
-    measured: pd.DataFrame, predictors: Sequence[str], confidence: float, findings: Findings
-) -> Regression | None:
-    from scipy.special import stdtrit
-
-    y = numbers(measured, "dry_density_tpm3")
-    x = (
-        np.column_stack([numbers(measured, name) for name in predictors])
-        if predictors
-        else np.empty((len(y), 0))
-    )
-    use = np.isfinite(x).all(axis=1)
-    x, y = x[use], y[use]
-    design = np.column_stack([np.ones(len(y)), x])
-    freedom = len(y) - design.shape[1]
-    if not predictors or freedom < 3 or np.linalg.matrix_rank(design) < design.shape[1]:
-        findings.warning(
-            "density-regression",
-            f"{len(y)} densities with {', '.join(predictors) or 'no predictor'} beside them are too few, or too "
-            "alike, for a regression; the means of the domains are used",
-            "Take fewer predictors, or the method measured_mean.",
-        )
-        return None
-    inverse = np.linalg.inv(design.T @ design)
-    coefficients = inverse @ design.T @ y
-    residual = y - design @ coefficients
-    sd = float(np.sqrt(residual @ residual / freedom))
-    spread = float(((y - y.mean()) ** 2).sum())
-    fitted = Regression(
-        tuple(predictors), coefficients, inverse, sd, 1.0 - float(residual @ residual) / spread if spread else 0.0,
-        len(y), float(stdtrit(freedom, 0.5 + confidence / 2)), x.min(axis=0), x.max(axis=0),
-    )  # fmt: skip
-    weak = fitted.r_squared < 0.3
-    (findings.warning if weak else findings.note)(
-        "density-regression",
-        fitted.statement() + ("; grades explain little of it" if weak else ""),
-        "Compare with the means of the domains." if weak else "",
-    )
-    return fitted
-
-
-def _predict(fit: Regression, grades: pd.DataFrame, case: Case) -> Floats:
-    x = np.column_stack([np.ones(len(grades)), *(numbers(grades, name) for name in fit.predictors)])
-    mean = x @ fit.coefficients
-    if case == "base":
-        return mean
-    half = (
-        fit.quantile * fit.residual_sd * np.sqrt(np.maximum(np.einsum("ij,jk,ik->i", x, fit.inverse, x), 0.0))
-    )
-    return mean - half if case == "low" else mean + half
-
-
 def _assigned(
     name: str, value: Any, porosity: Mapping[str, Any] | None, water_density: float
 ) -> tuple[Floats, Floats]:
@@ -444,10 +395,3 @@ def _row(name: str, dry: Floats, wet: Floats, n: int, basis: str) -> dict[str, o
     row.update({f"dry_{case}": float(v) for case, v in zip(CASES, dry)})
     row.update({f"wet_{case}": float(v) for case, v in zip(CASES, wet)})
     return {**row, "water_tpm3": float(wet[1] - dry[1]), "n": n, "basis": basis}
-
-
-def _frame(rows: list[dict[str, object]]) -> pd.DataFrame:
-    columns = [
-        "domain", "dry_low", "dry_base", "dry_high", "wet_low", "wet_base", "wet_high", "water_tpm3", "n", "basis",
-    ]  # fmt: skip
-    return pd.DataFrame(rows, columns=columns)

@@ -9,7 +9,7 @@ import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 
 from sms_resource.findings import Findings
-from sms_resource.samples.intervals import names, numbers
+from sms_resource.samples.intervals import lines, names, numbers
 
 Floats = NDArray[np.float64]
 
@@ -220,7 +220,7 @@ def _stations(
                 "source_row": surveys["source_row"].to_numpy() if "source_row" in surveys else np.nan,
             }
         )
-        for row in surveys.loc[(measured["hole"] < 0).to_numpy()].itertuples():
+        for row in lines(surveys.loc[(measured["hole"] < 0).to_numpy()]):
             findings.error(
                 "assay-without-hole",
                 f"surveys: hole {row.hole_id} has no collar",
@@ -231,7 +231,7 @@ def _stations(
     at_collar = _checked(at_collar, holes, "collar", findings)
     measured = _checked(measured, holes, "survey", findings)
     doubles = measured.duplicated(["hole", "depth"], keep="first")
-    for row in measured.loc[doubles].itertuples():
+    for row in lines(measured.loc[doubles]):
         findings.error(
             "survey-double",
             f"Hole {holes[row.hole]} has two stations at {row.depth:g} m",

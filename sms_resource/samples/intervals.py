@@ -6,8 +6,9 @@ the same depth share one boundary, and a piece is either wholly inside a row or 
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -67,6 +68,21 @@ def numbers(table: pd.DataFrame, column: str) -> Floats:
     return np.array(pd.to_numeric(table[column], errors="coerce"), dtype=np.float64)
 
 
+def lengths(table: pd.DataFrame) -> Floats:
+    """Length of each interval in m."""
+    return numbers(table, "to_m") - numbers(table, "from_m")
+
+
+def take(values: Floats, rows: Integers) -> Floats:
+    """Values by row number; NaN where the row is -1."""
+    return np.append(values, np.nan)[rows]
+
+
+def lines(table: pd.DataFrame) -> Iterator[Any]:
+    """Rows of a small table, one after the other, with columns as attributes."""
+    return iter(table.itertuples())
+
+
 def valid_intervals(table: pd.DataFrame, what: str, findings: Findings | None = None) -> pd.DataFrame:
     """Rows whose end lies below their start, with a fresh index; the others become error findings."""
     start, end = numbers(table, "from_m"), numbers(table, "to_m")
@@ -78,7 +94,7 @@ def valid_intervals(table: pd.DataFrame, what: str, findings: Findings | None = 
                 f"{what}: hole {table['hole_id'].iloc[position]} has an interval from {start[position]:g} m "
                 f"to {end[position]:g} m",
                 "Correct the depths: each interval must end below its start.",
-                row=_source_row(table, position),
+                row=_source_row(table, int(position)),
             )
     return table.loc[good].reset_index(drop=True)
 

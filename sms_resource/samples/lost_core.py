@@ -174,7 +174,7 @@ def _neighbour_means(
     from scipy.spatial import cKDTree
 
     fill = np.full(grades.shape, np.nan)
-    placed = np.isfinite(positions).all(axis=1)
+    placed = np.asarray(np.isfinite(positions).all(axis=1))
     for code in np.unique(domain[domain >= 0]):
         here = domain == code
         targets = np.flatnonzero(here & wanted)
@@ -194,11 +194,11 @@ def _neighbour_means(
                     distance_upper_bound=distance,
                 )
                 gap, at = gap.reshape(len(reach), -1), at.reshape(len(reach), -1)
-                found = np.isfinite(gap)
+                found = np.asarray(np.isfinite(gap), dtype=np.float64)
                 near_weight = np.append(weight[near], 0.0)[at] * found
                 near_value = np.append(value[near], 0.0)[at]
-                total = near_weight.sum(axis=1)
-                some = total > 0
+                total = np.asarray(near_weight.sum(axis=1))
+                some = np.asarray(total > 0)
                 result[reach[some]] = (near_weight * near_value).sum(axis=1)[some] / total[some]
             fill[targets, column] = result
     return fill

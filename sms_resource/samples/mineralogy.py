@@ -147,7 +147,7 @@ def norm(grades: pd.DataFrame, settings: NormSettings | None = None) -> pd.DataF
     scale = np.where(total > 100.0, 100.0 / np.where(total > 0, total, 1.0), 1.0)
     frame = frame.mul(scale, axis=0)
     rest = np.maximum(100.0 - total, 0.0)
-    frame[settings.rest] = (frame[settings.rest] if settings.rest in frame else 0.0) + rest
+    frame[settings.rest] = frame.get(settings.rest, 0.0) + rest
     volume = sum(frame[name].to_numpy() / settings.density(name) for name in frame.columns)
     frame["sum_pct"] = total
     frame["iron_short_pct"] = np.where(iron_known, np.maximum(-left, 0.0), 0.0)

@@ -11,8 +11,25 @@ Floats = NDArray[np.float64]
 
 # Density of sea salt in t/m3, the value in IODP's practice (Blum 1997, ODP Technical Note 26, uses 2.20).
 SALT_DENSITY_TPM3 = 2.22
-# Pore water in the laboratory in t/m3 (the same practice).
+# Seawater as pore water in the laboratory in t/m3 (the same practice).
 PORE_WATER_TPM3 = 1.024
+
+
+def pore_water(salinity_gkg: float, given_tpm3: float | None = None) -> float:
+    """Density of pore water: as given, else of seawater of this salinity at 20 degrees in the laboratory (TEOS-10).
+
+    Raises
+    ------
+    seawater.SalinityOutOfRange
+        If the salinity is that of a brine and no density is given.
+    """
+    from sms_resource.samples.seawater import seawater_density
+
+    if given_tpm3 is None:
+        return seawater_density(salinity_gkg)
+    if not given_tpm3 > 0:
+        raise ValueError(f"pore water must have a positive density, not {given_tpm3}")
+    return float(given_tpm3)
 
 
 @dataclass(frozen=True)

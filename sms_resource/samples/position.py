@@ -141,19 +141,16 @@ def horizontal_fit(
         if len(difference)
         else np.empty(0)
     )
-    return (
-        pd.DataFrame(
-            {
-                "shift_east_m": east,
-                "shift_north_m": north,
-                "spread_m": spread,
-                "median_m": median,
-                "collars": count,
-            }
-        )  # fmt: skip
-        .sort_values("spread_m", kind="stable")
-        .reset_index(drop=True)
+    table = pd.DataFrame(
+        {
+            "shift_east_m": east,
+            "shift_north_m": north,
+            "spread_m": spread,
+            "median_m": median,
+            "collars": count,
+        }
     )
+    return table.sort_values("spread_m", kind="stable").reset_index(drop=True)
 
 
 def hole_ends(collars: pd.DataFrame) -> tuple[pd.DataFrame, Findings]:
@@ -241,10 +238,10 @@ def _report(
             row=rows.iloc[at],
         )
     for at in np.flatnonzero(collars["flagged"].to_numpy()):
-        rest = float(collars["dz_after_m"].iloc[at])
+        gap = float(collars["dz_after_m"].iloc[at])
         findings.warning(
             "collar-off-seafloor",
-            f"Collar {collars['hole_id'].iloc[at]} lies {abs(rest):.2f} m {'above' if rest > 0 else 'below'} "
+            f"Collar {collars['hole_id'].iloc[at]} lies {abs(gap):.2f} m {'above' if gap > 0 else 'below'} "
             f"the seafloor; the limit is {limit[at]:.2f} m",
             "Check position, datum and tide; or set the collar policy to shift_median or snap.",
             row=rows.iloc[at], column="elevation",

@@ -12,11 +12,16 @@ from numpy.typing import NDArray
 from sms_resource.findings import Findings
 from sms_resource.samples.intervals import names, numbers
 from sms_resource.samples.pairs import cv_average, half_absolute_relative_difference, reduced_major_axis
+from sms_resource.samples.quality_verdicts import (
+    ASPECTS,
+    NAMED,
+    blank_verdict,
+    check_verdict,
+    duplicate_verdict,
+    reference_verdict,
+)
 from sms_resource.samples.reference_materials import (
-    BIAS_CAUTION_PCT,
-    BIAS_FAILED_PCT,
     FAMILY_ERROR,
-    LEAST_RESULTS,
     batch_bias,
     control_charts,
     material_bias,
@@ -35,7 +40,6 @@ PRECIOUS = ("au", "ag")
 STAGES = ("field", "coarse", "pulp")
 BLANK_LIMITS = 5.0
 LEAST_PAIRS = 10
-ASPECTS = ("reference materials", "blanks", "duplicates", "check laboratory")
 
 
 @dataclass(frozen=True)
@@ -140,10 +144,10 @@ def laboratory_quality(
             line
             for name in wanted
             for line in (
-                _reference_verdict(name, materials, batches, findings),
-                _blank_verdict(name, blanks, findings),
-                _duplicate_verdict(name, duplicates, findings),
-                _check_verdict(name, checks, findings),
+                reference_verdict(name, materials, batches, findings),
+                blank_verdict(name, blanks, findings),
+                duplicate_verdict(name, duplicates, findings),
+                check_verdict(name, checks, findings),
             )
         ],
         columns=["element", "aspect", "verdict", "figures"],
@@ -153,7 +157,7 @@ def laboratory_quality(
         if len(none):
             findings.warning(
                 "quality-missing",
-                f"No {aspect} for {', '.join(none)}",
+                f"No {NAMED[aspect]} for {', '.join(none)}",
                 "Bring the inserts of the laboratory, or say in the report why there are none.",
             )
     return LaboratoryQuality(
@@ -316,125 +320,6 @@ def _checks(pairs: pd.DataFrame, confidence: float) -> pd.DataFrame:
         "intercept_low", "intercept_high", "correlation", "verdict",
     ]  # fmt: skip
     return pd.DataFrame(rows).reindex(columns=columns)
-
-
-Line = tuple[str, str, str, str]
-
-
-def _reference_verdict(name: str, materials: pd.DataFrame, batches: pd.DataFrame, findings: Findings) -> Line:
-    part = materials.loc[materials["element"] == name]
-    own = batches.loc[batches["element"] == name]
-    count = int(part["n"].sum())
-    if not count:
-        return name, ASPECTS[0], "missing", ""
-    failures = int(part["failures"].sum())
-    bias = numbers(part, "bias_pct")
-    beyond = (numbers(part, "bias_low_pct") > 0) | (numbers(part, "bias_high_pct") < 0)
-    worst = float(np.nanmax(np.abs(bias)))
-    accused = [str(b) for b in own.loc[own["verdict"] == "accused", "batch"]]
-    for batch in accused:
-        row = own.loc[own["batch"] == batch].iloc[0]
-        findings.warning(
-            "quality-batch-bias",
-            f"{name.capitalize()}: batch {batch} is biased by {row['mean_z']:+.1f} SD over {row['n']} reference results "
-            f"(p {row['p_adjusted']:.1g} after allowing for all batches)",
-            "Have the batch assayed again, or leave it out.",
-        )
-    if failures:
-        findings.note(
-            "quality-reference-fail",
-            f"{name.capitalize()}: {failures} of {count} reference results fail (beyond 3 SD, or two in a row beyond 2)",
-        )
-    for row in part.loc[beyond & (np.abs(bias) > BIAS_CAUTION_PCT)].to_dict("records"):
-        findings.warning(
-            "quality-bias",
-            f"{name.capitalize()}: the laboratory is {row['bias_pct']:+.1f} % off {row['material']} "
-            f"({row['bias_low_pct']:+.1f} to {row['bias_high_pct']:+.1f} %)",
-            "Ask the laboratory; a bias of grade is a bias of metal.",
-        )
-    serious = beyond & (np.abs(bias) > BIAS_FAILED_PCT) & (numbers(part, "n") >= LEAST_RESULTS)
-    if accused or serious.any():
-        verdict = "failed"
-    elif (
-        count < LEAST_RESULTS or (beyond & (np.abs(bias) > BIAS_CAUTION_PCT)).any() or failures > 0.05 * count
-    ):
-        verdict = "caution"
-    else:
-        verdict = "good"
-    text = f"{count} results, {failures} failed, greatest bias {worst:.1f} %"
-    if accused:
-        text += f", biased batches: {', '.join(accused)}"
-    return name, ASPECTS[0], verdict, text
-
-
-def _blank_verdict(name: str, blanks: pd.DataFrame, findings: Findings) -> Line:
-    from scipy.stats import spearmanr
-
-    part = blanks.loc[(blanks["element"] == name) & blanks["judged"]]
-    if not len(part):
-        return name, ASPECTS[1], "missing", ""
-    failed = int(part["failed"].sum())
-    text = f"{len(part)} blanks, {failed} over {part['limit'].iloc[0]:g}"
-    for row in part.loc[part["failed"]].to_dict("records"):
-        before = f", after a sample of {row['grade_before']:g}" if np.isfinite(row["grade_before"]) else ""
-        findings.warning(
-            "quality-blank-fail",
-            f"{name.capitalize()}: blank {row['sample_id']} holds {row['value']:g}, over {row['limit']:g}{before}",
-            "Look for carry-over from the sample before, and for mixed labels.",
-            row=row.get("source_row"),
-        )
-    pair = part.loc[np.isfinite(numbers(part, "grade_before"))]
-    if len(pair) >= 8 and pair["value"].nunique() > 1 and pair["grade_before"].nunique() > 1:
-        answer = spearmanr(pair["grade_before"], pair["value"])
-        text += f", rank correlation with the grade before {answer.statistic:.2f} (p {answer.pvalue:.2g})"
-        if answer.pvalue < 0.01 and answer.statistic > 0:
-            findings.warning(
-                "quality-carry-over",
-                f"{name.capitalize()}: blanks follow the grade of the sample before: rank correlation "
-                f"{answer.statistic:.2f}, p {answer.pvalue:.2g}, {len(pair)} blanks",
-                "Ask the laboratory to clean between samples.",
-            )
-    share = failed / len(part)
-    return name, ASPECTS[1], "good" if failed == 0 else "caution" if share <= 0.05 else "failed", text
-
-
-def _duplicate_verdict(name: str, duplicates: pd.DataFrame, findings: Findings) -> Line:
-    part = duplicates.loc[duplicates["element"] == name]
-    if not len(part):
-        return name, ASPECTS[2], "missing", ""
-    texts = []
-    for row in part.to_dict("records"):
-        texts.append(
-            f"{row['stage'] or 'stage not given'}: CVavg {row['cv_avg_pct']:.1f} % of {row['n']} pairs"
-        )
-        if row["verdict"] == "failed":
-            findings.warning(
-                "quality-duplicate",
-                f"{name.capitalize()}: {row['stage']} duplicates have a CVavg of {row['cv_avg_pct']:.1f} %, over the "
-                f"acceptable {row['acceptable_pct']:g} %",
-                "Look at sampling and preparation at that stage.",
-            )
-    found = set(part["verdict"])
-    verdict = "failed" if "failed" in found else "caution" if "caution" in found else "good"
-    return name, ASPECTS[2], verdict, "; ".join(texts)
-
-
-def _check_verdict(name: str, checks: pd.DataFrame, findings: Findings) -> Line:
-    part = checks.loc[checks["element"] == name]
-    if not len(part) or not int(part["n"].iloc[0]):
-        return name, ASPECTS[3], "missing", ""
-    row = part.iloc[0]
-    text = (
-        f"{row['n']} pairs, bias {row['bias_pct']:+.1f} %, reduced major axis slope {row['slope']:.3f} "
-        f"({row['slope_low']:.3f} to {row['slope_high']:.3f})"
-    )
-    if row["verdict"] == "failed":
-        findings.warning(
-            "quality-check-laboratory",
-            f"{name.capitalize()}: the check laboratory differs: {text}",
-            "Find out which laboratory is right before the grades are used.",
-        )
-    return name, ASPECTS[3], str(row["verdict"]), text
 
 
 def _rates(

@@ -9,8 +9,12 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
+from sms_resource.samples.bracket import lost_core_bracket
+from sms_resource.samples.core_length import recovered_lengths, recovered_on_pieces
 from sms_resource.samples.desurvey import HolePaths
 from sms_resource.samples.intervals import cut_holes, names, numbers, overlap_pairs, valid_intervals
+
+__all__ = ["join_recovery", "lost_core_bracket", "recovery_bias", "recovery_summary", "sticks"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -23,13 +27,6 @@ BANDS: tuple[tuple[float, str], ...] = (
     (0.0, "missing"),
 )
 LEAST_SAMPLES = 8
-
-
-def recovered_lengths(runs: pd.DataFrame) -> Floats:
-    """Recovered length (m) of each run: as measured, else from the percentage; NaN where neither is given."""
-    length = numbers(runs, "to_m") - numbers(runs, "from_m")
-    measured = numbers(runs, "recovered_length_m")
-    return np.where(np.isfinite(measured), measured, numbers(runs, "recovery_pct") / 100.0 * length)
 
 
 def join_recovery(intervals: pd.DataFrame, runs: pd.DataFrame) -> pd.DataFrame:
@@ -68,37 +65,6 @@ def join_recovery(intervals: pd.DataFrame, runs: pd.DataFrame) -> pd.DataFrame:
     return result
 
 
-def recovered_on_pieces(
-    length: Floats, run: Integers, assayed: NDArray[np.bool_], recovered: Floats, run_length: Floats
-) -> Floats:
-    """Core of each run shared among the pieces of hole that it was cut into; sums to the run's core exactly.
-
-    Assayed pieces are filled first, since core that was sampled was not lost; what is left goes to the rest. Pieces
-    outside runs, or in runs without a known recovery, are NaN.
-    """
-    result = np.full(len(length), np.nan)
-    inside = run >= 0
-    count = len(run_length)
-    if count == 0 or not inside.any():
-        return result
-    sampled = np.bincount(run[inside], length[inside] * assayed[inside], count)
-    rest = np.bincount(run[inside], length[inside] * ~assayed[inside], count)
-    total = sampled + rest
-    over = recovered >= total
-    first = np.where(over, np.divide(recovered, total, out=np.ones(count), where=total > 0), 1.0)
-    first = np.where(
-        ~over & (recovered < sampled),
-        np.divide(recovered, sampled, out=np.zeros(count), where=sampled > 0),
-        first,
-    )
-    left = np.maximum(recovered - sampled, 0.0)
-    second = np.where(over, first, np.divide(left, rest, out=np.zeros(count), where=rest > 0))
-    unknown = ~np.isfinite(recovered)
-    first[unknown], second[unknown] = np.nan, np.nan
-    result[inside] = length[inside] * np.where(assayed[inside], first[run[inside]], second[run[inside]])
-    return result
-
-
 def recovery_bias(
     samples: pd.DataFrame, metals: Sequence[str], *, significance: float = 0.05
 ) -> pd.DataFrame:
@@ -114,9 +80,12 @@ def recovery_bias(
     Returns
     -------
     DataFrame
-        domain, metal, n, spearman, p_value, mean_low (grade where recovery is in its lower half), mean_high,
-        verdict in plain words. Core loss is selective (Annels & Dominy 2003, Applied Earth Science 112(3)), and the
-        sign is not known beforehand.
+        domain, metal, n, spearman, p_value, mean_low (grade where recovery is in its lower half), mean_high, biased
+        (True where a link is seen, or cannot be excluded for want of samples), verdict in plain words.
+
+    Notes
+    -----
+    Core loss is selective, and its sign is not known beforehand: Annels & Dominy (2003), Applied Earth Science 112(3).
     """
     from scipy.stats import spearmanr
 
@@ -139,10 +108,11 @@ def recovery_bias(
             rows.append(
                 {
                     "domain": name, "metal": metal, "n": n, "spearman": rho, "p_value": p,
-                    "mean_low": low, "mean_high": high, "verdict": _verdict(n, rho, p, significance),
+                    "mean_low": low, "mean_high": high, "biased": not p >= significance,
+                    "verdict": _verdict(n, rho, p, significance),
                 }
             )  # fmt: skip
-    columns = ["domain", "metal", "n", "spearman", "p_value", "mean_low", "mean_high", "verdict"]
+    columns = ["domain", "metal", "n", "spearman", "p_value", "mean_low", "mean_high", "biased", "verdict"]
     return pd.DataFrame(rows, columns=columns)
 
 

@@ -9,7 +9,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
-from sms_resource.samples.intervals import names, numbers
+from sms_resource.samples.intervals import lines, names, numbers
 
 Floats = NDArray[np.float64]
 
@@ -81,7 +81,7 @@ def surface_bias(
 def surface_findings(bias: pd.DataFrame) -> Findings:
     """Say which metals are richer or poorer at the surface, and whether that is beyond chance."""
     findings = Findings()
-    for row in bias.loc[bias["sample_type"] == "all"].itertuples():
+    for row in lines(bias.loc[bias["sample_type"] == "all"]):
         if not row.n:
             findings.note("surface-none", f"No surface sample with {row.metal} lies near core with it")
         elif np.isfinite(row.ratio_low) and (row.ratio_low > 1.0 or row.ratio_high < 1.0):
@@ -115,7 +115,7 @@ def dredge_tracks(dredges: pd.DataFrame) -> tuple[pd.DataFrame, Findings]:
     table["azimuth"] = np.degrees(np.arctan2(east, north)) % 360.0
     table["rise_m"] = numbers(dredges, "end_elevation") - numbers(dredges, "start_elevation")
     table["half_length_m"] = length / 2.0
-    for row in table.itertuples():
+    for row in lines(table):
         findings.note(
             "dredge-spread",
             f"Dredge {row.dredge_id} is a track of {row.length_m:.0f} m: its rock may come from anywhere along it",

@@ -9,7 +9,7 @@ import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 
 from sms_resource.findings import Findings
-from sms_resource.samples.intervals import names, numbers
+from sms_resource.samples.intervals import lines, names, numbers
 
 Floats = NDArray[np.float64]
 
@@ -39,7 +39,7 @@ def cut_curve(
     Returns
     -------
     DataFrame
-        cut, mean, cv, metal_removed_pct, number_cut; ascending; the last row cuts nothing.
+        cut, mean, cv, metal_removed_pct, n_cut; ascending; the last row cuts nothing.
     """
     value, weight = _clean(values, weights)
     if cuts is None:
@@ -54,7 +54,7 @@ def cut_curve(
         deviation = float(np.sqrt(np.average((lowered - mean) ** 2, weights=weight)))
         removed = 100.0 * (1.0 - float(weight @ lowered) / total) if total > 0 else 0.0
         rows.append((cut, mean, deviation / mean if mean > 0 else np.nan, removed, int(np.sum(value > cut))))
-    return pd.DataFrame(rows, columns=["cut", "mean", "cv", "metal_removed_pct", "number_cut"])
+    return pd.DataFrame(rows, columns=["cut", "mean", "cv", "metal_removed_pct", "n_cut"])
 
 
 def top_cut_study(
@@ -72,7 +72,7 @@ def top_cut_study(
     Returns
     -------
     DataFrame
-        domain, metal, n, mean, cv, maximum, proposed_cut (NaN where none), number_cut, metal_removed_pct, mean_cut,
+        domain, metal, n, mean, cv, maximum, cut (NaN where none), n_cut, metal_removed_pct, mean_after,
         cv_cut, percentile, holes_cut (where they lie), spacing_m (median distance between cut samples), reason.
 
     Notes
@@ -122,7 +122,7 @@ def apply_top_cuts(
     frame : DataFrame
         With lowered grades; the uncut ones in ``<metal>_uncut`` for every metal that has a cut.
     summary : DataFrame
-        domain, metal, cut, n, number_cut, mean_uncut, mean_cut, metal_removed_pct, maximum_uncut, unused
+        domain, metal, cut, n, n_cut, mean_before, mean_after, metal_removed_pct, maximum_uncut, unused
         (True where the cut names a domain or metal without samples).
 
     Raises
@@ -154,16 +154,16 @@ def apply_top_cuts(
             result[metal] = lowered
         total = float(weight @ before)
         row.update(
-            number_cut=int((before > cut).sum()),
-            mean_uncut=float(np.average(before, weights=weight)) if len(before) else np.nan,
-            mean_cut=float(np.average(after, weights=weight)) if len(before) else np.nan,
+            n_cut=int((before > cut).sum()),
+            mean_before=float(np.average(before, weights=weight)) if len(before) else np.nan,
+            mean_after=float(np.average(after, weights=weight)) if len(before) else np.nan,
             metal_removed_pct=100.0 * (1.0 - float(weight @ after) / total) if total > 0 else 0.0,
             maximum_uncut=float(before.max()) if len(before) else np.nan,
             unused=not len(before),
         )
         rows.append(row)
     columns = [
-        "domain", "metal", "cut", "n", "number_cut", "mean_uncut", "mean_cut", "metal_removed_pct",
+        "domain", "metal", "cut", "n", "n_cut", "mean_before", "mean_after", "metal_removed_pct",
         "maximum_uncut", "unused",
     ]  # fmt: skip
     return result, pd.DataFrame(rows, columns=columns)
@@ -172,18 +172,18 @@ def apply_top_cuts(
 def top_cut_findings(summary: pd.DataFrame) -> Findings:
     """What the summary of `apply_top_cuts` has to say: cuts that took metal, cuts that name nothing."""
     findings = Findings()
-    for row in summary.itertuples():
+    for row in lines(summary):
         if row.unused:
             findings.warning(
                 "top-cut-unused",
                 f"The top cut of {row.metal} in {row.domain} meets no sample",
                 "Check the names of domain and metal.",
             )
-        elif row.number_cut:
+        elif row.n_cut:
             findings.note(
                 "top-cut-applied",
-                f"{row.metal} in {row.domain} is cut at {row.cut:g}: {row.number_cut} of {row.n} composites, "
-                f"{row.metal_removed_pct:.1f} % of the metal; mean {row.mean_uncut:.3g} becomes {row.mean_cut:.3g}",
+                f"{row.metal} in {row.domain} is cut at {row.cut:g}: {row.n_cut} of {row.n} composites, "
+                f"{row.metal_removed_pct:.1f} % of the metal; mean {row.mean_before:.3g} becomes {row.mean_after:.3g}",
             )
     return findings
 
@@ -206,15 +206,15 @@ def _proposal(name: str, metal: str, part: pd.DataFrame, weight_column: str | No
     else:
         cut, reason = _find_cut(values, weights, float(row["cv"]))  # type: ignore[arg-type]
     row.update(
-        proposed_cut=cut, number_cut=0, metal_removed_pct=0.0, mean_cut=row.get("mean", np.nan),
+        cut=cut, n_cut=0, metal_removed_pct=0.0, mean_after=row.get("mean", np.nan),
         cv_cut=row.get("cv", np.nan), percentile=np.nan, holes_cut="", spacing_m=np.nan,
     )  # fmt: skip
     if np.isfinite(cut):
         line = cut_curve(values, weights, [cut]).iloc[0]
         above = values > cut
         row.update(
-            number_cut=int(line["number_cut"]), metal_removed_pct=float(line["metal_removed_pct"]),
-            mean_cut=float(line["mean"]), cv_cut=float(line["cv"]), percentile=100.0 * float(np.mean(~above)),
+            n_cut=int(line["n_cut"]), metal_removed_pct=float(line["metal_removed_pct"]),
+            mean_after=float(line["mean"]), cv_cut=float(line["cv"]), percentile=100.0 * float(np.mean(~above)),
         )  # fmt: skip
         holes, spacing, together = _where(part, above)
         row.update(holes_cut=holes, spacing_m=spacing)
@@ -251,7 +251,7 @@ def _find_cut(values: Floats, weights: Floats, cv: float) -> tuple[float, str]:
         return float(tame["cut"].iloc[-1]), (
             f"the tail has no break; here the coefficient of variation falls from {cv:.2f} to {TAME_CV}"
         )
-    if len(allowed) and allowed["number_cut"].iloc[0] > 0:
+    if len(allowed) and allowed["n_cut"].iloc[0] > 0:
         return float(allowed["cut"].iloc[0]), (
             f"the tail has no break and the coefficient of variation stays above {TAME_CV}; this is as low as a cut "
             f"goes before it takes {100 * GREATEST_METAL_SHARE:.0f} % of the metal: look for more than one population"

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.findings import Findings
-from sms_resource.samples.intervals import names, numbers, overlap_pairs
+from sms_resource.samples.intervals import lines, names, numbers, overlap_pairs
 from sms_resource.units import column_element
 
 
@@ -87,7 +87,9 @@ def twin_report(
         spread = float(np.linalg.norm(xy[here] - xy[here].mean(axis=0), axis=1).max())
         clusters.append((site + 1, len(here), ", ".join(str(h) for h in holes[here]), spread))
     sites = pd.DataFrame(clusters, columns=["site", "holes", "hole_ids", "spread_m"])
-    columns = list(metals) if metals is not None else [c for c in composites if column_element(str(c))]
+    columns: list[str] = (
+        list(metals) if metals is not None else [str(c) for c in composites if column_element(str(c))]
+    )
     comparison = _compare(pairs, composites, columns)
     twins = sites.loc[sites["holes"] > 1] if len(sites) else sites
     if len(twins):
@@ -110,8 +112,8 @@ def twin_report(
 
 def _compare(pairs: pd.DataFrame, composites: pd.DataFrame, metals: Sequence[str]) -> pd.DataFrame:
     rows = []
-    groups = {name: part for name, part in composites.groupby("hole_id", sort=False)} if len(pairs) else {}
-    for pair in pairs.itertuples():
+    groups = dict(list(composites.groupby("hole_id", sort=False))) if len(pairs) else {}
+    for pair in lines(pairs):
         first, second = groups.get(pair.hole_a), groups.get(pair.hole_b)
         if first is None or second is None:
             continue

@@ -1,0 +1,50 @@
+"""Densities that physics or their own minerals forbid."""
+
+from __future__ import annotations
+
+import numpy as np
+import pandas as pd
+
+from sms_resource.findings import Findings
+from sms_resource.samples.intervals import numbers
+
+LIGHTEST_WET_TPM3 = 1.0
+HEAVIEST_TPM3 = 7.6
+
+
+def density_findings(frame: pd.DataFrame) -> Findings:
+    """What is impossible, or cannot be used, in the table of `density_table`; one warning a fault and row."""
+    findings = Findings()
+    dry, wet, grain = (numbers(frame, f"{name}_density_tpm3") for name in ("dry", "wet", "grain"))
+    norm_grain = numbers(frame, "norm_grain_tpm3")
+    rows = frame["source_row"] if "source_row" in frame else pd.Series(np.nan, index=frame.index)
+    checks = (
+        (dry > wet, "dry density {dry:.2f} is above wet density {wet:.2f}"),
+        (wet < LIGHTEST_WET_TPM3, "wet density {wet:.2f} is below that of water"),
+        (np.fmax(wet, dry) > HEAVIEST_TPM3, "density {wet:.2f} wet, {dry:.2f} dry is above that of galena"),
+        (dry > grain * 1.001, "dry density {dry:.2f} is above grain density {grain:.2f}"),
+        (dry <= 0, "dry density {dry:.2f} is not positive"),
+        (
+            dry > 1.1 * norm_grain,
+            "dry density {dry:.2f} is above the {norm:.2f} that the minerals of its assay give without any pore",
+        ),
+    )
+    for wrong, text in checks:
+        for at in np.flatnonzero(wrong):
+            hole = frame["hole_id"].iloc[at] if "hole_id" in frame else ""
+            message = text.format(dry=dry[at], wet=wet[at], grain=grain[at], norm=norm_grain[at])
+            findings.warning(
+                "density-impossible",
+                f"Hole {hole}, {frame['from_m'].iloc[at]:g} to {frame['to_m'].iloc[at]:g} m: {message} t/m3",
+                "Check masses, volume, basis (wet or dry) and the assay; correct or remove the sample.",
+                row=rows.iloc[at],
+            )
+    stuck = np.isfinite(numbers(frame, "given_wet_tpm3")) & ~np.isfinite(dry)
+    if stuck.any():
+        findings.warning(
+            "density-wet-only",
+            f"{int(stuck.sum())} of {len(frame)} densities are wet only and cannot be made dry",
+            "Give dry or grain densities, or the porosity of the domain.",
+            row=rows.iloc[int(np.flatnonzero(stuck)[0])],
+        )
+    return findings
