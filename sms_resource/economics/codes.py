@@ -10,6 +10,7 @@ CODES: dict[str, str] = {
     "recovery-domain-missing": "a domain of the block model has no recovery",
     "payability-missing": "a metal has no payability, so its value cannot be known",
     "price-unit": "a price stands in a unit that is not known, or in another currency than the rest",
+    "refining-above-price": "a refining charge is not below the price, which is a mistake of unit",
     "metal-missing": "the block model has no column for a metal of the selling terms",
     "equivalent-refused": "a metal equivalent is not given, with the reason",
     "equivalent-not-sold": "it is not stated that a metal of an equivalent can be recovered and sold",

@@ -95,6 +95,11 @@ class CostModel:
         # NaN sorts behind every start, so an unknown slope is taken for the worst.
         return factors[np.searchsorted(starts, slope_deg, side="right")]
 
+    def depth_factor(self, elevation: Floats) -> Floats:
+        """Factor on lifting at each elevation (m, negative below sea level)."""
+        below = -elevation - self.reference_depth_m
+        return np.maximum(1.0 + self.depth_rate_per_100_m * below / 100.0, 0.0)
+
 
 def block_costs(
     frame: pd.DataFrame,
@@ -135,8 +140,7 @@ def block_costs(
     )
     deep = np.ones(count)
     if costs.depth_rate_per_100_m:
-        below = -frame[elevation].to_numpy(dtype=np.float64) - costs.reference_depth_m
-        deep = np.maximum(1.0 + costs.depth_rate_per_100_m * below / 100.0, 0.0)
+        deep = costs.depth_factor(frame[elevation].to_numpy(dtype=np.float64))
     out = {
         "vessel_per_dry_tonne": costs.vessel_per_wet_tonne() * steep * wet_per_dry,
         "lifting_per_dry_tonne": costs.lifting_per_wet_tonne * steep * deep * wet_per_dry,

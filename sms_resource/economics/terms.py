@@ -229,6 +229,13 @@ class SellingTerms:
                         f"Give it in {self.currency} per one of {', '.join(_PER_TONNE)}.",
                         **where,
                     )
+                elif terms.net_price <= 0 and terms.payable_pct != 0:
+                    found.error(
+                        "refining-above-price",
+                        f"The refining charge of {name} is not below its price.",
+                        "Check the units of both: the charge is per price unit.",
+                        **where,
+                    )
             if terms.recovery is None and not idle:
                 found.error(
                     "recovery-missing",

@@ -90,7 +90,7 @@ def test_a_block_at_the_cutoff_is_in() -> None:
     assert table[table.proposed_class == "all"].cu_t.item() == pytest.approx(0.2)
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=30, deadline=None)
 @given(
     seed=st.integers(0, 2**31),
     count=st.integers(1, 300),

@@ -1,0 +1,129 @@
+"""Kernels that weigh every block under many sets of terms at once.
+
+Both work on tiles of scenarios, so that coefficients and sums stay in the nearest cache, and on a fixed number of
+runs of blocks that are summed in order afterwards, so that results do not depend on the number of threads.
+Coefficients come padded to whole tiles, (tiles, ..., TILE), with a threshold of infinity where there is no scenario.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numba import njit, prange
+
+TILE = 128
+RUNS = 32
+
+
+@njit(cache=True, parallel=True, nogil=True)
+def linear_sums(
+    grades: np.ndarray,
+    shapes: np.ndarray,
+    quantities: np.ndarray,
+    worth: np.ndarray,
+    charge: np.ndarray,
+    royalty: np.ndarray,
+    threshold: np.ndarray,
+    sums: np.ndarray,
+) -> None:
+    """Sums of quantities over blocks whose value meets its costs, where value is linear in the grades.
+
+    Value of block b in scenario s: x = sum_m worth[m, s] grades[b, m] - sum_p charge[p, s] shapes[b, p], less
+    royalty[s] of what is above zero. It is in where x >= sum_p threshold[p, s] shapes[b, p]; NaN is never in.
+
+    Parameters
+    ----------
+    grades (n, m), shapes (n, p), quantities (n, q) with dry tonnes first
+    worth (tiles, m, TILE), charge (tiles, p, TILE), royalty (tiles, TILE), threshold (tiles, p, TILE)
+    sums (RUNS, tiles, q + 1, TILE)
+        Filled: the quantities, then dry tonnes x value. Must come as zeros.
+    """
+    count, metals = grades.shape
+    parts = shapes.shape[1]
+    wide = quantities.shape[1]
+    for run in prange(RUNS):
+        value = np.empty(TILE)
+        needed = np.empty(TILE)
+        inside = np.empty(TILE)
+        for tile in range(worth.shape[0]):
+            for b in range(run * count // RUNS, (run + 1) * count // RUNS):
+                for s in range(TILE):
+                    value[s] = 0.0
+                    needed[s] = 0.0
+                for m in range(metals):
+                    grade = grades[b, m]
+                    for s in range(TILE):
+                        value[s] += worth[tile, m, s] * grade
+                for p in range(parts):
+                    shape = shapes[b, p]
+                    for s in range(TILE):
+                        value[s] -= charge[tile, p, s] * shape
+                        needed[s] += threshold[tile, p, s] * shape
+                tonnes = quantities[b, 0]
+                for s in range(TILE):
+                    x = value[s] - royalty[tile, s] * max(value[s], 0.0)
+                    taken = x >= needed[s]
+                    inside[s] = 1.0 if taken else 0.0
+                    sums[run, tile, wide, s] += tonnes * x if taken else 0.0
+                for q in range(wide):
+                    quantity = quantities[b, q]
+                    for s in range(TILE):
+                        sums[run, tile, q, s] += quantity * inside[s]
+
+
+@njit(cache=True, parallel=True, nogil=True)
+def deducted_sums(
+    grades: np.ndarray,
+    carrier: int,
+    shapes: np.ndarray,
+    quantities: np.ndarray,
+    share: np.ndarray,
+    worth: np.ndarray,
+    by_carrier: np.ndarray,
+    flat: np.ndarray,
+    product: np.ndarray,
+    charge: np.ndarray,
+    royalty: np.ndarray,
+    threshold: np.ndarray,
+    sums: np.ndarray,
+) -> None:
+    """As :func:`linear_sums`, where a buyer takes deductions or the metals go into a product.
+
+    Each metal brings max(0, min(share g, worth g - by_carrier c - flat)) with g its grade and c the grade of the
+    carrier; the product costs product c. share, worth, by_carrier and flat are (tiles, m, TILE); product (tiles, TILE).
+    """
+    count, metals = grades.shape
+    parts = shapes.shape[1]
+    wide = quantities.shape[1]
+    for run in prange(RUNS):
+        value = np.empty(TILE)
+        needed = np.empty(TILE)
+        inside = np.empty(TILE)
+        for tile in range(worth.shape[0]):
+            for b in range(run * count // RUNS, (run + 1) * count // RUNS):
+                mass = grades[b, carrier]
+                for s in range(TILE):
+                    value[s] = -product[tile, s] * mass
+                    needed[s] = 0.0
+                for m in range(metals):
+                    grade = grades[b, m]
+                    for s in range(TILE):
+                        other = share[tile, m, s] * grade
+                        paid = worth[tile, m, s] * grade - by_carrier[tile, m, s] * mass - flat[tile, m, s]
+                        least = paid if paid < other else other
+                        # written so that a missing grade stays missing
+                        value[s] += 0.0 if least < 0.0 else least
+                for p in range(parts):
+                    shape = shapes[b, p]
+                    for s in range(TILE):
+                        value[s] -= charge[tile, p, s] * shape
+                        needed[s] += threshold[tile, p, s] * shape
+                tonnes = quantities[b, 0]
+                for s in range(TILE):
+                    x = value[s] - royalty[tile, s] * max(value[s], 0.0)
+                    taken = x >= needed[s]
+                    inside[s] = 1.0 if taken else 0.0
+                    sums[run, tile, wide, s] += tonnes * x if taken else 0.0
+                for q in range(wide):
+                    quantity = quantities[b, q]
+                    for s in range(TILE):
+                        sums[run, tile, q, s] += quantity * inside[s]
