@@ -151,15 +151,15 @@ def grade_columns(frame: pd.DataFrame, first: dict, *, core: bool) -> pd.DataFra
 
 def surface_files(samples: pd.DataFrame, tracks: pd.DataFrame, lab: pd.DataFrame, folder: Path) -> None:
     """Surface samples, dredges and the laboratory's inserts."""
-    write_csv(grade_columns(samples, {
-        "Sample": samples["sample"], "Type": samples["type"], "Easting": samples["east"].round(1),
-        "Northing": samples["north"].round(1), "Elevation": samples["elevation"].round(1),
-        "PosSigma_m": samples["sigma"], "Method": samples["method"]}, core=False), folder / "surface_samples.csv")  # fmt: skip
-    write_csv(grade_columns(tracks, {
-        "Dredge": tracks["dredge"], "OnBottom_E": tracks["x1"].round(0), "OnBottom_N": tracks["y1"].round(0),
-        "OnBottom_Depth": tracks["z1"].round(0), "OffBottom_E": tracks["x2"].round(0),
-        "OffBottom_N": tracks["y2"].round(0), "OffBottom_Depth": tracks["z2"].round(0)}, core=False),
-        folder / "dredges.csv")  # fmt: skip
+    places = {"Sample": samples["sample"], "Type": samples["type"], "Easting": samples["east"].round(1),
+              "Northing": samples["north"].round(1), "Elevation": samples["elevation"].round(1),
+              "PosSigma_m": samples["sigma"], "Method": samples["method"]}  # fmt: skip
+    write_csv(grade_columns(samples, places, core=False), folder / "surface_samples.csv")
+    ends = {"Dredge": tracks["dredge"]}
+    for end, place in (("1", "OnBottom"), ("2", "OffBottom")):
+        for axis, suffix in (("x", "E"), ("y", "N"), ("z", "Depth")):
+            ends[f"{place}_{suffix}"] = tracks[axis + end].round(0)
+    write_csv(grade_columns(tracks, ends, core=False), folder / "dredges.csv")
     low = lab["metal"].map(inserts.DETECTION)
 
     def number(name: str) -> pd.Series:
