@@ -37,12 +37,13 @@ def load_laboratory(source: TableSource) -> tuple[pd.DataFrame, Findings]:
         [f"“{name}” is not an element that is read." for name in names[unknown]],
         f"Use one of: {', '.join(ELEMENTS)}.", file=source.name, column=header_of(frame, "element"),
     )  # fmt: skip
-    _convert(frame, source, findings)
+    if len(frame):
+        _convert(frame, source, findings)
     order = np.arange(1, len(frame) + 1)
     sequence = frame["sequence"].to_numpy(dtype=np.float64)
     frame["sequence"] = np.where(np.isfinite(sequence), sequence, order).astype(np.int64)
     attrs = dict(frame.attrs)
-    frame = frame.drop(columns="unit")
+    frame = frame.drop(columns="unit", errors="ignore")
     frame.attrs.update(attrs)
     return frame, findings
 

@@ -103,7 +103,7 @@ class TableMaker:
         frame = pd.DataFrame(data) if len(self.raw.rows) else empty_table(self.role, self.elements)
         frame["source_row"] = self.raw.rows
         for column in SCHEMAS[self.role]:
-            if column.kind in ("identifier", "text"):
+            if column.kind in ("identifier", "text") and column.name in frame:
                 frame[column.name] = frame[column.name].astype("str")
         self._note_unused()
         return mark(frame, self.file, self.headers, self.reported)

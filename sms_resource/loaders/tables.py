@@ -141,13 +141,15 @@ def empty_table(role: str, elements: tuple[str, ...] = ()) -> pd.DataFrame:
     """The table of a role with all its columns and no row."""
     frame = {}
     for column in SCHEMAS[role]:
+        if column.name == "unit":  # read, used to convert, and dropped
+            continue
         text = column.kind in ("identifier", "text")
         frame[column.name] = pd.Series(dtype="str" if text else "float64")
+        if column.kind == "result":
+            frame[f"{column.name}_status"] = pd.Series(dtype="int8")
+            frame[f"{column.name}_limit"] = pd.Series(dtype="float64")
     for name in element_columns(elements) if role in GRADE_ROLES else []:
         frame[name] = pd.Series(dtype="int8" if name.endswith("_status") else "float64")
-    if role == "laboratory":
-        frame["value_status"] = pd.Series(dtype="int8")
-        frame["value_limit"] = pd.Series(dtype="float64")
     frame["source_row"] = pd.Series(dtype="int64")
     return pd.DataFrame(frame)
 

@@ -58,7 +58,9 @@ def tables() -> dict[str, list[Row]]:
         for depth in (0, length):
             out["surveys"].append(dict(hole_id=hole, depth_m=depth, azimuth=30, dip=-88 + depth * 0.1))
         for k in range(length):
-            out["runs"].append(dict(hole_id=hole, from_m=k, to_m=k + 1, recovered_length_m=0.6 + 0.05 * (k % 4)))
+            out["runs"].append(
+                dict(hole_id=hole, from_m=k, to_m=k + 1, recovered_length_m=0.6 + 0.05 * (k % 4))
+            )
             out["assays"].append(
                 dict(hole_id=hole, sample_id=f"{hole}-{k}", from_m=k, to_m=k + 1, method="laboratory",
                      cu_pct=round(2 + 0.3 * ((i + k) % 5), 2), zn_pct=round(1 + 0.4 * ((i * k) % 3), 2),
@@ -132,14 +134,29 @@ class Study:
                 writer.writerow([renamed.get(name, name) for name in names])
                 writer.writerows([[row.get(name, "") for name in names] for row in rows])
         self._write_grid()
-        square = Polygon([(WEST + 20, SOUTH + 20), (WEST + 170, SOUTH + 20), (WEST + 170, SOUTH + 130), (WEST + 20, SOUTH + 130)])
-        outline = self.outline if self.outline is not None else gpd.GeoDataFrame({"name": ["body"]}, geometry=[square])
+        square = Polygon(
+            [
+                (WEST + 20, SOUTH + 20),
+                (WEST + 170, SOUTH + 20),
+                (WEST + 170, SOUTH + 130),
+                (WEST + 20, SOUTH + 130),
+            ]
+        )
+        outline = (
+            self.outline
+            if self.outline is not None
+            else gpd.GeoDataFrame({"name": ["body"]}, geometry=[square])
+        )
         zones = self.exclusions
         if zones is None:
             vent = Point(WEST + 60, SOUTH + 60)
-            zones = gpd.GeoDataFrame({"name": ["vent"], "status": ["active vent"], "buffer_m": [20.0]}, geometry=[vent])
+            zones = gpd.GeoDataFrame(
+                {"name": ["vent"], "status": ["active vent"], "buffer_m": [20.0]}, geometry=[vent]
+            )
         for role, frame in (("outline", outline), ("exclusions", zones)):
-            frame.set_crs(self.layer_crs, allow_override=True).to_file(self.folder / f"{role}.gpkg", driver="GPKG", layer=role)
+            frame.set_crs(self.layer_crs, allow_override=True).to_file(
+                self.folder / f"{role}.gpkg", driver="GPKG", layer=role
+            )
         for change in self.after:
             change(self.folder)
 
@@ -179,14 +196,23 @@ class Study:
             if source is not None:
                 parts[field_name], more = reader(source)
                 found.extend(more)
-        options = {key: self.grid[key] for key in ("vertical", "band", "declared_crs", "reproject") if key in self.grid}
+        options = {
+            key: self.grid[key]
+            for key in ("vertical", "band", "declared_crs", "reproject")
+            if key in self.grid
+        }
         parts["seafloor"], more = load_grid(
-            self.folder / self.grid.get("file", "bathymetry.tif"), shown_as="bathymetry.tif", crs=CRS, **options
+            self.folder / self.grid.get("file", "bathymetry.tif"),
+            shown_as="bathymetry.tif",
+            crs=CRS,
+            **options,
         )
         found.extend(more)
         parts["outline"], more = load_outline(self.folder / "outline.gpkg", shown_as="outline.gpkg", crs=CRS)
         found.extend(more)
-        parts["exclusions"], more = load_exclusions(self.folder / "exclusions.gpkg", shown_as="exclusions.gpkg", crs=CRS)
+        parts["exclusions"], more = load_exclusions(
+            self.folder / "exclusions.gpkg", shown_as="exclusions.gpkg", crs=CRS
+        )
         found.extend(more)
         files = {role: self.name(role) for role in self.rows if role not in self.skip}
         files |= {"bathymetry": "bathymetry.tif", "outline": "outline.gpkg", "exclusions": "exclusions.gpkg"}
