@@ -12,7 +12,7 @@ from sms_resource.samples.density_checks import density_findings
 from sms_resource.samples.density_model import DensityModel, fit_density
 from sms_resource.samples.domains import domain_at
 from sms_resource.samples.intervals import names, numbers, overlap_means
-from sms_resource.samples.mineralogy import NormSettings, norm
+from sms_resource.samples.mineralogy import NormSettings, heaviest_grain, norm
 from sms_resource.samples.moisture import (
     SALT_DENSITY_TPM3,
     dry_from_grain,
@@ -69,7 +69,8 @@ def density_table(
     -------
     DataFrame
         The samples with domain, dry_density_tpm3, wet_density_tpm3, grain_density_tpm3, porosity, dry_basis and
-        wet_basis (how each came about), norm_grain_tpm3 (from the assay beside it), assayed_m and the metals. What is
+        wet_basis (how each came about), norm_grain_tpm3 and heaviest_grain_tpm3 (from the assay beside it), assayed_m
+        and the metals. What is
         wrong with them is told by `density_findings`.
 
     Raises
@@ -92,10 +93,12 @@ def density_table(
     frame["dry_density_tpm3"], frame["wet_density_tpm3"], frame["grain_density_tpm3"] = dry, wet, grain
     frame["porosity"], frame["dry_basis"], frame["wet_basis"] = pores, dry_basis, wet_basis
     frame["norm_grain_tpm3"] = np.nan
+    frame["heaviest_grain_tpm3"] = np.nan
     with_grades = np.isfinite(numbers(frame, "cu_pct")) & np.isfinite(numbers(frame, "fe_pct"))
     if with_grades.any():
         minerals = norm(frame.loc[with_grades], norm_settings)
         frame.loc[with_grades, "norm_grain_tpm3"] = minerals["grain_density_tpm3"].to_numpy()
+        frame.loc[with_grades, "heaviest_grain_tpm3"] = heaviest_grain(frame.loc[with_grades])
     frame["given_wet_tpm3"] = given["wet"]
     return frame
 

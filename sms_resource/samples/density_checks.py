@@ -16,7 +16,7 @@ def density_findings(frame: pd.DataFrame) -> Findings:
     """What is impossible, or cannot be used, in the table of `density_table`; one warning a fault and row."""
     findings = Findings()
     dry, wet, grain = (numbers(frame, f"{name}_density_tpm3") for name in ("dry", "wet", "grain"))
-    norm_grain = numbers(frame, "norm_grain_tpm3")
+    heaviest = numbers(frame, "heaviest_grain_tpm3")
     rows = frame["source_row"] if "source_row" in frame else pd.Series(np.nan, index=frame.index)
     checks = (
         (dry > wet, "dry density {dry:.2f} is above wet density {wet:.2f}"),
@@ -25,14 +25,14 @@ def density_findings(frame: pd.DataFrame) -> Findings:
         (dry > grain * 1.001, "dry density {dry:.2f} is above grain density {grain:.2f}"),
         (dry <= 0, "dry density {dry:.2f} is not positive"),
         (
-            dry > 1.1 * norm_grain,
-            "dry density {dry:.2f} is above the {norm:.2f} that the minerals of its assay give without any pore",
+            dry > 1.05 * heaviest,
+            "dry density {dry:.2f} is above the {norm:.2f} that the minerals of its assay can give without any pore",
         ),
     )
     for wrong, text in checks:
         for at in np.flatnonzero(wrong):
             hole = frame["hole_id"].iloc[at] if "hole_id" in frame else ""
-            message = text.format(dry=dry[at], wet=wet[at], grain=grain[at], norm=norm_grain[at])
+            message = text.format(dry=dry[at], wet=wet[at], grain=grain[at], norm=heaviest[at])
             findings.warning(
                 "density-impossible",
                 f"Hole {hole}, {frame['from_m'].iloc[at]:g} to {frame['to_m'].iloc[at]:g} m: {message} t/m3",

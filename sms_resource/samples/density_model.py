@@ -12,6 +12,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from sms_resource.findings import Findings
 from sms_resource.samples.density_checks import density_findings
+from sms_resource.samples.density_given import assigned_density, three_values
 from sms_resource.samples.density_regression import CASES, REGRESSORS, Case, Regression, fit_regression
 from sms_resource.samples.intervals import names, numbers
 from sms_resource.samples.mineralogy import NormSettings, norm
@@ -99,7 +100,10 @@ class DensityModel:
     ) -> tuple[Floats, Floats]:
         assert self.porosity is not None
         known = np.isfinite(numbers(grades, "cu_pct")) & np.isfinite(numbers(grades, "fe_pct"))
-        grain = norm(grades, self.norm_settings)["grain_density_tpm3"].to_numpy(np.float64)
+        named = np.append(names(self.by_domain["domain"]), "")[at]
+        grain = norm(grades.assign(domain=named), self.norm_settings)["grain_density_tpm3"].to_numpy(
+            np.float64
+        )
         # the lightest case has the most pores
         pores = np.append(self.porosity[_OPPOSITE[case]].to_numpy(np.float64), np.nan)[at]
         own = grain * (1.0 - pores) * self.factor
@@ -184,8 +188,10 @@ def fit_density(
         raise ValueError(f"factor must be positive, not {factor}")
     water = pore_water(salinity_gkg, pore_water_tpm3)
     frame = table
-    given = {str(k): _assigned(str(k), v, porosity, water) for k, v in (assigned_dry_tpm3 or {}).items()}
-    pores = {str(k): _three(f"porosity of {k}", v) for k, v in (porosity or {}).items()}
+    given = {
+        str(k): assigned_density(str(k), v, porosity, water) for k, v in (assigned_dry_tpm3 or {}).items()
+    }
+    pores = {str(k): three_values(f"porosity of {k}", v) for k, v in (porosity or {}).items()}
     for name, values in pores.items():
         if not (values[0] >= 0 and values[2] < 1):
             raise ValueError(f"porosity of {name} must be a fraction from 0 to below 1, not {values}")
@@ -355,39 +361,6 @@ def _mineral_rows(
         rows.append(_row(name, dry, dry + porosity[::-1] * water_density, len(here), "minerals and porosity"))
         table.append({"domain": name, "low": porosity[0], "base": porosity[1], "high": porosity[2]})
     return rows, pd.DataFrame(table, columns=["domain", "low", "base", "high"])
-
-
-def _assigned(
-    name: str, value: Any, porosity: Mapping[str, Any] | None, water_density: float
-) -> tuple[Floats, Floats]:
-    """Dry and wet (low, base, high) of an assigned density."""
-    pores: Any = (porosity or {}).get(name)
-    if isinstance(value, Mapping):
-        pores = value.get("porosity", pores)
-        dry = value.get("dry", [value.get(f"dry_{case}", value.get("dry_base")) for case in CASES])
-    else:
-        dry = value
-    values = _three(f"density of {name}", dry)
-    if not 0 < values[0] <= values[2] <= 7.6:
-        raise ValueError(f"assigned density of {name} must lie above 0 and at most at 7.6 t/m3, not {values}")
-    if isinstance(value, Mapping) and ("wet" in value or "wet_base" in value):
-        wet = _three(f"wet density of {name}", value.get("wet", value.get("wet_base")))
-        if np.any(wet < values):
-            raise ValueError(f"assigned wet density of {name} is below its dry density")
-        return values, wet
-    if pores is None:
-        return values, np.full(3, np.nan)
-    return values, values + _three(f"porosity of {name}", pores)[1] * water_density
-
-
-def _three(what: str, value: Any) -> Floats:
-    """(low, base, high) from a number or three."""
-    result = np.atleast_1d(np.asarray(value, dtype=np.float64))
-    if result.shape == (1,):
-        result = np.repeat(result, 3)
-    if result.shape != (3,) or not np.all(np.isfinite(result)) or np.any(np.diff(result) < 0):
-        raise ValueError(f"{what} must be a number or (low, base, high) in ascending order, not {value!r}")
-    return result
 
 
 def _row(name: str, dry: Floats, wet: Floats, n: int, basis: str) -> dict[str, object]:

@@ -55,6 +55,7 @@ MINERALS: dict[str, Mineral] = {
         Mineral("pyrrhotite", "FeS", 4.62),
         Mineral("magnetite", "Fe3O4", 5.20),
         Mineral("silica", "SiO2", 2.10),
+        Mineral("quartz", "SiO2", 2.65),
     )
 }
 COPPER_MINERALS = ("chalcopyrite", "bornite", "covellite", "chalcocite")
@@ -69,13 +70,16 @@ class NormSettings:
     copper_mineral : str
         Mineral that takes the copper that arsenic leaves: chalcopyrite, bornite, covellite or chalcocite.
     rest : str
-        Mineral that fills up to 100 %.
+        Mineral that fills up to 100 %: amorphous silica unless the rock says otherwise.
+    rest_by_domain : mapping
+        Domain to the mineral that fills up there instead, such as quartz in a stockwork.
     densities : mapping
         Grain densities (t/m3) that replace those of `MINERALS`.
     """
 
     copper_mineral: str = "chalcopyrite"
     rest: str = "silica"
+    rest_by_domain: Mapping[str, str] = field(default_factory=dict)
     densities: Mapping[str, float] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
@@ -83,7 +87,7 @@ class NormSettings:
             raise ValueError(
                 f"copper_mineral must be one of {', '.join(COPPER_MINERALS)}, not {self.copper_mineral!r}"
             )
-        for name in (self.rest, *self.densities):
+        for name in (self.rest, *self.rest_by_domain.values(), *self.densities):
             if name not in MINERALS:
                 raise ValueError(f"mineral {name!r} is not one of {', '.join(MINERALS)}")
 
@@ -116,7 +120,7 @@ def norm(grades: pd.DataFrame, settings: NormSettings | None = None) -> pd.DataF
     Parameters
     ----------
     grades : DataFrame
-        Element columns such as cu_pct, zn_pct, pb_pct, as_ppm, ba_pct, fe_pct.
+        Element columns such as cu_pct, zn_pct, pb_pct, as_ppm, ba_pct, fe_pct; domain, where the rest depends on it.
 
     Returns
     -------
@@ -147,7 +151,13 @@ def norm(grades: pd.DataFrame, settings: NormSettings | None = None) -> pd.DataF
     scale = np.where(total > 100.0, 100.0 / np.where(total > 0, total, 1.0), 1.0)
     frame = frame.mul(scale, axis=0)
     rest = np.maximum(100.0 - total, 0.0)
-    frame[settings.rest] = frame.get(settings.rest, 0.0) + rest
+    filler = np.full(len(frame), settings.rest, dtype=object)
+    if "domain" in grades:
+        filler = np.array(
+            [settings.rest_by_domain.get(str(name), settings.rest) for name in grades["domain"]], object
+        )
+    for name in dict.fromkeys([settings.rest, *filler]):
+        frame[name] = frame.get(name, 0.0) + np.where(filler == name, rest, 0.0)
     volume = sum(frame[name].to_numpy() / settings.density(name) for name in frame.columns)
     frame["sum_pct"] = total
     frame["iron_short_pct"] = np.where(iron_known, np.maximum(-left, 0.0), 0.0)
@@ -167,3 +177,14 @@ def least_mineral_percent(grades: pd.DataFrame) -> Floats:
     ):  # fmt: skip
         total += np.nan_to_num(percent_of(grades, symbol)) / MINERALS[mineral].fraction(symbol.capitalize())
     return total + np.nan_to_num(percent_of(grades, "sio2"))
+
+
+def heaviest_grain(grades: pd.DataFrame) -> Floats:
+    """The most that the grain density (t/m3) of each row can be: the norm with the heaviest rock as its rest.
+
+    The rest is taken at 2.95 (anhydrite, fresh basalt) where barium was assayed, and as barite where it was not.
+    """
+    known = np.isfinite(percent_of(grades, "ba"))
+    light = norm(grades.drop(columns="domain", errors="ignore"), NormSettings(rest="anhydrite"))
+    heavy = norm(grades.drop(columns="domain", errors="ignore"), NormSettings(rest="barite"))
+    return np.where(known, light["grain_density_tpm3"], heavy["grain_density_tpm3"])
