@@ -12,4 +12,10 @@ CODES: dict[str, str] = {
     "kriging-constant-values": "All values of a column are equal: there is nothing to estimate.",
     "samples-in-one-line": "All samples lie on one line: the estimate knows nothing across it.",
     # experimental variograms, fit and validation
+    "variogram-no-variance": "The values do not vary, or there is one sample: the model is assumed.",
+    "variogram-not-inferred": "Too few pairs, samples or holes for a variogram: ranges are assumed.",
+    "variogram-no-continuity": "The shortest pairs in the plane already stand at the sill: the range is assumed.",
+    "variogram-holes-in-line": "All holes lie in one line: the range across it is assumed.",
+    "variogram-bound-hit": "A fitted parameter of a variogram stands at a limit.",
+    "validation-flag": "A check of the estimate lies outside its limit.",
 }

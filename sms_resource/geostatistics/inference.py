@@ -1,0 +1,246 @@
+"""Inference of a variogram model from few samples, with a plain statement of what could not be inferred."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, field, replace
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from sms_resource.findings import Findings
+from sms_resource.geostatistics.back_transform import raw_model
+from sms_resource.geostatistics.evidence import gather_evidence
+from sms_resource.geostatistics.experimental import ExperimentalVariogram
+from sms_resource.geostatistics.inference_plan import (
+    Plan,
+    assumed_model,
+    fit_plan,
+    fixed_ranges,
+    make_plan,
+    shortest_in_plane,
+)
+from sms_resource.geostatistics.inference_words import (
+    NUGGET_WORDS,
+    alternatives,
+    assumptions,
+    inference_statement,
+    report_findings,
+)
+from sms_resource.geostatistics.model import VariogramModel
+from sms_resource.geostatistics.variogram_settings import VariogramSettings
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+LEAST_HOLES_FOR_JACKKNIFE = 5
+
+
+@dataclass(frozen=True)
+class VariogramInference:
+    """A variogram model and how far the data carry it.
+
+    Attributes
+    ----------
+    model : VariogramModel
+        In squared units of the values.
+    experimental : tuple of ExperimentalVariogram
+        In the measure that was fitted.
+    fitted_model : VariogramModel
+        The model in that measure, before it was turned back; the same as ``model`` for a semivariogram.
+    nugget_from : str
+        Where the nugget comes from, in words.
+    assumed, bounds_hit : tuple of str
+        Parameters that are assumed, and those that stand at a limit, in words.
+    intervals : DataFrame or None
+        Jackknife over holes: parameter, low, best, high.
+    statement : str
+        What was inferred and what was not, with the pairs per lag.
+    low, high : VariogramModel
+        Less and more continuous alternatives: ends of the intervals of the ranges where they were inferred, the
+        low and high assumed ratio where not.
+    sample_count, hole_count : int
+    horizontal_from, vertical_from : "data" | "user" | "assumed"
+        Where the ranges in the plane and the upright range come from.
+    findings : Findings
+    """
+
+    model: VariogramModel
+    experimental: tuple[ExperimentalVariogram, ...]
+    fitted_model: VariogramModel
+    nugget_from: str
+    assumed: tuple[str, ...]
+    bounds_hit: tuple[str, ...]
+    intervals: pd.DataFrame | None
+    statement: str
+    low: VariogramModel
+    high: VariogramModel
+    sample_count: int
+    hole_count: int
+    measure: str = "semivariogram"
+    horizontal_from: str = "data"
+    vertical_from: str = "data"
+    findings: Findings = field(default_factory=Findings, compare=False)
+
+    def to_record(self) -> dict[str, Any]:
+        """A dictionary ready for JSON."""
+        return {
+            "model": self.model.to_record(),
+            "fitted_model": self.fitted_model.to_record(),
+            "low": self.low.to_record(),
+            "high": self.high.to_record(),
+            "measure": self.measure,
+            "nugget_from": self.nugget_from,
+            "assumed": list(self.assumed),
+            "bounds_hit": list(self.bounds_hit),
+            "statement": self.statement,
+            "horizontal_from": self.horizontal_from,
+            "vertical_from": self.vertical_from,
+            "sample_count": self.sample_count,
+            "hole_count": self.hole_count,
+            "intervals": None if self.intervals is None else _records(self.intervals),
+            "experimental": [_records(item.to_frame()) for item in self.experimental],
+            "findings": self.findings.to_records(),
+        }
+
+
+def _records(frame: pd.DataFrame) -> list[dict[str, Any]]:
+    rows = frame.to_dict("records")
+    return [
+        {str(k): None if isinstance(v, float) and not math.isfinite(v) else v for k, v in row.items()}
+        for row in rows
+    ]
+
+
+def infer_variogram(
+    coordinates: ArrayLike,
+    values: ArrayLike,
+    hole_ids: Any,
+    settings: VariogramSettings | None = None,
+    *,
+    weights: ArrayLike | None = None,
+) -> VariogramInference:
+    """Model of one metal in one domain: nugget from down the holes, then the ranges, then their uncertainty.
+
+    Parameters
+    ----------
+    coordinates : (n, 3) array_like
+        Easting, northing, elevation in m (or the coordinates of another vertical frame).
+    values : (n,) array_like
+        NaN is missing.
+    hole_ids : (n,) array_like or None
+        Hole of each sample; None makes each sample a hole of its own.
+    settings : VariogramSettings, optional
+    weights : (n,) array_like, optional
+        Declustering weights, for the variance and for the pairs.
+
+    Returns
+    -------
+    VariogramInference
+        Also where nothing could be inferred: the model then rests on the assumptions, which it names.
+
+    Raises
+    ------
+    ValueError
+        If shapes do not agree, a coordinate is not finite, or no sample has a value.
+
+    Notes
+    -----
+    The nugget is fitted to the down-hole variogram alone and kept; the ranges are then fitted to all
+    experimental variograms together, through the mean separation of the pairs of each lag.
+    """
+    settings = settings or VariogramSettings()
+    findings = Findings()
+    data = np.asarray(values, dtype=float)
+    if data.ndim == 1 and np.isfinite(data).sum() == 1 and not np.isinf(data).any():
+        return _nothing(settings, "there is one sample", 1, 1)
+    evidence = gather_evidence(coordinates, values, hole_ids, settings, weights)
+    if evidence.variance == 0.0:
+        text = f"all {len(evidence.values)} samples have the same value"
+        return _nothing(settings, text, len(evidence.values), evidence.hole_count)
+    plan = make_plan(evidence)
+    fit = fit_plan(plan, evidence, evidence.variograms, evidence.variance_of_measure)
+    shortest = shortest_in_plane(evidence)
+    free_major = any(row[0] is None for row in fixed_ranges(settings))
+    if plan.plane and free_major and max(s.ranges[0] for s in fit.model.structures) <= shortest:
+        plan = replace(plan, plane=False, greatest_in_plane_m=shortest)
+        if plan.nugget_from == "joint":
+            plan = replace(plan, nugget_from="assumed")
+        fit = fit_plan(plan, evidence, evidence.variograms, evidence.variance_of_measure)
+    model = raw_model(fit.model, evidence)
+    intervals = None
+    if (
+        settings.jackknife
+        and evidence.hole_count >= LEAST_HOLES_FOR_JACKKNIFE
+        and (plan.upright or plan.plane)
+    ):
+        from sms_resource.geostatistics.jackknife import jackknife_intervals
+
+        intervals = jackknife_intervals(evidence, plan, fit, model)
+    assumed = assumptions(plan, evidence)
+    statement = inference_statement(plan, evidence)
+    low, high = alternatives(model, intervals, plan, settings)
+    report_findings(findings, plan, evidence, fit.bounds_hit, statement)
+    return VariogramInference(
+        model=model,
+        experimental=evidence.variograms,
+        fitted_model=fit.model,
+        nugget_from=NUGGET_WORDS[plan.nugget_from],
+        assumed=assumed,
+        bounds_hit=fit.bounds_hit,
+        intervals=intervals,
+        statement=statement,
+        low=low,
+        high=high,
+        sample_count=len(evidence.values),
+        hole_count=evidence.hole_count,
+        measure=settings.measure,
+        horizontal_from="user" if not free_major else "data" if plan.plane else "assumed",
+        vertical_from=_vertical_from(plan, settings),
+        findings=findings,
+    )
+
+
+def _vertical_from(plan: Plan, settings: VariogramSettings) -> str:
+    if all(row[2] is not None for row in fixed_ranges(settings)):
+        return "user"
+    return "data" if plan.upright else "assumed"
+
+
+def _nothing(settings: VariogramSettings, text: str, samples: int, holes: int) -> VariogramInference:
+    """A model from the assumptions alone, with total sill 1, for values that do not vary."""
+    findings = Findings()
+    statement = (
+        f"No variogram can be inferred: {text}. The model is assumed, with a total sill of 1: "
+        "weights follow from it, kriging variances do not."
+    )
+    findings.warning(
+        "variogram-no-variance",
+        statement,
+        "Join the domain to another one, or give the variogram in the study.",
+    )
+    sill = settings.total_sill if not isinstance(settings.total_sill, str) else 1.0
+    share = settings.nugget_share if settings.nugget_share is not None else settings.assumed_nugget_share
+    nugget = settings.nugget if settings.nugget is not None else share * sill
+    model = assumed_model(settings, sill, nugget)
+    return VariogramInference(
+        model=model,
+        experimental=(),
+        fitted_model=model,
+        nugget_from=NUGGET_WORDS[
+            "user" if settings.nugget is not None or settings.nugget_share is not None else "assumed"
+        ],
+        assumed=("nugget, sill and ranges: assumed, because the values do not vary",),
+        bounds_hit=(),
+        intervals=None,
+        statement=statement,
+        low=model,
+        high=model,
+        sample_count=samples,
+        hole_count=holes,
+        measure=settings.measure,
+        horizontal_from="assumed",
+        vertical_from="assumed",
+        findings=findings,
+    )
