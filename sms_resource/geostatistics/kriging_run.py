@@ -15,7 +15,7 @@ from .kriging_setup import ModelArrays
 from .lane_kernels import LANES
 from .model import COINCIDENT_M, VariogramModel
 from .neighbourhood import HighGradeRestraint, Neighbourhood
-from .search_run import Finder, Found, target_chunks, using_threads
+from .search_run import CHUNK, Finder, Found, target_chunks, using_threads
 
 if TYPE_CHECKING:
     from .kriging import Outputs
@@ -26,6 +26,9 @@ Int64Array = NDArray[np.int64]
 # The whole matrix of covariances is made for an estimate from all samples: 10 000 need 0.8 GB.
 MOST_FOR_ALL = 10_000
 _ALL_CHUNK_NUMBERS = 4_000_000
+# Up to so many samples the packed kernels beat the library's matrices, and need no second factor's room.
+FEW = 200
+_RUN_OF_ALL = 64
 
 
 def columns_by_model(
@@ -155,7 +158,8 @@ def from_all_samples(
     from scipy.spatial import cKDTree
 
     local = targets - samples.origin
-    finite = np.flatnonzero(np.isfinite(local).all(axis=1))
+    is_place = np.isfinite(local).all(axis=1)
+    finite = np.flatnonzero(is_place)
     for group in samples.patterns().values():
         present = np.flatnonzero(np.isfinite(samples.values[:, group[0]]))
         n = len(present)
@@ -171,6 +175,9 @@ def from_all_samples(
         nearest = np.full(len(local), np.nan)
         nearest[finite] = cKDTree(points).query(local[finite])[0]
         out.nearest[:, group] = nearest[:, None]
+        if n <= FEW:
+            _from_few(samples, local, finite, present, group, models, arrays, workers, means, out)
+            continue
         chunk = max(LANES, _ALL_CHUNK_NUMBERS // n)
         for model, alike in columns_by_model(group, models):
             setup = arrays[model]
@@ -207,8 +214,44 @@ def from_all_samples(
                     weights, right, mu, table, nearest[rows], points, local[rows], setup,
                     None if means is None else means[alike], rows, alike, out,
                 )  # fmt: skip
-    strange = np.flatnonzero(~np.isfinite(local).all(axis=1))
-    out.status[strange] = NOT_FINITE
+    out.status[~is_place] = NOT_FINITE
+
+
+def _from_few(
+    samples: Samples,
+    local: FloatArray,
+    finite: Int64Array,
+    present: Int64Array,
+    group: Sequence[int],
+    models: Sequence[VariogramModel],
+    arrays: Mapping[VariogramModel, ModelArrays],
+    workers: int,
+    means: FloatArray | None,
+    out: Outputs,
+) -> None:
+    """Few samples: the kernels of the moving neighbourhood, with all samples found for every target."""
+    n = len(present)
+    unlimited = np.full(samples.values.shape[1], np.inf)
+    for first in range(0, len(finite), CHUNK // 8):
+        rows = finite[first : first + CHUNK // 8]
+        c = len(rows)
+        found = Found(
+            samples=np.ascontiguousarray(np.broadcast_to(np.arange(n, dtype=np.int32), (c, n))),
+            reach=np.zeros((c, n)),
+            count=np.full(c, n, dtype=np.int32),
+            hole_count=np.zeros(c, dtype=np.int32),
+            nearest=np.zeros(c),
+            status=np.zeros(c, dtype=np.int8),
+            pass_number=np.zeros(c, dtype=np.int8),
+        )
+        length = min(_RUN_OF_ALL, -(-c // (2 * LANES)))
+        starts = np.arange(0, c, length)
+        runs = (np.arange(c), starts, np.minimum(length, c - starts))
+        for model, alike in columns_by_model(group, models):
+            krige_found(
+                found, np.ascontiguousarray(local[rows]), rows, present, samples, arrays[model], alike, runs,
+                workers, unlimited, np.inf, means, out,
+            )  # fmt: skip
 
 
 def _finish_all(
