@@ -14,6 +14,7 @@ from sms_resource.economics.scenarios import (
     one_at_a_time,
     tornado_table,
 )
+from sms_resource.economics.shapes import MineableShape, ShapeRules, mineable_shapes, skins
 from sms_resource.economics.terms import MetalTerms, Price, Product, SellingTerms
 from sms_resource.economics.value import BlockValue, block_value, value_against_grade
 
@@ -25,11 +26,13 @@ __all__ = [
     "Decision",
     "MetalEquivalent",
     "MetalTerms",
+    "MineableShape",
     "Price",
     "Product",
     "Recovery",
     "ScenarioError",
     "SellingTerms",
+    "ShapeRules",
     "beside_change_of_support",
     "block_costs",
     "block_value",
@@ -42,8 +45,10 @@ __all__ = [
     "grade_tonnage",
     "heat_table",
     "metal_equivalent",
+    "mineable_shapes",
     "missing_tonnage",
     "one_at_a_time",
+    "skins",
     "tornado_table",
     "value_against_grade",
 ]

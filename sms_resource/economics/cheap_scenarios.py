@@ -88,9 +88,11 @@ def cheap_scenarios(
         if metals
         else np.empty((len(dry), 0))
     )
-    graded = ~np.isnan(grades)
+    # Only metals with missing grades need graded tonnes of their own: all others are graded by every dry tonne.
+    gaps = np.isnan(grades)
+    partial = np.flatnonzero(gaps.any(axis=0))
     quantities = np.column_stack(
-        [dry, wet, np.where(graded, grades, 0.0) * dry[:, None], graded * dry[:, None]]
+        [dry, wet, np.where(gaps, 0.0, grades) * dry[:, None], ~gaps[:, partial] * dry[:, None]]
     )
     sums = np.full((quantities.shape[1] + 1, len(scenarios)), np.nan)
     sums[:, sound] = 0.0
@@ -107,7 +109,9 @@ def cheap_scenarios(
             chosen = [sound[i] for i in members]
             group = [scenarios[i] for i in chosen]
             sums[:, chosen] += _weigh(part, group, str(name), quantities[rows], wet_per_dry, slope, elevation)
-    return _table(scenarios, sums, metals), findings
+    graded = np.tile(sums[0], (len(metals), 1))
+    graded[partial] = sums[2 + len(metals) : -1]
+    return _table(scenarios, sums, graded, metals), findings
 
 
 def _problems(scenario: CheapScenario, frame: pd.DataFrame, slope: str, elevation: str) -> Findings:
@@ -189,9 +193,7 @@ def _weigh(
         bend = _resolved(metal.recovery, domain)[1]
         columns.append(grade * Recovery(by_grade=bend).fraction(grade) if bend else grade)
     recovered = np.column_stack(columns) if columns else np.zeros((len(part), 1))
-    shapes = np.column_stack(
-        [np.ones(len(part)), wet_per_dry, *_cost_shapes(part, first.costs, wet_per_dry, slope, elevation)]
-    )
+    shapes = np.column_stack([wet_per_dry, *_cost_shapes(part, first.costs, wet_per_dry, slope, elevation)])
     width = max(len(paid), 1)
     coefficients = _Coefficients.empty(len(group), width, kernels.TILE)
     for s, scenario in enumerate(group):
@@ -246,7 +248,7 @@ class _Coefficients:
     def empty(cls, count: int, width: int, tile: int) -> _Coefficients:
         total = -(-count // tile) * tile
         by_metal = {name: np.zeros((width, total)) for name in ("share", "worth", "by_carrier", "flat")}
-        by_shape = {"charge": np.zeros((4, total)), "threshold": np.zeros((4, total))}
+        by_shape = {"charge": np.zeros((2, total)), "threshold": np.zeros((3, total))}
         by_shape["threshold"][0] = np.inf  # where there is no scenario nothing is selected
         return cls({**by_metal, **by_shape, "royalty": np.zeros((1, total)), "product": np.zeros((1, total))})
 
@@ -280,8 +282,8 @@ class _Coefficients:
         a["charge"][1, s] = terms.freight_per_wet_tonne
         if scenario.cutoff is None:
             a["threshold"][0, s] = costs.processing_per_dry_tonne + costs.general_per_dry_tonne
-            a["threshold"][2, s] = costs.vessel_per_wet_tonne()
-            a["threshold"][3, s] = costs.lifting_per_wet_tonne
+            a["threshold"][1, s] = costs.vessel_per_wet_tonne()
+            a["threshold"][2, s] = costs.lifting_per_wet_tonne
         else:
             a["threshold"][0, s] = scenario.cutoff
 
@@ -294,11 +296,13 @@ class _Coefficients:
         return out
 
 
-def _table(scenarios: Sequence[CheapScenario], sums: Floats, metals: Sequence[str]) -> pd.DataFrame:
+def _table(
+    scenarios: Sequence[CheapScenario], sums: Floats, graded: Floats, metals: Sequence[str]
+) -> pd.DataFrame:
     width = len(metals)
     out: dict[str, object] = {"label": [scenario.label for scenario in scenarios]}
     out["dry_tonnes"], out["wet_tonnes"] = sums[0], sums[1]
-    metal_sums, graded = sums[2 : 2 + width], sums[2 + width : 2 + 2 * width]
+    metal_sums = sums[2 : 2 + width]
     with np.errstate(divide="ignore", invalid="ignore"):
         for index, metal in enumerate(metals):
             out[metal] = np.where(graded[index] > 0, metal_sums[index] / graded[index], np.nan)

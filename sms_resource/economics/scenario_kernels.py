@@ -27,18 +27,19 @@ def linear_sums(
 ) -> None:
     """Sums of quantities over blocks whose value meets its costs, where value is linear in the grades.
 
-    Value of block b in scenario s: x = sum_m worth[m, s] grades[b, m] - sum_p charge[p, s] shapes[b, p], less
-    royalty[s] of what is above zero. It is in where x >= sum_p threshold[p, s] shapes[b, p]; NaN is never in.
+    Value of block b in scenario s: x = sum_m worth[m, s] grades[b, m] - charge[0, s] - charge[1, s] shapes[b, 0], less
+    royalty[s] of what is above zero. It is in where x >= threshold[0, s] + threshold[1, s] shapes[b, 1] +
+    threshold[2, s] shapes[b, 2]; NaN is never in.
 
     Parameters
     ----------
-    grades (n, m), shapes (n, p), quantities (n, q) with dry tonnes first
-    worth (tiles, m, TILE), charge (tiles, p, TILE), royalty (tiles, TILE), threshold (tiles, p, TILE)
+    grades (n, m), quantities (n, q) with dry tonnes first
+    shapes (n, 3): wet tonnes, unit cost of the vessel and unit cost of lifting, each per dry tonne
+    worth (tiles, m, TILE), charge (tiles, 2, TILE), royalty (tiles, TILE), threshold (tiles, 3, TILE)
     sums (RUNS, tiles, q + 1, TILE)
         Filled: the quantities, then dry tonnes x value. Must come as zeros.
     """
     count, metals = grades.shape
-    parts = shapes.shape[1]
     wide = quantities.shape[1]
     for run in prange(RUNS):
         value = np.empty(TILE)
@@ -46,18 +47,18 @@ def linear_sums(
         inside = np.empty(TILE)
         for tile in range(worth.shape[0]):
             for b in range(run * count // RUNS, (run + 1) * count // RUNS):
+                wet, vessel, lifting = shapes[b, 0], shapes[b, 1], shapes[b, 2]
                 for s in range(TILE):
-                    value[s] = 0.0
-                    needed[s] = 0.0
+                    value[s] = -charge[tile, 0, s] - charge[tile, 1, s] * wet
+                    needed[s] = (
+                        threshold[tile, 0, s]
+                        + threshold[tile, 1, s] * vessel
+                        + threshold[tile, 2, s] * lifting
+                    )
                 for m in range(metals):
                     grade = grades[b, m]
                     for s in range(TILE):
                         value[s] += worth[tile, m, s] * grade
-                for p in range(parts):
-                    shape = shapes[b, p]
-                    for s in range(TILE):
-                        value[s] -= charge[tile, p, s] * shape
-                        needed[s] += threshold[tile, p, s] * shape
                 tonnes = quantities[b, 0]
                 for s in range(TILE):
                     x = value[s] - royalty[tile, s] * max(value[s], 0.0)
@@ -92,7 +93,6 @@ def deducted_sums(
     carrier; the product costs product c. share, worth, by_carrier and flat are (tiles, m, TILE); product (tiles, TILE).
     """
     count, metals = grades.shape
-    parts = shapes.shape[1]
     wide = quantities.shape[1]
     for run in prange(RUNS):
         value = np.empty(TILE)
@@ -101,9 +101,14 @@ def deducted_sums(
         for tile in range(worth.shape[0]):
             for b in range(run * count // RUNS, (run + 1) * count // RUNS):
                 mass = grades[b, carrier]
+                wet, vessel, lifting = shapes[b, 0], shapes[b, 1], shapes[b, 2]
                 for s in range(TILE):
-                    value[s] = -product[tile, s] * mass
-                    needed[s] = 0.0
+                    value[s] = -charge[tile, 0, s] - charge[tile, 1, s] * wet - product[tile, s] * mass
+                    needed[s] = (
+                        threshold[tile, 0, s]
+                        + threshold[tile, 1, s] * vessel
+                        + threshold[tile, 2, s] * lifting
+                    )
                 for m in range(metals):
                     grade = grades[b, m]
                     for s in range(TILE):
@@ -112,11 +117,6 @@ def deducted_sums(
                         least = paid if paid < other else other
                         # written so that a missing grade stays missing
                         value[s] += 0.0 if least < 0.0 else least
-                for p in range(parts):
-                    shape = shapes[b, p]
-                    for s in range(TILE):
-                        value[s] -= charge[tile, p, s] * shape
-                        needed[s] += threshold[tile, p, s] * shape
                 tonnes = quantities[b, 0]
                 for s in range(TILE):
                     x = value[s] - royalty[tile, s] * max(value[s], 0.0)

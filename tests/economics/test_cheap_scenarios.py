@@ -145,16 +145,16 @@ def test_results_do_not_depend_on_threads() -> None:
 @pytest.mark.parametrize("deducted", [False, True])
 def test_kernels_equal_their_plain_twins(deducted: bool) -> None:
     rng = np.random.default_rng(2)
-    n, m, p, q, tiles = 137, 3, 4, 5, 2
+    n, m, q, tiles = 137, 3, 5, 2
     grades, shapes, quantities = (
         rng.lognormal(size=(n, m)),
-        rng.uniform(1, 2, (n, p)),
+        rng.uniform(1, 2, (n, 3)),
         rng.uniform(1, 9, (n, q)),
     )
     grades[::11, 1] = np.nan
     by_metal = [rng.uniform(1, 50, (tiles, m, TILE)) for _ in range(4)]
     product, royalty = rng.uniform(0, 2, (tiles, TILE)), rng.uniform(0, 0.2, (tiles, TILE))
-    charge, threshold = rng.uniform(0, 5, (tiles, p, TILE)), rng.uniform(0, 30, (tiles, p, TILE))
+    charge, threshold = rng.uniform(0, 5, (tiles, 2, TILE)), rng.uniform(0, 30, (tiles, 3, TILE))
     sums = np.zeros((RUNS, tiles, q + 1, TILE))
     share, worth, by_carrier, flat = by_metal
     if deducted:
@@ -180,10 +180,11 @@ def test_kernels_equal_their_plain_twins(deducted: bool) -> None:
     else:
         linear_sums(grades, shapes, quantities, worth, charge, royalty, threshold, sums)
         value = np.einsum("tms,nm->nts", worth, grades)
-    value = value - np.einsum("tps,np->nts", charge, shapes)
+    value = value - charge[:, 0] - charge[:, 1] * shapes[:, 0, None, None]
     value = value - royalty * np.maximum(value, 0.0)
     with np.errstate(invalid="ignore"):
-        taken = value >= np.einsum("tps,np->nts", threshold, shapes)
+        needed = np.einsum("tps,np->nts", threshold[:, 1:], shapes[:, 1:]) + threshold[:, 0]
+        taken = value >= needed
     want = np.einsum("nts,nq->tqs", taken.astype(float), quantities)
     money = (np.where(taken, value, 0.0) * quantities[:, 0, None, None]).sum(axis=0)
     np.testing.assert_allclose(sums.sum(axis=0)[:, :q], want, rtol=1e-12)
@@ -212,4 +213,5 @@ def test_a_thousand_scenarios_on_a_million_blocks(capsys: pytest.CaptureFixture[
         with capsys.disabled():
             print(f"\n1000 scenarios, 1 000 000 blocks, {name}: {took:.1f} s wall, {used:.1f} s of processor")
         assert table.dry_tonnes.notna().all()
-        assert took < 10.0
+        # processor time: the wall clock of a machine of one's own is never longer, that of a shared one is chance
+        assert used < 10.0
