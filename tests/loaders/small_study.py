@@ -45,53 +45,126 @@ def place(i: int) -> tuple[float, float]:
 
 def tables() -> dict[str, list[Row]]:
     """Rows of every table, as they stand in the files."""
-    out: dict[str, list[Row]] = {role: [] for role in (
-        "collars", "surveys", "runs", "lithology", "assays", "densities", "surface_samples", "dredges", "laboratory",
-        "base_points",
-    )}  # fmt: skip
+    out: dict[str, list[Row]] = {
+        role: []
+        for role in (
+            "collars",
+            "surveys",
+            "runs",
+            "lithology",
+            "assays",
+            "densities",
+            "surface_samples",
+            "dredges",
+            "laboratory",
+            "base_points",
+        )
+    }
     for i, (hole, length) in enumerate(zip(HOLES, LENGTHS)):
         x, y = place(i)
         out["collars"].append(
-            dict(hole_id=hole, easting=x, northing=y, elevation=round(seafloor_at(x, y), 3), length_m=length,
-                 ended_in="sulphide" if i % 3 == 0 else "host", position_method="LBL", position_sigma_m=1.0)
-        )  # fmt: skip
+            {
+                "hole_id": hole,
+                "easting": x,
+                "northing": y,
+                "elevation": round(seafloor_at(x, y), 3),
+                "length_m": length,
+                "ended_in": "sulphide" if i % 3 == 0 else "host",
+                "position_method": "LBL",
+                "position_sigma_m": 1.0,
+            }
+        )
         for depth in (0, length):
-            out["surveys"].append(dict(hole_id=hole, depth_m=depth, azimuth=30, dip=-88 + depth * 0.1))
+            out["surveys"].append(
+                {"hole_id": hole, "depth_m": depth, "azimuth": 30, "dip": -88 + depth * 0.1}
+            )
         for k in range(length):
             out["runs"].append(
-                dict(hole_id=hole, from_m=k, to_m=k + 1, recovered_length_m=0.6 + 0.05 * (k % 4))
+                {"hole_id": hole, "from_m": k, "to_m": k + 1, "recovered_length_m": 0.6 + 0.05 * (k % 4)}
             )
             out["assays"].append(
-                dict(hole_id=hole, sample_id=f"{hole}-{k}", from_m=k, to_m=k + 1, method="laboratory",
-                     cu_pct=round(2 + 0.3 * ((i + k) % 5), 2), zn_pct=round(1 + 0.4 * ((i * k) % 3), 2),
-                     au_gpt=1.5 + 0.25 * (k % 3), ag_gpt=20 + 3 * (i % 4))
-            )  # fmt: skip
-        out["lithology"].append(dict(hole_id=hole, from_m=0, to_m=length - 1, code="MS"))
-        out["lithology"].append(dict(hole_id=hole, from_m=length - 1, to_m=length, code="FR"))
+                {
+                    "hole_id": hole,
+                    "sample_id": f"{hole}-{k}",
+                    "from_m": k,
+                    "to_m": k + 1,
+                    "method": "laboratory",
+                    "cu_pct": round(2 + 0.3 * ((i + k) % 5), 2),
+                    "zn_pct": round(1 + 0.4 * ((i * k) % 3), 2),
+                    "au_gpt": 1.5 + 0.25 * (k % 3),
+                    "ag_gpt": 20 + 3 * (i % 4),
+                }
+            )
+        out["lithology"].append({"hole_id": hole, "from_m": 0, "to_m": length - 1, "code": "MS"})
+        out["lithology"].append({"hole_id": hole, "from_m": length - 1, "to_m": length, "code": "FR"})
         out["densities"].append(
-            dict(hole_id=hole, sample_id=f"D{i}", from_m=1, to_m=1.2, wet_density_tpm3=3.3, dry_density_tpm3=3.1,
-                 grain_density_tpm3=3.9)
-        )  # fmt: skip
+            {
+                "hole_id": hole,
+                "sample_id": f"D{i}",
+                "from_m": 1,
+                "to_m": 1.2,
+                "wet_density_tpm3": 3.3,
+                "dry_density_tpm3": 3.1,
+                "grain_density_tpm3": 3.9,
+            }
+        )
     for i, kind in enumerate(("grab", "chimney", "push core", "gravity core", "grab", "chimney")):
         x, y = WEST + 50.0 + 10 * i, SOUTH + 60.0
         out["surface_samples"].append(
-            dict(sample_id=f"S{i}", sample_type=kind, easting=x, northing=y, elevation=round(seafloor_at(x, y), 2),
-                 position_sigma_m=2.0, method="laboratory", cu_pct=5.0, zn_pct=9.0, au_gpt=4.0, ag_gpt=90.0)
-        )  # fmt: skip
+            {
+                "sample_id": f"S{i}",
+                "sample_type": kind,
+                "easting": x,
+                "northing": y,
+                "elevation": round(seafloor_at(x, y), 2),
+                "position_sigma_m": 2.0,
+                "method": "laboratory",
+                "cu_pct": 5.0,
+                "zn_pct": 9.0,
+                "au_gpt": 4.0,
+                "ag_gpt": 90.0,
+            }
+        )
     out["dredges"].append(
-        dict(dredge_id="DR1", start_easting=WEST + 30, start_northing=SOUTH + 30, end_easting=WEST + 130,
-             end_northing=SOUTH + 90, start_elevation=-1599, end_elevation=-1596, method="laboratory", cu_pct=3.0,
-             zn_pct=4.0, au_gpt=2.0, ag_gpt=40.0)
-    )  # fmt: skip
-    lab = [("reference", "", "RM1", 2.0, 2.05, 0.05), ("blank", "", "QZ", 0.01, 0.0, 0.0),
-           ("duplicate", "H001-0", "", 2.1, "", ""), ("check", "H001-1", "", 2.2, "", "")]  # fmt: skip
+        {
+            "dredge_id": "DR1",
+            "start_easting": WEST + 30,
+            "start_northing": SOUTH + 30,
+            "end_easting": WEST + 130,
+            "end_northing": SOUTH + 90,
+            "start_elevation": -1599,
+            "end_elevation": -1596,
+            "method": "laboratory",
+            "cu_pct": 3.0,
+            "zn_pct": 4.0,
+            "au_gpt": 2.0,
+            "ag_gpt": 40.0,
+        }
+    )
+    lab = [
+        ("reference", "", "RM1", 2.0, 2.05, 0.05),
+        ("blank", "", "QZ", 0.01, 0.0, 0.0),
+        ("duplicate", "H001-0", "", 2.1, "", ""),
+        ("check", "H001-1", "", 2.2, "", ""),
+    ]
     for i, (kind, original, material, value, expected, sd) in enumerate(lab):
         out["laboratory"].append(
-            dict(kind=kind, batch="B1", sequence=i + 1, sample_id=f"L{i}", original_sample_id=original,
-                 material=material, stage="pulp" if original else "", element="Cu", value=value, unit="%",
-                 expected=expected, expected_sd=sd)
-        )  # fmt: skip
-    out["base_points"] = [dict(easting=WEST + 70, northing=SOUTH + 70, elevation=-1620.0)]
+            {
+                "kind": kind,
+                "batch": "B1",
+                "sequence": i + 1,
+                "sample_id": f"L{i}",
+                "original_sample_id": original,
+                "material": material,
+                "stage": "pulp" if original else "",
+                "element": "Cu",
+                "value": value,
+                "unit": "%",
+                "expected": expected,
+                "expected_sd": sd,
+            }
+        )
+    out["base_points"] = [{"easting": WEST + 70, "northing": SOUTH + 70, "elevation": -1620.0}]
     return out
 
 
@@ -166,9 +239,16 @@ class Study:
         values = seafloor_at(x, y).astype("float32")  # type: ignore[attr-defined]
         change = self.grid.get("change")
         values = change(values) if change else values
-        profile = dict(driver="GTiff", width=nx, height=ny, count=1, dtype="float32", crs=self.grid.get("crs", CRS),
-                       transform=self.grid.get("transform", from_origin(WEST, SOUTH + ny, 1, 1)),
-                       nodata=self.grid.get("nodata", -9999.0))  # fmt: skip
+        profile = {
+            "driver": "GTiff",
+            "width": nx,
+            "height": ny,
+            "count": 1,
+            "dtype": "float32",
+            "crs": self.grid.get("crs", CRS),
+            "transform": self.grid.get("transform", from_origin(WEST, SOUTH + ny, 1, 1)),
+            "nodata": self.grid.get("nodata", -9999.0),
+        }
         with rasterio.open(self.folder / "bathymetry.tif", "w", **profile) as data:
             data.write(values, 1)
 

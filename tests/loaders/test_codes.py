@@ -17,9 +17,9 @@ def emitted() -> set[str]:
         if path.name == "codes.py":
             continue
         for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
-            if isinstance(node, ast.Constant) and isinstance(node.value, str):
-                if re.fullmatch(r"[a-z]+(-[a-z0-9]+)+", node.value):
-                    found.add(node.value)
+            text = node.value if isinstance(node, ast.Constant) and isinstance(node.value, str) else ""
+            if re.fullmatch(r"[a-z]+(-[a-z0-9]+)+", text):
+                found.add(text)
     return (found - ENCODINGS) | COMPOSED
 
 
