@@ -28,8 +28,9 @@ class Lattice:
         lowest = tuple(int(c.min()) - 1 if len(c) else 0 for c in columns)
         shape = tuple(int(c.max()) - low + 2 if len(c) else 1 for c, low in zip(columns, lowest))
         index = tuple(c - low for c, low in zip(columns, lowest))
-        flat = np.ravel_multi_index(index, shape) if len(frame) else np.empty(0, dtype=np.intp)
-        if len(np.unique(flat)) != len(flat):
+        places = np.zeros(shape, dtype=bool)
+        places[index] = True
+        if np.count_nonzero(places) != len(frame):
             raise ValueError("two blocks share the same i, j, k")
         return cls(index, shape, lowest)  # type: ignore[arg-type]
 

@@ -70,15 +70,16 @@ def full_benches(
 def _precedence(parts: Integers, occupied: Mask, shut: Mask, total: int) -> tuple[Integers, Mask]:
     """Which part needs which other above it, and which lie in or under a block that may not be touched."""
     barred = np.zeros(total + 1, dtype=bool)
-    barred[np.unique(parts[shut])] = True
+    barred[parts[shut]] = True
     above = np.zeros(parts.shape[1:], dtype=np.int64)
     closed = np.zeros(parts.shape[1:], dtype=bool)
     found = [np.empty((0, 2), dtype=np.int64)]
     for level in range(len(parts) - 1, -1, -1):
         here = parts[level]
         both = (here > 0) & (above > 0)
-        found.append(np.unique(np.stack([here[both], above[both]], axis=1), axis=0))
-        barred[np.unique(here[closed])] = True
+        coded = np.unique(here[both] * (total + 1) + above[both])
+        found.append(np.stack(np.divmod(coded, total + 1), axis=1))
+        barred[here[closed]] = True
         closed |= shut[level]
         above = np.where(occupied[level], here, above)
     barred[0] = True

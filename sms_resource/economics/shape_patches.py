@@ -90,17 +90,18 @@ def _fill(
     gaps = ndimage.binary_fill_holes(plan > 0) & (plan == 0)
     index = np.full(plan.shape, -1, dtype=np.int64)
     index[columns] = np.arange(len(columns[0]))
-    holes, total = ndimage.label(gaps)
-    for hole in range(1, total + 1):
-        inside = holes == hole
-        ring = ndimage.binary_dilation(inside, np.ones((3, 3))) & (plan > 0)
-        cells = index[inside]
+    holes, _ = ndimage.label(gaps)
+    for hole, box in enumerate(ndimage.find_objects(holes), start=1):
+        near = tuple(slice(side.start - 1, side.stop + 1) for side in box)  # a gap never lies on the border
+        inside = holes[near] == hole
+        ring = ndimage.binary_dilation(inside, np.ones((3, 3))) & (plan[near] > 0)
+        cells = index[near][inside]
         if not ring.any() or (cells < 0).any() or (reached[cells] == 0).any():
             continue  # rock outside the body, or a zone that may not be touched: nothing to take
-        wanted = np.minimum(int(plan[ring].min()), reached[cells])
-        owner = int(labels[ring][0])
+        wanted = np.minimum(int(plan[near][ring].min()), reached[cells])
+        owner = int(labels[near][ring][0])
         gain = float(running[cells, wanted - 1].sum())
         if worth[owner] + gain > 0:
             worth[owner] += gain
-            plan[inside] = wanted
-            labels[inside] = owner
+            plan[near][inside] = wanted
+            labels[near][inside] = owner

@@ -131,19 +131,21 @@ def mineable_shapes(
     sums = _Sums(frame, columns, metals, alone, value, dry_tonnes, wet_tonnes)
     rows = []
     for name, mask in zip(METHODS, (alone, patches, benches)):
-        rows.append({"method": name, **sums.of(mask), "left_dry_tonnes": float(dry[alone & ~mask].sum())})
-    patch_rows = [
-        {
-            "patch": number,
-            "area_m2": cell * _columns_in(frame, patch_number == number),
-            **sums.of(patch_number == number),
-        }
-        for number in range(1, int(patch_number.max(initial=0)) + 1)
-    ]
+        rows.append(
+            {
+                "method": name,
+                **sums.of(np.flatnonzero(mask)),
+                "left_dry_tonnes": float(dry[alone & ~mask].sum()),
+            }
+        )
+    patch_rows = []
+    for number, held in enumerate(_members(patch_number), start=1):
+        area = cell * len(frame.iloc[held][["i", "j"]].drop_duplicates())
+        patch_rows.append({"patch": number, "area_m2": area, **sums.of(held)})
     bench_rows = []
-    for number, (bench, area, taken) in enumerate(parts, start=1):
-        held = sums.of(bench_number == number)
-        bench_rows.append({"part": number, "bench": bench, "area_m2": area, "taken": taken, **held})
+    for number, held in enumerate(_members(bench_number), start=1):
+        bench, area, taken = parts[number - 1]
+        bench_rows.append({"part": number, "bench": bench, "area_m2": area, "taken": taken, **sums.of(held)})
     bench_number = np.where(benches, bench_number, 0)
     return MineableShape(
         patches, benches, patch_number, bench_number,
@@ -209,27 +211,26 @@ class _Sums:
         self.grades[columns[0]] = value
         self.metals, self.above = metals, alone
 
-    def of(self, mask: Mask) -> dict[str, float]:
-        dry = float(self.dry[mask].sum())
-        out: dict[str, float] = {
-            "blocks": int(mask.sum()),
-            "dry_tonnes": dry,
-            "wet_tonnes": float(self.wet[mask].sum()),
-        }
-        for column, grade in self.grades.items():
-            known = mask & ~np.isnan(grade)
-            weight = float(self.dry[known].sum())
-            out[column] = float((self.dry[known] * grade[known]).sum()) / weight if weight > 0 else np.nan
+    def of(self, rows: NDArray[np.intp]) -> dict[str, float]:
+        dry, wet = self.dry[rows], self.wet[rows]
+        total = float(dry.sum())
+        out: dict[str, float] = {"blocks": len(rows), "dry_tonnes": total, "wet_tonnes": float(wet.sum())}
+        for column, grades in self.grades.items():
+            grade = grades[rows]
+            weight = float(dry[~np.isnan(grade)].sum())
+            out[column] = float(np.nansum(dry * grade)) / weight if weight > 0 else np.nan
         for metal in self.metals:
-            grade = np.nan_to_num(self.grades[metal][mask])
-            tonnes = float((contained_tonnes(1.0, 1.0, metal) * self.dry[mask]) @ grade)
+            tonnes = float(np.nansum(contained_tonnes(1.0, 1.0, metal) * dry * self.grades[metal][rows]))
             out.update({name: tonnes * factor for name, factor in content_columns(metal).items()})
-        below = mask & ~self.above
-        out["below_blocks"] = int(below.sum())
-        out["below_dry_tonnes"] = float(self.dry[below].sum())
-        out["below_share"] = out["below_dry_tonnes"] / dry if dry > 0 else np.nan
+        below = dry[~self.above[rows]]
+        out["below_blocks"] = len(below)
+        out["below_dry_tonnes"] = float(below.sum())
+        out["below_share"] = out["below_dry_tonnes"] / total if total > 0 else np.nan
         return out
 
 
-def _columns_in(frame: pd.DataFrame, mask: Mask) -> int:
-    return len(frame.loc[mask, ["i", "j"]].drop_duplicates())
+def _members(number: NDArray[np.int64]) -> list[NDArray[np.intp]]:
+    """Rows of each numbered part, from 1 up."""
+    order = np.argsort(number, kind="stable")
+    counts = np.bincount(number)
+    return np.split(order, np.cumsum(counts))[1:-1] if len(number) else []
