@@ -38,7 +38,7 @@ _HOME: dict[str, str] = {
     "experimental_variograms": "experimental",
     "PairRequest": "pairs",
     "Direction": "directions",
-    "variogram_map": "variogram_map",
+    "variogram_map": "plane_map",
     "fit_variogram": "fit",
     "VariogramFit": "fit",
     "FitSettings": "fit_settings",
@@ -48,7 +48,7 @@ _HOME: dict[str, str] = {
     "NormalScores": "transforms",
     "back_transform_model": "back_transform",
     "swath": "swaths",
-    "swaths": "swaths",
+    "swath_table": "swaths",
     "change_of_support": "support",
     "lognormal_support": "support",
     "ChangeOfSupport": "support",
@@ -57,8 +57,8 @@ _HOME: dict[str, str] = {
     "block_variance_check": "validation",
     "mean_covariance": "validation",
     "compare_estimators": "validation",
-    "validation_table": "validation_table",
-    "validation_findings": "validation_table",
+    "validation_table": "verdicts",
+    "validation_findings": "verdicts",
 }
 
 __all__ = [

@@ -205,6 +205,7 @@ def _joint_settings(
         plane = ((1.5 if plan.nugget_from == "joint" else 0.3) * low, 2.0 * high)
     elif minor_ratio is not None:
         plane = (upright[0] * ratio, upright[1] * ratio)
+        fixed = tuple(row if row[2] is None or row[0] else (ratio * row[2], row[1], row[2]) for row in fixed)
     level = settings.continuity == "level"
     return FitSettings(
         shapes=settings.shapes,

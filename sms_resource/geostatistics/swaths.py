@@ -151,7 +151,7 @@ def swath(
     return pd.DataFrame(table)
 
 
-def swaths(
+def swath_table(
     frame_samples: pd.DataFrame,
     frame_blocks: pd.DataFrame,
     columns: Sequence[str],

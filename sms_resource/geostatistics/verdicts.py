@@ -32,7 +32,7 @@ def validation_table(
     means : DataFrame, optional
         ``domain metal block_mean declustered_mean`` and optionally ``sample_mean nearest_mean sample_count``.
     swaths : DataFrame, optional
-        From :func:`swath` or :func:`swaths`; a column ``domain`` takes the place of ``swath_domain``.
+        From :func:`swath` or :func:`swath_table`; a column ``domain`` takes the place of ``swath_domain``.
     block_variance : mapping, optional
         (domain, metal) to the figures of :func:`block_variance_check`.
     estimators : DataFrame, optional
