@@ -251,7 +251,7 @@ def test_killed_at_any_moment_the_cache_is_sound(tmp_path: pathlib.Path) -> None
     rng = np.random.default_rng(5)
     cache = StageCache(tmp_path / "cache")
     whole = 0
-    for turn in range(8):
+    for turn in range(6):
         writers = [start(cache.folder, first, 10**9) for first in (turn, turn + 5)]
         time.sleep(float(rng.uniform(0.0, 0.08)))
         for writer in writers:

@@ -11,6 +11,7 @@ from sms_resource.classification.criteria import (
 from sms_resource.classification.exploration import ExplorationTarget, exploration_target
 from sms_resource.classification.overrides import ClassOverride
 from sms_resource.classification.proposal import ClassProposal, propose_classes
+from sms_resource.classification.reach import holes_in_reach
 from sms_resource.classification.smoothing import connected_volumes
 
 __all__ = [
@@ -25,5 +26,6 @@ __all__ = [
     "Smoothing",
     "connected_volumes",
     "exploration_target",
+    "holes_in_reach",
     "propose_classes",
 ]

@@ -133,7 +133,7 @@ def beside_change_of_support(
     table : DataFrame
         From :func:`grade_tonnage`, cut on ``metal``.
     curve : DataFrame
-        cutoff, proportion (share of tonnes above) and mean_above (grade above), in the unit of ``metal``.
+        cutoff, proportion (share of tonnes at or above) and grade (mean above), in the unit of ``metal``.
 
     Returns
     -------
@@ -165,7 +165,7 @@ def beside_change_of_support(
             "block_dry_tonnes": block,
             "block_grade": whole[metal].to_numpy(dtype=float),
             "support_dry_tonnes": tonnes,
-            "support_grade": at("mean_above"),
+            "support_grade": at("grade"),
             "tonnes_difference_pct": difference,
         }
     )

@@ -190,7 +190,7 @@ def test_change_of_support_stands_beside_the_blocks() -> None:
     # points above 5 at m 5, CV 1.2: proportion .318382, metal 3.408090
     assert proportion[2] == pytest.approx(0.318382, abs=1e-6)
     assert metal[2] == pytest.approx(3.408090, abs=1e-6)
-    curve = pd.DataFrame({"cutoff": cutoffs, "proportion": proportion, "mean_above": metal / proportion})
+    curve = pd.DataFrame({"cutoff": cutoffs, "proportion": proportion, "grade": metal / proportion})
     beside = beside_change_of_support(table, curve, metal="cu_pct")
     np.testing.assert_allclose(beside.tonnes_difference_pct, 0.0, atol=0.01)
     np.testing.assert_allclose(beside.block_grade, beside.support_grade, rtol=2e-4)

@@ -145,7 +145,7 @@ def test_columns_stop_at_the_best_depth(seed: int) -> None:
     assert gain(frame, shape.patches) == pytest.approx(want, abs=1e-6)
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=25, deadline=None)
 @given(seed=st.integers(0, 2**31), least=st.sampled_from([0.0, 60.0]), levels=st.integers(1, 2))
 def test_what_holds_for_every_shape(seed: int, least: float, levels: int) -> None:
     frame = random_blocks(seed, 5, 4, 4)
