@@ -15,7 +15,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
-from sms_resource.loaders.places import file_of, header_of, listed, report_rows, spans
+from sms_resource.loaders.places import counted, file_of, header_of, in_rows, listed, report_rows
 from sms_resource.loaders.settings import CheckSettings
 from sms_resource.loaders.tables import BELOW_DETECTION, BLANK, MEASURED, OVER_LIMIT, LoadedData
 from sms_resource.units import ELEMENTS, column_element, element_column, element_label, unit_label
@@ -182,8 +182,8 @@ def _limits(
             rows = frame["source_row"].to_numpy()[high]
             findings.warning(
                 "detection-limit-high",
-                f"{int(high.sum())} results are below a detection limit of up to {np.nanmax(limit[high]):g} "
-                f"{unit_label(column)}, above the median of the measured ones (rows {spans(rows)}).",
+                f"{counted(int(high.sum()), 'result')} below a detection limit of up to {np.nanmax(limit[high]):g} "
+                f"{unit_label(column)}, above the median of the measured ones ({in_rows(rows)}).",
                 "Check the unit of the limits.",
                 file=file,
                 row=int(rows[0]),
@@ -202,7 +202,7 @@ def _empty_rows(
         rows = frame["source_row"].to_numpy()[empty]
         findings.note(
             "sample-without-grades",
-            f"{int(empty.sum())} samples have no grade at all; they stay blank (rows {spans(rows)}).",
+            f"{counted(int(empty.sum()), 'sample')} without any grade, left blank ({in_rows(rows)}).",
             file=file,
             row=int(rows[0]),
         )
@@ -215,7 +215,8 @@ def _methods(frame: pd.DataFrame, file: str | None, findings: Findings) -> None:
         at = (~methods.isin(["laboratory", ""])).to_numpy()
         findings.note(
             "method-other",
-            f"{int(at.sum())} samples were measured by {listed(other)}; only the methods that the study accepts are used.",
+            f"{counted(int(at.sum()), 'sample')} measured by {listed(other)}; "
+            f"only the methods that the study accepts are used.",
             file=file,
             row=int(frame["source_row"].to_numpy()[at][0]),
             column=header_of(frame, "method"),

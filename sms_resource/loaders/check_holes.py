@@ -8,7 +8,15 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.findings import Findings
-from sms_resource.loaders.places import file_of, header_of, listed, not_reported, report_rows, spans
+from sms_resource.loaders.places import (
+    counted,
+    file_of,
+    header_of,
+    in_rows,
+    listed,
+    not_reported,
+    report_rows,
+)
 from sms_resource.loaders.settings import CheckSettings
 from sms_resource.loaders.tables import LoadedData
 
@@ -50,7 +58,7 @@ def check_collars(data: LoadedData, settings: CheckSettings, findings: Findings)
     if unknown.any():
         findings.note(
             "hole-length-missing",
-            f"{int(unknown.sum())} holes have no length, so intervals past their end cannot be found: "
+            f"{counted(int(unknown.sum()), 'hole')} without a length, so intervals past their end cannot be found: "
             f"{listed(names[unknown])}.",
             "Add the drilled length.",
             file=file,
@@ -81,7 +89,7 @@ def _ends(collars: pd.DataFrame, file: str | None, findings: Findings) -> None:
         rows = collars["source_row"].to_numpy()[unknown]
         findings.note(
             "ended-unknown",
-            f"Of {int(unknown.sum())} holes it is not known how they ended: "
+            f"Of {counted(int(unknown.sum()), 'hole')} it is not known how they ended: "
             f"{listed(collars['hole_id'].to_numpy(dtype=object)[unknown])}.",
             "State ended_in (sulphide, host, lost): it decides where the base may lie.",
             file=file,
@@ -97,7 +105,8 @@ def _holes_without(data: LoadedData, role: str, findings: Findings) -> None:
     if without.any():
         findings.warning(
             f"hole-without-{role}",
-            f"{int(without.sum())} holes have no {role}: {listed(collars['hole_id'].to_numpy(dtype=object)[without])}.",
+            f"{counted(int(without.sum()), 'hole')} without {role}: "
+            f"{listed(collars['hole_id'].to_numpy(dtype=object)[without])}.",
             "Check that none was forgotten; a hole without recovery stays, with its runs at 0 %.",
             file=file_of(collars, data.files.get("collars")),
             row=int(collars["source_row"].to_numpy()[without][0]),
@@ -146,7 +155,7 @@ def _angles(frame: pd.DataFrame, file: str | None, findings: Findings, needed: b
     if up.any() and up.sum() == given.sum() and up.sum() > 1:
         findings.error(
             "dip-positive",
-            f"All {int(up.sum())} dips are positive, which means upwards (rows {spans(rows[up])}).",
+            f"All {int(up.sum())} dips are positive, which means upwards ({in_rows(rows[up])}).",
             "Write dips downwards as negative numbers: -90 is straight down.",
             row=int(rows[up][0]),
             **where["dip"],
@@ -290,8 +299,8 @@ def _assays_and_runs(data: LoadedData, file: str | None, findings: Findings) -> 
     if len(at):
         findings.warning(
             "assay-without-run",
-            f"{len(at)} samples lie in no run, {int((outside & ~with_runs).sum())} of them in holes without any; "
-            f"their recovery is not known (rows {spans(at)}).",
+            f"{counted(len(at), 'sample')} in no run, {int((outside & ~with_runs).sum())} of them in holes without any; "
+            f"their recovery is not known ({in_rows(at)}).",
             "Log the runs of these depths.",
             file=assay_file,
             row=int(at[0]),
@@ -307,8 +316,8 @@ def _assays_and_runs(data: LoadedData, file: str | None, findings: Findings) -> 
         length = float((runs["to_m"] - runs["from_m"])[empty].sum())
         findings.note(
             "run-lost",
-            f"{int(empty.sum())} runs ({length:.1f} m) recovered nothing; they are kept as lost core "
-            f"(rows {spans(runs['source_row'].to_numpy()[empty])}).",
+            f"{counted(int(empty.sum()), 'run')} ({length:.1f} m) without recovery, kept as lost core "
+            f"({in_rows(runs['source_row'].to_numpy()[empty])}).",
             file=file,
             row=int(runs["source_row"].to_numpy()[empty][0]),
             column=header_of(runs, "recovery_pct"),

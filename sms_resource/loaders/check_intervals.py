@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from sms_resource.findings import Findings, Severity
 from sms_resource.loaders.headers import canonical_text
-from sms_resource.loaders.places import file_of, header_of, not_reported, report_rows, spans
+from sms_resource.loaders.places import counted, file_of, header_of, in_rows, not_reported, report_rows
 from sms_resource.loaders.settings import CheckSettings
 from sms_resource.loaders.tables import LoadedData
 
@@ -45,7 +45,7 @@ def _without_collar(frame: pd.DataFrame, collars: pd.DataFrame, file: str | None
     for hole, rows in groups:
         near = alike.get(canonical_text(str(hole)).replace("_", "").lstrip("0"))
         hint = f" The collars have “{near}”." if near else ""
-        messages.append(f"Hole “{hole}” has {len(rows)} rows here and no collar.{hint}")
+        messages.append(f"Hole “{hole}” has {counted(len(rows), 'row')} here and no collar.{hint}")
     report_rows(
         findings, "error", "collar-missing", [int(rows["source_row"].iloc[0]) for _, rows in groups], messages,
         "Add the collar, or write the hole's name as the collars do.", file=file, column=header_of(frame, "hole_id"),
@@ -163,8 +163,9 @@ def _report_gaps(
     findings.add(
         severity,
         "interval-gap",
-        f"{len(rows)} gaps in {len(set(holes))} holes, {float((start - top).sum()):.2f} m in all; the longest is "
-        f"{start[widest] - top[widest]:.2f} m in hole {holes[widest]}, above row {rows[widest]} (rows {spans(rows)}).",
+        f"{counted(len(rows), 'gap')} in {counted(len(set(holes)), 'hole')}, "
+        f"{float((start - top).sum()):.2f} m in all; the longest is "
+        f"{start[widest] - top[widest]:.2f} m in hole {holes[widest]}, above row {rows[widest]} ({in_rows(rows)}).",
         "Lost core leaves gaps; check that nothing else does.",
         file=file,
         row=int(rows[0]),

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
 from sms_resource.loaders.coordinate_systems import crs_name, parse_crs, same_crs
-from sms_resource.loaders.places import file_of, header_of, listed, not_reported, report_rows
+from sms_resource.loaders.places import counted, file_of, header_of, listed, not_reported, report_rows
 from sms_resource.loaders.settings import CheckSettings
 from sms_resource.loaders.tables import LoadedData
 
@@ -167,24 +167,31 @@ def _collars(data: LoadedData, settings: CheckSettings, findings: Findings) -> N
         [f"Under hole {name} the grid of the seafloor has no value." for name in names[hole_in_grid]],
         "Mend the grid there, or use another one.", file=file, column=column,
     )  # fmt: skip
-    off = np.abs(dz) > _tolerance(data, x, y, settings)
     known = np.isfinite(dz)
-    middle = float(np.median(dz[known])) if known.any() else 0.0
-    if known.sum() > 4 and abs(middle) > settings.collar_tolerance_m:
+    shift = float(np.median(dz[known])) if known.sum() > 4 else 0.0
+    if abs(shift) > settings.collar_tolerance_m:
         findings.warning(
             "collars-shifted",
-            f"Half of the collars are {abs(middle):.2f} m or more {'above' if middle > 0 else 'below'} the seafloor: "
+            f"Half of the collars are {abs(shift):.2f} m or more {'above' if shift > 0 else 'below'} the seafloor: "
             "holes and grid do not share one vertical datum, or a tide was not taken off.",
             'Mend the datum, or set position.collars = "shift_median".',
             file=file,
             column=column,
         )
+    else:
+        shift = 0.0
+    # what all collars have in common has one finding; each hole's own has its own
+    off = np.abs(dz - shift) > _tolerance(data, x, y, settings)
     far = np.abs(dz) > settings.far_below_m
+    common = f", {{:.2f}} m off the common shift of {shift:.2f} m" if shift else ""
     for at, severity in ((off & ~far, "warning"), (far, "error")):
         report_rows(
             findings, "error" if severity == "error" else "warning", "collar-off-seafloor", rows[at],
-            [f"The collar of hole {n} is {abs(v):.2f} m {'above' if v > 0 else 'below'} the seafloor."
-             for n, v in zip(names[at], dz[at])],
+            [
+                f"The collar of hole {n} is {abs(v):.2f} m {'above' if v > 0 else 'below'} the seafloor"
+                f"{common.format(abs(v - shift))}."
+                for n, v in zip(names[at], dz[at])
+            ],
             "Check position and elevation; position.collars offers to shift or to snap.", file=file, column=column,
         )  # fmt: skip
 
@@ -210,7 +217,7 @@ def _twins(collars: pd.DataFrame, file: str | None, settings: CheckSettings, fin
     if twins:
         findings.note(
             "hole-twins",
-            f"{len(twins)} pairs of holes are within {settings.twin_distance_m:g} m: {listed(twins)}.",
+            f"{counted(len(twins), 'pair')} of holes within {settings.twin_distance_m:g} m: {listed(twins)}.",
             "Twins cluster: the means are declustered.",
             file=file,
         )

@@ -6,7 +6,7 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.findings import Findings
-from sms_resource.loaders.places import header_of, report_rows
+from sms_resource.loaders.places import counted, header_of, report_rows
 from sms_resource.loaders.source import TableSource
 from sms_resource.loaders.table import load_table
 from sms_resource.loaders.tables import DrillData, empty_table
@@ -92,7 +92,7 @@ def state_method(frame: pd.DataFrame, findings: Findings) -> pd.DataFrame:
     if silent.any():
         findings.warning(
             "method-not-stated",
-            f"{int(silent.sum())} rows do not say how they were measured; they are taken as laboratory results.",
+            f"{counted(int(silent.sum()), 'row')} without a word on how they were measured, taken as laboratory results.",
             'Add a column "method" (laboratory, handheld), or constants = { method = "laboratory" } in the study.',
             file=frame.attrs.get("file"),
             row=int(frame.loc[silent, "source_row"].iloc[0]),

@@ -11,7 +11,7 @@ from sms_resource.loaders.source import TableSource
 from sms_resource.loaders.table import load_table
 from sms_resource.units import ELEMENTS, element_column, grade_factor, known_unit
 
-_CONVERTED = ("value", "value_limit", "expected", "expected_sd")
+_CONVERTED = ("value", "value_limit", "original_value", "original_value_limit", "expected", "expected_sd")
 
 
 def load_laboratory(source: TableSource) -> tuple[pd.DataFrame, Findings]:
@@ -24,7 +24,8 @@ def load_laboratory(source: TableSource) -> tuple[pd.DataFrame, Findings]:
     -------
     frame : DataFrame
         kind, batch, sequence, sample_id, original_sample_id, material, stage, element, value, value_status,
-        value_limit, expected, expected_sd, source_row. ``sequence`` is the row's place in the file where the
+        value_limit, original_value (with status and limit, where the file repeats the original's result),
+        expected, expected_sd, source_row. ``sequence`` is the row's place in the file where the
         file has none.
     findings : Findings
     """

@@ -26,6 +26,20 @@ def spans(rows: Iterable[int]) -> str:
     return ", ".join(parts)
 
 
+def in_rows(rows: Iterable[int], most: int = 20) -> str:
+    """Where something is, as a phrase: "row 4" or "rows 2-3, 9", shortened beyond ``most`` spans."""
+    text = spans(rows)
+    parts = text.split(", ")
+    if len(parts) > most:
+        text = ", ".join(parts[:most]) + ", ..."
+    return f"row {text}" if text.isdigit() else f"rows {text}"
+
+
+def counted(number: int, noun: str) -> str:
+    """Number and noun: "1 hole", "3 holes"."""
+    return f"{number} {noun}" if number == 1 else f"{number} {noun}s"
+
+
 def listed(names: Iterable[object], most: int = 40) -> str:
     """Names with commas between them; beyond ``most`` the rest is counted."""
     texts = [str(name) for name in names]

@@ -17,7 +17,7 @@ from sms_resource.loaders.parsing import (
     parse_identifiers,
     parse_numbers,
 )
-from sms_resource.loaders.places import mark, report_rows
+from sms_resource.loaders.places import counted, mark, report_rows
 from sms_resource.loaders.reading import RawTable, read_table
 from sms_resource.loaders.source import TableSource
 from sms_resource.loaders.tables import (
@@ -244,7 +244,7 @@ class TableMaker:
         if numeric and column.kind == "identifier":
             self.findings.note(
                 "identifier-number",
-                f"{len(numeric)} names are stored as numbers, so leading zeros may be lost.",
+                f"{counted(len(numeric), 'name')} stored as numbers, so leading zeros may be lost.",
                 "Format the column as text in the source if names have leading zeros.",
                 row=int(rows[numeric[0]]),
                 **where,
@@ -295,12 +295,12 @@ class TableMaker:
             )  # fmt: skip
         coded = np.flatnonzero(parsed.coded)
         if len(coded):
-            from sms_resource.loaders.places import spans
+            from sms_resource.loaders.places import counted, in_rows
 
             self.findings.warning(
                 "missing-code",
-                f"{len(coded)} cells hold a code such as -999 in place of a value; they were read as blank "
-                f"(rows {spans(rows[coded])}).",
+                f"{counted(len(coded), 'cell')} with a code such as -999 in place of a value, read as blank "
+                f"({in_rows(rows[coded])}).",
                 "Leave the cells empty.",
                 file=self.file,
                 row=int(rows[coded[0]]),

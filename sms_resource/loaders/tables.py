@@ -116,6 +116,7 @@ SCHEMAS: Mapping[str, tuple[Column, ...]] = {
         Column("stage", "text"),
         Column("element", "text", required=True),
         Column("value", "result", required=True),
+        Column("original_value", "result"),
         Column("unit", "text"),
         Column("expected"),
         Column("expected_sd"),

@@ -291,7 +291,7 @@ def _even_rows(
         kept.append(row)
         numbers.append(number)
     comma = " A decimal comma in a table separated by commas does this." if delimiter == "," else ""
-    from sms_resource.loaders.places import report_rows
+    from sms_resource.loaders.places import counted, report_rows
 
     report_rows(
         findings, "error", "row-ragged", long, f"The row has more fields than the header's {width}.",
@@ -304,6 +304,9 @@ def _even_rows(
     inner = [number for number in blank if numbers and number < numbers[-1]]
     if inner:
         findings.note(
-            "rows-blank", f"{len(inner)} blank rows inside the table were skipped.", file=name, row=inner[0]
+            "rows-blank",
+            f"{counted(len(inner), 'blank row')} inside the table skipped.",
+            file=name,
+            row=inner[0],
         )
     return kept, numbers

@@ -5,7 +5,9 @@ from __future__ import annotations
 import csv
 from collections.abc import Callable
 from dataclasses import dataclass, field, replace
+from functools import cache
 from pathlib import Path
+from tempfile import TemporaryDirectory
 from typing import Any
 
 import geopandas as gpd
@@ -262,6 +264,7 @@ class Study:
         """Write, read and check everything."""
         self.write()
         found = Findings()
+        sound = not (self.grid or self.after or self.outline is not None or self.exclusions is not None)
         roles = ("collars", "surveys", "runs", "lithology", "assays", "densities")
         drill, more = load_drilling(**{role: self.source(role) for role in roles}, elements=ELEMENTS)
         found.extend(more)
@@ -276,6 +279,22 @@ class Study:
             if source is not None:
                 parts[field_name], more = reader(source)
                 found.extend(more)
+        if sound and self.layer_crs == CRS:
+            space, more = _sound_space()
+        else:
+            space, more = self.load_space()
+        found.extend(more)
+        parts |= space
+        files = {role: self.name(role) for role in self.rows if role not in self.skip}
+        files |= {"bathymetry": "bathymetry.tif", "outline": "outline.gpkg", "exclusions": "exclusions.gpkg"}
+        data = LoadedData(drill=drill, files=files, **parts)
+        found.extend(check_data(data, settings=self.settings))
+        return data, found
+
+    def load_space(self) -> tuple[dict[str, Any], Findings]:
+        """Read the grid and the layers."""
+        parts: dict[str, Any] = {}
+        found = Findings()
         options = {
             key: self.grid[key]
             for key in ("vertical", "band", "declared_crs", "reproject")
@@ -294,11 +313,16 @@ class Study:
             self.folder / "exclusions.gpkg", shown_as="exclusions.gpkg", crs=CRS
         )
         found.extend(more)
-        files = {role: self.name(role) for role in self.rows if role not in self.skip}
-        files |= {"bathymetry": "bathymetry.tif", "outline": "outline.gpkg", "exclusions": "exclusions.gpkg"}
-        data = LoadedData(drill=drill, files=files, **parts)
-        found.extend(check_data(data, settings=self.settings))
-        return data, found
+        return parts, found
+
+
+@cache
+def _sound_space() -> tuple[dict[str, Any], Findings]:
+    """Grid and layers as they are where a case does not touch them: read once."""
+    with TemporaryDirectory() as folder:
+        study = Study(Path(folder))
+        study.write()
+        return study.load_space()
 
 
 def matching(found: Findings, **wanted: Any) -> list[Finding]:
