@@ -7,6 +7,7 @@ flags. A rotated grid has its eastings and northings as two-dimensional auxiliar
 from __future__ import annotations
 
 import json
+import re
 from pathlib import Path
 from typing import Any
 
@@ -35,7 +36,8 @@ MOST_CELLS = 40_000_000
 # What UDUNITS understands, for the units that people read.
 UDUNITS = {"%": "percent", "g/t": "1e-6", "ppm": "1e-6", "t dry": "t", "t wet": "t", "t dry/m3": "t m-3",
            "t wet/m3": "t m-3", "t/m3": "t m-3", "m3": "m3", "m2": "m2", "m": "m", "degree": "degree", "1": "1"}  # fmt: skip
-MOST_WORDS = 30_000
+MOST_WORDS = 30_000  # of 16-bit codes
+MOST_FLAGS = 100
 
 
 def udunit(name: str) -> str:
@@ -81,6 +83,7 @@ def to_xarray(model: BlockModel) -> Any:
         "title": "Estimated block model",
         "comment": "Regular blocks; cells that do not touch the body are missing. Tonnes are dry or wet as their "
         "names say; grades are on dry mass.",
+        "history": "written by sms_resource",  # without a date, so that the same run gives the same bytes
         "block_grid": grid_text(model),
     }
     return dataset
@@ -152,11 +155,14 @@ def _cells(
     cells[where] = codes
     attributes["table_words"] = json.dumps(words, ensure_ascii=True)
     attributes["comment"] = "-2: no block; -1: not stated; others as in table_words"
-    if 0 < len(words) <= 100:
+    if 0 < len(words) <= MOST_FLAGS:
+        meanings = [
+            "no_block",
+            "not_stated",
+            *[re.sub(r"[^A-Za-z0-9._+@-]+", "_", word) or "blank" for word in words],
+        ]
         attributes["flag_values"] = np.arange(-2, len(words), dtype=kind)
-        attributes["flag_meanings"] = " ".join(
-            ["no_block", "not_stated", *["_".join(word.split()) or "blank" for word in words]]
-        )
+        attributes["flag_meanings"] = " ".join(meanings)
     return cells, attributes
 
 
