@@ -33,6 +33,8 @@ class CutOff:
     inside, outside : tuple of str
         Cost items that are inside and that are not.
     text : str
+    domain : str
+        Domain whose recoveries are inside; empty where they are the same everywhere.
     """
 
     kind: str
@@ -42,6 +44,7 @@ class CutOff:
     inside: tuple[str, ...]
     outside: tuple[str, ...]
     text: str
+    domain: str = ""
 
 
 def break_even_grade(
@@ -96,7 +99,7 @@ def cutoffs(
     depth_m, slope_deg : float
         Water depth (m; the reference depth of the costs if not given) and slope where the cut-off shall hold.
     domain : str
-        Domain whose recoveries apply, where they go by domain.
+        Domain whose recoveries apply. Where they go by domain and none is given, each domain has its own grade.
 
     Returns
     -------
@@ -127,18 +130,29 @@ def cutoffs(
         )
         if column is None or findings.has_errors:
             continue
-        grade = _grade_that_pays(terms, column, cost, wet_per_dry, domain)
-        if grade is None:
-            findings.warning(
-                "cutoff-unreachable",
-                f"No grade of {units.element_label(column)} alone pays {terms.currency} {cost:.2f} per dry tonne.",
-                "Check prices, recoveries and costs, or cut on value.",
-                column=column,
-            )
-            continue
-        text = f"{named}. In {units.element_label(column)} alone, other metals bringing nothing: {grade:.4g}."
-        out.append(CutOff(kind, column, grade, cost, inside, outside, text[0].upper() + text[1:]))
+        for name in [domain] if domain else _domains(terms):
+            grade = _grade_that_pays(terms, column, cost, wet_per_dry, name)
+            label, where = units.element_label(column), f" in {name}" if name else ""
+            if grade is None:
+                findings.warning(
+                    "cutoff-unreachable",
+                    f"No grade of {label} alone pays {terms.currency} {cost:.2f} per dry tonne{where}.",
+                    "Check prices, recoveries and costs, or cut on value.",
+                    column=column,
+                )
+                continue
+            text = f"{named}. In {label} alone{where}, other metals bringing nothing: {grade:.4g}."
+            out.append(CutOff(kind, column, grade, cost, inside, outside, text[0].upper() + text[1:], name))
     return out, findings
+
+
+def _domains(terms: SellingTerms) -> list[str]:
+    """Domains that recoveries tell apart; one nameless domain where they do not."""
+    names: dict[str, None] = {}
+    for metal in terms.metals:
+        if metal.recovery is not None:
+            names.update(dict.fromkeys(metal.recovery.by_domain))
+    return list(names) or [""]
 
 
 def _grade_that_pays(

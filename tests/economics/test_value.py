@@ -205,6 +205,23 @@ def test_cutoff_where_recovery_bends_and_where_nothing_pays() -> None:
     assert "cutoff-unreachable" in {f.code for f in findings}
 
 
+def test_cutoffs_by_domain() -> None:
+    halves = Recovery(
+        by_domain={"cap": Recovery(percent=44, basis="t"), "massive": Recovery(percent=88, basis="t")}
+    )
+    terms = SellingTerms((replace(COPPER, recovery=halves), GOLD))
+    costs = CostModel(general_per_dry_tonne=100.0)
+    found, findings = cutoffs(terms, costs, column="cu_pct", wet_per_dry=1.1)
+    assert not findings.has_errors
+    by = {c.domain: c for c in found if c.variable == "cu_pct" and c.kind == "break-even"}
+    # 100 / (22.0462262185 x 3.00 x .95 x recovery)
+    assert by["massive"].value == pytest.approx(100 / (22.0462262185 * 3.0 * 0.95 * 0.88), rel=1e-9)
+    assert by["cap"].value == pytest.approx(2 * by["massive"].value, rel=1e-9)
+    assert "in cap" in by["cap"].text
+    one, _ = cutoffs(terms, costs, column="cu_pct", wet_per_dry=1.1, domain="cap")
+    assert {c.domain for c in one if c.variable == "cu_pct"} == {"cap"}
+
+
 def test_recovery_by_grade_is_straight_between_and_level_beyond() -> None:
     recovery = Recovery(by_grade=((1.0, 50.0), (3.0, 90.0)), basis="b")
     np.testing.assert_allclose(
