@@ -4,32 +4,26 @@ from __future__ import annotations
 
 import math
 from dataclasses import replace
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
-from sms_resource.geostatistics.evidence import Evidence, weighted_variance
 from sms_resource.geostatistics.experimental import ExperimentalVariogram
 from sms_resource.geostatistics.fit import FitStart, fit_variogram
 from sms_resource.geostatistics.fit_settings import FitSettings
 from sms_resource.geostatistics.model import VariogramModel
-from sms_resource.geostatistics.transforms import NormalScores, log_covariance_ratio, raw_covariance_ratio
+from sms_resource.geostatistics.transforms import RawCorrelation
+
+if TYPE_CHECKING:
+    from sms_resource.geostatistics.evidence import Evidence
 
 Array = NDArray[np.float64]
 POINTS = 40
 
 
-def raw_correlation(
-    measure: str, values: Array, weights: Array, log_variance: float, correlation: Array
-) -> Array:
-    """Correlation of the values for a correlation of their normal scores or logs."""
-    if measure == "normal_scores":
-        return raw_covariance_ratio(NormalScores.fit(values, weights), correlation)
-    return log_covariance_ratio(log_variance, correlation)
-
-
 def back_transform_model(
-    model: VariogramModel, measure: str, values: Array, weights: Array, total_sill: float
+    model: VariogramModel, measure: str, total_sill: float, correlation: RawCorrelation | None = None
 ) -> VariogramModel:
     """Model in squared units of the values, from a model of a transformed measure.
 
@@ -38,10 +32,10 @@ def back_transform_model(
     model : VariogramModel
         Of normal scores, logs, a correlogram or pairwise relative differences.
     measure : str
-    values, weights : (n,) float
-        The samples that were transformed.
     total_sill : float
         Total sill of the result, in squared units of the values.
+    correlation : RawCorrelation, optional
+        From the samples that were transformed, for normal scores and logs.
 
     Returns
     -------
@@ -61,17 +55,18 @@ def back_transform_model(
         return model
     if measure in ("correlogram", "pairwise_relative"):
         return model.scaled(total_sill / model.total_sill)
-    log_variance = weighted_variance(np.log(values), weights) if measure == "logs" else 0.0
+    if correlation is None:
+        raise ValueError(f"correlation is needed to turn back a model of {measure}")
     curves = []
     for axis in range(3):
         reach = 1.3 * max(structure.ranges[axis] for structure in model.structures)
         distance = reach * (np.arange(POINTS) + 1.0) / POINTS
         separations = distance[:, None] * model.axes[axis]
         rho = 1.0 - model.variogram(separations) / model.total_sill
-        raw = raw_correlation(measure, values, weights, log_variance, rho)
+        raw = correlation(rho)
         curves.append(_curve(distance, separations, total_sill * (1.0 - raw)))
     above_zero = np.array([1.0 - model.nugget / model.total_sill])
-    nugget = total_sill * float(1.0 - raw_correlation(measure, values, weights, log_variance, above_zero)[0])
+    nugget = total_sill * float(1.0 - correlation(above_zero)[0])
     sills = [structure.sill for structure in model.structures]
     if not sum(sills) > 0.0:
         return model.scaled(total_sill / model.total_sill)
@@ -101,13 +96,20 @@ def back_transform_model(
     return fit.model
 
 
-def raw_model(model: VariogramModel, evidence: Evidence) -> VariogramModel:
-    """Model in squared units of the values, with what the user fixed in its place."""
+def raw_model(model: VariogramModel, evidence: Evidence, variance: float | None = None) -> VariogramModel:
+    """Model in squared units of the values, with what the user fixed in its place.
+
+    ``variance`` is that of the values; by default of all samples.
+    """
     settings = evidence.settings
     if settings.measure == "semivariogram":
         return model
-    total = evidence.variance if isinstance(settings.total_sill, str) else float(settings.total_sill)
-    raw = back_transform_model(model, settings.measure, evidence.values, evidence.weights, total)
+    total = evidence.variance if variance is None else variance
+    if not isinstance(settings.total_sill, str):
+        total = float(settings.total_sill)
+    elif settings.total_sill == "over_pairs" and settings.measure == "normal_scores":
+        total *= model.total_sill / evidence.variance_of_measure
+    raw = back_transform_model(model, settings.measure, total, evidence.raw_correlation)
     nugget = settings.nugget if settings.nugget_share is None else settings.nugget_share * total
     return with_fixed(raw, nugget, settings.sills, settings.ranges)
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Literal
 
 import numpy as np
@@ -13,6 +14,14 @@ from sms_resource.geostatistics.model import rotation_axes
 
 DirectionKind = Literal["omnidirectional", "directional", "plane"]
 KIND_CODES: dict[str, int] = {"omnidirectional": 0, "directional": 1, "plane": 2}
+
+
+@lru_cache(maxsize=256)
+def cached_axes(azimuth: float, plunge: float, tilt: float) -> NDArray[np.float64]:
+    """:func:`rotation_axes`, kept: fits ask for the same three angles thousands of times. Read-only."""
+    axes = rotation_axes(azimuth, plunge, tilt)
+    axes.setflags(write=False)
+    return axes
 
 
 @dataclass(frozen=True)
@@ -89,7 +98,7 @@ class Direction:
     @property
     def axes(self) -> NDArray[np.float64]:
         """Major, semi-major and minor axis as rows of east, north, up."""
-        return rotation_axes(self.azimuth, self.plunge, self.tilt)
+        return cached_axes(self.azimuth, self.plunge, self.tilt)
 
     @property
     def cosine(self) -> float:

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -24,6 +25,7 @@ from sms_resource.geostatistics.pairs import (
     prepare,
     transformed,
 )
+from sms_resource.geostatistics.transforms import RawCorrelation, weighted_skewness, weighted_variance
 from sms_resource.geostatistics.variogram_settings import VariogramSettings
 
 Array = NDArray[np.float64]
@@ -77,6 +79,13 @@ class Evidence:
     prepared: PreparedSamples
     sums: Array
     settings: VariogramSettings
+
+    @cached_property
+    def raw_correlation(self) -> RawCorrelation | None:
+        """Way back from the correlation of normal scores or logs; None for other measures."""
+        if self.settings.measure not in ("normal_scores", "logs"):
+            return None
+        return RawCorrelation(self.settings.measure, self.values, self.weights)
 
     def of(self, role: str) -> ExperimentalVariogram | None:
         """Experimental variogram of a role; None where there is none."""
@@ -215,6 +224,9 @@ def gather_evidence(
     """
     names = np.arange(len(np.asarray(values))) if hole_ids is None else np.asarray(hole_ids)
     xyz, z, names, w = clean_samples(coordinates, values, names, weights)
+    if settings.measure == "auto":
+        skewed = weighted_skewness(z, w) > settings.skewness_for_scores
+        settings = replace(settings, measure="normal_scores" if skewed else "semivariogram")
     spacing, length = sample_spacing(xyz, names)
     hole_spacing, in_line, azimuth, extent = hole_layout(xyz, names)
     roles, requests = _requests(settings, spacing, length, hole_spacing, extent)
@@ -256,10 +268,3 @@ def gather_evidence(
         sums=sums,
         settings=settings,
     )
-
-
-def weighted_variance(values: Array, weights: Array) -> float:
-    """Variance about the weighted mean; rounding of equal values counts as zero."""
-    mean = float(np.average(values, weights=weights))
-    variance = float(np.average((values - mean) ** 2, weights=weights))
-    return variance if variance > 1e-24 * max(1e-300, float(np.max(np.abs(values))) ** 2) else 0.0

@@ -16,6 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from sms_resource.geostatistics import fit_kernels
+from sms_resource.geostatistics.directions import cached_axes
 from sms_resource.geostatistics.experimental import ExperimentalVariogram
 from sms_resource.geostatistics.fit_kernels import (
     FIXED,
@@ -26,7 +27,7 @@ from sms_resource.geostatistics.fit_kernels import (
     SUM_OF_SILLS,
 )
 from sms_resource.geostatistics.fit_settings import FitSettings
-from sms_resource.geostatistics.model import SHAPE_CODES, Structure, VariogramModel, rotation_axes
+from sms_resource.geostatistics.model import SHAPE_CODES, Structure, VariogramModel
 
 Array = NDArray[np.float64]
 AXIS_NAMES = ("major", "semi-major", "minor")
@@ -79,7 +80,7 @@ class _Problem:
         self, variograms: Sequence[ExperimentalVariogram], settings: FitSettings, start: FitStart | None
     ) -> None:
         self.settings = settings
-        axes = rotation_axes(settings.azimuth, settings.plunge, settings.tilt)
+        axes = cached_axes(settings.azimuth, settings.plunge, settings.tilt)
         keep = [
             np.isfinite(v.gamma) & np.isfinite(v.distance) & (v.pairs >= max(1, settings.least_pairs))
             for v in variograms

@@ -159,6 +159,7 @@ def infer_variogram(
     if evidence.variance == 0.0:
         text = f"all {len(evidence.values)} samples have the same value"
         return _nothing(settings, text, len(evidence.values), evidence.hole_count)
+    settings = evidence.settings  # with the measure that "auto" led to
     plan = make_plan(evidence)
     fit = fit_plan(plan, evidence, evidence.variograms, evidence.variance_of_measure)
     shortest = shortest_in_plane(evidence)
@@ -239,7 +240,7 @@ def _nothing(settings: VariogramSettings, text: str, samples: int, holes: int) -
         high=model,
         sample_count=samples,
         hole_count=holes,
-        measure=settings.measure,
+        measure="semivariogram" if settings.measure == "auto" else settings.measure,
         horizontal_from="assumed",
         vertical_from="assumed",
         findings=findings,

@@ -110,7 +110,7 @@ def fit_plan(
     total = _total(settings, evidence, variance)
     roles = dict(zip(evidence.roles, variograms))
     sill = float(total.get("total_sill") or total.get("mean_over_pairs") or variance)
-    nugget, hits, first = _nugget(plan, settings, roles, sill, starts[0])
+    nugget, hits, first = _nugget(plan, evidence, roles, sill, starts[0])
     if not (plan.upright or plan.plane):
         return PlanFit(assumed_model(settings, sill, float(nugget or 0.0)), (), (None, None))
     used = [
@@ -136,21 +136,20 @@ def _total(settings: VariogramSettings, evidence: Evidence, variance: float) -> 
 
 def _nugget(
     plan: Plan,
-    settings: VariogramSettings,
+    evidence: Evidence,
     roles: dict[str, ExperimentalVariogram],
     sill: float,
     start: FitStart | None,
 ) -> tuple[float | None, tuple[str, ...], FitStart | None]:
     """Nugget (None where the joint fit finds it), limits that were hit, and the start for next time."""
+    settings = evidence.settings
     if plan.nugget_from == "user":
-        if settings.nugget is not None:
-            share = (
-                settings.nugget / settings.total_sill if not isinstance(settings.total_sill, str) else None
-            )
-            if settings.measure == "semivariogram" or share is None:
-                return settings.nugget, (), None
-            return share * sill, (), None
-        return float(settings.nugget_share or 0.0) * sill, (), None
+        if settings.nugget is None:
+            return float(settings.nugget_share or 0.0) * sill, (), None
+        if settings.measure == "semivariogram":
+            return settings.nugget, (), None
+        given = settings.total_sill
+        return settings.nugget * sill / (evidence.variance if isinstance(given, str) else given), (), None
     if plan.nugget_from == "assumed":
         return settings.assumed_nugget_share * sill, (), None
     if plan.nugget_from == "joint":

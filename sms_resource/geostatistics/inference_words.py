@@ -11,6 +11,7 @@ from sms_resource.geostatistics.evidence import Evidence, enough_lags
 from sms_resource.geostatistics.experimental import ExperimentalVariogram
 from sms_resource.geostatistics.inference_plan import Plan, fixed_ranges, in_plane
 from sms_resource.geostatistics.model import VariogramModel
+from sms_resource.geostatistics.transforms import weighted_skewness
 from sms_resource.geostatistics.variogram_settings import VariogramSettings
 
 if TYPE_CHECKING:
@@ -64,6 +65,12 @@ def inference_statement(plan: Plan, evidence: Evidence) -> str:
     rule = f"{settings.min_pairs} pairs in at least {settings.min_lags} lags are needed"
     down = evidence.of("down_hole")
     parts = []
+    if settings.measure != "semivariogram":
+        words = settings.measure.replace("_", " ")
+        skewness = weighted_skewness(evidence.values, evidence.weights)
+        parts.append(
+            f"Fitted to {words} (skewness of the values {skewness:.2g}) and turned back to the values."
+        )
     if plan.upright:
         parts.append(f"Down-hole variogram fitted ({samples}; pairs per lag are {_pairs(down)}).")
     elif down is None:

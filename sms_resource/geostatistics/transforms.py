@@ -108,30 +108,6 @@ class NormalScores:
         return coefficients
 
 
-def raw_covariance_ratio(scores: NormalScores, correlation: ArrayLike, order: int = 60) -> Array:
-    """Correlation of the values where their normal scores have a given correlation.
-
-    Parameters
-    ----------
-    scores : NormalScores
-    correlation : array_like
-        Correlation of the scores, 0 to 1.
-    order : int
-        Highest Hermite polynomial; what lies above it counts as one term of the next order.
-
-    Notes
-    -----
-    Cov Z = sum phi_p^2 rho^p for scores that are normal in pairs (Matheron 1976; Journel & Huijbregts 1978).
-    """
-    rho = np.clip(np.asarray(correlation, dtype=float), -1.0, 1.0)
-    if not scores.variance > 0.0:
-        return np.where(rho >= 1.0, 1.0, 0.0)
-    squares = scores.hermite(order)[1:] ** 2 / scores.variance
-    powers = rho[..., None] ** np.arange(1, order + 1)
-    rest = max(0.0, 1.0 - float(squares.sum()))
-    return powers @ squares + rest * rho ** (order + 1)
-
-
 def log_covariance_ratio(log_variance: float, correlation: ArrayLike) -> Array:
     """Correlation of lognormal values where their logs have a given correlation and variance.
 
@@ -143,3 +119,54 @@ def log_covariance_ratio(log_variance: float, correlation: ArrayLike) -> Array:
     if log_variance <= 0.0:
         return rho
     return np.expm1(log_variance * rho) / np.expm1(log_variance)
+
+
+class RawCorrelation:
+    """Correlation of the values where their normal scores or logs have a given correlation.
+
+    Parameters
+    ----------
+    measure : "normal_scores" | "logs"
+    values, weights : (n,) float
+        The samples that were transformed, without NaN.
+    """
+
+    def __init__(self, measure: str, values: Array, weights: Array) -> None:
+        self._log_variance = weighted_variance(np.log(values), weights) if measure == "logs" else 0.0
+        self._squares = None
+        if measure == "normal_scores":
+            self._squares = hermite_shares(NormalScores.fit(values, weights))
+
+    def __call__(self, correlation: ArrayLike) -> Array:
+        """Correlation of the values, of the shape of ``correlation``."""
+        if self._squares is None:
+            return log_covariance_ratio(self._log_variance, correlation)
+        rho = np.clip(np.asarray(correlation, dtype=float), -1.0, 1.0)
+        return rho[..., None] ** np.arange(1, len(self._squares) + 1) @ self._squares
+
+
+def hermite_shares(scores: NormalScores, order: int = 60) -> Array:
+    """Share of the variance that each Hermite polynomial carries, from 1 up; the rest counts as one more.
+
+    Cov Z = sum phi_p^2 rho^p for scores that are normal in pairs (Matheron 1976; Journel & Huijbregts 1978).
+    """
+    if not scores.variance > 0.0:
+        return np.array([1.0])
+    squares = scores.hermite(order)[1:] ** 2 / scores.variance
+    return np.append(squares, max(0.0, 1.0 - float(squares.sum())))
+
+
+def weighted_variance(values: Array, weights: Array) -> float:
+    """Variance about the weighted mean; rounding of equal values counts as zero."""
+    mean = float(np.average(values, weights=weights))
+    variance = float(np.average((values - mean) ** 2, weights=weights))
+    return variance if variance > 1e-24 * max(1e-300, float(np.max(np.abs(values))) ** 2) else 0.0
+
+
+def weighted_skewness(values: Array, weights: Array) -> float:
+    """Coefficient of skewness with weights; zero where the values do not vary."""
+    variance = weighted_variance(values, weights)
+    if variance == 0.0:
+        return 0.0
+    mean = float(np.average(values, weights=weights))
+    return float(np.average((values - mean) ** 3, weights=weights)) / variance**1.5
