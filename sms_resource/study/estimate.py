@@ -104,12 +104,28 @@ class Variograms(Section):
     lag_vertical_m: float | None = key(
         None, "Width of down-hole lags; the composite length if not given.", gt=0
     )
-    least_pairs: int = key(20, "Pairs under which a lag is not fitted.", ge=1)
+    least_pairs: int = key(30, "Pairs under which a lag is not fitted.", ge=1)
     least_composites: int = key(50, "Composites under which no horizontal variogram is inferred.", ge=2)
+    least_holes: int = key(6, "Holes under which no horizontal variogram is inferred.", ge=2)
+    total_sill: Literal["sample_variance", "over_pairs", "free"] = key(
+        "sample_variance", "Total sill: the declustered variance, that with which the model has this variance over all "
+        "pairs, or fitted.", alternatives=("free",),
+    )  # fmt: skip
+    continuity: Literal["level", "directional"] = key(
+        "level", "One range in the plane of major and semi-major axis, or two."
+    )
+    bandwidth_m: float | None = key(
+        None, "Greatest distance of a pair from the plane; the sample spacing if not given.", gt=0
+    )
     azimuth_deg: float = key(0.0, "Azimuth of the major axis.")
     plunge_deg: float = key(0.0, "Plunge of the major axis, positive down.")
     tilt_deg: float = key(0.0, "Rotation about the major axis.")
-    assumed_horizontal_m: float = key(30.0, "Horizontal range assumed where none can be inferred.", gt=0)
+    assumed_ratio: float = key(
+        6.0,
+        "Horizontal over vertical range, assumed where the data cannot tell.",
+        gt=0,
+        alternatives=(3.0, 12.0),
+    )
     assumed_vertical_m: float = key(4.0, "Vertical range assumed where none can be inferred.", gt=0)
     assumed_nugget_share: float = key(0.4, "Nugget share assumed where none can be inferred.", ge=0, le=1)
     intervals: bool = key(True, "Whether the uncertainty of the parameters is found by leaving out holes.")
@@ -121,7 +137,8 @@ class Search(Section):
     """[search]: which samples an estimate may see."""
 
     radii_m: Triple | None = key(
-        None, "Radii of the first pass: major, semi-major, minor; from the variogram ranges if not given."
+        None,
+        "Radii of the first pass: major, semi-major, minor; from the ranges and the hole spacing if not given.",
     )
     range_factor: float = key(1.0, "First radii as a multiple of the ranges, where no radii are given.", gt=0)
     passes: tuple[float, ...] = key((1.0, 2.0), "Factors on the radii, one a pass.", min_length=1)
@@ -150,7 +167,6 @@ class Kriging(Section):
     coincident: Literal["error", "average", "keep_first"] = key(
         "average", "What becomes of samples at the same place.", alternatives=("keep_first",)
     )
-    coincident_within_m: float = key(0.01, "Distance within which samples are at the same place.", ge=0)
     estimator: Literal["ordinary_kriging", "inverse_distance", "nearest"] = key(
         "ordinary_kriging", "Estimator whose grades go into the table of tonnes; the others are shown beside it.",
         alternatives=("inverse_distance", "nearest"),
@@ -180,6 +196,10 @@ class Screens(Section):
 
     slope_max_deg: float | None = key(None, "Steepest seafloor that a machine may stand on.", gt=0, lt=90)
     least_thickness_m: float | None = key(None, "Least thickness of a column.", ge=0)
+    least_thickness_grade: float | None = key(
+        None, "Least thickness times grade of a column, in m times the unit of thickness_grade_of.", ge=0
+    )
+    thickness_grade_of: str = key("cu", "Element of the thickness times grade.")
     least_patch_m2: float | None = key(None, "Least area of a connected patch.", ge=0)
     exclude_status: tuple[str, ...] = key(
         ("active_vent", "set_aside", "preservation"), "Status of zones whose tonnes are excluded."

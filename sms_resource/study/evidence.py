@@ -128,6 +128,9 @@ class Domains(Section):
         "layered", "How domains fill the body: as layers between contact surfaces, or one domain throughout.",
         alternatives=("single",),
     )  # fmt: skip
+    thickness_m: dict[str, float] = key(
+        {}, "Thickness of a layer, such as cap = 1.5, in place of its logged contact."
+    )
     boundaries: Literal["hard", "soft"] = key(
         "hard", "Whether an estimate uses samples of its own domain only (hard) or of all domains (soft).",
         alternatives=("soft",),

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any, Literal
 
-from pydantic import field_validator
+from pydantic import field_validator, model_validator
 
 from sms_resource import units
 from sms_resource.study.base import Section, key
@@ -67,33 +67,85 @@ class Cutoff(Section):
 
 
 class Metal(Section):
-    """What one metal brings."""
+    """What one metal brings. What is left out is not known, and then nothing is guessed."""
 
-    price: float = key(..., "Price in the price unit.", gt=0)
-    price_unit: Literal["usd/t", "usd/lb", "usd/oz", "usd/g", "usd/kg"] = key(..., "Unit of the price.")
-    price_source: str = key("not stated", "Source of the price.", decision=False)
-    price_date: str = key("not stated", "Date of the price.", decision=False)
-    recovery_pct: float | None = key(None, "Metallurgical recovery.", ge=0, le=100)
-    recovery_basis: str = key("not stated", "Basis of the recovery.", decision=False)
-    payable_pct: float | None = key(None, "Share of the recovered metal that is paid.", ge=0, le=100)
-    deduction: float = key(0.0, "Deduction from the recovered grade, in the element's unit.", ge=0)
-    treatment_per_unit: float = key(
-        0.0, "Treatment and refining charge per price unit of payable metal.", ge=0
+    price: float | None = key(None, "Price of the metal.", gt=0)
+    price_unit: Literal["t", "kg", "g", "lb", "oz"] = key(
+        "t", "Mass that the price is for: tonne, kilogram, gram, pound or troy ounce."
     )
+    price_source: str = key("", "Source of the price.", decision=False)
+    price_date: str = key("", "Date or period of the price.", decision=False)
+    recovery_pct: float | None = key(None, "Metallurgical recovery, one number everywhere.", ge=0, le=100)
+    recovery_by_grade: tuple[tuple[float, float], ...] = key(
+        (), "Recovery as points of (grade, recovery in %), in place of one number."
+    )
+    recovery_by_domain: dict[str, float] = key({}, "Recovery in % by domain, in place of one number.")
+    recovery_basis: str = key("", "What the recovery rests on.", decision=False)
+    payable_pct: float | None = key(
+        None, "Share of the recovered metal that is paid; 0 if none.", ge=0, le=100
+    )
+    deduction: float = key(0.0, "Taken off before payment, in the element's unit.", ge=0)
+    deduction_kind: Literal["before", "minimum"] = key(
+        "before",
+        "Whether the share is paid on what is left after the deduction, or the lesser of both is paid.",
+    )
+    refining_charge: float = key(0.0, "Charge per price unit of payable metal.", ge=0)
+    sold_statement: str = key(
+        "", "Who says, and on what, that the metal can be recovered and sold.", decision=False
+    )
+    equivalent_recovery_pct: float | None = key(
+        None, "Single recovery for a metal equivalent, where recovery varies with grade.", ge=0, le=100
+    )
+
+    @model_validator(mode="after")
+    def _one_recovery(self) -> Metal:
+        ways = (self.recovery_pct is not None) + bool(self.recovery_by_grade) + bool(self.recovery_by_domain)
+        if ways > 1:
+            raise ValueError("give one of recovery_pct, recovery_by_grade and recovery_by_domain")
+        return self
+
+
+class ProductSection(Section):
+    """A product that the metals are sold in, such as a concentrate."""
+
+    carrier: str = key(..., "Element whose recovery makes the mass of the product.")
+    grade: float = key(..., "Grade of that element in the product, on dry mass.", gt=0)
+    treatment_charge: float = key(0.0, "Charge per dry tonne of product.", ge=0)
+    freight: float = key(0.0, "Freight per wet tonne of product.", ge=0)
+    moisture_pct: float = key(0.0, "Water in the product, as a share of its wet mass.", ge=0, lt=100)
+
+
+class Costs(Section):
+    """Costs of lifting and processing."""
+
+    vessel_cost_per_day: float = key(0.0, "Fixed cost of a vessel day.", ge=0)
+    wet_tonnes_per_day: float | None = key(
+        None, "Wet tonnes lifted in a day, which spread the vessel's cost.", gt=0
+    )
+    vessel_days: float | None = key(None, "Vessel days charged, in place of a daily rate.", ge=0)
+    campaign_wet_tonnes: float | None = key(None, "Wet tonnes over which those days are spread.", gt=0)
+    lifting_per_wet_tonne: float = key(0.0, "Variable cost of cutting, lifting and dewatering.", ge=0)
+    depth_rate_per_100_m: float = key(0.0, "Share that lifting costs more for every 100 m of depth.")
+    reference_depth_m: float = key(0.0, "Water depth at which the lifting cost holds.", ge=0)
+    slope_factors: tuple[tuple[float, float], ...] = key(
+        (), "Points of (slope in degrees, factor on lifting from there on)."
+    )
+    processing_per_dry_tonne: float = key(0.0, "Cost of processing.", ge=0)
+    general_per_dry_tonne: float = key(0.0, "General cost.", ge=0)
 
 
 class Value(Section):
-    """[value]: value and costs, in US dollars. No total in the ground is ever shown."""
+    """[value]: value and costs per tonne. No total in the ground is ever shown."""
 
+    currency: str = key("US$", "Currency of prices and costs.", decision=False)
     metals: dict[str, Metal] = key({}, "Prices, recoveries and payabilities by element.")
-    freight_usd_per_wet_tonne: float = key(0.0, "Freight and handling per wet tonne.", ge=0)
-    royalty_pct: float = key(0.0, "Royalty on payable value.", ge=0, le=100)
-    variable_usd_per_wet_tonne: float = key(
-        0.0, "Variable cost of lifting and processing per wet tonne.", ge=0
-    )
-    processing_usd_per_dry_tonne: float = key(0.0, "Processing cost per dry tonne.", ge=0)
-    vessel_days: float = key(0.0, "Vessel days that are charged as fixed cost.", ge=0)
-    vessel_usd_per_day: float = key(0.0, "Cost of a vessel day.", ge=0)
+    equivalent_in: str = key("cu", "Element that the metal equivalent is expressed in.")
+    product: ProductSection | None = key(None, "The product that metals are sold in.")
+    treatment_per_dry_tonne: float = key(0.0, "Charge per dry tonne lifted.", ge=0)
+    freight_per_wet_tonne: float = key(0.0, "Freight per wet tonne lifted.", ge=0)
+    royalty_pct: float = key(0.0, "Royalty.", ge=0, le=100)
+    royalty_basis: Literal["payable", "net"] = key("payable", "What the royalty is taken on.")
+    costs: Costs = key(Costs(), "Costs of lifting and processing.")
 
     @field_validator("metals")
     @classmethod

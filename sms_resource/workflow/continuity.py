@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -11,6 +12,9 @@ from sms_resource.units import element_column
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.stage import Context
 from sms_resource.workflow.state import BlockState, BodyState, EvidenceState, VariogramState
+
+
+SCAN = np.array([0.25, 0.5, 0.75, 1.0, 1.25, 1.5, 2.0, 3.0, 4.0])
 
 
 def variograms(context: Context) -> VariogramState:
@@ -41,7 +45,8 @@ def variograms(context: Context) -> VariogramState:
                 )  # fmt: skip
                 continue
             inference = infer(part, places, metal, known, weights[chosen], spacing, config)
-            context.findings.extend(inference.findings)
+            for item in inference.findings:
+                context.findings.extend([replace(item, message=f"{domain}, {metal}: {item.message}")])
             inferences[(domain, metal)] = inference
     samples = samples.assign(declustering_weight=weights)
     assumed = sum(1 for item in inferences.values() if item.assumed)
@@ -110,11 +115,13 @@ def decluster(part: pd.DataFrame, metal: str, spacing: float, domain: str) -> tu
         return weights, pd.DataFrame({"domain": [], "metal": [], "cell_size_m": [], "mean": []})
     places = part.loc[known, ["x", "y", "z"]].to_numpy(dtype=float)
     values = part.loc[known, metal].to_numpy(dtype=float)
-    sizes = spacing * np.array([0.25, 0.5, 0.75, 1.0, 1.25, 1.5, 2.0, 3.0, 4.0])
-    made = cell_declustering(places, values, sizes=sizes, cell_size=spacing)
+    # A cell as wide as the spacing and a few composites high: clusters of holes are thinned out, and a thick part of
+    # the body keeps the weight of its thickness.
+    tall = (1.0, 1.0, 3.0 * float(part["length_m"].median()) / spacing)
+    made = cell_declustering(places, values, sizes=[spacing], anisotropy=tall)
+    scan = cell_declustering(places, values, sizes=spacing * SCAN, anisotropy=tall).scan
     weights[known] = made.weights
-    scan = made.scan.assign(domain=domain, metal=metal)
-    return weights, scan
+    return weights, scan.assign(domain=domain, metal=metal)
 
 
 def infer(
@@ -127,40 +134,58 @@ def infer(
     config: Any,
 ) -> Any:
     """Variogram of one metal in one domain, with what the study fixes."""
-    from sms_resource.geostatistics import VariogramSettings, infer_variogram
+    from sms_resource.geostatistics.inference import infer_variogram
+    from sms_resource.geostatistics.variogram_settings import VariogramSettings
 
     choice = config.variograms
     element = metal.partition("_")[0]
     domain = str(part["domain"].iloc[0])
     fixed = choice.models.get(domain, {}).get(element)
+    ratio = choice.assumed_ratio
+    given = fixed.structures if fixed and fixed.structures else ()
+    one: tuple[Any, ...] = ()
+    if fixed and fixed.ranges_m:
+        one = (fixed.ranges_m,)
     settings = VariogramSettings(
-        shape=(fixed.shape if fixed and fixed.shape else choice.shape),
         measure=choice.measure,
         estimator=choice.estimator,
-        lag_horizontal_m=choice.lag_horizontal_m or spacing,
-        lag_vertical_m=choice.lag_vertical_m or config.composites.length_m,
-        min_pairs=choice.least_pairs,
-        min_composites_horizontal=choice.least_composites,
+        shapes=tuple(item.shape for item in given)
+        or (fixed.shape if fixed and fixed.shape else choice.shape,),
+        nugget=fixed.nugget if fixed else None,
+        nugget_share=fixed.nugget_share if fixed else None,
+        total_sill=fixed.total_sill if fixed and fixed.total_sill else choice.total_sill,
+        sills=tuple(item.sill for item in given) or None,
+        ranges=tuple(item.ranges_m for item in given) or one or None,
         azimuth=choice.azimuth_deg,
         plunge=choice.plunge_deg,
         tilt=choice.tilt_deg,
-        assumed_horizontal_m=choice.assumed_horizontal_m,
-        assumed_vertical_m=choice.assumed_vertical_m,
+        continuity=choice.continuity,
+        lag_width_m=choice.lag_horizontal_m or spacing,
+        down_hole_lag_m=choice.lag_vertical_m or config.composites.length_m,
+        bandwidth_m=choice.bandwidth_m,
+        min_pairs=choice.least_pairs,
+        min_composites_horizontal=choice.least_composites,
+        min_holes_horizontal=choice.least_holes,
+        assumed_ratio=(0.5 * ratio, ratio, 2.0 * ratio),
+        assumed_vertical_range_m=choice.assumed_vertical_m,
         assumed_nugget_share=choice.assumed_nugget_share,
         jackknife=choice.intervals,
-        nugget=fixed.nugget if fixed else None,
-        nugget_share=fixed.nugget_share if fixed else None,
-        total_sill=fixed.total_sill if fixed else None,
-        ranges=fixed.ranges_m if fixed else None,
-        structures=tuple((s.shape, s.sill, s.ranges_m) for s in fixed.structures)
-        if fixed and fixed.structures
-        else None,
-        range_factor=choice.range_factor,
     )
-    return infer_variogram(
+    found = infer_variogram(
         places[known],
         part.loc[known, metal].to_numpy(dtype=float),
         part.loc[known, "hole_id"].to_numpy(dtype=object),
         settings,
         weights=weights[known],
     )
+    return scaled(found, choice.range_factor) if choice.range_factor != 1.0 else found
+
+
+def scaled(found: Any, factor: float) -> Any:
+    """The same inference with every range times a factor, for a scenario."""
+    model = found.model
+    structures = tuple(
+        replace(item, ranges=tuple(factor * reach for reach in item.ranges)) for item in model.structures
+    )
+    note = f"all ranges times {factor:g} (scenario)"
+    return replace(found, model=replace(model, structures=structures), assumed=(*found.assumed, note))

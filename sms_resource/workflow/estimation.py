@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -72,8 +71,10 @@ def block_targets(blocks: BlockState) -> NDArray[np.float64]:
     """
     frame = blocks.model.frame
     places = frame[["easting", "northing"]].to_numpy(dtype=float)
-    height = frame["centroid_elevation"] if "centroid_elevation" in frame else frame["elevation"]
-    return blocks.frame.forward(np.column_stack([places, height.to_numpy(dtype=float)]))
+    seafloor = blocks.seafloor.sample(places[:, 0], places[:, 1])
+    height = seafloor - frame["depth_below_seafloor_m"].to_numpy(dtype=float)
+    height = np.where(np.isfinite(height), height, frame["elevation"].to_numpy(dtype=float))
+    return blocks.frame.forward(np.column_stack([places, height]))
 
 
 def neighbourhoods(state: VariogramState, domain: str, config: Any) -> list[Any]:
@@ -81,22 +82,16 @@ def neighbourhoods(state: VariogramState, domain: str, config: Any) -> list[Any]
     from sms_resource.geostatistics import Neighbourhood
 
     choice, angles = config.search, config.variograms
-    radii = choice.radii_m
-    if radii is None:
-        ranges = [
-            np.max([structure.ranges for structure in item.model.structures], axis=0)
-            for (name, _), item in state.inferences.items()
-            if name == domain and item.model.structures
-        ]
-        radii = (
-            tuple(float(value) for value in choice.range_factor * np.mean(ranges, axis=0))
-            if ranges
-            else (30.0, 30.0, 4.0)
-        )
-    common = dict(
-        max_samples=choice.most_samples, max_per_hole=choice.most_per_hole, sectors=choice.sectors,
-        max_per_sector=choice.most_per_sector, azimuth=angles.azimuth_deg, plunge=angles.plunge_deg, tilt=angles.tilt_deg,
-    )  # fmt: skip
+    radii = choice.radii_m or proposed_radii(state, domain, config)
+    common: dict[str, Any] = {
+        "max_samples": choice.most_samples,
+        "max_per_hole": choice.most_per_hole,
+        "sectors": choice.sectors,
+        "max_per_sector": choice.most_per_sector,
+        "azimuth": angles.azimuth_deg,
+        "plunge": angles.plunge_deg,
+        "tilt": angles.tilt_deg,
+    }
     hoods = [
         Neighbourhood(
             tuple(factor * radius for radius in radii),
@@ -112,6 +107,22 @@ def neighbourhoods(state: VariogramState, domain: str, config: Any) -> list[Any]
             Neighbourhood(tuple(far * radius for radius in radii), min_samples=1, min_holes=1, **common)
         )
     return hoods
+
+
+def proposed_radii(state: VariogramState, domain: str, config: Any) -> tuple[float, float, float]:
+    """Median range of the domain's metals times the study's factor, but never so short that no neighbour is seen.
+
+    The floor is two hole spacings in the plane and three composites upright (common practice, no source).
+    """
+    ranges = [
+        np.max([structure.ranges for structure in item.model.structures], axis=0)
+        for (name, _), item in state.inferences.items()
+        if name == domain and item.model.structures
+    ]
+    level, upright = 2.0 * state.facts["hole_spacing_m"], 3.0 * config.composites.length_m
+    found = np.median(ranges, axis=0) if ranges else np.zeros(3)
+    major, semi, minor = np.maximum(config.search.range_factor * found, [level, level, upright])
+    return float(major), float(semi), float(minor)
 
 
 def _domain_rows(samples: pd.DataFrame, domain: str, boundaries: str) -> NDArray[np.bool_]:
@@ -132,27 +143,9 @@ def _restraint(config: Any, metals: list[str]) -> Any:
     )
 
 
-def turned(points: NDArray[np.float64], blocks: BlockState) -> NDArray[np.float64]:
-    """Points in axes along the sides of the blocks, so that a block is upright whatever the grid's rotation."""
-    azimuth = np.radians(blocks.model.grid.azimuth)
-    if azimuth == 0.0:
-        return points
-    east, north = points[:, 0], points[:, 1]
-    cosine, sine = np.cos(azimuth), np.sin(azimuth)
-    return np.column_stack([east * cosine - north * sine, east * sine + north * cosine, points[:, 2]])
-
-
-def turned_axes(item: Any, blocks: BlockState) -> Any:
-    """A variogram model or a neighbourhood as seen in the axes of the blocks."""
-    azimuth = float(blocks.model.grid.azimuth)
-    return replace(item, azimuth=item.azimuth - azimuth) if azimuth else item
-
-
 def frame_size(blocks: BlockState, config: Any) -> tuple[float, float, float]:
-    """Size of a block in the vertical frame; a proportional frame scales heights, so its own scale applies."""
-    size = blocks.model.grid.size
-    scale = getattr(blocks.frame, "height_scale", 1.0)
-    return (size[0], size[1], size[2] * scale)
+    """Size of a block in the vertical frame: heights keep their metres in every frame."""
+    return tuple(blocks.model.grid.size)
 
 
 def krige_domains(
@@ -186,17 +179,17 @@ def krige_domains(
         if used.any() and rows.any():
             part = samples[rows]
             result = ordinary_kriging(
-                turned(part[["x", "y", "z"]].to_numpy(dtype=float), blocks),
+                part[["x", "y", "z"]].to_numpy(dtype=float),
                 part[metals].to_numpy(dtype=float),
-                turned(targets[used], blocks),
-                [turned_axes(state.inferences[(domain, metal)].model, blocks) for metal in metals],
-                [turned_axes(hood, blocks) for hood in hoods[domain]],
+                targets[used],
+                [state.inferences[(domain, metal)].model for metal in metals],
+                hoods[domain],
                 hole_ids=part["hole_id"].to_numpy(dtype=object),
                 block_size=frame_size(blocks, config),
                 discretisation=config.kriging.discretisation,
-                threads=threads,
+                block_azimuth=blocks.model.grid.azimuth,
                 coincident=config.kriging.coincident,
-                coincident_tolerance_m=config.kriging.coincident_within_m,
+                threads=threads,
                 high_grade_restraint=_restraint(config, metals),
             )
             table[used] = result.estimate
@@ -276,15 +269,17 @@ def companion_grades(
         if used.any() and rows.any():
             part = samples[rows]
             found = companion_estimates(
-                turned(part[["x", "y", "z"]].to_numpy(dtype=float), blocks),
+                part[["x", "y", "z"]].to_numpy(dtype=float),
                 part[metals].to_numpy(dtype=float),
-                turned(targets[used], blocks),
-                turned_axes(hoods[domain][-1], blocks),
+                targets[used],
+                hoods[domain][-1],
                 hole_ids=part["hole_id"].to_numpy(dtype=object),
                 methods=methods,
                 power=config.kriging.power,
                 block_size=frame_size(blocks, config),
                 discretisation=config.kriging.discretisation,
+                block_azimuth=blocks.model.grid.azimuth,
+                coincident=config.kriging.coincident,
                 threads=threads,
             )
             for method in methods:

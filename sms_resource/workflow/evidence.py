@@ -41,25 +41,12 @@ def composite_options(config: Any) -> dict[str, Any]:
 
 def composite(context: Context) -> EvidenceState:
     """Position the holes, join assays to runs and logs, make composites, and describe the evidence."""
-    from sms_resource.samples import (
-        associations,
-        desurvey,
-        domains,
-        position,
-        quality,
-        recovery,
-        surface,
-        topcuts,
-        twins,
-    )
-    from sms_resource.samples.assays import resolve_assays
+    from sms_resource.samples import desurvey, domains, position, recovery
     from sms_resource.samples.composites import composite as make_composites
 
     data: LoadedData = context.done["load"]
     config = context.config
-    metals, elements = metal_columns(config), all_columns(config)
-    seed = config.study.seed
-
+    elements = all_columns(config)
     match = position.match_collars(
         data.drill.collars,
         data.seafloor,
@@ -67,72 +54,140 @@ def composite(context: Context) -> EvidenceState:
         sigma_grid_m=config.seafloor.sigma_m,
         flag_m=config.checks.collar_tolerance_m,
     )
-    context.findings.extend(match.findings)
+    ends, found = position.hole_ends(match.collars)
     paths = desurvey.hole_paths(match.collars, data.drill.surveys)
-    assays, found, assay_summary = resolve_assays(
-        data.drill.assays,
-        elements,
-        below_detection=config.assays.below_detection,
-        over_limit=config.assays.over_limit,
-        allowed_methods=config.assays.methods,
-    )
-    context.findings.extend(found)
+    add_findings(context, match.findings, found, paths.findings)
+    assays, assay_summary = plain_grades(context, data.drill.assays, "assays")
+    surface, _ = plain_grades(context, data.surface, "surface samples")
     intervals = domain_table(data, config)
+    if config.domains.codes:
+        unmapped = domains.unmapped_codes(
+            data.drill.lithology, dict(config.domains.codes), config.domains.unlogged
+        )
+        add_findings(context, unmapped)
     made = make_composites(
-        assays, data.drill.runs, intervals, paths, metals=elements, densities=data.drill.densities,
+        assays,
+        data.drill.runs,
+        intervals,
+        paths,
+        metals=elements,
+        densities=data.drill.densities,
         **composite_options(config),
-    )  # fmt: skip
-    context.findings.extend(made.findings)
-    composites = made.frame
-    inside = composites[composites["domain"].isin(config.domains.sulphide)]
-    surface_table, found, _ = resolve_assays(
-        data.surface,
-        elements,
-        below_detection=config.assays.below_detection,
-        over_limit=config.assays.over_limit,
-        allowed_methods=config.assays.methods,
     )
-    context.findings.extend(item for item in found if item.severity != "error")
-    laboratory = quality.laboratory_quality(data.laboratory)
-    context.findings.extend(laboratory.findings)
-    tables = {
-        "collar_match": match.table,
-        "assay_summary": assay_summary,
-        "composite_audit": made.audit,
-        "recovery_bias": recovery.recovery_bias(inside, metals),
-        "surface_bias": surface.surface_bias(surface_table, inside, metals, seed=seed),
-        "top_cut_study": topcuts.top_cut_study(inside, metals),
-        "twins": twins.twin_report(match.collars, inside, distance_m=config.checks.twin_distance_m),
-        "associations": associations.metal_associations(inside, elements),
-        "deleterious": _summary(inside, [name for name in elements if name not in metals]),
-        "statistics": _statistics(inside, metals),
-        "lost_core": recovery.lost_core_bracket(
-            assays, data.drill.runs, intervals, paths, metals=metals, densities=data.drill.densities,
-            options=composite_options(config), domains=config.domains.sulphide,
-        ),
-    }  # fmt: skip
-    context.detail = f"{len(inside)} composites in sulphide of {len(composites)}"
-    if inside[metals].notna().any(axis=None) is np.False_ or len(inside) == 0:
+    add_findings(context, made.findings)
+    inside = made.frame[made.frame["domain"].isin(config.domains.sulphide)]
+    if not len(inside) or not inside[metal_columns(config)].notna().any(axis=None):
         context.findings.error(
             "no-composites", "no sample lies in a domain of the body",
             "Check domains.codes and domains.sulphide against the logged codes.", file=context.study.path.name,
         )  # fmt: skip
+    recovered, found = recovery.recovery_summary(data.drill.runs, intervals)
+    add_findings(context, found)
+    laboratory, tables = describe(context, assays, surface, intervals, match.collars, made, paths)
+    context.detail = f"{len(inside)} composites in sulphide of {len(made.frame)}"
     return EvidenceState(
         collars=match.collars,
         paths=paths,
         domain_intervals=intervals,
         assays=assays,
-        composites=composites,
-        sticks=recovery.sticks(assays, data.drill.runs, intervals, paths, metals),
-        surface=surface_table,
+        composites=made.frame,
+        sticks=recovery.sticks(assays, data.drill.runs, intervals, paths, elements),
+        surface=surface,
         laboratory=laboratory,
-        tables=tables,
+        tables={
+            "collar_match": match.table,
+            "hole_ends": ends,
+            "assay_summary": assay_summary,
+            "composite_audit": made.audit,
+            "recovery": recovered,
+            **tables,
+        },
         facts={
             "collar_shift_m": float(match.shift_m),
             "assumed_vertical": list(paths.assumed_vertical),
             "handheld_used": any(method != "laboratory" for method in config.assays.methods),
         },
     )
+
+
+def add_findings(context: Context, *found: Any) -> None:
+    """Take over findings of a room."""
+    for part in found:
+        context.findings.extend(part)
+
+
+def plain_grades(context: Context, table: pd.DataFrame, label: str) -> tuple[pd.DataFrame, pd.DataFrame]:
+    """Grades as plain numbers: limits resolved, methods that are not accepted left out."""
+    from sms_resource.samples.assays import resolve_assays
+
+    choice = context.config.assays
+    frame, found, summary = resolve_assays(
+        table,
+        all_columns(context.config),
+        below_detection=choice.below_detection,
+        over_limit=choice.over_limit,
+        allowed_methods=choice.methods,
+        label=label,
+    )
+    add_findings(context, found)
+    return frame, summary
+
+
+def describe(
+    context: Context,
+    assays: pd.DataFrame,
+    surface: pd.DataFrame,
+    intervals: pd.DataFrame,
+    collars: pd.DataFrame,
+    made: Any,
+    paths: Any,
+) -> tuple[Any, dict[str, pd.DataFrame]]:
+    """What the evidence is worth: bias, laboratory, twins, extreme grades, associations."""
+    from sms_resource.samples import (
+        associations,
+        bracket,
+        contacts,
+        lognormal,
+        quality,
+        recovery,
+        topcuts,
+        twins,
+    )
+    from sms_resource.samples import surface as floor
+
+    data: LoadedData = context.done["load"]
+    config = context.config
+    metals, elements = metal_columns(config), all_columns(config)
+    sulphide = config.domains.sulphide
+    inside = made.frame[made.frame["domain"].isin(sulphide)]
+    laboratory = quality.laboratory_quality(data.laboratory, assays, elements=tuple(config.metals.estimate))
+    bias = floor.surface_bias(surface, made.frame, metals, config.study.seed, domains=sulphide)
+    pairs = twins.twin_report(collars, inside, config.checks.twin_distance_m, metals=metals)
+    logs = lognormal.lognormal_table(inside, metals)
+    add_findings(context, laboratory.findings, floor.surface_findings(bias), pairs.findings)
+    add_findings(context, lognormal.lognormal_findings(logs))
+    deleterious, found = associations.deleterious_summary(inside)
+    add_findings(context, found)
+    profile, contact_verdicts = contacts.contact_analysis(made.frame, intervals, metals)
+    lost = bracket.lost_core_bracket(
+        assays, data.drill.runs, intervals, paths, metals=metals, densities=data.drill.densities,
+        options=composite_options(config), domains=sulphide,
+    )  # fmt: skip
+    tables = {
+        "recovery_bias": recovery.recovery_bias(inside, metals),
+        "surface_bias": bias,
+        "top_cut_study": topcuts.top_cut_study(inside, metals),
+        "twins": pairs.comparison if len(pairs.comparison) else pairs.pairs,
+        "lognormal": logs,
+        "deleterious": deleterious,
+        "associations": associations.metal_associations(inside, elements, by_domain=True),
+        "tracers": associations.tracer_ratios(inside),
+        "contact_analysis": profile,
+        "contact_verdicts": contact_verdicts,
+        "statistics": _statistics(inside, metals),
+        "lost_core": lost,
+    }
+    return laboratory, tables
 
 
 def domain_table(data: LoadedData, config: Any) -> pd.DataFrame:
@@ -175,40 +230,34 @@ def _statistics(composites: pd.DataFrame, metals: list[str]) -> pd.DataFrame:
     return pd.DataFrame(rows)
 
 
-def _summary(composites: pd.DataFrame, columns: list[str]) -> pd.DataFrame:
-    """Elements that are read but not estimated."""
-    rows = [
-        {"element": name, "n": int(composites[name].notna().sum()), "mean": composites[name].mean(),
-         "median": composites[name].median(), "maximum": composites[name].max()}
-        for name in columns
-        if name in composites
-    ]  # fmt: skip
-    return pd.DataFrame(rows, columns=["element", "n", "mean", "median", "maximum"])
-
-
 def density(context: Context) -> DensityState:
     """Dry and wet density of each domain, with its low and high."""
     from sms_resource.samples import density as room
+    from sms_resource.samples.density_model import fit_density
 
     data: LoadedData = context.done["load"]
     evidence: EvidenceState = context.done["composite"]
     config = context.config
     choice = config.density
     table = room.density_table(
-        data.drill.densities, evidence.assays, evidence.domain_intervals, salinity_gkg=choice.salinity_gkg
+        data.drill.densities,
+        evidence.assays,
+        evidence.domain_intervals,
+        salinity_gkg=choice.salinity_gkg,
+        porosity=dict(choice.porosity_fraction) or None,
     )
-    model = room.fit_density(
+    model = fit_density(
         table,
-        method=choice.method,
+        choice.method,
         domains=config.domains.sulphide,
         metals=all_columns(config),
-        assigned_dry_tpm3=dict(choice.assigned_dry_tpm3),
-        porosity=dict(choice.porosity_fraction),
+        assigned_dry_tpm3=dict(choice.assigned_dry_tpm3) or None,
+        porosity=dict(choice.porosity_fraction) or None,
+        composites=evidence.composites[evidence.composites["domain"].isin(config.domains.sulphide)],
         salinity_gkg=choice.salinity_gkg,
         least_count=choice.least_count,
         factor=choice.factor,
-        composites=evidence.composites,
     )
-    context.findings.extend(model.findings)
+    add_findings(context, model.findings)
     context.detail = f"{len(table)} measurements, {choice.method.replace('_', ' ')}"
     return DensityState(table=table, model=model, by_domain=model.by_domain)

@@ -17,8 +17,6 @@ def body(context: Context) -> BodyState:
 
     from sms_resource.blocks import body as room
     from sms_resource.blocks.contacts import base_contacts
-    from sms_resource.blocks.domains import layered_domains
-    from sms_resource.blocks.outline import propose_outline
     from sms_resource.blocks.seafloor import prepare_seafloor
 
     data: LoadedData = context.done["load"]
@@ -30,12 +28,15 @@ def body(context: Context) -> BodyState:
     )
     context.findings.extend(found)
     contacts = base_contacts(
-        evidence.collars, evidence.domain_intervals, evidence.paths, config.domains.sulphide, seafloor
-    )
+        evidence.collars, evidence.domain_intervals, evidence.paths, config.domains.sulphide, seafloor,
+        findings=context.findings,
+    )  # fmt: skip
     if choice.outline == "given" and data.outline is not None and len(data.outline):
         outline = shapely.union_all(data.outline.geometry.to_numpy())
         outline_from = "given"
     else:
+        from sms_resource.blocks.outline import propose_outline
+
         surface = evidence.surface if config.surface_samples.use == "outline" else None
         outline = propose_outline(contacts, seafloor, surface=surface)
         outline_from = "proposed from the holes" + (" and surface samples" if surface is not None else "")
@@ -62,9 +63,12 @@ def body(context: Context) -> BodyState:
         )
     layers = None
     if config.domains.layout == "layered" and len(config.domains.sulphide) > 1:
+        from sms_resource.blocks.domains import layered_domains
+
         layers = layered_domains(
-            made, evidence.domain_intervals, evidence.collars, evidence.paths, config.domains.sulphide
-        )
+            made, evidence.domain_intervals, evidence.collars, evidence.paths, config.domains.sulphide,
+            thickness_m=dict(config.domains.thickness_m) or None, findings=context.findings,
+        )  # fmt: skip
     context.detail = f"{made.volume_m3:,.0f} m3"
     return BodyState(
         seafloor=seafloor, outline=outline, contacts=contacts, body=made, domains=layers,
@@ -85,11 +89,10 @@ def blocks(context: Context) -> BlockState:
     grid, proposal = propose_grid(
         state.body, collars, size=choice.size_m, azimuth=choice.azimuth_deg, origin=choice.origin_m
     )
-    single = config.domains.sulphide[0]
-    model = fill_blocks(state.body, grid, domains=state.domains, single_domain=single)
+    model = fill_blocks(state.body, grid, domains=state.domains, single_domain=config.domains.sulphide[0])
     frame = VerticalFrame(choice.vertical_frame, state.body.top, state.body.base)
     context.detail = f"{len(model.frame):,} blocks of {' x '.join(f'{size:g}' for size in grid.size)} m"
-    return BlockState(model=model, proposal=proposal, frame=frame)
+    return BlockState(model=model, proposal=proposal, frame=frame, seafloor=state.body.top)
 
 
 def domain_shares(frame: Any, domains: tuple[str, ...]) -> dict[str, np.ndarray]:

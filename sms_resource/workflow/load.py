@@ -123,6 +123,8 @@ def check(context: Context) -> dict[str, int]:
     data: LoadedData = context.done["load"]
     checks = context.config.checks
     settings = CheckSettings(
+        crs=context.config.study.crs,
+        grid_sigma_m=context.config.seafloor.sigma_m,
         warn_above=dict(checks.warn_above),
         error_above=dict(checks.error_above),
         collar_tolerance_m=checks.collar_tolerance_m,

@@ -10,15 +10,16 @@ import pandas as pd
 from sms_resource.units import element_column
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.stage import Context
+from sms_resource.workflow.screening import kept, screened
 from sms_resource.workflow.state import (
     BlockState,
-    BodyState,
     ClassState,
     DensityState,
     EstimateState,
     EvidenceState,
     VariogramState,
 )
+from sms_resource.workflow.worth import valued
 
 
 def classify(context: Context) -> ClassState:
@@ -47,9 +48,9 @@ def classify(context: Context) -> ClassState:
     frame["proposed_class"] = proposal.classes
     frame["class_reasons"] = proposal.block_reasons
     frame, waterfall = screened(context, frame, metals)
-    frame, value_tables, value_facts = valued(context, frame, metals)
+    frame, value_tables, value_facts = valued(context, frame)
     variable, at = cutoff_column(config), config.cutoff.at
-    left = frame[frame["screen"] == ""]
+    left = kept(frame)
     steps = sorted({0.0, at, *config.cutoff.steps})
     tonnage = grade_tonnage(
         left, metals=metals, cutoff_variable=variable, cutoffs=steps, groups=("proposed_class",)
@@ -80,7 +81,7 @@ def classify(context: Context) -> ClassState:
 
 def cutoff_column(config: Any) -> str:
     """Block column that the cut-off is on."""
-    special = {"equivalent": "equivalent_pct", "value": "value_usd_per_dry_tonne"}
+    special = {"equivalent": "equivalent", "value": "value_per_dry_tonne"}
     return special.get(config.cutoff.variable) or element_column(config.cutoff.variable)
 
 
@@ -142,7 +143,7 @@ def class_context(context: Context) -> Any:
     recovery = {
         str(domain): float(100.0 * part["recovered_length_m"].sum() / part["length_m"].sum())
         for domain, part in evidence.composites.groupby("domain")
-        if part["length_m"].sum() > 0
+        if domain in config.domains.sulphide and part["length_m"].sum() > 0
     }
     sigma = evidence.collars["position_sigma_m"].astype(float).fillna(config.position.sigma_m)
     bias = evidence.tables["recovery_bias"]
@@ -164,7 +165,7 @@ def class_context(context: Context) -> Any:
         domains_without_bias=frozenset(set(config.domains.sulphide) - biased),
         surface_samples_used=config.surface_samples.use != "none",
         handheld_used=bool(evidence.facts["handheld_used"]),
-        variogram_assumed=any(item.assumed for item in state.inferences.values()),
+        variogram_assumed=any(item.horizontal_from == "assumed" for item in state.inferences.values()),
         laboratory={element_column(name): verdict for name, verdict in worst.items()},
         prospects_by=config.prospects.by if config.prospects.judged else "",
         prospects_basis=config.prospects.basis if config.prospects.judged else "",

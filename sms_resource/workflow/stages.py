@@ -8,7 +8,7 @@ from sms_resource.workflow.stage import Stage
 _SAMPLES = ("metals", "domains", "composites")
 
 LOAD = Stage("load", "Reading the files", ("study", "data", "metals"), (), load.load, reads_files=True)
-CHECK = Stage("check", "Checking the data", ("checks", "metals"), ("load",), load.check)
+CHECK = Stage("check", "Checking the data", ("study", "checks", "metals", "seafloor"), ("load",), load.check)
 COMPOSITE = Stage(
     "composite",
     "Joining samples",
@@ -37,7 +37,7 @@ VARIOGRAMS = Stage(
 ESTIMATE = Stage(
     "estimate",
     "Estimating blocks",
-    ("search", "kriging", "variograms", "metals", "domains"),
+    ("search", "kriging", "variograms", *_SAMPLES),
     ("blocks", "density", "variograms"),
     estimation.estimate,
 )

@@ -69,11 +69,12 @@ class BodyState:
 
 @dataclass(frozen=True, eq=False)
 class BlockState:
-    """Output of the stage blocks: the empty block model."""
+    """Output of the stage blocks: the block model before the estimate, and the vertical frame."""
 
     model: Any
     proposal: pd.DataFrame
     frame: Any
+    seafloor: Any
 
 
 @dataclass(frozen=True, eq=False)

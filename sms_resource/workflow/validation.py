@@ -9,7 +9,7 @@ import pandas as pd
 
 from sms_resource.units import contained_tonnes, element_column
 from sms_resource.workflow.continuity import body_samples, cut_grades
-from sms_resource.workflow.estimation import join_domains, krige_domains, neighbourhoods, turned, turned_axes
+from sms_resource.workflow.estimation import join_domains, krige_domains, neighbourhoods
 from sms_resource.workflow.evidence import all_columns, composite_options, domain_table, metal_columns
 from sms_resource.workflow.stage import Context
 from sms_resource.workflow.state import (
@@ -27,7 +27,7 @@ TREATMENTS = ("represented", "unknown", "neighbour_mean", "background")
 
 def validate(context: Context) -> ValidationState:
     """Means, swaths, leave one hole out, support, other estimators, lost core, and the geometry."""
-    from sms_resource.geostatistics import validation_table
+    from sms_resource.geostatistics import ValidationLimits, validation_findings, validation_table
 
     blocks: BlockState = context.done["blocks"]
     body: BodyState = context.done["body"]
@@ -36,27 +36,20 @@ def validate(context: Context) -> ValidationState:
     config = context.config
     metals = metal_columns(config)
     cross, summary = cross_validation(variograms, blocks, config, context.threads)
+    swaths = swath_tables(made, variograms, blocks, metals, config)
+    comparison = compare_estimators(made, metals, config)
     table = validation_table(
-        made.frame,
-        variograms.samples,
-        metals,
-        companions=made.companions,
-        cross_summary=summary,
-        warn_pct=config.validation.mean_warn_pct,
-        flag_pct=config.validation.mean_flag_pct,
-        weight="declustering_weight",
+        cross_validation=summary if len(summary) else None,
+        means=mean_table(made, variograms, metals, config),
+        swaths=swaths,
+        block_variance=realised_variances(made, variograms, blocks, config),
+        limits=ValidationLimits(mean_pct=config.validation.mean_flag_pct),
     )
     flagged = table[table["verdict"] == "flag"]
-    for row in flagged.itertuples():
-        context.findings.warning(
-            "validation-flag",
-            f"{row.check}, {row.domain}, {row.metal}: {row.value:.3g} against {row.reference:.3g} ({row.difference_pct:+.1f} %)",
-            "See the validation pages of the report.", file=context.study.path.name,
-        )  # fmt: skip
-    swaths = swath_tables(made, variograms, blocks, metals, config)
+    for item in validation_findings(table):
+        context.findings.extend([item])
     support = support_curves(made, variograms, blocks, config)
     bracket = lost_core_runs(context)
-    comparison = compare_estimators(made, metals, config)
     geometry = geometry_table(body, made, config)
     context.detail = f"{len(table)} checks, {len(flagged)} flagged"
     return ValidationState(
@@ -71,6 +64,8 @@ def cross_validation(
     """Estimate each composite without the composites of its own hole."""
     from sms_resource.geostatistics import cross_validation_summary, leave_one_out
 
+    domains = state.samples["domain"].to_numpy(dtype=object)
+
     metals = metal_columns(config)
     frames = []
     for domain in config.domains.sulphide:
@@ -79,65 +74,123 @@ def cross_validation(
             continue
         hood = neighbourhoods(state, domain, config)[-1]
         frame = leave_one_out(
-            turned(part[["x", "y", "z"]].to_numpy(dtype=float), blocks),
+            part[["x", "y", "z"]].to_numpy(dtype=float),
             part[metals].to_numpy(dtype=float),
-            [turned_axes(state.inferences[(domain, metal)].model, blocks) for metal in metals],
-            turned_axes(hood, blocks),
+            [state.inferences[(domain, metal)].model for metal in metals],
+            hood,
             hole_ids=part["hole_id"].to_numpy(dtype=object),
             leave="hole",
+            coincident=config.kriging.coincident,
             threads=threads,
         )
-        index = part.index.to_numpy()[frame["index"].to_numpy()]
-        frames.append(
-            frame.assign(
-                domain=domain,
-                metal=np.array(metals, dtype=object)[frame["column"].to_numpy()],
-                hole_id=state.samples["hole_id"].to_numpy(dtype=object)[index],
-                composite_id=state.samples["composite_id"].to_numpy(dtype=object)[index],
-            ).drop(columns=["index", "column"])
-        )
+        frames.append(frame.assign(index=part.index.to_numpy()[frame["index"].to_numpy()]))
     if not frames:
-        empty = pd.DataFrame(columns=["domain", "metal", "hole_id", "true", "estimate", "error"])
-        return empty, pd.DataFrame(columns=["domain", "metal", "n"])
+        return pd.DataFrame(), pd.DataFrame()
     cross = pd.concat(frames, ignore_index=True)
-    return cross, cross_validation_summary(cross)
+    summary = cross_validation_summary(cross, domains, names=dict(enumerate(metals)))
+    rows = cross["index"].to_numpy()
+    cross = cross.assign(
+        column=np.array(metals, dtype=object)[cross["column"].to_numpy(dtype=int)],
+        domain=domains[rows],
+        hole_id=state.samples["hole_id"].to_numpy(dtype=object)[rows],
+        composite_id=state.samples["composite_id"].to_numpy(dtype=object)[rows],
+    )
+    return cross, summary
+
+
+def mean_table(made: EstimateState, state: VariogramState, metals: list[str], config: Any) -> pd.DataFrame:
+    """Block, declustered, plain and nearest-sample means by domain and metal."""
+    rows = []
+    for domain in config.domains.sulphide:
+        inside = (made.frame["domain"] == domain).to_numpy()
+        part = state.samples[state.samples["domain"] == domain]
+        tonnes = made.frame.loc[inside, "dry_tonnes"].to_numpy(dtype=float)
+        for metal in metals:
+            known = part[metal].notna()
+            if not known.any() or not tonnes.sum() > 0:
+                continue
+            weights = part.loc[known, "declustering_weight"] * part.loc[known, "weight"]
+            rows.append(
+                {"domain": domain, "metal": metal,
+                 "block_mean": weighted(made.frame.loc[inside, metal], tonnes),
+                 "declustered_mean": weighted(part.loc[known, metal], weights),
+                 "sample_mean": weighted(part.loc[known, metal], part.loc[known, "weight"]),
+                 "nearest_mean": weighted(made.companions["nearest"].loc[inside, metal], tonnes),
+                 "sample_count": int(known.sum())}
+            )  # fmt: skip
+    return pd.DataFrame(rows)
+
+
+def weighted(values: Any, weights: Any) -> float:
+    """Weighted mean of what is known; NaN where nothing is."""
+    values, weights = np.asarray(values, dtype=float), np.asarray(weights, dtype=float)
+    known = np.isfinite(values) & (weights > 0)
+    return float(np.average(values[known], weights=weights[known])) if known.any() else float("nan")
+
+
+def realised_variances(
+    made: EstimateState, state: VariogramState, blocks: BlockState, config: Any
+) -> dict[tuple[str, str], dict[str, float]]:
+    """Spread of the block grades against what kriging theory leaves of the blocks' variance."""
+    from sms_resource.geostatistics import block_variance, block_variance_check, mean_covariance
+
+    found = {}
+    for (domain, metal), item in state.inferences.items():
+        inside = (made.frame["domain"] == domain).to_numpy() & made.frame[
+            f"{metal}_variance"
+        ].notna().to_numpy()
+        if inside.sum() < 20:
+            continue
+        size = tuple(blocks.model.grid.size)
+        found[(domain, metal)] = block_variance_check(
+            made.frame.loc[inside, metal].to_numpy(dtype=float),
+            made.frame.loc[inside, f"{metal}_variance"].to_numpy(dtype=float),
+            block_variance(item.model, size, config.kriging.discretisation),
+            item.model.total_sill,
+            weights=made.frame.loc[inside, "dry_tonnes"].to_numpy(dtype=float),
+            deposit_covariance=mean_covariance(item.model, made.targets[inside]),
+        )
+    return found
 
 
 def swath_tables(
     made: EstimateState, state: VariogramState, blocks: BlockState, metals: list[str], config: Any
 ) -> pd.DataFrame:
     """Means of blocks, composites and nearest samples in slices along the three axes of the blocks."""
-    from sms_resource.geostatistics import swath
+    from sms_resource.geostatistics import swath_table
 
     grid = blocks.model.grid
-    frame = made.frame
-    block_places = turned(made.targets, blocks)
-    sample_places = turned(state.samples[["x", "y", "z"]].to_numpy(dtype=float), blocks)
-    tables = []
-    for number, axis in enumerate(("easting", "northing", "height")):
-        width = (
-            config.validation.swath_m if config.validation.swath_m and number < 2 else 2.0 * grid.size[number]
-        )
-        for metal in metals:
-            table = swath(
-                block_places[:, number],
-                frame[metal].to_numpy(dtype=float),
-                frame["dry_tonnes"].to_numpy(dtype=float),
-                sample_places[:, number],
-                state.samples[metal].to_numpy(dtype=float),
-                state.samples["declustering_weight"].to_numpy(dtype=float),
-                width=width,
-                nearest=made.companions["nearest"][metal].to_numpy(dtype=float),
-            )
-            tables.append(table.assign(axis=axis, metal=metal))
-    return pd.concat(tables, ignore_index=True)
+    nearest = made.companions["nearest"][metals].add_suffix("_nearest")
+    frame = made.frame[["easting", "northing", *metals, "dry_tonnes"]].join(nearest)
+    frame["elevation"] = made.targets[:, 2]
+    samples = state.samples.assign(elevation=state.samples["z"])
+    azimuth = float(grid.azimuth)
+    level = config.validation.swath_m or max(2.0 * max(grid.size[:2]), 0.5 * state.facts["hole_spacing_m"])
+    names = ("along", "across") if azimuth else ("northing", "easting")
+    return swath_table(
+        samples,
+        frame,
+        metals,
+        axes=(*names, "elevation"),
+        azimuth=azimuth,
+        width_m={
+            names[0]: level,
+            names[1]: level,
+            "elevation": max(2.0 * grid.size[2], config.composites.length_m),
+        },
+        companions={metal: {"nearest": f"{metal}_nearest"} for metal in metals},
+        sample_weight="weight",
+        decluster_weights="declustering_weight",
+        block_weight="dry_tonnes",
+    )
 
 
 def support_curves(
     made: EstimateState, state: VariogramState, blocks: BlockState, config: Any
 ) -> pd.DataFrame:
     """What the blocks' grade-tonnage curve would be without smoothing, by two models of change of support."""
-    from sms_resource.geostatistics import block_variance, change_of_support
+    from sms_resource.geostatistics import block_variance
+    from sms_resource.geostatistics.support import change_of_support
     from sms_resource.workflow.estimation import frame_size
 
     variable = config.cutoff.variable
@@ -154,13 +207,13 @@ def support_curves(
         factor = min(max(inside / item.model.total_sill, 0.0), 1.0)
         curves = change_of_support(
             part[metal].to_numpy(dtype=float),
-            variance_ratio=factor,
-            cutoffs=np.asarray(config.cutoff.steps, dtype=float),
+            factor,
+            np.asarray(config.cutoff.steps, dtype=float),
             weights=part["declustering_weight"].to_numpy(dtype=float),
-        )
+        ).curves.rename(columns={"metal": "content"})
         tonnes = made.frame.loc[made.frame["domain"] == domain, "dry_tonnes"].sum()
         tables.append(
-            curves.assign(domain=domain, metal=metal, variance_ratio=factor, domain_dry_tonnes=tonnes)
+            curves.assign(domain=domain, metal=metal, variance_factor=factor, domain_dry_tonnes=tonnes)
         )
     return pd.concat(tables, ignore_index=True) if tables else pd.DataFrame()
 
@@ -256,13 +309,17 @@ def neighbourhood_table(context: Context) -> pd.DataFrame:
     picked = chosen[:: max(1, len(chosen) // 400)]
     size = blocks.model.grid.size
     found = neighbourhood_study(
-        turned(part[["x", "y", "z"]].to_numpy(dtype=float), blocks),
+        part[["x", "y", "z"]].to_numpy(dtype=float),
         part[metal].to_numpy(dtype=float),
-        turned(made.targets[picked], blocks),
-        turned_axes(state.inferences[(domain, metal)].model, blocks),
-        turned_axes(neighbourhoods(state, domain, config)[-1], blocks),
+        made.targets[picked],
+        state.inferences[(domain, metal)].model,
+        neighbourhoods(state, domain, config)[-1],
+        block_size=size,
+        discretisation=config.kriging.discretisation,
         hole_ids=part["hole_id"].to_numpy(dtype=object),
-        block_sizes=[tuple(f * s for s in size) for f in (1.0, 2.0)],
+        block_sizes=[tuple(f * s for s in size) for f in (1.0, 2.0, 4.0)],
+        coincident=config.kriging.coincident,
+        threads=context.threads,
     )
     context.findings.note("neighbourhood-study", found.recommendation, "Set search.most_samples.")
     return found.table

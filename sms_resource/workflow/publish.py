@@ -1,0 +1,145 @@
+"""Stage report: everything that a run leaves in its folder."""
+
+from __future__ import annotations
+
+import json
+import time
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from sms_resource.findings import Findings
+from sms_resource.study import Study, decisions
+from sms_resource.workflow.evidence import metal_columns
+from sms_resource.workflow.layers import write_layers
+from sms_resource.workflow.manifest import versions, write_manifest
+from sms_resource.workflow.stage import Outcome, Progress, StageRecord
+from sms_resource.workflow.state import ClassState
+from sms_resource.workflow.summary import Summary, summarise
+
+
+def write_results(
+    folder: Path,
+    study: Study,
+    outcome: Outcome,
+    inputs: dict[str, dict[str, Any]],
+    progress: Progress | None = None,
+    extra: dict[str, Any] | None = None,
+) -> Summary:
+    """Write tables, layers, the report and the manifest of a run.
+
+    Parameters
+    ----------
+    folder : Path
+        An empty staging folder.
+    study : Study
+    outcome : Outcome
+        Of all stages.
+    inputs : dict
+        Hashes of the input files.
+    progress : Progress, optional
+    extra : dict, optional
+        Scenario tables and changes against another run, for the report.
+    """
+    if progress:
+        progress.started("report", "Writing the report")
+    begun = time.perf_counter()
+    done = outcome.done
+    write_tables(folder, study, done, outcome.findings)
+    write_layers(folder / "layers", study, done)
+    ledger = ledger_table(study, extra)
+    ledger.to_csv(folder / "decisions.csv", index=False)
+    files = write_report_files(folder, study, outcome, inputs, ledger, extra)
+    seconds = time.perf_counter() - begun
+    record = StageRecord("report", seconds, f"{len(files)} files", False, "")
+    outcome.records.append(record)
+    summary = summarise(study, done)
+    facts = {"summary": summary.record(), "cutoff": {"variable": done["classify"].facts["cutoff_variable"],
+                                                     "value": study.config.cutoff.at},
+             "tally_label": done["classify"].facts["tally_label"], "metals": metal_columns(study.config)}  # fmt: skip
+    write_manifest(folder, study, inputs, outcome.records, facts)
+    if progress:
+        progress.finished("report", seconds, record.detail, False)
+    return summary
+
+
+def block_columns(frame: pd.DataFrame, metals: list[str]) -> list[str]:
+    """Columns of block_model.parquet: what every reader wants first, then the details."""
+    first = [
+        "i", "j", "k", "easting", "northing", "elevation", "volume_m3", "body_fraction", "domain",
+        "dry_density_tpm3", "wet_density_tpm3", "dry_tonnes", "wet_tonnes", *metals,
+        *[f"{metal}_{name}" for metal in metals for name in ("variance", "slope", "efficiency")],
+        "sample_count", "hole_count", "nearest_distance_m", "pass_number", "proposed_class", "class_reasons",
+        "extrapolation", "kept_share", "screened_by",
+    ]  # fmt: skip
+    head = [name for name in first if name in frame]
+    return head + [name for name in frame.columns if name not in head]
+
+
+def write_tables(folder: Path, study: Study, done: dict[str, Any], findings: Findings) -> None:
+    """Block model, grade-tonnage, composites, variograms, validation and findings."""
+    metals = metal_columns(study.config)
+    state: ClassState = done["classify"]
+    frame = state.frame[block_columns(state.frame, metals)]
+    frame.to_parquet(folder / "block_model.parquet", index=False, compression="zstd")
+    state.grade_tonnage.to_csv(folder / "grade_tonnage.csv", index=False)
+    composites = done["composite"].composites
+    weights = done["variograms"].samples.set_index("composite_id")["declustering_weight"]
+    composites = composites.assign(declustering_weight=composites["composite_id"].map(weights))
+    composites.to_csv(folder / "composites.csv", index=False)
+    records = [
+        {"domain": domain, "metal": metal, **item.to_record()}
+        for (domain, metal), item in done["variograms"].inferences.items()
+    ]
+    write_json(folder / "variograms.json", records)
+    done["validate"].table.to_csv(folder / "validation.csv", index=False)
+    write_json(folder / "findings.json", findings.to_records())
+
+
+def write_json(path: Path, content: Any) -> None:
+    """Write JSON in one form, so that the same content is the same bytes."""
+    text = json.dumps(content, indent=1, ensure_ascii=False, default=_plain, allow_nan=True)
+    path.write_text(text, encoding="utf-8")
+
+
+def _plain(value: Any) -> Any:
+    """NumPy scalars and arrays as JSON holds them."""
+    if hasattr(value, "tolist"):
+        return value.tolist()
+    return str(value)
+
+
+def ledger_table(study: Study, extra: dict[str, Any] | None = None) -> pd.DataFrame:
+    """Every decision as a row, with what its alternatives would do where scenarios have told."""
+    effects: dict[str, str] = (extra or {}).get("effects", {})
+    rows = [
+        {"key": row.key, "value": json.dumps(row.value, ensure_ascii=False), "origin": row.origin,
+         "meaning": row.meaning, "reason": row.reason, "by": row.by,
+         "alternatives": ", ".join(json.dumps(other, ensure_ascii=False) for other in row.alternatives),
+         "effect": effects.get(row.key, "")}
+        for row in decisions(study)
+    ]  # fmt: skip
+    return pd.DataFrame(rows)
+
+
+def write_report_files(
+    folder: Path,
+    study: Study,
+    outcome: Outcome,
+    inputs: dict[str, dict[str, Any]],
+    ledger: pd.DataFrame,
+    extra: dict[str, Any] | None,
+) -> list[Path]:
+    """The report and its figures."""
+    from sms_resource.reporting import write_report
+    from sms_resource.workflow.report_data import report_data, truth_page
+
+    manifest = {
+        "inputs": [{"role": role, "path": entry["file"], **entry} for role, entry in inputs.items()],
+        "versions": versions(),
+        "seed": study.config.study.seed,
+    }
+    truth = truth_page(study, outcome.done)
+    data = report_data(study, outcome.done, outcome.findings, ledger, manifest, truth, extra)
+    return write_report(data, folder)
