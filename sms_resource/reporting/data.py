@@ -320,8 +320,9 @@ class RunRecord:
     """How the run came about.
 
     ``ledger`` : key, value, origin ("default" | "chosen" | "borrowed" | "override"), meaning, reason, by,
-    alternatives, effect (text); optional effect_pct (largest change of dry tonnes or metal, for ranking). ``changes`` : step, dry_tonnes,
-    kind ("total" | "change"), decision (against another run). ``against`` : what that run was.
+    alternatives, effect (text); optional effect_pct (largest change of dry tonnes or metal, for ranking).
+    ``changes`` : step, dry_tonnes, kind ("total" | "change"), decision (against another run). ``against`` : what
+    that run was.
     ``truth`` : file, table (quantity, unit, truth, estimate, difference_pct, cause), notes (sentences).
     ``manifest`` : inputs [{path, sha256, ...}], outputs, versions {name: version}, seed, stages [{stage, seconds}].
     ``sources`` : bibliography lines (the report adds its own).

@@ -68,9 +68,10 @@ class Picture:
 
 
 @dataclass(frozen=True)
-class CautionBox:
-    """One caution: what it says, and the figures that set it off."""
+class Caution:
+    """One caution: what it says, and the figures that set it off; ``always`` marks those that need no trigger."""
 
+    key: str
     title: str
     text: str
     figures: str
@@ -84,7 +85,7 @@ class Slot:
     keys: tuple[str, ...]
 
 
-Block = Slot | Paragraph | Heading | Bullets | Facts | Table | Picture | CautionBox
+Block = Slot | Paragraph | Heading | Bullets | Facts | Table | Picture | Caution
 
 
 @dataclass(frozen=True)
@@ -114,16 +115,35 @@ class Document:
 
 
 _SUFFIXES = (
-    ("_dry_tonnes", "dry tonnes (t)"), ("dry_tonnes", "dry tonnes (t)"), ("wet_tonnes", "wet tonnes (t)"),
-    ("_tpm3", "(t/m³)"), ("_m3", "(m³)"), ("_m2", "(m²)"), ("_pct", "(%)"), ("_gpt", "(g/t)"), ("_ppm", "(ppm)"),
-    ("_deg", "(°)"), ("_m", "(m)"), ("_g", "(g)"), ("_seconds", "(s)"),
-)  # fmt: skip
+    ("_dry_tonnes", "dry tonnes (t)"),
+    ("dry_tonnes", "dry tonnes (t)"),
+    ("wet_tonnes", "wet tonnes (t)"),
+    ("_tpm3", "(t/m³)"),
+    ("_m3", "(m³)"),
+    ("_m2", "(m²)"),
+    ("_pct", "(%)"),
+    ("_gpt", "(g/t)"),
+    ("_ppm", "(ppm)"),
+    ("_deg", "(°)"),
+    ("_m", "(m)"),
+    ("_g", "(g)"),
+    ("_seconds", "(s)"),
+)
 _WORDS = {
-    "n": "count", "p_value": "p", "spearman": "rank correlation", "dry_low": "dry, low (t/m³)",
-    "dry_base": "dry, base (t/m³)", "dry_high": "dry, high (t/m³)", "wet_base": "wet, base (t/m³)",
-    "wet_low": "wet, low (t/m³)", "wet_high": "wet, high (t/m³)",
-    "seconds": "time (s)", "cv": "coefficient of variation", "hole_id": "hole", "sample_id": "sample",
-}  # fmt: skip
+    "n": "count",
+    "p_value": "p",
+    "spearman": "rank correlation",
+    "dry_low": "dry, low (t/m³)",
+    "dry_base": "dry, base (t/m³)",
+    "dry_high": "dry, high (t/m³)",
+    "wet_base": "wet, base (t/m³)",
+    "wet_low": "wet, low (t/m³)",
+    "wet_high": "wet, high (t/m³)",
+    "seconds": "time (s)",
+    "cv": "coefficient of variation",
+    "hole_id": "hole",
+    "sample_id": "sample",
+}
 
 
 def column_label(column: str) -> str:
@@ -182,7 +202,7 @@ def frame_table(
     key: str = "",
 ) -> Table:
     """Turn a frame into a table of texts; beyond ``most`` rows the note says how many were left to the files."""
-    chosen = [name for name in (columns or frame.columns) if name in frame.columns and name != "source_row"]
+    chosen = [name for name in columns or frame.columns if name in frame.columns and name != "source_row"]
     names = {**{name: column_label(name) for name in chosen}, **(labels or {})}
     shown = frame[chosen].head(most)
     rows = tuple(
@@ -210,3 +230,17 @@ def facts_from(mapping: Mapping[str, Any] | None) -> Facts | None:
     return Facts(
         tuple((column_label(str(key)), plain_words(cell_text(value, 4))) for key, value in mapping.items())
     )
+
+
+def with_table(blocks: list[Block], frame: pd.DataFrame | None, title: str, **options: object) -> None:
+    if frame is not None and len(frame):
+        blocks.append(frame_table(frame, title, **options))  # type: ignore[arg-type]
+
+
+def drop_empty_headings(blocks: list[Block]) -> list[Block]:
+    """Headings stay only if something follows them; slots count, since figures may fill them later."""
+    return [
+        b
+        for n, b in enumerate(blocks)
+        if not (isinstance(b, Heading) and (n + 1 == len(blocks) or isinstance(blocks[n + 1], Heading)))
+    ]

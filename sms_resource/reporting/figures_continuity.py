@@ -111,7 +111,16 @@ def variograms(data: ReportData) -> list[Drawing]:
             )
         domain = "" if record.domain in ("", "all") else f", domain {record.domain}"
         slug = "".join(c if c.isalnum() else "_" for c in f"{record.metal}_{record.domain}".lower())
-        drawings.append(Drawing(f"variogram_{slug}", "continuity", f"Variogram of {name}{domain}",
-                                f"Dots by pairs of composites (numbers), line: the model, dotted: its total sill. {record.statement}".strip(),
-                                f"Experimental variograms of {name}{domain} with the fitted model.", figure, pd.concat(tables, ignore_index=True)))  # fmt: skip
+        drawings.append(
+            Drawing(
+                f"variogram_{slug}",
+                "continuity",
+                f"Variogram of {name}{domain}",
+                "Dots by pairs of composites (numbers), line: the model, dotted: its total sill."
+                f" {record.statement}".strip(),
+                f"Experimental variograms of {name}{domain} with the fitted model.",
+                figure,
+                pd.concat(tables, ignore_index=True),
+            )
+        )
     return drawings

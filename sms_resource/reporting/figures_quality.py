@@ -90,9 +90,16 @@ def control_charts(data: ReportData) -> Drawing | None:
         for c in ("batch", "sequence", "material", "element", "value", "expected", "expected_sd", "score")
         if c in frame
     ]
-    return Drawing("control_charts", "evidence", "Reference materials: control charts",
-                   "Grey band: 2 SD; solid lines: 3 SD; circled: beyond 3 SD; thin vertical lines part the batches. Points beyond 6 SD are "
-                   "drawn at 6.", "Control charts of reference materials by element.", figure, frame[keep])  # fmt: skip
+    return Drawing(
+        "control_charts",
+        "evidence",
+        "Reference materials: control charts",
+        "Grey band: 2 SD; solid lines: 3 SD; circled: beyond 3 SD; thin vertical lines part the batches."
+        " Points beyond 6 SD are drawn at 6.",
+        "Control charts of reference materials by element.",
+        figure,
+        frame[keep],
+    )
 
 
 def blanks(data: ReportData) -> Drawing | None:
@@ -149,8 +156,15 @@ def blanks(data: ReportData) -> Drawing | None:
     for axis in axes.ravel()[len(elements) :]:
         axis.set_axis_off()
     figure.legend(*axes[0, 0].get_legend_handles_labels(), loc="outside lower center", ncols=3)
-    return Drawing("blanks", "evidence", "Blanks", "Material without metal, in the order of analysis.", "Charts of blanks by element.",
-                   figure, frame[[c for c in ("batch", "sequence", "element", "value", "value_limit", "shown") if c in frame]])  # fmt: skip
+    return Drawing(
+        "blanks",
+        "evidence",
+        "Blanks",
+        "Material without metal, in the order of analysis.",
+        "Charts of blanks by element.",
+        figure,
+        frame[[c for c in ("batch", "sequence", "element", "value", "value_limit", "shown") if c in frame]],
+    )
 
 
 def duplicates(data: ReportData) -> Drawing | None:
@@ -193,10 +207,20 @@ def duplicates(data: ReportData) -> Drawing | None:
         axis.set_yscale("log")
         axis.set_xlim(low, high)
         axis.set_ylim(low, high)
+        style.log_axis(axis.xaxis)
+        style.log_axis(axis.yaxis)
         axis.set_aspect("equal")
         axis.set_xlabel(f"Original, {element_name(element)}")
         axis.set_ylabel(f"Repeat, {element_name(element)}")
     for axis in axes.ravel()[len(elements) :]:
         axis.set_axis_off()
     figure.legend(*axes[0, 0].get_legend_handles_labels(), loc="outside lower center", ncols=5)
-    return Drawing("duplicates", "evidence", "Duplicates", "Dashed lines: 10 % apart; dotted: 20 %.", "Scatter of duplicate pairs by element.", figure, frame)  # fmt: skip
+    return Drawing(
+        "duplicates",
+        "evidence",
+        "Duplicates",
+        "Dashed lines: 10 % apart; dotted: 20 %.",
+        "Scatter of duplicate pairs by element.",
+        figure,
+        frame,
+    )

@@ -80,14 +80,26 @@ def strip_logs(data: ReportData, holes_a_page: int = HOLES_A_PAGE) -> list[Drawi
                 for code in codes:
                     mine = (part["code"].astype(str) == code).to_numpy()
                     if mine.any():
-                        axis.add_collection(PolyCollection(_bars(part[mine], at[mine], -0.42, 0.16), fc=ROCK_COLOURS[look[code] % 8],
-                                                           hatch=ROCK_HATCHES[look[code] % 8], ec=style.QUIET, lw=0.3))  # fmt: skip
+                        axis.add_collection(
+                            PolyCollection(
+                                _bars(part[mine], at[mine], -0.42, 0.16),
+                                fc=ROCK_COLOURS[look[code] % 8],
+                                hatch=ROCK_HATCHES[look[code] % 8],
+                                ec=style.QUIET,
+                                lw=0.3,
+                            )
+                        )
             axis.add_collection(
                 PolyCollection(_bars(here, centre, -0.24, 0.26), fc="none", ec=style.INK, lw=0.5)
             )
             if known.any():
-                cells = PolyCollection(_bars(here[known], centre[known], -0.24, 0.26), array=here.loc[known, metal].to_numpy(float),
-                                       cmap=style.GRADE_MAP, edgecolors="face", linewidths=0.1)  # fmt: skip
+                cells = PolyCollection(
+                    _bars(here[known], centre[known], -0.24, 0.26),
+                    array=here.loc[known, metal].to_numpy(float),
+                    cmap=style.GRADE_MAP,
+                    edgecolors="face",
+                    linewidths=0.1,
+                )
                 cells.set_clim(*limits)
                 axis.add_collection(cells)
             base = (
@@ -149,8 +161,17 @@ def strip_logs(data: ReportData, holes_a_page: int = HOLES_A_PAGE) -> list[Drawi
         figure.legend(handles=handles, loc="outside lower center", ncols=5)
         table = sticks[names.isin(page)]
         columns = [c for c in ("hole_id", "from_m", "to_m", "domain", "recovery_pct", *metals) if c in table]
-        drawings.append(Drawing(f"strip_logs_{number:02d}", "evidence", f"Strip logs, page {number} of {len(pages)}: {page[0]} to {page[-1]}",
-                                f"Each hole from left: logged lithology, {element_label(metal)} (blank where core was lost or not assayed), "
-                                "recovery of the run. Below each hole: ▼ ended in sulphide, — ended in host rock, × lost.",
-                                f"Strip logs of {len(page)} holes with lithology, grade and recovery.", figure, table[columns]))  # fmt: skip
+        drawings.append(
+            Drawing(
+                f"strip_logs_{number:02d}",
+                "evidence",
+                f"Strip logs, page {number} of {len(pages)}: {page[0]} to {page[-1]}",
+                f"Each hole from left: logged lithology, {element_label(metal)} (blank where core was lost or"
+                " not assayed), recovery of the run. Below each hole: ▼ ended in sulphide, — ended in host"
+                " rock, × lost.",
+                f"Strip logs of {len(page)} holes with lithology, grade and recovery.",
+                figure,
+                table[columns],
+            )
+        )
     return drawings

@@ -13,8 +13,13 @@ from sms_resource.reporting.figures_samples import panel_grid
 from sms_resource.reporting.style import Drawing
 from sms_resource.units import column_element, element_label
 
-AXIS_LABELS = {"easting": "Easting (m)", "northing": "Northing (m)", "elevation": "Elevation (m)",
-               "along": "Distance along the body (m)", "across": "Distance across the body (m)"}  # fmt: skip
+AXIS_LABELS = {
+    "easting": "Easting (m)",
+    "northing": "Northing (m)",
+    "elevation": "Elevation (m)",
+    "along": "Distance along the body (m)",
+    "across": "Distance across the body (m)",
+}
 ESTIMATOR_NAMES = {
     "nearest": "nearest composite",
     "inverse_distance": "inverse distance",
@@ -111,8 +116,16 @@ def swaths(data: ReportData) -> Drawing | None:
                 axis.set_xlabel(AXIS_LABELS.get(name, f"{name} (m)"))
             axis.locator_params(axis="x", nbins=5)
     figure.legend(*axes[0, 0].get_legend_handles_labels(), loc="outside lower center", ncols=5)
-    return Drawing("swaths", "estimate", "Swaths", "Means in slices along each axis; grey bars are the number of composites in the slice. Blocks should follow the composites where "
-                   "there are many and smooth them where there are few.", "Swath plots of block and composite means by metal and axis.", figure, frame)  # fmt: skip
+    return Drawing(
+        "swaths",
+        "estimate",
+        "Swaths",
+        "Means in slices along each axis; grey bars are the number of composites in the slice. Blocks should"
+        " follow the composites where there are many and smooth them where there are few.",
+        "Swath plots of block and composite means by metal and axis.",
+        figure,
+        frame,
+    )
 
 
 def leave_one_out(data: ReportData) -> Drawing | None:
@@ -149,12 +162,27 @@ def leave_one_out(data: ReportData) -> Drawing | None:
         for c in ("hole_id", "column", "domain", "true", "estimate", "error", "standardised_error")
         if c in frame
     ]
-    return Drawing("leave_one_out", "estimate", "Leave one hole out", "Each composite estimated without its own hole. Thin line: equal; thick line: regression of the composite on the estimate, "
-                   "whose slope should be near one.", "Scatter of composites against estimates made without their hole.", figure, frame[keep])  # fmt: skip
+    return Drawing(
+        "leave_one_out",
+        "estimate",
+        "Leave one hole out",
+        "Each composite estimated without its own hole. Thin line: equal; thick line: regression of the"
+        " composite on the estimate, whose slope should be near one.",
+        "Scatter of composites against estimates made without their hole.",
+        figure,
+        frame[keep],
+    )
 
 
-SUPPORT_LOOKS: dict[str, tuple[str, Any]] = {"blocks": (style.INK, "-"), "block": (style.INK, "-"), "discrete gaussian": (style.LINES[1], "--"), "discrete_gaussian": (style.LINES[1], "--"),
-                                             "affine": (style.LINES[2], ":"), "composites": (style.LINES[4], "-."), "points": (style.LINES[4], "-.")}  # fmt: skip
+SUPPORT_LOOKS: dict[str, tuple[str, Any]] = {
+    "blocks": (style.INK, "-"),
+    "block": (style.INK, "-"),
+    "discrete gaussian": (style.LINES[1], "--"),
+    "discrete_gaussian": (style.LINES[1], "--"),
+    "affine": (style.LINES[2], ":"),
+    "composites": (style.LINES[4], "-."),
+    "points": (style.LINES[4], "-."),
+}
 
 
 def change_of_support(data: ReportData) -> Drawing | None:
@@ -183,8 +211,16 @@ def change_of_support(data: ReportData) -> Drawing | None:
         axes[0, column].set_ylim(0, 102)
     axes[0, 0].set_ylabel("Share of volume above (%)")
     figure.legend(*axes[0, 0].get_legend_handles_labels(), loc="outside lower center", ncols=4)
-    return Drawing("change_of_support", "estimate", "Change of support", "What blocks of this size should show by theory against what the estimate shows. An estimate that falls below the "
-                   "theoretical share at high cut-offs is smooth.", "Curves of volume and grade above cut-off by support.", figure, frame)  # fmt: skip
+    return Drawing(
+        "change_of_support",
+        "estimate",
+        "Change of support",
+        "What blocks of this size should show by theory against what the estimate shows. An estimate that"
+        " falls below the theoretical share at high cut-offs is smooth.",
+        "Curves of volume and grade above cut-off by support.",
+        figure,
+        frame,
+    )
 
 
 def estimators(data: ReportData) -> Drawing | None:
@@ -208,8 +244,14 @@ def estimators(data: ReportData) -> Drawing | None:
     axis.axvspan(-5, 5, color="#eef2f5", zorder=0)
     for number, name in enumerate(n for n in names if n != reference):
         change = 100 * (rows[name].to_numpy(float) / rows[reference].to_numpy(float) - 1)
-        axis.plot(change, np.arange(len(rows))[::-1] + 0.12 * (number - (len(names) - 2) / 2), style.MARKERS[number % 7], ms=5, color=style.LINES[number % 7],
-                  label=ESTIMATOR_NAMES.get(name, name.replace("_", " ")))  # fmt: skip
+        axis.plot(
+            change,
+            np.arange(len(rows))[::-1] + 0.12 * (number - (len(names) - 2) / 2),
+            style.MARKERS[number % 7],
+            ms=5,
+            color=style.LINES[number % 7],
+            label=ESTIMATOR_NAMES.get(name, name.replace("_", " ")),
+        )
     axis.set_yticks(np.arange(len(rows))[::-1], [metal_name(m) for m in rows["metal"]])
     axis.set_ylim(-0.6, len(rows) - 0.4)
     axis.set_xlabel(f"Mean grade relative to {reference.replace('_', ' ')} (%)")
@@ -233,8 +275,17 @@ def neighbourhood(data: ReportData) -> Drawing | None:
     )
     if frame is None or number is None:
         return None
-    measures = [(c, t) for c, t in (("slope", "Slope of regression (ratio)"), ("slope_of_regression", "Slope of regression (ratio)"), ("efficiency", "Kriging efficiency (ratio)"),
-                                    ("kriging_efficiency", "Kriging efficiency (ratio)"), ("negative_weight_sum", "Sum of negative weights (ratio)")) if c in frame]  # fmt: skip
+    measures = [
+        (c, t)
+        for c, t in (
+            ("slope", "Slope of regression (ratio)"),
+            ("slope_of_regression", "Slope of regression (ratio)"),
+            ("efficiency", "Kriging efficiency (ratio)"),
+            ("kriging_efficiency", "Kriging efficiency (ratio)"),
+            ("negative_weight_sum", "Sum of negative weights (ratio)"),
+        )
+        if c in frame
+    ]
     if not measures:
         return None
     figure, axes = style.new_figure(3.3 * len(measures), 2.7, 1, len(measures))
@@ -265,6 +316,12 @@ def neighbourhood(data: ReportData) -> Drawing | None:
             ncols=4,
             title=" and ".join(g.replace("_", " ") for g in groups),
         )
-    return Drawing("neighbourhood", "estimate", "Neighbourhood study", data.estimation.neighbourhood_note or "Slope and efficiency against the number of samples.",
-                   "Curves of slope, efficiency and negative weights against the number of samples.", figure,
-                   frame.drop(columns=[c for c in ("seconds", "time_s") if c in frame]))  # fmt: skip
+    return Drawing(
+        "neighbourhood",
+        "estimate",
+        "Neighbourhood study",
+        data.estimation.neighbourhood_note or "Slope and efficiency against the number of samples.",
+        "Curves of slope, efficiency and negative weights against the number of samples.",
+        figure,
+        frame.drop(columns=[c for c in ("seconds", "time_s") if c in frame]),
+    )

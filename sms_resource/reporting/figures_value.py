@@ -70,11 +70,25 @@ def grade_tonnage(data: ReportData) -> Drawing | None:
         for number, metal in enumerate(metals):
             start = part[metal].dropna()
             relative = part[metal] / start.iloc[0] if len(start) and start.iloc[0] else part[metal] * np.nan
-            right.plot(part["cutoff"], relative, color=style.LINES[number % 7], ls=("-", "--", "-.", ":")[number % 4], lw=1.4,
-                       label=f"{element_label(metal).rpartition(' (')[0]} grade" if panel == 0 else None)  # fmt: skip
+            right.plot(
+                part["cutoff"],
+                relative,
+                color=style.LINES[number % 7],
+                ls=("-", "--", "-.", ":")[number % 4],
+                lw=1.4,
+                label=f"{element_label(metal).rpartition(' (')[0]} grade" if panel == 0 else None,
+            )
             if len(start):
-                right.annotate(f"{start.iloc[0]:.3g} {element_label(metal).rpartition(' (')[2].rstrip(')')} {element_label(metal).rpartition(' (')[0]}", (0.98, 0.06 + 0.075 * number),
-                               xycoords="axes fraction", ha="right", fontsize=6.8, color=style.LINES[number % 7])  # fmt: skip
+                right.annotate(
+                    f"{start.iloc[0]:.3g} {element_label(metal).rpartition(' (')[2].rstrip(')')}"
+                    f" {element_label(metal).rpartition(' (')[0]}",
+                    (0.98, 0.06 + 0.075 * number),
+                    xycoords="axes fraction",
+                    ha="right",
+                    fontsize=6.8,
+                    bbox={"facecolor": "white", "alpha": 0.75, "edgecolor": "none", "pad": 0.8},
+                    color=style.LINES[number % 7],
+                )
         right.set_ylabel("Grade above / grade at the lowest cut-off (ratio)")
         right.set_ylim(bottom=0)
         cutoff = (data.subject.cutoff or {}).get("value")
@@ -94,9 +108,16 @@ def grade_tonnage(data: ReportData) -> Drawing | None:
             )
     for axis in axes.ravel()[len(names) :]:
         axis.set_axis_off()
-    return Drawing("grade_tonnage", "tonnes", f"Tonnes and grade against cut-off ({data.tally_label})",
-                   "Block support, no dilution. Grades are drawn as a ratio to their value at the lowest cut-off, so that four metals share an "
-                   "axis; the numbers in the panel are those values.", "Grade-tonnage curves, one panel for each proposed class.", figure, rows)  # fmt: skip
+    return Drawing(
+        "grade_tonnage",
+        "tonnes",
+        f"Tonnes and grade against cut-off ({data.tally_label})",
+        "Block support, no dilution. Grades are drawn as a ratio to their value at the lowest cut-off, so"
+        " that four metals share an axis; the numbers in the panel are those values.",
+        "Grade-tonnage curves, one panel for each proposed class.",
+        figure,
+        rows,
+    )
 
 
 def _waterfall(
@@ -112,7 +133,7 @@ def _waterfall(
     figure, axes = style.new_figure(8.6, 0.42 * len(frame) + 1.3)
     axis = axes[0, 0]
     level = 0.0
-    for number, (value, kind, step) in enumerate(zip(values, kinds, frame["step"].astype(str))):
+    for number, (value, kind, _step) in enumerate(zip(values, kinds, frame["step"].astype(str))):
         y = len(frame) - 1 - number
         if kind == total:
             axis.barh(y, value / scale, color="#4f6d7a", height=0.62)
@@ -125,9 +146,11 @@ def _waterfall(
             right = max(level, level + value) / scale
             axis.text(right, y, f" {value / scale:+.3g}", va="center", fontsize=7.5)
             level += value
-        axis.plot(
-            [level / scale, level / scale], [y - 1 + 0.31, y - 0.31], color=style.QUIET, lw=0.6
-        ) if number < len(frame) - 1 else None
+        (
+            axis.plot([level / scale, level / scale], [y - 1 + 0.31, y - 0.31], color=style.QUIET, lw=0.6)
+            if number < len(frame) - 1
+            else None
+        )
     axis.set_yticks(range(len(frame)), list(frame["step"].astype(str))[::-1])
     axis.set_ylim(-0.6, len(frame) - 0.4)
     axis.set_xlabel(f"Dry tonnes ({unit} dry), {data.tally_label}")
@@ -254,8 +277,15 @@ def tornado(data: ReportData) -> Drawing | None:
         axis.set_xlabel(f"{measure_label(measure)}: change (%)")
         axis.margins(x=0.3)
     axes[0, 0].set_yticks(range(len(names)), [str(n).replace("_", " ")[:44] for n in names][::-1])
-    return Drawing("tornado", "scenarios", f"What moves the estimate ({data.tally_label})", f"Each decision moved alone to its low (orange) and high (green) alternative; at {data.cutoff_text}.",
-                   "Tornado of the effect of each decision.", figure, frame)  # fmt: skip
+    return Drawing(
+        "tornado",
+        "scenarios",
+        f"What moves the estimate ({data.tally_label})",
+        f"Each decision moved alone to its low (orange) and high (green) alternative; at {data.cutoff_text}.",
+        "Tornado of the effect of each decision.",
+        figure,
+        frame,
+    )
 
 
 def heat_map(data: ReportData) -> Drawing | None:

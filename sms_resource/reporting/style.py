@@ -40,7 +40,7 @@ CLASS_COLOURS = {
 CLASS_HATCHES = {"measured": "", "indicated": "", "inferred": "//", "unclassified": ".."}
 VERDICT_COLOURS = {"good": "#009e73", "caution": "#e69f00", "failed": "#d55e00", "missing": "#8a8f94"}
 
-SETTINGS: dict[str, Any] = {
+SETTINGS: Any = {
     "svg.hashsalt": "sms_resource",
     "svg.fonttype": "path",
     "font.family": ["DejaVu Sans"],
@@ -70,6 +70,9 @@ SETTINGS: dict[str, Any] = {
     "hatch.color": "#7d8489",
     "path.simplify": True,
     "axes.formatter.useoffset": False,
+    "axes.formatter.limits": (-5, 9),
+    "figure.constrained_layout.w_pad": 0.08,
+    "figure.constrained_layout.h_pad": 0.08,
 }
 
 
@@ -118,18 +121,24 @@ def save_drawing(drawing: Drawing, folder: Path) -> tuple[bytes, list[Path]]:
     """
     import io
 
-    folder.mkdir(parents=True, exist_ok=True)
-    (folder / "data").mkdir(exist_ok=True)
+    from matplotlib.backends.backend_agg import FigureCanvasAgg
+    from matplotlib.backends.backend_svg import FigureCanvasSVG
+
+    (folder / "data").mkdir(parents=True, exist_ok=True)
     png, svg = folder / f"{drawing.key}.png", folder / f"{drawing.key}.svg"
     table = folder / "data" / f"{drawing.key}.csv"
     figure = drawing.figure
-    figure.get_layout_engine().execute(figure)  # type: ignore[union-attr]
-    figure.set_layout_engine("none")  # placed once, not again for each file
+    engine = figure.get_layout_engine()
+    if engine is not None:
+        engine.execute(figure)
+        figure.set_layout_engine("none")  # placed once, not again for each file
+    # The canvases are asked directly: savefig would draw everything once more to place it.
     buffer = io.BytesIO()
-    figure.savefig(buffer, format="png", dpi=DPI, metadata={"Software": None})
+    FigureCanvasAgg(figure).print_png(buffer, metadata={"Software": None})
     content = buffer.getvalue()
     png.write_bytes(content)
-    figure.savefig(svg, format="svg", dpi=DPI, metadata={"Date": None, "Creator": None})
+    FigureCanvasSVG(figure).print_svg(svg, metadata={"Date": None, "Creator": None})
+    figure.dpi = DPI
     drawing.table.to_csv(table, index=False, lineterminator="\n", float_format="%.10g")
     return content, [png, svg, table]
 
@@ -160,16 +169,45 @@ def finish_plan(axes: Axes, *, label: str = "") -> None:
     length = nice_length(x1 - x0)
     height = (y1 - y0) * 0.012
     left, bottom = x0 + 0.04 * (x1 - x0), y0 + 0.04 * (y1 - y0)
-    halo = dict(facecolor="white", alpha=0.8, edgecolor="none", pad=1.5)
-    axes.fill([left, left + length / 2, left + length / 2, left], [bottom, bottom, bottom + height, bottom + height],
-              color=INK, zorder=20, lw=0.6, ec=INK)  # fmt: skip
-    axes.fill([left + length / 2, left + length, left + length, left + length / 2],
-              [bottom, bottom, bottom + height, bottom + height], fc="white", ec=INK, lw=0.6, zorder=20)  # fmt: skip
-    axes.text(left + length / 2, bottom + 1.8 * height, f"{length:g} m", ha="center", va="bottom", fontsize=7,
-              zorder=20, bbox=halo)  # fmt: skip
-    axes.annotate("N", xy=(0.955, 0.965), xytext=(0.955, 0.865), xycoords="axes fraction", ha="center", va="center",
-                  fontsize=8, zorder=20, bbox=halo,
-                  arrowprops=dict(arrowstyle="-|>", color=INK, lw=1.1, shrinkA=0, shrinkB=0))  # fmt: skip
+    halo = {"facecolor": "white", "alpha": 0.8, "edgecolor": "none", "pad": 1.5}
+    axes.fill(
+        [left, left + length / 2, left + length / 2, left],
+        [bottom, bottom, bottom + height, bottom + height],
+        color=INK,
+        zorder=20,
+        lw=0.6,
+        ec=INK,
+    )
+    axes.fill(
+        [left + length / 2, left + length, left + length, left + length / 2],
+        [bottom, bottom, bottom + height, bottom + height],
+        fc="white",
+        ec=INK,
+        lw=0.6,
+        zorder=20,
+    )
+    axes.text(
+        left + length / 2,
+        bottom + 1.8 * height,
+        f"{length:g} m",
+        ha="center",
+        va="bottom",
+        fontsize=7,
+        zorder=20,
+        bbox=halo,
+    )
+    axes.annotate(
+        "N",
+        xy=(0.955, 0.965),
+        xytext=(0.955, 0.865),
+        xycoords="axes fraction",
+        ha="center",
+        va="center",
+        fontsize=8,
+        zorder=20,
+        bbox=halo,
+        arrowprops={"arrowstyle": "-|>", "color": INK, "lw": 1.1, "shrinkA": 0, "shrinkB": 0},
+    )
     axes.set_xlim(x0, x1)
     axes.set_ylim(y0, y1)
     if label:
@@ -206,3 +244,14 @@ def grade_limits(values: Any) -> tuple[float, float]:
     high = float(np.quantile(array, 0.975))
     low = float(min(0.0, array.min()))
     return (low, high) if high > low else (low, low + 1.0)
+
+
+def log_axis(axis: Any) -> None:
+    """A logarithmic axis with plain numbers at 1, 2 and 5 (or at powers of ten where it is long)."""
+    from matplotlib.ticker import FuncFormatter, LogLocator, NullLocator
+
+    low, high = axis.get_view_interval()
+    long = low > 0 and high / low > 300
+    axis.set_major_locator(LogLocator(subs=(1.0,) if long else (1.0, 2.0, 5.0), numticks=12))
+    axis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
+    axis.set_minor_locator(NullLocator())

@@ -9,7 +9,6 @@ import pandas as pd
 from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.elements import Table
 from sms_resource.reporting.rounding import (
-    NO_VALUE,
     contained_metal,
     is_inferred,
     mass_unit,
@@ -76,32 +75,29 @@ def tonnage_table(data: ReportData, rows: pd.DataFrame, title: str, *, first: Se
         f"{element_label(metal).rpartition(' (')[0]} contained ({contained[metal][0]} metal)"
         for metal in metals
     ]
+    names = rows["proposed_class"].astype(str).str.lower()
+    unclassified = float(rows.loc[names == "unclassified", "dry_tonnes"].sum()) > 0
     body, strong = [], []
     for number, row in enumerate(rows.to_dict("records")):
         inferred = is_inferred(row["proposed_class"])
         figures = data.subject.inferred_figures if inferred else data.subject.significant_figures
-        lead = "approx. " if inferred else ""
         name = str(row["proposed_class"])
+        if inferred:
+            name = f"{name} (approximately)"
         if name.lower() == "all":
-            name = "All classes"
+            name = "All blocks, classified or not" if unclassified else "All classes"
             strong.append(number)
         cells = [str(row[item]) for item in first] + [name]
-        cells.append(_with_lead(lead, significant_text(float(row["dry_tonnes"]) / scale, figures)))
-        cells.append(
-            _with_lead(lead, significant_text(float(row.get("wet_tonnes", float("nan"))) / scale, figures))
-        )
-        cells += [_with_lead(lead, significant_text(float(row[metal]), figures)) for metal in metals]
+        cells.append(significant_text(float(row["dry_tonnes"]) / scale, figures))
+        cells.append(significant_text(float(row.get("wet_tonnes", float("nan"))) / scale, figures))
+        cells += [significant_text(float(row[metal]), figures) for metal in metals]
         supported = metal_figures(figures, figures)
         for metal in metals:
             mass = contained_metal(row["dry_tonnes"], row[metal], metal) / contained[metal][1]
-            cells.append(_with_lead(lead, significant_text(mass, supported)))
+            cells.append(significant_text(mass, supported))
         body.append(tuple(cells))
     numeric = tuple([False] * (len(first) + 1) + [True] * (len(head) - len(first) - 1))
     return Table(title, tuple(head), tuple(body), numeric, ROUNDING_NOTE, tuple(strong), key="tonnes")
-
-
-def _with_lead(lead: str, text: str) -> str:
-    return text if text in (NO_VALUE, "0") else f"{lead}{text}"
 
 
 def class_rows(rows: pd.DataFrame) -> pd.DataFrame:

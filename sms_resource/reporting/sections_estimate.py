@@ -1,0 +1,145 @@
+"""Sections on the estimate, the proposed classes, the tonnes and the scenarios."""
+
+from __future__ import annotations
+
+import pandas as pd
+
+from sms_resource.reporting.data import ReportData
+from sms_resource.reporting.elements import (
+    Block,
+    Bullets,
+    Heading,
+    Paragraph,
+    Slot,
+    drop_empty_headings,
+    facts_from,
+    frame_table,
+    number_text,
+    with_table,
+)
+from sms_resource.reporting.rounding import mass_text
+from sms_resource.reporting.tonnage import class_rows, rows_at_cutoff, tonnage_table
+from sms_resource.units import element_label
+
+
+def untimed(frame: pd.DataFrame | None) -> pd.DataFrame | None:
+    """A frame without measured times: the same study gives the same bytes."""
+    return frame if frame is None else frame.drop(columns=[c for c in ("seconds", "time_s") if c in frame])
+
+
+def estimate(data: ReportData) -> list[Block]:
+    s = data.estimation
+    blocks: list[Block] = [Heading("Method")]
+    facts = facts_from(s.settings)
+    if facts:
+        blocks.append(facts)
+    blocks += [Heading("Grades in plan and section"), Slot(("plan_grades", "section")), Heading("Checks")]
+    with_table(blocks, s.checks, "Checks and their verdicts")
+    with_table(blocks, s.means, "Global means: composites, declustered, blocks")
+    with_table(blocks, s.estimators, "Mean grade by estimator")
+    blocks.append(Slot(("estimators",)))
+    blocks.append(Slot(("swaths",)))
+    with_table(blocks, s.leave_one_out_summary, "Leave one hole out")
+    blocks.append(Slot(("leave_one_out",)))
+    with_table(blocks, s.support_variance, "Realised against theoretical block variance")
+    blocks.append(Slot(("change_of_support",)))
+    with_table(blocks, s.frames_effect, "Effect of the vertical frame")
+    with_table(blocks, untimed(s.neighbourhood), "Neighbourhood study", note=s.neighbourhood_note, most=30)
+    blocks.append(Slot(("neighbourhood",)))
+    return drop_empty_headings(blocks) if s.blocks is not None or s.settings else []
+
+
+def classes(data: ReportData) -> list[Block]:
+    c = data.classes
+    blocks: list[Block] = []
+    facts = facts_from(c.criteria)
+    if facts:
+        blocks += [Heading("Criteria of the study"), facts]
+    if c.flags:
+        blocks.append(Bullets(tuple(c.flags)))
+    with_table(blocks, c.reasons, "Why blocks have their proposed class", most=40)
+    with_table(blocks, c.before_after, "Before and after smoothing to connected volumes")
+    with_table(blocks, c.overrides, "Overrides by polygon")
+    if c.exploration_target:
+        blocks.append(target(data))
+    return blocks
+
+
+def target(data: ReportData) -> Paragraph:
+    target = data.classes.exploration_target or {}
+    low, high = (
+        float(target.get("dry_tonnes_low", float("nan"))),
+        float(target.get("dry_tonnes_high", float("nan"))),
+    )
+    grades = "; ".join(
+        f"{element_label(m)} {number_text(v[0], 2)} to {number_text(v[1], 2)}"
+        for m, v in (target.get("grades") or {}).items()
+    )
+    return Paragraph(
+        "Exploration target (conceptual; insufficient exploration to estimate a resource; uncertain whether"
+        f" further exploration will result in one): {mass_text(low, 'dry')} to {mass_text(high, 'dry')};"
+        f" {grades}.",
+        "note",
+    )
+
+
+def tonnes(data: ReportData) -> list[Block]:
+    blocks: list[Block] = []
+    rows = rows_at_cutoff(data)
+    label = data.tally_label
+    if len(rows):
+        blocks.append(
+            tonnage_table(
+                data, rows, f"{label[0].upper()}{label[1:]} at {data.cutoff_text}, by proposed class"
+            )
+        )
+    blocks.append(Slot(("grade_tonnage",)))
+    shape = rows_at_cutoff(data, data.value.mineable_shape) if data.value.mineable_shape is not None else None
+    if shape is not None and len(shape):
+        blocks.append(
+            tonnage_table(
+                data,
+                shape,
+                f"Connected shapes with their must-take material, at {data.cutoff_text} ({label})",
+            )
+        )
+    if data.body.waterfall is not None and len(data.body.waterfall):
+        blocks += [
+            frame_table(
+                data.body.waterfall,
+                f"What the screens take ({label})",
+                labels={"dry_tonnes": "Dry tonnes (t dry)"},
+            ),
+            Slot(("waterfall",)),
+        ]
+    return blocks if len(class_rows(rows)) or len(blocks) > 1 else []
+
+
+def scenarios(data: ReportData) -> list[Block]:
+    v = data.value
+    blocks: list[Block] = []
+    if v.equivalent:
+        blocks.append(Heading("Metal equivalent"))
+        blocks.append(
+            Paragraph(
+                f"{v.equivalent.get('formula', '')}. {v.equivalent.get('statement', '')}".strip(". ") + "."
+            )
+        )
+        table = v.equivalent.get("table")
+        with_table(blocks, table, "Prices, recoveries and payabilities")
+    with_table(blocks, v.cutoff_costs, "Costs inside the cut-off")
+    if v.scenarios is not None and len(v.scenarios):
+        blocks += [
+            Heading("Scenarios"),
+            frame_table(v.scenarios, f"Scenarios at the study's cut-off ({data.tally_label})", most=40),
+        ]
+    blocks.append(Slot(("tornado", "heat_map")))
+    return (
+        blocks
+        if v.equivalent
+        or v.cutoff_costs is not None
+        or v.scenarios is not None
+        or v.tornado is not None
+        or v.heat_map is not None
+        else []
+    )

@@ -1,0 +1,250 @@
+"""The page: nothing missing, everything escaped, rounded and labelled; figures complete and the same each time."""
+
+import re
+from dataclasses import fields, replace
+from html.parser import HTMLParser
+
+import pandas as pd
+import pytest
+
+from sms_resource.reporting import write_report
+from sms_resource.reporting.cautions import all_cautions
+from sms_resource.reporting.data import Evidence, ReportData, Subject
+from sms_resource.reporting.figures import MAKERS, all_drawings
+from sms_resource.reporting.sections import TITLES, build_document
+from sms_resource.reporting.tonnage import rows_at_cutoff, tonnage_table
+from tests.reporting.conftest import HOSTILE
+
+KEPT_OUT = (
+    "ore",
+    "reserve",
+    "reserves",
+    "proven",
+    "probable",
+    "compliant",
+    "mineable resource",
+    "in-situ value",
+    "guaranteed",
+    "calculated",
+)
+
+
+class Text(HTMLParser):
+    """Collects text, tags and the text of table heads."""
+
+    def __init__(self):
+        super().__init__()
+        self.text, self.tags, self.heads, self.stack, self.images = [], [], [], [], []
+
+    def handle_starttag(self, tag, attrs):
+        self.tags.append(tag)
+        self.stack.append(tag)
+        if tag == "img":
+            self.images.append(dict(attrs))
+
+    def handle_endtag(self, tag):
+        while self.stack and self.stack.pop() != tag:
+            pass
+
+    def handle_data(self, words):
+        if "style" in self.stack:
+            return
+        self.text.append(words)
+        if "th" in self.stack:
+            self.heads.append(words)
+
+
+@pytest.fixture(scope="module")
+def parsed(page):
+    parser = Text()
+    parser.feed(page)
+    return parser
+
+
+def test_all_sections_in_order(page):
+    places = [page.index(f'<section id="{key}">') for key in TITLES]
+    assert places == sorted(places)
+    for key in TITLES:
+        assert f'href="#{key}"' in page
+
+
+def test_first_screen_is_the_estimate_and_its_basis(page):
+    first = page[: page.index('<nav class="contents"')]
+    for words in (
+        "Block-model tally at Cu ≥ 1 %",
+        "Dry tonnes (kt dry)",
+        "Wet tonnes (kt wet)",
+        "Indicated",
+        "Inferred (approximately)",
+        "Effective date",
+        "Density (dry; wet)",
+    ):
+        assert words in first
+
+
+def test_all_cautions_with_their_figures(page, hostile_data):
+    from markupsafe import escape
+
+    for caution in all_cautions(hostile_data):
+        assert str(escape(caution.title)) in page
+        assert str(escape(" ".join(caution.figures.split()))) in page, caution.key
+
+
+def test_text_from_data_is_escaped(page, parsed):
+    assert "<script" not in page.lower()
+    assert "script" not in parsed.tags
+    assert "&lt;script&gt;alert(1)&lt;/script&gt;" in page
+    assert sum(HOSTILE in text for text in ["".join(parsed.text)]) == 1
+
+
+def test_self_contained(page):
+    assert not re.search(r'(src|href)\s*=\s*"(?!data:image/png;base64,|#)', page)
+    assert "@import" not in page and "url(" not in page
+
+
+def test_every_picture_is_there_with_words(parsed, report):
+    keys = {drawing.key for drawing in report.document.drawings()}
+    assert len(parsed.images) == len(keys) == len(report.pictures)
+    for image in parsed.images:
+        assert len(image["alt"]) > 15 and len(image["src"]) > 2000
+    names = {path.name for path in report.paths}
+    for key in keys:
+        assert {f"{key}.png", f"{key}.svg", f"{key}.csv"} <= names
+    for path in report.paths:
+        assert path.stat().st_size > 50, path
+
+
+def test_every_maker_draws_with_full_data(report, page):
+    drawings = report.document.drawings()
+    assert "Figures without data in this study" not in page
+    assert len({drawing.key for drawing in drawings}) == len(drawings) >= len(MAKERS)
+    for drawing in drawings:
+        assert drawing.caption.strip() and drawing.alt.strip() and len(drawing.table)
+
+
+def test_axes_carry_units_plans_a_bar_and_sections_their_exaggeration(report):
+    drawings = report.document.drawings()
+    unit = re.compile(
+        r"\((m|%|g/t|t/m³|ratio|count|kt dry|t dry|Mt dry|kt)\)|%|^(Holes|Composites|Drilled"
+        r" length)|squared|SD$|g/t|\bratio\b"
+    )
+    for drawing in drawings:
+        for axes in drawing.figure.axes:
+            for label in (axes.get_xlabel(), axes.get_ylabel()):
+                assert not label or unit.search(label), (drawing.key, label)
+        if drawing.key.startswith("plan_"):
+            plan = drawing.figure.axes[0]
+            texts = [text.get_text() for text in plan.texts]
+            assert "N" in texts and any(text.endswith(" m") for text in texts), drawing.key
+        if drawing.key.startswith("section_"):
+            assert all(
+                "vertical exaggeration" in axes.get_title(loc="left")
+                for axes in drawing.figure.axes
+                if axes.get_xlabel()
+            )
+
+
+def test_figures_of_tonnes_carry_the_tally_label(report):
+    drawings = {drawing.key: drawing for drawing in report.document.drawings()}
+    for key in ("grade_tonnage", "waterfall", "tornado", "heat_map", "plan_classes"):
+        words = drawings[key].title + " ".join(axes.get_xlabel() for axes in drawings[key].figure.axes)
+        assert "block-model tally" in words, key
+
+
+def test_words_kept_out(parsed):
+    text = " ".join(parsed.text)
+    for word in KEPT_OUT:
+        assert not re.search(rf"\b{word}\b", text, re.I), word
+
+
+def test_every_tonnage_says_dry_or_wet(parsed):
+    tonnage = re.compile(r"tonne|\((?:t|kt|Mt)\b", re.I)
+    heads = [head for head in parsed.heads if tonnage.search(head)]
+    assert len(heads) >= 5
+    for head in heads:
+        assert re.search(r"\b(dry|wet|metal)\b", head, re.I), head
+    text = " ".join(parsed.text)
+    for found in re.finditer(r"\d\s(?:Mt|kt)\b(.{0,8})", text):
+        assert re.match(r"\s(dry|wet|metal)", found.group(1)), found.group(0)
+
+
+def test_every_tonnage_of_a_figure_says_dry_or_wet(report):
+    for drawing in report.document.drawings():
+        for axes in drawing.figure.axes:
+            for label in (axes.get_xlabel(), axes.get_ylabel()):
+                assert not re.search(r"tonne", label, re.I) or re.search(r"\b(dry|wet)\b", label, re.I), (
+                    drawing.key,
+                    label,
+                )
+
+
+def test_totals_and_metal_come_from_unrounded_values(data):
+    table = pd.DataFrame(
+        {
+            "cutoff_variable": "cu_pct",
+            "cutoff": 1.0,
+            "proposed_class": ["Indicated", "all"],
+            "dry_tonnes": [10_863_000.0] * 2,
+            "wet_tonnes": [11_400_000.0] * 2,
+            "cu_pct": [8.23] * 2,
+        }
+    )
+    one = ReportData(
+        subject=Subject(metals=("cu_pct",), cutoff={"variable": "cu_pct", "value": 1.0}),
+        value=type(data.value)(grade_tonnage=table),
+    )
+    shown = tonnage_table(one, rows_at_cutoff(one), "t")
+    assert shown.rows[0] == (
+        "Indicated",
+        "11",
+        "11",
+        "8.2",
+        "890",
+    )  # 894 kt of metal from the unrounded values
+    assert shown.columns[4] == "Cu contained (kt metal)"
+    assert shown.columns[1:3] == ("Dry tonnes (Mt dry)", "Wet tonnes (Mt wet)")
+
+
+def test_empty_data_still_make_a_report(tmp_path):
+    paths = write_report(ReportData(), tmp_path)
+    page = paths[0].read_text(encoding="utf-8")
+    assert "No table of tonnes came with this run" in page
+    assert "Draft for a Competent Person" in page
+
+
+@pytest.mark.parametrize(
+    "part",
+    [
+        field.name
+        for field in fields(Evidence)
+        if field.name not in ("laboratory", "surface_use", "lost_core_default", "handheld_used")
+    ],
+)
+def test_any_part_of_the_evidence_may_be_absent(data, part):
+    less = replace(data, evidence=replace(data.evidence, **{part: None}))
+    assert build_document(less, []).sections
+
+
+def test_same_data_same_bytes(data, tmp_path):
+    small = ReportData(
+        subject=data.subject,
+        evidence=Evidence(
+            collars=data.evidence.collars,
+            composites=data.evidence.composites,
+            surface_bias=data.evidence.surface_bias,
+        ),
+        body=data.body,
+    )
+    written = [write_report(small, tmp_path / name) for name in ("a", "b")]
+    assert len(written[0]) > 9
+    for one, other in zip(*written):
+        assert one.relative_to(tmp_path / "a") == other.relative_to(tmp_path / "b")
+        assert one.read_bytes() == other.read_bytes(), one.name
+
+
+def test_drawing_leaves_no_global_state(data):
+    import matplotlib
+
+    before = dict(matplotlib.rcParams)
+    all_drawings(ReportData(subject=data.subject, value=data.value))
+    assert dict(matplotlib.rcParams) == before
