@@ -20,6 +20,7 @@ NAMES = {
     "antimony": "sb", "cobalt": "co", "cadmium": "cd", "selenium": "se", "tellurium": "te", "bismuth": "bi",
     "indium": "in", "gallium": "ga", "germanium": "ge", "thallium": "tl", "nickel": "ni", "tin": "sn",
 }  # fmt: skip
+_JOINT = re.compile(r"([a-z]+|sio2)(%|wt%|pct|percent|ppm|ppb|gpt|g/t)")
 _SPLIT = re.compile(r"[\s_\-()\[\],:;]+")
 
 
@@ -36,6 +37,9 @@ def element_of_header(header: str) -> tuple[str, str | None] | None:
     words = [word for word in canonical_text(header).split("_") if word]
     if not words:
         return None
+    joint = _JOINT.fullmatch(words[0])  # "Zn%", "AuPPB"
+    if joint and NAMES.get(joint.group(1), joint.group(1)) in ELEMENTS:
+        words[:1] = joint.groups()
     element = NAMES.get(words[0], words[0])
     if element not in ELEMENTS:
         return None

@@ -97,7 +97,8 @@ def mark(
     """Note on a table its file, what that file calls its columns, and the cells that already have a finding."""
     frame.attrs["file"] = file
     frame.attrs["headers"] = dict(headers)
-    frame.attrs["reported"] = reported or {}
+    # as text: pandas copies attrs with every operation, and a text is not copied
+    frame.attrs["reported"] = {name: " ".join(map(str, rows)) for name, rows in (reported or {}).items()}
     return frame
 
 
@@ -106,7 +107,7 @@ def not_reported(frame: pd.DataFrame, column: str) -> np.ndarray:
     rows = frame.attrs.get("reported", {}).get(column)
     if not rows:
         return np.ones(len(frame), dtype=bool)
-    return ~np.isin(frame["source_row"].to_numpy(), rows)
+    return ~np.isin(frame["source_row"].to_numpy(), [int(row) for row in rows.split()])
 
 
 def file_of(frame: pd.DataFrame, default: str | None = None) -> str | None:

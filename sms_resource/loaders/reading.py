@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
 from sms_resource.loaders.source import TableSource
-from sms_resource.loaders.text_table import read_text_table
+from sms_resource.loaders.text_table import TextForm, read_text_table
 from sms_resource.loaders.workbook import read_workbook
 
 TEXT_ENDINGS = frozenset({".csv", ".txt", ".tsv", ".dat", ".tab", ".asc", ".xyz", ".prn", ""})
@@ -38,6 +38,8 @@ class RawTable:
         Easting and northing of the point of each record, where the file has points.
     crs : str, optional
         Coordinate system of a vector file.
+    form : TextForm, optional
+        How a text table is written.
     """
 
     headers: list[str]
@@ -46,6 +48,7 @@ class RawTable:
     decimal: str = "."
     points: tuple[pd.Series, pd.Series] | None = None
     crs: str | None = None
+    form: TextForm | None = None
 
     def column(self, header: str) -> pd.Series:
         """Cells of the first column with that name."""
@@ -139,7 +142,7 @@ def _from_text(source: TableSource, findings: Findings) -> RawTable | None:
     headers, rows, numbers, form = read
     columns: list[Any] = [list(cells) for cells in zip(*rows)] if rows else [[] for _ in headers]
     cells = [pd.Series(column, dtype=object) for column in columns]
-    return RawTable(headers, cells, np.array(numbers, dtype=np.int64), form.decimal)
+    return RawTable(headers, cells, np.array(numbers, dtype=np.int64), form.decimal, form=form)
 
 
 def _from_workbook(source: TableSource, findings: Findings) -> RawTable | None:

@@ -15,6 +15,7 @@ _ZEROS = re.compile(r"0{2,}")
 _FORMULA_WITHOUT_VALUE = re.compile(
     rb'<c\s[^>]*?r="[A-Z]+(\d+)"[^>]*>\s*<f[^>]*?(?:/>|>[^<]*</f>)\s*(?:<v\s*/>|<v></v>)?\s*</c>'
 )
+_BROKEN = (KeyError, ValueError, ParseError, IndexError, TypeError, AttributeError, EOFError, OSError)
 _MOST_EXPANDED = 1_000_000_000  # bytes of a sheet when unpacked
 
 
@@ -28,8 +29,6 @@ def read_workbook(
     name = source.name
     if not _sound_zip(source.path, name, findings):
         return None
-    broken = (InvalidFileException, zipfile.BadZipFile, KeyError, ValueError, ParseError, IndexError, TypeError,
-              AttributeError, EOFError)  # fmt: skip
     try:
         book = openpyxl.load_workbook(source.path, read_only=True, data_only=True)
         try:
@@ -40,7 +39,7 @@ def read_workbook(
             rows = [[_cell(cell) for cell in row] for row in sheet.iter_rows()]
         finally:
             book.close()
-    except broken as error:
+    except (InvalidFileException, zipfile.BadZipFile, *_BROKEN) as error:
         findings.error(
             "file-unreadable",
             f"The workbook cannot be read ({type(error).__name__}).",
@@ -50,6 +49,22 @@ def read_workbook(
         return None
     _uncomputed(source.path, name, findings)
     return _table(rows, source, findings)
+
+
+def sheet_names(path: Path) -> list[str]:
+    """Names of the sheets of a workbook; empty where it cannot be read."""
+    import openpyxl
+    from openpyxl.utils.exceptions import InvalidFileException
+
+    if not _sound_zip(path, path.name, Findings()):
+        return []
+    try:
+        book = openpyxl.load_workbook(path, read_only=True)
+    except (InvalidFileException, zipfile.BadZipFile, *_BROKEN):
+        return []
+    names = [sheet.title for sheet in book.worksheets]
+    book.close()
+    return names
 
 
 def _sound_zip(path: Path, name: str, findings: Findings) -> bool:

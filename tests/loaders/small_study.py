@@ -208,6 +208,17 @@ class Study:
                 renamed = self.rename.get(role, {})
                 writer.writerow([renamed.get(name, name) for name in names])
                 writer.writerows([[row.get(name, "") for name in names] for row in rows])
+        if not self.space_is_sound():
+            self._write_space()
+        for change in self.after:
+            change(self.folder)
+
+    def space_is_sound(self) -> bool:
+        """Whether no case touches the grid or a layer; they are read once for all then."""
+        spoilt = self.grid or self.after or self.outline is not None or self.exclusions is not None
+        return not spoilt and self.layer_crs == CRS
+
+    def _write_space(self) -> None:
         self._write_grid()
         square = Polygon(
             [
@@ -232,8 +243,6 @@ class Study:
             frame.set_crs(self.layer_crs, allow_override=True).to_file(
                 self.folder / f"{role}.gpkg", driver="GPKG", layer=role
             )
-        for change in self.after:
-            change(self.folder)
 
     def _write_grid(self) -> None:
         nx, ny = 200, 160
@@ -264,7 +273,6 @@ class Study:
         """Write, read and check everything."""
         self.write()
         found = Findings()
-        sound = not (self.grid or self.after or self.outline is not None or self.exclusions is not None)
         roles = ("collars", "surveys", "runs", "lithology", "assays", "densities")
         drill, more = load_drilling(**{role: self.source(role) for role in roles}, elements=ELEMENTS)
         found.extend(more)
@@ -279,7 +287,7 @@ class Study:
             if source is not None:
                 parts[field_name], more = reader(source)
                 found.extend(more)
-        if sound and self.layer_crs == CRS:
+        if self.space_is_sound():
             space, more = _sound_space()
         else:
             space, more = self.load_space()
@@ -321,7 +329,7 @@ def _sound_space() -> tuple[dict[str, Any], Findings]:
     """Grid and layers as they are where a case does not touch them: read once."""
     with TemporaryDirectory() as folder:
         study = Study(Path(folder))
-        study.write()
+        study._write_space()
         return study.load_space()
 
 
