@@ -143,9 +143,7 @@ def test_numbers_of_a_typed_column_pass_through() -> None:
 
 
 def test_names_stay_what_they_are() -> None:
-    cells = 
-        ["001", "1E5", "NA", " H 1 ", "A\u20131", "", None, 7, 7.0, 7.5, datetime.date(2026, 3, 1)]
-    
+    cells = ["001", "1E5", "NA", " H 1 ", "A\u20131", "", None, 7, 7.0, 7.5, datetime.date(2026, 3, 1)]
     texts, numeric, dates = parse_identifiers(cells)
     assert texts == ["001", "1E5", "NA", "H 1", "A\u20131", "", "", "7", "7", "7.5", "2026-03-01"]
     assert numeric == [7, 8, 9] and dates == [10]
@@ -158,8 +156,10 @@ def test_any_number_that_is_written_is_read(value: float) -> None:
     assert parsed.values[0] == expected or (np.isnan(expected) and parsed.coded[0])
 
 
-@given(st.lists(st.one_of(st.text(max_size=12), st.floats(), st.integers(), st.booleans(), st.none(), st.dates()), max_size=6),
-       st.sampled_from([".", ","]), st.booleans())  # fmt: skip
+ANY_CELL = st.one_of(st.text(max_size=12), st.floats(), st.integers(), st.booleans(), st.none(), st.dates())
+
+
+@given(st.lists(ANY_CELL, max_size=6), st.sampled_from([".", ","]), st.booleans())
 @settings(max_examples=300)
 def test_any_cell_is_a_number_a_limit_a_blank_or_a_problem(
     cells: list[object], decimal: str, limits: bool
