@@ -34,7 +34,8 @@ def audit_table(
     known_run = recovered_lengths(runs)
     core = np.where(np.isfinite(recovered), recovered, 0.0)
     assayed = np.isfinite(grades).any(axis=1)
-    refused = np.where(poor & (pieces.rows[0] >= 0), length, 0.0)
+    had = np.column_stack([np.isfinite(take(numbers(assays, metal), pieces.rows[0])) for metal in metals])
+    refused = np.where(poor & had.any(axis=1), length, 0.0)
     rows: list[tuple[str, float, float, float]] = [
         (
             "length_m",

@@ -20,7 +20,7 @@ Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
 
 # Depths closer than this (m) are one depth: far below any tape, far above the noise of 0.1 + 0.2.
-SAME_DEPTH_M = 1e-10
+SAME_DEPTH_M = 1e-12
 
 
 @dataclass(frozen=True)
