@@ -97,6 +97,30 @@ def check(study: StudyArgument, as_json: JsonOption = False, quiet: QuietOption 
 
 @app.command()
 def run(
+    study: Annotated[Path | None, typer.Argument(help="The study file (TOML).", show_default=False)] = None,
+    out: OutOption = Path("results"),
+    as_json: JsonOption = False,
+    quiet: QuietOption = False,
+    threads: ThreadsOption = None,
+    cache: CacheOption = True,
+    against: Annotated[
+        Path | None,
+        typer.Option(help="Results of another run; the report tells what changed since, and why."),
+    ] = None,
+    verify: Annotated[
+        Path | None, typer.Option(help="Run the study of these results again and compare every byte.")
+    ] = None,
+) -> None:
+    """Run the whole estimate, from files to the draft report."""
+    if verify is not None:
+        _verify(verify, as_json, quiet, threads)
+    if study is None:
+        _fail_usage("give a study file, or --verify RESULTS")
+    _run(study, out, as_json, quiet, threads, cache, against=against)
+
+
+@app.command()
+def scenarios(
     study: StudyArgument,
     out: OutOption = Path("results"),
     as_json: JsonOption = False,
@@ -104,15 +128,55 @@ def run(
     threads: ThreadsOption = None,
     cache: CacheOption = True,
 ) -> None:
-    """Run the whole estimate, from files to the draft report."""
+    """Run the estimate, its scenarios and the alternatives of its decisions; the ledger tells what each does."""
+    _run(study, out, as_json, quiet, threads, cache, scenarios=True)
+
+
+@app.command()
+def cache(
+    clear: Annotated[bool, typer.Option("--clear", help="Remove everything that is kept.")] = False,
+) -> None:
+    """Show how much is kept of earlier runs, and where; or remove it."""
+    from sms_resource.cache import StageCache
+
+    store = StageCache()
+    if clear:
+        typer.echo(f"Removed {store.clear()} entries from {store.folder}")
+        return
+    count, size = store.size()
+    typer.echo(
+        f"{count} entries, {size / 1e6:.1f} MB of at most {store.limit_bytes / 1e6:.0f} MB, in {store.folder}"
+    )
+
+
+def _run(
+    study: Path,
+    out: Path,
+    as_json: bool,
+    quiet: bool,
+    threads: int | None,
+    cache: bool,
+    *,
+    scenarios: bool = False,
+    against: Path | None = None,
+) -> None:
+    """Run a study, print what it found and leave with the code that tells how it went."""
+    from sms_resource.study import StudyError
     from sms_resource.workflow import NotResultsError, run_study
     from sms_resource.workflow.stage import Silent
 
+    if against is not None and not (against / "manifest.json").is_file():
+        _fail_usage(f"{against} holds no results")
     loaded = _load(study, as_json)
     console = _console(stderr=as_json)
     progress = Silent() if as_json or quiet else _Lines(console)
     try:
-        result = run_study(loaded, out=out, progress=progress, threads=threads, cache=cache)
+        result = run_study(
+            loaded, out, progress=progress, threads=threads, cache=cache, scenarios=scenarios, against=against
+        )
+    except StudyError as error:
+        _print_findings(_console(stderr=True), error.findings, quiet=False)
+        raise typer.Exit(FAULTY) from None
     except NotResultsError as error:
         _fail_usage(f"{error}; give another folder with --out")
     except OSError as error:
@@ -147,6 +211,32 @@ def view(
         raise typer.Exit(FAULTY)
     if screenshot:
         typer.echo(f"Wrote {screenshot}")
+
+
+def _verify(results: Path, as_json: bool, quiet: bool, threads: int | None) -> None:
+    """Run results again and say whether the bytes are the same."""
+    from sms_resource.workflow import verify_results
+    from sms_resource.workflow.stage import Silent
+
+    if not (results / "manifest.json").is_file():
+        _fail_usage(f"{results} holds no results")
+    console = _console(stderr=as_json)
+    found = verify_results(
+        results, progress=Silent() if as_json or quiet else _Lines(console), threads=threads
+    )
+    if as_json:
+        _print_json({"same": found.same, "differing": found.differing, "causes": found.causes,
+                     "findings": found.findings.to_records()})  # fmt: skip
+    else:
+        _print_findings(console, found.findings, quiet=True)
+        console.print(
+            "The same bytes." if found.same else f"{len(found.differing)} outputs differ:", highlight=False
+        )
+        for name in [] if found.same else found.differing:
+            console.print(f"  {name}", highlight=False, markup=False)
+        for cause in found.causes:
+            console.print(f"  {cause}", highlight=False, markup=False)
+    raise typer.Exit(DONE if found.same else FAULTY)
 
 
 def _fail_usage(message: str) -> Any:

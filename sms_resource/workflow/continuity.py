@@ -13,7 +13,6 @@ from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.stage import Context
 from sms_resource.workflow.state import BlockState, BodyState, EvidenceState, VariogramState
 
-
 SCAN = np.array([0.25, 0.5, 0.75, 1.0, 1.25, 1.5, 2.0, 3.0, 4.0])
 
 

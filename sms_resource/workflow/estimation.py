@@ -16,6 +16,7 @@ from sms_resource.workflow.state import BlockState, DensityState, EstimateState,
 
 DETAILS = ("variance", "slope_of_regression", "kriging_efficiency", "sample_count", "hole_count", "nearest_distance",
            "negative_weight_sum", "pass_number")  # fmt: skip
+COMPANIONS = ("nearest", "inverse_distance", "moving_average")
 _SHORT = {
     "slope_of_regression": "slope",
     "kriging_efficiency": "efficiency",
@@ -34,8 +35,10 @@ def estimate(context: Context) -> EstimateState:
     grades, parts, details = krige_domains(state.samples, blocks, state, hoods, config, context.threads)
     frame = join_domains(blocks, grades, density, config)
     metals = metal_columns(config)
-    companions = companion_grades(state.samples, blocks, hoods, density, config, context.threads)
+    companions: dict[str, pd.DataFrame] = {}
     if config.kriging.estimator != "ordinary_kriging":
+        wanted = (config.kriging.estimator,)
+        companions = companion_grades(state.samples, blocks, hoods, density, config, context.threads, wanted)
         frame[metals] = companions[config.kriging.estimator][metals]
     for name, values in details.items():
         frame[name] = values
@@ -252,7 +255,7 @@ def join_domains(
 
 def companion_grades(
     samples: pd.DataFrame, blocks: BlockState, hoods: dict[str, list[Any]], density: DensityState, config: Any,
-    threads: int | None,
+    threads: int | None, methods: tuple[str, ...] = COMPANIONS,
 ) -> dict[str, pd.DataFrame]:  # fmt: skip
     """Block grades by the nearest sample, inverse distance and the moving average, on the widest search."""
     from sms_resource.geostatistics import companion_estimates
@@ -260,8 +263,7 @@ def companion_grades(
     metals = metal_columns(config)
     targets = block_targets(blocks)
     shares = domain_shares(blocks.model.frame, config.domains.sulphide)
-    methods = ("nearest", "inverse_distance", "moving_average")
-    tables = {method: {} for method in methods}  # type: dict[str, dict[str, pd.DataFrame]]
+    tables: dict[str, dict[str, pd.DataFrame]] = {method: {} for method in methods}
     for domain in config.domains.sulphide:
         rows = _domain_rows(samples, domain, config.domains.boundaries)
         used = shares[domain] > 0

@@ -9,8 +9,8 @@ import pandas as pd
 
 from sms_resource.units import element_column
 from sms_resource.workflow.evidence import metal_columns
-from sms_resource.workflow.stage import Context
 from sms_resource.workflow.screening import kept, screened
+from sms_resource.workflow.stage import Context
 from sms_resource.workflow.state import (
     BlockState,
     ClassState,
@@ -35,6 +35,9 @@ def classify(context: Context) -> ClassState:
     judged = element_column(config.classes.judged_on)
     for name in ("sample_count", "hole_count", "nearest_distance_m", "pass_number"):
         frame[name] = frame[f"{judged}_{name}"]
+    frame["holes_in_range"] = holes_in_range(context, frame)
+    open_holes = context.done["body"].contacts.query("kind == 'open'")["hole_id"]
+    frame["open_ended"] = below_open_holes(context, frame, set(open_holes))
     proposal = propose_classes(
         frame,
         criteria(config, blocks),
@@ -79,6 +82,40 @@ def classify(context: Context) -> ClassState:
     )
 
 
+def holes_in_range(context: Context, frame: pd.DataFrame) -> np.ndarray:
+    """Holes within the variogram range of each block, in its leading domain, for the metal that classes go by."""
+    from sms_resource.classification.reach import holes_in_reach
+
+    config = context.config
+    state: VariogramState = context.done["variograms"]
+    targets = context.done["estimate"].targets
+    judged = element_column(config.classes.judged_on)
+    found = np.zeros(len(frame), dtype=np.int64)
+    leading = frame["domain"].to_numpy(dtype=object)
+    for domain in config.domains.sulphide:
+        item, mine = state.inferences.get((domain, judged)), leading == domain
+        part = state.samples[(state.samples["domain"] == domain) & state.samples[judged].notna()]
+        if item is None or not item.model.structures or not mine.any() or not len(part):
+            continue
+        ranges = np.max([structure.ranges for structure in item.model.structures], axis=0)
+        reach = holes_in_reach(
+            targets[mine], part[["x", "y", "z"]].to_numpy(dtype=float), part["hole_id"].to_numpy(dtype=object),
+            ranges, axes=item.model.axes,
+        )  # fmt: skip
+        found[mine] = np.asarray(reach["holes_in_range"])
+    return found
+
+
+def below_open_holes(context: Context, frame: pd.DataFrame, open_holes: set[str]) -> np.ndarray:
+    """Whether a hole that ended in sulphide stands in the column of the block."""
+    cells = hole_cells(context.done["composite"], context.done["blocks"])
+    cells = cells[cells["hole_id"].isin(open_holes)]
+    marked = set(zip(cells["i"], cells["j"]))
+    return np.fromiter(
+        ((i, j) in marked for i, j in zip(frame["i"], frame["j"])), dtype=bool, count=len(frame)
+    )
+
+
 def cutoff_column(config: Any) -> str:
     """Block column that the cut-off is on."""
     special = {"equivalent": "equivalent", "value": "value_per_dry_tonne"}
@@ -89,7 +126,12 @@ def class_columns(judged: str) -> Any:
     """Block columns that classes are judged on."""
     from sms_resource.classification import ClassColumns
 
-    return ClassColumns(estimate=judged, slope=f"{judged}_slope", distance="nearest_distance_m")
+    return ClassColumns(
+        estimate=judged,
+        slope=f"{judged}_slope",
+        distance="nearest_distance_m",
+        holes_in_range="holes_in_range",
+    )
 
 
 def criteria(config: Any, blocks: BlockState) -> Any:

@@ -51,13 +51,16 @@ def write_results(
     ledger = ledger_table(study, extra)
     ledger.to_csv(folder / "decisions.csv", index=False)
     files = write_report_files(folder, study, outcome, inputs, ledger, extra)
+    if extra and extra.get("scenarios") is not None:
+        extra["scenarios"].to_csv(folder / "scenarios.csv", index=False)
     seconds = time.perf_counter() - begun
     record = StageRecord("report", seconds, f"{len(files)} files", False, "")
     outcome.records.append(record)
     summary = summarise(study, done)
     facts = {"summary": summary.record(), "cutoff": {"variable": done["classify"].facts["cutoff_variable"],
                                                      "value": study.config.cutoff.at},
-             "tally_label": done["classify"].facts["tally_label"], "metals": metal_columns(study.config)}  # fmt: skip
+             "tally_label": done["classify"].facts["tally_label"], "metals": metal_columns(study.config),
+             "scenarios": bool(extra and extra.get("scenarios") is not None)}  # fmt: skip
     write_manifest(folder, study, inputs, outcome.records, facts)
     if progress:
         progress.finished("report", seconds, record.detail, False)

@@ -38,6 +38,8 @@ class Result:
         The table of tonnes at the study's cut-off, rounded and worded for print.
     stages : dict
         Outputs of the stages by name, for notebooks.
+    scenarios : DataFrame or None
+        One row a scenario, where scenarios were run.
     """
 
     findings: Findings
@@ -47,6 +49,7 @@ class Result:
     variograms: dict[tuple[str, str], Any] = field(default_factory=dict)
     summary: Summary | None = None
     stages: dict[str, Any] = field(default_factory=dict)
+    scenarios: pd.DataFrame | None = None
 
     def __repr__(self) -> str:
         return f"Result({self.out}, {self.findings!r})"
@@ -85,6 +88,8 @@ def run_study(
     progress: Progress | None = None,
     threads: int | None = None,
     cache: bool | StageCache = True,
+    scenarios: bool = False,
+    against: str | Path | None = None,
 ) -> Result:
     """Run the whole estimate of a study.
 
@@ -99,6 +104,10 @@ def run_study(
         Threads of the kernels; results do not depend on it.
     cache : bool or StageCache
         Whether outputs of stages made before are used.
+    scenarios : bool
+        Whether the scenarios of the study are run too, so that the ledger tells what alternatives do.
+    against : str or Path, optional
+        Results of another run; the report tells what changed since, and which decision caused it.
 
     Returns
     -------
@@ -114,10 +123,10 @@ def run_study(
 
     store = (default_cache() if cache else None) if isinstance(cache, bool) else cache
     inputs = input_hashes(study)
+    hashes = {role: entry["sha256"] for role, entry in inputs.items() if role != "study"}
     threads = threads or study.config.kriging.threads
 
     def stages() -> Outcome:
-        hashes = {role: entry["sha256"] for role, entry in inputs.items() if role != "study"}
         return run_stages(
             ESTIMATE_STAGES, study, progress=progress, store=store, threads=threads, files=hashes
         )
@@ -130,11 +139,43 @@ def run_study(
             return Result(outcome.findings)
         from sms_resource.workflow.publish import write_results
 
-        summary = write_results(folder.staging, study, outcome, inputs, progress)
+        extra = more(study, outcome, store, hashes, threads, progress, scenarios, against)
+        summary = write_results(folder.staging, study, outcome, inputs, progress, extra)
         folder.publish()
     result = _result(study, outcome, summary)
     result.out = folder.out
+    result.scenarios = extra.get("scenarios")
     return result
+
+
+def more(
+    study: Study,
+    outcome: Outcome,
+    store: StageCache | None,
+    hashes: dict[str, str],
+    threads: int | None,
+    progress: Progress | None,
+    scenarios: bool,
+    against: str | Path | None,
+) -> dict[str, Any]:
+    """Scenario tables, and what changed against another run, where they are asked for."""
+    extra: dict[str, Any] = {}
+    if scenarios:
+        from sms_resource.workflow.scenarios import run_scenarios, scenario_list, tables
+
+        run = run_scenarios(
+            study, scenario_list(study), store=store, files=hashes, threads=threads, progress=progress
+        )
+        outcome.findings.extend(run.findings)
+        extra.update(tables(study, run))
+    if against is not None:
+        from sms_resource.workflow.reproduce import changes_since
+
+        table, words, notes = changes_since(Path(against), study, store=store, files=hashes, threads=threads)
+        extra.update(changes=table, against=words)
+        for note in notes:
+            outcome.findings.note("run-differs", f"Against {words}: {note}.", file=study.path.name)
+    return extra
 
 
 def _result(study: Study, outcome: Outcome, summary: Any) -> Result:

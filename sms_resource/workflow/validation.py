@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -9,7 +10,7 @@ import pandas as pd
 
 from sms_resource.units import contained_tonnes, element_column
 from sms_resource.workflow.continuity import body_samples, cut_grades
-from sms_resource.workflow.estimation import join_domains, krige_domains, neighbourhoods
+from sms_resource.workflow.estimation import companion_grades, join_domains, krige_domains, neighbourhoods
 from sms_resource.workflow.evidence import all_columns, composite_options, domain_table, metal_columns
 from sms_resource.workflow.stage import Context
 from sms_resource.workflow.state import (
@@ -35,6 +36,11 @@ def validate(context: Context) -> ValidationState:
     made: EstimateState = context.done["estimate"]
     config = context.config
     metals = metal_columns(config)
+    hoods = {domain: neighbourhoods(variograms, domain, config) for domain in config.domains.sulphide}
+    companions = companion_grades(
+        variograms.samples, blocks, hoods, context.done["density"], config, context.threads
+    )
+    made = replace(made, companions=companions)
     cross, summary = cross_validation(variograms, blocks, config, context.threads)
     swaths = swath_tables(made, variograms, blocks, metals, config)
     comparison = compare_estimators(made, metals, config)
