@@ -6,7 +6,7 @@ import json
 import os
 import sys
 from pathlib import Path
-from typing import Annotated, Any
+from typing import Annotated, Any, NoReturn
 
 import typer
 
@@ -213,7 +213,7 @@ def view(
         typer.echo(f"Wrote {screenshot}")
 
 
-def _verify(results: Path, as_json: bool, quiet: bool, threads: int | None) -> None:
+def _verify(results: Path, as_json: bool, quiet: bool, threads: int | None) -> NoReturn:
     """Run results again and say whether the bytes are the same."""
     from sms_resource.workflow import verify_results
     from sms_resource.workflow.stage import Silent
@@ -239,7 +239,7 @@ def _verify(results: Path, as_json: bool, quiet: bool, threads: int | None) -> N
     raise typer.Exit(DONE if found.same else FAULTY)
 
 
-def _fail_usage(message: str) -> Any:
+def _fail_usage(message: str) -> NoReturn:
     typer.echo(f"sms-resource: {message}", err=True)
     raise typer.Exit(USAGE)
 

@@ -83,7 +83,7 @@ def cut_grades(
         }
     elif choice.apply == "proposed":
         rows = proposals.dropna(subset=["cut"])
-        cuts = {(str(row.domain), str(row.metal)): float(row.cut) for row in rows.itertuples()}
+        cuts = {(str(row["domain"]), str(row["metal"])): float(row["cut"]) for row in rows.to_dict("records")}
     return apply_top_cuts(samples, cuts)
 
 

@@ -97,7 +97,7 @@ def neighbourhoods(state: VariogramState, domain: str, config: Any) -> list[Any]
     }
     hoods = [
         Neighbourhood(
-            tuple(factor * radius for radius in radii),
+            _times(radii, factor),
             min_samples=choice.least_samples,
             min_holes=choice.least_holes if number + 1 < len(choice.passes) else 1,
             **common,
@@ -107,9 +107,13 @@ def neighbourhoods(state: VariogramState, domain: str, config: Any) -> list[Any]
     if choice.fill:
         far = 1e4 / max(radii)
         hoods.append(
-            Neighbourhood(tuple(far * radius for radius in radii), min_samples=1, min_holes=1, **common)
+            Neighbourhood(_times(radii, far), min_samples=1, min_holes=1, **common)
         )
     return hoods
+
+
+def _times(radii: tuple[float, float, float], factor: float) -> tuple[float, float, float]:
+    return (factor * radii[0], factor * radii[1], factor * radii[2])
 
 
 def proposed_radii(state: VariogramState, domain: str, config: Any) -> tuple[float, float, float]:
@@ -141,8 +145,8 @@ def _restraint(config: Any, metals: list[str]) -> Any:
     if not above:
         return None
     return HighGradeRestraint(
-        threshold=tuple(above.get(metal, np.inf) for metal in metals),
-        distance_fraction=config.search.restrain_beyond,
+        thresholds=[above.get(metal, np.nan) for metal in metals],
+        fraction=config.search.restrain_beyond,
     )
 
 

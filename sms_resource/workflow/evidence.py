@@ -47,6 +47,7 @@ def composite(context: Context) -> EvidenceState:
     data: LoadedData = context.done["load"]
     config = context.config
     elements = all_columns(config)
+    assert data.seafloor is not None  # its absence is an error of the stage load
     match = position.match_collars(
         data.drill.collars,
         data.seafloor,

@@ -23,6 +23,7 @@ def body(context: Context) -> BodyState:
     evidence: EvidenceState = context.done["composite"]
     config = context.config
     choice = config.body
+    assert data.seafloor is not None  # its absence is an error of the stage load
     seafloor, found, facts = prepare_seafloor(
         data.seafloor, mend_within_m=config.seafloor.mend_within_m, sigma_m=config.seafloor.sigma_m
     )

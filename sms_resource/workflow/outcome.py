@@ -191,19 +191,18 @@ def class_context(context: Context) -> Any:
     bias = evidence.tables["recovery_bias"]
     biased = set(bias.loc[bias["biased"], "domain"]) if "biased" in bias else set(config.domains.sulphide)
     verdicts = evidence.laboratory.verdicts
-    worst = {}
+    worst: dict[str, str] = {}
     rank = {"good": 0, "caution": 1, "failed": 2, "missing": 3}
-    for row in verdicts.itertuples():
-        if row.element in config.metals.estimate:
-            kept = worst.get(row.element, "good")
-            worst[row.element] = max(kept, str(row.verdict), key=lambda name: rank.get(name, 3))
+    for element, verdict in zip(verdicts["element"].astype(str), verdicts["verdict"].astype(str)):
+        if element in config.metals.estimate:
+            worst[element] = max(worst.get(element, "good"), verdict, key=lambda name: rank.get(name, 3))
     return ClassContext(
         hole_total=int(state.samples["hole_id"].nunique()),
         range_m=ranges,
         block_size=tuple(blocks.model.grid.size),
         position_sigma_m=float(sigma.median()) if len(sigma) else float("nan"),
         recovery_pct=recovery,
-        density_count={str(row.domain): int(row.n) for row in density.by_domain.itertuples()},
+        density_count=dict(zip(density.by_domain["domain"].astype(str), density.by_domain["n"].astype(int))),
         domains_without_bias=frozenset(set(config.domains.sulphide) - biased),
         surface_samples_used=config.surface_samples.use != "none",
         handheld_used=bool(evidence.facts["handheld_used"]),

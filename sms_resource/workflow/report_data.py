@@ -174,8 +174,8 @@ def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
     blocks: BlockState = done["blocks"]
     made = state.body
     volumes = {"volume_m3": made.volume_m3}
-    for row in made.categories.itertuples():
-        volumes[f"{row.category}_m3"] = float(row.volume_m3)
+    for name, volume in zip(made.categories["category"], made.categories["volume_m3"]):
+        volumes[f"{name}_m3"] = float(volume)
     extrapolated = 1.0 - volumes.get("drilled_m3", made.volume_m3) / made.volume_m3
     return BodyEvidence(
         seafloor=state.seafloor,
@@ -281,7 +281,7 @@ def _means(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
             }  # fmt: skip
             if domain == "all":
                 every = pd.concat(
-                    [done["composite"].assays[metal], surface[metal] if metal in surface else None]
+                    [done["composite"].assays[metal], surface.get(metal)]
                 )
                 row["plain_mean_with_surface"] = every.mean()
             rows.append(row)
@@ -371,10 +371,11 @@ def _value(done: dict[str, Any], extra: dict[str, Any]) -> ValueEvidence:
 
 def truth_page(study: Study, done: dict[str, Any]) -> dict[str, Any] | None:
     """The estimate against the known truth of an invented deposit, with what explains the difference."""
-    if not study.config.data.truth:
-        return None
     config = study.config
-    truth = json.loads(study.resolve(config.data.truth).read_text(encoding="utf-8"))
+    named = config.data.truth
+    if not named:
+        return None
+    truth = json.loads(study.resolve(named).read_text(encoding="utf-8"))
     known = truth["body"]
     frame = done["classify"].frame
     metals = metal_columns(config)
@@ -397,7 +398,7 @@ def truth_page(study: Study, done: dict[str, Any]) -> dict[str, Any] | None:
                        "selective loss of core, smoothing and the few holes")
         )  # fmt: skip
     for metal in metals:
-        naive = float(plain.loc[metal, "plain_mean_with_surface"])
+        naive = float(np.asarray(plain.loc[metal, "plain_mean_with_surface"]))
         rows.append(
             _truth_row(f"plain mean of all samples, surface included: {metal.partition('_')[0]}",
                        metal.rpartition("_")[2], known[metal], naive,

@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
+from sms_resource.findings import Severity
 from sms_resource.units import element_column
 from sms_resource.workflow.stage import Context
 
@@ -126,7 +127,7 @@ def add(context: Context, findings: Any, *, fatal: bool) -> None:
         if (item.code, item.message) in known:
             continue
         known.add((item.code, item.message))
-        severity = "warning" if item.severity == "error" and not fatal else item.severity
+        severity: Severity = "warning" if item.severity == "error" and not fatal else item.severity
         context.findings.add(
             severity, item.code, item.message, item.remedy, file=context.study.path.name, column=item.column
         )
