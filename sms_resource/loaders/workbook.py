@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 import zipfile
+import zlib
 from pathlib import Path
 from typing import Any
 from xml.etree.ElementTree import ParseError
@@ -15,7 +16,19 @@ _ZEROS = re.compile(r"0{2,}")
 _FORMULA_WITHOUT_VALUE = re.compile(
     rb'<c\s[^>]*?r="[A-Z]+(\d+)"[^>]*>\s*<f[^>]*?(?:/>|>[^<]*</f>)\s*(?:<v\s*/>|<v></v>)?\s*</c>'
 )
-_BROKEN = (KeyError, ValueError, ParseError, IndexError, TypeError, AttributeError, EOFError, OSError)
+_BROKEN = (
+    zipfile.BadZipFile,
+    zlib.error,
+    NotImplementedError,
+    KeyError,
+    ValueError,
+    ParseError,
+    IndexError,
+    TypeError,
+    AttributeError,
+    EOFError,
+    OSError,
+)
 _MOST_EXPANDED = 1_000_000_000  # bytes of a sheet when unpacked
 
 
@@ -39,7 +52,8 @@ def read_workbook(
             rows = [[_cell(cell) for cell in row] for row in sheet.iter_rows()]
         finally:
             book.close()
-    except (InvalidFileException, zipfile.BadZipFile, *_BROKEN) as error:
+        _uncomputed(source.path, name, findings)
+    except (InvalidFileException, *_BROKEN) as error:
         findings.error(
             "file-unreadable",
             f"The workbook cannot be read ({type(error).__name__}).",
@@ -47,7 +61,6 @@ def read_workbook(
             file=name,
         )
         return None
-    _uncomputed(source.path, name, findings)
     return _table(rows, source, findings)
 
 
@@ -60,7 +73,7 @@ def sheet_names(path: Path) -> list[str]:
         return []
     try:
         book = openpyxl.load_workbook(path, read_only=True)
-    except (InvalidFileException, zipfile.BadZipFile, *_BROKEN):
+    except (InvalidFileException, *_BROKEN):
         return []
     names = [sheet.title for sheet in book.worksheets]
     book.close()

@@ -125,7 +125,7 @@ def _spacing(values: NDArray[np.float64]) -> tuple[float, float, int] | None:
     if not np.isfinite(span) or span <= 0:
         return None
     steps = np.diff(unique)
-    steps = steps[steps > 1e-7 * max(span, abs(unique[-1]))]
+    steps = steps[steps > max(1e-7 * span, 1e-11 * abs(unique[-1]))]
     steps = steps[steps > 0.5 * np.quantile(steps, 0.1)] if len(steps) else steps
     if not len(steps):
         return None
