@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import Literal
 
 from sms_resource.geostatistics.experimental import Measure
-from sms_resource.geostatistics.fit_settings import WEIGHTINGS, Weighting
+from sms_resource.geostatistics.fit_settings import WEIGHTINGS, FitSettings, Weighting
 from sms_resource.geostatistics.pairs import MEASURES
 
 TotalSill = Literal["sample_variance", "over_pairs", "free"]
@@ -136,5 +136,6 @@ class VariogramSettings:
             number = getattr(self, name)
             if number is not None and number < 1:
                 raise ValueError(f"{name} must be 1 or more, got {number}")
+        FitSettings(shapes=self.shapes, sills=self.sills, ranges=self.ranges)  # raises where they are wrong
         if not 0.0 < self.confidence < 1.0:
             raise ValueError(f"confidence must lie between 0 and 1, got {self.confidence}")
