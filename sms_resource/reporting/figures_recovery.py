@@ -131,7 +131,9 @@ def surface_against_core(data: ReportData) -> Drawing | None:
     )
     ratio.axvline(1.0, color=style.INK, lw=0.9, ls=":")
     ratio.set_xscale("log")
-    low, high = np.nanmin(bias["ratio_low"]), np.nanmax(bias["ratio_high"])
+    known = bias[["ratio", "ratio_low", "ratio_high"]].to_numpy(float)
+    known = known[np.isfinite(known) & (known > 0)]
+    low, high = (known.min(), known.max()) if len(known) else (1.0, 1.0)
     ticks = [
         t for t in (0.1, 0.2, 0.5, 1, 2, 5, 10, 20, 50) if min(low, 0.9) / 1.3 <= t <= max(high, 1.1) * 1.3
     ]
