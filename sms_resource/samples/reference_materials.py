@@ -24,6 +24,8 @@ FAMILY_ERROR = 0.001
 BIAS_CAUTION_PCT = 3.0
 BIAS_FAILED_PCT = 5.0
 LEAST_RESULTS = 5
+# Bias of a batch, in certified standard deviations, that matters even where no single result fails.
+BATCH_BIAS_SD = 1.5
 
 
 def control_charts(references: pd.DataFrame, findings: Findings | None = None) -> pd.DataFrame:
@@ -128,7 +130,7 @@ def batch_bias(charts: pd.DataFrame, *, family_error: float = FAMILY_ERROR) -> p
     `material_bias` shows, accuses no single batch), divided by its standard error from the spread within batches (never
     taken below the certified one, wider where it is estimated from few), and its p-value from Student's t is adjusted by
     Holm's (1979) step-down for the number of batches and elements. A batch is accused where the adjusted p-value is
-    below ``family_error`` and at least one of its results fails a control rule.
+    below ``family_error`` and the bias matters: a result fails a control rule, or the mean is off by 1.5.
 
     Returns
     -------
@@ -162,7 +164,8 @@ def batch_bias(charts: pd.DataFrame, *, family_error: float = FAMILY_ERROR) -> p
     table = pd.DataFrame(rows, columns=["element", "batch", "n", "mean_z", "excess_z", "p_value", "failures"])
     adjusted = holm(table["p_value"].to_numpy(np.float64))
     table.insert(6, "p_adjusted", adjusted)
-    accused = (adjusted < family_error) & (table["failures"].to_numpy() > 0)
+    matters = (table["failures"].to_numpy() > 0) | (table["excess_z"].abs().to_numpy() >= BATCH_BIAS_SD)
+    accused = (adjusted < family_error) & matters
     table["verdict"] = np.select([accused, adjusted < 0.05], ["accused", "suspect"], "good")
     return table
 

@@ -15,6 +15,7 @@ from tests.samples.holes import intervals, paths
 
 HOLES = ("A", "B", "C")
 METALS = ["cu_pct", "au_gpt"]
+PATHS = paths(*HOLES, length=30.0)
 # shrinking a failure of three tables takes minutes: the case as found is small enough to read
 PHASES = (Phase.explicit, Phase.reuse, Phase.generate)
 
@@ -60,7 +61,7 @@ def union_length(*tables: pd.DataFrame) -> float:
 
 def make(data: tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame], **options: object) -> Composites:
     assays, runs, domains = data
-    return composite(assays, runs, domains, paths(*HOLES, length=30.0), metals=METALS, **options)  # type: ignore[arg-type]
+    return composite(assays, runs, domains, PATHS, metals=METALS, **options)  # type: ignore[arg-type]
 
 
 rests = st.sampled_from(["merge", "keep", "spread"])
