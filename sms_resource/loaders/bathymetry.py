@@ -11,7 +11,7 @@ import numpy as np
 from sms_resource.blocks.grid import SurfaceGrid
 from sms_resource.findings import Findings
 from sms_resource.loaders.coordinate_systems import agree_crs, crs_name, metric, same_crs
-from sms_resource.loaders.netcdf import read_netcdf
+from sms_resource.loaders.netcdf import is_classic, read_netcdf
 from sms_resource.loaders.raster import DEEPEST_M, RasterCells, blank_fill_values, read_raster, warp
 from sms_resource.loaders.reading import readable
 from sms_resource.loaders.xyz import looks_like_xyz, read_xyz
@@ -71,6 +71,8 @@ def load_grid(
         return None, findings
     if looks_like_xyz(path):
         cells = read_xyz(path, name, findings)
+    elif is_classic(path):
+        cells = read_netcdf(path, name, variable, findings)
     else:
         tried = Findings()
         cells = read_raster(path, name, band, uncertainty_band, variable, tried)

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-import warnings
 from pathlib import Path
 from typing import Any
 
@@ -13,7 +12,7 @@ from sms_resource.findings import Findings
 from sms_resource.loaders.coordinate_systems import crs_name, parse_crs, same_crs
 from sms_resource.loaders.guess_types import Confidence, Guess, GuessedFile
 from sms_resource.loaders.headers import find_header
-from sms_resource.loaders.netcdf import read_netcdf
+from sms_resource.loaders.netcdf import is_classic, read_netcdf
 from sms_resource.loaders.raster import RasterCells, read_raster
 from sms_resource.loaders.synonyms import bare_name
 from sms_resource.loaders.vectors import layer_names, read_layer
@@ -51,6 +50,8 @@ def guess_grid(path: Path) -> tuple[GuessedFile | None, str]:
     cells: RasterCells | None
     if looks_like_xyz(path):
         cells = read_xyz(path, path.name, findings)
+    elif is_classic(path):
+        cells = read_netcdf(path, path.name, None, findings)
     else:
         cells = read_raster(path, path.name, 1, None, None, findings)
         if cells is None and path.suffix.lower() in (".nc", ".grd"):
@@ -69,6 +70,9 @@ def guess_grid(path: Path) -> tuple[GuessedFile | None, str]:
         )
     if cells.crs is not None:
         form.append(Guess("crs_inside", crs_name(cells.crs), "the file states it", "sure"))
+        zone = _utm_zone(cells) if cells.crs.is_geographic else None
+        if zone:
+            form.append(Guess("utm_zone", zone, "the grid is in degrees and lies in this zone", "doubtful"))
     base = "base" in path.stem.casefold()
     role = "base_grid" if base else "bathymetry"
     step = abs(float(cells.transform.a))
@@ -171,24 +175,17 @@ def guess_crs(files: list[GuessedFile]) -> Guess | None:
             because = f"{file.path.name} states it, but {', '.join(different)} states another"
             return Guess("crs", crs_name(crs), because, "doubtful")
         return Guess("crs", crs_name(crs), f"{file.path.name} states it", "sure")
-    for file, _ in known:
-        zone = _utm_zone(file)
-        if zone:
-            return Guess("crs", zone, f"{file.path.name} is in degrees and lies in this zone", "doubtful")
+    zones = [(file, file.form_map["utm_zone"]) for file in files if "utm_zone" in file.form_map]
+    if zones:
+        file, zone = zones[0]
+        return Guess("crs", zone, f"{file.path.name} is in degrees and lies in this zone", "doubtful")
     return None
 
 
-def _utm_zone(file: GuessedFile) -> str | None:
+def _utm_zone(cells: RasterCells) -> str | None:
     """EPSG code of the UTM zone of the middle of a grid in degrees."""
-    if file.kind != "grid":
-        return None
-    import rasterio
-
-    with warnings.catch_warnings():
-        warnings.simplefilter("ignore")
-        with rasterio.open(file.path) as data:
-            left, bottom, right, top = data.bounds
-    longitude, latitude = (left + right) / 2, (bottom + top) / 2
+    rows, columns = cells.values.shape
+    longitude, latitude = cells.transform @ (columns / 2, rows / 2)
     if not (-180 <= longitude <= 180 and -80 <= latitude <= 84):
         return None
     zone = min(int((longitude + 180) // 6) + 1, 60)

@@ -65,7 +65,7 @@ def read_raster(
     Band 2 of a BAG is its uncertainty, by the format's definition, and is taken without being asked for.
     """
     try:
-        with _quiet_gdal(), _open(path, name, variable, findings) as data:
+        with quiet_libraries(), _open(path, name, variable, findings) as data:
             if data is None:
                 return None
             return _read_open(data, name, band, uncertainty_band, findings)
@@ -97,21 +97,27 @@ def no_position(name: str, findings: Findings) -> None:
 
 
 @contextmanager
-def _quiet_gdal() -> Iterator[None]:
-    """GDAL's own log is silenced: what it says against a file becomes a finding."""
+def quiet_libraries() -> Iterator[None]:
+    """What native libraries print about a damaged file is silenced: it becomes a finding instead."""
     import logging
+    import sys
 
     import rasterio
 
     log = logging.getLogger("rasterio")
-    level = log.level
+    level, hooks = log.level, (sys.excepthook, sys.unraisablehook)
     log.setLevel(logging.CRITICAL)
+    # rasterio's log callback trips over messages that quote the bytes of a damaged file, and Python prints that;
+    # exceptions of our own are caught outside and never reach these hooks
+    sys.excepthook = lambda *event: None
+    sys.unraisablehook = lambda event: None
     try:
         with warnings.catch_warnings(), rasterio.Env(GDAL_PAM_ENABLED="NO"):
             warnings.simplefilter("ignore")
             yield
     finally:
         log.setLevel(level)
+        sys.excepthook, sys.unraisablehook = hooks
 
 
 @contextmanager
@@ -227,7 +233,7 @@ def warp(cells: RasterCells, target: Any, name: str, findings: Findings) -> Rast
     rows, columns = cells.values.shape
     source, goal = CRS.from_wkt(cells.crs.to_wkt()), CRS.from_wkt(target.to_wkt())
     try:
-        with _quiet_gdal():
+        with quiet_libraries():
             bounds = array_bounds(rows, columns, cells.transform)
             transform, width, height = calculate_default_transform(source, goal, columns, rows, *bounds)
             if too_large(width, height, name, findings):

@@ -160,8 +160,8 @@ def _from_parquet(source: TableSource, findings: Findings) -> RawTable | None:
 
     try:
         # one thread: results must not depend on it, and tables are small
-        frame = pq.ParquetFile(source.path).read(use_threads=False).to_pandas()
-    except (pa.ArrowException, ValueError, OSError) as error:
+        frame = pq.ParquetFile(source.path).read(use_threads=False).to_pandas(ignore_metadata=True)
+    except (pa.ArrowException, ValueError, OSError, KeyError, TypeError) as error:
         reason = str(error).splitlines()[0][:160] if str(error) else type(error).__name__
         findings.error(
             "file-unreadable",
@@ -170,9 +170,8 @@ def _from_parquet(source: TableSource, findings: Findings) -> RawTable | None:
             file=source.name,
         )
         return None
-    if any(name is not None for name in frame.index.names):
-        frame = frame.reset_index()
-    return _from_frame(frame, source)
+    named = [column for column in frame.columns if not str(column).startswith("__index_level_")]
+    return _from_frame(frame[named], source)
 
 
 def _from_frame(frame: pd.DataFrame, source: TableSource) -> RawTable:

@@ -8,14 +8,14 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from pathlib import Path
-from typing import Any
+from typing import Any, Literal
 
-import netCDF4
 import numpy as np
 import pyproj
 import pytest
 import rasterio
 import rasterio.shutil
+import xarray as xr
 from rasterio.transform import Affine, from_origin
 
 from sms_resource.blocks.grid import SurfaceGrid
@@ -62,19 +62,27 @@ def text_grid(path: Path, corner: bool) -> None:
 
 
 def netcdf(
-    path: Path, form: str = "NETCDF4", cf: bool = False, descending: bool = False, **attributes: Any
+    path: Path,
+    form: Literal["NETCDF4", "NETCDF3_CLASSIC"] = "NETCDF4",
+    cf: bool = False,
+    descending: bool = False,
+    names: tuple[str, ...] = ("z",),
+    x: np.ndarray = X,
+    mapping: dict[str, Any] | None = None,
+    **attributes: Any,
 ) -> None:
-    with netCDF4.Dataset(path, "w", format=form) as data:
-        data.createDimension("x", NX)
-        data.createDimension("y", NY)
-        x, y = data.createVariable("x", "f8", ("x",)), data.createVariable("y", "f8", ("y",))
-        z = data.createVariable("z", "f4", ("y", "x"), fill_value=np.nan)
-        x[:], y[:], z[:] = X, Y[::-1] if descending else Y, NORTH_UP if descending else SOUTH_UP
-        if cf:
-            x.standard_name, y.standard_name = "projection_x_coordinate", "projection_y_coordinate"
-            x.units = y.units = "m"
-        for key, value in attributes.items():
-            data.setncattr(key, value)
+    values = (NORTH_UP if descending else SOUTH_UP).astype("float32")
+    told = {"standard_name": "projection_x_coordinate", "units": "m"} if cf else {}
+    told_y = {"standard_name": "projection_y_coordinate", "units": "m"} if cf else {}
+    data = xr.Dataset(
+        {name: (("y", "x"), values if i == 0 else np.full_like(values, 3.0)) for i, name in enumerate(names)},
+        coords={"x": ("x", x, told), "y": ("y", Y[::-1] if descending else Y, told_y)},
+        attrs=attributes,
+    )
+    if mapping:
+        data["crs"] = ((), 0, mapping)
+        data["z"].attrs["grid_mapping"] = "crs"
+    data.to_netcdf(path, format=form, engine="h5netcdf" if form == "NETCDF4" else "scipy")
 
 
 def xyz(path: Path, delimiter: str = " ", header: str = "", order: int = 1) -> None:
@@ -248,6 +256,15 @@ def test_a_projection_file_beside_a_text_grid_is_read(tmp_path: Path) -> None:
     assert grid is not None and len(found) == 0
 
 
+@pytest.mark.parametrize("form", ["NETCDF4", "NETCDF3_CLASSIC"])
+def test_the_grid_mapping_of_a_netcdf_is_its_system(tmp_path: Path, form: Any) -> None:
+    netcdf(tmp_path / "g.nc", form, cf=True, mapping=pyproj.CRS(CRS).to_cf())
+    grid, found = load_grid(tmp_path / "g.nc", crs=CRS)
+    assert grid is not None and len(found) == 0, list(found)
+    _, found = load_grid(tmp_path / "g.nc", crs="EPSG:32703")
+    assert only(found) == "crs-different"
+
+
 def test_a_huge_grid_is_refused_before_it_is_read(tmp_path: Path) -> None:
     path = tmp_path / "g.tif"
     profile = {
@@ -284,14 +301,10 @@ def test_a_grid_in_feet_is_refused(tmp_path: Path) -> None:
 
 
 @pytest.mark.parametrize("names", [("z", "count"), ("depth_a", "depth_b")])
-def test_files_of_several_grids(tmp_path: Path, names: tuple[str, str]) -> None:
+@pytest.mark.parametrize(("form", "cf"), [("NETCDF4", True), ("NETCDF3_CLASSIC", False)])
+def test_files_of_several_grids(tmp_path: Path, names: tuple[str, str], form: Any, cf: bool) -> None:
     path = tmp_path / "g.nc"
-    netcdf(path, cf=True)
-    with netCDF4.Dataset(path, "a") as data:
-        if names[0] != "z":
-            data.renameVariable("z", names[0])
-        other = data.createVariable(names[1], "f4", ("y", "x"))
-        other[:] = 3.0
+    netcdf(path, form, cf=cf, names=names)
     grid, found = load(path)
     if names[0] == "z":
         assert grid is not None and only(found) == "grid-variable-chosen"
@@ -304,9 +317,9 @@ def test_files_of_several_grids(tmp_path: Path, names: tuple[str, str]) -> None:
 
 
 def test_uneven_coordinates(tmp_path: Path) -> None:
-    netcdf(tmp_path / "g.nc")
-    with netCDF4.Dataset(tmp_path / "g.nc", "a") as data:
-        data["x"][5] += 1.0
+    x = X.copy()
+    x[5] += 1.0
+    netcdf(tmp_path / "g.nc", x=x)
     assert only(load(tmp_path / "g.nc")[1]) == "grid-uneven"
 
 
