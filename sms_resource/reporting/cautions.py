@@ -14,6 +14,7 @@ from sms_resource.reporting import cautions_estimate, cautions_evidence
 from sms_resource.reporting.data import ReportData
 from sms_resource.reporting.elements import Caution
 from sms_resource.reporting.rounding import is_inferred, mass_text
+from sms_resource.reporting.style import class_name
 from sms_resource.reporting.tonnage import class_rows, rows_at_cutoff
 
 
@@ -47,7 +48,7 @@ def _always(data: ReportData) -> Iterator[Caution]:
         signed,
         True,
     )
-    names = [str(name) for name in class_rows(rows_at_cutoff(data))["proposed_class"]]
+    names = [class_name(name) for name in class_rows(rows_at_cutoff(data))["proposed_class"]]
     yield Caution(
         "classes-proposed",
         "Classes are proposed",

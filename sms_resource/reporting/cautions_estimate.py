@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.reporting.data import ReportData, has
-from sms_resource.reporting.elements import Caution, number_text
+from sms_resource.reporting.elements import Caution, cell_text, number_text
 from sms_resource.reporting.tonnage import rows_at_cutoff
 from sms_resource.units import column_element, element_label
 
@@ -17,6 +17,7 @@ ESTIMATORS_DIFFER_PCT = 5.0
 
 
 def grades(data: ReportData) -> Iterator[Caution]:
+    """Top cuts and deleterious elements."""
     cuts = data.evidence.top_cuts
     if cuts is not None and has(cuts, "metal", "domain", "cut") and cuts["cut"].notna().any():
         rows = cuts[cuts["cut"].notna()]
@@ -24,7 +25,7 @@ def grades(data: ReportData) -> Iterator[Caution]:
             f"{element_label(r['metal'])} in {r['domain']} cut at {number_text(r['cut'])}:"
             f" {int(r.get('n_cut', 0) or 0)} of {int(r.get('n', 0) or 0)} composites,"
             f" {number_text(r.get('metal_removed_pct', np.nan))} % of metal removed, mean"
-            f" {number_text(r.get('mean_before', np.nan))} uncapped,"
+            f" {number_text(r.get('mean_before', r.get('mean', np.nan)))} uncapped,"
             f" {number_text(r.get('mean_after', np.nan))} capped"
             for r in rows.head(12).to_dict("records")
         )
@@ -48,6 +49,7 @@ def grades(data: ReportData) -> Iterator[Caution]:
 
 
 def cutoff_sensitivity(data: ReportData) -> str:
+    """How dry tonnes move at cut-offs a quarter lower and higher, in words; empty where there is no cut-off."""
     table, given = data.value.grade_tonnage, data.subject.cutoff or {}
     rows = rows_at_cutoff(data)
     if table is None or given.get("value") is None or not len(rows) or not has(table, "cutoff"):
@@ -87,6 +89,7 @@ def _all_tonnes(rows: pd.DataFrame) -> float:
 
 
 def estimate(data: ReportData) -> Iterator[Caution]:
+    """Smoothing, assumed continuity, other estimators, failed checks."""
     grid = data.estimation.grid
     size = " x ".join(f"{float(s):g}" for s in grid["size"]) + " m" if grid else "not stated"
     yield Caution(
@@ -97,17 +100,20 @@ def estimate(data: ReportData) -> Iterator[Caution]:
         f"Block size: {size}.",
         True,
     )
-    for record in data.variograms:
-        if record.assumed or record.bounds_hit:
-            said = "; ".join((*record.assumed, *(f"bound hit: {b}" for b in record.bounds_hit)))
-            yield Caution(
-                "continuity-assumed",
-                "Continuity partly assumed:"
-                f" {element_label(record.metal) if column_element(record.metal) else record.metal},"
-                f" {record.domain}",
-                "Part of the variogram is assumed rather than inferred from the samples.",
-                f"{said} ({record.sample_count} composites in {record.hole_count} holes).",
-            )
+    assumed = [record for record in data.variograms if record.assumed or record.bounds_hit]
+    if assumed:
+        lines = [
+            f"{_named(record.metal)}, {record.domain}: "
+            + "; ".join((*record.assumed, *(f"bound hit: {bound}" for bound in record.bounds_hit)))
+            + f" ({record.sample_count} composites in {record.hole_count} holes)"
+            for record in assumed
+        ]
+        yield Caution(
+            "continuity-assumed",
+            "Continuity partly assumed",
+            "Part of the variograms is assumed rather than inferred from the samples.",
+            f"{len(assumed)} of {len(data.variograms)} variograms. " + ". ".join(lines) + ".",
+        )
     others = data.estimation.estimators
     if others is not None and has(others, "metal"):
         names = [
@@ -139,9 +145,9 @@ def estimate(data: ReportData) -> Iterator[Caution]:
         bad = checks[checks["verdict"].isin(["fail", "failed", "flag"])]
         if len(bad):
             said = "; ".join(
-                f"{r['check']} ({r.get('subject', '')}): {r.get('value', '')}, limit {r.get('limit', '')}:"
-                f" {r['verdict']}"
-                for r in bad.to_dict("records")
+                f"{r['check']} ({r.get('subject', '')}): {cell_text(r.get('value', ''))}, "
+                f"limit {cell_text(r.get('limit', ''))}: {r['verdict']}"
+                for r in bad.head(12).to_dict("records")
             )
             yield Caution(
                 "validation",
@@ -156,3 +162,7 @@ def estimate(data: ReportData) -> Iterator[Caution]:
             "No table of checks came with this estimate.",
             "Checks: 0.",
         )
+
+
+def _named(metal: str) -> str:
+    return element_label(metal) if column_element(metal) else metal

@@ -18,6 +18,7 @@ SMALL_P = 0.05
 
 
 def geometry(data: ReportData) -> Iterator[Caution]:
+    """Extrapolation, open holes, surface samples, exclusions, and positions."""
     volumes, extrapolation = data.body.volumes or {}, data.body.extrapolation or {}
     whole = float(volumes.get("volume_m3", np.nan))
     sideways, downwards = (float(volumes.get(key, 0.0)) for key in ("sideways_m3", "downwards_m3"))
@@ -58,7 +59,7 @@ def geometry(data: ReportData) -> Iterator[Caution]:
             "surface-used",
             "Surface samples used",
             "Surface samples are commonly richer than the body below them.",
-            f"Use in this study: {data.evidence.surface_use}; {len(surface) if surface is not None else 0}"
+            f"Use in this study: {data.evidence.surface_use.rstrip('. ')}; {len(surface) if surface is not None else 0}"
             " samples.",
         )
     yield from _position(data)
@@ -117,6 +118,7 @@ def _position(data: ReportData) -> Iterator[Caution]:
 
 
 def samples(data: ReportData) -> Iterator[Caution]:
+    """Few samples, recovery, lost core, handheld readings."""
     composites, runs = data.evidence.composites, data.evidence.runs
     count = 0 if composites is None else len(composites)
     holes = 0 if composites is None or "hole_id" not in composites else int(composites["hole_id"].nunique())
@@ -199,6 +201,7 @@ def samples(data: ReportData) -> Iterator[Caution]:
 
 
 def quality(data: ReportData) -> Iterator[Caution]:
+    """Laboratory quality and density."""
     verdicts = data.evidence.laboratory.verdicts
     if verdicts is None or not has(verdicts, "element", "aspect", "verdict"):
         yield Caution(

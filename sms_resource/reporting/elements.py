@@ -80,7 +80,7 @@ class Caution:
 
 @dataclass(frozen=True)
 class Slot:
-    """Where the figures of given keys go, or those whose key begins so, once they are drawn."""
+    """Where the figures of given keys go once they are drawn; a trailing ``*`` takes all that begin so."""
 
     keys: tuple[str, ...]
 
@@ -149,11 +149,8 @@ _WORDS = {
 def column_label(column: str) -> str:
     """A column name as a person reads it, with its unit: ``length_m`` becomes ``Length (m)``."""
     name = str(column)
-    if name in _WORDS:
-        label = _WORDS[name]
-    elif column_element(name):
-        return element_label(name)
-    else:
+    label = _WORDS.get(name) or _tonnes_label(name) or _element_phrase(name)
+    if not label:
         label = name.replace("_", " ")
         for suffix, text in _SUFFIXES:
             if name.endswith(suffix):
@@ -162,11 +159,27 @@ def column_label(column: str) -> str:
     return label[:1].upper() + label[1:]
 
 
+def _tonnes_label(name: str) -> str:
+    """``dry_tonnes_above_cutoff`` becomes ``dry tonnes above cutoff (t)``; empty where there are no tonnes."""
+    return f"{name.replace('_', ' ')} (t)" if "tonnes" in name else ""
+
+
+def _element_phrase(name: str) -> str:
+    """``cu_pct_above_cutoff`` becomes ``Cu (%) above cutoff``; empty where no element leads."""
+    words = name.split("_")
+    lead = "_".join(words[:2])
+    if not column_element(lead):
+        return ""
+    return " ".join([element_label(lead).replace(" ", "\u00a0"), *words[2:]])
+
+
 def number_text(value: Any, digits: int = 3) -> str:
     """A number for a working table: ``digits`` significant figures, whole numbers whole, NaN as a dash."""
     if value is None or (isinstance(value, float) and not math.isfinite(value)):
         return NO_VALUE
     number = float(value)
+    if abs(number) < 1e-9 and digits <= 4:
+        return "0"  # what is left of adding floats
     if number == int(number) and abs(number) < 1e15:
         return group_digits(f"{int(number)}")
     size = math.floor(math.log10(abs(number)))
@@ -180,7 +193,7 @@ def cell_text(value: Any, digits: int = 3) -> str:
     if isinstance(value, bool) or type(value).__name__ == "bool":
         return "yes" if value else "no"
     if isinstance(value, str):
-        return element_label(value) if column_element(value) else value
+        return element_label(value).replace(" ", "\u00a0") if column_element(value) else value
     if isinstance(value, Sequence):
         return ", ".join(cell_text(item, digits) for item in value)
     if value is None or value is pd.NaT or value is pd.NA:
@@ -206,7 +219,12 @@ def frame_table(
     names = {**{name: column_label(name) for name in chosen}, **(labels or {})}
     shown = frame[chosen].head(most)
     rows = tuple(
-        tuple(cell_text(value, digits) for value in record)
+        tuple(
+            "< 0.0001"
+            if name.endswith("p_value") and isinstance(value, float) and value < 1e-4
+            else cell_text(value, digits)
+            for name, value in zip(chosen, record)
+        )
         for record in shown.itertuples(index=False, name=None)
     )
     if len(frame) > most:
@@ -233,12 +251,13 @@ def facts_from(mapping: Mapping[str, Any] | None) -> Facts | None:
 
 
 def with_table(blocks: list[Block], frame: pd.DataFrame | None, title: str, **options: object) -> None:
+    """Append a frame as a table, where it holds rows."""
     if frame is not None and len(frame):
         blocks.append(frame_table(frame, title, **options))  # type: ignore[arg-type]
 
 
 def drop_empty_headings(blocks: list[Block]) -> list[Block]:
-    """Headings stay only if something follows them; slots count, since figures may fill them later."""
+    """Headings stay only if something follows them."""
     return [
         b
         for n, b in enumerate(blocks)

@@ -7,6 +7,7 @@ from collections.abc import Callable
 from sms_resource.reporting import (
     figures_blocks,
     figures_continuity,
+    figures_geology,
     figures_map,
     figures_quality,
     figures_recovery,
@@ -29,6 +30,8 @@ MAKERS: tuple[tuple[str, Maker], ...] = (
     ("lost core", figures_recovery.lost_core),
     ("histograms", figures_samples.histograms),
     ("log-probability plots", figures_samples.log_probability),
+    ("contact analysis", figures_geology.contacts),
+    ("tracers with depth", figures_geology.tracers),
     ("surface against core", figures_recovery.surface_against_core),
     ("control charts", figures_quality.control_charts),
     ("blanks", figures_quality.blanks),

@@ -113,7 +113,9 @@ def plan_classes(data: ReportData) -> Drawing | None:
         zorder=2,
     )
     draw_boundaries(axis, data)
-    handles = [Patch(fc=style.class_colour(name), ec=style.QUIET, label=name) for name in names]
+    handles = [
+        Patch(fc=style.class_colour(name), ec=style.QUIET, label=style.class_name(name)) for name in names
+    ]
     if data.evidence.collars is not None:
         holes = data.evidence.collars
         handles.append(

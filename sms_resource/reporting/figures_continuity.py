@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import TYPE_CHECKING
+
 import numpy as np
 import pandas as pd
 
@@ -9,6 +11,11 @@ from sms_resource.reporting import style
 from sms_resource.reporting.data import ReportData, VariogramRecord, has
 from sms_resource.reporting.style import Drawing
 from sms_resource.units import column_element, element_label
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+
+MOST_PANELS = 5
 
 
 def direction_vector(azimuth: float, plunge: float) -> np.ndarray:
@@ -34,7 +41,7 @@ def model_curve(
     return np.asarray(record.model.variogram(distance[:, None] * unit[None, :]), dtype=float)
 
 
-def _panel(axis, record: VariogramRecord, group: pd.DataFrame, number: int) -> pd.DataFrame:  # type: ignore[no-untyped-def]
+def _panel(axis: Axes, record: VariogramRecord, group: pd.DataFrame) -> pd.DataFrame:
     kind = str(group["kind"].iloc[0]) if "kind" in group else ""
     distance = group["distance"].to_numpy(float)
     gamma, pairs = group["gamma"].to_numpy(float), group["pairs"].to_numpy(float)
@@ -82,43 +89,48 @@ def _panel(axis, record: VariogramRecord, group: pd.DataFrame, number: int) -> p
     )
 
 
+def _groups(record: VariogramRecord) -> list[pd.DataFrame]:
+    frame = record.experimental
+    if frame is None or not has(frame, "distance", "gamma", "pairs"):
+        return []
+    frame = frame.reset_index(drop=True)
+    key = "label" if "label" in frame else ("kind" if "kind" in frame else None)
+    parts = [part for _, part in frame.groupby(key, sort=False)] if key else [frame]
+    return [part for part in parts if ((part["pairs"] > 0) & part["gamma"].notna()).any()][:MOST_PANELS]
+
+
+def domain_slug(domain: str) -> str:
+    """A domain's name as the end of a file name."""
+    return "".join(c if c.isascii() and c.isalnum() else "_" for c in domain.lower()) or "all"
+
+
 def variograms(data: ReportData) -> list[Drawing]:
-    """One figure a metal and domain: a panel a direction, points by pairs, the model over them."""
+    """One figure a domain: a row a metal, a panel a direction; points by pairs, the model over them."""
     drawings = []
-    for record in data.variograms:
-        frame = record.experimental
-        if frame is None or not has(frame, "distance", "gamma", "pairs"):
+    for domain in dict.fromkeys(record.domain for record in data.variograms):
+        rows = [(r, groups) for r in data.variograms if r.domain == domain and (groups := _groups(r))]
+        if not rows:
             continue
-        frame = frame.reset_index(drop=True)
-        key = "label" if "label" in frame else ("kind" if "kind" in frame else None)
-        groups = [part for _, part in frame.groupby(key, sort=False)] if key else [frame]
-        groups = [group for group in groups if ((group["pairs"] > 0) & group["gamma"].notna()).any()][:6]
-        if not groups:
-            continue
-        across = min(3, len(groups))
-        down = -(-len(groups) // across)
-        figure, axes = style.new_figure(3.2 * across + 0.2, 2.6 * down, down, across)
-        tables = [
-            _panel(axis, record, group, number)
-            for number, (axis, group) in enumerate(zip(axes.ravel(), groups))
-        ]
-        for axis in axes.ravel()[len(groups) :]:
-            axis.set_axis_off()
-        name = element_label(record.metal) if column_element(record.metal) else record.metal
-        for axis in axes[:, 0]:
-            axis.set_ylabel(
-                f"Semivariance of {name}, squared" if column_element(record.metal) else "Semivariance"
+        across = max(len(groups) for _, groups in rows)
+        figure, axes = style.new_figure(3.2 * across + 0.3, 2.25 * len(rows) + 0.1, len(rows), across)
+        tables = []
+        for line, (record, groups) in zip(axes, rows):
+            for axis, group in zip(line, groups):
+                tables.append(_panel(axis, record, group))
+            for axis in line[len(groups) :]:
+                axis.set_axis_off()
+            metal = column_element(record.metal) is not None
+            line[0].set_ylabel(
+                f"Semivariance, {element_label(record.metal)} squared" if metal else "Semivariance"
             )
-        domain = "" if record.domain in ("", "all") else f", domain {record.domain}"
-        slug = "".join(c if c.isalnum() else "_" for c in f"{record.metal}_{record.domain}".lower())
+        words = "" if domain in ("", "all") else f", domain {domain}"
         drawings.append(
             Drawing(
-                f"variogram_{slug}",
+                f"variograms_{domain_slug(domain)}",
                 "continuity",
-                f"Variogram of {name}{domain}",
-                "Dots by pairs of composites (numbers), line: the model, dotted: its total sill."
-                f" {record.statement}".strip(),
-                f"Experimental variograms of {name}{domain} with the fitted model.",
+                f"Variograms{words}",
+                "Dots by pairs of composites (numbers), line: the model in that direction, dotted: its total sill.",
+                f"Experimental variograms of {len(rows)} metals{words} with pair counts and the models.",
                 figure,
                 pd.concat(tables, ignore_index=True),
             )

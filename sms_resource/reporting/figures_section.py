@@ -243,6 +243,14 @@ def _draw_sticks(
     return [float(np.nanmin(z1[keep])), float(np.nanmax(z0[keep]))]
 
 
+def _panel_height(data: ReportData, line: SectionLine) -> float:
+    """Height (inches) at which a section fills the width of its figure."""
+    blocks = data.estimation.blocks
+    assert blocks is not None
+    depth = 1.3 * float(blocks["elevation"].max() - blocks["elevation"].min()) + 3.0
+    return float(np.clip(8.2 * depth * data.subject.exaggeration / (line.stop - line.start), 1.4, 4.6)) + 0.75
+
+
 def sections(data: ReportData) -> list[Drawing]:
     """One figure a direction with its sections below one another, coloured by the first metal."""
     metals = data.subject.metals
@@ -256,7 +264,8 @@ def sections(data: ReportData) -> list[Drawing]:
     lines = default_sections(data)
     for letter in dict.fromkeys(line.name[0] for line in lines):
         group = [line for line in lines if line.name[0] == letter]
-        figure, axes = style.new_figure(9.6, 3.3 * len(group) + 0.2, len(group), 1)
+        heights = [_panel_height(data, line) for line in group]
+        figure, axes = style.new_figure(9.6, sum(heights) + 0.3, len(group), 1, height_ratios=heights)
         tables = []
         mappable: Any = None
         for axis, line in zip(axes[:, 0], group):

@@ -61,23 +61,27 @@ def swaths(data: ReportData) -> Drawing | None:
             )
             centre = part["centre_m"].to_numpy(float)
             if "sample_count" in part and len(part):
-                bars = axis.twinx()
+                counts = part["sample_count"].to_numpy(float)
                 width = np.min(np.diff(centre)) * 0.85 if len(centre) > 1 else 1.0
-                bars.bar(
+                axis.bar(
                     centre,
-                    part["sample_count"].to_numpy(float),
+                    0.36 * counts / max(1.0, counts.max()),
                     width=width,
                     color="#e3e6e9",
                     zorder=0,
                     label="composites (count)",
+                    transform=axis.get_xaxis_transform(),
                 )
-                bars.set_ylim(0, max(1.0, float(part["sample_count"].max())) * 2.6)
-                bars.tick_params(axis="y", labelsize=6, colors=style.QUIET)
-                bars.spines["right"].set_visible(False)
-                if column == len(axes_names) - 1:
-                    bars.set_ylabel("Composites", fontsize=7, color=style.QUIET)
-                axis.set_zorder(bars.get_zorder() + 1)
-                axis.patch.set_visible(False)
+                axis.text(
+                    0.99,
+                    0.36,
+                    f"most {counts.max():.0f}",
+                    transform=axis.transAxes,
+                    ha="right",
+                    va="bottom",
+                    fontsize=6,
+                    color=style.QUIET,
+                )
             axis.plot(centre, part["block_mean"], "-", color=style.INK, lw=1.6, label="blocks")
             if "sample_mean" in part:
                 axis.plot(
@@ -109,19 +113,20 @@ def swaths(data: ReportData) -> Drawing | None:
                     color=style.LINES[1 + number],
                     label=ESTIMATOR_NAMES.get(stem, stem.replace("_", " ")),
                 )
-            axis.set_ylim(bottom=0)
+            shown = part.filter(regex="_mean$").to_numpy(float)
+            axis.set_ylim(0, 1.08 * np.nanmax(shown) if np.isfinite(shown).any() else 1.0)
             if column == 0:
                 axis.set_ylabel(metal_name(metal))
             if row == len(metals) - 1:
                 axis.set_xlabel(AXIS_LABELS.get(name, f"{name} (m)"))
-            axis.locator_params(axis="x", nbins=5)
     figure.legend(*axes[0, 0].get_legend_handles_labels(), loc="outside lower center", ncols=5)
     return Drawing(
         "swaths",
         "estimate",
         "Swaths",
-        "Means in slices along each axis; grey bars are the number of composites in the slice. Blocks should"
-        " follow the composites where there are many and smooth them where there are few.",
+        "Means in slices along each axis; grey bars are the number of composites in the slice, their highest"
+        " named at the right. Blocks should follow the composites where there are many and smooth them where"
+        " there are few.",
         "Swath plots of block and composite means by metal and axis.",
         figure,
         frame,

@@ -64,7 +64,7 @@ def grade_tonnage(data: ReportData) -> Drawing | None:
         axis.set_xlim(float(part["cutoff"].min()), float(part["cutoff"].max()))
         axis.set_xlabel(f"Cut-off, {variable_label(variable)}")
         axis.set_ylabel(f"Dry tonnes above ({unit} dry)")
-        axis.set_title("All classes" if name.lower() == "all" else f"{name} (proposed)")
+        axis.set_title("All classes" if name.lower() == "all" else f"{style.class_name(name)} (proposed)")
         right = axis.twinx()
         right.spines["right"].set_visible(True)
         for number, metal in enumerate(metals):
@@ -144,7 +144,7 @@ def _waterfall(
                 y, value / scale, left=level / scale, color="#d9915b" if value < 0 else "#6fa58f", height=0.62
             )
             right = max(level, level + value) / scale
-            axis.text(right, y, f" {value / scale:+.3g}", va="center", fontsize=7.5)
+            axis.text(right, y, f" {signed(value / scale)}", va="center", fontsize=7.5)
             level += value
         (
             axis.plot([level / scale, level / scale], [y - 1 + 0.31, y - 0.31], color=style.QUIET, lw=0.6)
@@ -157,6 +157,11 @@ def _waterfall(
     axis.margins(x=0.12)
     axis.set_xlim(left=0)
     return Drawing(key, section, title, caption, f"Waterfall of dry tonnes: {title.lower()}.", figure, frame)
+
+
+def signed(value: float) -> str:
+    """A change with its sign and two significant figures."""
+    return ("+" if value > 0 else "") + significant_text(value, 2)
 
 
 def waterfall(data: ReportData) -> Drawing | None:
@@ -196,6 +201,9 @@ def geometry(data: ReportData) -> Drawing | None:
     frame = data.body.geometry_uncertainty
     if frame is None or not has(frame, "case", "change_pct"):
         return None
+    frame = frame[frame["change_pct"].abs() > 1e-9]
+    if not len(frame):
+        return None
     figure, axes = style.new_figure(7.4, 0.36 * len(frame) + 1.1)
     axis = axes[0, 0]
     place = np.arange(len(frame))[::-1]
@@ -212,7 +220,7 @@ def geometry(data: ReportData) -> Drawing | None:
             fontsize=7,
         )
     axis.axvline(0, color=style.INK, lw=0.9)
-    axis.set_yticks(place, list(frame["case"].astype(str)))
+    axis.set_yticks(place, [case.replace("_", " ") for case in frame["case"].astype(str)])
     axis.set_xlabel("Change of dry tonnes of the body (%)")
     axis.margins(x=0.18)
     return Drawing(

@@ -147,9 +147,7 @@ def draw_boundaries(axes: Axes, data: ReportData) -> list[Any]:
             if status not in seen:
                 seen.add(status)
                 handles.append(
-                    Patch(
-                        fill=False, ec=colour, hatch=hatch, label=f"{status.replace('_', ' ')} (with buffer)"
-                    )
+                    Patch(fill=False, ec=colour, hatch=hatch, label=f"{status.replace('_', ' ')} zone")
                 )
     return handles
 

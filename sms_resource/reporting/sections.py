@@ -16,6 +16,7 @@ from sms_resource.reporting.elements import (
     Picture,
     Section,
     Slot,
+    drop_empty_headings,
     plain_words,
 )
 from sms_resource.reporting.sections_summary import summary
@@ -99,11 +100,15 @@ def _place_pictures(blocks: list[Block], drawings: list[Drawing]) -> list[Block]
     placed: list[Block] = []
     for block in blocks:
         if isinstance(block, Slot):
-            for key in [k for k in left if any(k == want or k.startswith(f"{want}_") for want in block.keys)]:
+            for key in [k for k in left if any(_wanted(k, want) for want in block.keys)]:
                 placed.append(Picture(left.pop(key)))
         else:
             placed.append(block)
-    return placed + [Picture(drawing) for drawing in left.values()]
+    return drop_empty_headings(placed + [Picture(drawing) for drawing in left.values()])
+
+
+def _wanted(key: str, want: str) -> bool:
+    return key.startswith(want[:-1]) if want.endswith("*") else key == want
 
 
 def _cautions(cautions: Sequence[Caution]) -> list[Block]:

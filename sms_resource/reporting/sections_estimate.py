@@ -11,13 +11,13 @@ from sms_resource.reporting.elements import (
     Heading,
     Paragraph,
     Slot,
-    drop_empty_headings,
     facts_from,
     frame_table,
     number_text,
     with_table,
 )
 from sms_resource.reporting.rounding import mass_text
+from sms_resource.reporting.summaries import checks_shown
 from sms_resource.reporting.tonnage import class_rows, rows_at_cutoff, tonnage_table
 from sms_resource.units import element_label
 
@@ -28,13 +28,17 @@ def untimed(frame: pd.DataFrame | None) -> pd.DataFrame | None:
 
 
 def estimate(data: ReportData) -> list[Block]:
+    """Method, pictures and checks of the block estimate."""
     s = data.estimation
     blocks: list[Block] = [Heading("Method")]
     facts = facts_from(s.settings)
     if facts:
         blocks.append(facts)
-    blocks += [Heading("Grades in plan and section"), Slot(("plan_grades", "section")), Heading("Checks")]
-    with_table(blocks, s.checks, "Checks and their verdicts")
+    blocks += [Heading("Grades in plan and section"), Slot(("plan_grades", "section_*")), Heading("Checks")]
+    shown, words = checks_shown(s.checks)
+    if words:
+        blocks.append(Paragraph(words))
+    with_table(blocks, shown, "Checks and their verdicts", most=40)
     with_table(blocks, s.means, "Global means: composites, declustered, blocks")
     with_table(blocks, s.estimators, "Mean grade by estimator")
     blocks.append(Slot(("estimators",)))
@@ -46,10 +50,11 @@ def estimate(data: ReportData) -> list[Block]:
     with_table(blocks, s.frames_effect, "Effect of the vertical frame")
     with_table(blocks, untimed(s.neighbourhood), "Neighbourhood study", note=s.neighbourhood_note, most=30)
     blocks.append(Slot(("neighbourhood",)))
-    return drop_empty_headings(blocks) if s.blocks is not None or s.settings else []
+    return blocks if s.blocks is not None or s.settings else []
 
 
 def classes(data: ReportData) -> list[Block]:
+    """Criteria, reasons, smoothing and overrides of the proposed classes."""
     c = data.classes
     blocks: list[Block] = []
     facts = facts_from(c.criteria)
@@ -66,6 +71,7 @@ def classes(data: ReportData) -> list[Block]:
 
 
 def target(data: ReportData) -> Paragraph:
+    """The exploration target as ranges, with its caution."""
     target = data.classes.exploration_target or {}
     low, high = (
         float(target.get("dry_tonnes_low", float("nan"))),
@@ -84,6 +90,7 @@ def target(data: ReportData) -> Paragraph:
 
 
 def tonnes(data: ReportData) -> list[Block]:
+    """Tables of tonnes at the cut-off, mineable shapes, and what the screens take."""
     blocks: list[Block] = []
     rows = rows_at_cutoff(data)
     label = data.tally_label
@@ -116,6 +123,7 @@ def tonnes(data: ReportData) -> list[Block]:
 
 
 def scenarios(data: ReportData) -> list[Block]:
+    """Equivalents, costs inside the cut-off, scenarios."""
     v = data.value
     blocks: list[Block] = []
     if v.equivalent:

@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+import json
+from typing import Any
+
 import pandas as pd
 
-from sms_resource.reporting.data import ReportData
+from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.elements import (
     Block,
     Bullets,
@@ -31,55 +34,59 @@ LEDGER_LABELS = {
 def ledger_frame(data: ReportData) -> pd.DataFrame | None:
     """The ledger with the columns that the report shows; None where there is none."""
     ledger = data.record.ledger
-    if ledger is None or not len(ledger):
+    if ledger is None or not has(ledger, "key", "value"):
         return None
     frame = ledger.rename(columns={"who": "by"})
-    for column in ("reason", "by", "alternatives", "effect"):
-        if column not in frame:
-            frame = frame.assign(**{column: ""})
-    effect = (
-        frame["effect"]
-        .astype(object)
-        .where(frame["effect"].notna() & (frame["effect"].astype(str) != ""), "not run")
+    for column in ("origin", "reason", "by", "alternatives", "effect"):
+        texts = frame[column].map(cell_text) if column in frame else pd.Series("", index=frame.index)
+        frame = frame.assign(**{column: texts.replace(NO_VALUE, "")})
+    return frame.assign(
+        value=frame["value"].map(plain_value),
+        alternatives=frame["alternatives"].str.replace('"', ""),
+        effect=frame["effect"].where(frame["effect"] != "", "not run"),
     )
-    return frame.assign(effect=effect)
+
+
+def plain_value(value: Any) -> str:
+    """A value of the study without the marks of its file format: ``"half"`` becomes half, true becomes yes."""
+    if isinstance(value, str):
+        try:
+            value = json.loads(value)
+        except ValueError:
+            return value
+    if isinstance(value, dict):
+        return ", ".join(f"{key}: {plain_value(item)}" for key, item in value.items()) or "none"
+    if isinstance(value, (list, tuple)):
+        return ", ".join(plain_value(item) for item in value) or "none"
+    return "not set" if value is None else cell_text(value, 6)
 
 
 def decisions(data: ReportData) -> list[Block]:
+    """The decisions with most effect, or chosen with a reason; where files lie comes last."""
     frame = ledger_frame(data)
     if frame is None:
         return []
-    size = (
-        pd.to_numeric(frame["effect_pct"], errors="coerce").abs().fillna(0.0)
-        if "effect_pct" in frame
-        else pd.Series(0.0, index=frame.index)
+    size = pd.to_numeric(frame["effect_pct"], errors="coerce") if "effect_pct" in frame else 0.0
+    rank = pd.DataFrame(
+        {
+            "size": pd.Series(size, index=frame.index).abs().fillna(0.0),
+            "reason": (frame["reason"] != "").astype(int),
+            "chosen": (frame["origin"] != "default").astype(int),
+            "judged": (~frame["key"].astype(str).str.startswith(("data.", "study."))).astype(int),
+        }
     )
-    chosen = (
-        (frame["origin"].astype(str) != "default").astype(int)
-        if "origin" in frame
-        else pd.Series(0, index=frame.index)
-    )
-    order = (
-        pd.DataFrame({"size": size, "chosen": chosen})
-        .sort_values(["size", "chosen"], ascending=False, kind="stable")
-        .index
-    )
-    counts = (
-        frame["origin"].astype(str).value_counts().sort_index() if "origin" in frame else pd.Series(dtype=int)
-    )
+    order = rank.sort_values(["size", "reason", "judged", "chosen"], ascending=False, kind="stable").index
+    counts = frame["origin"].value_counts().sort_index()
     words = ", ".join(f"{count} {name}" for name, count in counts.items())
+    title = "Decisions with most effect, or chosen"
     return [
-        frame_table(
-            frame.loc[order].head(8),
-            "Decisions with most effect, or chosen",
-            columns=LEDGER_COLUMNS,
-            labels=LEDGER_LABELS,
-        ),
+        frame_table(frame.loc[order].head(8), title, columns=LEDGER_COLUMNS, labels=LEDGER_LABELS),
         Paragraph(f"{len(frame)} decisions in all: {words}. The full ledger stands further on.", "note"),
     ]
 
 
 def ledger(data: ReportData) -> list[Block]:
+    """Every decision of the study."""
     frame = ledger_frame(data)
     if frame is None:
         return []
@@ -92,6 +99,7 @@ def ledger(data: ReportData) -> list[Block]:
 
 
 def findings(data: ReportData) -> list[Block]:
+    """What the checks found, errors first."""
     findings = data.record.findings
     counts = findings.counts()
     blocks: list[Block] = [
@@ -112,6 +120,7 @@ def findings(data: ReportData) -> list[Block]:
 
 
 def truth(data: ReportData) -> list[Block]:
+    """The estimate against a known truth, where a study names one."""
     truth = data.record.truth
     if not truth:
         return []
@@ -123,10 +132,12 @@ def truth(data: ReportData) -> list[Block]:
 
 
 def sources(data: ReportData) -> list[Block]:
+    """Sources of the study and of the methods."""
     return [Bullets(tuple(dict.fromkeys((*data.record.sources, *SOURCES))))]
 
 
 def manifest(data: ReportData) -> list[Block]:
+    """Inputs with their hashes, seed and versions; no times, so that the same study gives the same page."""
     manifest = data.record.manifest
     if not manifest:
         return []

@@ -19,6 +19,7 @@ from sms_resource.reporting.tonnage import rows_at_cutoff, tonnage_table
 
 
 def summary(data: ReportData, cautions: Sequence[Caution]) -> list[Block]:
+    """Table of tonnes, label, basis, and the cautions that this study sets off."""
     rows = rows_at_cutoff(data)
     blocks: list[Block] = []
     label = data.tally_label
@@ -49,6 +50,7 @@ def summary(data: ReportData, cautions: Sequence[Caution]) -> list[Block]:
 
 
 def basis(data: ReportData) -> list[tuple[str, str]]:
+    """What the estimate stands on, as labels and values."""
     subject, evidence = data.subject, data.evidence
     cutoff = subject.cutoff or {}
     pairs = [
@@ -82,7 +84,7 @@ def basis(data: ReportData) -> list[tuple[str, str]]:
             (
                 f"{holes} holes, {count} composites;"
                 f" {len(evidence.surface) if evidence.surface is not None else 0} surface samples"
-                f" ({evidence.surface_use or 'kept out of the estimate'})"
+                f" ({evidence.surface_use.rstrip('. ') or 'kept out of the estimate'})"
             ),
         )
     )
@@ -105,7 +107,7 @@ def basis(data: ReportData) -> list[tuple[str, str]]:
             (
                 "Body",
                 f"{number_text(whole)} m³ in place, {100 * beyond / whole:.0f} % of it extrapolated;"
-                f" {data.body.method}".rstrip("; "),
+                f" {data.body.method.rstrip('. ')}".rstrip("; "),
             )
         )
     if data.estimation.settings:

@@ -107,10 +107,15 @@ def new_figure(
     """A figure (inches) on the Agg canvas with its axes as an array of shape (rows, columns)."""
     from matplotlib.backends.backend_agg import FigureCanvasAgg
     from matplotlib.figure import Figure
+    from matplotlib.ticker import MaxNLocator
 
     figure = Figure(figsize=(width, height), dpi=DPI, facecolor="white", layout="constrained")
     FigureCanvasAgg(figure)
     axes = figure.subplots(rows, columns, squeeze=False, **subplots)
+    for axis in axes.ravel():
+        # Few ticks: easier to read, and text is what drawing spends its time on.
+        axis.xaxis.set_major_locator(MaxNLocator(5, steps=[1, 2, 2.5, 5, 10]))
+        axis.yaxis.set_major_locator(MaxNLocator(5, steps=[1, 2, 2.5, 5, 10]))
     return figure, axes
 
 
@@ -255,3 +260,9 @@ def log_axis(axis: Any) -> None:
     axis.set_major_locator(LogLocator(subs=(1.0,) if long else (1.0, 2.0, 5.0), numticks=12))
     axis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
     axis.set_minor_locator(NullLocator())
+
+
+def class_name(name: Any) -> str:
+    """A proposed class as a person reads it: ``Inferred``; "all" stays for the caller to name."""
+    text = str(name)
+    return text[:1].upper() + text[1:] if text else "Unclassified"

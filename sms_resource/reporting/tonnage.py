@@ -16,7 +16,7 @@ from sms_resource.reporting.rounding import (
     metal_unit,
     significant_text,
 )
-from sms_resource.reporting.style import class_rank
+from sms_resource.reporting.style import class_name, class_rank
 from sms_resource.units import element_label
 
 ROUNDING_NOTE = (
@@ -70,7 +70,7 @@ def tonnage_table(data: ReportData, rows: pd.DataFrame, title: str, *, first: Se
     contained = {metal: _metal_unit_of(rows, metal) for metal in metals}
     head = [*[str(name).replace("_", " ").capitalize() for name in first], "Proposed class"]
     head += [f"Dry tonnes ({unit} dry)", f"Wet tonnes ({unit} wet)"]
-    head += [element_label(metal) for metal in metals]
+    head += [element_label(metal).replace(" ", "\u00a0") for metal in metals]
     head += [
         f"{element_label(metal).rpartition(' (')[0]} contained ({contained[metal][0]} metal)"
         for metal in metals
@@ -81,7 +81,7 @@ def tonnage_table(data: ReportData, rows: pd.DataFrame, title: str, *, first: Se
     for number, row in enumerate(rows.to_dict("records")):
         inferred = is_inferred(row["proposed_class"])
         figures = data.subject.inferred_figures if inferred else data.subject.significant_figures
-        name = str(row["proposed_class"])
+        name = class_name(row["proposed_class"])
         if inferred:
             name = f"{name} (approximately)"
         if name.lower() == "all":

@@ -1,0 +1,99 @@
+"""Long tables brought down to what a reader needs; the whole tables stay in the data files."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import pandas as pd
+
+from sms_resource.reporting.data import has
+
+
+def references_by_material(frame: pd.DataFrame | None) -> pd.DataFrame | None:
+    """Reference materials: count, mean, expected, bias and how many lie beyond 2 and 3 SD, by element and material."""
+    if frame is None or not has(frame, "element", "material", "value", "expected"):
+        return frame
+    known = frame[frame["value"].notna()]
+    if not len(known):
+        return None
+    spread = known["used_sd"] if "used_sd" in known else known.get("expected_sd")
+    score = ((known["value"] - known["expected"]) / spread).abs() if spread is not None else None
+    work = known.assign(
+        beyond_2=(score > 2).astype(int) if score is not None else 0,
+        beyond_3=(score > 3).astype(int) if score is not None else 0,
+    )
+    table = work.groupby(["element", "material"], sort=True).agg(
+        n=("value", "size"),
+        expected=("expected", "mean"),
+        mean=("value", "mean"),
+        beyond_2=("beyond_2", "sum"),
+        beyond_3=("beyond_3", "sum"),
+    )
+    table["bias_pct"] = 100.0 * (table["mean"] / table["expected"] - 1.0)
+    columns = ["element", "material", "n", "expected", "mean", "bias_pct", "beyond_2", "beyond_3"]
+    names = {"beyond_2": "beyond 2 SD", "beyond_3": "beyond 3 SD"}
+    return table.reset_index()[columns].rename(columns=names)
+
+
+def blanks_by_element(frame: pd.DataFrame | None) -> pd.DataFrame | None:
+    """Blanks: count, greatest value, limit, and how many failed, by element."""
+    if frame is None or not has(frame, "element", "value", "failed"):
+        return frame
+    table = frame.groupby("element", sort=True).agg(
+        n=("value", "size"), greatest=("value", "max"), failed=("failed", "sum")
+    )
+    if "limit" in frame:
+        table["limit"] = frame.groupby("element", sort=True)["limit"].max()
+    return table.reset_index()
+
+
+def cuts_in_use(frame: pd.DataFrame | None) -> pd.DataFrame | None:
+    """Rows of the top-cut study that carry a cut; None where no cut is in use."""
+    if frame is None or not has(frame, "cut"):
+        return None
+    cut = frame[frame["cut"].notna()]
+    wanted = [
+        "domain",
+        "metal",
+        "n",
+        "cut",
+        "n_cut",
+        "mean_before",
+        "mean",
+        "mean_after",
+        "metal_removed_pct",
+    ]
+    columns = [c for c in (*wanted, "cv", "cv_cut", "reason") if c in cut]
+    return cut[columns] if len(cut) else None
+
+
+def chosen_cells(frame: pd.DataFrame | None) -> pd.DataFrame | None:
+    """The chosen cell size of each declustering, beside the plain mean of the smallest cells tried."""
+    if frame is None or "chosen" not in frame:
+        return frame
+    chosen = frame[frame["chosen"].astype(bool)]
+    return chosen.drop(columns="chosen") if len(chosen) else None
+
+
+def associations_shown(frame: pd.DataFrame | None, metals: Sequence[str]) -> pd.DataFrame | None:
+    """Correlations over all domains in which at least one of the study's metals stands, strongest first."""
+    if frame is None or not has(frame, "metal_a", "metal_b", "spearman"):
+        return frame
+    rows = (
+        frame[frame["domain"] == "all"] if "domain" in frame and (frame["domain"] == "all").any() else frame
+    )
+    rows = rows[rows["metal_a"].isin(metals) | rows["metal_b"].isin(metals)]
+    order = rows["spearman"].abs().sort_values(ascending=False, kind="stable").index
+    return rows.loc[order]
+
+
+def checks_shown(frame: pd.DataFrame | None, most: int = 30) -> tuple[pd.DataFrame | None, str]:
+    """Checks that did not pass (or all, where they are few), and a sentence with the counts."""
+    if frame is None or not has(frame, "verdict"):
+        return frame, ""
+    counts = frame["verdict"].astype(str).value_counts().sort_index()
+    words = f"{len(frame)} checks: " + ", ".join(f"{count} {name}" for name, count in counts.items()) + "."
+    if len(frame) <= most:
+        return frame, words
+    left = frame[frame["verdict"].astype(str) != "pass"]
+    return (left if len(left) else frame.head(most)), words + " The table shows those that did not pass."
