@@ -41,12 +41,12 @@ def find_lag(distance, edges, count):
 def look(dx, dy, dz, distance, kind, frame, cosine, band_side, band_normal, slack):
     """Whether a pair belongs to a direction, and its absolute components along, beside and off the axis."""
     along = abs(dx * frame[0, 0] + dy * frame[0, 1] + dz * frame[0, 2])
+    if kind == 1 and along < cosine * distance - slack:
+        return False, along, 0.0, 0.0  # most pairs leave here
     side = abs(dx * frame[1, 0] + dy * frame[1, 1] + dz * frame[1, 2])
     normal = abs(dx * frame[2, 0] + dy * frame[2, 1] + dz * frame[2, 2])
     if kind == 1:
-        inside = along >= cosine * distance - slack and side <= band_side + slack
-        inside = inside and normal <= band_normal + slack
-        return inside, along, side, normal
+        return side <= band_side + slack and normal <= band_normal + slack, along, side, normal
     if kind == 2:
         inside = normal <= cosine * distance + slack and normal <= band_normal + slack
         return inside, np.sqrt(along * along + side * side), 0.0, normal

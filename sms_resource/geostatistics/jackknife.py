@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
 Array = NDArray[np.float64]
-MOST_SAMPLES_FOR_CLUSTERING = 600
+MOST_SAMPLES_FOR_CLUSTERING = 400
 CALIBRATION = 1.05  # of the error of sill and ranges: 200 fields simulated on 49 holes, see the tests
 
 
