@@ -16,11 +16,14 @@ Floats = NDArray[np.float64]
 LEAST_SAMPLES = 20
 # Below this coefficient of variation a tail does no harm to linear estimation (common practice, no source).
 TAME_CV = 1.2
-# A step between neighbours in the tail that is this many times the steps below it is a break.
-BREAK_RATIO = 3.0
+# A step between neighbours in the tail is a break where a Pareto tail would show such a one with this probability (a
+# lognormal one, being lighter, hardly ever), and where the next sample is at least a fifth richer.
+BREAK_CHANCE = 0.2
+LEAST_STEP = 0.2
 TAIL_SHARE = 0.1
 # A proposal never takes more than this share of the metal; beyond it the tail is a population, not an accident.
 GREATEST_METAL_SHARE = 0.15
+FEW_CUT, FEW_CUT_SHARE = 3, 0.02
 
 
 def cut_curve(
@@ -77,10 +80,11 @@ def top_cut_study(
 
     Notes
     -----
-    The rule: no cut below 20 samples or at a CV up to 1.2; else at the lowest clear break of the tail (a step between
-    ordered logarithms in the upper tenth three times those around it), else where the CV of the cut values falls to
-    1.2, and never so low that more than 15 % of the metal goes. Parrish (1997), Mining Engineering 49(4), is among
-    those who warn of cutting a population; where the cut samples lie together the reason says so.
+    The rule: no cut below 20 samples or at a CV up to 1.2; else at the lowest break of the upper tenth (a step between
+    ordered logarithms that a Pareto tail would show once in five, and a lognormal one hardly ever); else where the CV
+    of the cut values falls to 1.2. No cut takes more than 15 % of the metal, unless a break parts off no more than 2 %
+    of the samples. Parrish (1997), Mining Engineering 49(4), is among those who warn of cutting a population; where the
+    cut samples lie together the reason says so.
     """
     rows = []
     domain = names(composites["domain"])
@@ -229,19 +233,19 @@ def _find_cut(values: Floats, weights: Floats, cv: float) -> tuple[float, str]:
     n = len(ordered)
     curve = cut_curve(values, weights, np.unique(ordered[ordered >= np.quantile(ordered, 0.8)]))
     allowed = curve.loc[curve["metal_removed_pct"] <= 100.0 * GREATEST_METAL_SHARE]
+    # beyond a break a few samples may be cut whatever they carry: they are what the estimate must not smear
+    few = curve["n_cut"] <= max(FEW_CUT, FEW_CUT_SHARE * n)
+    at_break = curve.loc[few | (curve["metal_removed_pct"] <= 100.0 * GREATEST_METAL_SHARE), "cut"]
     start = max(int(np.floor(n * (1.0 - TAIL_SHARE))), 1)
     logs = np.log(np.maximum(ordered, np.finfo(float).tiny))
     steps = np.diff(logs)
-    # what a step should be grows toward the end of any tail: compare rank x step, which an even tail keeps level
+    # In an even tail, rank x step of the logarithms scatters like one exponential variable (Renyi 1953), so the
+    # greatest of m such steps passes mean x ln(m / p) by chance with probability p.
     level = steps * (n - 1 - np.arange(n - 1))
-    usual = np.median(level[int(n * 0.5) : -1]) if n > 4 else np.nan
+    usual = float(level[n // 2 : start].mean()) if start > n // 2 else np.nan
+    limit = usual * np.log(max(n - start, 1) / BREAK_CHANCE)
     for at in range(start - 1, n - 1):
-        if (
-            usual > 0
-            and level[at] > BREAK_RATIO * usual
-            and steps[at] > 0.2
-            and np.any(np.isclose(allowed["cut"], ordered[at]))
-        ):
+        if level[at] > limit and steps[at] > LEAST_STEP and np.any(np.isclose(at_break, ordered[at])):
             return float(ordered[at]), (
                 f"the coefficient of variation is {cv:.2f} and the tail breaks at this value: the next sample is "
                 f"{np.exp(steps[at]):.2f} times as rich"

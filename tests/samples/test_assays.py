@@ -12,7 +12,29 @@ from sms_resource.samples.guards import grade_guards
 from tests.samples.holes import codes
 
 # Sulphate data of Newman (1995), Quantitative Methods in Aquatic Ecotoxicology, p. 35: two of 21 below 2.5
-SULPHATE = [2.5, 2.5, 2.6, 3.3, 3.5, 3.5, 3.6, 4.0, 4.1, 4.5, 5.2, 5.6, 5.7, 6.1, 6.2, 6.5, 6.9, 7.1, 7.7, 7.9, 9.9]
+SULPHATE = [
+    2.5,
+    2.5,
+    2.6,
+    3.3,
+    3.5,
+    3.5,
+    3.6,
+    4.0,
+    4.1,
+    4.5,
+    5.2,
+    5.6,
+    5.7,
+    6.1,
+    6.2,
+    6.5,
+    6.9,
+    7.1,
+    7.7,
+    7.9,
+    9.9,
+]
 
 
 def test_ros_of_a_published_example() -> None:
@@ -53,11 +75,20 @@ def table() -> pd.DataFrame:
     limit = [np.nan] * 20 + [0.1, 0.1, 0.4, 0.4, 30.0, np.nan, np.nan]
     method = ["laboratory"] * 26 + ["handheld"]
     return pd.DataFrame(
-        {"hole_id": "A", "method": method, "cu_pct": values, "cu_pct_status": status, "cu_pct_limit": limit, "source_row": np.arange(27) + 2}
-    )  # fmt: skip
+        {
+            "hole_id": "A",
+            "method": method,
+            "cu_pct": values,
+            "cu_pct_status": status,
+            "cu_pct_limit": limit,
+            "source_row": np.arange(27) + 2,
+        }
+    )
 
 
-@pytest.mark.parametrize(("choice", "expected"), [("half", [0.05, 0.2]), ("zero", [0, 0]), ("as_is", [0.1, 0.4])])
+@pytest.mark.parametrize(
+    ("choice", "expected"), [("half", [0.05, 0.2]), ("zero", [0, 0]), ("as_is", [0.1, 0.4])]
+)
 def test_below_detection(choice: str, expected: list[float]) -> None:
     frame, findings, summary = resolve_assays(table(), ["cu_pct"], below_detection=choice)  # type: ignore[arg-type]
     assert frame["cu_pct"].iloc[20:24].tolist() == pytest.approx([expected[0]] * 2 + [expected[1]] * 2)
@@ -87,7 +118,9 @@ def test_ros_with_too_few_falls_back_and_says_so() -> None:
 
 
 def test_over_limit_may_be_left_out_and_handheld_let_in() -> None:
-    frame, findings, _ = resolve_assays(table(), ["cu_pct"], over_limit="missing", allowed_methods=("laboratory", "handheld"))
+    frame, findings, _ = resolve_assays(
+        table(), ["cu_pct"], over_limit="missing", allowed_methods=("laboratory", "handheld")
+    )
     assert np.isnan(frame["cu_pct"].iloc[24])
     assert len(frame) == 27
     assert "method-allowed" in codes(findings)
@@ -115,15 +148,22 @@ def test_unknown_options_name_themselves(option: dict) -> None:
 @pytest.mark.parametrize(
     ("grades", "severity", "code"),
     [
-        ({"cu_pct": 36.0}, "warning", "grade-guard"), ({"cu_pct": 81.0}, "error", "grade-guard"),
-        ({"zn_pct": 68.0}, "error", "grade-guard"), ({"zn_pct": 51.0}, "warning", "grade-guard"),
-        ({"au_gpt": 150.0}, "warning", "grade-guard"), ({"ag_gpt": 2500.0}, "warning", "grade-guard"),
-        ({"cu_pct": -1.0}, "error", "grade-guard"), ({"cu_pct": 34.0, "zn_pct": 45.0}, "error", "mineral-sum"),
+        ({"cu_pct": 36.0}, "warning", "grade-guard"),
+        ({"cu_pct": 81.0}, "error", "grade-guard"),
+        ({"zn_pct": 68.0}, "error", "grade-guard"),
+        ({"zn_pct": 51.0}, "warning", "grade-guard"),
+        ({"au_gpt": 150.0}, "warning", "grade-guard"),
+        ({"ag_gpt": 2500.0}, "warning", "grade-guard"),
+        ({"cu_pct": -1.0}, "error", "grade-guard"),
+        ({"cu_pct": 34.0, "zn_pct": 45.0}, "error", "mineral-sum"),
     ],
-)  # fmt: skip
+)
 def test_guards(grades: dict[str, float], severity: str, code: str) -> None:
     frame = pd.DataFrame([{"cu_pct": 3.0}, grades]).assign(source_row=[2, 3])
-    found = [(item.severity, item.code, item.row) for item in grade_guards(frame, ["cu_pct", "zn_pct", "au_gpt", "ag_gpt"])]
+    found = [
+        (item.severity, item.code, item.row)
+        for item in grade_guards(frame, ["cu_pct", "zn_pct", "au_gpt", "ag_gpt"])
+    ]
     assert (severity, code, 3) in found
     assert not any(row == 2 for _, _, row in found)
 

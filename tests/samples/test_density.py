@@ -18,7 +18,12 @@ from sms_resource.samples.mineralogy import (
     least_mineral_percent,
     norm,
 )
-from sms_resource.samples.moisture import dry_from_grain, dry_without_salt, moisture_and_density, wet_from_porosity
+from sms_resource.samples.moisture import (
+    dry_from_grain,
+    dry_without_salt,
+    moisture_and_density,
+    wet_from_porosity,
+)
 from sms_resource.samples.seawater import SalinityOutOfRange, seawater_density
 from tests.samples.holes import codes, intervals
 
@@ -33,7 +38,9 @@ IODP = {"salinity_gkg": 35.0, "pore_water_tpm3": 1.024}
         ((30.0, 25.5, 7.2), 0.3898769456, 2.5684053502, 2.1691713579, 3.5553014136),
     ],
 )
-def test_moisture_and_density_worked_examples(masses: tuple, porosity: float, wet: float, dry: float, grain: float) -> None:
+def test_moisture_and_density_worked_examples(
+    masses: tuple, porosity: float, wet: float, dry: float, grain: float
+) -> None:
     found = moisture_and_density(*masses, **IODP)
     digits = 5e-4 if porosity == 0.350 else 1e-9
     assert float(found.porosity) == pytest.approx(porosity, abs=digits)
@@ -66,15 +73,19 @@ def test_water_salt_and_solid_balance(porosity: float, grain: float, salinity: f
     found = moisture_and_density(wet, dried, volume, salinity_gkg=salinity, pore_water_tpm3=water)
     assert float(found.porosity) == pytest.approx(porosity, rel=1e-9)
     assert float(found.grain_tpm3) == pytest.approx(grain, rel=1e-9)
-    assert float(found.wet_tpm3) == pytest.approx(float(found.dry_tpm3) + float(found.porosity) * water, rel=1e-12)
+    assert float(found.wet_tpm3) == pytest.approx(
+        float(found.dry_tpm3) + float(found.porosity) * water, rel=1e-12
+    )
     if salinity > 1e-6:
         assert float(found.dry_tpm3) < float(found.dry_with_salt_tpm3)
-    assert float(dry_without_salt(found.wet_tpm3, found.dry_with_salt_tpm3, salinity_gkg=salinity)) == pytest.approx(
-        float(found.dry_tpm3), rel=1e-9
-    )
+    assert float(
+        dry_without_salt(found.wet_tpm3, found.dry_with_salt_tpm3, salinity_gkg=salinity)
+    ) == pytest.approx(float(found.dry_tpm3), rel=1e-9)
     back, pores = dry_from_grain(found.wet_tpm3, found.grain_tpm3, pore_water_tpm3=water)
     assert float(back) == pytest.approx(float(found.dry_tpm3), rel=1e-9)
-    assert float(wet_from_porosity(back, pores, pore_water_tpm3=water)) == pytest.approx(float(found.wet_tpm3), rel=1e-9)
+    assert float(wet_from_porosity(back, pores, pore_water_tpm3=water)) == pytest.approx(
+        float(found.wet_tpm3), rel=1e-9
+    )
 
 
 def test_seawater_density_is_that_of_teos10() -> None:
@@ -92,10 +103,16 @@ def test_seawater_density_is_that_of_teos10() -> None:
 @pytest.mark.parametrize(
     ("mineral", "element", "percent"),
     [
-        ("chalcopyrite", "Cu", 34.628), ("sphalerite", "Zn", 67.098), ("galena", "Pb", 86.600), ("pyrite", "Fe", 46.551),
-        ("bornite", "Cu", 63.316), ("covellite", "Cu", 66.467), ("chalcocite", "Cu", 79.856), ("barite", "Ba", 58.842),
+        ("chalcopyrite", "Cu", 34.628),
+        ("sphalerite", "Zn", 67.098),
+        ("galena", "Pb", 86.600),
+        ("pyrite", "Fe", 46.551),
+        ("bornite", "Cu", 63.316),
+        ("covellite", "Cu", 66.467),
+        ("chalcocite", "Cu", 79.856),
+        ("barite", "Ba", 58.842),
     ],
-)  # fmt: skip
+)
 def test_metal_in_minerals(mineral: str, element: str, percent: float) -> None:
     # handbook values, tolerance .02
     assert 100 * MINERALS[mineral].fraction(element) == pytest.approx(percent, abs=0.02)
@@ -105,12 +122,18 @@ def test_metal_in_minerals(mineral: str, element: str, percent: float) -> None:
 def test_atomic_masses_are_those_of_a_chemistry_library(library: str) -> None:
     chemistry = pytest.importorskip(library, reason=f"{library} is not installed")
     for symbol, mass in ATOMIC_MASS.items():
-        other = getattr(chemistry, symbol).mass if library == "periodictable" else chemistry.Formula(symbol).mass
+        other = (
+            getattr(chemistry, symbol).mass if library == "periodictable" else chemistry.Formula(symbol).mass
+        )
         # abridged standard weights move by some 1e-4 between tables
         assert mass == pytest.approx(float(other), rel=6e-4), symbol
     for mineral in MINERALS.values():
         weight = sum(ATOMIC_MASS[s] * n for s, n in formula_counts(mineral.formula).items())
-        other = chemistry.formula(mineral.formula).mass if library == "periodictable" else chemistry.Formula(mineral.formula).mass
+        other = (
+            chemistry.formula(mineral.formula).mass
+            if library == "periodictable"
+            else chemistry.Formula(mineral.formula).mass
+        )
         assert weight == pytest.approx(float(other), rel=3e-4), mineral.name
 
 
@@ -122,9 +145,14 @@ def test_norm_of_a_massive_sulphide() -> None:
     # independent code, same rules: Cu 6, Zn 4, Pb .6, As .2, Ba 5, Fe 26 %
     found = norm(sample(cu_pct=6, zn_pct=4, pb_pct=0.6, as_ppm=2000, ba_pct=5, fe_pct=26)).iloc[0]
     expected = {
-        "chalcopyrite": 15.857, "sphalerite": 5.961, "galena": 0.693, "barite": 8.497, "tennantite": 0.987,
-        "pyrite": 45.487, "silica": 22.517,
-    }  # fmt: skip
+        "chalcopyrite": 15.857,
+        "sphalerite": 5.961,
+        "galena": 0.693,
+        "barite": 8.497,
+        "tennantite": 0.987,
+        "pyrite": 45.487,
+        "silica": 22.517,
+    }
     for name, value in expected.items():
         assert found[name] == pytest.approx(value, abs=2e-3), name
     assert found["grain_density_tpm3"] == pytest.approx(3.66837, abs=2e-4)
@@ -150,8 +178,13 @@ def test_norm_settings() -> None:
     found = norm(grades, NormSettings(rest_by_domain={"stockwork": "quartz"}))
     assert found["silica"].tolist()[1] == 0 and found["quartz"].tolist()[0] == 0
     assert found["grain_density_tpm3"].iloc[1] > found["grain_density_tpm3"].iloc[0]
-    assert norm(sample(cu_pct=10, fe_pct=1), NormSettings(copper_mineral="chalcocite"))["chalcocite"].iloc[0] > 12
-    assert norm(sample(cu_pct=10, fe_pct=1))["iron_short_pct"].iloc[0] == pytest.approx(10 * 55.845 / 63.546 - 1, abs=0.01)
+    assert (
+        norm(sample(cu_pct=10, fe_pct=1), NormSettings(copper_mineral="chalcocite"))["chalcocite"].iloc[0]
+        > 12
+    )
+    assert norm(sample(cu_pct=10, fe_pct=1))["iron_short_pct"].iloc[0] == pytest.approx(
+        10 * 55.845 / 63.546 - 1, abs=0.01
+    )
     for wrong in ({"copper_mineral": "native"}, {"rest": "cheese"}, {"densities": {"cheese": 1.0}}):
         with pytest.raises(ValueError, match=r"mineral|copper"):
             NormSettings(**wrong)
@@ -159,12 +192,18 @@ def test_norm_settings() -> None:
 
 def test_least_mineral_is_a_lower_bound() -> None:
     for mineral in ("chalcopyrite", "pyrite", "sphalerite", "barite", "bornite"):
-        grades = sample(**{
-            f"{symbol.lower()}_pct": 100 * MINERALS[mineral].fraction(symbol)
-            for symbol in formula_counts(MINERALS[mineral].formula) if symbol in ("Cu", "Fe", "Zn", "Ba")
-        })  # fmt: skip
+        grades = sample(
+            **{
+                f"{symbol.lower()}_pct": 100 * MINERALS[mineral].fraction(symbol)
+                for symbol in formula_counts(MINERALS[mineral].formula)
+                if symbol in ("Cu", "Fe", "Zn", "Ba")
+            }
+        )
         assert least_mineral_percent(grades)[0] <= 100.0 + 1e-9
-    assert heaviest_grain(sample(cu_pct=1, fe_pct=5))[0] > heaviest_grain(sample(cu_pct=1, fe_pct=5, ba_pct=0.1))[0]
+    assert (
+        heaviest_grain(sample(cu_pct=1, fe_pct=5))[0]
+        > heaviest_grain(sample(cu_pct=1, fe_pct=5, ba_pct=0.1))[0]
+    )
 
 
 def measured(rows: list[tuple], *columns: str) -> pd.DataFrame:
@@ -175,24 +214,42 @@ LOG = intervals([("A", 0, 10, "massive"), ("A", 10, 20, "stockwork")], "domain")
 
 
 def test_each_way_to_a_density() -> None:
-    columns = ("wet_density_tpm3", "dry_density_tpm3", "grain_density_tpm3", "wet_mass_g", "dry_mass_g", "dry_volume_cm3")
+    columns = (
+        "wet_density_tpm3",
+        "dry_density_tpm3",
+        "grain_density_tpm3",
+        "wet_mass_g",
+        "dry_mass_g",
+        "dry_volume_cm3",
+    )
     nan = np.nan
     table = density_table(
         measured(
             [
-                ("A", 0, 1, nan, nan, nan, 31.534, 28.07544, 6.556505), ("A", 1, 2, 3.6, 3.4, nan, nan, nan, nan),
-                ("A", 2, 3, 3.6, nan, 4.5, nan, nan, nan), ("A", 3, 4, nan, 3.4, 4.5, nan, nan, nan),
-                ("A", 4, 5, 3.6, nan, nan, nan, nan, nan), ("A", 11, 12, 3.6, nan, nan, nan, nan, nan),
+                ("A", 0, 1, nan, nan, nan, 31.534, 28.07544, 6.556505),
+                ("A", 1, 2, 3.6, 3.4, nan, nan, nan, nan),
+                ("A", 2, 3, 3.6, nan, 4.5, nan, nan, nan),
+                ("A", 3, 4, nan, 3.4, 4.5, nan, nan, nan),
+                ("A", 4, 5, 3.6, nan, nan, nan, nan, nan),
+                ("A", 11, 12, 3.6, nan, nan, nan, nan, nan),
                 ("A", 12, 13, nan, 2.9, nan, nan, nan, nan),
             ],
             *columns,
         ),
-        None, LOG, porosity={"massive": 0.1}, pore_water_tpm3=1.024,
-    )  # fmt: skip
+        None,
+        LOG,
+        porosity={"massive": 0.1},
+        pore_water_tpm3=1.024,
+    )
     assert table["dry_basis"].tolist() == [
-        "masses and volume, salt removed", "measured", "wet and grain", "measured", "wet and assumed porosity", "none",
+        "masses and volume, salt removed",
         "measured",
-    ]  # fmt: skip
+        "wet and grain",
+        "measured",
+        "wet and assumed porosity",
+        "none",
+        "measured",
+    ]
     dry, wet, pores = table["dry_density_tpm3"], table["wet_density_tpm3"], table["porosity"]
     assert dry.iloc[0] == pytest.approx(2.795, abs=5e-4)
     assert dry.iloc[4] == pytest.approx(3.6 - 0.1024)
@@ -215,7 +272,9 @@ def test_dry_densities_that_hold_salt_are_corrected() -> None:
     ("wet", "dry", "grain"), [(3.0, 3.4, np.nan), (0.9, 0.5, np.nan), (9.0, 8.9, np.nan), (3.5, 3.4, 3.0)]
 )
 def test_impossible_densities_are_findings_at_their_row(wet: float, dry: float, grain: float) -> None:
-    frame = measured([("A", 0, 1, wet, dry, grain)], "wet_density_tpm3", "dry_density_tpm3", "grain_density_tpm3")
+    frame = measured(
+        [("A", 0, 1, wet, dry, grain)], "wet_density_tpm3", "dry_density_tpm3", "grain_density_tpm3"
+    )
     found = density_findings(density_table(frame, None, LOG))
     assert "density-impossible" in codes(found)
     assert all(item.row == 2 and item.remedy for item in found)
@@ -241,10 +300,17 @@ def many(seed: int = 0, count: int = 40) -> pd.DataFrame:
     dry = 2.0 + 0.03 * fe + 0.05 * cu + rng.normal(0, 0.05, count)
     return pd.DataFrame(
         {
-            "hole_id": "A", "from_m": np.arange(count), "to_m": np.arange(count) + 1.0, "domain": "massive", "cu_pct": cu,
-            "fe_pct": fe, "zn_pct": rng.uniform(0, 5, count), "dry_density_tpm3": dry, "wet_density_tpm3": dry + 0.15,
+            "hole_id": "A",
+            "from_m": np.arange(count),
+            "to_m": np.arange(count) + 1.0,
+            "domain": "massive",
+            "cu_pct": cu,
+            "fe_pct": fe,
+            "zn_pct": rng.uniform(0, 5, count),
+            "dry_density_tpm3": dry,
+            "wet_density_tpm3": dry + 0.15,
         }
-    )  # fmt: skip
+    )
 
 
 def test_measured_mean_has_the_t_interval() -> None:
@@ -268,15 +334,21 @@ def test_regression_finds_the_line_and_its_interval_covers() -> None:
     dry, wet = model.predict(["massive", "massive"], grades)
     assert dry[0] == pytest.approx(3.0, abs=0.05)
     assert wet[0] == pytest.approx(dry[0] + 0.15)
-    assert dry[1] == pytest.approx(model.by_domain["dry_base"].iloc[0])  # a block without grades takes its domain's mean
+    assert dry[1] == pytest.approx(
+        model.by_domain["dry_base"].iloc[0]
+    )  # a block without grades takes its domain's mean
     covered = 0
     for seed in range(200):
         fitted = fit_density(many(seed, 25), "regression")
-        low, high = (fitted.predict(["massive"], grades.iloc[:1], case=case)[0][0] for case in ("low", "high"))
+        low, high = (
+            fitted.predict(["massive"], grades.iloc[:1], case=case)[0][0] for case in ("low", "high")
+        )
         covered += low <= 3.0 <= high
     assert 0.84 <= covered / 200 <= 0.96  # nominal 90 %
     assert codes(model.findings) == ["density-regression"]
-    assert model.extrapolated(pd.DataFrame({"cu_pct": [50.0], "fe_pct": [20.0], "zn_pct": [1.0]})).tolist() == [True]
+    assert model.extrapolated(
+        pd.DataFrame({"cu_pct": [50.0], "fe_pct": [20.0], "zn_pct": [1.0]})
+    ).tolist() == [True]
 
 
 def test_regression_equals_least_squares_of_numpy() -> None:
@@ -296,8 +368,24 @@ def test_regression_does_not_reach_domains_that_were_assigned() -> None:
 
 
 def test_minerals_and_porosity() -> None:
-    grades = pd.DataFrame({"domain": ["massive"] * 3, "cu_pct": [6.0] * 3, "zn_pct": 4.0, "pb_pct": 0.6, "as_ppm": 2000.0, "ba_pct": 5.0, "fe_pct": 26.0})  # fmt: skip
-    model = fit_density(many(), "mineralogy", porosity={"massive": (0.05, 0.10, 0.15)}, composites=grades, pore_water_tpm3=1.024)
+    grades = pd.DataFrame(
+        {
+            "domain": ["massive"] * 3,
+            "cu_pct": [6.0] * 3,
+            "zn_pct": 4.0,
+            "pb_pct": 0.6,
+            "as_ppm": 2000.0,
+            "ba_pct": 5.0,
+            "fe_pct": 26.0,
+        }
+    )
+    model = fit_density(
+        many(),
+        "mineralogy",
+        porosity={"massive": (0.05, 0.10, 0.15)},
+        composites=grades,
+        pore_water_tpm3=1.024,
+    )
     row = model.by_domain.iloc[0]
     assert (row["dry_low"], row["dry_base"], row["dry_high"]) == pytest.approx(
         (3.66837 * 0.85, 3.66837 * 0.9, 3.66837 * 0.95), abs=1e-3
@@ -308,7 +396,15 @@ def test_minerals_and_porosity() -> None:
 
 
 def test_assigned_and_scaled() -> None:
-    model = fit_density(many(), "assigned", domains=["massive"], assigned_dry_tpm3={"massive": (3.0, 3.3, 3.5)}, porosity={"massive": 0.1}, factor=1.1, pore_water_tpm3=1.0)  # fmt: skip
+    model = fit_density(
+        many(),
+        "assigned",
+        domains=["massive"],
+        assigned_dry_tpm3={"massive": (3.0, 3.3, 3.5)},
+        porosity={"massive": 0.1},
+        factor=1.1,
+        pore_water_tpm3=1.0,
+    )
     row = model.by_domain.iloc[0]
     assert (row["dry_low"], row["dry_base"], row["dry_high"]) == pytest.approx((3.3, 3.63, 3.85))
     assert row["wet_base"] == pytest.approx(3.63 + 0.1)  # water stays
@@ -337,17 +433,23 @@ def test_wet_only_domains_say_that_wet_tonnes_are_unknown() -> None:
     table = many()
     table["wet_density_tpm3"] = np.nan
     assert "density-wet-only" in codes(fit_density(table).findings)
-    assert fit_density(table, porosity={"massive": 0.1}).by_domain["water_tpm3"].iloc[0] == pytest.approx(0.1025, abs=1e-3)
+    assert fit_density(table, porosity={"massive": 0.1}).by_domain["water_tpm3"].iloc[0] == pytest.approx(
+        0.1025, abs=1e-3
+    )
 
 
 @pytest.mark.parametrize(
     "options",
     [
-        {"method": "guess"}, {"confidence": 1.0}, {"factor": 0.0}, {"assigned_dry_tpm3": {"massive": -1.0}},
-        {"assigned_dry_tpm3": {"massive": (3.0, 2.0, 4.0)}}, {"porosity": {"massive": 1.2}},
+        {"method": "guess"},
+        {"confidence": 1.0},
+        {"factor": 0.0},
+        {"assigned_dry_tpm3": {"massive": -1.0}},
+        {"assigned_dry_tpm3": {"massive": (3.0, 2.0, 4.0)}},
+        {"porosity": {"massive": 1.2}},
         {"assigned_dry_tpm3": {"massive": {"dry": 3.0, "wet": 2.0}}},
     ],
-)  # fmt: skip
+)
 def test_wrong_options_name_themselves(options: dict) -> None:
     with pytest.raises(ValueError, match=r"method|confidence|factor|density|porosity"):
         fit_density(many(), **options)

@@ -64,7 +64,12 @@ def test_reduced_major_axis_is_symmetric_and_covers() -> None:
 
 
 def references(
-    rng: np.random.Generator, *, batches: int = 10, per: int = 3, bias: float = 0.0, laboratory_bias: float = 0.0
+    rng: np.random.Generator,
+    *,
+    batches: int = 10,
+    per: int = 3,
+    bias: float = 0.0,
+    laboratory_bias: float = 0.0,
 ) -> pd.DataFrame:
     """Two materials in every batch, four elements; batch B04 is off in silver by ``bias`` certified deviations."""
     rows = []
@@ -75,7 +80,15 @@ def references(
                 off = laboratory_bias + (bias if (element, batch) == ("ag", 4) else 0.0)
                 for turn in range(per):
                     rows.append(
-                        (element, material, f"B{batch:02d}", batch * 10 + turn, rng.normal(expected + off * sd, sd), expected, sd)
+                        (
+                            element,
+                            material,
+                            f"B{batch:02d}",
+                            batch * 10 + turn,
+                            rng.normal(expected + off * sd, sd),
+                            expected,
+                            sd,
+                        )
                     )
     return pd.DataFrame(
         rows, columns=["element", "material", "batch", "sequence", "value", "expected", "expected_sd"]
@@ -113,8 +126,16 @@ def test_a_bias_of_the_whole_laboratory_accuses_no_batch_but_is_told() -> None:
 def test_control_rules() -> None:
     z = [0.0, 2.5, 0.0, 3.1, 2.1, 2.2, -2.1, 2.1, -2.2, -2.3]
     frame = pd.DataFrame(
-        {"element": "cu", "material": "RM", "batch": "B", "sequence": range(10), "value": 10 + np.array(z), "expected": 10.0, "expected_sd": 1.0}
-    )  # fmt: skip
+        {
+            "element": "cu",
+            "material": "RM",
+            "batch": "B",
+            "sequence": range(10),
+            "value": 10 + np.array(z),
+            "expected": 10.0,
+            "expected_sd": 1.0,
+        }
+    )
     rule = control_charts(frame.sample(frac=1, random_state=1))["rule"].tolist()
     two = "fail: two in a row beyond 2 SD on one side"
     assert rule == ["pass", "warn", "pass", "fail: beyond 3 SD", two, two, "warn", "warn", "warn", two]
@@ -137,20 +158,38 @@ def test_a_material_without_its_deviation_uses_its_results_and_says_so() -> None
 
 def _long(frame: pd.DataFrame, kind: str = "reference") -> pd.DataFrame:
     base = {
-        "kind": kind, "batch": "B01", "sequence": 1, "sample_id": "Q", "original_sample_id": "", "material": "",
-        "stage": "", "element": "cu", "value": np.nan, "value_status": 0, "value_limit": np.nan, "expected": np.nan,
-        "expected_sd": np.nan, "source_row": 2,
-    }  # fmt: skip
-    return pd.DataFrame({name: frame[name] if name in frame else value for name, value in base.items()}, index=frame.index)
+        "kind": kind,
+        "batch": "B01",
+        "sequence": 1,
+        "sample_id": "Q",
+        "original_sample_id": "",
+        "material": "",
+        "stage": "",
+        "element": "cu",
+        "value": np.nan,
+        "value_status": 0,
+        "value_limit": np.nan,
+        "expected": np.nan,
+        "expected_sd": np.nan,
+        "source_row": 2,
+    }
+    return pd.DataFrame({name: frame.get(name, value) for name, value in base.items()}, index=frame.index)
 
 
 def test_blanks_against_their_limit_and_the_grade_before() -> None:
     rng = np.random.default_rng(1)
     before = rng.lognormal(1, 1, 40)
     blanks = _long(
-        pd.DataFrame({"value": 0.002 * before, "sample_id": [f"K{i}" for i in range(40)], "original_sample_id": [f"S{i}" for i in range(40)], "source_row": np.arange(40) + 2}),
+        pd.DataFrame(
+            {
+                "value": 0.002 * before,
+                "sample_id": [f"K{i}" for i in range(40)],
+                "original_sample_id": [f"S{i}" for i in range(40)],
+                "source_row": np.arange(40) + 2,
+            }
+        ),
         "blank",
-    )  # fmt: skip
+    )
     assays = pd.DataFrame({"sample_id": [f"S{i}" for i in range(40)], "cu_pct": before})
     quality = laboratory_quality(blanks, assays, detection_limits={"cu": 0.002})
     assert quality.blanks["grade_before"].to_numpy() == pytest.approx(before)
@@ -166,13 +205,22 @@ def test_blanks_without_a_detection_limit_cannot_be_judged() -> None:
     assert quality.verdicts.set_index("aspect").loc["blanks", "verdict"] == "missing"
 
 
-def pairs(kind: str, spread: float, count: int = 60, factor: float = 1.0) -> tuple[pd.DataFrame, pd.DataFrame]:
+def pairs(
+    kind: str, spread: float, count: int = 60, factor: float = 1.0
+) -> tuple[pd.DataFrame, pd.DataFrame]:
     rng = np.random.default_rng(2)
     truth = rng.lognormal(1, 0.7, count)
     names = [f"S{i}" for i in range(count)]
     table = _long(
-        pd.DataFrame({"value": factor * truth * (1 + rng.normal(0, spread, count)), "original_sample_id": names, "stage": "pulp"}), kind
-    )  # fmt: skip
+        pd.DataFrame(
+            {
+                "value": factor * truth * (1 + rng.normal(0, spread, count)),
+                "original_sample_id": names,
+                "stage": "pulp",
+            }
+        ),
+        kind,
+    )
     return table, pd.DataFrame({"sample_id": names, "cu_pct": truth * (1 + rng.normal(0, spread, count))})
 
 
@@ -212,7 +260,7 @@ def test_originals_are_found_by_value_by_assay_or_not_at_all() -> None:
 def test_verdicts_name_what_is_missing() -> None:
     table = _long(references(np.random.default_rng(4), bias=4.0))
     quality = laboratory_quality(table)
-    wide = quality.verdicts.pivot(index="element", columns="aspect", values="verdict")
+    wide = quality.verdicts.pivot_table(index="element", columns="aspect", values="verdict", aggfunc="first")
     assert set(wide["blanks"]) == {"missing"}
     assert wide.loc["ag", "references"] == "failed" and wide.loc["cu", "references"] == "good"
     assert quality.verdict("ag") == "failed" and quality.verdict("cu") == "caution"

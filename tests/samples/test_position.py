@@ -1,0 +1,126 @@
+"""Collars against the seafloor: planted shifts, outliers, slopes, and positions without an uncertainty."""
+
+from __future__ import annotations
+
+import numpy as np
+import pandas as pd
+import pytest
+
+from sms_resource.samples.position import hole_ends, horizontal_fit, match_collars, position_table
+from tests.samples.holes import codes
+
+
+class Cone:
+    """A mound 20 m high on flat ground, or a plane; nothing beyond 100 m."""
+
+    def __init__(self, slope: float = 0.4) -> None:
+        self.slope = slope
+
+    def sample(self, x: np.ndarray, y: np.ndarray) -> np.ndarray:
+        r = np.hypot(x, y)
+        return np.where(r < 100, -1600.0 - self.slope * r + np.sin(x / 7.0) + np.cos(y / 5.0), np.nan)
+
+
+def drilled(shift: float, seed: int, count: int = 40, noise: float = 0.3) -> pd.DataFrame:
+    rng = np.random.default_rng(seed)
+    x, y = rng.uniform(-60, 60, (2, count))
+    z = Cone().sample(x, y) + shift + rng.normal(0, noise, count)
+    z[0] += 9.0
+    return pd.DataFrame(
+        {
+            "hole_id": [f"H{i}" for i in range(count)],
+            "easting": x,
+            "northing": y,
+            "elevation": z,
+            "position_sigma_m": 0.5,
+            "source_row": np.arange(count) + 2,
+        }
+    )
+
+
+@pytest.mark.parametrize("seed", range(10))
+def test_a_planted_shift_is_undone_within_0_3_m(seed: int) -> None:
+    match = match_collars(drilled(2.7, seed), Cone(), policy="shift_median")
+    assert match.shift_m == pytest.approx(-2.7, abs=0.3)
+    assert match.collars["flagged"].tolist() == [True] + [False] * 39
+    assert (match.collars["original_elevation"] - match.collars["elevation"]).to_numpy() == pytest.approx(
+        -match.shift_m
+    )
+    assert {"collar-shift", "collar-off-seafloor"} <= set(codes(match.findings))
+
+
+def test_keep_changes_nothing_and_warns() -> None:
+    frame = drilled(2.7, 0)
+    match = match_collars(frame, Cone())
+    assert match.collars["elevation"].tolist() == frame["elevation"].tolist()
+    assert match.shift_m == 0.0
+    assert [item.severity for item in match.findings if item.code == "collar-shift"] == ["warning"]
+    table = match.table.set_index("quantity")
+    assert table.loc["median_m", "before"] == pytest.approx(2.7, abs=0.2)
+    assert table.loc["median_m", "before"] == table.loc["median_m", "after"]
+
+
+def test_snap_puts_each_collar_on_the_floor_and_keeps_the_original() -> None:
+    frame = drilled(2.7, 0)
+    match = match_collars(frame, Cone(), policy="snap")
+    assert match.collars["dz_after_m"].abs().max() == pytest.approx(0.0, abs=1e-12)
+    assert match.collars["original_elevation"].tolist() == frame["elevation"].tolist()
+    assert not match.collars["flagged"].any()
+
+
+def test_good_collars_raise_nothing() -> None:
+    frame = drilled(0.0, 3).iloc[1:]
+    assert len(match_collars(frame, Cone()).findings) == 0
+
+
+def test_a_horizontal_error_on_a_slope_widens_the_limit() -> None:
+    frame = drilled(0.0, 0)
+    steep = match_collars(frame.assign(position_sigma_m=4.0), Cone(0.6)).collars
+    flat = match_collars(frame.assign(position_sigma_m=np.nan), Cone(0.6)).collars
+    assert (steep["limit_m"] > 4.0).mean() > 0.8  # 3 sigma x 4 m x slope
+    assert (flat["limit_m"] == 1.0).all()
+
+
+def test_collars_off_the_grid_are_findings_and_stay() -> None:
+    frame = drilled(0.0, 0)
+    frame.loc[5, "easting"] = 500.0
+    match = match_collars(frame, Cone(), policy="snap")
+    assert np.isnan(match.collars["dz_m"].iloc[5])
+    assert match.collars["elevation"].iloc[5] == frame["elevation"].iloc[5]
+    assert ("collar-off-grid", 7) in [(item.code, item.row) for item in match.findings]
+
+
+@pytest.mark.parametrize("option", [{"policy": "drop"}, {"sigma_grid_m": -1.0}, {"flag_m": -1.0}])
+def test_wrong_options_name_themselves(option: dict) -> None:
+    with pytest.raises(ValueError, match=r"policy|negative"):
+        match_collars(drilled(0.0, 0), Cone(), **option)
+
+
+def test_a_move_in_plan_is_found() -> None:
+    frame = drilled(0.5, 1, noise=0.1)
+    moved = frame.assign(easting=frame["easting"] + 6.0, northing=frame["northing"] - 3.0)
+    best = horizontal_fit(moved, Cone(), reach_m=10.0).iloc[0]
+    assert (best["shift_east_m"], best["shift_north_m"]) == pytest.approx((-6.0, 3.0), abs=1.0)
+    assert best["median_m"] == pytest.approx(0.5, abs=0.3)
+
+
+def test_how_holes_ended() -> None:
+    frame = pd.DataFrame(
+        {"ended_in": ["sulphide", "host", "", None, "lost"], "length_m": [10.0, 5.0, 4.0, 3.0, 2.0]}
+    )
+    table, findings = hole_ends(frame)
+    assert table.set_index("ended_in")["holes"].to_dict() == {
+        "sulphide": 1,
+        "host": 1,
+        "lost": 1,
+        "unknown": 2,
+    }
+    assert table["length_m"].sum() == 24.0
+    assert codes(findings) == ["hole-end-sulphide", "hole-end-unknown"]
+
+
+def test_positions_by_method() -> None:
+    frame = pd.DataFrame({"position_method": ["USBL", "USBL", ""], "position_sigma_m": [4.0, 6.0, np.nan]})
+    table, findings = position_table(frame, "collars")
+    assert table.set_index("method").loc["USBL", "sigma_median_m"] == 5.0
+    assert codes(findings) == ["position-sigma-missing"]

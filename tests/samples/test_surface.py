@@ -1,0 +1,124 @@
+"""Surface samples against core: planted ratios are found; types and tracks stay what they are."""
+
+from __future__ import annotations
+
+import numpy as np
+import pandas as pd
+import pytest
+
+from sms_resource.samples.surface import cap_samples, dredge_tracks, surface_bias, surface_findings
+from tests.samples.holes import codes
+
+PLANTED = {"cu_pct": 1.3, "zn_pct": 8.0, "au_gpt": 2.5, "ag_gpt": 4.4}
+
+
+def seafloor(seed: int, holes: int = 40, count: int = 60) -> tuple[pd.DataFrame, pd.DataFrame]:
+    """Holes of five metres with grades of their own, and surface samples that are richer by the planted ratios."""
+    rng = np.random.default_rng(seed)
+    place = rng.uniform(0, 200, (holes, 2))
+    level = {metal: rng.lognormal(1, 0.6, holes) for metal in PLANTED}
+    frames = []
+    for hole in range(holes):
+        core = pd.DataFrame(
+            {
+                "hole_id": f"H{hole}",
+                "from_m": np.arange(5.0),
+                "to_m": np.arange(5.0) + 1,
+                "length_m": 1.0,
+                "easting": place[hole, 0],
+                "northing": place[hole, 1],
+                "domain": "massive",
+            }
+        )
+        for metal in PLANTED:
+            core[metal] = level[metal][hole] * np.linspace(1.4, 0.6, 5)
+        frames.append(core)
+    near = rng.integers(0, holes, count)
+    surface = pd.DataFrame(
+        {
+            "sample_id": [f"S{i}" for i in range(count)],
+            "sample_type": rng.choice(["grab", "chimney"], count),
+            "easting": place[near, 0] + rng.normal(0, 0.5, count),
+            "northing": place[near, 1] + rng.normal(0, 0.5, count),
+            "elevation": -1600.0,
+        }
+    )
+    for metal, ratio in PLANTED.items():
+        surface[metal] = ratio * level[metal][near] * rng.lognormal(-0.08, 0.4, count)
+    return surface, pd.concat(frames, ignore_index=True)
+
+
+def test_planted_ratios_lie_in_their_intervals() -> None:
+    inside, total = 0, 0
+    for seed in range(25):
+        bias = surface_bias(*seafloor(seed), list(PLANTED), seed, repeats=500).set_index("metal")
+        for metal, ratio in PLANTED.items():
+            inside += bias.loc[metal, "ratio_low"] <= ratio <= bias.loc[metal, "ratio_high"]
+            total += 1
+    assert inside / total >= 0.86  # nominal 95 %; percentile intervals of some 25 holes are a little short
+
+
+def test_table_by_type_and_top_metre() -> None:
+    surface, core = seafloor(0)
+    bias = surface_bias(surface, core, ["cu_pct"], 1, by_type=True)
+    assert bias["sample_type"].tolist() == ["all", "chimney", "grab"]
+    whole = bias.iloc[0]
+    assert whole["n"] == 60
+    assert whole["top_metre_mean"] == pytest.approx(1.4 * whole["nearest_core_mean"])
+    assert whole["top_ratio"] == pytest.approx(whole["ratio"] / 1.4)
+    assert whole["ratio"] == pytest.approx(whole["surface_mean"] / whole["nearest_core_mean"])
+    assert codes(surface_findings(bias)) == ["surface-bias"] * int(whole["ratio_low"] > 1)
+
+
+def test_the_same_seed_gives_the_same_interval() -> None:
+    one, two = (surface_bias(*seafloor(0), ["cu_pct"], 7) for _ in range(2))
+    pd.testing.assert_frame_equal(one, two)
+
+
+def test_dredges_and_far_samples_are_left_out() -> None:
+    surface, core = seafloor(0)
+    surface.loc[:9, "sample_type"] = "dredge"
+    surface.loc[10:14, "easting"] = 5000.0
+    assert surface_bias(surface, core, ["cu_pct"]).iloc[0]["n"] == 45
+
+
+def test_without_core_or_samples_there_is_no_ratio() -> None:
+    surface, core = seafloor(0)
+    for a, b in ((surface.iloc[:0], core), (surface, core.iloc[:0]), (surface.assign(cu_pct=np.nan), core)):
+        bias = surface_bias(a, b, ["cu_pct"])
+        assert bias["n"].iloc[0] == 0 and np.isnan(bias["ratio"].iloc[0])
+        assert codes(surface_findings(bias)) == ["surface-none"]
+
+
+def test_dredges_are_tracks() -> None:
+    frame = pd.DataFrame(
+        {
+            "dredge_id": ["D1"],
+            "start_easting": [0.0],
+            "start_northing": [0.0],
+            "end_easting": [30.0],
+            "end_northing": [40.0],
+            "start_elevation": [-1600.0],
+            "end_elevation": [-1590.0],
+        }
+    )
+    table, findings = dredge_tracks(frame)
+    row = table.iloc[0]
+    assert (row["length_m"], row["half_length_m"], row["rise_m"]) == (50.0, 25.0, 10.0)
+    assert row["azimuth"] == pytest.approx(np.degrees(np.arctan2(3, 4)))
+    assert codes(findings) == ["dredge-spread"]
+
+
+def test_a_cap_is_a_domain_of_its_own_and_named() -> None:
+    surface, _ = seafloor(0)
+    frame, findings = cap_samples(surface, ["cu_pct"], thickness_m=0.6, types=["grab"])
+    assert len(frame) == (surface["sample_type"] == "grab").sum()
+    assert set(frame["domain"]) == {"cap"} and (frame["elevation"] == -1600.3).all()
+    assert codes(findings) == ["surface-used"] and "0.6 m" in findings[0].message
+    for wrong in (
+        {"thickness_m": 0.0, "types": ["grab"]},
+        {"thickness_m": 1.0, "types": ["dredge"]},
+        {"thickness_m": 1.0, "types": ["mud"]},
+    ):
+        with pytest.raises(ValueError, match=r"thickness_m|types"):
+            cap_samples(surface, ["cu_pct"], **wrong)  # type: ignore[arg-type]
