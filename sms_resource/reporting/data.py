@@ -113,7 +113,8 @@ class Evidence:
     ``runs`` : hole_id, from_m, to_m, recovered_length_m, recovery_pct. ``lithology`` : hole_id, from_m, to_m, code.
     ``composites`` : hole_id, from_m, to_m, length_m, recovered_length_m, recovery_pct, domain, easting, northing,
     elevation, <metals>, weight (declustering weight where there is one).
-    ``composite_audit`` : free columns (how intervals became composites).
+    ``composite_audit`` : free columns (how intervals became composites); ``composite_rule`` : how, in words
+    (length, short rests, weighting).
     ``surface`` : sample_id, sample_type, easting, northing, elevation, <metals>. ``surface_use`` : how the study
     used them, in words; empty when they are kept out. ``dredges`` : as loaded.
     ``surface_bias`` : metal, n, surface_mean, nearest_core_mean, top_metre_mean, ratio, ratio_low, ratio_high.
@@ -136,6 +137,7 @@ class Evidence:
     lithology: Frame | None = None
     composites: Frame | None = None
     composite_audit: Frame | None = None
+    composite_rule: str = ""
     surface: Frame | None = None
     surface_use: str = ""
     dredges: Frame | None = None

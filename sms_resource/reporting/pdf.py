@@ -1,0 +1,116 @@
+"""The report as A4 pages, set by typst with the fonts that it brings.
+
+The document goes to the template as JSON, so that no text from a data file is ever read as mark-up.
+"""
+
+from __future__ import annotations
+
+import json
+import re
+import tempfile
+from collections.abc import Mapping
+from importlib.resources import files
+from pathlib import Path
+from typing import Any
+
+from sms_resource.reporting.elements import (
+    Block,
+    Bullets,
+    Caution,
+    Document,
+    Facts,
+    Heading,
+    Paragraph,
+    Picture,
+    Table,
+)
+
+_LONG_WORD = re.compile(r"\S{15,}")
+_BREAK_AFTER = re.compile(r"([_./\\,;:=&?-])(?=\S)")
+ZERO_WIDTH_SPACE = "\u200b"
+PAGE_CHARACTERS = 118  # characters of the smallest table text across a page
+
+
+def soften(text: str) -> str:
+    """Let long words break: after punctuation, and every 14 characters where there is none."""
+
+    def loosen(found: re.Match[str]) -> str:
+        word = _BREAK_AFTER.sub(r"\1" + ZERO_WIDTH_SPACE, found.group(0))
+        pieces = [
+            re.sub(r"(.{14})(?=.)", r"\1" + ZERO_WIDTH_SPACE, part) for part in word.split(ZERO_WIDTH_SPACE)
+        ]
+        return ZERO_WIDTH_SPACE.join(pieces)
+
+    return _LONG_WORD.sub(loosen, text.replace("\u202f", "\u00a0"))
+
+
+def column_shares(table: Table) -> list[float]:
+    """Relative widths of columns: the longest word must fit, long texts share what is left."""
+    shares = []
+    for number, name in enumerate(table.columns):
+        cells = [row[number] for row in table.rows]
+        word = max((len(piece) for text in (name, *cells) for piece in re.split(r"\s", text)), default=1)
+        longest = max((len(text) for text in cells), default=1)
+        shares.append(float(min(max(min(word, 15), 0.45 * len(name), min(longest, 48)) + 1.5, 50.0)))
+    return shares
+
+
+def _block(block: Block) -> dict[str, Any] | None:
+    if isinstance(block, Paragraph):
+        return {"kind": "paragraph", "text": soften(block.text), "look": block.kind}
+    if isinstance(block, Heading):
+        return {"kind": "heading", "text": soften(block.text)}
+    if isinstance(block, Bullets):
+        return {"kind": "bullets", "items": [soften(item) for item in block.items]}
+    if isinstance(block, Facts):
+        return {"kind": "facts", "pairs": [[soften(name), soften(value)] for name, value in block.pairs]}
+    if isinstance(block, Caution):
+        return {"kind": "caution", "title": soften(block.title), "text": soften(block.text),
+                "figures": soften(block.figures), "always": block.always}  # fmt: skip
+    if isinstance(block, Picture):
+        drawing = block.drawing
+        return {"kind": "picture", "file": f"{drawing.key}.png", "title": soften(drawing.title),
+                "caption": soften(drawing.caption), "alt": drawing.alt,
+                "width": min(1.0, float(drawing.figure.get_figwidth()) / 9.0)}  # fmt: skip
+    if isinstance(block, Table):
+        shares = column_shares(block)
+        size = 8.0 if sum(shares) <= 95 else 7.0 if sum(shares) <= 125 else 6.0
+        return {"kind": "table", "title": soften(block.title), "columns": [soften(c) for c in block.columns],
+                "rows": [[soften(cell) for cell in row] for row in block.rows], "numeric": list(block.numeric),
+                "strong": list(block.strong), "note": soften(block.note), "shares": shares, "size": size}  # fmt: skip
+    return None
+
+
+def document_record(document: Document) -> dict[str, Any]:
+    """The document as plain values for the template."""
+
+    def several(blocks: tuple[Block, ...]) -> list[dict[str, Any]]:
+        return [record for record in map(_block, blocks) if record is not None]
+
+    return {
+        "title": soften(document.title),
+        "subtitle": soften(document.subtitle),
+        "label": document.label,
+        "summary": several(document.summary),
+        "sections": [{"title": s.title, "blocks": several(s.blocks)} for s in document.sections],
+    }
+
+
+def write_pdf(document: Document, pictures: Mapping[str, bytes], path: Path) -> Path:
+    """Set the pages and write them; the same document gives the same bytes.
+
+    Nothing is fetched, and only the fonts inside the typst package are used.
+    """
+    import typst
+
+    with tempfile.TemporaryDirectory(prefix="sms_resource_") as name:
+        room = Path(name)
+        template = files("sms_resource.reporting").joinpath("templates/report.typ").read_bytes()
+        (room / "report.typ").write_bytes(template)
+        record = json.dumps(document_record(document), ensure_ascii=False)
+        (room / "report.json").write_text(record, encoding="utf-8")
+        for key, content in pictures.items():
+            (room / f"{key}.png").write_bytes(content)
+        made = typst.compile(str(room / "report.typ"), root=str(room), ignore_system_fonts=True, timestamp=0)
+    path.write_bytes(made)
+    return path
