@@ -20,28 +20,35 @@ LONGEST_DREDGE_M = 5000.0
 
 
 def check_systems(data: LoadedData, settings: CheckSettings, findings: Findings) -> None:
-    """Grids and layers that are not in the study's coordinate system."""
+    """Grids, layers and tables of points that are not in the study's coordinate system."""
     study = parse_crs(settings.crs)
-    for role, item in (
-        ("bathymetry", data.seafloor),
-        ("outline", data.outline),
-        ("exclusions", data.exclusions),
-        ("base_grid", data.base_grid),
-    ):
-        if item is None:
-            continue
-        found = parse_crs(item.crs)
-        if found is None:
+    spatial = {
+        "bathymetry": data.seafloor,
+        "outline": data.outline,
+        "exclusions": data.exclusions,
+        "base_grid": data.base_grid,
+    }
+    stated = {role: item.crs for role, item in spatial.items() if item is not None}
+    for role, crs in stated.items():
+        if parse_crs(crs) is None:
             findings.error(
                 "crs-missing",
                 f"The {role.replace('_', ' ')} has no coordinate system.",
                 'State it with crs = "EPSG:..." in the study.',
                 file=data.files.get(role),
             )
-        elif study is not None and not same_crs(found, study):
+    tables = {"collars": data.drill.collars, "surface_samples": data.surface, "base_points": data.base_points}
+    for role, frame in tables.items():
+        if frame is not None and frame.attrs.get("crs"):
+            stated[role] = frame.attrs["crs"]
+    for role, crs in stated.items():
+        found = parse_crs(crs)
+        if study is not None and found is not None and not same_crs(found, study):
             findings.error(
                 "crs-different",
-                f"The {role.replace('_', ' ')} is in {crs_name(found)}, the study in {crs_name(study)}.",
+                f"The {role.replace('_', ' ')} are in {crs_name(found)}, the study in {crs_name(study)}."
+                if role in tables
+                else f"The {role.replace('_', ' ')} is in {crs_name(found)}, the study in {crs_name(study)}.",
                 "Bring it into the study's system.",
                 file=data.files.get(role),
             )

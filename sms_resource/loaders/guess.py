@@ -6,6 +6,7 @@ Nothing here is used by a run. Every guess carries its reason, and a person read
 from __future__ import annotations
 
 from collections.abc import Iterable
+from dataclasses import replace
 from pathlib import Path
 
 from sms_resource.findings import Findings
@@ -23,6 +24,7 @@ ROLES = (
     "collars", "surveys", "runs", "lithology", "assays", "densities", "surface_samples", "dredges", "laboratory",
     "bathymetry", "outline", "exclusions", "class_overrides", "base_points", "base_grid",
 )  # fmt: skip
+TITLE_ROWS = (1, 2, 3, 4, 5)  # rows in which the names of the columns are looked for
 _COMPANIONS = frozenset(
     {".dbf", ".shx", ".prj", ".cpg", ".xml", ".ovr", ".qix", ".sbn", ".sbx", ".qgz", ".qml"}
 )
@@ -93,19 +95,35 @@ def _guess_file(path: Path, others: list[tuple[Path, str]]) -> list[GuessedFile]
     else:
         parts = [(None, None)]
     for sheet, layer in parts:
-        raw, problems = read_table(TableSource(path, sheet=sheet, layer=layer))
-        if raw is None or len(raw.rows) == 0:
-            why = next((item.message for item in problems.errors), "the table has no rows")
-            continue
-        guess = guess_table(path, raw, sheet, layer)
+        guess, reason = _guess_part(path, sheet, layer)
         if guess is None:
-            names = ", ".join(header for header in raw.headers if header)[:120]
-            why = f"its columns ({names}) fit no role"
+            why = reason
         else:
             found.append(guess)
     if not found:
         others.append((path, why or "nothing in it fits a role"))
     return found
+
+
+def _guess_part(path: Path, sheet: str | None, layer: str | None) -> tuple[GuessedFile | None, str]:
+    """The role of one sheet, layer or text; its header may stand below a title."""
+    why = ""
+    for header_row in (1,) if layer or path.suffix.lower() in VECTOR_ENDINGS else TITLE_ROWS:
+        raw, problems = read_table(TableSource(path, sheet=sheet, layer=layer, header_row=header_row))
+        if raw is None or len(raw.rows) == 0:
+            why = why or next((item.message for item in problems.errors), "the table has no rows")
+            continue
+        guess = guess_table(path, raw, sheet, layer)
+        if guess is not None and header_row > 1:
+            told = Guess(
+                "header_row", str(header_row), "the names of the columns stand there, below a title", "likely"
+            )
+            guess = replace(guess, form=(*guess.form, told))
+        if guess is not None:
+            return guess, ""
+        names = ", ".join(header for header in raw.headers if header)[:120]
+        why = why or f"its columns ({names}) fit no role"
+    return None, why
 
 
 def _choose(candidates: list[GuessedFile], others: list[tuple[Path, str]]) -> dict[str, GuessedFile]:

@@ -70,9 +70,9 @@ def guess_grid(path: Path) -> tuple[GuessedFile | None, str]:
         )
     if cells.crs is not None:
         form.append(Guess("crs_inside", crs_name(cells.crs), "the file states it", "sure"))
-        zone = _utm_zone(cells) if cells.crs.is_geographic else None
-        if zone:
-            form.append(Guess("utm_zone", zone, "the grid is in degrees and lies in this zone", "doubtful"))
+    zone = _utm_zone(cells) if cells.crs is not None and cells.crs.is_geographic else None
+    because = f"{path.name} is in degrees and lies in this zone"
+    hint = Guess("crs", zone, because, "doubtful") if zone else None
     base = "base" in path.stem.casefold()
     role = "base_grid" if base else "bathymetry"
     step = abs(float(cells.transform.a))
@@ -84,7 +84,7 @@ def guess_grid(path: Path) -> tuple[GuessedFile | None, str]:
     area = math.log10(max(columns * rows * step * step, 1e-12))
     score = (3.0 if cells.crs is not None else 0.0) + 0.1 * area
     return GuessedFile(
-        path, "grid", Guess("role", role, because, "likely"), form=tuple(form), score=score
+        path, "grid", Guess("role", role, because, "likely"), form=tuple(form), hint=hint, score=score
     ), ""
 
 
@@ -175,11 +175,7 @@ def guess_crs(files: list[GuessedFile]) -> Guess | None:
             because = f"{file.path.name} states it, but {', '.join(different)} states another"
             return Guess("crs", crs_name(crs), because, "doubtful")
         return Guess("crs", crs_name(crs), f"{file.path.name} states it", "sure")
-    zones = [(file, file.form_map["utm_zone"]) for file in files if "utm_zone" in file.form_map]
-    if zones:
-        file, zone = zones[0]
-        return Guess("crs", zone, f"{file.path.name} is in degrees and lies in this zone", "doubtful")
-    return None
+    return next((file.hint for file in files if file.hint is not None), None)
 
 
 def _utm_zone(cells: RasterCells) -> str | None:

@@ -106,7 +106,7 @@ def _as_role(path: Path, raw: RawTable, role: str) -> GuessedFile | None:
     vertical = _vertical(raw, columns)
     return GuessedFile(
         path, "table", Guess("role", role, because, confidence), (*columns, *grades), tuple(units),
-        (vertical,) if vertical else (), tuple(spare), missing, score,
+        (vertical,) if vertical else (), tuple(spare), missing, score=score,
     )  # fmt: skip
 
 

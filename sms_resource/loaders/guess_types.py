@@ -50,12 +50,14 @@ class GuessedFile:
     columns, units : tuple of Guess
         Canonical column to the file's; element to unit.
     form : tuple of Guess
-        sheet, layer, delimiter, decimal, encoding, vertical, crs, uncertainty_band: what applies and is not
-        the default.
+        sheet, layer, header_row, delimiter, decimal, encoding, vertical: what applies and is not the default;
+        crs_inside: the system that a grid or layer states.
     unused : tuple of str
         Columns that were given no meaning.
     missing : tuple of str
         Canonical columns that the role needs and that were not found.
+    hint : Guess, optional
+        A projected system that would suit a grid in degrees.
     score : float
         How well the file fits its role, for choosing between two.
     """
@@ -68,6 +70,7 @@ class GuessedFile:
     form: tuple[Guess, ...] = ()
     unused: tuple[str, ...] = ()
     missing: tuple[str, ...] = ()
+    hint: Guess | None = None
     score: float = 0.0
 
     @property

@@ -92,10 +92,18 @@ def report_rows(
 
 
 def mark(
-    frame: pd.DataFrame, file: str, headers: dict[str, str], reported: dict[str, list[int]] | None = None
+    frame: pd.DataFrame,
+    file: str,
+    headers: dict[str, str],
+    reported: dict[str, list[int]] | None = None,
+    crs: str | None = None,
 ) -> pd.DataFrame:
-    """Note on a table its file, what that file calls its columns, and the cells that already have a finding."""
+    """Note on a table its file, what that file calls its columns, and the cells that already have a finding.
+
+    ``crs`` is the system of the positions, where they are the points of a vector file.
+    """
     frame.attrs["file"] = file
+    frame.attrs["crs"] = crs
     frame.attrs["headers"] = dict(headers)
     # as text: pandas copies attrs with every operation, and a text is not copied
     frame.attrs["reported"] = {name: " ".join(map(str, rows)) for name, rows in (reported or {}).items()}

@@ -160,7 +160,15 @@ def _from_parquet(source: TableSource, findings: Findings) -> RawTable | None:
 
     try:
         # one thread: results must not depend on it, and tables are small
-        frame = pq.ParquetFile(source.path).read(use_threads=False).to_pandas(ignore_metadata=True)
+        table = pq.ParquetFile(source.path).read(use_threads=False)
+        names = [name for name in table.column_names if not name.startswith("__index_level_")]
+        # texts become Python's own here, where what is wrong with them can be caught
+        cells = [
+            column.to_pandas()
+            if pa.types.is_primitive(column.type)
+            else pd.Series(column.to_pylist(), dtype=object)
+            for column in (table.column(name) for name in names)
+        ]
     except (pa.ArrowException, ValueError, OSError, KeyError, TypeError) as error:
         reason = str(error).splitlines()[0][:160] if str(error) else type(error).__name__
         findings.error(
@@ -170,8 +178,8 @@ def _from_parquet(source: TableSource, findings: Findings) -> RawTable | None:
             file=source.name,
         )
         return None
-    named = [column for column in frame.columns if not str(column).startswith("__index_level_")]
-    return _from_frame(frame[named], source)
+    headers = [name.strip() for name in names]
+    return RawTable(headers, cells, np.arange(2, table.num_rows + 2, dtype=np.int64), source.decimal or ".")
 
 
 def _from_frame(frame: pd.DataFrame, source: TableSource) -> RawTable:

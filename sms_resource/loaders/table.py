@@ -77,6 +77,7 @@ class TableMaker:
         self.mapping = {self.plain(key): header for key, header in source.columns.items()}
         self.constants = {self.plain(key): value for key, value in source.constants.items()}
         self.headers: dict[str, str] = {}
+        self.crs: str | None = None
         self.results: dict[str, Parsed] = {}
         self.reported: dict[str, list[int]] = {}
 
@@ -106,7 +107,7 @@ class TableMaker:
             if column.kind in ("identifier", "text") and column.name in frame:
                 frame[column.name] = frame[column.name].astype("str")
         self._note_unused()
-        return mark(frame, self.file, self.headers, self.reported)
+        return mark(frame, self.file, self.headers, self.reported, self.crs)
 
     # -- the mapping ------------------------------------------------------------------------------------
 
@@ -191,6 +192,7 @@ class TableMaker:
         text = column.kind in ("identifier", "text")
         if header is None:
             if place is not None and self.raw.points is not None:
+                self.crs = self.raw.crs
                 return self.raw.points[place].to_numpy(dtype=np.float64)
             constant = self.constants.get(column.name)
             if text:

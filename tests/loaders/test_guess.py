@@ -138,6 +138,11 @@ def test_text_forms_and_sheets(tmp_path: Path) -> None:
     assert roles["lithology"].form_map == {"sheet": "Logs"}
 
 
+def test_a_title_above_the_header(tmp_path: Path) -> None:
+    (tmp_path / "surveys.csv").write_text("Surveys of nobody\n\nHole,Depth,Azimuth,Dip\nH1,0,10,-89\n")
+    assert guess_study([tmp_path]).by_role()["surveys"].form_map == {"header_row": "3"}
+
+
 @pytest.mark.parametrize(
     ("name", "data", "why"),
     [
