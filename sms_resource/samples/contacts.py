@@ -9,6 +9,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from sms_resource.findings import Findings
 from sms_resource.samples.intervals import names, numbers
 
 Floats = NDArray[np.float64]
@@ -145,6 +146,14 @@ def contact_analysis(
             ],
         ),
     )  # fmt: skip
+
+
+def contact_findings(verdicts: pd.DataFrame) -> Findings:
+    """One note for each contact and metal that the samples cannot decide."""
+    findings = Findings()
+    for row in verdicts.loc[verdicts["verdict"] == "undecided"].to_dict("records"):
+        findings.note("contact-undecided", f"{row['contact']}, {row['metal']}: {row['reason']}")
+    return findings
 
 
 def _touching(domains: pd.DataFrame) -> list[tuple[str, str]]:

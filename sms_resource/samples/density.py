@@ -58,7 +58,8 @@ def density_table(
     salinity_gkg, salt_tpm3 : float
         Salt in pore water (g/kg) and its density.
     pore_water_tpm3 : float, optional
-        Density of pore water; by default that of seawater of this salinity in the laboratory. A brine needs it.
+        Density of pore water; by default that of seawater of this salinity in the laboratory. A brine
+        needs it: without it nothing that rests on pore water is known, and `fit_density` says so.
     dry_contains_salt : bool
         Whether dry densities that are given (not masses) still hold the salt.
     porosity : mapping of domain to fraction, optional
@@ -72,11 +73,6 @@ def density_table(
         wet_basis (how each came about), norm_grain_tpm3 and heaviest_grain_tpm3 (from the assay beside it), assayed_m
         and the metals. What is
         wrong with them is told by `density_findings`.
-
-    Raises
-    ------
-    seawater.SalinityOutOfRange
-        If a brine comes without the density of its water.
     """
     water = pore_water(salinity_gkg, pore_water_tpm3)
     frame = densities.reset_index(drop=True).copy()

@@ -116,6 +116,18 @@ class DensityModel:
             return np.zeros(len(grades), dtype=bool)
         return self.regression.outside(grades)
 
+    def extrapolation_findings(self, grades: pd.DataFrame) -> Findings:
+        """Say how many blocks lie outside the grades that the regression saw."""
+        findings = Findings()
+        count = int(self.extrapolated(grades).sum())
+        if count:
+            findings.warning(
+                "density-extrapolated",
+                f"{count} of {len(grades)} blocks have grades outside those that the density regression saw",
+                "Compare their densities with the means of the domains.",
+            )
+        return findings
+
 
 _OPPOSITE: dict[Case, str] = {"low": "high", "base": "base", "high": "low"}
 
@@ -186,7 +198,8 @@ def fit_density(
         raise ValueError(f"confidence must lie between 0 and 1, not {confidence}")
     if not factor > 0:
         raise ValueError(f"factor must be positive, not {factor}")
-    water = pore_water(salinity_gkg, pore_water_tpm3)
+    findings = Findings()
+    water = pore_water(salinity_gkg, pore_water_tpm3, findings)
     frame = table
     given = {
         str(k): assigned_density(str(k), v, porosity, water) for k, v in (assigned_dry_tpm3 or {}).items()
@@ -201,7 +214,7 @@ def fit_density(
         if domains is not None
         else sorted({*names(measured["domain"]), *given, *pores})
     )
-    findings = Findings(density_findings(frame))
+    findings.extend(density_findings(frame))
     settings = norm_settings or NormSettings()
     fitted = pore_frame = None
     if method == "assigned":

@@ -148,7 +148,7 @@ def norm(grades: pd.DataFrame, settings: NormSettings | None = None) -> pd.DataF
     out["pyrite"] = np.maximum(left, 0.0) / MINERALS["pyrite"].fraction("Fe")
     frame = pd.DataFrame(out, index=grades.index)
     total = frame.sum(axis=1).to_numpy()
-    scale = np.where(total > 100.0, 100.0 / np.where(total > 0, total, 1.0), 1.0)
+    scale = 100.0 / np.maximum(total, 100.0)
     frame = frame.mul(scale, axis=0)
     rest = np.maximum(100.0 - total, 0.0)
     filler = np.full(len(frame), settings.rest, dtype=object)

@@ -7,6 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from sms_resource.findings import Findings
+
 Floats = NDArray[np.float64]
 
 # Density of sea salt in t/m3, the value in IODP's practice (Blum 1997, ODP Technical Note 26, uses 2.20).
@@ -15,21 +17,27 @@ SALT_DENSITY_TPM3 = 2.22
 PORE_WATER_TPM3 = 1.024
 
 
-def pore_water(salinity_gkg: float, given_tpm3: float | None = None) -> float:
+def pore_water(
+    salinity_gkg: float, given_tpm3: float | None = None, findings: Findings | None = None
+) -> float:
     """Density of pore water: as given, else of seawater of this salinity at 20 degrees in the laboratory (TEOS-10).
 
-    Raises
-    ------
-    seawater.SalinityOutOfRange
-        If the salinity is that of a brine and no density is given.
+    A brine beyond the range of TEOS-10 whose density is not given is NaN, and an error in ``findings``.
     """
-    from sms_resource.samples.seawater import seawater_density
+    from sms_resource.samples.seawater import SalinityOutOfRange, seawater_density
 
-    if given_tpm3 is None:
+    if given_tpm3 is not None:
+        if not given_tpm3 > 0:
+            raise ValueError(f"pore water must have a positive density, not {given_tpm3}")
+        return float(given_tpm3)
+    try:
         return seawater_density(salinity_gkg)
-    if not given_tpm3 > 0:
-        raise ValueError(f"pore water must have a positive density, not {given_tpm3}")
-    return float(given_tpm3)
+    except SalinityOutOfRange as reason:
+        if findings is not None:
+            findings.error(
+                "salinity-range", f"Pore water: {reason}", "Give the density of the pore water in the study."
+            )
+        return float("nan")
 
 
 @dataclass(frozen=True)
@@ -73,7 +81,7 @@ def moisture_and_density(
         If salinity is not in 0 to below 1000 or a density is not positive.
     """
     share = _salt_share(salinity_gkg)
-    if not (pore_water_tpm3 > 0 and salt_tpm3 > 0):
+    if pore_water_tpm3 <= 0 or not salt_tpm3 > 0:
         raise ValueError(f"densities must be positive: pore water {pore_water_tpm3}, salt {salt_tpm3}")
     wet, dry, volume = (np.asarray(v, dtype=np.float64) for v in (wet_mass_g, dry_mass_g, dry_volume_cm3))
     water = (wet - dry) / (1.0 - share)

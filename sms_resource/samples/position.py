@@ -153,6 +153,25 @@ def horizontal_fit(
     return table.sort_values("spread_m", kind="stable").reset_index(drop=True)
 
 
+def horizontal_fit_findings(table: pd.DataFrame) -> Findings:
+    """Warn where collars fit the bathymetry clearly better after a move in plan (`horizontal_fit`)."""
+    findings = Findings()
+    here = table.loc[(table["shift_east_m"] == 0) & (table["shift_north_m"] == 0)]
+    if table.empty or here.empty:
+        return findings
+    best, now = table.iloc[0], float(here["spread_m"].iloc[0])
+    distance = float(np.hypot(best["shift_east_m"], best["shift_north_m"]))
+    # a third less spread is more than the choice of the best of many moves gives on a rough floor
+    if distance >= 2.0 and float(best["spread_m"]) < 0.67 * now:
+        findings.warning(
+            "collar-shift-plan",
+            f"Collars fit the bathymetry better {distance:.0f} m away ({best['shift_east_m']:+.0f} m east, "
+            f"{best['shift_north_m']:+.0f} m north): the spread falls from {now:.2f} to {best['spread_m']:.2f} m",
+            "Check the datum and the navigation of both; nothing was moved.",
+        )
+    return findings
+
+
 def hole_ends(collars: pd.DataFrame) -> tuple[pd.DataFrame, Findings]:
     """How the holes ended: count, share and drilled length for sulphide, host, lost and unknown."""
     findings = Findings()

@@ -14,7 +14,14 @@ from sms_resource.samples.core_length import recovered_lengths, recovered_on_pie
 from sms_resource.samples.desurvey import HolePaths
 from sms_resource.samples.intervals import cut_holes, names, numbers, overlap_pairs, valid_intervals
 
-__all__ = ["join_recovery", "lost_core_bracket", "recovery_bias", "recovery_summary", "sticks"]
+__all__ = [
+    "join_recovery",
+    "lost_core_bracket",
+    "recovery_bias",
+    "recovery_bias_findings",
+    "recovery_summary",
+    "sticks",
+]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -124,6 +131,19 @@ def _verdict(n: int, rho: float, p: float, significance: float) -> str:
     if rho > 0:
         return "grade rises with recovery: lost core is probably poorer, and recovered grade overstates"
     return "grade falls with recovery: lost core is probably richer, and recovered grade understates"
+
+
+def recovery_bias_findings(table: pd.DataFrame) -> Findings:
+    """One warning for each domain and metal of `recovery_bias` whose grade goes with recovery."""
+    findings = Findings()
+    for row in table.loc[table["biased"].astype(bool) & table["p_value"].notna()].to_dict("records"):
+        findings.warning(
+            "recovery-bias",
+            f"{row['metal']} in {row['domain']}: {row['verdict']} (rank correlation {row['spearman']:+.2f}, "
+            f"p {row['p_value']:.2g}, {row['n']} samples)",
+            "Compare the treatments of lost core.",
+        )
+    return findings
 
 
 def recovery_summary(

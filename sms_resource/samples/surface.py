@@ -180,6 +180,37 @@ def cap_samples(
     return frame, findings
 
 
+def surface_use(surface: pd.DataFrame, use: str) -> tuple[str, Findings]:
+    """What the study does with surface samples, in words for the report.
+
+    Parameters
+    ----------
+    surface : DataFrame
+    use : "none", "outline" or "cap"
+
+    Raises
+    ------
+    ValueError
+        If the use is not known.
+    """
+    findings = Findings()
+    counts = surface["sample_type"].value_counts()
+    types = ", ".join(f"{counts[kind]} {kind.replace('_', ' ')}" for kind in SAMPLE_TYPES if kind in counts)
+    if use == "none":
+        return f"{len(surface)} surface samples ({types or 'none'}) are kept out of the estimate", findings
+    words = {
+        "outline": "help to draw the outline of the body",
+        "cap": "estimate a thin cap, a domain of its own",
+    }
+    if use not in words:
+        raise ValueError(f"use must be 'none', 'outline' or 'cap', not {use!r}")
+    text = (
+        f"{len(surface)} surface samples ({types or 'none'}) {words[use]}; their grades stay out of the body"
+    )
+    findings.warning("surface-used", text, "The report names this use.")
+    return text, findings
+
+
 def _pairs(points: pd.DataFrame, core: pd.DataFrame, metal: str, distance_m: float) -> pd.DataFrame:
     """Each surface sample with the mean, and the top-metre mean, of its nearest hole that has the metal."""
     from scipy.spatial import cKDTree

@@ -27,7 +27,9 @@ DEMO = Path(__file__).parents[2] / "demo_deposit"
 METALS = ["cu_pct", "zn_pct", "au_gpt", "ag_gpt"]
 BODY = ["cap", "massive", "stockwork"]
 
-pytestmark = pytest.mark.skipif(not (DEMO / "truth" / "truth.json").exists(), reason="the demo deposit is not here")
+pytestmark = pytest.mark.skipif(
+    not (DEMO / "truth" / "truth.json").exists(), reason="the demo deposit is not here"
+)
 
 
 @cache
@@ -73,7 +75,9 @@ def test_the_run_without_core_stays() -> None:
 def test_the_bracket_of_lost_core_holds_the_truth() -> None:
     """Silver reads low in one batch of the demo, so its upper end is given the 2 % that this takes."""
     case = demo()
-    table = lost_core_bracket(case.assays, case.data.drill.runs, case.log, case.paths, metals=METALS, domains=BODY)
+    table = lost_core_bracket(
+        case.assays, case.data.drill.runs, case.log, case.paths, metals=METALS, domains=BODY
+    )
     table = table.set_index(["treatment", "domain"])
     for domain, metals in case.truth["lost_core"].items():
         for metal, grades in metals.items():
@@ -92,7 +96,9 @@ def test_the_planted_ratios_of_the_surface_lie_in_their_intervals() -> None:
 def test_the_bad_batch_is_found_and_no_good_one_accused() -> None:
     case = demo()
     quality = laboratory_quality(case.data.laboratory, case.assays)
-    accused = quality.batches.loc[quality.batches["verdict"] == "accused", ["element", "batch"]].values.tolist()
+    accused = quality.batches.loc[
+        quality.batches["verdict"] == "accused", ["element", "batch"]
+    ].values.tolist()
     bad = case.truth["bad_batch"]
     assert accused == [[bad["column"].partition("_")[0], bad["batch"]]]
     assert quality.verdict(accused[0][0]) == "failed"
@@ -104,8 +110,12 @@ def test_densities_come_within_three_percent_of_the_truth() -> None:
     table = density_table(case.data.drill.densities, case.assays, case.log)
     model = fit_density(table, domains=BODY).by_domain.set_index("domain")
     for domain, truth in case.truth["by_domain"].items():
-        assert model.loc[domain, "dry_base"] == pytest.approx(truth["dry_tonnes"] / truth["volume_m3"], rel=0.03), domain
-        assert model.loc[domain, "wet_base"] == pytest.approx(truth["wet_tonnes"] / truth["volume_m3"], rel=0.03), domain
+        assert model.loc[domain, "dry_base"] == pytest.approx(
+            truth["dry_tonnes"] / truth["volume_m3"], rel=0.03
+        ), domain
+        assert model.loc[domain, "wet_base"] == pytest.approx(
+            truth["wet_tonnes"] / truth["volume_m3"], rel=0.03
+        ), domain
 
 
 def test_recovery_and_twins_are_those_of_the_truth() -> None:

@@ -158,7 +158,7 @@ def test_norm_of_a_massive_sulphide() -> None:
     assert found["grain_density_tpm3"] == pytest.approx(3.66837, abs=2e-4)
 
 
-@settings(max_examples=100, deadline=None)
+@settings(max_examples=50, deadline=None)
 @given(st.floats(0, 30), st.floats(0, 40), st.floats(0, 30), st.floats(0, 40), st.floats(0, 20000))
 def test_norm_keeps_mass_and_metal(cu: float, zn: float, ba: float, fe: float, arsenic: float) -> None:
     found = norm(sample(cu_pct=cu, zn_pct=zn, ba_pct=ba, fe_pct=fe, as_ppm=arsenic)).iloc[0]
@@ -288,8 +288,10 @@ def test_a_density_above_its_minerals_is_a_finding() -> None:
 
 def test_a_brine_needs_its_density() -> None:
     frame = measured([("A", 0, 1, 3.6, 3.4)], "wet_density_tpm3", "dry_density_tpm3")
-    with pytest.raises(SalinityOutOfRange):
-        density_table(frame, None, LOG, salinity_gkg=200.0)
+    bare = density_table(frame, None, LOG, salinity_gkg=200.0)
+    assert np.isnan(bare["porosity"].iloc[0]) and bare["dry_density_tpm3"].iloc[0] == 3.4
+    model = fit_density(bare, salinity_gkg=200.0)
+    assert [item.code for item in model.findings.errors] == ["salinity-range"]
     assert density_table(frame, None, LOG, salinity_gkg=200.0, pore_water_tpm3=1.15)["porosity"].iloc[0] > 0
 
 
@@ -338,14 +340,17 @@ def test_regression_finds_the_line_and_its_interval_covers() -> None:
         model.by_domain["dry_base"].iloc[0]
     )  # a block without grades takes its domain's mean
     covered = 0
-    for seed in range(200):
+    for seed in range(150):
         fitted = fit_density(many(seed, 25), "regression")
         low, high = (
             fitted.predict(["massive"], grades.iloc[:1], case=case)[0][0] for case in ("low", "high")
         )
         covered += low <= 3.0 <= high
-    assert 0.84 <= covered / 200 <= 0.96  # nominal 90 %
+    assert 0.82 <= covered / 150 <= 0.97  # nominal 90 %
     assert codes(model.findings) == ["density-regression"]
+    outside = pd.DataFrame({"cu_pct": [50.0, 5.0], "fe_pct": [20.0, 20.0], "zn_pct": [1.0, 1.0]})
+    assert codes(model.extrapolation_findings(outside)) == ["density-extrapolated"]
+    assert len(fit_density(table).extrapolation_findings(outside)) == 0
     assert model.extrapolated(
         pd.DataFrame({"cu_pct": [50.0], "fe_pct": [20.0], "zn_pct": [1.0]})
     ).tolist() == [True]

@@ -6,7 +6,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from sms_resource.samples.contacts import contact_analysis, contact_distances
+from sms_resource.samples.contacts import contact_analysis, contact_distances, contact_findings
 from sms_resource.samples.domains import domain_at, domain_intervals, unmapped_codes
 from tests.samples.holes import codes, intervals
 
@@ -97,7 +97,9 @@ def test_soft_contacts_are_called_hard_one_time_in_twenty() -> None:
 
 def test_few_samples_decide_nothing() -> None:
     samples, log = holes(9.0, count=2)
-    row = contact_analysis(samples, log, ["cu_pct"])[1].iloc[0]
+    verdicts = contact_analysis(samples, log, ["cu_pct"])[1]
+    assert codes(contact_findings(verdicts)) == ["contact-undecided"]
+    row = verdicts.iloc[0]
     assert row["verdict"] == "undecided" and "too few" in row["reason"]
     with pytest.raises(ValueError, match="reach_m"):
         contact_analysis(samples, log, ["cu_pct"], reach_m=0.0)

@@ -42,7 +42,11 @@ def test_sichel_has_no_bias_and_less_spread_than_the_mean() -> None:
 
 @pytest.mark.parametrize(
     ("sd", "count", "factor"),
-    [(1.25, 15, 3.163), (1.0, 10, 3.103), (0.1, 3, 2.750)],  # Land (1975) tables of H.95; the last two from memory
+    [
+        (1.25, 15, 3.163),
+        (1.0, 10, 3.103),
+        (0.1, 3, 2.750),
+    ],  # Land (1975) tables of H.95; the last two from memory
 )
 def test_land_factor_of_the_tables(sd: float, count: int, factor: float) -> None:
     assert land_factor(sd, count, 0.95) == pytest.approx(factor, abs=6e-4)

@@ -6,7 +6,13 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from sms_resource.samples.position import hole_ends, horizontal_fit, match_collars, position_table
+from sms_resource.samples.position import (
+    hole_ends,
+    horizontal_fit,
+    horizontal_fit_findings,
+    match_collars,
+    position_table,
+)
 from tests.samples.holes import codes
 
 
@@ -102,6 +108,9 @@ def test_a_move_in_plan_is_found() -> None:
     best = horizontal_fit(moved, Cone(), reach_m=10.0).iloc[0]
     assert (best["shift_east_m"], best["shift_north_m"]) == pytest.approx((-6.0, 3.0), abs=1.0)
     assert best["median_m"] == pytest.approx(0.5, abs=0.3)
+    findings = horizontal_fit_findings(horizontal_fit(moved, Cone(), reach_m=10.0))
+    assert codes(findings) == ["collar-shift-plan"] and "nothing was moved" in findings[0].remedy
+    assert len(horizontal_fit_findings(horizontal_fit(frame, Cone(), reach_m=10.0))) == 0
 
 
 def test_how_holes_ended() -> None:

@@ -9,7 +9,13 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from sms_resource.samples.core_length import recovered_on_pieces
-from sms_resource.samples.recovery import join_recovery, recovery_bias, recovery_summary, sticks
+from sms_resource.samples.recovery import (
+    join_recovery,
+    recovery_bias,
+    recovery_bias_findings,
+    recovery_summary,
+    sticks,
+)
 from tests.samples.holes import codes, intervals, paths, runs
 
 
@@ -69,6 +75,8 @@ def test_the_sign_of_the_bias_is_found(sign: float, word: str, flag: bool) -> No
     row = recovery_bias(biased(sign), ["zn_pct"]).iloc[0]
     assert word in row["verdict"]
     assert row["biased"] == flag
+    found = recovery_bias_findings(recovery_bias(biased(sign), ["zn_pct"]))
+    assert codes(found) == ["recovery-bias"] * int(flag)
     assert np.sign(row["spearman"]) == sign or sign == 0
     assert (row["mean_high"] > row["mean_low"]) == (row["spearman"] > 0)
 

@@ -6,7 +6,13 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from sms_resource.samples.surface import cap_samples, dredge_tracks, surface_bias, surface_findings
+from sms_resource.samples.surface import (
+    cap_samples,
+    dredge_tracks,
+    surface_bias,
+    surface_findings,
+    surface_use,
+)
 from tests.samples.holes import codes
 
 PLANTED = {"cu_pct": 1.3, "zn_pct": 8.0, "au_gpt": 2.5, "ag_gpt": 4.4}
@@ -122,3 +128,13 @@ def test_a_cap_is_a_domain_of_its_own_and_named() -> None:
     ):
         with pytest.raises(ValueError, match=r"thickness_m|types"):
             cap_samples(surface, ["cu_pct"], **wrong)  # type: ignore[arg-type]
+
+
+def test_each_use_is_named() -> None:
+    surface, _ = seafloor(0)
+    text, findings = surface_use(surface, "none")
+    assert "60 surface samples" in text and "grab" in text and len(findings) == 0
+    text, findings = surface_use(surface, "outline")
+    assert "outline" in text and codes(findings) == ["surface-used"]
+    with pytest.raises(ValueError, match="use must be"):
+        surface_use(surface, "body")
