@@ -44,13 +44,13 @@ def check_systems(data: LoadedData, settings: CheckSettings, findings: Findings)
     for role, crs in stated.items():
         found = parse_crs(crs)
         if study is not None and found is not None and not same_crs(found, study):
+            frame = tables.get(role)
             findings.error(
                 "crs-different",
-                f"The {role.replace('_', ' ')} are in {crs_name(found)}, the study in {crs_name(study)}."
-                if role in tables
-                else f"The {role.replace('_', ' ')} is in {crs_name(found)}, the study in {crs_name(study)}.",
+                f"The {role.replace('_', ' ')} {'is' if frame is None else 'are'} in {crs_name(found)}, "
+                f"the study in {crs_name(study)}.",
                 "Bring it into the study's system.",
-                file=data.files.get(role),
+                file=data.files.get(role) if frame is None else file_of(frame, data.files.get(role)),
             )
 
 
@@ -59,6 +59,12 @@ def check_positions(data: LoadedData, settings: CheckSettings, findings: Finding
     collars = data.drill.collars
     if not collars.empty:
         _collars(data, settings, findings)
+    # where the whole table is misplaced, what follows from it is not said again
+    misplaced = any(
+        item.code in ("coordinates-geographic", "coordinates-swapped") and "collars" in item.message
+        for item in findings.errors
+    )
+    if not collars.empty and not misplaced:
         _twins(collars, file_of(collars, data.files.get("collars")), settings, findings)
     if not data.surface.empty:
         _surface(data, settings, findings)
@@ -69,7 +75,7 @@ def check_positions(data: LoadedData, settings: CheckSettings, findings: Finding
     if data.base_grid is not None and data.seafloor is not None:
         _base_grid(data, findings)
     _far_below(data, settings, findings)
-    _outline(data, findings)
+    _outline(data, findings, misplaced)
 
 
 def _numbers(frame: pd.DataFrame, *names: str) -> list[NDArray[np.float64]]:
@@ -340,7 +346,7 @@ def _far_below(data: LoadedData, settings: CheckSettings, findings: Findings) ->
         )  # fmt: skip
 
 
-def _outline(data: LoadedData, findings: Findings) -> None:
+def _outline(data: LoadedData, findings: Findings, misplaced: bool) -> None:
     import shapely
 
     if data.outline is None or len(data.outline) == 0:
@@ -352,6 +358,7 @@ def _outline(data: LoadedData, findings: Findings) -> None:
         findings.warning(
             "outline-size", f"The outline holds {area:.0f} m2.", "Check its coordinate system and its units.", file=file
         )  # fmt: skip
+    outside = 0.0
     if data.seafloor is not None:
         box = shapely.box(*data.seafloor.bounds)
         outside = float(whole.difference(box).area)
@@ -362,6 +369,8 @@ def _outline(data: LoadedData, findings: Findings) -> None:
                 "Check that both are in one coordinate system, or use a larger grid.",
                 file=file,
             )
+    if misplaced or outside >= area:
+        return
     collars = data.drill.collars
     good = collars[["easting", "northing"]].notna().all(axis=1)
     places = collars.loc[good, ["easting", "northing"]].to_numpy(dtype=np.float64)

@@ -237,6 +237,12 @@ def test_other_projected_and_rotated_grids_are_resampled_only_on_request(
     assert grid is not None and only(found) == "grid-reprojected"
 
 
+def test_metres_said_to_be_degrees(tmp_path: Path) -> None:
+    geotiff(tmp_path / "g.tif", crs="EPSG:4326")
+    grid, found = load_grid(tmp_path / "g.tif", crs=CRS)
+    assert grid is None and only(found) in ("grid-not-reprojected", "grid-empty", "grid-too-large")
+
+
 def test_degrees_without_a_system_of_the_study_are_refused(tmp_path: Path) -> None:
     geotiff(tmp_path / "g.tif", crs="EPSG:4326", transform=from_origin(-171, -18, 1e-5, 1e-5))
     grid, found = load_grid(tmp_path / "g.tif")
