@@ -273,6 +273,7 @@ def check_densities(data: LoadedData, settings: CheckSettings, findings: Finding
             "They seem to be in kg/m3: divide by 1000." if unit else "Check the value and its unit (t/m3).",
             file=where["file"], column=where["column"],
         )  # fmt: skip
+        number[name] = np.where(wrong, np.nan, values)  # what cannot be is not compared with the rest
     wet, dry, grain = number["wet_density_tpm3"], number["dry_density_tpm3"], number["grain_density_tpm3"]
     _ordered(frame, dry, wet, "dry_density_tpm3", "dry", "wet density", file, findings)
     _ordered(frame, dry, grain, "grain_density_tpm3", "dry", "grain density", file, findings)

@@ -78,7 +78,7 @@ def _single_intervals(frame: pd.DataFrame, lengths: pd.Series, file: str | None,
         "Depths are measured down from the collar and are not negative.", file=file, column=header_of(frame, "from_m"),
     )  # fmt: skip
     ends = frame["hole_id"].map(lengths).to_numpy(dtype=np.float64)
-    past = end > ends + TOUCH_M
+    past = (end > ends + TOUCH_M) & (ends > 0)  # a hole of no length has its own finding
     holes = frame["hole_id"].to_numpy(dtype=object)
     report_rows(
         findings, "error", "interval-past-end", rows[past],

@@ -85,6 +85,9 @@ def decode(data: bytes, declared: str | None, name: str, findings: Findings) -> 
             break
         return text.replace("\r\n", "\n").replace("\r", "\n"), encoding
     else:
+        if not declared and b"\x00" in data:
+            _not_text(name, findings)
+            return None
         findings.error(
             "encoding-wrong",
             f"The file cannot be read as {' or '.join(str(g) for g in guesses)}; it fails near row {row}.",
@@ -93,10 +96,14 @@ def decode(data: bytes, declared: str | None, name: str, findings: Findings) -> 
             row=row,
         )
         return None
+    _not_text(name, findings)
+    return None
+
+
+def _not_text(name: str, findings: Findings) -> None:
     findings.error(
         "file-not-text", "The file holds binary data, not text.", "Export the table as text again.", file=name
     )
-    return None
 
 
 def _encodings(data: bytes) -> list[str]:
@@ -198,6 +205,7 @@ def read_text_table(
             file=name,
             row=source.header_row,
         )
+        return None
     decimal = source.decimal or find_decimal(body, delimiter)
     if decimal is None or decimal not in (".", ",") or decimal == delimiter:
         findings.error(
