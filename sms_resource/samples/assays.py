@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
 from sms_resource.samples.censored import TooFewDetected, regression_on_order_statistics
-from sms_resource.samples.intervals import numbers
+from sms_resource.samples.intervals import counted, numbers
 
 Floats = NDArray[np.float64]
 BelowDetection = Literal["half", "zero", "as_is", "ros"]
@@ -154,15 +154,15 @@ def _resolve(
     if below.any():
         findings.note(
             "assay-below-detection",
-            f"{label}: {int(below.sum())} of {int((status != BLANK).sum())} results of {column} are below "
-            f"detection and were taken as {used.replace('_', ' ')}",
+            f"{label}: {int(below.sum())} of {counted(int((status != BLANK).sum()), 'result')} of {column} below "
+            f"detection, taken as {used.replace('_', ' ')}",
             column=column,
         )
     if over.any():
         findings.warning(
             "assay-over-limit",
-            f"{label}: {int(over.sum())} results of {column} are over the upper limit and were "
-            + ("set to it, which understates them" if over_limit == "at_limit" else "left out"),
+            f"{label}: {counted(int(over.sum()), 'result')} of {column} over the upper limit, "
+            + ("set to it, which understates" if over_limit == "at_limit" else "left out"),
             "Have them assayed again by a method for high grades.",
             column=column,
         )

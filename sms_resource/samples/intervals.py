@@ -78,6 +78,11 @@ def take(values: Floats, rows: Integers) -> Floats:
     return np.append(values, np.nan)[rows]
 
 
+def counted(number: int, noun: str) -> str:
+    """``counted(1, "run")`` is "1 run", ``counted(2, "run")`` "2 runs"."""
+    return f"{number} {noun}" if number == 1 else f"{number} {noun}s"
+
+
 def lines(table: pd.DataFrame) -> Iterator[Any]:
     """Rows of a small table, one after the other, with columns as attributes."""
     return iter(table.itertuples())

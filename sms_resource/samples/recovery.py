@@ -12,7 +12,7 @@ from sms_resource.findings import Findings
 from sms_resource.samples.bracket import lost_core_bracket
 from sms_resource.samples.core_length import recovered_lengths, recovered_on_pieces
 from sms_resource.samples.desurvey import HolePaths
-from sms_resource.samples.intervals import cut_holes, names, numbers, overlap_pairs, valid_intervals
+from sms_resource.samples.intervals import counted, cut_holes, names, numbers, overlap_pairs, valid_intervals
 
 __all__ = [
     "join_recovery",
@@ -173,7 +173,9 @@ def recovery_summary(
     some = int(((percent > 100.0 + 1e-6) & (percent <= 110.0)).sum())
     if some:
         findings.warning(
-            "recovery-over-100", f"{some} runs have a recovery of 100 to 110 %", "Check their depths."
+            "recovery-over-100",
+            f"{counted(some, 'run')} with a recovery of 100 to 110 %",
+            "Check their depths.",
         )
     rows = []
     for name in [*sorted(set(domain)), "all"] if set(domain) != {"all"} else ["all"]:
