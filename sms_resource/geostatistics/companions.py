@@ -84,7 +84,7 @@ def _by_neighbourhood(
 ) -> None:
     """The kernel on what each pass found."""
     from .companion_kernels import companions
-    from .search_run import Finder, along, target_chunks, using_threads
+    from .search_run import Finder, along, share_out, target_chunks
 
     parts = []
     for group in samples.patterns().values():
@@ -92,33 +92,33 @@ def _by_neighbourhood(
         parts.append(
             (group, present, Finder(samples.points[present], samples.holes[present], passes, workers))
         )
-    for rows, local in target_chunks(targets, samples.origin):
+    for rows, local in target_chunks(targets, samples.origin, passes[0]):
         for group, present, finder in parts:
             found = finder.find(local)
             points = samples.points[present]
             for number, item in enumerate(passes, start=1):
                 radii = np.array(item.radii)
-                with using_threads(workers):
-                    companions(
-                        np.ascontiguousarray(samples.values[cross(present, group)].T),
-                        along(item.axes, points) / radii[:, None],
-                        np.ascontiguousarray(points.T),
-                        local,
-                        np.ascontiguousarray(along(item.axes, local).T / radii),
-                        offsets,
-                        np.ascontiguousarray(along(item.axes, offsets).T / radii),
-                        found.samples,
-                        found.reach,
-                        found.count,
-                        np.where(found.pass_number == number, found.status, 1).astype(np.int8),
-                        power,
-                        rows,
-                        np.array(group, dtype=np.int64),
-                        workers,
-                        out["nearest"],
-                        out["moving_average"],
-                        out["inverse_distance"],
-                    )
+                share_out(
+                    companions,
+                    workers,
+                    np.ascontiguousarray(samples.values[cross(present, group)].T),
+                    along(item.axes, points) / radii[:, None],
+                    np.ascontiguousarray(points.T),
+                    local,
+                    np.ascontiguousarray(along(item.axes, local).T / radii),
+                    offsets,
+                    np.ascontiguousarray(along(item.axes, offsets).T / radii),
+                    found.samples,
+                    found.reach,
+                    found.count,
+                    np.where(found.pass_number == number, found.status, 1).astype(np.int8),
+                    power,
+                    rows,
+                    np.array(group, dtype=np.int64),
+                    out["nearest"],
+                    out["moving_average"],
+                    out["inverse_distance"],
+                )
 
 
 def _from_all_samples(

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import math
 
-from numba import njit, prange
+from numba import njit
 
 from .lane_kernels import LANES, add, exponential, fma, fnma, load, mul, root, splat, store, sub, where_less
 
@@ -25,9 +25,8 @@ def _covariance(shape, sill, squared):
         h = root(squared)
         h = where_less(h, splat(1.0), h, splat(1.0))
         return mul(splat(sill), fnma(h, fnma(mul(h, h), splat(0.5), splat(1.5)), splat(1.0)))
-    if shape == EXPONENTIAL:
-        return mul(splat(sill), exponential(mul(root(squared), splat(-3.0))))
-    return mul(splat(sill), exponential(mul(squared, splat(-3.0))))
+    reduced = root(squared) if shape == EXPONENTIAL else squared
+    return mul(splat(sill), exponential(mul(reduced, splat(-3.0))))
 
 
 @njit(cache=True, error_model="numpy")
@@ -115,40 +114,40 @@ def point_covariances(at, n, where, shapes, sills, inverse, nugget, out):
     return nearest
 
 
-@njit(parallel=True, cache=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy")
 def covariances_to_targets(
-    samples, targets, shapes, sills, inverse, nugget, axes, offsets, workers, out, room
+    worker, workers, samples, targets, shapes, sills, inverse, nugget, axes, offsets, out, rooms
 ):
-    """k between all samples and each target, for the estimate from all samples.
+    """k between all samples and one worker's share of the targets, for the estimate from all samples.
 
-    ``out`` (c, n) receives the covariances; ``room`` (workers, LANES * (4 n + 3)) is work space. The rest as in
+    ``out`` (c, n) receives the covariances; ``rooms`` (workers, LANES * (4 n + 3)) is work space. The rest as in
     ``krige``.
     """
     n = samples.shape[1]
     points = offsets.shape[1]
     batches = (targets.shape[0] + LANES - 1) // LANES
-    for worker in prange(workers):
-        at = room[worker, : 3 * n * LANES]
-        right = room[worker, 3 * n * LANES : 4 * n * LANES]
-        where = room[worker, 4 * n * LANES :]
-        for i in range(n):
+    room = rooms[worker]
+    at = room[: 3 * n * LANES]
+    right = room[3 * n * LANES : 4 * n * LANES]
+    where = room[4 * n * LANES :]
+    for i in range(n):
+        for axis in range(3):
+            store(at, (3 * i + axis) * LANES, splat(samples[axis, i]))
+    for batch in range(worker, batches, workers):
+        first = batch * LANES
+        lanes = min(LANES, targets.shape[0] - first)
+        for lane in range(LANES):
+            row = first + min(lane, lanes - 1)
             for axis in range(3):
-                store(at, (3 * i + axis) * LANES, splat(samples[axis, i]))
-        for batch in range(worker, batches, workers):
-            first = batch * LANES
-            lanes = min(LANES, targets.shape[0] - first)
-            for lane in range(LANES):
-                row = first + min(lane, lanes - 1)
-                for axis in range(3):
-                    where[axis * LANES + lane] = (
-                        axes[axis, 0] * targets[row, 0]
-                        + axes[axis, 1] * targets[row, 1]
-                        + axes[axis, 2] * targets[row, 2]
-                    )
-            if points > 0:
-                block_covariances(at, n, where, offsets, shapes, sills, inverse, right)
-            else:
-                point_covariances(at, n, where, shapes, sills, inverse, nugget, right)
-            for lane in range(lanes):
-                for i in range(n):
-                    out[first + lane, i] = right[i * LANES + lane]
+                where[axis * LANES + lane] = (
+                    axes[axis, 0] * targets[row, 0]
+                    + axes[axis, 1] * targets[row, 1]
+                    + axes[axis, 2] * targets[row, 2]
+                )
+        if points > 0:
+            block_covariances(at, n, where, offsets, shapes, sills, inverse, right)
+        else:
+            point_covariances(at, n, where, shapes, sills, inverse, nugget, right)
+        for lane in range(lanes):
+            for i in range(n):
+                out[first + lane, i] = right[i * LANES + lane]

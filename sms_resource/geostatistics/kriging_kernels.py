@@ -17,7 +17,8 @@ from __future__ import annotations
 
 import math
 
-from numba import njit, prange
+import numpy as np
+from numba import njit
 
 from .covariance_kernels import SAME_PLACE, block_covariances, fill_matrix, point_covariances
 from .lane_kernels import LANES, div, fma, fnma, load, mul, root, splat, store, where_less
@@ -100,16 +101,109 @@ def _backward(matrix, n, inverse_pivot, out):
             store(out, k * LANES, fnma(load(matrix, row + k * LANES), value, load(out, k * LANES)))
 
 
-@njit(parallel=True, cache=True, error_model="numpy")
-def krige(
-    samples, values, targets, found, reach, count, order, starts, sizes,
-    shapes, sills, inverse, nugget, axes, offsets, block_variance, ordinary, means, thresholds, limit, workers,
-    rows, columns, estimate, variance, lagrange, slope, efficiency, negative, status, room,
+@njit(cache=True, error_model="numpy")
+def _set_places(where, axes, targets, order, starts, sizes, first_run, runs, turn):
+    """Put the targets of one turn of a batch of runs into a pack, along the axes of the model."""
+    for lane in range(LANES):
+        # a pack that is not full repeats its last run, which is written once
+        run = first_run + min(lane, runs - 1)
+        row = order[starts[run] + min(turn, sizes[run] - 1)]
+        for axis in range(3):
+            where[axis * LANES + lane] = (
+                axes[axis, 0] * targets[row, 0]
+                + axes[axis, 1] * targets[row, 1]
+                + axes[axis, 2] * targets[row, 2]
+            )
+
+
+@njit(cache=True, error_model="numpy")
+def _set_samples(at, ones, n, samples, found, count, order, starts, first_run, runs):
+    """Put the samples of a batch of runs into packs; empty slots stand far away and count nothing."""
+    for lane in range(LANES):
+        row = order[starts[first_run + min(lane, runs - 1)]]
+        for i in range(n):
+            present = i < count[row]
+            ones[i * LANES + lane] = 1.0 if present else 0.0
+            for axis in range(3):
+                far = _FAR * (i + 1.0)
+                at[(3 * i + axis) * LANES + lane] = samples[axis, found[row, i]] if present else far
+
+
+@njit(cache=True, error_model="numpy")
+def _solve(matrix, n, inverse_pivot, right, b, bb, ordinary, weights, multiplier, explained):
+    """Weights, multiplier and ``w.k`` of eight systems that are factorised, for their right-hand sides."""
+    _forward(matrix, n, inverse_pivot, right, weights)
+    mu = splat(0.0)
+    if ordinary:
+        ab = splat(-1.0)
+        for i in range(n):
+            ab = fma(load(weights, i * LANES), load(b, i * LANES), ab)
+        mu = div(ab, bb)
+        for i in range(n):
+            store(weights, i * LANES, fnma(mu, load(b, i * LANES), load(weights, i * LANES)))
+    store(multiplier, 0, mu)
+    _backward(matrix, n, inverse_pivot, weights)
+    wk = splat(0.0)
+    for i in range(n):
+        wk = fma(load(weights, i * LANES), load(right, i * LANES), wk)
+    store(explained, 0, wk)
+
+
+@njit(cache=True, error_model="numpy")
+def _set_exact(at, where, lane, n, weights):
+    """Weight one for the sample on which a point lies: what the system gives, without its rounding."""
+    for i in range(n):
+        dx = at[(3 * i) * LANES + lane] - where[lane]
+        dy = at[(3 * i + 1) * LANES + lane] - where[LANES + lane]
+        dz = at[(3 * i + 2) * LANES + lane] - where[2 * LANES + lane]
+        weights[i * LANES + lane] = 1.0 if dx * dx + dy * dy + dz * dz <= SAME_PLACE else 0.0
+
+
+@njit(cache=True, error_model="numpy")
+def _write(
+    values, found, reach, n, row, lane, weights, multiplier, explained, total_sill, block_variance, means,
+    thresholds, limit, out, columns, estimate, variance, lagrange, slope, efficiency, negative, status,
 ):  # fmt: skip
-    """Krige targets whose samples have been found.
+    """Estimates of one target in all columns, and what tells their quality."""
+    below_zero = 0.0
+    for i in range(n):
+        below_zero += min(weights[i * LANES + lane], 0.0)
+    kriged = block_variance - explained - multiplier
+    # rounding may leave a hair below zero
+    kriged = max(kriged, 0.0) if kriged > -1e-6 * total_sill else math.nan
+    gain = block_variance - kriged
+    for c in range(columns.size):
+        column = columns[c]
+        total = 0.0
+        for i in range(n):
+            value = values[c, found[row, i]]
+            if value > thresholds[c] and reach[row, i] > limit:
+                value = thresholds[c]
+            total += weights[i * LANES + lane] * (value - means[c])
+        total += means[c]
+        if not (math.isfinite(total) and math.isfinite(kriged)):
+            status[out, column] = NOT_FINITE
+            continue
+        status[out, column] = DONE
+        estimate[out, column] = total
+        variance[out, column] = kriged
+        lagrange[out, column] = multiplier
+        slope[out, column] = (gain + abs(multiplier)) / (gain + 2.0 * abs(multiplier))
+        efficiency[out, column] = gain / block_variance if block_variance > 0.0 else math.nan
+        negative[out, column] = below_zero
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def krige(
+    worker, workers, samples, values, targets, found, reach, count, order, starts, sizes,
+    shapes, sills, inverse, nugget, axes, offsets, block_variance, ordinary, means, thresholds, limit,
+    rows, columns, estimate, variance, lagrange, slope, efficiency, negative, status, rooms,
+):  # fmt: skip
+    """Krige one worker's share of the targets whose samples have been found.
 
     Parameters
     ----------
+    worker, workers : int, this worker and how many there are: each takes every so-manieth batch of eight runs
     samples : (3, n) float64, sample coordinates along the axes of the model, in metres
     values : (m, n) float64, values of the columns that share this model
     targets : (c, 3) float64, local coordinates in metres (not rotated)
@@ -125,131 +219,54 @@ def krige(
     thresholds : (m,) values above count as the threshold where ``reach`` is beyond ``limit`` (m)
     rows : (c,) int64, output row of each target; columns : (m,) int64, output columns
     estimate ... status : (b, k) outputs
-    room : (workers, w) float64 work space, w >= LANES * (s (s + 1) / 2 + 8 s + 16) for s samples
+    rooms : (workers, w) float64 work space, w >= LANES * (s (s + 1) / 2 + 8 s + 16) for s samples
     """
+    room = rooms[worker]
     points = offsets.shape[1]
     total_sill = nugget + sills.sum()
-    batches = (starts.size + LANES - 1) // LANES
     widest = found.shape[1]
-    for worker in prange(workers):
-        mine = room[worker]
-        matrix = mine[: LANES * (widest * (widest + 1) // 2)]
-        rest = mine[LANES * (widest * (widest + 1) // 2) :]
-        step = LANES * widest
-        at = rest[: 3 * step]
-        inverse_pivot = rest[3 * step : 4 * step]
-        ones = rest[4 * step : 5 * step]
-        b = rest[5 * step : 6 * step]
-        right = rest[6 * step : 7 * step]
-        weights = rest[7 * step : 8 * step]
-        rest = rest[8 * step :]
-        where = rest[: 3 * LANES]
-        pivots = rest[3 * LANES : 4 * LANES]
-        multiplier = rest[4 * LANES : 5 * LANES]
-        explained = rest[5 * LANES : 6 * LANES]
-        closest = rest[6 * LANES : 7 * LANES]
-        for batch in range(worker, batches, workers):
-            first_run = batch * LANES
-            runs = min(LANES, starts.size - first_run)
-            n = 0
-            longest = 0
+    step = LANES * widest
+    matrix = room[: step * (widest + 1) // 2]
+    rest = room[step * (widest + 1) // 2 :]
+    at, inverse_pivot, ones = rest[: 3 * step], rest[3 * step : 4 * step], rest[4 * step : 5 * step]
+    b, right, weights = rest[5 * step : 6 * step], rest[6 * step : 7 * step], rest[7 * step : 8 * step]
+    rest = rest[8 * step :]
+    where, pivots, closest = rest[: 3 * LANES], rest[3 * LANES : 4 * LANES], rest[4 * LANES : 5 * LANES]
+    multiplier, explained = rest[5 * LANES : 6 * LANES], rest[6 * LANES : 7 * LANES]
+    for batch in range(worker, (starts.size + LANES - 1) // LANES, workers):
+        first_run = batch * LANES
+        runs = min(LANES, starts.size - first_run)
+        n = np.int64(0)  # a bare 0 would compile every callee twice
+        longest = 0
+        for run in range(first_run, first_run + runs):
+            n = max(n, count[order[starts[run]]])
+            longest = max(longest, sizes[run])
+        _set_samples(at, ones, n, samples, found, count, order, starts, first_run, runs)
+        fill_matrix(at, n, shapes, sills, inverse, total_sill, matrix)
+        store(pivots, 0, _factorise(matrix, n, inverse_pivot))
+        bb = _forward(matrix, n, inverse_pivot, ones, b)
+        for turn in range(longest):
+            _set_places(where, axes, targets, order, starts, sizes, first_run, runs, turn)
+            if points > 0:
+                block_covariances(at, n, where, offsets, shapes, sills, inverse, right)
+                store(closest, 0, splat(math.inf))
+            else:
+                store(closest, 0, point_covariances(at, n, where, shapes, sills, inverse, nugget, right))
+            _solve(matrix, n, inverse_pivot, right, b, bb, ordinary, weights, multiplier, explained)
             for lane in range(runs):
-                n = max(n, count[order[starts[first_run + lane]]])
-                longest = max(longest, sizes[first_run + lane])
-            for lane in range(LANES):
-                # a pack that is not full repeats its last run and writes it once
-                row = order[starts[first_run + min(lane, runs - 1)]]
-                for i in range(n):
-                    if i < count[row]:
-                        sample = found[row, i]
-                        for axis in range(3):
-                            at[(3 * i + axis) * LANES + lane] = samples[axis, sample]
-                        ones[i * LANES + lane] = 1.0
-                    else:
-                        for axis in range(3):
-                            at[(3 * i + axis) * LANES + lane] = _FAR * (i + 1.0)
-                        ones[i * LANES + lane] = 0.0
-            fill_matrix(at, n, shapes, sills, inverse, total_sill, matrix)
-            store(pivots, 0, _factorise(matrix, n, inverse_pivot))
-            bb = _forward(matrix, n, inverse_pivot, ones, b)
-
-            for turn in range(longest):
-                for lane in range(LANES):
-                    run = first_run + min(lane, runs - 1)
-                    row = order[starts[run] + min(turn, sizes[run] - 1)]
-                    for axis in range(3):
-                        where[axis * LANES + lane] = (
-                            axes[axis, 0] * targets[row, 0]
-                            + axes[axis, 1] * targets[row, 1]
-                            + axes[axis, 2] * targets[row, 2]
-                        )
-                if points > 0:
-                    block_covariances(at, n, where, offsets, shapes, sills, inverse, right)
-                    store(closest, 0, splat(math.inf))
-                else:
-                    store(closest, 0, point_covariances(at, n, where, shapes, sills, inverse, nugget, right))
-                _forward(matrix, n, inverse_pivot, right, weights)
-                mu = splat(0.0)
-                if ordinary:
-                    ab = splat(-1.0)
-                    for i in range(n):
-                        ab = fma(load(weights, i * LANES), load(b, i * LANES), ab)
-                    mu = div(ab, bb)
-                    for i in range(n):
-                        reduced = fnma(mu, load(b, i * LANES), load(weights, i * LANES))
-                        store(weights, i * LANES, reduced)
-                store(multiplier, 0, mu)
-                _backward(matrix, n, inverse_pivot, weights)
-                wk = splat(0.0)
-                for i in range(n):
-                    wk = fma(load(weights, i * LANES), load(right, i * LANES), wk)
-                store(explained, 0, wk)
-
-                for lane in range(runs):
-                    run = first_run + lane
-                    if turn >= sizes[run]:
-                        continue
-                    row = order[starts[run] + turn]
-                    out = rows[row]
-                    if not pivots[lane] > _SMALLEST_PIVOT * total_sill:
-                        for c in range(columns.size):
-                            status[out, columns[c]] = SINGULAR
-                        continue
-                    exact = closest[lane] <= SAME_PLACE
-                    if exact:
-                        # a point on a sample: the system gives weight one; leave no rounding in it
-                        for i in range(count[row]):
-                            dx = at[(3 * i) * LANES + lane] - where[lane]
-                            dy = at[(3 * i + 1) * LANES + lane] - where[LANES + lane]
-                            dz = at[(3 * i + 2) * LANES + lane] - where[2 * LANES + lane]
-                            here = dx * dx + dy * dy + dz * dz <= SAME_PLACE
-                            weights[i * LANES + lane] = 1.0 if here else 0.0
-                        multiplier[lane] = 0.0
-                        explained[lane] = block_variance
-                    below_zero = 0.0
-                    for i in range(count[row]):
-                        below_zero += min(weights[i * LANES + lane], 0.0)
-                    factor = multiplier[lane]
-                    kriged = block_variance - explained[lane] - factor
-                    # rounding may leave a hair below zero
-                    kriged = max(kriged, 0.0) if kriged > -1e-6 * total_sill else math.nan
-                    gain = block_variance - kriged
+                if turn >= sizes[first_run + lane]:
+                    continue
+                row = order[starts[first_run + lane] + turn]
+                if not pivots[lane] > _SMALLEST_PIVOT * total_sill:
                     for c in range(columns.size):
-                        column = columns[c]
-                        total = 0.0
-                        for i in range(count[row]):
-                            value = values[c, found[row, i]]
-                            if value > thresholds[c] and reach[row, i] > limit:
-                                value = thresholds[c]
-                            total += weights[i * LANES + lane] * (value - means[c])
-                        total += means[c]
-                        if not (math.isfinite(total) and math.isfinite(kriged)):
-                            status[out, column] = NOT_FINITE
-                            continue
-                        status[out, column] = DONE
-                        estimate[out, column] = total
-                        variance[out, column] = kriged
-                        lagrange[out, column] = factor
-                        slope[out, column] = (gain + abs(factor)) / (gain + 2.0 * abs(factor))
-                        efficiency[out, column] = gain / block_variance if block_variance > 0.0 else math.nan
-                        negative[out, column] = below_zero
+                        status[rows[row], columns[c]] = SINGULAR
+                    continue
+                if closest[lane] <= SAME_PLACE:
+                    _set_exact(at, where, lane, count[row], weights)
+                    multiplier[lane] = 0.0
+                    explained[lane] = block_variance
+                _write(
+                    values, found, reach, count[row], row, lane, weights, multiplier[lane], explained[lane],
+                    total_sill, block_variance, means, thresholds, limit, rows[row], columns, estimate,
+                    variance, lagrange, slope, efficiency, negative, status,
+                )  # fmt: skip

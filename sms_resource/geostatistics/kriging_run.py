@@ -15,7 +15,7 @@ from .kriging_setup import ModelArrays
 from .lane_kernels import LANES
 from .model import COINCIDENT_M, VariogramModel
 from .neighbourhood import HighGradeRestraint, Neighbourhood
-from .search_run import CHUNK, Finder, Found, target_chunks, using_threads
+from .search_run import CHUNK, Finder, Found, share_out, target_chunks
 
 if TYPE_CHECKING:
     from .kriging import Outputs
@@ -59,38 +59,38 @@ def krige_found(
     """Krige one chunk whose samples are found, for columns that share pattern and model."""
     widest = found.samples.shape[1]
     room = np.empty((workers, LANES * (widest * (widest + 1) // 2 + 8 * widest + 16)))
-    with using_threads(workers):
-        krige(
-            np.ascontiguousarray(arrays.samples[:, present]),
-            np.ascontiguousarray(samples.values[cross(present, columns)].T),
-            local,
-            found.samples,
-            found.reach,
-            found.count,
-            *runs,
-            arrays.shapes,
-            arrays.sills,
-            arrays.inverse,
-            arrays.nugget,
-            arrays.axes,
-            arrays.offsets,
-            arrays.support_variance,
-            means is None,
-            np.zeros(len(columns)) if means is None else means[list(columns)],
-            thresholds[list(columns)],
-            limit,
-            workers,
-            rows,
-            np.array(columns, dtype=np.int64),
-            out.estimate,
-            out.variance,
-            out.lagrange,
-            out.slope,
-            out.efficiency,
-            out.negative,
-            out.status,
-            room,
-        )
+    share_out(
+        krige,
+        workers,
+        np.ascontiguousarray(arrays.samples[:, present]),
+        np.ascontiguousarray(samples.values[cross(present, columns)].T),
+        local,
+        found.samples,
+        found.reach,
+        found.count,
+        *runs,
+        arrays.shapes,
+        arrays.sills,
+        arrays.inverse,
+        arrays.nugget,
+        arrays.axes,
+        arrays.offsets,
+        arrays.support_variance,
+        means is None,
+        np.zeros(len(columns)) if means is None else means[list(columns)],
+        thresholds[list(columns)],
+        limit,
+        rows,
+        np.array(columns, dtype=np.int64),
+        out.estimate,
+        out.variance,
+        out.lagrange,
+        out.slope,
+        out.efficiency,
+        out.negative,
+        out.status,
+        room,
+    )
 
 
 def by_neighbourhood(
@@ -114,7 +114,7 @@ def by_neighbourhood(
         parts.append(
             (group, present, Finder(samples.points[present], samples.holes[present], passes, workers))
         )
-    for rows, local in target_chunks(targets, samples.origin):
+    for rows, local in target_chunks(targets, samples.origin, passes[0]):
         for group, present, finder in parts:
             found = finder.find(local)
             fill_search(found, rows, group, out)
@@ -200,11 +200,10 @@ def from_all_samples(
             for first in range(0, len(finite), chunk):
                 rows = finite[first : first + chunk]
                 right = np.empty((len(rows), n))
-                with using_threads(workers):
-                    covariances_to_targets(
-                        along_axes, local[rows], setup.shapes, setup.sills, setup.inverse, setup.nugget,
-                        setup.axes, setup.offsets, workers, right, room,
-                    )  # fmt: skip
+                share_out(
+                    covariances_to_targets, workers, along_axes, local[rows], setup.shapes, setup.sills,
+                    setup.inverse, setup.nugget, setup.axes, setup.offsets, right, room,
+                )  # fmt: skip
                 weights = cho_solve((factor, True), right.T, check_finite=False)
                 mu = np.zeros(len(rows))
                 if means is None:
