@@ -117,7 +117,7 @@ def test_singular_system_has_a_status(data, road):
 
 
 def test_too_few_samples_and_holes(data):
-    points, values, holes, targets = data
+    points, values, _holes, targets = data
     far = targets + [1e5, 0.0, 0.0]
     result = ordinary_kriging(points, values, far, MODEL, ROAD)
     assert (result.status == 1).all() and (result.sample_count == 0).all()
@@ -157,7 +157,7 @@ def test_one_sample(data):
 
 @pytest.mark.parametrize("road", [None, ROAD])
 def test_equal_values(data, road):
-    points, values, _, targets = data
+    points, _values, _, targets = data
     result = ordinary_kriging(points, np.full(40, 3.25), targets, MODEL, road)
     np.testing.assert_allclose(result.estimate, 3.25, rtol=1e-12)
 

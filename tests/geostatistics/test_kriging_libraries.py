@@ -63,7 +63,7 @@ def r_model(model):
 
 @pytest.fixture(scope="module")
 def data():
-    points, values, holes, targets = scene(7, samples=60, targets=30, columns=1, missing=0.0)
+    points, values, _holes, targets = scene(7, samples=60, targets=30, columns=1, missing=0.0)
     return points.round(3), values[:, 0].round(4), targets.round(3)
 
 

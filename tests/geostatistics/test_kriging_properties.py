@@ -135,7 +135,7 @@ def test_exact_at_the_data(road, seed, model):
 @given(seed=seeds, model=models())
 def test_block_is_the_mean_of_its_points(seed, model):
     """With the same samples (all of them), estimate for estimate."""
-    points, values, holes, targets = case(seed)
+    points, values, _holes, targets = case(seed)
     size, counts = (6.0, 4.0, 2.0), (3, 2, 2)
     block = ordinary_kriging(points, values, targets, model, block_size=size, discretisation=counts)
     inside = (targets[:, None] + discretisation_offsets(size, counts)).reshape(-1, 3)
@@ -147,7 +147,7 @@ def test_block_is_the_mean_of_its_points(seed, model):
 @tried
 @given(seed=seeds, model=models())
 def test_more_samples_never_raise_the_variance(seed, model):
-    points, values, holes, targets = case(seed)
+    points, values, _holes, targets = case(seed)
     few = ordinary_kriging(points, values[:, 0], targets, model, Neighbourhood(1e3, 6, 1))
     many = ordinary_kriging(points, values[:, 0], targets, model, Neighbourhood(1e3, 20, 1))
     assert (many.variance <= few.variance + 1e-9).all()

@@ -62,7 +62,7 @@ def stacked(result: KrigingResult) -> np.ndarray:
 @pytest.mark.parametrize("block", [None, (5.0, 6.0, 2.0)])
 @pytest.mark.parametrize("name", PASSES)
 def test_kernels_and_twins_agree(name, block):
-    points, values, holes, targets = scene(3)
+    points, values, holes, targets = scene(3, targets=15)
     counts = (1, 1, 1) if block is None else (3, 2, 2)
     result = ordinary_kriging(
         points, values, targets, MODELS, PASSES[name], hole_ids=holes, block_size=block, discretisation=counts
@@ -136,7 +136,7 @@ def test_threads_do_not_matter(name):
 def test_company_does_not_matter():
     """A target gets the same bytes alone, in any order, and in a crowd: no dependence on chunks or packs."""
     points, values, holes, targets = scene(9, targets=300)
-    settings = dict(hole_ids=holes, block_size=(4, 4, 2), discretisation=(2, 2, 2))
+    settings = {"hole_ids": holes, "block_size": (4, 4, 2), "discretisation": (2, 2, 2)}
     crowd = ordinary_kriging(points, values, targets, MODELS, PASSES["octants"], **settings)
     order = np.random.default_rng(0).permutation(len(targets))
     mixed = ordinary_kriging(points, values, targets[order], MODELS, PASSES["octants"], **settings)
