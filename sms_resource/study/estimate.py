@@ -36,9 +36,15 @@ class BodySection(Section):
     )
     drilled_within_m: float = key(25.0, "Distance from a hole within which tonnage counts as drilled.", gt=0)
     cell_m: float | None = key(None, "Cell of the surfaces; that of the seafloor grid if not given.", gt=0)
-    base_shift_m: float = key(0.0, "Vertical shift of the base, up positive; for scenarios.")
-    seafloor_shift_m: float = key(0.0, "Vertical shift of the seafloor, up positive; for scenarios.")
-    outline_shift_m: float = key(0.0, "Shift of the outline, outward positive; for scenarios.")
+    base_shift_m: float = key(
+        0.0, "Vertical shift of the base, up positive; for scenarios.", alternatives=(-1.0, 1.0)
+    )
+    seafloor_shift_m: float = key(
+        0.0, "Vertical shift of the seafloor, up positive; for scenarios.", alternatives=(-0.3, 0.3)
+    )
+    outline_shift_m: float = key(
+        0.0, "Shift of the outline, outward positive; for scenarios.", alternatives=(-5.0, 5.0)
+    )
 
 
 class Blocks(Section):
@@ -129,7 +135,7 @@ class Variograms(Section):
     assumed_vertical_m: float = key(4.0, "Vertical range assumed where none can be inferred.", gt=0)
     assumed_nugget_share: float = key(0.4, "Nugget share assumed where none can be inferred.", ge=0, le=1)
     intervals: bool = key(True, "Whether the uncertainty of the parameters is found by leaving out holes.")
-    range_factor: float = key(1.0, "Factor on every range; for scenarios.", gt=0)
+    range_factor: float = key(1.0, "Factor on every range; for scenarios.", gt=0, alternatives=(0.7, 1.4))
     models: dict[str, dict[str, VariogramChoice]] = key({}, "What the study fixes, by domain and element.")
 
 

@@ -142,10 +142,10 @@ class Composites(Section):
 
     length_m: float = key(1.0, "Length of a composite.", gt=0, le=50, alternatives=(0.5, 2.0))
     shortest_m: float = key(0.5, "Shortest rest at a contact that stays a composite of its own.", ge=0)
-    short_rest: Literal["merge", "keep", "drop"] = key(
+    short_rest: Literal["merge", "keep", "drop", "spread"] = key(
         "merge",
-        "What becomes of a shorter rest: merged with its neighbour, kept, or dropped.",
-        alternatives=("keep", "drop"),
+        "What becomes of a shorter rest: merged with its neighbour, kept, dropped, or spread over all composites.",
+        alternatives=("keep", "drop", "spread"),
     )
     weighting: Literal["recovered_length", "length", "recovered_length_density"] = key(
         "recovered_length",
@@ -158,8 +158,18 @@ class Composites(Section):
         "(floor), or the mean of poorly recovered intervals nearby.",
         alternatives=("represented", "background", "neighbour_mean"),
     )
-    background: dict[str, float] = key(
-        {}, 'Background grade of each element, for lost_core = "background"; zero if not named.'
+    background: dict[str, float | dict[str, float]] = key(
+        {},
+        "Background grade of each element, or of each domain and element, for lost core; zero if not named.",
+    )
+    neighbour_recovery_pct: float = key(
+        50.0,
+        'Recovery under which an interval counts as poorly recovered, for lost_core = "neighbour_mean".',
+        gt=0,
+        le=100,
+    )
+    neighbour_distance_m: float = key(
+        50.0, "Distance within which poorly recovered intervals are averaged.", gt=0
     )
     least_recovery_pct: float = key(
         0.0, "Recovery under which an interval is treated as not sampled.", ge=0, le=100
@@ -169,10 +179,16 @@ class Composites(Section):
 class SurfaceSamples(Section):
     """[surface_samples]: what samples from the seafloor may do."""
 
-    use: Literal["none", "outline"] = key(
-        "none",
-        "Surface samples stay out of the estimate (none), or also support the outline that is proposed (outline).",
+    use: Literal["none", "outline", "cap"] = key(
+        "none", "Surface samples stay out of the estimate (none), support the outline that is proposed (outline), or are "
+        "samples of a thin cap, a domain of its own (cap).",
+    )  # fmt: skip
+    cap_domain: str = key("cap", 'Domain that they estimate, for use = "cap".')
+    cap_thickness_m: float = key(1.0, "Thickness of the cap that they stand for.", gt=0)
+    cap_types: tuple[Literal["grab", "chimney", "push_core", "gravity_core"], ...] = key(
+        ("push_core", "gravity_core"), "Types of sample that the cap takes; a dredge never."
     )
+    compare_within_m: float = key(30.0, "Distance within which a surface sample is compared with core.", gt=0)
 
 
 class TopCuts(Section):
@@ -185,6 +201,27 @@ class TopCuts(Section):
     cuts: dict[str, dict[str, float]] = key({}, "Cut by domain and element, in the element's unit.")
 
 
+class Laboratory(Section):
+    """[laboratory]: limits of the control of assays."""
+
+    blank_limits: float = key(5.0, "Detection limits above which a blank fails.", gt=0)
+    family_error: float = key(
+        0.001, "Chance of accusing any good batch, over all batches and elements.", gt=0, lt=1
+    )
+    confidence: float = key(0.95, "Confidence of intervals of check assays.", gt=0, lt=1)
+
+
+class Associations(Section):
+    """[associations]: metal ratios as tracers of supply; shown as plots, never as a verdict."""
+
+    tracer_thresholds: dict[str, float] = key(
+        {}, 'Ratio by mass above which a tracer is called high, such as "cu/mo" = 500.'
+    )
+
+
+Amount = float | tuple[float, float, float]
+
+
 class Density(Section):
     """[density]: dry and wet bulk density of each domain."""
 
@@ -194,11 +231,29 @@ class Density(Section):
     salinity_gkg: float = key(
         35.0, "Salinity of the pore water, for the salt correction of measured densities.", ge=0, le=300
     )
-    assigned_dry_tpm3: dict[str, float] = key(
-        {}, 'Dry density by domain, where none can be measured or method = "assigned".'
+    pore_water_tpm3: float | None = key(
+        None,
+        "Density of the pore water; of seawater by TEOS-10 if not given. A brine over 42 g/kg needs it.",
+        gt=0.9,
+        lt=1.4,
     )
-    porosity_fraction: dict[str, float] = key(
-        {}, 'Porosity by domain, for method = "mineralogy" and for wet density.'
+    dry_contains_salt: bool = key(
+        False, "Whether measured dry densities still hold the salt of the dried pore water."
     )
+    assigned_dry_tpm3: dict[str, Amount] = key(
+        {},
+        'Dry density by domain, or its low, base and high, where none can be measured or method = "assigned".',
+    )
+    porosity_fraction: dict[str, Amount] = key(
+        {}, 'Porosity by domain, or its low, base and high, for method = "mineralogy" and for wet density.'
+    )
+    predictors: tuple[str, ...] = key(
+        ("cu", "zn", "fe"), 'Elements of the regression, for method = "regression".'
+    )
+    copper_mineral: Literal["chalcopyrite", "bornite", "covellite", "chalcocite"] = key(
+        "chalcopyrite", 'Mineral that holds the copper, for method = "mineralogy".'
+    )
+    rest_mineral: str = key("silica", "Mineral that fills up to 100 %.")
+    confidence: float = key(0.9, "Confidence of the low and high densities.", gt=0, lt=1)
     least_count: int = key(10, "Number of measurements under which a domain's density is called few.", ge=1)
-    factor: float = key(1.0, "Factor on every dry density; for scenarios.", gt=0)
+    factor: float = key(1.0, "Factor on every dry density; for scenarios.", gt=0, alternatives=(0.95, 1.05))

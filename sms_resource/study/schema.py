@@ -22,6 +22,8 @@ class StudyConfig(Section):
     composites: evidence.Composites = key(evidence.Composites(), "Joining samples to one length.")
     surface_samples: evidence.SurfaceSamples = key(evidence.SurfaceSamples(), "What surface samples may do.")
     top_cuts: evidence.TopCuts = key(evidence.TopCuts(), "Restraint of extreme grades.")
+    laboratory: evidence.Laboratory = key(evidence.Laboratory(), "Limits of the control of assays.")
+    associations: evidence.Associations = key(evidence.Associations(), "Metal ratios as tracers.")
     density: evidence.Density = key(evidence.Density(), "Dry and wet density.")
     seafloor: estimate.Seafloor = key(estimate.Seafloor(), "The grid before it bounds the body.")
     body: estimate.BodySection = key(estimate.BodySection(), "The sulphide between seafloor and base.")

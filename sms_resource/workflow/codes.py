@@ -2,11 +2,14 @@
 
 CODES: dict[str, str] = {
     "blocks-beyond-search": "Blocks were estimated from samples beyond every search pass.",
+    "blocks-empty": "No block of the block model touches the body.",
     "blocks-not-estimated": "Blocks have no estimate of some metal.",
+    "cutoff-unknown": "No block has the variable that the study cuts on.",
     "equivalent-refused": "A metal equivalent or a value cannot be made from what the study states.",
     "neighbourhood-study": "What the study of neighbourhoods recommends.",
     "no-composites": "No sample lies in a domain of the body.",
     "outline-proposed": "The outline of the body was proposed by the tool.",
+    "stage-refused": "A stage cannot work with a value that the study or its data give it.",
     "top-cut-proposed": "Top cuts that the tool proposes were applied.",
     "validation-flag": "A check of the estimate is outside its limit.",
 }

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from sms_resource.units import element_column
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.geometry import domain_shares
-from sms_resource.workflow.stage import Context
+from sms_resource.workflow.stage import Context, StageStop
 from sms_resource.workflow.state import BlockState, DensityState, EstimateState, VariogramState
 
 DETAILS = ("variance", "slope_of_regression", "kriging_efficiency", "sample_count", "hole_count", "nearest_distance",
@@ -43,6 +43,14 @@ def estimate(context: Context) -> EstimateState:
     for name, values in details.items():
         frame[name] = values
     failed = int(frame[metals].isna().any(axis=1).sum())
+    nowhere = [metal for metal in metals if not frame[metal].notna().any()]
+    if nowhere:
+        context.findings.error(
+            "blocks-not-estimated", f"no block has an estimate of {', '.join(nowhere)}",
+            "Widen search.radii_m and search.passes, lower search.least_samples, or set search.fill = true.",
+            file=context.study.path.name,
+        )  # fmt: skip
+        raise StageStop
     if failed:
         context.findings.warning(
             "blocks-not-estimated", f"{failed:,} of {len(frame):,} blocks have no estimate of some metal",
@@ -106,9 +114,7 @@ def neighbourhoods(state: VariogramState, domain: str, config: Any) -> list[Any]
     ]
     if choice.fill:
         far = 1e4 / max(radii)
-        hoods.append(
-            Neighbourhood(_times(radii, far), min_samples=1, min_holes=1, **common)
-        )
+        hoods.append(Neighbourhood(_times(radii, far), min_samples=1, min_holes=1, **common))
     return hoods
 
 

@@ -9,7 +9,7 @@ import pandas as pd
 
 from sms_resource.loaders.tables import LoadedData
 from sms_resource.units import element_column
-from sms_resource.workflow.stage import Context
+from sms_resource.workflow.stage import Context, StageStop
 from sms_resource.workflow.state import DensityState, EvidenceState
 
 
@@ -34,15 +34,29 @@ def composite_options(config: Any) -> dict[str, Any]:
         "short_rest": choice.short_rest,
         "weighting": choice.weighting,
         "lost_core": choice.lost_core,
-        "background": {element_column(name): value for name, value in choice.background.items()},
+        "background": background_grades(choice.background),
+        "neighbour_recovery_pct": choice.neighbour_recovery_pct,
+        "neighbour_distance_m": choice.neighbour_distance_m,
         "least_recovery_pct": choice.least_recovery_pct,
     }
+
+
+def background_grades(given: dict[str, Any]) -> dict[str, Any] | None:
+    """Background grades by column, or by domain and column."""
+    made: dict[str, Any] = {}
+    for name, value in given.items():
+        if isinstance(value, dict):
+            made[name] = {element_column(element): grade for element, grade in value.items()}
+        else:
+            made[element_column(name)] = value
+    return made or None
 
 
 def composite(context: Context) -> EvidenceState:
     """Position the holes, join assays to runs and logs, make composites, and describe the evidence."""
     from sms_resource.samples import desurvey, domains, position, recovery
     from sms_resource.samples.composites import composite as make_composites
+    from sms_resource.samples.surface import surface_use
 
     data: LoadedData = context.done["load"]
     config = context.config
@@ -77,12 +91,17 @@ def composite(context: Context) -> EvidenceState:
     )
     add_findings(context, made.findings)
     inside = made.frame[made.frame["domain"].isin(config.domains.sulphide)]
-    if not len(inside) or not inside[metal_columns(config)].notna().any(axis=None):
+    empty = not len(inside) or not inside[metal_columns(config)].notna().any(axis=None)
+    if empty and not made.findings.has_errors:
         context.findings.error(
             "no-composites", "no sample lies in a domain of the body",
             "Check domains.codes and domains.sulphide against the logged codes.", file=context.study.path.name,
         )  # fmt: skip
+    if empty:
+        raise StageStop
     recovered, found = recovery.recovery_summary(data.drill.runs, intervals)
+    add_findings(context, found)
+    used, found = surface_use(surface, config.surface_samples.use)
     add_findings(context, found)
     laboratory, tables = describe(context, assays, surface, intervals, match.collars, made, paths)
     context.detail = f"{len(inside)} composites in sulphide of {len(made.frame)}"
@@ -91,7 +110,7 @@ def composite(context: Context) -> EvidenceState:
         paths=paths,
         domain_intervals=intervals,
         assays=assays,
-        composites=made.frame,
+        composites=with_cap(context, made.frame, surface, elements),
         sticks=recovery.sticks(assays, data.drill.runs, intervals, paths, elements),
         surface=surface,
         laboratory=laboratory,
@@ -107,8 +126,29 @@ def composite(context: Context) -> EvidenceState:
             "collar_shift_m": float(match.shift_m),
             "assumed_vertical": list(paths.assumed_vertical),
             "handheld_used": any(method != "laboratory" for method in config.assays.methods),
+            "surface_use": used,
         },
     )
+
+
+def with_cap(
+    context: Context, composites: pd.DataFrame, surface: pd.DataFrame, elements: list[str]
+) -> pd.DataFrame:
+    """Composites, with surface samples as the samples of a thin cap where the study lets them in."""
+    from sms_resource.samples.surface import cap_samples
+
+    choice = context.config.surface_samples
+    if choice.use != "cap":
+        return composites
+    cap, found = cap_samples(
+        surface,
+        elements,
+        thickness_m=choice.cap_thickness_m,
+        types=choice.cap_types,
+        domain=choice.cap_domain,
+    )
+    add_findings(context, found)
+    return pd.concat([composites, cap], ignore_index=True)
 
 
 def add_findings(context: Context, *found: Any) -> None:
@@ -161,8 +201,22 @@ def describe(
     metals, elements = metal_columns(config), all_columns(config)
     sulphide = config.domains.sulphide
     inside = made.frame[made.frame["domain"].isin(sulphide)]
-    laboratory = quality.laboratory_quality(data.laboratory, assays, elements=tuple(config.metals.estimate))
-    bias = floor.surface_bias(surface, made.frame, metals, config.study.seed, domains=sulphide)
+    laboratory = quality.laboratory_quality(
+        data.laboratory,
+        assays,
+        elements=tuple(config.metals.estimate),
+        blank_limits=config.laboratory.blank_limits,
+        family_error=config.laboratory.family_error,
+        confidence=config.laboratory.confidence,
+    )
+    bias = floor.surface_bias(
+        surface,
+        made.frame,
+        metals,
+        config.study.seed,
+        domains=sulphide,
+        distance_m=config.surface_samples.compare_within_m,
+    )
     pairs = twins.twin_report(collars, inside, config.checks.twin_distance_m, metals=metals)
     logs = lognormal.lognormal_table(inside, metals)
     add_findings(context, laboratory.findings, floor.surface_findings(bias), pairs.findings)
@@ -182,7 +236,7 @@ def describe(
         "lognormal": logs,
         "deleterious": deleterious,
         "associations": associations.metal_associations(inside, elements, by_domain=True),
-        "tracers": associations.tracer_ratios(inside),
+        "tracers": associations.tracer_ratios(inside, thresholds=dict(config.associations.tracer_thresholds)),
         "contact_analysis": profile,
         "contact_verdicts": contact_verdicts,
         "statistics": _statistics(inside, metals),
@@ -235,6 +289,7 @@ def density(context: Context) -> DensityState:
     """Dry and wet density of each domain, with its low and high."""
     from sms_resource.samples import density as room
     from sms_resource.samples.density_model import fit_density
+    from sms_resource.samples.mineralogy import NormSettings
 
     data: LoadedData = context.done["load"]
     evidence: EvidenceState = context.done["composite"]
@@ -245,6 +300,8 @@ def density(context: Context) -> DensityState:
         evidence.assays,
         evidence.domain_intervals,
         salinity_gkg=choice.salinity_gkg,
+        pore_water_tpm3=choice.pore_water_tpm3,
+        dry_contains_salt=choice.dry_contains_salt,
         porosity=dict(choice.porosity_fraction) or None,
     )
     model = fit_density(
@@ -256,6 +313,10 @@ def density(context: Context) -> DensityState:
         porosity=dict(choice.porosity_fraction) or None,
         composites=evidence.composites[evidence.composites["domain"].isin(config.domains.sulphide)],
         salinity_gkg=choice.salinity_gkg,
+        pore_water_tpm3=choice.pore_water_tpm3,
+        predictors=[element_column(name) for name in choice.predictors],
+        confidence=choice.confidence,
+        norm_settings=NormSettings(copper_mineral=choice.copper_mineral, rest=choice.rest_mineral),
         least_count=choice.least_count,
         factor=choice.factor,
     )

@@ -7,7 +7,7 @@ from typing import Any
 import numpy as np
 
 from sms_resource.loaders.tables import LoadedData
-from sms_resource.workflow.stage import Context
+from sms_resource.workflow.stage import Context, StageStop
 from sms_resource.workflow.state import BlockState, BodyState, EvidenceState
 
 
@@ -90,7 +90,20 @@ def blocks(context: Context) -> BlockState:
     grid, proposal = propose_grid(
         state.body, collars, size=choice.size_m, azimuth=choice.azimuth_deg, origin=choice.origin_m
     )
-    model = fill_blocks(state.body, grid, domains=state.domains, single_domain=config.domains.sulphide[0])
+    try:
+        model = fill_blocks(state.body, grid, domains=state.domains, single_domain=config.domains.sulphide[0])
+    except ValueError as error:
+        context.findings.error("blocks-too-many", f"the {error}", "Choose larger blocks in blocks.size_m.",
+                               file=context.study.path.name, column="blocks.size_m")  # fmt: skip
+        raise StageStop from None
+    context.findings.extend(model.findings)
+    if not len(model.frame):
+        context.findings.error(
+            "blocks-empty", "no block touches the body",
+            "Check blocks.origin_m against the outline, or leave it out: a grid is proposed then.",
+            file=context.study.path.name, column="blocks.origin_m",
+        )  # fmt: skip
+        raise StageStop
     frame = VerticalFrame(choice.vertical_frame, state.body.top, state.body.base)
     context.detail = f"{len(model.frame):,} blocks of {' x '.join(f'{size:g}' for size in grid.size)} m"
     return BlockState(model=model, proposal=proposal, frame=frame, seafloor=state.body.top)

@@ -10,7 +10,7 @@ import pandas as pd
 from sms_resource.units import element_column
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.screening import kept, screened
-from sms_resource.workflow.stage import Context
+from sms_resource.workflow.stage import Context, StageStop
 from sms_resource.workflow.state import (
     BlockState,
     ClassState,
@@ -53,6 +53,13 @@ def classify(context: Context) -> ClassState:
     frame, waterfall = screened(context, frame, metals)
     frame, value_tables, value_facts = valued(context, frame)
     variable, at = cutoff_column(config), config.cutoff.at
+    if variable not in frame or not frame[variable].notna().any():
+        if not context.findings.has_errors:
+            context.findings.error(
+                "cutoff-unknown", f"no block has a {config.cutoff.variable} to cut on",
+                "Fill [value.metals], or cut on a metal.", file=context.study.path.name, column="cutoff.variable",
+            )  # fmt: skip
+        raise StageStop
     left = kept(frame)
     steps = sorted({0.0, at, *config.cutoff.steps})
     tonnage = grade_tonnage(

@@ -128,7 +128,6 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
     weights = variograms.samples.set_index("composite_id")["declustering_weight"]
     composites = evidence.composites[evidence.composites["domain"].isin(config.domains.sulphide)]
     composites = composites.assign(weight=composites["composite_id"].map(weights))
-    used = {"none": "", "outline": "Surface samples supported the outline; they did not enter the grades."}
     return Evidence(
         collars=collars,
         collar_shift_m=evidence.facts["collar_shift_m"],
@@ -138,7 +137,7 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
         composites=composites,
         composite_audit=tables["composite_audit"],
         surface=evidence.surface,
-        surface_use=used[config.surface_samples.use],
+        surface_use="" if config.surface_samples.use == "none" else evidence.facts["surface_use"],
         dredges=data.dredges,
         surface_bias=tables["surface_bias"],
         recovery_bias=tables["recovery_bias"],
@@ -280,9 +279,7 @@ def _means(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
                 "difference_pct": 100.0 * (block / declustered - 1.0) if declustered else np.nan,
             }  # fmt: skip
             if domain == "all":
-                every = pd.concat(
-                    [done["composite"].assays[metal], surface.get(metal)]
-                )
+                every = pd.concat([done["composite"].assays[metal], surface.get(metal)])
                 row["plain_mean_with_surface"] = every.mean()
             rows.append(row)
     return pd.DataFrame(rows)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+import logging
 import time
 from collections.abc import Callable
 from dataclasses import dataclass, field
@@ -23,6 +24,10 @@ class Progress(Protocol):
 
     def finished(self, name: str, seconds: float, detail: str, from_cache: bool) -> None:
         """A stage has ended."""
+
+
+class StageStop(Exception):
+    """A stage cannot go on; an error among its findings says why."""
 
 
 class Silent:
@@ -174,6 +179,23 @@ def stage_key(stage: Stage, view: ConfigView, keys: dict[str, str], files: dict[
     return hashlib.sha256(json.dumps(content, sort_keys=True).encode()).hexdigest()
 
 
+def _worked(stage: Stage, context: Context) -> Any:
+    """Output of a stage; None where it stopped with an error, or a room refused a value that it was given."""
+    try:
+        return stage.work(context)
+    except StageStop:
+        return None
+    except ValueError as error:
+        # Rooms check what they are given and name the argument; the study is where it comes from.
+        logging.getLogger(__name__).debug("stage %s refused", stage.name, exc_info=True)
+        context.findings.error(
+            "stage-refused", f"{stage.label} stopped: {error}",
+            "Change that value in the study. If nothing there explains it, it is a fault of this tool.",
+            file=context.study.path.name,
+        )  # fmt: skip
+        return None
+
+
 def run_stages(
     stages: tuple[Stage, ...],
     study: Study,
@@ -220,7 +242,7 @@ def run_stages(
         else:
             findings = Findings()
             context = Context(view, outcome.done, findings, study, threads)
-            output = stage.work(context)
+            output = _worked(stage, context)
             found, detail = tuple(findings), context.detail
             if store is not None and not findings.has_errors:
                 store.put(key, (output, found, detail))
@@ -229,6 +251,6 @@ def run_stages(
         outcome.findings.extend(found)
         outcome.records.append(StageRecord(stage.name, seconds, detail, kept is not None, key, found))
         progress.finished(stage.name, seconds, detail, kept is not None)
-        if not keep_on and any(item.severity == "error" for item in found):
+        if output is None or (not keep_on and any(item.severity == "error" for item in found)):
             break
     return outcome

@@ -12,7 +12,17 @@ CHECK = Stage("check", "Checking the data", ("study", "checks", "metals", "seafl
 COMPOSITE = Stage(
     "composite",
     "Joining samples",
-    ("study", "assays", "position", "seafloor", "checks", *_SAMPLES),
+    (
+        "study",
+        "assays",
+        "position",
+        "seafloor",
+        "checks",
+        "surface_samples",
+        "laboratory",
+        "associations",
+        *_SAMPLES,
+    ),
     ("load", "check"),
     evidence.composite,
 )
