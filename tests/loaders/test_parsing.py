@@ -160,7 +160,7 @@ ANY_CELL = st.one_of(st.text(max_size=12), st.floats(), st.integers(), st.boolea
 
 
 @given(st.lists(ANY_CELL, max_size=6), st.sampled_from([".", ","]), st.booleans())
-@settings(max_examples=300)
+@settings(max_examples=300, deadline=None, derandomize=True)
 def test_any_cell_is_a_number_a_limit_a_blank_or_a_problem(
     cells: list[object], decimal: str, limits: bool
 ) -> None:
