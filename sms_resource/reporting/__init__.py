@@ -15,7 +15,8 @@ from sms_resource.reporting.data import (
     ValueEvidence,
     VariogramRecord,
 )
-from sms_resource.reporting.report import write_report
+from sms_resource.reporting.pack import write_pack
+from sms_resource.reporting.report import Report, make_report, write_report
 
 __all__ = [
     "BodyEvidence",
@@ -23,10 +24,13 @@ __all__ = [
     "Estimation",
     "Evidence",
     "LaboratoryEvidence",
+    "Report",
     "ReportData",
     "RunRecord",
     "Subject",
     "ValueEvidence",
     "VariogramRecord",
+    "make_report",
+    "write_pack",
     "write_report",
 ]

@@ -36,20 +36,32 @@ def _left(what: str) -> Callable[[ReportData], Answer]:
     return lambda data: (PERSON, f"Needed: {what}")
 
 
+def _drilled(answer: Callable[[ReportData], Answer]) -> Callable[[ReportData], Answer]:
+    """A line on holes: not applicable where there are none."""
+
+    def asked(data: ReportData) -> Answer:
+        collars = data.evidence.collars
+        if collars is None or not len(collars):
+            return "not applicable", "The study holds no drill holes."
+        return answer(data)
+
+    return asked
+
+
 SECTIONS: tuple[tuple[str, tuple[tuple[str, Callable[[ReportData], Answer]], ...]], ...] = (
     (
         "Sampling techniques and data",
         (
             ("Sampling techniques", checklist_samples.sampling),
-            ("Drilling techniques", _left("rig, core diameter, barrel, fluid, and how the rig stands.")),
-            ("Drill sample recovery", checklist_samples.recovery),
+            ("Drilling techniques", _drilled(_left("rig, core diameter, barrel, fluid, and how the rig stands."))),
+            ("Drill sample recovery", _drilled(checklist_samples.recovery)),
             ("Logging", checklist_samples.logging),
             ("Sub-sampling and sample preparation", checklist_samples.preparation),
             ("Quality of assay data and laboratory tests", checklist_samples.quality),
             ("Verification of sampling and assaying", checklist_samples.verification),
             ("Location of data points", checklist_samples.location),
             ("Data spacing and distribution", checklist_samples.spacing),
-            ("Orientation of data in relation to geological structure", checklist_samples.orientation),
+            ("Orientation of data in relation to geological structure", _drilled(checklist_samples.orientation)),
             ("Sample security", _left("chain of custody from the seafloor to the laboratory.")),
             ("Audits or reviews", _left("audits or reviews of the samples, or that there were none.")),
         ),
@@ -60,9 +72,9 @@ SECTIONS: tuple[tuple[str, tuple[tuple[str, Callable[[ReportData], Answer]], ...
             ("Tenure and status", checklist_samples.tenure),
             ("Exploration by other parties", _left("acknowledgement and appraisal of work by others.")),
             ("Geology", _left("deposit type, setting and style of mineralisation.")),
-            ("Drill hole information", checklist_samples.holes),
+            ("Drill hole information", _drilled(checklist_samples.holes)),
             ("Data aggregation methods", checklist_samples.aggregation),
-            ("Relationship between widths and intercept lengths", checklist_samples.widths),
+            ("Relationship between widths and intercept lengths", _drilled(checklist_samples.widths)),
             ("Diagrams", checklist_samples.diagrams),
             ("Balanced reporting", checklist_samples.balance),
             ("Other substantive exploration data", checklist_samples.other),

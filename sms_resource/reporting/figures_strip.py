@@ -63,7 +63,8 @@ def strip_logs(data: ReportData, holes_a_page: int = HOLES_A_PAGE) -> list[Drawi
         else {}
     )
     drawings = []
-    pages = [holes[start : start + holes_a_page] for start in range(0, len(holes), holes_a_page)]
+    size = -(-len(holes) // -(-len(holes) // holes_a_page))  # pages of equal length
+    pages = [holes[start : start + size] for start in range(0, len(holes), size)]
     for number, page in enumerate(pages, 1):
         rows = 2 if len(page) > holes_a_page // 2 else 1
         per_row = -(-len(page) // rows)

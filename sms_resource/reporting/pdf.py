@@ -49,7 +49,7 @@ def column_shares(table: Table) -> list[float]:
     shares = []
     for number, name in enumerate(table.columns):
         cells = [row[number] for row in table.rows]
-        word = max((len(piece) for text in (name, *cells) for piece in re.split(r"\s", text)), default=1)
+        word = max((len(piece) for text in (name, *cells) for piece in text.split(" ")), default=1)
         longest = max((len(text) for text in cells), default=1)
         shares.append(float(min(max(min(word, 15), 0.45 * len(name), min(longest, 48)) + 1.5, 50.0)))
     return shares

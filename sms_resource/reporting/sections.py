@@ -36,6 +36,7 @@ TITLES: dict[str, str] = {
     "cautions": "Cautions",
     "findings": "Findings",
     "truth": "The estimate against the truth",
+    "method": "Method statement",
     "sources": "Sources",
     "manifest": "Manifest",
 }
@@ -59,6 +60,7 @@ def build_document(data: ReportData, drawings: Sequence[Drawing], absent: Sequen
         "ledger": sections_record.ledger,
         "findings": sections_record.findings,
         "truth": sections_record.truth,
+        "method": sections_record.method,
         "sources": sections_record.sources,
         "manifest": sections_record.manifest,
     }

@@ -19,9 +19,11 @@ from sms_resource.reporting.elements import (
     plain_words,
     with_table,
 )
+from sms_resource.reporting.method import method_statement
 from sms_resource.reporting.rounding import NO_VALUE
 from sms_resource.reporting.words import SOURCES
 
+MOST_TEXT = 300
 LEDGER_COLUMNS = ("key", "value", "origin", "reason", "by", "alternatives", "effect")
 LEDGER_LABELS = {
     "key": "Decision",
@@ -55,10 +57,20 @@ def plain_value(value: Any) -> str:
         except ValueError:
             return value
     if isinstance(value, dict):
-        return ", ".join(f"{key}: {plain_value(item)}" for key, item in value.items()) or "none"
+        said = ", ".join(f"{key} {text}" for key, text in _set_parts("", value))
+        return (
+            said if len(said) <= MOST_TEXT else f"{said[:MOST_TEXT]} … (in full in the data files)"
+        ) or "none"
     if isinstance(value, (list, tuple)):
         return ", ".join(plain_value(item) for item in value) or "none"
     return "not set" if value is None else cell_text(value, 6)
+
+
+def _set_parts(name: str, value: Any) -> list[tuple[str, str]]:
+    """Dotted names and texts of what is set inside a nested value."""
+    if isinstance(value, dict):
+        return [part for key, item in value.items() for part in _set_parts(f"{name}.{key}".strip("."), item)]
+    return [] if value is None else [(name, plain_value(value))]
 
 
 def decisions(data: ReportData) -> list[Block]:
@@ -129,6 +141,11 @@ def truth(data: ReportData) -> list[Block]:
     if truth.get("notes"):
         blocks.append(Bullets(tuple(str(n) for n in truth["notes"])))
     return blocks
+
+
+def method(data: ReportData) -> list[Block]:
+    """The method statement, a paragraph a part."""
+    return [Paragraph(f"{title}. {text}") for title, text in method_statement(data)]
 
 
 def sources(data: ReportData) -> list[Block]:

@@ -82,6 +82,7 @@ SECTION_INTRODUCTIONS: dict[str, str] = {
     "truth": (
         "The deposit of this study is invented and its truth is known: the estimate is put against it here."
     ),
+    "method": "Plain words, true of this run, to paste into a technical report.",
     "sources": (
         "Methods and standards that the report leans on. Details recalled from memory are marked so in the"
         " documentation."

@@ -162,6 +162,7 @@ def full_report_data(*, cells: int = 4, name: str = "Example Mound", note: str =
                         "northing": ny[n],
                         "elevation": z0 - a - 0.5,
                         **grades,
+                        "mo_ppm": 40.0 + 3.0 * a,
                         "weight": rng.uniform(0.5, 1.5),
                     }
                 )
@@ -279,6 +280,19 @@ def full_report_data(*, cells: int = 4, name: str = "Example Mound", note: str =
         ),
         declustering_scan=pd.DataFrame(
             {"cell_size_m": [10.0, 20.0, 30.0], "metal": "cu_pct", "mean": [3.1, 2.9, 2.95]}
+        ),
+        contact_analysis=pd.DataFrame(
+            [
+                {
+                    "contact": "cap | massive",
+                    "metal": m,
+                    "distance_m": x,
+                    "n": 20,
+                    "mean": MEANS[m] * (1.3 - 0.1 * x),
+                }
+                for m in METALS
+                for x in (-2.5, -1.5, -0.5, 0.5, 1.5, 2.5)
+            ]
         ),
         statistics=pd.DataFrame(
             {
