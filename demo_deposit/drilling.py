@@ -128,7 +128,8 @@ def minerals(
     pb = zn * 0.045 * rng.lognormal(0, 0.4)
     held = cu / 0.346 + zn / 0.671 + pb / 0.866 + 100 * anhydrite
     barite = {CAP: 9.0, MASSIVE: 2.5, STOCKWORK: 0.6, WASTE: 0.1}[domain] * rng.lognormal(-0.1, 0.5)
-    rest = max(100 - held - barite, 2.0)
+    barite = min(barite, 0.4 * max(100 - held, 0.0))
+    rest = max(100 - held - barite, 0.0)
     silica, pyrite = {CAP: (0.20, 0.62), MASSIVE: (0.14, 0.78), STOCKWORK: (0.58, 0.26), WASTE: (0.55, 0.03)}[
         domain
     ]
@@ -241,7 +242,7 @@ def core(campaign: Campaign, rng: np.random.Generator, name: str, hole: pd.DataF
                 continue
             cuts = np.round(np.linspace(low, low + reach, max(1, round(reach / 0.75)) + 1), 2)
             for one, two in itertools.pairwise(cuts):
-                method = "handheld_xrf" if handheld and index == len(edges) - 2 else "laboratory"
+                method = "handheld_xrf" if handheld and 0.35 < index / len(edges) < 0.55 else "laboratory"
                 sample(campaign, rng, name, one, two, domain, grades, method)
         if over:
             recovered *= 1.04

@@ -7,8 +7,10 @@ Local coordinates: u along the mound's long axis, v across it, d = depth below t
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
+from scipy.fft import irfftn, rfftn
 
 CRS = "EPSG:32702"
 EAST0, NORTH0 = 512000.0, 8200000.0  # south-west corner of the survey
@@ -33,19 +35,23 @@ CELL, SLICE = 2.0, 0.5  # lattice of the random fields: m in plan, m in depth
 FIELD_SHAPE = (WIDTH // 2 + 14, HEIGHT // 2 + 12, 100)
 
 
+@lru_cache(maxsize=4)
+def amplitude(shape: tuple[int, ...], cells: tuple[float, ...]) -> np.ndarray:
+    """Square root of the spectrum of an exponential covariance on the torus, half of it (as of a real field)."""
+    distance2 = np.zeros(shape)
+    for axis, (count, reach) in enumerate(zip(shape, cells)):
+        lag = np.minimum(np.arange(count), count - np.arange(count)) / reach
+        distance2 = distance2 + (lag**2).reshape([-1 if a == axis else 1 for a in range(len(shape))])
+    return np.sqrt(rfftn(np.exp(-3.0 * np.sqrt(distance2))).real.clip(min=0.0))
+
+
 def gaussian_field(rng: np.random.Generator, shape: tuple[int, ...], cells: tuple[float, ...]) -> np.ndarray:
     """Periodic Gaussian field of mean 0 and variance 1 with exponential covariance.
 
     ``cells`` is the practical range along each axis, in cells. The spectrum of the covariance on the torus is
     taken by FFT and its small negative part dropped (Dietrich & Newsam 1997, doi:10.1137/S1064827592240555).
     """
-    distance2 = np.zeros(shape)
-    for axis, (count, reach) in enumerate(zip(shape, cells)):
-        lag = np.minimum(np.arange(count), count - np.arange(count)) / reach
-        distance2 = distance2 + (lag**2).reshape([-1 if a == axis else 1 for a in range(len(shape))])
-    spectrum = np.fft.fftn(np.exp(-3.0 * np.sqrt(distance2))).real.clip(min=0.0)
-    noise = np.fft.fftn(rng.standard_normal(shape))
-    field = np.fft.ifftn(noise * np.sqrt(spectrum)).real
+    field = irfftn(rfftn(rng.standard_normal(shape)) * amplitude(shape, cells), s=shape)
     return (field - field.mean()) / field.std()
 
 
