@@ -45,6 +45,7 @@ _HOME: dict[str, str] = {
     "VariogramSettings": "variogram_settings",
     "infer_variogram": "inference",
     "VariogramInference": "inference",
+    "search_ranges": "inference",
     "NormalScores": "transforms",
     "back_transform_model": "back_transform",
     "swath": "swaths",

@@ -14,6 +14,7 @@ from sms_resource.geostatistics.fit import FitStart, fit_variogram
 from sms_resource.geostatistics.fit_settings import FitSettings
 from sms_resource.geostatistics.model import VariogramModel
 from sms_resource.geostatistics.transforms import RawCorrelation
+from sms_resource.geostatistics.variogram_settings import ZONAL_RANGE_M
 
 if TYPE_CHECKING:
     from sms_resource.geostatistics.evidence import Evidence
@@ -59,7 +60,7 @@ def back_transform_model(
         raise ValueError(f"correlation is needed to turn back a model of {measure}")
     curves = []
     for axis in range(3):
-        reach = 1.3 * max(structure.ranges[axis] for structure in model.structures)
+        reach = 1.3 * max(r for r in (s.ranges[axis] for s in model.structures) if r < ZONAL_RANGE_M)
         distance = reach * (np.arange(POINTS) + 1.0) / POINTS
         separations = distance[:, None] * model.axes[axis]
         rho = 1.0 - model.variogram(separations) / model.total_sill
@@ -70,20 +71,25 @@ def back_transform_model(
     sills = [structure.sill for structure in model.structures]
     if not sum(sills) > 0.0:
         return model.scaled(total_sill / model.total_sill)
-    limits = [
-        (
-            0.2 * min(structure.ranges[axis] for structure in model.structures),
-            1.5 * max(structure.ranges[axis] for structure in model.structures),
-        )
-        for axis in range(3)
-    ]
+    limits = []
+    for axis in range(3):
+        own = [r for r in (s.ranges[axis] for s in model.structures) if r < ZONAL_RANGE_M]
+        limits.append((0.2 * min(own), 1.5 * max(own)))
     level = all(math.isclose(s.ranges[0], s.ranges[1], rel_tol=1e-9) for s in model.structures)
+    zonal = [s.ranges[0] >= ZONAL_RANGE_M for s in model.structures]
+    fixed = tuple((ZONAL_RANGE_M, ZONAL_RANGE_M, None) if z else (None, None, None) for z in zonal)
+    free = [
+        structure.ranges[axis]
+        for structure, z in zip(model.structures, zonal)
+        for axis in ((2,) if z else (0, 2) if level else (0, 1, 2))
+    ]
     fit = fit_variogram(
         curves,
         FitSettings(
             shapes=tuple(structure.shape for structure in model.structures),
             nugget=min(max(nugget, 0.0), total_sill),
             total_sill=total_sill,
+            ranges=fixed if any(zonal) else None,
             links=(0, 0, 2) if level else (0, 1, 2),
             azimuth=model.azimuth,
             plunge=model.plunge,
@@ -91,7 +97,7 @@ def back_transform_model(
             weighting="equal",
             range_limits=(limits[0], limits[1], limits[2]),
         ),
-        start=FitStart(_start(model, level), np.empty(0)),
+        start=FitStart(np.log(free), np.empty(0)),
     )
     return fit.model
 
@@ -112,11 +118,6 @@ def raw_model(model: VariogramModel, evidence: Evidence, variance: float | None 
     raw = back_transform_model(model, settings.measure, total, evidence.raw_correlation)
     nugget = settings.nugget if settings.nugget_share is None else settings.nugget_share * total
     return with_fixed(raw, nugget, settings.sills, settings.ranges)
-
-
-def _start(model: VariogramModel, level: bool) -> Array:
-    axes = (0, 2) if level else (0, 1, 2)
-    return np.log([structure.ranges[axis] for structure in model.structures for axis in axes])
 
 
 def _curve(distance: Array, separations: Array, gamma: Array) -> ExperimentalVariogram:

@@ -16,6 +16,7 @@ CODES: dict[str, str] = {
     "variogram-not-inferred": "Too few pairs, samples or holes for a variogram: ranges are assumed.",
     "variogram-no-continuity": "The shortest pairs in the plane already stand at the sill: the range is assumed.",
     "variogram-holes-in-line": "All holes lie in one line: the range across it is assumed.",
+    "variogram-zonal": "Part of the variance varies only across the plane of continuity, as with a trend in depth.",
     "variogram-bound-hit": "A fitted parameter of a variogram stands at a limit.",
     "validation-flag": "A check of the estimate lies outside its limit.",
 }

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any
@@ -78,6 +79,7 @@ class Evidence:
     variograms: tuple[ExperimentalVariogram, ...]
     prepared: PreparedSamples
     sums: Array
+    hole_sums: Array
     settings: VariogramSettings
 
     @cached_property
@@ -91,10 +93,35 @@ class Evidence:
         """Experimental variogram of a role; None where there is none."""
         return self.variograms[self.roles.index(role)] if role in self.roles else None
 
-    def without_hole(self, hole_sums: Array) -> tuple[ExperimentalVariogram, ...]:
-        """Experimental variograms without the pairs of one hole, from the sums that the hole has a part in."""
+    def usable(self, role: str) -> NDArray[np.bool_]:
+        """Which lags of a role are fitted: enough pairs and, in the plane, enough of the holes."""
+        variogram = self.variograms[self.roles.index(role)]
+        chosen = variogram.pairs >= self.settings.min_pairs
+        if role != "down_hole" and variogram.holes is not None:
+            chosen &= variogram.holes >= self.settings.min_hole_share * self.hole_count
+        return chosen
+
+    def enough(self, role: str) -> bool:
+        """Whether a role has the lags that a fit needs."""
+        return role in self.roles and int(self.usable(role).sum()) >= self.settings.min_lags
+
+    def distances(self, role: str) -> Array:
+        """Mean pair distances of the lags of a role that are fitted."""
+        return self.variograms[self.roles.index(role)].distance[self.usable(role)]
+
+    def fitted_lags(self, variograms: Sequence[ExperimentalVariogram]) -> dict[str, ExperimentalVariogram]:
+        """Variograms by role with the lags that are not fitted taken out; for a jackknife without one hole."""
+        return {
+            role: replace(variogram, gamma=np.where(self.usable(role), variogram.gamma, np.nan))
+            for role, variogram in zip(self.roles, variograms)
+        }
+
+    def without_hole(self, hole: int) -> tuple[ExperimentalVariogram, ...]:
+        """Experimental variograms without the pairs of one hole, which are taken off the sums."""
         return tuple(
-            assemble(request, self.sums[row] - hole_sums[row], self.settings.measure, self.hole_axis)
+            assemble(
+                request, self.sums[row] - self.hole_sums[hole, row], self.settings.measure, self.hole_axis
+            )
             for row, request in enumerate(self.requests)
         )
 
@@ -104,11 +131,6 @@ class Evidence:
         share = self.weights / self.weights.sum()
         draw = generator.choice(len(share), size=(MOST_PAIR_SEPARATIONS, 2), p=share)
         return self.coordinates[draw[:, 0]] - self.coordinates[draw[:, 1]]
-
-
-def enough_lags(variogram: ExperimentalVariogram | None, settings: VariogramSettings) -> bool:
-    """Whether an experimental variogram has the lags and pairs that a fit needs."""
-    return variogram is not None and int((variogram.pairs >= settings.min_pairs).sum()) >= settings.min_lags
 
 
 def _hole_codes(names: NDArray[Any]) -> NDArray[np.intp]:
@@ -234,17 +256,20 @@ def gather_evidence(
     t = transformed(z, settings.measure, w)
     prepared = prepare(xyz, t, names, w, centre=settings.measure != "pairwise_relative")
     variograms: tuple[ExperimentalVariogram, ...] = ()
-    if not requests:
-        sums = np.empty((0, 0, 0))
-    elif settings.estimator == "matheron":
+    sums, by_hole = np.empty((0, 0, 0)), np.empty((0, 0, 0, 0))
+    if requests:
         sums = pair_sums(prepared, requests, settings.measure)
+        by_hole = pair_sums(prepared, requests, settings.measure, by_hole=True)
         variograms = tuple(
             assemble(request, sums[row], settings.measure, axis) for row, request in enumerate(requests)
         )
-    else:
-        sums = np.empty((0, 0, 0))
-        variograms = experimental_variograms(
-            xyz, z, requests, hole_ids=names, measure=settings.measure, estimator=settings.estimator
+        if settings.estimator != "matheron":
+            variograms = experimental_variograms(
+                xyz, z, requests, hole_ids=names, measure=settings.measure, estimator=settings.estimator
+            )
+        counts = (by_hole[..., 0] > 0.0).sum(axis=0)
+        variograms = tuple(
+            replace(item, holes=counts[row, : len(item.pairs)]) for row, item in enumerate(variograms)
         )
     relative = settings.measure in ("correlogram", "pairwise_relative")
     return Evidence(
@@ -266,5 +291,6 @@ def gather_evidence(
         variograms=variograms,
         prepared=prepared,
         sums=sums,
+        hole_sums=by_hole,
         settings=settings,
     )

@@ -54,6 +54,8 @@ class ExperimentalVariogram:
         Number of pairs.
     separations : (k, 3) float
         Mean separation of the pairs as east, north, up in m, in the quadrant of the axes of the direction.
+    holes : (k,) int or None
+        Number of holes that have a part in the pairs, where it was counted.
     """
 
     label: str
@@ -68,6 +70,7 @@ class ExperimentalVariogram:
     pairs: NDArray[np.int64]
     separations: Array
     estimator: str = "matheron"
+    holes: NDArray[np.int64] | None = None
 
     def to_frame(self) -> pd.DataFrame:
         """One row a lag: label, kind, azimuth, plunge, measure, lag_from_m, lag_to_m, distance_m, gamma, pairs."""

@@ -18,18 +18,22 @@ from sms_resource.geostatistics.inference_plan import (
     assumed_model,
     fit_plan,
     fixed_ranges,
+    is_zonal,
     make_plan,
     shortest_in_plane,
+    with_zonal,
 )
 from sms_resource.geostatistics.inference_words import (
     NUGGET_WORDS,
     alternatives,
     assumptions,
     inference_statement,
+    nugget_words,
     report_findings,
+    zonal_share,
 )
 from sms_resource.geostatistics.model import VariogramModel
-from sms_resource.geostatistics.variogram_settings import VariogramSettings
+from sms_resource.geostatistics.variogram_settings import ZONAL_RANGE_M, VariogramSettings
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -83,6 +87,11 @@ class VariogramInference:
     vertical_from: str = "data"
     findings: Findings = field(default_factory=Findings, compare=False)
 
+    @property
+    def ranges(self) -> tuple[float, float, float]:
+        """Greatest ranges (major, semi-major, minor) in m, for a search; see :func:`search_ranges`."""
+        return search_ranges(self.model)
+
     def to_record(self) -> dict[str, Any]:
         """A dictionary ready for JSON."""
         return {
@@ -103,6 +112,17 @@ class VariogramInference:
             "experimental": [_records(item.to_frame()) for item in self.experimental],
             "findings": self.findings.to_records(),
         }
+
+
+def search_ranges(model: VariogramModel) -> tuple[float, float, float]:
+    """Greatest ranges of a model along its axes in m; a zonal structure counts along the minor axis alone."""
+    bounded = [s.ranges for s in model.structures if s.ranges[0] < ZONAL_RANGE_M] or [
+        s.ranges for s in model.structures
+    ]
+    if not bounded:
+        return 0.0, 0.0, 0.0
+    minor = max(s.ranges[2] for s in model.structures)
+    return max(r[0] for r in bounded), max(r[1] for r in bounded), minor
 
 
 def _records(frame: pd.DataFrame) -> list[dict[str, Any]]:
@@ -161,14 +181,19 @@ def infer_variogram(
         return _nothing(settings, text, len(evidence.values), evidence.hole_count)
     settings = evidence.settings  # with the measure that "auto" led to
     plan = make_plan(evidence)
+    plain = evidence
+    if is_zonal(plan, evidence):
+        evidence = with_zonal(evidence)
     fit = fit_plan(plan, evidence, evidence.variograms, evidence.variance_of_measure)
     shortest = shortest_in_plane(evidence)
     free_major = any(row[0] is None for row in fixed_ranges(settings))
-    if plan.plane and free_major and max(s.ranges[0] for s in fit.model.structures) <= shortest:
-        plan = replace(plan, plane=False, greatest_in_plane_m=shortest)
+    if plan.plane and free_major and search_ranges(fit.model)[0] <= shortest:
+        plan = replace(plan, plane=False, short_holes=False, greatest_in_plane_m=shortest)
         if plan.nugget_from == "joint":
             plan = replace(plan, nugget_from="assumed")
+        evidence = plain
         fit = fit_plan(plan, evidence, evidence.variograms, evidence.variance_of_measure)
+    settings = evidence.settings
     model = raw_model(fit.model, evidence)
     intervals = None
     if (
@@ -180,14 +205,14 @@ def infer_variogram(
 
         intervals = jackknife_intervals(evidence, plan, fit, model)
     assumed = assumptions(plan, evidence)
-    statement = inference_statement(plan, evidence)
+    statement = inference_statement(plan, evidence, fit.model)
     low, high = alternatives(model, intervals, plan, settings)
-    report_findings(findings, plan, evidence, fit.bounds_hit, statement)
+    report_findings(findings, plan, evidence, fit.bounds_hit, statement, zonal_share(model))
     return VariogramInference(
         model=model,
         experimental=evidence.variograms,
         fitted_model=fit.model,
-        nugget_from=NUGGET_WORDS[plan.nugget_from],
+        nugget_from=nugget_words(plan),
         assumed=assumed,
         bounds_hit=fit.bounds_hit,
         intervals=intervals,

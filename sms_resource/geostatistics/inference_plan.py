@@ -10,14 +10,15 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from sms_resource.geostatistics.evidence import Evidence, enough_lags
+from sms_resource.geostatistics.evidence import Evidence
 from sms_resource.geostatistics.experimental import ExperimentalVariogram
 from sms_resource.geostatistics.fit import FitStart, VariogramFit, fit_variogram
 from sms_resource.geostatistics.fit_settings import FitSettings
 from sms_resource.geostatistics.model import Structure, VariogramModel
-from sms_resource.geostatistics.variogram_settings import VariogramSettings
+from sms_resource.geostatistics.variogram_settings import ZONAL_RANGE_M, VariogramSettings
 
 Array = NDArray[np.float64]
+ZONAL_SHARE = 0.8
 MOST_NUGGET = 0.95  # share of the total sill that a fitted nugget may take
 Triple = tuple[float | None, float | None, float | None]
 
@@ -30,6 +31,9 @@ class Plan:
     ----------
     upright, plane : bool
         The down-hole variogram, and those in the plane, are fitted.
+    short_holes : bool
+        The down-hole variogram has too few lags to be fitted by itself; those it has are fitted with the plane,
+        at the assumed ratio of the ranges.
     nugget_from : "user" | "down-hole" | "joint" | "assumed"
     greatest_in_plane_m : float
         Where the plane is not fitted because its shortest pairs stand at the sill already: their distance.
@@ -37,6 +41,7 @@ class Plan:
 
     upright: bool
     plane: bool
+    short_holes: bool
     nugget_from: str
     greatest_in_plane_m: float = math.inf
 
@@ -53,18 +58,21 @@ class PlanFit:
 def make_plan(evidence: Evidence) -> Plan:
     """Decide what the data can be asked: lags with enough pairs, enough samples and enough holes."""
     settings = evidence.settings
-    upright = enough_lags(evidence.of("down_hole"), settings)
+    upright = evidence.enough("down_hole")
     plane = (
-        all(enough_lags(evidence.of(role), settings) for role in in_plane(evidence))
-        and bool(in_plane(evidence))
+        bool(in_plane(evidence))
+        and all(evidence.enough(role) for role in in_plane(evidence))
         and len(evidence.values) >= settings.min_composites_horizontal
         and evidence.hole_count >= settings.min_holes_horizontal
+    )
+    short = (
+        plane and not upright and "down_hole" in evidence.roles and bool(evidence.usable("down_hole").any())
     )
     if settings.nugget is not None or settings.nugget_share is not None:
         nugget_from = "user"
     else:
         nugget_from = "down-hole" if upright else "joint" if plane else "assumed"
-    return Plan(upright, plane, nugget_from)
+    return Plan(upright, plane, short, nugget_from)
 
 
 def in_plane(evidence: Evidence) -> tuple[str, ...]:
@@ -73,14 +81,47 @@ def in_plane(evidence: Evidence) -> tuple[str, ...]:
 
 
 def shortest_in_plane(evidence: Evidence) -> float:
-    """Mean distance of the first lag in the plane with enough pairs; infinite where there is none."""
-    firsts: list[float] = []
-    for role in in_plane(evidence):
-        variogram = evidence.of(role)
-        if variogram is not None:
-            distances = variogram.distance[variogram.pairs >= evidence.settings.min_pairs]
-            firsts.extend(distances[:1])
-    return float(min(firsts)) if firsts else math.inf
+    """Mean distance of the first lag in the plane that is fitted; infinite where there is none."""
+    firsts = [float(d) for role in in_plane(evidence) for d in evidence.distances(role)[:1]]
+    return min(firsts, default=math.inf)
+
+
+def is_zonal(plan: Plan, evidence: Evidence) -> bool:
+    """Whether pairs in the plane level out well below the total sill, within the lags that were fitted.
+
+    The plane is fitted alone with the nugget of the holes and a sill of its own: at ZONAL_SHARE of the total sill
+    or less, with a range that the lags reach, the rest varies across the plane only.
+    """
+    settings = evidence.settings
+    allowed = settings.zonal and settings.ranges is None and settings.sills is None
+    if not (allowed and plan.plane and plan.upright and settings.total_sill != "free"):
+        return False
+    roles = evidence.fitted_lags(evidence.variograms)
+    sill = _sill(_total(settings, evidence, evidence.variance_of_measure), evidence.variance_of_measure)
+    nugget, _, _ = _nugget(plan, evidence, roles, sill, None)
+    greatest = max(float(evidence.distances(role).max()) for role in in_plane(evidence))
+    alone = fit_variogram(
+        [roles[role] for role in in_plane(evidence)],
+        FitSettings(
+            shapes=settings.shapes[:1],
+            nugget=min(float(nugget or 0.0), ZONAL_SHARE * sill),
+            azimuth=settings.azimuth,
+            plunge=settings.plunge,
+            tilt=settings.tilt,
+            weighting=settings.weighting,
+            range_limits=((0.3 * shortest_in_plane(evidence), 2.0 * greatest),) * 3,
+        ),
+    ).model
+    return alone.total_sill <= ZONAL_SHARE * sill and alone.structures[0].ranges[0] <= 0.7 * greatest
+
+
+def with_zonal(evidence: Evidence) -> Evidence:
+    """The same evidence with a last structure asked for that varies across the plane alone."""
+    settings = evidence.settings
+    ranges = (*fixed_ranges(settings), (ZONAL_RANGE_M, ZONAL_RANGE_M, None))
+    return replace(
+        evidence, settings=replace(settings, shapes=(*settings.shapes, settings.shapes[0]), ranges=ranges)
+    )
 
 
 def fixed_ranges(settings: VariogramSettings) -> tuple[Triple, ...]:
@@ -108,8 +149,8 @@ def fit_plan(
     """
     settings = evidence.settings
     total = _total(settings, evidence, variance)
-    roles = dict(zip(evidence.roles, variograms))
-    sill = float(total.get("total_sill") or total.get("mean_over_pairs") or variance)
+    roles = evidence.fitted_lags(variograms)
+    sill = _sill(total, variance)
     nugget, hits, first = _nugget(plan, evidence, roles, sill, starts[0])
     if not (plan.upright or plan.plane):
         return PlanFit(assumed_model(settings, sill, float(nugget or 0.0)), (), (None, None))
@@ -121,6 +162,10 @@ def fit_plan(
     fit = fit_variogram(used, _joint_settings(plan, evidence, nugget, total), start=starts[1])
     model = _within_reach(fit.model, plan.greatest_in_plane_m, settings)
     return PlanFit(model, (*hits, *_own_hits(fit, plan)), (first, fit.start))
+
+
+def _sill(total: dict[str, Any], variance: float) -> float:
+    return float(total.get("total_sill") or total.get("mean_over_pairs") or variance)
 
 
 def _total(settings: VariogramSettings, evidence: Evidence, variance: float) -> dict[str, Any]:
@@ -155,15 +200,16 @@ def _nugget(
     if plan.nugget_from == "joint":
         return None, (), None
     variogram = roles["down_hole"]
-    low, high = _upright_limits(variogram, settings)
-    ranges = tuple((row[2],) * 3 for row in fixed_ranges(settings))
+    low, high = _upright_limits(evidence)
+    # a structure that varies across the plane alone is one with the others down the holes
+    own = [row[2] for row in fixed_ranges(settings) if row[0] != ZONAL_RANGE_M]
+    ranges = tuple((minor, minor, minor) for minor in own)
     fit = fit_variogram(
         variogram,
         FitSettings(
-            shapes=settings.shapes,
+            shapes=settings.shapes[: len(ranges)],
             ranges=ranges,
             weighting=settings.weighting,
-            least_pairs=settings.min_pairs,
             range_limits=((low, high),) * 3,
         ),
         start=start,
@@ -175,9 +221,9 @@ def _nugget(
     return min(fit.model.nugget, most), hits, fit.start
 
 
-def _upright_limits(variogram: ExperimentalVariogram, settings: VariogramSettings) -> tuple[float, float]:
+def _upright_limits(evidence: Evidence) -> tuple[float, float]:
     """Least and greatest upright range that a down-hole variogram can tell from a nugget and from a trend."""
-    distance = variogram.distance[variogram.pairs >= settings.min_pairs]
+    distance = evidence.distances("down_hole")
     return 1.5 * float(distance.min()), 3.0 * float(distance.max())
 
 
@@ -192,16 +238,14 @@ def _joint_settings(
         minor_ratio = None
     upright = plane = (1e-6, math.inf)
     if plan.upright:
-        variogram = evidence.of("down_hole")
-        assert variogram is not None
-        upright = _upright_limits(variogram, settings)
+        upright = _upright_limits(evidence)
     if plan.plane:
-        low, high = shortest_in_plane(evidence), 0.0
-        for role in in_plane(evidence):
-            variogram = evidence.of(role)
-            assert variogram is not None
-            high = max(high, float(variogram.distance[variogram.pairs >= settings.min_pairs].max()))
-        plane = ((1.5 if plan.nugget_from == "joint" else 0.3) * low, 2.0 * high)
+        low = shortest_in_plane(evidence)
+        high = max(float(evidence.distances(role).max()) for role in in_plane(evidence))
+        bare = (
+            plan.nugget_from == "joint" and not plan.short_holes
+        )  # nothing else tells nugget from structure
+        plane = ((1.5 if bare else 0.3) * low, 2.0 * high)
     elif minor_ratio is not None:
         plane = (upright[0] * ratio, upright[1] * ratio)
         fixed = tuple(row if row[2] is None or row[0] else (ratio * row[2], row[1], row[2]) for row in fixed)
@@ -218,7 +262,6 @@ def _joint_settings(
         plunge=settings.plunge,
         tilt=settings.tilt,
         weighting=settings.weighting,
-        least_pairs=settings.min_pairs,
         range_limits=(plane, plane, upright),
         **total,
     )

@@ -7,12 +7,12 @@ from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from sms_resource.findings import Findings
-from sms_resource.geostatistics.evidence import Evidence, enough_lags
+from sms_resource.geostatistics.evidence import Evidence
 from sms_resource.geostatistics.experimental import ExperimentalVariogram
 from sms_resource.geostatistics.inference_plan import Plan, fixed_ranges, in_plane
 from sms_resource.geostatistics.model import VariogramModel
 from sms_resource.geostatistics.transforms import weighted_skewness
-from sms_resource.geostatistics.variogram_settings import VariogramSettings
+from sms_resource.geostatistics.variogram_settings import ZONAL_RANGE_M, VariogramSettings
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -23,6 +23,19 @@ NUGGET_WORDS = {
     "joint": "variogram in the plane, extrapolated to zero distance",
     "assumed": "assumed",
 }
+
+
+def nugget_words(plan: Plan) -> str:
+    """Where the nugget comes from, in words."""
+    if plan.nugget_from == "joint" and plan.short_holes:
+        return "short down-hole variogram and variogram in the plane, fitted together"
+    return NUGGET_WORDS[plan.nugget_from]
+
+
+def zonal_share(model: VariogramModel) -> float:
+    """Share of the total sill that varies across the plane alone."""
+    sills = [s.sill for s in model.structures if s.ranges[0] >= ZONAL_RANGE_M]
+    return sum(sills) / model.total_sill
 
 
 def assumptions(plan: Plan, evidence: Evidence) -> tuple[str, ...]:
@@ -58,7 +71,7 @@ def _pairs(variogram: ExperimentalVariogram | None, most: int = 8) -> str:
     return ", ".join(numbers) + (" ..." if len(variogram.pairs) > most else "")
 
 
-def inference_statement(plan: Plan, evidence: Evidence) -> str:
+def inference_statement(plan: Plan, evidence: Evidence, model: VariogramModel) -> str:
     """What was inferred and what was not, with the pairs per lag."""
     settings = evidence.settings
     samples = f"{len(evidence.values)} samples in {evidence.hole_count} holes"
@@ -82,6 +95,13 @@ def inference_statement(plan: Plan, evidence: Evidence) -> str:
     counts = "; ".join(_pairs(evidence.of(role)) for role in in_plane(evidence)) or "none"
     if plan.plane:
         parts.append(f"Variogram in the plane fitted (pairs per lag are {counts}).")
+        if plan.short_holes:
+            parts.append("The few down-hole lags were fitted with it, at the assumed ratio of the ranges.")
+        if zonal_share(model) > 0.0:
+            parts.append(
+                f"Pairs in the plane level out below the total sill: {zonal_share(model):.0%} of it varies only across "
+                "the plane (zonal), as with a trend in depth."
+            )
         if evidence.in_line:
             parts.append(
                 f"The holes lie in one line (azimuth {evidence.line_azimuth:.0f}): the range across it cannot be "
@@ -99,7 +119,7 @@ def inference_statement(plan: Plan, evidence: Evidence) -> str:
         reasons.append(f"{len(evidence.values)} samples ({settings.min_composites_horizontal} are needed)")
     if evidence.hole_count < settings.min_holes_horizontal:
         reasons.append(f"{evidence.hole_count} holes ({settings.min_holes_horizontal} are needed)")
-    if not all(enough_lags(evidence.of(role), settings) for role in in_plane(evidence)):
+    if not all(evidence.enough(role) for role in in_plane(evidence)):
         reasons.append(rule)
     parts.append(
         f"The variogram in the plane cannot be inferred: pairs per lag are {counts}; "
@@ -138,7 +158,12 @@ def alternatives(
 
 
 def report_findings(
-    findings: Findings, plan: Plan, evidence: Evidence, bounds_hit: tuple[str, ...], statement: str
+    findings: Findings,
+    plan: Plan,
+    evidence: Evidence,
+    bounds_hit: tuple[str, ...],
+    statement: str,
+    zonal: float,
 ) -> None:
     """Add what a reader of the report must know to ``findings``."""
     remedy = "Say in the study which ranges you take and why, or run the low and high alternatives."
@@ -150,6 +175,12 @@ def report_findings(
         findings.warning(code, statement, remedy)
     elif not plan.upright and (plan.nugget_from == "joint" or any(row[2] is None for row in fixed)):
         findings.warning("variogram-not-inferred", statement, remedy)
+    if zonal > 0.0:
+        findings.note(
+            "variogram-zonal",
+            f"{zonal:.0%} of the total sill varies only across the plane of continuity, as with a trend in depth.",
+            "Look for a trend or a boundary; another vertical frame or a further domain may take it up.",
+        )
     if plan.plane and evidence.in_line:
         findings.warning(
             "variogram-holes-in-line",

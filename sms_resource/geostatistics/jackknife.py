@@ -12,7 +12,6 @@ from sms_resource.geostatistics.evidence import Evidence
 from sms_resource.geostatistics.experimental import experimental_variograms
 from sms_resource.geostatistics.inference_plan import Plan, PlanFit, fit_plan, fixed_ranges
 from sms_resource.geostatistics.model import VariogramModel
-from sms_resource.geostatistics.pairs import pair_sums
 from sms_resource.geostatistics.transforms import weighted_variance
 
 if TYPE_CHECKING:
@@ -27,9 +26,6 @@ def leave_out_holes(evidence: Evidence, plan: Plan, fit: PlanFit) -> list[Variog
     """Models without each hole in turn; the pairs of a hole are taken off the sums, not counted again."""
     settings = evidence.settings
     by_sums = settings.estimator == "matheron"
-    sums = (
-        pair_sums(evidence.prepared, evidence.requests, settings.measure, by_hole=True) if by_sums else None
-    )
     order, holes = evidence.prepared.order, evidence.prepared.holes
     models = []
     for hole in range(len(evidence.prepared.hole_names)):
@@ -40,8 +36,8 @@ def leave_out_holes(evidence: Evidence, plan: Plan, fit: PlanFit) -> list[Variog
         raw_variance = weighted_variance(evidence.values[left], evidence.weights[left])
         if not (variance > 0.0 and raw_variance > 0.0):
             continue
-        if sums is not None:
-            variograms = evidence.without_hole(sums[hole])
+        if by_sums:
+            variograms = evidence.without_hole(hole)
         else:
             variograms = experimental_variograms(
                 evidence.coordinates[left], evidence.values[left], evidence.requests,

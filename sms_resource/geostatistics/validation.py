@@ -171,6 +171,7 @@ def block_variance_check(
     *,
     weights: ArrayLike | None = None,
     deposit_covariance: float = 0.0,
+    lagrange: ArrayLike | None = None,
 ) -> dict[str, float]:
     """Realised variance of block estimates against what the model says.
 
@@ -185,19 +186,25 @@ def block_variance_check(
         Such as dry tonnes.
     deposit_covariance : float
         Mean covariance over the whole deposit, C(D,D): what blocks of one small deposit share.
+    lagrange : (b,) array_like, optional
+        Lagrange multipliers with the sign of C w + mu = c. The variance of an ordinary kriging estimate is C(V,V) -
+        kriging variance - 2 mu; without them the last term is left out and the theory stands too low.
 
     Returns
     -------
     dict
         ``realised`` variance of the estimates; ``theoretical_blocks``, the variance of true blocks, C(V,V) -
-        C(D,D) (Krige's relation); ``theoretical_estimates``, the same less the mean kriging variance, which is
-        what smooth estimates can show; ``ratio`` realised over theoretical estimates; ``smoothing``, 1 less
-        realised over theoretical blocks; ``variance_factor``, C(V,V) over the total sill.
+        C(D,D) (Krige's relation); ``theoretical_estimates``, the same less the mean kriging variance and twice
+        the mean Lagrange multiplier, which is what smooth estimates can show; ``ratio`` realised over theoretical
+        estimates; ``smoothing``, 1 less realised over theoretical blocks; ``variance_factor``, C(V,V) over the
+        total sill.
     """
     realised = weighted_moments(estimates, weights)[1]
     mean_kriging = weighted_moments(kriging_variances, weights)[0]
     blocks = block_covariance - deposit_covariance
     expected = blocks - mean_kriging
+    if lagrange is not None:
+        expected -= 2.0 * weighted_moments(lagrange, weights)[0]
     return {
         "realised": realised,
         "theoretical_blocks": blocks,

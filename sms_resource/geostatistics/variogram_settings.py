@@ -10,6 +10,7 @@ from sms_resource.geostatistics.experimental import Measure
 from sms_resource.geostatistics.fit_settings import WEIGHTINGS, FitSettings, Weighting
 from sms_resource.geostatistics.pairs import MEASURES
 
+ZONAL_RANGE_M = 1e5  # in the plane: nothing varies along it
 TotalSill = Literal["sample_variance", "over_pairs", "free"]
 
 
@@ -53,6 +54,9 @@ class VariogramSettings:
         As in :class:`FitSettings`.
     min_pairs : int
         Lags with fewer pairs are shown and not fitted (30 after Journel & Huijbregts 1978, chapter III).
+    min_hole_share : float
+        Lags in the plane in which a smaller share of the holes has a part are shown and not fitted: they are made
+        of twins and clusters, which stand where grades are special.
     min_lags : int
         Fewer lags with enough pairs cannot be fitted.
     min_composites_horizontal, min_holes_horizontal : int
@@ -64,6 +68,10 @@ class VariogramSettings:
         Upright range where no range can be inferred (assumed).
     assumed_nugget_share : float
         Share of the nugget where no variogram can be inferred (assumed, from 30 to 60 %).
+    zonal : bool
+        Where pairs in the plane stand well below the total sill (as with a trend in depth), let a last structure
+        carry the rest: it varies across the plane alone, with a range of ZONAL_RANGE_M within it (zonal
+        anisotropy, Isaaks & Srivastava 1989, chapter 16). Not where ranges or sills are fixed.
     jackknife : bool
         Leave out one hole at a time for intervals of nugget, sill and ranges.
     confidence : float
@@ -92,12 +100,14 @@ class VariogramSettings:
     bandwidth_m: float | None = None
     weighting: Weighting | str = "pairs_over_gamma"
     min_pairs: int = 30
+    min_hole_share: float = 0.5
     min_lags: int = 3
     min_composites_horizontal: int = 50
     min_holes_horizontal: int = 6
     assumed_ratio: tuple[float, float, float] = (3.0, 6.0, 12.0)
     assumed_vertical_range_m: float = 4.0
     assumed_nugget_share: float = 0.4
+    zonal: bool = True
     jackknife: bool = True
     confidence: float = 0.90
 
@@ -119,7 +129,7 @@ class VariogramSettings:
             raise ValueError("nugget and nugget_share exclude each other")
         if self.nugget is not None and not (math.isfinite(self.nugget) and self.nugget >= 0.0):
             raise ValueError(f"nugget must be zero or above, got {self.nugget}")
-        for name in ("nugget_share", "assumed_nugget_share"):
+        for name in ("nugget_share", "assumed_nugget_share", "min_hole_share"):
             share = getattr(self, name)
             if share is not None and not 0.0 <= share <= 1.0:
                 raise ValueError(f"{name} must lie between 0 and 1, got {share}")

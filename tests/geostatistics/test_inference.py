@@ -12,7 +12,7 @@ from sms_resource.geostatistics.codes import CODES
 from sms_resource.geostatistics.evidence import gather_evidence
 from sms_resource.geostatistics.inference import infer_variogram
 from sms_resource.geostatistics.model import Structure, VariogramModel
-from sms_resource.geostatistics.variogram_settings import VariogramSettings
+from sms_resource.geostatistics.variogram_settings import ZONAL_RANGE_M, VariogramSettings
 
 from .variogram_twin import drilled, simulated
 
@@ -165,6 +165,72 @@ def test_no_continuity_between_holes_is_told_and_no_range_is_made_up():
             assert found.model.structures[0].ranges[0] <= shortest
             assert "shows no continuity" in found.statement
     assert told >= 5
+
+
+def test_a_trend_in_depth_becomes_a_zonal_structure():
+    """Half of the variance is a drift with depth: pairs in the plane do not see it, and its range is not theirs."""
+    truth = VariogramModel(0.2, [Structure("spherical", 0.8, (40.0, 40.0, 5.0))])
+    xyz, holes = drilled(holes=64, samples=10, spacing=20.0, seed=11)
+    drift = 0.35 * xyz[:, 2]
+    fields = simulated(truth, xyz, 6, seed=12) + drift
+    single = VariogramSettings(jackknife=False, zonal=False)
+    ranges, without = [], []
+    for field in fields:
+        found = infer_variogram(xyz, field, holes, QUICK)
+        main, zonal = found.model.structures
+        assert zonal.ranges[0] == ZONAL_RANGE_M
+        assert 0.3 < zonal.sill / found.model.total_sill < 0.75
+        assert found.ranges[0] == main.ranges[0]
+        assert "variogram-zonal" in codes(found)
+        assert "varies only across the plane" in found.statement
+        ranges.append(main.ranges[0])
+        without.append(infer_variogram(xyz, field, holes, single).model.structures[0].ranges[0])
+    assert np.exp(np.mean(np.log(ranges))) == pytest.approx(40.0, rel=0.35)
+    assert np.exp(np.mean(np.log(without))) > 70.0  # one structure alone makes up a range that is not there
+    table = infer_variogram(xyz, fields[0], holes).intervals
+    assert "major_range_2_m" not in set(table["parameter"])
+
+
+def test_zonal_structures_come_back_from_normal_scores():
+    truth = VariogramModel(0.2, [Structure("spherical", 0.8, (40.0, 40.0, 5.0))])
+    xyz, holes = drilled(holes=64, samples=10, spacing=20.0, seed=11)
+    values = np.exp(0.8 * (simulated(truth, xyz, 1, seed=12)[0] + 0.35 * xyz[:, 2]))
+    found = infer_variogram(xyz, values, holes, QUICK)
+    assert found.measure == "normal_scores"
+    main, zonal = found.model.structures
+    assert zonal.ranges[0] == ZONAL_RANGE_M
+    assert 15.0 < main.ranges[0] < 90.0
+    assert found.model.total_sill == pytest.approx(values.var(), rel=1e-6)
+
+
+def test_a_lag_of_twins_is_shown_and_not_fitted():
+    """Eight twins 2 m from rich holes: their lag has hundreds of pairs and few holes."""
+    xyz, holes = drilled(holes=49, samples=10, spacing=25.0, seed=5)
+    twins = np.isin(holes, [f"H{n:03d}" for n in range(0, 48, 6)])
+    both = np.vstack([xyz, xyz[twins] + (2.0, 0.0, 0.0)])
+    names = np.concatenate([holes, np.char.add(holes[twins], "T")])
+    values = np.random.default_rng(1).normal(size=len(both))
+    evidence = gather_evidence(both, values, names, QUICK)
+    plane = evidence.of("plane")
+    assert plane.pairs[0] >= 80 and plane.holes[0] < 0.5 * evidence.hole_count
+    assert not evidence.usable("plane")[0]
+    assert evidence.usable("plane")[1]
+    every = gather_evidence(both, values, names, VariogramSettings(min_hole_share=0.0))
+    assert every.usable("plane")[0]
+
+
+def test_short_holes_help_the_nugget():
+    """Two down-hole lags are too few for a fit of their own; with the plane they hold the nugget down."""
+    truth = VariogramModel(0.3, [Structure("spherical", 1.7, (60.0, 60.0, 10.0))])
+    xyz, holes = drilled(holes=64, samples=3, spacing=25.0, seed=4)
+    shares = []
+    for field in simulated(truth, xyz, 12, seed=6):
+        found = infer_variogram(xyz, field, holes, QUICK)
+        assert found.vertical_from == "assumed"
+        assert found.nugget_from.startswith("short down-hole variogram")
+        assert "few down-hole lags were fitted with it" in found.statement
+        shares.append(found.model.nugget / found.model.total_sill)
+    assert np.mean(shares) == pytest.approx(0.15, abs=0.08)
 
 
 def test_what_the_user_fixes_wins(well_drilled):

@@ -110,6 +110,26 @@ def test_smoothing_and_missing_theory():
     assert np.isnan(block_variance_check([1.0, 2.0], [2.0, 2.0], 1.0, 2.0)["ratio"])
 
 
+def test_variance_of_kriged_blocks_is_what_the_theory_says():
+    """400 fields kriged in one go: the spread of an ordinary kriging estimate is C(V,V) - KV - 2 mu."""
+    from sms_resource.geostatistics import block_variance, ordinary_kriging
+
+    from .variogram_twin import simulated
+
+    model = VariogramModel(0.2, [Structure("spherical", 0.8, (30.0, 30.0, 30.0))])
+    samples = np.random.default_rng(0).uniform(0.0, 60.0, (25, 3)) * (1.0, 1.0, 0.1)
+    values = simulated(model, samples, 400, seed=1).T
+    result = ordinary_kriging(
+        samples, values, [[30.0, 30.0, 3.0]], model, block_size=(10.0, 10.0, 2.0), discretisation=(4, 4, 1)
+    )
+    figures = block_variance_check(
+        result.estimate[0], result.variance[0], block_variance(model, (10.0, 10.0, 2.0), (4, 4, 1)),
+        model.total_sill, lagrange=result.lagrange[0],
+    )  # fmt: skip
+    assert figures["ratio"] == pytest.approx(1.0, abs=0.15)
+    assert figures["realised"] == pytest.approx(result.estimate[0].var())
+
+
 def estimators():
     generator = np.random.default_rng(3)
     blocks = pd.DataFrame({"cu_pct": generator.uniform(1, 3, 50), "dry_tonnes": generator.uniform(1, 5, 50)})
