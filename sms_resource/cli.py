@@ -133,6 +133,30 @@ def scenarios(
 
 
 @app.command()
+def export(
+    results: Annotated[Path, typer.Argument(help="Folder of results of a run.")] = Path("results"),
+    out: Annotated[Path, typer.Option("--out", "-o", help="Folder to write to.")] = Path("exchange"),
+    formats: Annotated[
+        list[str] | None,
+        typer.Option(
+            "--format", "-f", help="parquet, csv, vtu, vti, gpkg, geotiff, netcdf or omf; all if not given."
+        ),
+    ] = None,
+) -> None:
+    """Hand the block model and its layers on in open formats."""
+    from sms_resource.workflow import export_results
+
+    try:
+        written, findings = export_results(results, out, tuple(formats or ()))
+    except (FileNotFoundError, ValueError) as error:
+        _fail_usage(str(error))
+    console = _console()
+    _print_findings(console, findings, quiet=False)
+    for path in written:
+        console.print(str(path), highlight=False, markup=False, soft_wrap=True)
+
+
+@app.command()
 def cache(
     clear: Annotated[bool, typer.Option("--clear", help="Remove everything that is kept.")] = False,
 ) -> None:

@@ -207,6 +207,9 @@ class Screens(Section):
     )
     thickness_grade_of: str = key("cu", "Element of the thickness times grade.")
     least_patch_m2: float | None = key(None, "Least area of a connected patch.", ge=0)
+    bench_m: float | None = key(
+        None, "Height of a bench of the mineable shape; that of a block if not given.", gt=0
+    )
     exclude_status: tuple[str, ...] = key(
         ("active_vent", "set_aside", "preservation"), "Status of zones whose tonnes are excluded."
     )

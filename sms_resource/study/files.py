@@ -48,6 +48,7 @@ class GridFile(Section):
     vertical: Literal["elevation", "depth"] = key(
         "elevation", "Whether cells hold elevations or depths (positive down)."
     )
+    variable: str | None = key(None, "Variable of a NetCDF file that holds several grids.", decision=False)
     band: int = key(1, "Band that holds the elevation.", ge=1)
     uncertainty_band: int | None = key(
         None, "Band that holds the vertical uncertainty, where there is one.", ge=1

@@ -84,6 +84,7 @@ def _grid(context: Context, grid: GridFile) -> Any:
         crs=context.config.study.crs,
         declared_crs=grid.crs,
         reproject=grid.reproject,
+        variable=grid.variable,
         vertical=grid.vertical,
         band=grid.band,
         uncertainty_band=grid.uncertainty_band,

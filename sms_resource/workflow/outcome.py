@@ -69,6 +69,7 @@ def classify(context: Context) -> ClassState:
         left, metals=metals, cutoff_variable=variable, cutoffs=steps, groups=("proposed_class", "domain")
     )
     above = left[left[variable] >= at]
+    shape = shapes(frame, blocks, variable, at, metals, config)
     context.detail = (
         f"{above['dry_tonnes'].sum():,.0f} dry t above the cut-off, {proposal.tally_label.split(' (')[0]}"
     )
@@ -84,6 +85,7 @@ def classify(context: Context) -> ClassState:
             "class_summary": proposal.summary,
             "moved": proposal.moved,
             "grade_tonnage_by_domain": by_domain,
+            "mineable_shape": shape,
             **value_tables,
         },
     )
@@ -121,6 +123,27 @@ def below_open_holes(context: Context, frame: pd.DataFrame, open_holes: set[str]
     return np.fromiter(
         ((i, j) in marked for i, j in zip(frame["i"], frame["j"])), dtype=bool, count=len(frame)
     )
+
+
+def shapes(
+    frame: pd.DataFrame, blocks: BlockState, variable: str, at: float, metals: list[str], config: Any
+) -> pd.DataFrame:
+    """The cut-off alone beside patches and full benches that meet it on average, with what they must take."""
+    from sms_resource.economics import ShapeRules, mineable_shapes
+
+    choice = config.screens
+    size = blocks.model.grid.size
+    benches = max(1, round((choice.bench_m or size[2]) / size[2]))
+    made = mineable_shapes(
+        frame,
+        cutoff_variable=variable,
+        cutoff=at,
+        block_size=size,
+        metals=tuple(metals),
+        rules=ShapeRules(bench_blocks=benches, least_patch_m2=choice.least_patch_m2 or 0.0),
+        allowed=(frame["kept_share"] > 0.5).to_numpy(),
+    )
+    return made.table
 
 
 def cutoff_column(config: Any) -> str:

@@ -134,8 +134,9 @@ def write_report_files(
     ledger: pd.DataFrame,
     extra: dict[str, Any] | None,
 ) -> list[Path]:
-    """The report and its figures."""
-    from sms_resource.reporting import write_report
+    """The report, its figures and the pack that a CP takes away."""
+    from sms_resource.reporting.pack import write_pack
+    from sms_resource.reporting.report import make_report
     from sms_resource.workflow.report_data import report_data, truth_page
 
     manifest = {
@@ -145,4 +146,5 @@ def write_report_files(
     }
     truth = truth_page(study, outcome.done)
     data = report_data(study, outcome.done, outcome.findings, ledger, manifest, truth, extra)
-    return write_report(data, folder)
+    report = make_report(data, folder)
+    return [*report.paths, *write_pack(data, folder, report)]
