@@ -11,7 +11,8 @@ from numpy.typing import NDArray
 
 from sms_resource.blocks.grid import SurfaceGrid
 from sms_resource.blocks.profile import FLOOR, EdgeProfile, edge_profile
-from sms_resource.blocks.thickness_fit import ThicknessFit, fit_thickness
+from sms_resource.blocks.thickness_draws import Quadrature, fit_thickness
+from sms_resource.blocks.thickness_fit import ThicknessFit
 from sms_resource.blocks.thickness_model import Sites, ThicknessSettings, parameter_sets
 
 Array = NDArray[Any]
@@ -20,8 +21,7 @@ KERNEL_BUDGET = (
     60_000_000  # covariances evaluated; beyond it the smooth surface is interpolated between nodes
 )
 LEAST_RELIEF_M = 0.3  # relief flatter than this says nothing of the thickness
-QUADRATURE_NODES = 450
-SIGMA_NODES = 1_500
+QUADRATURE_NODES = 400
 
 
 @dataclass(frozen=True, eq=False)
@@ -105,20 +105,24 @@ def interpolate_thickness(
     sites = Siting(top, outline, profile, edge, spacing_m)
     size = math.sqrt(outline.area / math.pi)
     relief = edge and sites.relief_scale_m > 0
-    candidates = list(parameter_sets(settings, size, sites.short_range_m, relief, edge))
-    quadrature, areas = sites.quadrature()
     shifted = data.thickness - offset.sample(data.x, data.y)
+    positive = drift is None and bool(np.all(shifted >= 0))
+    candidates = list(parameter_sets(settings, size, sites.short_range_m, relief, edge, positive))
+    places = sites.quadrature(offset)
     holes = sites.at(data.x, data.y)
-    fit = fit_thickness(holes, shifted, data.is_open, data.sigma, candidates, quadrature, areas, settings)
-    mean, known = (np.maximum(part + offset.values, 0.0) for part in sites.estimate(fit))
+    fit = fit_thickness(
+        holes, shifted, data.is_open, data.sigma, candidates, places, settings, positive=positive
+    )  # fmt: skip
+    mean, known, sigma = sites.estimate(fit.likeliest())
+    mean, known = np.maximum(mean + offset.values, 0.0), np.maximum(known + offset.values, 0.0)
     if edge and not edge_thickness_m:
         mean[~profile.inside] = known[~profile.inside] = 0.0
     record = {"method": "kriging", "edge_thickness_m": edge_thickness_m, "short_range_m": sites.short_range_m}
     return Interpolation(
         top.with_values(mean),
         top.with_values(np.minimum(known, mean)),
-        top.with_values(sites.sigma(fit)),
-        math.sqrt(fit.volume_variance),
+        top.with_values(sigma),
+        fit.volume_sigma_m3,
         record | fit.record(),
     )
 
@@ -173,12 +177,13 @@ class Siting:
         part = mask[::step, ::step]
         return step, self.at(x[::step, ::step][part], y[::step, ::step][part])
 
-    def quadrature(self) -> tuple[Sites, Array]:
-        """Points inside the outline and the area in m2 that each stands for."""
+    def quadrature(self, offset: SurfaceGrid) -> Quadrature:
+        """Points inside the outline, the area in m2 that each stands for, and the offset there."""
         sites = self._lattice(QUADRATURE_NODES, self.profile.inside)[1]
         if len(sites) < 20:
             sites = self._lattice(10 * QUADRATURE_NODES, self.profile.inside)[1]
-        return sites, np.full(len(sites), self.outline.area / max(len(sites), 1))
+        areas = np.full(len(sites), self.outline.area / max(len(sites), 1))
+        return Quadrature(sites, areas, offset.sample(sites.xy[:, 0], sites.xy[:, 1]))
 
     def _spread(self, step: int, mask: NDArray[np.bool_], values: Array) -> Array:
         """Values of every step-th node under a mask, interpolated to all nodes; zero elsewhere."""
@@ -190,17 +195,13 @@ class Siting:
         x, y = self.top.mesh()
         return grid.sample(np.minimum(x, grid.x[-1]), np.minimum(y, grid.y[-1]))
 
-    def estimate(self, fit: ThicknessFit) -> tuple[Array, Array]:
-        """Expected thickness on all nodes, and the same with open holes held at their ends."""
-        nodes = max(2_000, KERNEL_BUDGET // max(1, len(fit.floor) * len(fit.sets)))
+    def estimate(self, fit: ThicknessFit) -> tuple[Array, Array, Array]:
+        """Expected thickness, the same with open holes held at their ends, and sigma, on all nodes."""
+        data = len(fit.sets[0].holes)
+        nodes = max(2_000, KERNEL_BUDGET // max(1, data * (data + 20) * len(fit.sets)))
         step, sites = self._lattice(nodes, self.near)
-        mean, known = fit.estimate(sites)
-        return self._spread(step, self.near, mean), self._spread(step, self.near, known)
-
-    def sigma(self, fit: ThicknessFit) -> Array:
-        """Standard deviation on all nodes, zero well outside the outline."""
-        step, sites = self._lattice(SIGMA_NODES, self.near)
-        return self._spread(step, self.near, fit.sigma(sites))
+        mean, known, sigma = (self._spread(step, self.near, part) for part in fit.estimate(sites))
+        return mean, known, sigma
 
 
 def _plain(

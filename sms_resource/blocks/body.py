@@ -150,7 +150,7 @@ def build_body(
     cell_m: float | None = None,
     settings: ThicknessSettings | None = None,
     edge_thickness_m: float | None = 0.0,
-    extrapolate_below_m: float = 10.0,
+    extrapolate_below_m: float = 5.0,
     drilled_within_m: float | None = None,
     base_point_sigma_m: float = 1.0,
 ) -> Body:
