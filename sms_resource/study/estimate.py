@@ -98,10 +98,12 @@ class Variograms(Section):
     shape: Literal["spherical", "exponential", "gaussian"] = key(
         "spherical", "Shape of the fitted structure.", alternatives=("exponential",)
     )
-    measure: Literal["semivariogram", "normal_scores", "logs", "pairwise_relative", "correlogram"] = key(
-        "semivariogram",
-        "Measure of the experimental variogram that is fitted.",
-        alternatives=("normal_scores",),
+    measure: Literal["auto", "semivariogram", "normal_scores", "logs", "pairwise_relative", "correlogram"] = (
+        key(
+            "auto",
+            "Measure of the experimental variogram that is fitted.",
+            alternatives=("semivariogram", "normal_scores"),
+        )
     )
     estimator: str = key("matheron", "Estimator of the semivariance, such as matheron, cressie or dowd.")
     lag_horizontal_m: float | None = key(

@@ -14,8 +14,8 @@ from sms_resource.workflow.geometry import domain_shares
 from sms_resource.workflow.stage import Context, StageStop
 from sms_resource.workflow.state import BlockState, DensityState, EstimateState, VariogramState
 
-DETAILS = ("variance", "slope_of_regression", "kriging_efficiency", "sample_count", "hole_count", "nearest_distance",
-           "negative_weight_sum", "pass_number")  # fmt: skip
+DETAILS = ("variance", "lagrange", "slope_of_regression", "kriging_efficiency", "sample_count", "hole_count",
+           "nearest_distance", "negative_weight_sum", "pass_number")  # fmt: skip
 COMPANIONS = ("nearest", "inverse_distance", "moving_average")
 _SHORT = {
     "slope_of_regression": "slope",
@@ -128,7 +128,7 @@ def proposed_radii(state: VariogramState, domain: str, config: Any) -> tuple[flo
     The floor is two hole spacings in the plane and three composites upright (common practice, no source).
     """
     ranges = [
-        np.max([structure.ranges for structure in item.model.structures], axis=0)
+        item.ranges
         for (name, _), item in state.inferences.items()
         if name == domain and item.model.structures
     ]

@@ -106,7 +106,7 @@ def holes_in_range(context: Context, frame: pd.DataFrame) -> np.ndarray:
         part = state.samples[(state.samples["domain"] == domain) & state.samples[judged].notna()]
         if item is None or not item.model.structures or not mine.any() or not len(part):
             continue
-        ranges = np.max([structure.ranges for structure in item.model.structures], axis=0)
+        ranges = item.ranges
         reach = holes_in_reach(
             targets[mine], part[["x", "y", "z"]].to_numpy(dtype=float), part["hole_id"].to_numpy(dtype=object),
             ranges, axes=item.model.axes,
@@ -210,8 +210,7 @@ def class_context(context: Context) -> Any:
     ranges: dict[str, float] = {}
     for domain in config.domains.sulphide:
         item = state.inferences.get((domain, judged))
-        reach = [structure.ranges[0] for structure in item.model.structures] if item else []
-        ranges[domain] = max(reach) if reach else float("nan")
+        ranges[domain] = float(item.ranges[0]) if item and item.model.structures else float("nan")
     recovery = {
         str(domain): float(100.0 * part["recovered_length_m"].sum() / part["length_m"].sum())
         for domain, part in evidence.composites.groupby("domain")

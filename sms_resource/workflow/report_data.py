@@ -248,7 +248,7 @@ def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
         blocks=done["classify"].frame,
         grid=blocks.model.grid.record(),
         means=_means(done, metals),
-        swaths=validation.swaths,
+        swaths=validation.swaths[validation.swaths["domain"] == "all"],
         leave_one_out=validation.cross_validation,
         leave_one_out_summary=validation.cross_summary,
         estimators=comparison,

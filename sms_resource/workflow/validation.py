@@ -47,7 +47,7 @@ def validate(context: Context) -> ValidationState:
     table = validation_table(
         cross_validation=summary if len(summary) else None,
         means=mean_table(made, variograms, metals, config),
-        swaths=swaths,
+        swaths=swaths[swaths["domain"] != "all"],
         block_variance=realised_variances(made, variograms, blocks, config),
         limits=ValidationLimits(mean_pct=config.validation.mean_flag_pct),
     )
@@ -154,6 +154,7 @@ def realised_variances(
             block_variance(item.model, size, config.kriging.discretisation),
             item.model.total_sill,
             weights=made.frame.loc[inside, "dry_tonnes"].to_numpy(dtype=float),
+            lagrange=made.frame.loc[inside, f"{metal}_lagrange"].to_numpy(dtype=float),
             deposit_covariance=mean_covariance(item.model, made.targets[inside]),
         )
     return found
@@ -173,22 +174,31 @@ def swath_tables(
     azimuth = float(grid.azimuth)
     level = config.validation.swath_m or max(2.0 * max(grid.size[:2]), 0.5 * state.facts["hole_spacing_m"])
     names = ("along", "across") if azimuth else ("northing", "easting")
-    return swath_table(
-        samples,
-        frame,
-        metals,
-        axes=(*names, "elevation"),
-        azimuth=azimuth,
-        width_m={
-            names[0]: level,
-            names[1]: level,
-            "elevation": max(2.0 * grid.size[2], config.composites.length_m),
-        },
-        companions={metal: {"nearest": f"{metal}_nearest"} for metal in metals},
-        sample_weight="weight",
-        decluster_weights="declustering_weight",
-        block_weight="dry_tonnes",
-    )
+    widths = {
+        names[0]: level,
+        names[1]: level,
+        "elevation": max(2.0 * grid.size[2], config.composites.length_m),
+    }
+    tables = []
+    for domain in ("all", *config.domains.sulphide):
+        part = samples if domain == "all" else samples[samples["domain"] == domain]
+        inside = frame if domain == "all" else frame[made.frame["domain"] == domain]
+        if not len(part) or not len(inside):
+            continue
+        table = swath_table(
+            part,
+            inside,
+            metals,
+            axes=(*names, "elevation"),
+            azimuth=azimuth,
+            width_m=widths,
+            companions={metal: {"nearest": f"{metal}_nearest"} for metal in metals},
+            sample_weight="weight",
+            decluster_weights="declustering_weight",
+            block_weight="dry_tonnes",
+        )
+        tables.append(table.assign(domain=domain))
+    return pd.concat(tables, ignore_index=True)
 
 
 def support_curves(
