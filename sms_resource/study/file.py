@@ -14,6 +14,7 @@ from sms_resource.findings import Finding, Findings
 from sms_resource.study.files import GRID_ROLES, LAYER_ROLES, TABLE_ROLES
 from sms_resource.study.locate import key_rows, nearest, row_of
 from sms_resource.study.schema import StudyConfig
+from sms_resource.study.sense import value_faults
 
 
 class StudyError(Exception):
@@ -93,7 +94,11 @@ class Study:
         config, findings = _validate(raw, "", self.path.name)
         if config is None:
             raise StudyError(findings)
-        return replace(self, config=config, given=raw)
+        changed = replace(self, config=config, given=raw)
+        _check_sense(changed, {}, findings)
+        if findings.has_errors:
+            raise StudyError(findings)
+        return changed
 
     def __repr__(self) -> str:
         return f"Study({self.config.study.name!r}, {self.path.name})"
@@ -296,6 +301,8 @@ def _check_sense(study: Study, rows: dict[str, int], findings: Findings) -> None
         if not is_key(dotted):
             fault(f"reasons.{dotted}", "study-unknown-key", f"a reason is given for '{dotted}', which is not a key",
                   "Name a key of the study.")  # fmt: skip
+    for dotted, message, remedy in value_faults(config):
+        fault(dotted, "study-value", message, remedy)
     _check_crs(study, fault)
 
 
