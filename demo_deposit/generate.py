@@ -24,7 +24,7 @@ from ground import CENTRE, CRS, DOMAINS, EAST0, HEIGHT, METALS, NORTH0, WASTE, W
 
 SEED = 20265
 WINDOW = (150, 92, 360, 316)  # west, south, east, north edge of the 0.5 m grid, m from the survey's corner
-CORE_AG_LIMIT, SURFACE_ZN_LIMIT = 250.0, 50.0
+CORE_AG_LIMIT, SURFACE_ZN_LIMIT = 300.0, 50.0
 STAMP = "2024-01-01T00:00:00.000Z"
 
 

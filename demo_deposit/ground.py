@@ -91,7 +91,7 @@ class Ground:
             "cu_pct": heat,
             "zn_pct": 0.95 * zinc - 0.31 * heat,
             "au_gpt": 0.6 * zinc + 0.8 * gold,
-            "ag_gpt": 0.5 * zinc + 0.866 * silver,
+            "ag_gpt": 0.5 * zinc - 0.866 * silver,
             "density": mass,
             "anhydrite": salts,
         }

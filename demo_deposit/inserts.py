@@ -7,7 +7,7 @@ import pandas as pd
 from ground import METALS
 
 BATCHES = tuple(f"B{number:02d}" for number in range(1, 9))
-BAD_BATCH, BAD_METAL, BAD_FACTOR = "B05", "ag_gpt", 0.84
+BAD_BATCH, BAD_METAL, BAD_FACTOR = "B05", "au_gpt", 0.84
 RELATIVE_SD = 0.032  # standard deviation that the reference materials state
 ACTUAL_SD = 0.55  # what a good batch scatters, in stated standard deviations
 REFERENCES = {
