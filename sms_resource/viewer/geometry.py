@@ -209,7 +209,7 @@ def body_solid(top: SurfaceGrid, thickness: SurfaceGrid, view: View, *, thinnest
         a, b = number[lines[:, 0]], number[lines[:, 1]]
         wall = np.column_stack([np.full(len(a), 4), a, b, b + upper.n_points, a + upper.n_points])
         parts.append(pv.PolyData(np.vstack([upper.points, lower.points]), wall.ravel()))
-    skin = pv.merge(parts, merge_points=True).extract_surface(algorithm="dataset_surface")
+    skin = parts[0].append_polydata(*parts[1:]).clean()
     return skin.compute_normals(point_normals=False, consistent_normals=True, auto_orient_normals=True)
 
 
