@@ -23,6 +23,22 @@ def _metal(column: str) -> str:
     return element_label(column).rpartition(" (")[0] if column_element(column) else str(column)
 
 
+_UNIT_WORDS = {"m": "(m)", "m2": "(m²)", "m3": "(m³)", "pct": "(%)", "deg": "(°)"}
+
+
+def _criterion(key: str) -> str:
+    """A key of the study in words, its unit in brackets: ``indicated_within_m`` becomes ``indicated within (m)``."""
+    words = str(key).split("_")
+    return " ".join([*words[:-1], _UNIT_WORDS.get(words[-1], words[-1])])
+
+
+def _chosen(value: object) -> str:
+    """A chosen value as its person would write it: 0.6 and not 0.600; an empty list says so."""
+    if isinstance(value, float) and np.isfinite(value):
+        return f"{value:g}"
+    return cell_text(value) or "none"
+
+
 def database(data: ReportData) -> Answer:
     """What the checks found."""
     counts = data.record.findings.counts()
@@ -134,13 +150,10 @@ def mining(data: ReportData) -> Answer:
     )
     if steps is not None and has(steps, "step", "dry_tonnes", "kind"):
         taken = steps[steps["kind"].astype(str) != "total"]
-        text += (
-            " Screens in the study: "
-            + "; ".join(
-                f"{r['step']} {mass_text(abs(r['dry_tonnes']), 'dry')}" for r in taken.to_dict("records")
-            )
-            + "."
+        said = "; ".join(
+            f"{r['step']} {mass_text(abs(r['dry_tonnes']), 'dry')}" for r in taken.to_dict("records")
         )
+        text += f" Screens in the study: {said or 'none'}."
     return PERSON, text
 
 
@@ -190,7 +203,7 @@ def classification(data: ReportData) -> Answer:
     """Criteria; the judgement is left."""
     criteria = data.classes.criteria
     said = (
-        "; ".join(f"{k.replace('_', ' ')}: {cell_text(v)}" for k, v in criteria.items())
+        "; ".join(f"{_criterion(k)}: {_chosen(v)}" for k, v in criteria.items())
         if criteria
         else "none in the study"
     )

@@ -9,13 +9,18 @@ import numpy as np
 from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.elements import number_text
 from sms_resource.reporting.summaries import cuts_in_use
-from sms_resource.units import column_element, element_label
+from sms_resource.units import ELEMENTS, column_element, element_column, element_label
 
 Status = Literal["answered", "not applicable", "for the Competent Person"]
 Answer = tuple[Status, str]
 ANSWERED: Status = "answered"
 NONE: Status = "not applicable"
 PERSON: Status = "for the Competent Person"
+
+
+def _element(name: str) -> str:
+    """An element as people write it, whichever way a table names it."""
+    return _metal(element_column(name)) if name in ELEMENTS else _metal(name)
 
 
 def _metal(column: str) -> str:
@@ -28,18 +33,17 @@ def sampling(data: ReportData) -> Answer:
     if e.composites is None or not len(e.composites):
         return PERSON, "Needed: nature and quality of sampling; the study holds no composites."
     kinds = ""
-    if e.surface is not None and has(e.surface, "sample_type"):
+    if e.surface is not None and len(e.surface) and has(e.surface, "sample_type"):
         counts = e.surface["sample_type"].astype(str).value_counts().sort_index()
-        kinds = "; surface samples: " + ", ".join(
-            f"{n} {str(k).replace('_', ' ')}" for k, n in counts.items()
-        )
-    use = e.surface_use.rstrip(". ") or "kept out of the estimate"
+        use = e.surface_use.rstrip(". ") or "kept out of the estimate"
+        said = ", ".join(f"{n} {str(k).replace('_', ' ')}" for k, n in counts.items())
+        kinds = f"; surface samples: {said} ({use})"
     hand = (
         "Handheld readings entered the estimate."
         if e.handheld_used
         else "Handheld readings did not enter the estimate."
     )
-    return ANSWERED, f"Drilled core, {len(e.composites)} composites{kinds} ({use}). {hand}"
+    return ANSWERED, f"Drilled core, {len(e.composites)} composites{kinds}. {hand}"
 
 
 def recovery(data: ReportData) -> Answer:
@@ -112,11 +116,18 @@ def quality(data: ReportData) -> Answer:
             PERSON,
             "Needed: reference materials, blanks, duplicates and check assays; the study holds none.",
         )
-    said = "; ".join(
-        f"{r['element']} {r['aspect']}: {r['verdict']} ({r.get('figures', '')})"
-        for r in verdicts.to_dict("records")
-    )
-    return ANSWERED, said
+    made = verdicts[verdicts["verdict"] != "missing"]
+    lacking = verdicts[verdicts["verdict"] == "missing"]
+    said = [
+        f"{_element(r['element'])} {r['aspect']}: {r['verdict']}"
+        + (f" ({r['figures']})" if str(r.get("figures") or "").strip() else "")
+        for r in made.to_dict("records")
+    ]
+    said += [
+        f"no {aspect} for {', '.join(_element(name) for name in part['element'])}"
+        for aspect, part in lacking.groupby("aspect", sort=False)
+    ]
+    return (ANSWERED if len(made) else PERSON), "; ".join(said) + "."
 
 
 def verification(data: ReportData) -> Answer:
@@ -147,7 +158,12 @@ def location(data: ReportData) -> Answer:
         text += (
             " Collars: "
             + "; ".join(
-                f"{int(r['size'])} by {k}, sigma to {number_text(float(r['max']))} m"
+                f"{int(r['size'])} by {str(k).strip() or 'a method that is not stated'}, "
+                + (
+                    f"sigma to {number_text(float(r['max']))} m"
+                    if np.isfinite(float(r["max"]))
+                    else "sigma not stated"
+                )
                 for k, r in counts.iterrows()
             )
             + "."
@@ -205,7 +221,7 @@ def orientation(data: ReportData) -> Answer:
     return (
         ANSWERED,
         (
-            f"Holes are near vertical; {count} of {len(collars)} carry no survey and are assumed vertical."
+            f"{count} of {len(collars)} holes carry no survey and are assumed vertical."
             " Steep feeder structures may be missed by vertical holes; that is for the Competent Person to"
             " discuss."
         ),
@@ -259,8 +275,8 @@ def widths(data: ReportData) -> Answer:
     return (
         ANSWERED,
         (
-            "Intercepts are down-hole lengths in near-vertical holes through a body that drapes the seafloor;"
-            " on slopes of 15 to 30 degrees the true thickness is 3 to 13 % less than the vertical length."
+            "Intercepts are down-hole lengths through a body that drapes the seafloor; for a vertical hole"
+            " on slopes of 15 to 30 degrees the true thickness is 3 to 13 % less than that length."
         ),
     )
 
@@ -297,11 +313,13 @@ def other(data: ReportData) -> Answer:
             if "sample_type" in bias and (bias["sample_type"] == "all").any()
             else bias
         )
-        text += (
-            " From the study, surface samples against nearest core: "
-            + "; ".join(f"{_metal(r['metal'])} x{r['ratio']:.1f}" for r in rows.to_dict("records"))
-            + "."
-        )
+        rows = rows[rows["ratio"].notna()]
+        if len(rows):
+            text += (
+                " From the study, surface samples against nearest core: "
+                + "; ".join(f"{_metal(r['metal'])} x{r['ratio']:.1f}" for r in rows.to_dict("records"))
+                + "."
+            )
     if data.subject.deleterious:
         text += f" Deleterious elements summarised: {', '.join(_metal(c) for c in data.subject.deleterious)}."
     return PERSON, text

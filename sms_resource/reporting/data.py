@@ -170,7 +170,8 @@ class BodyEvidence:
     ("reached" | "open"). ``audit`` : free columns. ``geometry_uncertainty`` : case, volume_m3, dry_tonnes,
     change_pct (optional wet_tonnes). ``grid_proposal`` : free columns (what is proposed and why).
     ``method`` : how the base was interpolated, in words. ``waterfall`` : step, dry_tonnes (what the step takes,
-    negative, or what stands at "start" / "end"), kind ("total" | "taken"), <metals> optional.
+    negative, or what stands at "start" / "end"), kind ("total" | "taken"); optional <metals> (here contained metal
+    in tonnes).
     ``sigma_seafloor_m`` : one sigma of the seafloor.
     """
 
@@ -198,7 +199,8 @@ class VariogramRecord:
     ``experimental`` : label, kind, distance, gamma, pairs, and where known azimuth, plunge (degrees); one row a
     lag. ``model`` : an object with ``variogram(separations (n, 3)) -> (n,)``, nugget, structures, azimuth,
     plunge, tilt (the ``VariogramModel`` of the geostatistics room), or None. ``intervals`` : parameter, low,
-    best, high (jackknife over holes).
+    best, high (jackknife over holes). ``measure`` : what ``experimental`` is a variogram of; where that is not the
+    semivariogram, ``fitted_model`` is the model in that measure, before it was turned back to ``model``.
     """
 
     metal: str
@@ -212,6 +214,13 @@ class VariogramRecord:
     intervals: Frame | None = None
     sample_count: int = 0
     hole_count: int = 0
+    measure: str = "semivariogram"
+    fitted_model: Any = None
+
+    @property
+    def drawn_model(self) -> Any:
+        """The model in the measure of ``experimental``."""
+        return self.model if self.fitted_model is None else self.fitted_model
 
     @classmethod
     def from_inference(cls, metal: str, domain: str, inference: Any) -> VariogramRecord:
@@ -235,6 +244,8 @@ class VariogramRecord:
             intervals=inference.intervals,
             sample_count=int(inference.sample_count),
             hole_count=int(inference.hole_count),
+            measure=str(getattr(inference, "measure", "semivariogram")),
+            fitted_model=getattr(inference, "fitted_model", None),
         )
 
 

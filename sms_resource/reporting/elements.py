@@ -14,7 +14,7 @@ from typing import Any
 import pandas as pd
 
 from sms_resource.reporting.rounding import NO_VALUE, group_digits
-from sms_resource.reporting.style import Drawing
+from sms_resource.reporting.style import Drawing, class_name
 from sms_resource.units import column_element, element_label
 
 
@@ -118,6 +118,7 @@ _SUFFIXES = (
     ("_dry_tonnes", "dry tonnes (t)"),
     ("dry_tonnes", "dry tonnes (t)"),
     ("wet_tonnes", "wet tonnes (t)"),
+    ("_contained_t", "contained (t metal)"),
     ("_tpm3", "(t/m³)"),
     ("_m3", "(m³)"),
     ("_m2", "(m²)"),
@@ -203,6 +204,13 @@ def cell_text(value: Any, digits: int = 3) -> str:
     return str(value)
 
 
+def setting_text(value: Any) -> str:
+    """A value that a person chose, as that person would write it: 0.6, not 0.600."""
+    if isinstance(value, float) and math.isfinite(value):
+        return group_digits(f"{value:.10g}")
+    return cell_text(value, 4)
+
+
 def frame_table(
     frame: pd.DataFrame,
     title: str,
@@ -219,12 +227,7 @@ def frame_table(
     names = {**{name: column_label(name) for name in chosen}, **(labels or {})}
     shown = frame[chosen].head(most)
     rows = tuple(
-        tuple(
-            "< 0.0001"
-            if name.endswith("p_value") and isinstance(value, float) and value < 1e-4
-            else cell_text(value, digits)
-            for name, value in zip(chosen, record)
-        )
+        tuple(_cell(name, value, digits) for name, value in zip(chosen, record))
         for record in shown.itertuples(index=False, name=None)
     )
     if len(frame) > most:
@@ -234,6 +237,12 @@ def frame_table(
         for name in chosen
     )
     return Table(title, tuple(names[name] for name in chosen), rows, numeric, note, key=key)
+
+
+def _cell(column: str, value: Any, digits: int) -> str:
+    if column.endswith("p_value") and isinstance(value, float) and value < 1e-4:
+        return "< 0.0001"
+    return class_name(value) if column == "proposed_class" else cell_text(value, digits)
 
 
 def plain_words(text: str) -> str:
@@ -246,7 +255,7 @@ def facts_from(mapping: Mapping[str, Any] | None) -> Facts | None:
     if not mapping:
         return None
     return Facts(
-        tuple((column_label(str(key)), plain_words(cell_text(value, 4))) for key, value in mapping.items())
+        tuple((column_label(str(key)), plain_words(setting_text(value))) for key, value in mapping.items())
     )
 
 

@@ -28,17 +28,16 @@ def model_curve(
     record: VariogramRecord, kind: str, azimuth: float, plunge: float, distance: np.ndarray
 ) -> np.ndarray | None:
     """Model values along the direction of an experimental variogram; None where no one direction applies."""
-    if record.model is None:
+    model = record.drawn_model
+    if model is None:
         return None
     if np.isfinite(azimuth) and np.isfinite(plunge):
         unit = direction_vector(azimuth, plunge)
     elif kind in ("down_hole", "vertical"):
         unit = np.array([0.0, 0.0, -1.0])
     else:
-        unit = direction_vector(
-            float(getattr(record.model, "azimuth", 0.0)), float(getattr(record.model, "plunge", 0.0))
-        )
-    return np.asarray(record.model.variogram(distance[:, None] * unit[None, :]), dtype=float)
+        unit = direction_vector(float(getattr(model, "azimuth", 0.0)), float(getattr(model, "plunge", 0.0)))
+    return np.asarray(model.variogram(distance[:, None] * unit[None, :]), dtype=float)
 
 
 def _panel(axis: Axes, record: VariogramRecord, group: pd.DataFrame) -> pd.DataFrame:
@@ -73,7 +72,7 @@ def _panel(axis: Axes, record: VariogramRecord, group: pd.DataFrame) -> pd.DataF
     curve = model_curve(record, kind, azimuth, plunge, fine)
     if curve is not None:
         axis.plot(fine, curve, color=style.LINES[1], lw=1.5, zorder=2)
-    total = getattr(record.model, "total_sill", None)
+    total = getattr(record.drawn_model, "total_sill", None)
     if total is not None:
         axis.axhline(float(total), color=style.QUIET, lw=0.7, ls=":")
     top = max([float(gamma[known].max()) if known.any() else 1.0, float(total or 0.0)])
@@ -99,9 +98,28 @@ def _groups(record: VariogramRecord) -> list[pd.DataFrame]:
     return [part for part in parts if ((part["pairs"] > 0) & part["gamma"].notna()).any()][:MOST_PANELS]
 
 
+def _axis_label(record: VariogramRecord) -> str:
+    """What the semivariance is of, with its unit; a measure other than the grade itself has none."""
+    name = element_label(record.metal) if column_element(record.metal) else record.metal
+    if record.measure == "semivariogram":
+        return f"Semivariance, {name} squared" if column_element(record.metal) else "Semivariance"
+    metal = name.rpartition(" (")[0] or name
+    return f"{metal}: {record.measure.replace('_', ' ')}"
+
+
 def domain_slug(domain: str) -> str:
     """A domain's name as the end of a file name."""
     return "".join(c if c.isascii() and c.isalnum() else "_" for c in domain.lower()) or "all"
+
+
+def _measure_note(rows: list[tuple[VariogramRecord, list[pd.DataFrame]]]) -> str:
+    other = sorted({r.measure.replace("_", " ") for r, _ in rows if r.measure != "semivariogram"})
+    if not other:
+        return ""
+    return (
+        f" Rows marked {' or '.join(other)} show dots and model in that measure, without unit; the table has the"
+        " model turned back to grades."
+    )
 
 
 def variograms(data: ReportData) -> list[Drawing]:
@@ -119,17 +137,15 @@ def variograms(data: ReportData) -> list[Drawing]:
                 tables.append(_panel(axis, record, group))
             for axis in line[len(groups) :]:
                 axis.set_axis_off()
-            metal = column_element(record.metal) is not None
-            line[0].set_ylabel(
-                f"Semivariance, {element_label(record.metal)} squared" if metal else "Semivariance"
-            )
+            line[0].set_ylabel(_axis_label(record))
         words = "" if domain in ("", "all") else f", domain {domain}"
         drawings.append(
             Drawing(
                 f"variograms_{domain_slug(domain)}",
                 "continuity",
                 f"Variograms{words}",
-                "Dots by pairs of composites (numbers), line: the model in that direction, dotted: its total sill.",
+                "Dots by pairs of composites (numbers), line: the model in that direction, dotted: its total sill."
+                + _measure_note(rows),
                 f"Experimental variograms of {len(rows)} metals{words} with pair counts and the models.",
                 figure,
                 pd.concat(tables, ignore_index=True),

@@ -26,7 +26,9 @@ def contacts(data: ReportData) -> Drawing | None:
     )
     if not metals or not named:
         return None
-    figure, axes = style.new_figure(2.5 * len(metals) + 0.6, 1.85 * len(named) + 0.2, len(named), len(metals))
+    figure, axes = style.new_figure(
+        2.5 * len(metals) + 0.6, 1.85 * len(named) + 0.2, len(named), len(metals), sharex="col"
+    )
     for row, contact in enumerate(named):
         first, _, second = str(contact).partition(" | ")
         for column, metal in enumerate(metals):
@@ -84,7 +86,7 @@ def tracers(data: ReportData) -> Drawing | None:
                 mew=0,
                 alpha=0.65,
                 color=style.LINES[number],
-                label=name,
+                label=style.short(name, 24),
             )
         if (ratio > 0).any():
             axis.set_xscale("log")

@@ -231,7 +231,11 @@ def plan_collars(data: ReportData) -> Drawing | None:
     style.finish_plan(plan)
     finite = dz[np.isfinite(dz)]
     bars.hist(
-        finite, bins=min(24, max(6, int(np.sqrt(finite.size) * 2))), color="#7f9bb0", ec="white", lw=0.6
+        np.round(finite, 6),
+        bins=min(24, max(6, int(np.sqrt(finite.size) * 2))),
+        color="#7f9bb0",
+        ec="white",
+        lw=0.6,
     )
     middle = float(np.median(finite))
     bars.axvline(0.0, color=style.INK, lw=0.9)

@@ -71,7 +71,7 @@ def recovery(data: ReportData) -> Drawing | None:
                 mew=0,
                 alpha=0.65,
                 color=style.LINES[number],
-                label=name,
+                label=style.short(name, 24),
             )
         axis.set_xlabel("Recovery (%)")
         axis.set_ylabel(element_label(metal))

@@ -123,7 +123,7 @@ def log_probability(data: ReportData) -> Drawing | None:
                 ms=2.8,
                 mew=0,
                 color=style.LINES[number],
-                label=f"{name} ({values.size})",
+                label=f"{style.short(name, 24)} ({values.size})",
             )
             tables.append(
                 pd.DataFrame({"metal": metal, "domain": name, "value": values, "cumulative_share": p})
@@ -208,7 +208,7 @@ def density(data: ReportData) -> Drawing | None:
             )
     axis.set_yticks(
         range(len(used)),
-        [f"{r['domain']} (n {int(r.get('n', 0) or 0)})" for r in used.to_dict("records")][::-1],
+        [f"{style.short(r['domain'])} (n {int(r.get('n', 0) or 0)})" for r in used.to_dict("records")][::-1],
     )
     axis.set_ylim(-0.7, len(used) - 0.4)
     axis.set_xlabel("Bulk density (t/m³)")
@@ -245,7 +245,9 @@ def top_cuts(data: ReportData) -> Drawing | None:
             va="center",
             fontsize=7,
         )
-    axis.set_yticks(place, [f"{element_label(m)}, {d}" for m, d in zip(cuts["metal"], cuts["domain"])])
+    axis.set_yticks(
+        place, [f"{element_label(m)}, {style.short(d)}" for m, d in zip(cuts["metal"], cuts["domain"])]
+    )
     axis.set_xlabel("Metal removed by the cut (% of the uncapped mean)")
     axis.margins(x=0.35)
     axis.set_xlim(left=0)

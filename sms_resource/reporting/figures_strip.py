@@ -13,6 +13,7 @@ from sms_resource.reporting.style import Drawing
 from sms_resource.units import element_label
 
 HOLES_A_PAGE = 24
+MOST_CODES = 18
 ROCK_COLOURS = ("#8da9c4", "#c9a66b", "#7f8f6a", "#b48291", "#d8cfc0", "#5f6f7a", "#a3c1ad", "#c4b7d4")
 ROCK_HATCHES = ("", "///", "...", "xx", "", "\\\\\\", "++", "oo")
 
@@ -85,7 +86,7 @@ def strip_logs(data: ReportData, holes_a_page: int = HOLES_A_PAGE) -> list[Drawi
                             PolyCollection(
                                 _bars(part[mine], at[mine], -0.42, 0.16),
                                 fc=ROCK_COLOURS[look[code] % 8],
-                                hatch=ROCK_HATCHES[look[code] % 8],
+                                hatch=ROCK_HATCHES[(look[code] + look[code] // 8) % 8],
                                 ec=style.QUIET,
                                 lw=0.3,
                             )
@@ -128,7 +129,12 @@ def strip_logs(data: ReportData, holes_a_page: int = HOLES_A_PAGE) -> list[Drawi
             axis.set_xlim(-0.6, per_row - 0.4)
             axis.set_ylim(deepest * 1.07 + 0.5, 0.0)
             axis.set_xticks(
-                range(len(group)), group, rotation=40, ha="left", fontsize=7, rotation_mode="anchor"
+                range(len(group)),
+                [style.short(hole, 16) for hole in group],
+                rotation=40,
+                ha="left",
+                fontsize=7,
+                rotation_mode="anchor",
             )
             axis.xaxis.tick_top()
             axis.set_ylabel("Depth down the hole (m)")
@@ -149,12 +155,14 @@ def strip_logs(data: ReportData, holes_a_page: int = HOLES_A_PAGE) -> list[Drawi
         handles = [
             Patch(
                 fc=ROCK_COLOURS[look[c] % 8],
-                hatch=ROCK_HATCHES[look[c] % 8],
+                hatch=ROCK_HATCHES[(look[c] + look[c] // 8) % 8],
                 ec=style.QUIET,
-                label=str(c)[:28],
+                label=style.short(c, 24),
             )
-            for c in codes[:8]
+            for c in codes[:MOST_CODES]
         ]
+        if len(codes) > MOST_CODES:
+            handles.append(Patch(fc="none", ec="none", label=f"and {len(codes) - MOST_CODES} more codes"))
         handles += [
             Patch(fc="white", ec=style.INK, label="no grade (lost or not assayed)"),
             Patch(fc="#b9c3cc", label="recovery, 0 to 100 %"),
@@ -166,7 +174,7 @@ def strip_logs(data: ReportData, holes_a_page: int = HOLES_A_PAGE) -> list[Drawi
             Drawing(
                 f"strip_logs_{number:02d}",
                 "evidence",
-                f"Strip logs, page {number} of {len(pages)}: {page[0]} to {page[-1]}",
+                f"Strip logs, page {number} of {len(pages)}: {style.short(page[0], 24)} to {style.short(page[-1], 24)}",
                 f"Each hole from left: logged lithology, {element_label(metal)} (blank where core was lost or"
                 " not assayed), recovery of the run. Below each hole: ▼ ended in sulphide, — ended in host"
                 " rock, × lost.",

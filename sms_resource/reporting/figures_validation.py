@@ -46,7 +46,7 @@ def swaths(data: ReportData) -> Drawing | None:
         return None
     metals, axes_names = metals_in(data, frame, "column"), list(dict.fromkeys(frame["axis"].astype(str)))[:3]
     figure, axes = style.new_figure(
-        3.5 * len(axes_names), 2.25 * len(metals) + 0.3, len(metals), len(axes_names)
+        3.5 * len(axes_names), 2.05 * len(metals) + 0.6, len(metals), len(axes_names), sharex="col"
     )
     others = [
         c

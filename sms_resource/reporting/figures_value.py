@@ -151,7 +151,7 @@ def _waterfall(
             if number < len(frame) - 1
             else None
         )
-    axis.set_yticks(range(len(frame)), list(frame["step"].astype(str))[::-1])
+    axis.set_yticks(range(len(frame)), [style.short(step) for step in frame["step"]][::-1])
     axis.set_ylim(-0.6, len(frame) - 0.4)
     axis.set_xlabel(f"Dry tonnes ({unit} dry), {data.tally_label}")
     axis.margins(x=0.12)
@@ -220,7 +220,7 @@ def geometry(data: ReportData) -> Drawing | None:
             fontsize=7,
         )
     axis.axvline(0, color=style.INK, lw=0.9)
-    axis.set_yticks(place, [case.replace("_", " ") for case in frame["case"].astype(str)])
+    axis.set_yticks(place, [style.short(case.replace("_", " ")) for case in frame["case"].astype(str)])
     axis.set_xlabel("Change of dry tonnes of the body (%)")
     axis.margins(x=0.18)
     return Drawing(

@@ -165,7 +165,7 @@ def _continuity(data: ReportData) -> str:
     if assumed:
         named = "; ".join(f"{_names([r.metal])} in {r.domain}: {', '.join(r.assumed)}" for r in assumed)
         return f"{text} Assumed rather than inferred: {named}."
-    return f"{text} Nothing in them was assumed."
+    return f"{text} Nothing in them was assumed beyond what the study fixes."
 
 
 def _estimation(data: ReportData) -> str:

@@ -28,7 +28,9 @@ from sms_resource.reporting.elements import (
 _LONG_WORD = re.compile(r"\S{15,}")
 _BREAK_AFTER = re.compile(r"([_./\\,;:=&?-])(?=\S)")
 ZERO_WIDTH_SPACE = "\u200b"
-PAGE_CHARACTERS = 118  # characters of the smallest table text across a page
+PAGE_POINTS = 498.0  # between the margins of the template
+POINTS_A_CHARACTER = 0.52  # mean advance of the template's font, as a share of its size
+NARROW = 17.0  # characters up to which a column keeps its own width
 
 
 def soften(text: str) -> str:
@@ -55,6 +57,16 @@ def column_shares(table: Table) -> list[float]:
     return shares
 
 
+def column_widths(shares: list[float], size: float) -> list[dict[str, float]]:
+    """Widths for the template: narrow columns keep theirs where long ones can share the rest of the page."""
+    narrow = sum(share for share in shares if share <= NARROW) * size * POINTS_A_CHARACTER
+    if narrow > 0.65 * PAGE_POINTS or all(share <= NARROW for share in shares):
+        return [{"fr": share} for share in shares]
+    return [
+        {"pt": share * size * POINTS_A_CHARACTER} if share <= NARROW else {"fr": share} for share in shares
+    ]
+
+
 def _block(block: Block) -> dict[str, Any] | None:
     if isinstance(block, Paragraph):
         return {"kind": "paragraph", "text": soften(block.text), "look": block.kind}
@@ -71,13 +83,16 @@ def _block(block: Block) -> dict[str, Any] | None:
         drawing = block.drawing
         return {"kind": "picture", "file": f"{drawing.key}.png", "title": soften(drawing.title),
                 "caption": soften(drawing.caption), "alt": drawing.alt,
-                "width": min(1.0, float(drawing.figure.get_figwidth()) / 9.0)}  # fmt: skip
+                "width": min(1.0, drawing.size_in[0] / 9.0)}  # fmt: skip
     if isinstance(block, Table):
         shares = column_shares(block)
         size = 8.0 if sum(shares) <= 95 else 7.0 if sum(shares) <= 125 else 6.0
+        if block.key == "tonnes" and sum(shares) <= 125:
+            size = 8.0  # the table that everyone reads
         return {"kind": "table", "title": soften(block.title), "columns": [soften(c) for c in block.columns],
                 "rows": [[soften(cell) for cell in row] for row in block.rows], "numeric": list(block.numeric),
-                "strong": list(block.strong), "note": soften(block.note), "shares": shares, "size": size}  # fmt: skip
+                "strong": list(block.strong), "note": soften(block.note),
+                "widths": column_widths(shares, size), "size": size}  # fmt: skip
     return None
 
 

@@ -6,11 +6,10 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from sms_resource.reporting.data import ReportData
+from sms_resource.reporting.drawing import draw_all
 from sms_resource.reporting.elements import Document
-from sms_resource.reporting.figures import all_drawings
 from sms_resource.reporting.html import write_html
 from sms_resource.reporting.sections import build_document
-from sms_resource.reporting.style import borrowed_settings, save_drawing
 
 
 @dataclass(frozen=True)
@@ -26,14 +25,10 @@ def make_report(data: ReportData, folder: Path) -> Report:
     """Draw, build and write ``report.html`` and ``figures/`` (PNG, SVG, and ``data/*.csv``) under ``folder``."""
     folder = Path(folder)
     folder.mkdir(parents=True, exist_ok=True)
-    drawings, absent = all_drawings(data)
-    pictures: dict[str, bytes] = {}
-    paths: list[Path] = []
-    with borrowed_settings():
-        for drawing in drawings:
-            pictures[drawing.key], written = save_drawing(drawing, folder / "figures")
-            paths += written
-    document = build_document(data, drawings, absent)
+    drawn, absent = draw_all(data, folder / "figures")
+    pictures = {item.drawing.key: item.picture for item in drawn}
+    paths = [path for item in drawn for path in item.paths]
+    document = build_document(data, [item.drawing for item in drawn], absent)
     paths.insert(0, write_html(document, pictures, folder / "report.html"))
     return Report(document, pictures, paths)
 

@@ -18,7 +18,7 @@ from sms_resource.reporting.elements import (
 )
 from sms_resource.reporting.rounding import mass_text
 from sms_resource.reporting.summaries import checks_shown
-from sms_resource.reporting.tonnage import class_rows, rows_at_cutoff, tonnage_table
+from sms_resource.reporting.tonnage import rows_at_cutoff, screens_table, tonnage_table
 from sms_resource.units import element_label
 
 
@@ -110,16 +110,9 @@ def tonnes(data: ReportData) -> list[Block]:
                 f"Connected shapes with their must-take material, at {data.cutoff_text} ({label})",
             )
         )
-    if data.body.waterfall is not None and len(data.body.waterfall):
-        blocks += [
-            frame_table(
-                data.body.waterfall,
-                f"What the screens take ({label})",
-                labels={"dry_tonnes": "Dry tonnes (t dry)"},
-            ),
-            Slot(("waterfall",)),
-        ]
-    return blocks if len(class_rows(rows)) or len(blocks) > 1 else []
+    with_table(blocks, screens_table(data), f"What the screens take ({label})")
+    blocks.append(Slot(("waterfall",)))
+    return blocks
 
 
 def scenarios(data: ReportData) -> list[Block]:

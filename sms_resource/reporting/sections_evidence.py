@@ -169,7 +169,7 @@ def body(data: ReportData) -> list[Block]:
                 + "."
             )
         )
-    with_table(blocks, body.audit, "Audit of the body", most=20)
+    with_table(blocks, body.audit, "Audit of the body", most=12)
     with_table(blocks, body.geometry_uncertainty, "Uncertainty of the geometry")
     blocks.append(Slot(("geometry",)))
     with_table(blocks, body.grid_proposal, "Block grid: what is proposed, and why")
@@ -209,7 +209,11 @@ def _said(record: VariogramRecord) -> str:
     parts = [record.statement.strip()]
     if record.nugget_from:
         parts.append(f"Nugget from: {record.nugget_from}.")
-    parts.append(f"Assumed: {'; '.join(record.assumed)}." if record.assumed else "Nothing was assumed.")
+    parts.append(
+        f"Assumed: {'; '.join(record.assumed)}."
+        if record.assumed
+        else "Assumed: nothing beyond what the study fixes."
+    )
     if record.bounds_hit:
         parts.append(f"Bounds hit by the fit: {'; '.join(record.bounds_hit)}.")
     parts.append(f"{record.sample_count} composites in {record.hole_count} holes.")

@@ -17,6 +17,7 @@ from sms_resource.reporting.elements import (
     cell_text,
     frame_table,
     plain_words,
+    setting_text,
     with_table,
 )
 from sms_resource.reporting.method import method_statement
@@ -63,7 +64,7 @@ def plain_value(value: Any) -> str:
         ) or "none"
     if isinstance(value, (list, tuple)):
         return ", ".join(plain_value(item) for item in value) or "none"
-    return "not set" if value is None else cell_text(value, 6)
+    return "not set" if value is None else setting_text(value)
 
 
 def _set_parts(name: str, value: Any) -> list[tuple[str, str]]:

@@ -63,7 +63,7 @@ def basis(data: ReportData) -> list[tuple[str, str]]:
         (
             "Cut-off",
             f"{data.cutoff_text}; basis: {cutoff.get('basis') or 'not stated'}"
-            + (f"; {cutoff['currency']}" if cutoff.get("currency") else "")
+            + (f"; {cutoff['currency']}" if cutoff.get("basis") and cutoff.get("currency") else "")
             + (f", {cutoff['date']}" if cutoff.get("date") else ""),
         )
     )
@@ -76,15 +76,19 @@ def basis(data: ReportData) -> list[tuple[str, str]]:
         )
     else:
         pairs.append(("Reasonable prospects", "not judged"))
+    surface = len(evidence.surface) if evidence.surface is not None else 0
     holes = len(evidence.collars) if evidence.collars is not None else 0
     count = len(evidence.composites) if evidence.composites is not None else 0
     pairs.append(
         (
             "Samples",
             (
-                f"{holes} holes, {count} composites;"
-                f" {len(evidence.surface) if evidence.surface is not None else 0} surface samples"
-                f" ({evidence.surface_use.rstrip('. ') or 'kept out of the estimate'})"
+                f"{holes} holes, {count} composites; "
+                + (
+                    f"{surface} surface samples ({evidence.surface_use.rstrip('. ') or 'kept out of the estimate'})"
+                    if surface
+                    else "no surface samples"
+                )
             ),
         )
     )

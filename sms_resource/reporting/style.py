@@ -9,6 +9,7 @@ what a colour says.
 from __future__ import annotations
 
 import math
+import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
@@ -68,6 +69,7 @@ SETTINGS: Any = {
     "lines.linewidth": 1.4,
     "hatch.linewidth": 0.5,
     "hatch.color": "#7d8489",
+    "text.parse_math": False,  # a dollar sign in a name is a dollar sign
     "path.simplify": True,
     "axes.formatter.useoffset": False,
     "axes.formatter.limits": (-5, 9),
@@ -80,7 +82,8 @@ SETTINGS: Any = {
 class Drawing:
     """One finished figure with the words and the numbers that belong to it.
 
-    ``section`` names the part of the report; ``table`` is what was drawn, as a table.
+    ``section`` names the part of the report; ``table`` is what was drawn, as a table. Once it is
+    saved the figure is let go; its size in inches stays.
     """
 
     key: str
@@ -88,8 +91,9 @@ class Drawing:
     title: str
     caption: str
     alt: str
-    figure: Figure
+    figure: Figure | None
     table: pd.DataFrame
+    size_in: tuple[float, float] = (0.0, 0.0)
 
 
 @contextmanager
@@ -97,7 +101,9 @@ def borrowed_settings() -> Iterator[None]:
     """Draw inside this: the settings hold within and are given back after."""
     import matplotlib
 
-    with matplotlib.rc_context(SETTINGS):
+    with matplotlib.rc_context(SETTINGS), warnings.catch_warnings():
+        # A name in a script that the font does not hold is drawn as boxes; the tables hold it whole.
+        warnings.filterwarnings("ignore", message="Glyph .* missing from font")
         yield
 
 
@@ -133,6 +139,7 @@ def save_drawing(drawing: Drawing, folder: Path) -> tuple[bytes, list[Path]]:
     png, svg = folder / f"{drawing.key}.png", folder / f"{drawing.key}.svg"
     table = folder / "data" / f"{drawing.key}.csv"
     figure = drawing.figure
+    assert figure is not None  # drawn and not yet let go
     engine = figure.get_layout_engine()
     if engine is not None:
         engine.execute(figure)
@@ -266,3 +273,9 @@ def class_name(name: Any) -> str:
     """A proposed class as a person reads it: ``Inferred``; "all" stays for the caller to name."""
     text = str(name)
     return text[:1].upper() + text[1:] if text else "Unclassified"
+
+
+def short(text: Any, most: int = 44) -> str:
+    """A label that cannot push a figure out of its frame."""
+    line = " ".join(str(text).split())
+    return line if len(line) <= most else line[: most - 1] + "…"

@@ -103,3 +103,11 @@ def tonnage_table(data: ReportData, rows: pd.DataFrame, title: str, *, first: Se
 def class_rows(rows: pd.DataFrame) -> pd.DataFrame:
     """The rows without the sum over classes."""
     return rows[rows["proposed_class"].astype(str).str.lower() != "all"]
+
+
+def screens_table(data: ReportData) -> pd.DataFrame | None:
+    """The waterfall with contained metal in columns that say so: ``cu_contained_t``."""
+    frame = data.body.waterfall
+    if frame is None:
+        return None
+    return frame.rename(columns={m: f"{m.rpartition('_')[0]}_contained_t" for m in data.subject.metals})

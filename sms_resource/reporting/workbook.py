@@ -14,7 +14,7 @@ from sms_resource.reporting.cautions import all_cautions
 from sms_resource.reporting.data import ReportData
 from sms_resource.reporting.elements import cell_text, column_label, plain_words
 from sms_resource.reporting.sections_record import ledger_frame
-from sms_resource.reporting.tonnage import ROUNDING_NOTE, rows_at_cutoff
+from sms_resource.reporting.tonnage import ROUNDING_NOTE, rows_at_cutoff, screens_table
 from sms_resource.units import column_element
 
 if TYPE_CHECKING:
@@ -152,7 +152,7 @@ def workbook_sheets(data: ReportData) -> list[tuple[str, pd.DataFrame | None, st
         ),
         ("Scenarios", v.scenarios, f"One row a scenario; {label}."),
         ("Tornado", v.tornado, f"Low, base and high of each decision; {label}."),
-        ("Screens", data.body.waterfall, f"What each screen takes; {label}."),
+        ("Screens", screens_table(data), f"What each screen takes; {label}."),
         ("Geometry", data.body.geometry_uncertainty, "Base, seafloor and outline moved."),
         ("Ledger", ledger_frame(data), "Every decision of the study."),
         ("Checks", s.checks, "Checks of the estimate and their verdicts."),

@@ -2,10 +2,12 @@
 
 import pytest
 
+from sms_resource.reporting.figures import all_drawings
 from sms_resource.reporting.report import Report, make_report
+from sms_resource.reporting.style import Drawing
 from tests.reporting.synthetic import full_report_data
 
-HOSTILE = "<script>alert(1)</script> & \"quoted\" 'text'"
+HOSTILE = "<script>alert(1)</script> & \"quoted\" 'text' $\\frac{ #set |*_"
 
 
 @pytest.fixture(scope="session")
@@ -30,3 +32,11 @@ def report(hostile_data, tmp_path_factory) -> Report:
 def page(report) -> str:
     """Its page as text."""
     return report.paths[0].read_text(encoding="utf-8")
+
+
+@pytest.fixture(scope="session")
+def drawings(hostile_data) -> list[Drawing]:
+    """All figures of the same data, drawn and not yet let go."""
+    made, absent = all_drawings(hostile_data)
+    assert absent == []
+    return made

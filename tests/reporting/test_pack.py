@@ -53,7 +53,7 @@ def test_pages_say_what_the_web_page_says(report):
     assert pictures == {f"{key}.png" for key in report.pictures}
     for block in blocks:
         if block["kind"] == "table":
-            assert len(block["shares"]) == len(block["columns"]) == len(block["numeric"])
+            assert len(block["widths"]) == len(block["columns"]) == len(block["numeric"])
             assert all(len(row) == len(block["columns"]) for row in block["rows"])
 
 

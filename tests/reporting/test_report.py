@@ -114,16 +114,14 @@ def test_every_picture_is_there_with_words(parsed, report):
         assert path.stat().st_size > 50, path
 
 
-def test_every_maker_draws_with_full_data(report, page):
-    drawings = report.document.drawings()
+def test_every_maker_draws_with_full_data(drawings, page):
     assert "Figures without data in this study" not in page
     assert len({drawing.key for drawing in drawings}) == len(drawings) >= len(MAKERS)
     for drawing in drawings:
         assert drawing.caption.strip() and drawing.alt.strip() and len(drawing.table)
 
 
-def test_axes_carry_units_plans_a_bar_and_sections_their_exaggeration(report):
-    drawings = report.document.drawings()
+def test_axes_carry_units_plans_a_bar_and_sections_their_exaggeration(drawings):
     unit = re.compile(
         r"\((m|%|g/t|t/m³|ratio|count|kt dry|t dry|Mt dry|kt)\)|%|^(Holes|Composites|Drilled"
         r" length)|squared|SD$|g/t|\bratio\b"
@@ -144,10 +142,10 @@ def test_axes_carry_units_plans_a_bar_and_sections_their_exaggeration(report):
             )
 
 
-def test_figures_of_tonnes_carry_the_tally_label(report):
-    drawings = {drawing.key: drawing for drawing in report.document.drawings()}
+def test_figures_of_tonnes_carry_the_tally_label(drawings):
+    by_key = {drawing.key: drawing for drawing in drawings}
     for key in ("grade_tonnage", "waterfall", "tornado", "heat_map", "plan_classes"):
-        words = drawings[key].title + " ".join(axes.get_xlabel() for axes in drawings[key].figure.axes)
+        words = by_key[key].title + " ".join(axes.get_xlabel() for axes in by_key[key].figure.axes)
         assert "block-model tally" in words, key
 
 
@@ -168,8 +166,8 @@ def test_every_tonnage_says_dry_or_wet(parsed):
         assert re.match(r"\s(dry|wet|metal)", found.group(1)), found.group(0)
 
 
-def test_every_tonnage_of_a_figure_says_dry_or_wet(report):
-    for drawing in report.document.drawings():
+def test_every_tonnage_of_a_figure_says_dry_or_wet(drawings):
+    for drawing in drawings:
         for axes in drawing.figure.axes:
             for label in (axes.get_xlabel(), axes.get_ylabel()):
                 assert not re.search(r"tonne", label, re.I) or re.search(r"\b(dry|wet)\b", label, re.I), (
@@ -226,13 +224,16 @@ def test_any_part_of_the_evidence_may_be_absent(data, part):
     assert build_document(less, []).sections
 
 
-def test_same_data_same_bytes(data, tmp_path):
+def test_same_data_same_bytes_drawn_by_one_interpreter_or_two(data, tmp_path, monkeypatch):
     small = ReportData(
         subject=data.subject,
         evidence=Evidence(collars=data.evidence.collars, surface_bias=data.evidence.surface_bias),
         body=BodyEvidence(seafloor=data.body.seafloor, outline=data.body.outline),
     )
-    written = [write_report(small, tmp_path / name) for name in ("a", "b")]
+    written = []
+    for name, processors in (("a", 1), ("b", 2)):
+        monkeypatch.setattr("os.cpu_count", lambda count=processors: count)
+        written.append(write_report(small, tmp_path / name))
     assert len(written[0]) == 10  # the page, and three files for each of three figures
     for one, other in zip(*written):
         assert one.relative_to(tmp_path / "a") == other.relative_to(tmp_path / "b")
@@ -245,3 +246,46 @@ def test_drawing_leaves_no_global_state(data):
     before = dict(matplotlib.rcParams)
     all_drawings(ReportData(subject=data.subject, value=data.value))
     assert dict(matplotlib.rcParams) == before
+
+
+def test_names_that_are_long_or_in_another_script_do_not_break_a_figure(data, tmp_path):
+    import warnings
+
+    long = "a very long name of a domain that goes on " * 8
+    composites = data.evidence.composites.replace({"domain": {"cap": long, "massive": "硫化物"}})
+    density = data.evidence.density_by_domain.assign(domain=[long, "硫化物"])
+    waterfall = data.body.waterfall.assign(step=[long, "a", "b", "c", "硫化物"])
+    odd = ReportData(
+        subject=data.subject,
+        evidence=Evidence(composites=composites, density_by_domain=density),
+        body=BodyEvidence(waterfall=waterfall),
+    )
+    with warnings.catch_warnings():
+        warnings.simplefilter("error")
+        paths = write_report(odd, tmp_path)
+    assert {"density.png", "waterfall.png", "log_probability.png"} <= {path.name for path in paths}
+
+
+def test_a_domain_name_cannot_take_the_place_of_another_figure(data):
+    records = tuple(
+        replace(record, domain=name)
+        for record, name in zip(data.variograms, ("cap", "cap rock"), strict=True)
+    )
+    named = replace(data, variograms=records)
+    drawings, _ = all_drawings(ReportData(subject=data.subject, variograms=records))
+    section = next(s for s in build_document(named, drawings).sections if s.key == "continuity")
+    kinds = [type(block).__name__ for block in section.blocks]
+    headings = [n for n, kind in enumerate(kinds) if kind == "Heading"]
+    assert len(headings) == 2 and kinds.count("Picture") == 2
+    assert "Picture" in kinds[headings[0] : headings[1]] and "Picture" in kinds[headings[1] :]
+
+
+def test_screens_name_contained_metal_not_grade(data):
+    from sms_resource.reporting.elements import frame_table
+    from sms_resource.reporting.tonnage import screens_table
+
+    body = replace(
+        data.body, waterfall=data.body.waterfall.assign(cu_pct=[9000.0, -700.0, -800.0, -100.0, 7400.0])
+    )
+    columns = frame_table(screens_table(replace(data, body=body)), "t").columns
+    assert "Cu contained (t metal)" in columns and "Cu\u00a0(%)" not in columns
