@@ -363,7 +363,7 @@ class Scene:
         away = (-math.cos(h) * math.sin(a), -math.cos(h) * math.cos(a), math.sin(h))
         self.plotter.camera_position = [away, (0.0, 0.0, 0.0), (0.0, 0.0, 1.0)]
         self.plotter.reset_camera(bounds=self._bounds, render=False)
-        self.plotter.camera.zoom(1.25)
+        self.plotter.camera.zoom(1.14)
 
 
 def round_ranges(true: list[float]) -> tuple[list[float], list[float], list[int]]:
@@ -375,7 +375,7 @@ def round_ranges(true: list[float]) -> tuple[list[float], list[float], list[int]
         Low and high of easting, northing and elevation.
     """
     low, high, counts = [], [], []
-    for a, b, wanted in ((true[0], true[1], 5), (true[2], true[3], 5), (true[4], true[5], 4)):
+    for a, b, wanted in ((true[0], true[1], 5), (true[2], true[3], 5), (true[4], true[5], 2)):
         span = max(b - a, 1e-6)
         power = 10.0 ** math.floor(math.log10(span / wanted))
         step = next(power * n for n in (1, 2, 5, 10) if power * n >= 0.8 * span / wanted)
