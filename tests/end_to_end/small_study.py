@@ -151,6 +151,7 @@ def decisions() -> dict[str, Any]:
         "domains": {"codes": {"CP": "cap", "MS": "massive", "AV": "waste"}, "sulphide": ["cap", "massive"]},
         "blocks": {"size_m": [5.0, 5.0, 2.0], "azimuth_deg": 0.0, "origin_m": [WEST, SOUTH, -1620.0]},
         "kriging": {"discretisation": [2, 2, 2]},
+        "variograms": {"intervals": False},
         "body": {"extrapolate_below_m": 2.0},
         "classes": {"least_volume_m3": 100.0},
         "screens": {"least_thickness_m": 0.5},
