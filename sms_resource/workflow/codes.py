@@ -11,5 +11,6 @@ CODES: dict[str, str] = {
     "outline-proposed": "The outline of the body was proposed by the tool.",
     "stage-refused": "A stage cannot work with a value that the study or its data give it.",
     "top-cut-proposed": "Top cuts that the tool proposes were applied.",
+    "truth-unreadable": "The known truth of an invented deposit cannot be read.",
     "validation-flag": "A check of the estimate is outside its limit.",
 }

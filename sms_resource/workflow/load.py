@@ -6,6 +6,7 @@ from typing import Any
 
 from sms_resource.loaders.tables import LoadedData
 from sms_resource.study.files import GridFile, LayerFile, TableFile
+from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.stage import Context
 
 
@@ -71,8 +72,27 @@ def load(context: Context) -> LoadedData:
     loaded["outline"] = read_layer(context, data.outline, "outline")
     loaded["exclusions"] = read_layer(context, data.exclusions, "exclusions")
     loaded["files"] = context.study.files()
+    if data.truth:
+        check_truth(context, data.truth)
     context.detail = f"{len(drill.collars)} holes, {len(drill.assays)} assays"
     return LoadedData(**loaded)
+
+
+def check_truth(context: Context, name: str) -> None:
+    """Whether the known truth can be put against the estimate."""
+    import json
+
+    try:
+        body = json.loads(context.study.resolve(name).read_text(encoding="utf-8"))["body"]
+        wanted = ("volume_m3", "dry_tonnes", "wet_tonnes", *metal_columns(context.config))
+        missing = [key for key in wanted if not isinstance(body.get(key), int | float)]
+    except (ValueError, KeyError, TypeError, AttributeError):
+        missing = ["body"]
+    if missing:
+        context.findings.error(
+            "truth-unreadable", f"the truth file has no number for {', '.join(missing)}",
+            "Give JSON with a table \"body\", or leave data.truth out: a real deposit has none.", file=name,
+        )  # fmt: skip
 
 
 def _grid(context: Context, grid: GridFile) -> Any:
