@@ -14,6 +14,7 @@ from sms_resource.blocks.profile import FLOOR, EdgeProfile, edge_profile
 from sms_resource.blocks.thickness_draws import Quadrature, fit_thickness
 from sms_resource.blocks.thickness_fit import ThicknessFit
 from sms_resource.blocks.thickness_model import Sites, ThicknessSettings, parameter_sets
+from sms_resource.blocks.threads import on_one_thread
 
 Array = NDArray[Any]
 METHODS = ("kriging", "spline", "linear")
@@ -63,6 +64,7 @@ class Interpolation:
     record: dict[str, Any] = field(default_factory=dict)
 
 
+@on_one_thread
 def interpolate_thickness(
     top: SurfaceGrid,
     outline: Any,
@@ -112,7 +114,7 @@ def interpolate_thickness(
     holes = sites.at(data.x, data.y)
     fit = fit_thickness(
         holes, shifted, data.is_open, data.sigma, candidates, places, settings, positive=positive
-    )  # fmt: skip
+    )
     mean, known, sigma = sites.estimate(fit.likeliest())
     mean, known = np.maximum(mean + offset.values, 0.0), np.maximum(known + offset.values, 0.0)
     if edge and not edge_thickness_m:

@@ -30,6 +30,7 @@ from sms_resource.blocks.body_parts import (
 from sms_resource.blocks.grid import SurfaceGrid
 from sms_resource.blocks.polygons import check_outline
 from sms_resource.blocks.thickness_model import ThicknessSettings
+from sms_resource.blocks.threads import on_one_thread
 from sms_resource.findings import Findings
 
 Array = NDArray[Any]
@@ -139,6 +140,7 @@ class Body:
         )
 
 
+@on_one_thread
 def build_body(
     seafloor: SurfaceGrid,
     outline: Any,
@@ -271,7 +273,7 @@ def build_body(
     lost = float(np.sum(thickness.values - limited) * top.dx * top.dy)
     thickness = thickness.with_values(np.nan_to_num(limited))
     names = [str(name) for name in good["hole_id"]]
-    top, thickness, known, sigma = honour_holes(top, (thickness, known, sigma), holes, names, findings)
+    thickness, known = honour_holes(thickness, known, holes, names, findings)
     if lost > 1e-6:
         findings.note(
             "extrapolation-limited",
@@ -300,6 +302,8 @@ def build_body(
 def _assemble(body: Body) -> Body:
     """Base, volume and categories that follow from the top and the thickness."""
     base = body.top.with_values(body.top.values - body.thickness.values)
+    if body.thickness.pins is not None:
+        base = replace(base, pins=body.thickness.pins * np.array([1.0, 1.0, 1.0, -1.0]))
     volume, categories = measure(
         body.top, body.thickness, body.known, body.distance, body.outline, body.drilled_within_m
     )

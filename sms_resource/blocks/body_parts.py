@@ -9,7 +9,6 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.blocks.base import ThicknessData
-from sms_resource.blocks.body_inputs import refine
 from sms_resource.blocks.grid import SurfaceGrid
 from sms_resource.blocks.honour import honour
 from sms_resource.blocks.polygons import CellMoments, lattice_moments, polygon_edges
@@ -17,8 +16,6 @@ from sms_resource.findings import Findings
 
 Array = NDArray[Any]
 CATEGORIES = ("drilled", "sideways", "downwards")
-FINEST_NODES = 3_000_000
-STEEP = 3.0  # nodes round a hole may be moved by this many times what the hole was missed by, and 0.5 m
 
 
 def outline_moments(grid: SurfaceGrid, outline: Any) -> CellMoments:
@@ -78,43 +75,23 @@ def hole_distance(top: SurfaceGrid, contacts: pd.DataFrame) -> SurfaceGrid:
 
 
 def honour_holes(
-    top: SurfaceGrid,
-    surfaces: tuple[SurfaceGrid, SurfaceGrid, SurfaceGrid],
-    holes: ThicknessData,
-    names: list[str],
-    findings: Findings,
-) -> tuple[SurfaceGrid, SurfaceGrid, SurfaceGrid, SurfaceGrid]:
-    """Make thickness and known thickness honour the holes, on a finer lattice where holes crowd.
+    thickness: SurfaceGrid, known: SurfaceGrid, holes: ThicknessData, names: list[str], findings: Findings
+) -> tuple[SurfaceGrid, SurfaceGrid]:
+    """Make thickness and known thickness honour the holes.
 
-    Holes in one cell can contradict each other on a bilinear grid, or tear at its corners; the lattice is then
-    halved until they do not. Holes at one and the same place that contradict each other are reported.
-
-    Returns
-    -------
-    (top, thickness, known, sigma)
+    Holes at one and the same place that contradict each other are reported.
     """
-    thickness, known, sigma = surfaces
-    x, y, target, at_least = holes.x, holes.y, holes.thickness, holes.is_open
-    x, y, target, at_least = _one_place(x, y, target, at_least, names, findings)
-    while True:
-        done, missed = honour(thickness, x, y, target, at_least)
-        got = thickness.sample(x, y)
-        gap = np.where(at_least, np.maximum(target - got, 0.0), np.abs(target - got))
-        limit = STEEP * (gap.max() if gap.size else 0.0) + 0.5
-        torn = float(np.abs(done.values - thickness.values).max()) > limit
-        if (not missed.any() and not torn) or 4 * thickness.values.size > FINEST_NODES:
-            break
-        top, thickness, known, sigma = (refine(grid, 2, 2) for grid in (top, thickness, known, sigma))
-    if missed.any():
-        worst = int(np.argmax(missed))
-        findings.warning(
-            "contacts-joined",
-            f"{int((missed > 0).sum())} contacts stand closer together than the finest grid ({top.dx:.3g} m) can "
-            f"tell apart; the worst is missed by {missed[worst]:.3f} m at {x[worst]:.2f}, {y[worst]:.2f}",
-            "check twin holes for their position, or leave one out",
+    x, y, target, at_least = _one_place(holes.x, holes.y, holes.thickness, holes.is_open, names, findings)
+    done = honour(thickness, x, y, target, at_least)
+    if done.pins is not None:
+        findings.note(
+            "contacts-crowded",
+            f"{len(done.pins)} holes stand so close to others that a cell of {thickness.dx:g} m cannot meet them all; "
+            "the base meets them in a cone of less than half a cell round each",
+            "check the positions of twin holes if their thickness differs much",
         )
-    held, _ = honour(known, x, y, target, np.zeros(len(x), dtype=bool))
-    return top, done, known.with_values(np.minimum(held.values, done.values)), sigma
+    held = honour(known, x, y, target, np.zeros(len(x), dtype=bool))
+    return done, known.with_values(np.minimum(held.values, done.values))
 
 
 def _one_place(

@@ -129,4 +129,4 @@ def _contact(body: Body, logged: pd.DataFrame, level: int, name: str, findings: 
         return np.full(body.top.shape, 1e6)
     data = ThicknessData(table[:, 0], table[:, 1], table[:, 2], is_open, np.zeros(len(table)))
     made = interpolate_thickness(body.top, body.outline, data, edge_thickness_m=None)
-    return honour(made.thickness, data.x, data.y, data.thickness, data.is_open)[0].values
+    return honour(made.thickness, data.x, data.y, data.thickness, data.is_open).values

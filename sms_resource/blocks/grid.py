@@ -29,6 +29,9 @@ class SurfaceGrid:
         Coordinate reference system, such as ``"EPSG:32756"``.
     uncertainty : ndarray (ny, nx), optional
         One standard deviation of ``values``, in the same unit.
+    pins : ndarray (p, 4), optional
+        Easting, northing, radius in m and height of small cones that are added to the bilinear surface, where
+        points that the surface must meet stand closer together than its cells can tell apart.
 
     Raises
     ------
@@ -43,6 +46,7 @@ class SurfaceGrid:
     values: Array
     crs: str | None = None
     uncertainty: Array | None = None
+    pins: Array | None = None
 
     def __post_init__(self) -> None:
         values = np.asarray(self.values, dtype=np.float64)
@@ -87,8 +91,8 @@ class SurfaceGrid:
         return bool(np.isfinite(self.values).any())
 
     def with_values(self, values: Array, uncertainty: Array | None = None) -> SurfaceGrid:
-        """The same cells with other values."""
-        return replace(self, values=values, uncertainty=uncertainty)
+        """The same cells with other values, without pins."""
+        return replace(self, values=values, uncertainty=uncertainty, pins=None)
 
     def mesh(self) -> tuple[Array, Array]:
         """Easting and northing of every cell centre, each (ny, nx)."""
@@ -110,7 +114,12 @@ class SurfaceGrid:
         ndarray
             Values of the shape of ``x``.
         """
-        return _bilinear(self.values, *self._cells(x, y))
+        found = _bilinear(self.values, *self._cells(x, y))
+        if self.pins is not None:
+            for east, north, radius, height in self.pins:
+                off = np.hypot(np.asarray(x) - east, np.asarray(y) - north)
+                found = found + height * np.maximum(1.0 - off / radius, 0.0)
+        return found
 
     def sample_uncertainty(self, x: ArrayLike, y: ArrayLike) -> Array:
         """Bilinear standard deviation at points; NaN everywhere if the grid has none."""

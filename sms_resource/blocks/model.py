@@ -23,6 +23,7 @@ Array = NDArray[Any]
 MOST_CELLS = 400_000_000  # columns in plan times split squared stays below this
 MOST_BLOCKS = 50_000_000
 CHUNK_SUBCOLUMNS = 4_000_000
+FINE_SUBCOLUMNS = 4_000_000
 EXTRAPOLATION = ("drilled", "sideways", "downwards")
 
 
@@ -138,7 +139,8 @@ def fill_blocks(
     single_domain : str
         Its name.
     split : int, optional
-        None takes sub-columns of about half a cell of the body's surfaces, from 3 to 16 along a side.
+        None takes sub-columns of a quarter of a cell of the body's surfaces, or of half a cell where that would
+        make too many; at least 3 along a side.
     most_blocks : int
         More blocks than this are refused.
 
@@ -157,14 +159,13 @@ def fill_blocks(
     domains = domains or LayeredDomains((single_domain,))
     if split is not None and split < 1:
         raise ValueError(f"split must be at least 1, not {split!r}")
-    if split is None:
-        cell = 0.5 * max(min(body.top.dx, body.top.dy), 0.5)
-        split = int(np.clip(math.ceil(max(grid.size[0], grid.size[1]) / cell - 1e-6), 3, 16))
     findings = Findings()
     local, edges = _local_edges(body, grid)
     first_i, last_i = _covered(local[0], local[2], grid.shape[0])
     first_j, last_j = _covered(local[1], local[3], grid.shape[1])
     ni, nj = max(last_i - first_i, 0), max(last_j - first_j, 0)
+    if split is None:
+        split = _split(grid, min(body.top.dx, body.top.dy), ni * nj)
     guess = body.volume_m3 / grid.block_volume_m3
     if guess > most_blocks or ni * nj * split * split > MOST_CELLS:
         edge = max(grid.size) * max(guess / most_blocks, ni * nj * split * split / MOST_CELLS) ** (1 / 2)
@@ -221,6 +222,13 @@ def fill_blocks(
             "raise split, or use smaller blocks",
         )
     return model
+
+
+def _split(grid: BlockGrid, cell: float, columns: int) -> int:
+    """Sub-columns along a side of a block, for surfaces on cells of that size."""
+    plan = columns * grid.size[0] * grid.size[1]
+    wanted = min(max(0.25 * cell, math.sqrt(plan / FINE_SUBCOLUMNS)), 0.5 * max(cell, 0.5))
+    return max(3, math.ceil(max(grid.size[0], grid.size[1]) / wanted - 1e-6))
 
 
 def _local_edges(body: Body, grid: BlockGrid) -> tuple[tuple[float, float, float, float], Array]:

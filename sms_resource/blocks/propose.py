@@ -130,9 +130,12 @@ def _cover(
     rows: list[dict[str, Any]],
 ) -> BlockGrid:
     """The smallest grid on whole multiples of the block that covers the body."""
+    from scipy.ndimage import binary_dilation
+
     turned = BlockGrid((0.0, 0.0, 0.0) if origin is None else origin, size, (1, 1, 1), azimuth)
     edges = polygon_edges(body.outline).reshape(-1, 2)
-    inside = body.thickness.values > 0
+    # Between a node with thickness and one without, the body thins out: both ends count.
+    inside = binary_dilation(body.thickness.values > 0, structure=np.ones((3, 3)))
     tops, bases = body.top.values[inside], body.base.values[inside]
     if not len(edges) or not inside.any():
         raise ValueError("body has no volume, so no grid can cover it")
