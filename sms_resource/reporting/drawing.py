@@ -19,7 +19,6 @@ from sms_resource.reporting.data import ReportData
 from sms_resource.reporting.figures import MAKERS
 from sms_resource.reporting.style import Drawing, borrowed_settings, save_drawing
 
-
 # What the slow figures cost against the others, as measured; only the balance of the two halves rests on it.
 WEIGHTS = {"strip logs": 8.0, "variograms": 7.0, "cross-sections": 3.0, "contact analysis": 3.0, "swaths": 2.0,
            "plan of grades": 2.0, "plan of holes": 2.0, "thickness plan": 2.0}  # fmt: skip
