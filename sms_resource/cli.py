@@ -223,12 +223,36 @@ def view(
     variable: Annotated[str | None, typer.Option(help="Grade to colour by, such as cu or cu_pct.")] = None,
     cutoff: Annotated[float | None, typer.Option(help="Show blocks at or above this grade.")] = None,
     exaggeration: Annotated[float, typer.Option(min=0.1, max=50, help="Vertical exaggeration.")] = 1.0,
+    colour: Annotated[
+        str | None, typer.Option(help="Column that colours the blocks, such as domain.")
+    ] = None,
+    section: Annotated[
+        float | None, typer.Option(help="Azimuth of a plane that opens the blocks (degrees).")
+    ] = None,
+    frame: Annotated[
+        str, typer.Option(help="elevation, or depth to see the seafloor laid flat.")
+    ] = "elevation",
+    screens: Annotated[
+        bool, typer.Option("--screens/--no-screens", help="Leave out what screens took.")
+    ] = True,
+    hide: Annotated[
+        list[str] | None, typer.Option(help="Layer to hide: seafloor, base, body, blocks, holes, names.")
+    ] = None,
 ) -> None:
     """Open the seafloor, the blocks above a cut-off and the holes in a window."""
     from sms_resource.workflow import view_results
 
     message = view_results(
-        results, screenshot=screenshot, variable=variable, cutoff=cutoff, exaggeration=exaggeration
+        results,
+        screenshot=screenshot,
+        variable=variable,
+        cutoff=cutoff,
+        exaggeration=exaggeration,
+        colour=colour,
+        section=section,
+        frame=frame,
+        screened=screens,
+        **({"hide": tuple(hide)} if hide else {}),
     )
     if message:
         typer.echo(message, err=True)

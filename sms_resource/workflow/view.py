@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import Any
 
 from sms_resource.workflow.folder import is_results, recover
 
@@ -14,8 +15,9 @@ def view_results(
     variable: str | None = None,
     cutoff: float | None = None,
     exaggeration: float = 1.0,
+    **options: Any,
 ) -> str | None:
-    """Show results in a window, or draw them into a file.
+    """Show results in a window, or draw them into a file; further options are those of ``viewer.open_scene``.
 
     Returns
     -------
@@ -28,7 +30,14 @@ def view_results(
     from sms_resource.viewer import ViewerUnavailable, open_scene
 
     try:
-        open_scene(folder, screenshot=screenshot, variable=variable, cutoff=cutoff, exaggeration=exaggeration)
+        open_scene(
+            folder,
+            screenshot=screenshot,
+            variable=variable,
+            cutoff=cutoff,
+            exaggeration=exaggeration,
+            **options,
+        )
     except (ViewerUnavailable, ValueError, OSError) as error:
         return str(error)
     return None
