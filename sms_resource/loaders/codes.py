@@ -34,6 +34,7 @@ _COLUMNS = {
     "column-missing": "A column that is needed or mapped is not in the file.",
     "column-duplicate": "Two columns may be meant.",
     "columns-unused": "Columns of the file that were not read.",
+    "unit-differs": "The name of a column states another unit than the tool's, and the study gives none.",
     "mapping-unknown": "The study maps or gives a unit to something that is no column or element.",
     "constant-ignored": "The study gives a constant for a column that the file has.",
     "element-missing": "The file has no column of an element; it is blank.",

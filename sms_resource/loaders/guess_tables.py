@@ -11,6 +11,7 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.loaders.guess_types import Confidence, Guess, GuessedFile
+from sms_resource.loaders.dimensions import stated_unit, units_of
 from sms_resource.loaders.headers import element_of_header
 from sms_resource.loaders.parsing import parse_numbers
 from sms_resource.loaders.reading import RawTable
@@ -103,6 +104,7 @@ def _as_role(path: Path, raw: RawTable, role: str) -> GuessedFile | None:
     because += ", and its name says so" if named else ""
     confidence: Confidence = "likely" if named and not missing else "doubtful" if missing else "likely"
     units = [guess for guess in (_unit(raw, g.key, g.value) for g in grades) if guess is not None]
+    units += [guess for guess in map(_dimension, columns) if guess is not None]
     vertical = _vertical(raw, columns)
     return GuessedFile(
         path, "table", Guess("role", role, because, confidence), (*columns, *grades), tuple(units),
@@ -171,6 +173,14 @@ def _unit(raw: RawTable, element: str, header: str) -> Guess | None:
     unit, bound, finer = _COARSE[ELEMENTS[element]]
     chosen = finer if bound and middle > bound else unit
     return Guess(element, chosen, f"the header states none and the median is {middle:.3g}", "doubtful")
+
+
+def _dimension(column: Guess) -> Guess | None:
+    """Unit of a length or a density where the header states another than the tool's."""
+    stated = stated_unit(column.value, column.key)
+    if stated is None or units_of(column.key)[stated] == 1.0:
+        return None
+    return Guess(column.key, stated, f"the header “{column.value}” says so", "sure")
 
 
 def _vertical(raw: RawTable, columns: list[Guess]) -> Guess | None:

@@ -29,7 +29,7 @@ class TableSource:
         Canonical column to the file's column. Elements may be named "cu" or "cu_pct". A canonical column that
         is not mentioned is looked up under its own name.
     units : mapping
-        Element to the unit in the file, such as ``{"au": "ppb"}``.
+        Element, length or density to the unit in the file, such as ``{"au": "ppb", "from_m": "cm"}``.
     vertical : "elevation" | "depth"
         Whether vertical positions are elevations (negative below sea level) or depths (positive downwards).
     constants : mapping

@@ -9,7 +9,8 @@ from sms_resource.loaders.headers import canonical_text
 
 _UNIT_WORDS = frozenset({
     "m", "metre", "metres", "meter", "meters", "cm", "mm", "g", "kg", "cm3", "cm³", "deg", "degree", "degrees", "°", "pct",
-    "%", "percent", "t/m3", "t/m³", "tpm3", "g/cm3", "g/cm³", "gcm3", "g/cc", "kg/m3", "kg/m³", "mbsf", "mbsl", "mbrsf",
+    "%", "percent", "t/m3", "t/m³", "tpm3", "g/cm3", "g/cm³", "gcm3", "g/cc", "kg/m3", "kg/m³", "kgm3", "ft", "feet",
+    "mbsf", "mbsl", "mbrsf",
 })  # fmt: skip
 _HOLE = (
     "holeid hole bhid dhid drillhole drillholeid holename holeno holenumber borehole boreholeid well hole#"
@@ -24,7 +25,7 @@ _PLACE = {
     "elevation": "elevation elev z rl altitude height zcoord seafloorelevation depth waterdepth seafloordepth depthbsl wd "
     "bottomdepth",
 }
-_SAMPLE = "sampleid sample sampleno samplenumber sampid sampleref samplename id"
+_SAMPLE = "sampleid sample sampleno samplenumber sampid sampleref samplename labno labid labnumber id"
 _METHOD = "method assaymethod analysis analyticalmethod analysismethod technique"
 _SIGMA = "positionsigma possigma sigma positionerror uncertainty accuracy posaccuracy posuncertainty navuncertainty"
 
@@ -63,8 +64,8 @@ _RAW: Mapping[str, Mapping[str, str]] = {
         "hole_id": _HOLE,
         "sample_id": _SAMPLE,
         **_INTERVAL,
-        "wet_density_tpm3": "wetdensity wetbulkdensity bulkdensitywet densitywet wbd",
-        "dry_density_tpm3": "drydensity drybulkdensity bulkdensitydry densitydry dbd",
+        "wet_density_tpm3": "wetdensity wet wetbulkdensity bulkdensitywet densitywet wbd",
+        "dry_density_tpm3": "drydensity dry drybulkdensity bulkdensitydry densitydry dbd",
         "grain_density_tpm3": "graindensity densitygrain particledensity",
         "wet_mass_g": "wetmass masswet wetweight weightwet",
         "dry_mass_g": "drymass massdry dryweight weightdry",

@@ -8,6 +8,7 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.findings import Findings
+from sms_resource.loaders.dimensions import stated_unit, units_of
 from sms_resource.loaders.grades import grade_columns
 from sms_resource.loaders.headers import element_of_header, find_header, nearest
 from sms_resource.loaders.parsing import (
@@ -126,10 +127,20 @@ class TableMaker:
                         column=key,
                     )
         for key, unit in self.source.units.items():
-            if key.casefold() not in ELEMENTS and column_element(key.casefold()) is None:
+            allowed_units = units_of(self.plain(key)) if self.plain(key) in known else {}
+            if allowed_units:
+                if unit.strip().casefold() not in allowed_units:
+                    self.findings.error(
+                        "unit-unknown",
+                        f"The unit {unit!r} of {key} is not known.",
+                        f"Use one of {', '.join(allowed_units)}.",
+                        file=self.file,
+                        column=self.mapping.get(self.plain(key), key),
+                    )
+            elif key.casefold() not in ELEMENTS and column_element(key.casefold()) is None:
                 self.findings.error(
                     "mapping-unknown",
-                    f"The study gives a unit for {key!r}, which is no element.",
+                    f"The study gives a unit for {key!r}, which is no element, length or density.",
                     f"Elements are: {', '.join(ELEMENTS)}.",
                     file=self.file,
                     column=key,
@@ -215,7 +226,26 @@ class TableMaker:
         self.report(parsed, header)
         if result:
             self.results[column.name] = parsed
-        return parsed.values
+        return parsed.values * self._factor(column.name, header)
+
+    def _factor(self, name: str, header: str) -> float:
+        """Factor from the file's unit to the column's; an error where the header says another and the study nothing."""
+        units = units_of(name)
+        declared = next((unit for key, unit in self.source.units.items() if self.plain(key) == name), None)
+        if declared is not None:
+            return units.get(declared.strip().casefold(), 1.0)
+        stated = stated_unit(header, name)
+        if stated is not None and units[stated] != 1.0:
+            own = "t/m3" if name.endswith("_tpm3") else "metres"
+            self.findings.error(
+                "unit-differs",
+                f"The name of column {header!r} says {stated}, but {name} is in {own}.",
+                f'Write units = {{ {name} = "{stated}" }} beside its columns in the study, or the unit that is true.',
+                file=self.file,
+                row=self.source.header_row,
+                column=header,
+            )
+        return 1.0
 
     def constant(self, name: str, constant: str | float | None) -> np.ndarray:
         """A column of one value; NaN where the study gives none."""

@@ -24,7 +24,9 @@ class TableFile(Section):
         {}, "Mapping from the tool's column name to the file's, such as hole_id = \"HoleID\".", decision=False
     )
     units: dict[str, str] = key(
-        {}, 'Unit of each element as the file has it, such as au = "ppb".', decision=False
+        {},
+        'Unit of an element, a length or a density as the file has it, such as au = "ppb" or from_m = "cm".',
+        decision=False,
     )
     vertical: Literal["elevation", "depth"] = key(
         "elevation",

@@ -138,6 +138,16 @@ def proposed_radii(state: VariogramState, domain: str, config: Any) -> tuple[flo
     return float(major), float(semi), float(minor)
 
 
+def search_text(state: VariogramState, config: Any) -> str:
+    """Factors of the passes and the radii that they multiply, with the domains where those were proposed."""
+    passes = ", ".join(f"{factor:g} ×" for factor in config.search.passes)
+    given = config.search.radii_m
+    domains = dict.fromkeys(domain for domain, _ in state.inferences)
+    radii = {"": given} if given else {f" in {name}": proposed_radii(state, name, config) for name in domains}
+    said = ", ".join(f"{' × '.join(f'{r:.3g}' for r in value)} m{where}" for where, value in radii.items())
+    return f"{passes} {said}"
+
+
 def _domain_rows(samples: pd.DataFrame, domain: str, boundaries: str) -> NDArray[np.bool_]:
     if boundaries == "soft":
         return np.ones(len(samples), dtype=bool)

@@ -170,7 +170,8 @@ def plain_grades(context: Context, table: pd.DataFrame, label: str) -> tuple[pd.
         allowed_methods=choice.methods,
         label=label,
     )
-    add_findings(context, found)
+    if len(table):  # a table that was not given lacks nothing
+        add_findings(context, found)
     return frame, summary
 
 
@@ -219,6 +220,8 @@ def describe(
     )
     pairs = twins.twin_report(collars, inside, config.checks.twin_distance_m, metals=metals)
     logs = lognormal.lognormal_table(inside, metals)
+    if not len(surface):
+        bias = bias.iloc[:0]
     add_findings(context, laboratory.findings, floor.surface_findings(bias), pairs.findings)
     add_findings(context, lognormal.lognormal_findings(logs))
     deleterious, found = associations.deleterious_summary(inside)

@@ -64,6 +64,7 @@ def new_study(files: list[Path], out: Path) -> NewStudy:
         lines += _file(file, out, questions)
     for path, why in guessed.others:
         lines.append(f"# Not used: {path.name}: {why}")
+        questions.append(f"{path.name} is not used: {why}")
     lines += _decisions(guessed, questions)
     out.write_text("\n".join(lines) + "\n", encoding="utf-8")
     return NewStudy(out, _lines(guessed), questions)
@@ -115,6 +116,9 @@ def _file(file: Any, out: Path, questions: list[str]) -> list[str]:
             continue
         value = int(guess.value) if guess.key in ("band", "uncertainty_band", "header_row") else guess.value
         lines.append(f"{guess.key} = {quoted(value)}  # {_reason(guess, role, questions)}")
+    if file.kind != "table" and not {"crs", "crs_inside"} & set(file.form_map):
+        lines.append(f'# crs = ""  # {OPEN}: the file does not say in which coordinate system it is')
+        questions.append(f"data.{role}.crs: {file.path.name} does not say in which coordinate system it is")
     for title, guesses in (("columns", file.columns), ("units", file.units)):
         if not guesses:
             continue

@@ -23,6 +23,7 @@ from sms_resource.reporting.data import (
 )
 from sms_resource.study import Study
 from sms_resource.units import element_column
+from sms_resource.workflow.estimation import search_text
 from sms_resource.workflow.evidence import all_columns, metal_columns
 from sms_resource.workflow.state import (
     BlockState,
@@ -236,8 +237,7 @@ def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
         "Blocks": f"{len(blocks.model.frame):,} of {size} m, rotated {blocks.model.grid.azimuth:g}°",
         "Vertical frame": frames[config.blocks.vertical_frame],
         "Points that stand for a block": " × ".join(str(value) for value in config.kriging.discretisation),
-        "Search passes": ", ".join(f"{factor:g} ×" for factor in search.passes)
-        + (" the ranges" if search.radii_m is None else f" {search.radii_m} m"),
+        "Search passes": search_text(done["variograms"], config),
         "Samples": f"{search.least_samples} to {search.most_samples}, at most {search.most_per_hole or 'any'} a hole",
         "Holes": f"at least {search.least_holes}; one in the last pass",
         "Domain boundaries": config.domains.boundaries,
@@ -278,7 +278,7 @@ def _means(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
                 "declustered_mean": declustered, "block_mean": block,
                 "difference_pct": 100.0 * (block / declustered - 1.0) if declustered else np.nan,
             }  # fmt: skip
-            if domain == "all":
+            if domain == "all" and len(surface):
                 every = pd.concat([done["composite"].assays[metal], surface.get(metal)])
                 row["plain_mean_with_surface"] = every.mean()
             rows.append(row)
