@@ -151,12 +151,12 @@ def candidates(
 
 
 @njit(cache=True, error_model="numpy")
-def sort_into_cells(samples, centre, half, sectors, kept, number, near, starts, cell_of):
+def sort_into_cells(samples, centre, half, sectors, kept, number, near, starts, cell_of, away):
     """Order the kept samples by shell round ``centre``, and by sector in each shell; the width of a shell.
 
     The cells of a shell are the eight sectors, for samples that lie in one sector for all blocks of the box,
     and a ninth for those that do not. ``near`` (n,) receives sample numbers, ``starts`` (CELLS * SHELLS + 1,)
-    where each cell begins in it.
+    where each cell begins in it; ``cell_of`` and ``away`` (n,) are work space.
     """
     widest = 0.0
     for t in range(number):
@@ -164,18 +164,22 @@ def sort_into_cells(samples, centre, half, sectors, kept, number, near, starts, 
         dx = samples[0, i] - centre[0]
         dy = samples[1, i] - centre[1]
         dz = samples[2, i] - centre[2]
-        widest = max(widest, dx * dx + dy * dy + dz * dz)
+        away[t] = dx * dx + dy * dy + dz * dz
+        widest = max(widest, away[t])
     width = (math.sqrt(widest) + 1e-9) * (1.0 + 1e-9) / SHELLS
     inverse = 1.0 / width
     for cell in range(CELLS * SHELLS + 1):
         starts[cell] = 0
     for t in range(number):
-        i = kept[t]
-        dx = samples[0, i] - centre[0]
-        dy = samples[1, i] - centre[1]
-        dz = samples[2, i] - centre[2]
-        sector, open_bits = _sector_bits(dx, dy, dz, half, sectors)
-        shell = min(int(math.sqrt(dx * dx + dy * dy + dz * dz) * inverse), SHELLS - 1)
+        sector = 0
+        open_bits = 0
+        if sectors > 1:
+            i = kept[t]
+            dx = samples[0, i] - centre[0]
+            dy = samples[1, i] - centre[1]
+            dz = samples[2, i] - centre[2]
+            sector, open_bits = _sector_bits(dx, dy, dz, half, sectors)
+        shell = min(int(math.sqrt(away[t]) * inverse), SHELLS - 1)
         cell = shell * CELLS + (sector if open_bits == 0 else CELLS - 1)
         starts[cell + 1] += 1
         cell_of[t] = cell

@@ -24,7 +24,7 @@ from .covariance_kernels import SAME_PLACE, block_covariances, fill_matrix, poin
 from .lane_kernels import LANES, div, fma, fnma, load, mul, root, splat, store, where_less
 
 DONE, SINGULAR, NOT_FINITE = 0, 3, 4
-_SMALLEST_PIVOT = 1e-11  # of the sill: beyond this the weights keep fewer than some five digits
+SMALLEST_PIVOT = 1e-11  # of the sill: beyond this the weights keep fewer than some five digits
 _FAR = 1e100  # where an empty slot of a pack stands, so that it covaries with nothing
 
 
@@ -257,7 +257,7 @@ def krige(
                 if turn >= sizes[first_run + lane]:
                     continue
                 row = order[starts[first_run + lane] + turn]
-                if not pivots[lane] > _SMALLEST_PIVOT * total_sill:
+                if not pivots[lane] > SMALLEST_PIVOT * total_sill:
                     for c in range(columns.size):
                         status[rows[row], columns[c]] = SINGULAR
                     continue

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from .covariance_kernels import covariances_to_targets
 from .inputs import Samples, cross
-from .kriging_kernels import NOT_FINITE, krige
+from .kriging_kernels import NOT_FINITE, SINGULAR, SMALLEST_PIVOT, krige
 from .kriging_setup import ModelArrays
 from .lane_kernels import LANES
 from .model import COINCIDENT_M, VariogramModel
@@ -138,6 +138,30 @@ def fill_search(found: Found, rows: Int64Array, columns: Sequence[int], out: Out
         out.pass_number[rows, column] = found.pass_number
 
 
+def whole_factor(
+    points: FloatArray, setup: ModelArrays, present: Int64Array, workers: int
+) -> FloatArray | None:
+    """Lower Cholesky factor of the covariances between all of ``points``; None where it is not stable.
+
+    ``points`` (n, 3) are the local coordinates of the samples ``present``.
+    """
+    from scipy.linalg import LinAlgError, cholesky
+
+    n = len(points)
+    matrix = np.empty((n, n))
+    room = np.empty((workers, LANES * (4 * n + 3)))
+    share_out(
+        covariances_to_targets, workers, np.ascontiguousarray(setup.samples[:, present]), points, setup.shapes,
+        setup.sills, setup.inverse, setup.nugget, setup.axes, np.empty((len(setup.shapes), 0, 3)), matrix, room,
+    )  # fmt: skip
+    total_sill = setup.nugget + float(setup.sills.sum())
+    try:
+        factor = cholesky(matrix, lower=True, overwrite_a=True, check_finite=False)
+    except LinAlgError:
+        return None
+    return factor if np.diag(factor).min() ** 2 > SMALLEST_PIVOT * total_sill else None
+
+
 def from_all_samples(
     samples: Samples,
     targets: FloatArray,
@@ -154,7 +178,7 @@ def from_all_samples(
     ValueError
         If there are more samples than a whole matrix should hold.
     """
-    from scipy.linalg import LinAlgError, cho_solve, cholesky
+    from scipy.linalg import cho_solve
     from scipy.spatial import cKDTree
 
     local = targets - samples.origin
@@ -181,19 +205,11 @@ def from_all_samples(
         chunk = max(LANES, _ALL_CHUNK_NUMBERS // n)
         for model, alike in columns_by_model(group, models):
             setup = arrays[model]
+            factor = whole_factor(points, setup, present, workers)
+            if factor is None:
+                out.status[cross(finite, alike)] = SINGULAR
+                continue
             along_axes = np.ascontiguousarray(setup.samples[:, present])
-            matrix = np.empty((n, n))
-            for first in range(0, n, 1024):
-                part = points[first : first + 1024]
-                matrix[first : first + 1024] = model.covariance(part[:, None, :] - points[None, :, :])
-            try:
-                factor = cholesky(matrix, lower=True, overwrite_a=True, check_finite=False)
-            except LinAlgError:
-                out.status[cross(finite, alike)] = 3
-                continue
-            if np.diag(factor).min() ** 2 <= 1e-11 * model.total_sill:
-                out.status[cross(finite, alike)] = 3
-                continue
             table = samples.values[cross(present, alike)]
             ones = cho_solve((factor, True), np.ones(n), check_finite=False)
             room = np.empty((workers, LANES * (4 * n + 3)))

@@ -69,7 +69,7 @@ def leave_one_out(
     if passes:
         estimate, variance, count = _by_neighbourhood(samples, models, passes, leave, workers)
     else:
-        estimate, variance, count = _from_all_samples(samples, models, leave)
+        estimate, variance, count = _from_all_samples(samples, models, leave, workers)
     frames = []
     for column in range(samples.values.shape[1]):
         true = samples.values[:, column]
@@ -132,11 +132,13 @@ def _by_neighbourhood(
     return out.estimate, out.variance, out.count
 
 
-def _from_all_samples(samples: Samples, models: list[VariogramModel], leave: str) -> Errors:
+def _from_all_samples(samples: Samples, models: list[VariogramModel], leave: str, workers: int) -> Errors:
     """Dubrule's formula on the inverse of the whole system."""
-    from scipy.linalg import LinAlgError, inv
+    from scipy.linalg import inv
+    from scipy.linalg.lapack import dpotri
 
-    from .kriging_run import MOST_FOR_ALL, columns_by_model
+    from .kriging_run import MOST_FOR_ALL, columns_by_model, whole_factor
+    from .kriging_setup import model_arrays
 
     shape = samples.values.shape
     estimate, variance = np.full(shape, np.nan), np.full(shape, np.nan)
@@ -154,17 +156,17 @@ def _from_all_samples(samples: Samples, models: list[VariogramModel], leave: str
         sets = samples.holes[present] if leave == "hole" else np.arange(n)
         folds = [np.flatnonzero(sets == label) for label in np.unique(sets)]
         for model, alike in columns_by_model(group, models):
-            system = np.ones((n + 1, n + 1))
-            system[n, n] = 0.0
-            for first in range(0, n, 1024):
-                part = points[first : first + 1024]
-                system[first : min(first + 1024, n), :n] = model.covariance(part[:, None] - points[None])
-            try:
-                inverse = inv(system, overwrite_a=True, check_finite=False)
-            except LinAlgError:
+            setup = model_arrays(model, samples.points, None, (1, 1, 1))
+            factor = whole_factor(np.ascontiguousarray(points), setup, present, workers)
+            if factor is None:
                 continue
+            inverse, _ = dpotri(factor, lower=1, overwrite_c=True)
+            inverse = np.tril(inverse) + np.tril(inverse, -1).T
+            # the part of the inverse of the whole system that belongs to the samples
+            ones = inverse.sum(axis=1)
+            inverse -= np.outer(ones, ones / ones.sum())
             table = samples.values[cross(present, alike)]
-            score = inverse[:n, :n] @ table
+            score = inverse @ table
             for fold in folds:
                 if len(fold) == n:
                     continue

@@ -1,9 +1,10 @@
 """The neighbourhood search: nearest first under limits by sector and by hole, for many blocks at once.
 
 Blocks come in groups of neighbours. For each group the samples that no block of it can take are dropped (see
-``candidates``), and the rest are sorted into shells round the centre of the group. Each block then walks
-outward through the shells and takes samples from a heap as soon as nothing nearer can come. So the result is
-that of a full sort by distance over all samples in reach, at the price of the few samples that matter.
+``candidates``), and the rest are sorted into shells round the centre of a few blocks. Each block then walks
+outward through the shells, keeps what it meets in a short sorted queue, and takes samples from its front as
+soon as nothing nearer can come. So the result is that of a full sort by distance over all samples in reach,
+at the price of the few samples that matter.
 """
 
 # mypy: allow-untyped-defs
@@ -19,6 +20,7 @@ from .candidate_kernels import CELLS, EDGE, SHELLS, bounding_box, candidates, so
 
 GROUP = 64  # blocks that share one choice of candidates
 PARTY = 8  # blocks of a group that share one order of its samples
+_WIDE = 0.35  # half diagonal, in radii, beyond which they do not
 ENOUGH, TOO_FEW_SAMPLES, TOO_FEW_HOLES = 0, 1, 2
 
 # A key holds the squared distance in steps of 2^-40 of the squared radius above the number of the sample, so
@@ -27,39 +29,6 @@ _STEPS = float(1 << 40)
 _INDEX_BITS = 22
 _INDEX_MASK = (1 << _INDEX_BITS) - 1
 MOST_SAMPLES = 1 << _INDEX_BITS
-
-
-@njit(cache=True, error_model="numpy")
-def _push(heap, size, key):
-    """Put ``key`` on the heap of ``size`` keys; the new size."""
-    place = size
-    while place > 0:
-        parent = (place - 1) >> 1
-        if heap[parent] <= key:
-            break
-        heap[place] = heap[parent]
-        place = parent
-    heap[place] = key
-    return size + 1
-
-
-@njit(cache=True, error_model="numpy")
-def _pop(heap, size):
-    """Take the smallest key, ``heap[0]``, off the heap; the new size."""
-    size -= 1
-    key = heap[size]
-    place = 0
-    child = 1
-    while child < size:
-        if child + 1 < size and heap[child + 1] < heap[child]:
-            child += 1
-        if heap[child] >= key:
-            break
-        heap[place] = heap[child]
-        place = child
-        child = 2 * place + 1
-    heap[place] = key
-    return size
 
 
 @njit(cache=True, error_model="numpy")
@@ -126,7 +95,7 @@ def search_samples(
     groups = (rows.size + GROUP - 1) // GROUP
     kept = whole[:n]
     near = whole[n : 2 * n]
-    heap = whole[2 * n : 3 * n]
+    queue = whole[2 * n : 3 * n]
     sector_of = whole[3 * n : 4 * n]
     hole_of = whole[4 * n : 5 * n]
     starts = whole[5 * n : 5 * n + CELLS * SHELLS + 1]
@@ -137,6 +106,8 @@ def search_samples(
     in_sector, in_both = np.zeros(8, np.int64), np.zeros(8, np.int64)
     centre, half = np.zeros(3), np.zeros(3)
     width = 0.0
+    cells = 1 if sectors == 1 else CELLS
+    plain_queue = sectors == 1 and per_hole > n  # nothing is refused, so no more need wait than may be taken
     for group in range(worker, groups, workers):
         group_first = group * GROUP
         group_last = min(group_first + GROUP, rows.size)
@@ -145,11 +116,17 @@ def search_samples(
             samples, holes, grouped, by_hole, centre, half, limits, prune, kept, lowest, highest, best,
             in_sector, in_both,
         )  # fmt: skip
+        party_end = group_first
         for r in range(group_first, group_last):
-            if (r - group_first) % PARTY == 0:
-                party_last = min(r + PARTY, group_last)
-                bounding_box(targets, rows, r, party_last, centre, half)
-                width = sort_into_cells(samples, centre, half, sectors, kept, number, near, starts, sector_of)
+            if r == party_end:
+                party_end = min(r + PARTY, group_last)
+                bounding_box(targets, rows, r, party_end, centre, half)
+                if half[0] ** 2 + half[1] ** 2 + half[2] ** 2 > _WIDE**2:
+                    party_end = r + 1  # too far apart for one order of the samples
+                    bounding_box(targets, rows, r, party_end, centre, half)
+                width = sort_into_cells(
+                    samples, centre, half, sectors, kept, number, near, starts, sector_of, highest
+                )
                 for t in range(number):
                     i = near[t]
                     x[t], y[t], z[t] = samples[0, i], samples[1, i], samples[2, i]
@@ -160,10 +137,11 @@ def search_samples(
             in_sector[:] = 0
             total = 0
             full = 0
-            size = np.int64(0)  # a bare 0 would compile every callee twice
+            front = 0
+            back = 0
             for shell in range(SHELLS):
-                for cell in range(shell * CELLS, shell * CELLS + CELLS):
-                    fixed = cell - shell * CELLS
+                for fixed in range(cells):
+                    cell = shell * CELLS + fixed
                     if fixed < CELLS - 1 and in_sector[fixed] >= per_sector:
                         continue
                     for t in range(starts[cell], starts[cell + 1]):
@@ -184,9 +162,19 @@ def search_samples(
                         i = near[t]
                         if hole == skip_hole[row] or i == skip_sample[row]:
                             continue
+                        key = (np.int64(squared * _STEPS + 0.5) << _INDEX_BITS) | i
+                        if plain_queue and back - front == most - total:
+                            if key > queue[back - 1]:
+                                continue
+                            back -= 1
                         sector_of[i] = sector
-                        size = _push(heap, size, (np.int64(squared * _STEPS + 0.5) << _INDEX_BITS) | i)
-                if size == 0:
+                        place = back
+                        while place > front and queue[place - 1] > key:
+                            queue[place] = queue[place - 1]
+                            place -= 1
+                        queue[place] = key
+                        back += 1
+                if front == back:
                     continue
                 # What lies in later shells is at least this far from the block.
                 bound = (shell + 1) * width - offset
@@ -195,9 +183,9 @@ def search_samples(
                     safe = np.int64(1) << 62
                 elif bound > 0.0:
                     safe = np.int64(max(bound * bound * _STEPS - 4.0, 0.0)) << _INDEX_BITS
-                while size > 0 and heap[0] < safe:
-                    i = heap[0] & _INDEX_MASK
-                    size = _pop(heap, size)
+                while front < back and queue[front] < safe:
+                    i = queue[front] & _INDEX_MASK
+                    front += 1
                     sector = sector_of[i]
                     hole = holes[i]
                     if in_sector[sector] >= per_sector or taken[hole] >= per_hole:
