@@ -241,6 +241,7 @@ def build_body(
     )  # fmt: skip
     drift = None if base_grid is None else drift_from_base_grid(base_grid, top, outline, findings)
     others = data_from_base_points(base_points, top, outline, base_point_sigma_m, findings)
+    data = join_data(holes, others)
     if drift is None and len(others) == 0 and (len(good) == 0 or bool(holes.is_open.all())):
         if len(good) == 0:
             findings.error("contacts-missing", "no hole inside the outline gives the base of the sulphide",
@@ -252,11 +253,10 @@ def build_body(
             "laid through the ends of the holes",
             "drill one hole deeper, or give a base from geophysics",
         )
-        holes = replace(holes, is_open=np.zeros(len(good), dtype=bool))
+        data = join_data(replace(holes, is_open=np.zeros(len(good), dtype=bool)), others)
     elif len(good) > 0 and int((~holes.is_open).sum()) < 5 and drift is None:
         findings.warning("contacts-few", f"only {int((~holes.is_open).sum())} holes reached the base",
                          "treat the volume as very uncertain")  # fmt: skip
-    data = join_data(holes, others)
     if len(data):
         made = interpolate_thickness(
             top, outline, data, method=method, settings=settings, edge_thickness_m=edge_thickness_m,

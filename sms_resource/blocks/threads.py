@@ -17,6 +17,7 @@ T = TypeVar("T")
 @functools.cache
 def _pools() -> Any:
     """The thread pools of the linear algebra; looking for them takes longer than a small body."""
+    import scipy.linalg  # noqa: F401  its own linear algebra must be loaded before it can be found
     from threadpoolctl import ThreadpoolController
 
     return ThreadpoolController()
