@@ -287,6 +287,12 @@ PLACES = [
 BODIES = [
     one("no sample in sulphide", every("lithology", "code", lambda _: "AV"), "no-composites", "study.toml"),
     one(
+        "truth that is no table",
+        both(raw("truth.json", b"[1, 2"), decide("data.truth", "truth.json")),
+        "truth-unreadable",
+        "truth.json",
+    ),
+    one(
         "no grade in sulphide",
         lambda s: [row.update(cu_pct="", zn_pct="", au_gpt="", ag_gpt="") for row in s.rows["assays"]],
         "composite-none",

@@ -213,7 +213,7 @@ class SmallStudy:
     raw : dict
         Bytes that stand in a file in place of its content, by file name.
     grid : dict
-        Changes of the seafloor grid: values (callable), crs, transform, nodata.
+        Changes of the seafloor grid: values (callable), cell, crs, transform, nodata.
     outline, zones : GeoDataFrame
     after : list of callable
         What is done to the folder when all is written.
@@ -257,7 +257,8 @@ class SmallStudy:
         return next(number for number, line in enumerate(lines, 1) if line.startswith(text))
 
     def _write_grid(self) -> None:
-        count, cell = 30, 2.0
+        cell = self.grid.get("cell", 2.0)
+        count = round(60.0 / cell)
         x = WEST + cell * (0.5 + np.arange(count))
         y = SOUTH + cell * (count - 0.5 - np.arange(count))
         values = self.grid.get("values", seafloor_at)(*np.meshgrid(x, y)).astype("float64")
