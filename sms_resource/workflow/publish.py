@@ -116,11 +116,12 @@ def _plain(value: Any) -> Any:
 def ledger_table(study: Study, extra: dict[str, Any] | None = None) -> pd.DataFrame:
     """Every decision as a row, with what its alternatives would do where scenarios have told."""
     effects: dict[str, str] = (extra or {}).get("effects", {})
+    sizes: dict[str, float] = (extra or {}).get("effect_pct", {})
     rows = [
         {"key": row.key, "value": json.dumps(row.value, ensure_ascii=False), "origin": row.origin,
          "meaning": row.meaning, "reason": row.reason, "by": row.by,
          "alternatives": ", ".join(json.dumps(other, ensure_ascii=False) for other in row.alternatives),
-         "effect": effects.get(row.key, "")}
+         "effect": effects.get(row.key, ""), "effect_pct": sizes.get(row.key, float("nan"))}
         for row in decisions(study)
     ]  # fmt: skip
     return pd.DataFrame(rows)

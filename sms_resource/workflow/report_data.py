@@ -22,7 +22,7 @@ from sms_resource.reporting.data import (
     VariogramRecord,
 )
 from sms_resource.study import Study
-from sms_resource.units import element_column
+from sms_resource.units import element_column, unit_label
 from sms_resource.workflow.estimation import search_text
 from sms_resource.workflow.evidence import all_columns, metal_columns
 from sms_resource.workflow.state import (
@@ -111,6 +111,9 @@ def _subject(study: Study, done: dict[str, Any]) -> Subject:
         },
         prospects={"judged_by": prospects.by, "basis": prospects.basis} if prospects.judged else None,
         site_visit={"who": about.site_visit, "statement": about.site_visit} if about.site_visit else None,
+        exaggeration=config.report.exaggeration,
+        section_azimuth_deg=config.report.section_azimuth_deg,
+        section_count=config.report.sections,
     )
 
 
@@ -137,6 +140,7 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
         lithology=data.drill.lithology,
         composites=composites,
         composite_audit=tables["composite_audit"],
+        composite_rule=composite_rule(config),
         surface=evidence.surface,
         surface_use="" if config.surface_samples.use == "none" else evidence.facts["surface_use"],
         dredges=data.dredges,
@@ -162,7 +166,7 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
             blanks=laboratory.blanks,
             duplicates=laboratory.duplicates,
             checks=laboratory.checks,
-            pairs=getattr(laboratory, "pairs", None),
+            pairs=laboratory.duplicate_pairs,
         ),
     )
 
@@ -248,7 +252,9 @@ def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
         blocks=done["classify"].frame,
         grid=blocks.model.grid.record(),
         means=_means(done, metals),
-        swaths=validation.swaths[validation.swaths["domain"] == "all"],
+        swaths=_named_axis(validation.swaths, config.blocks.vertical_frame),
+        support_variance=validation.facts["support_variance"],
+        frames_effect=validation.facts["frames_effect"],
         leave_one_out=validation.cross_validation,
         leave_one_out_summary=validation.cross_summary,
         estimators=comparison,
@@ -256,6 +262,26 @@ def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
         neighbourhood=validation.neighbourhood,
         checks=_checks(validation.table),
     )
+
+
+def composite_rule(config: Any) -> str:
+    """How samples became composites, in words."""
+    choice = config.composites
+    rests = {
+        "merge": "is merged with its neighbour", "keep": "is kept", "drop": "is dropped",
+        "spread": "is spread over all composites",
+    }  # fmt: skip
+    return (
+        f"composites of {choice.length_m:g} m inside domains, weighted by {choice.weighting.replace('_', ' ')}; a rest "
+        f"under {choice.shortest_m:g} m at a contact {rests[choice.short_rest]}"
+    )
+
+
+def _named_axis(swaths: pd.DataFrame, frame: str) -> pd.DataFrame:
+    """Swaths of all domains, with the upright axis called what it is in the vertical frame."""
+    names = {"depth": "height against the seafloor", "proportional": "height in the body, as a share of it"}
+    chosen = swaths[swaths["domain"] == "all"]
+    return chosen.assign(axis=chosen["axis"].replace({"elevation": names[frame]} if frame in names else {}))
 
 
 def _means(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
@@ -391,14 +417,14 @@ def truth_page(study: Study, done: dict[str, Any]) -> dict[str, Any] | None:
         filled = frame[metal].notna()
         block = float(np.average(frame.loc[filled, metal], weights=frame.loc[filled, "dry_tonnes"]))
         rows.append(
-            _truth_row(f"mean {metal.partition('_')[0]} of the body", metal.rpartition("_")[2], known[metal], block,
+            _truth_row(f"mean {metal.partition('_')[0]} of the body", unit_label(metal), known[metal], block,
                        "selective loss of core, smoothing and the few holes")
         )  # fmt: skip
     for metal in metals:
         naive = float(np.asarray(plain.loc[metal, "plain_mean_with_surface"]))
         rows.append(
             _truth_row(f"plain mean of all samples, surface included: {metal.partition('_')[0]}",
-                       metal.rpartition("_")[2], known[metal], naive,
+                       unit_label(metal), known[metal], naive,
                        "surface samples are richer than the body, and clusters count many times")
         )  # fmt: skip
     return {

@@ -256,6 +256,20 @@ def effects(study: Study, run: ScenarioRun) -> dict[str, str]:
     return found
 
 
+def effect_sizes(study: Study, run: ScenarioRun) -> dict[str, float]:
+    """Largest change, in percent, of dry tonnes or of the first metal's content, by decision."""
+    if not len(run.table):
+        return {}
+    lead = metal_columns(study.config)[0].partition("_")[0]
+    names = ["dry_tonnes", *[name for name in run.base if name in (f"{lead}_t", f"{lead}_kg")]]
+    part = run.table[(run.table["origin"] == "ledger") & (run.table["state"] == "run")]
+    found: dict[str, float] = {}
+    for row in part.to_dict("records"):
+        sizes = [abs(100.0 * (row[name] / run.base[name] - 1.0)) for name in names if run.base[name]]
+        found[row["group"]] = max([found.get(row["group"], 0.0), *sizes])
+    return found
+
+
 def _percent(value: float, base: float) -> str:
     if not base or value != value:
         return "n/a"
@@ -266,7 +280,11 @@ def tables(study: Study, run: ScenarioRun) -> dict[str, Any]:
     """Tornado, heat map and effects for the report."""
     from sms_resource.economics.scenarios import heat_table, tornado_table
 
-    made: dict[str, Any] = {"scenarios": run.table, "effects": effects(study, run)}
+    made: dict[str, Any] = {
+        "scenarios": run.table,
+        "effects": effects(study, run),
+        "effect_pct": effect_sizes(study, run),
+    }
     metals = metal_columns(study.config)
     ran = run.table[run.table["state"] == "run"] if len(run.table) else run.table
     ledger = ran[ran["origin"] == "ledger"] if len(ran) else ran

@@ -44,11 +44,12 @@ def validate(context: Context) -> ValidationState:
     cross, summary = cross_validation(variograms, blocks, config, context.threads)
     swaths = swath_tables(made, variograms, blocks, metals, config)
     comparison = compare_estimators(made, metals, config)
+    realised = realised_variances(made, variograms, blocks, config)
     table = validation_table(
         cross_validation=summary if len(summary) else None,
         means=mean_table(made, variograms, metals, config),
         swaths=swaths[swaths["domain"] != "all"],
-        block_variance=realised_variances(made, variograms, blocks, config),
+        block_variance=realised,
         limits=ValidationLimits(mean_pct=config.validation.mean_flag_pct),
     )
     flagged = table[table["verdict"] == "flag"]
@@ -61,7 +62,59 @@ def validate(context: Context) -> ValidationState:
     return ValidationState(
         table=table, cross_validation=cross, cross_summary=summary, swaths=swaths, support=support, bracket=bracket,
         comparison=comparison, geometry=geometry, neighbourhood=neighbourhood_table(context),
+        facts={"support_variance": variance_table(realised), "frames_effect": frames_table(context)},
     )  # fmt: skip
+
+
+def variance_table(realised: dict[tuple[str, str], dict[str, float]]) -> pd.DataFrame:
+    """Realised and theoretical variance of block estimates by metal and domain."""
+    rows = [
+        {"metal": metal, "domain": domain, "realised": found["realised"],
+         "theoretical": found["theoretical_estimates"], "ratio": found["ratio"]}
+        for (domain, metal), found in realised.items()
+    ]  # fmt: skip
+    return pd.DataFrame(rows, columns=["metal", "domain", "realised", "theoretical", "ratio"])
+
+
+def frames_table(context: Context) -> pd.DataFrame:
+    """How well composites are estimated without their own hole in each vertical frame.
+
+    Root mean square errors with the variograms of the study's frame: a smaller error speaks for a frame, because there
+    neighbours are more alike.
+    """
+    from sms_resource.blocks.frames import VerticalFrame
+    from sms_resource.geostatistics import leave_one_out
+
+    config = context.config
+    blocks: BlockState = context.done["blocks"]
+    state: VariogramState = context.done["variograms"]
+    metals = metal_columns(config)
+    body = context.done["body"].body
+    rows = []
+    for kind in ("elevation", "depth", "proportional"):
+        frame = VerticalFrame(kind, body.top, body.base)
+        errors: dict[str, list[float]] = {metal: [] for metal in metals}
+        for domain in config.domains.sulphide:
+            part = state.samples[state.samples["domain"] == domain]
+            if part["hole_id"].nunique() < 2:
+                continue
+            found = leave_one_out(
+                frame.forward(part[["easting", "northing", "elevation"]].to_numpy(dtype=float)),
+                part[metals].to_numpy(dtype=float),
+                [state.inferences[(domain, metal)].model for metal in metals],
+                neighbourhoods(state, domain, config)[-1],
+                hole_ids=part["hole_id"].to_numpy(dtype=object),
+                leave="hole",
+                coincident=config.kriging.coincident,
+                threads=context.threads,
+            )
+            for number, metal in enumerate(metals):
+                errors[metal] += list(found.loc[found["column"] == number, "error"].dropna() ** 2)
+        rms = {
+            metal: float(np.sqrt(np.mean(values))) if values else np.nan for metal, values in errors.items()
+        }
+        rows.append({"frame": kind, "used": kind == blocks.frame.kind, **rms})
+    return pd.DataFrame(rows)
 
 
 def cross_validation(
