@@ -10,8 +10,8 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
-from sms_resource.loaders.guess_types import Confidence, Guess, GuessedFile
 from sms_resource.loaders.dimensions import stated_unit, units_of
+from sms_resource.loaders.guess_types import Confidence, Guess, GuessedFile
 from sms_resource.loaders.headers import element_of_header
 from sms_resource.loaders.parsing import parse_numbers
 from sms_resource.loaders.reading import RawTable

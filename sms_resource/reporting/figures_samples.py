@@ -55,6 +55,17 @@ def weights_of(frame: pd.DataFrame) -> Any:
     return np.ones(len(frame))
 
 
+def bars_of(values: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """Counts and edges of a histogram; values that differ by rounding alone are one value and get a width."""
+    bins = min(30, max(8, int(np.sqrt(values.size) * 1.6)))
+    low, high = float(values.min()), float(values.max())
+    size = max(abs(low), abs(high))
+    if high - low <= 1e-9 * size:
+        width = max(0.05 * size, 0.5)
+        return np.histogram(np.full(values.size, low), bins=bins, range=(low - width, low + width))
+    return np.histogram(values, bins=bins)
+
+
 def histograms(data: ReportData) -> Drawing | None:
     """Histogram of each metal over the composites, with mean, declustered mean and coefficient of variation."""
     metals = sample_metals(data)
@@ -68,7 +79,7 @@ def histograms(data: ReportData) -> Drawing | None:
     for axis, metal in zip(axes.ravel(), metals):
         known = composites[composites[metal].notna()]
         values, weights = known[metal].to_numpy(float), weights_of(known)
-        counts, edges = np.histogram(values, bins=min(30, max(8, int(np.sqrt(values.size) * 1.6))))
+        counts, edges = bars_of(values)
         axis.bar(edges[:-1], counts, width=np.diff(edges), align="edge", color="#7f9bb0", ec="white", lw=0.5)
         mean = float(values.mean())
         weighted = float(np.average(values, weights=weights)) if weights.sum() > 0 else mean

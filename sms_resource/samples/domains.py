@@ -74,8 +74,10 @@ def unmapped_codes(lithology: pd.DataFrame, mapping: Mapping[str, str], default:
             "lithology-unmapped",
             f"Logged code {code!r} ({here.sum()} intervals, {np.nansum(length[here]):.1f} m) is not in the "
             f"mapping and was taken as {default!r}",
-            "Add the code to the mapping of lithology to domains.",
-            column="code",
+            "Add the code to domains.codes in the study, or correct it in the log.",
+            file=lithology.attrs.get("file"),
+            row=int(lithology["source_row"].to_numpy()[here][0]) if "source_row" in lithology else None,
+            column=lithology.attrs.get("headers", {}).get("code", "code"),
         )
     for code in sorted(set(known) - set(codes)):
         findings.note(

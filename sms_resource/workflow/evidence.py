@@ -54,7 +54,7 @@ def background_grades(given: dict[str, Any]) -> dict[str, Any] | None:
 
 def composite(context: Context) -> EvidenceState:
     """Position the holes, join assays to runs and logs, make composites, and describe the evidence."""
-    from sms_resource.samples import desurvey, domains, position, recovery
+    from sms_resource.samples import desurvey, position, recovery
     from sms_resource.samples.composites import composite as make_composites
     from sms_resource.samples.surface import surface_use
 
@@ -75,11 +75,6 @@ def composite(context: Context) -> EvidenceState:
     assays, assay_summary = plain_grades(context, data.drill.assays, "assays")
     surface, _ = plain_grades(context, data.surface, "surface samples")
     intervals = domain_table(data, config)
-    if config.domains.codes:
-        unmapped = domains.unmapped_codes(
-            data.drill.lithology, dict(config.domains.codes), config.domains.unlogged
-        )
-        add_findings(context, unmapped)
     made = make_composites(
         assays,
         data.drill.runs,

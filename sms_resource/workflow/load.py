@@ -154,6 +154,11 @@ def check(context: Context) -> dict[str, int]:
         twin_distance_m=checks.twin_distance_m,
     )
     context.findings.extend(check_data(data, settings=settings))
+    domains = context.config.domains
+    if domains.codes:
+        from sms_resource.samples.domains import unmapped_codes
+
+        context.findings.extend(unmapped_codes(data.drill.lithology, dict(domains.codes), domains.unlogged))
     counts = context.findings.counts()
     context.detail = f"{counts['error']} errors, {counts['warning']} warnings, {counts['note']} notes"
     return counts

@@ -8,7 +8,9 @@ from sms_resource.workflow.stage import Stage
 _SAMPLES = ("metals", "domains", "composites")
 
 LOAD = Stage("load", "Reading the files", ("study", "data", "metals"), (), load.load, reads_files=True)
-CHECK = Stage("check", "Checking the data", ("study", "checks", "metals", "seafloor"), ("load",), load.check)
+CHECK = Stage(
+    "check", "Checking the data", ("study", "checks", "metals", "seafloor", "domains"), ("load",), load.check
+)
 COMPOSITE = Stage(
     "composite",
     "Joining samples",

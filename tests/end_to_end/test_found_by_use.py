@@ -5,10 +5,12 @@ from __future__ import annotations
 import json
 from pathlib import Path
 
+import numpy as np
 import pandas as pd
 import pytest
 
 from sms_resource import load_study, run_study
+from sms_resource.reporting.figures_samples import bars_of
 from sms_resource.workflow import check_study, new_study
 from tests.end_to_end.small_study import SmallStudy
 
@@ -54,6 +56,25 @@ def test_variogram_dots_and_line_are_in_one_measure(bare: Path) -> None:
         sill = fitted["nugget"] + sum(s["sill"] for s in fitted["structures"])
         line = drawn[drawn["metal"] == record["metal"]]["model"].max()
         assert 0.0 < line <= 1.001 * sill
+
+
+def test_a_logged_code_without_a_domain_is_named_before_the_run(tmp_path: Path) -> None:
+    """One mistyped code would turn sulphide into waste: check says so, with file and row."""
+    small = SmallStudy(tmp_path)
+    small.rows["lithology"][1]["code"] = "MX"
+    findings = check_study(load_study(small.write()))
+    (said,) = [f for f in findings if f.code == "lithology-unmapped"]
+    assert (said.severity, said.file, said.row, said.column) == ("warning", "lithology.csv", 3, "code")
+    assert "MX" in said.message.upper()
+
+
+@pytest.mark.parametrize("level", [5.0, 0.0, 1e-4])
+def test_histogram_of_one_value_but_for_rounding(level: float) -> None:
+    """Constant grades, joined into composites, differ in their last digit; that is still one bar."""
+    values = level * (1.0 + np.array([0.0, 2.2e-16, -2.2e-16, 0.0, 4.4e-16] * 17))
+    counts, edges = bars_of(values)
+    assert counts.sum() == values.size and np.count_nonzero(counts) == 1
+    assert edges[0] < values.min() and edges[-1] > values.max()
 
 
 def _centimetres(folder: Path) -> SmallStudy:
