@@ -269,11 +269,8 @@ def build_body(
         thickness = known = drift
         sigma, volume_sigma = top.with_values(np.full(top.shape, np.nan)), math.nan
         record = {"method": "base grid of the user"}
-    limited = np.minimum(thickness.values, known.values + extrapolate_below_m)
-    lost = float(np.sum(thickness.values - limited) * top.dx * top.dy)
-    thickness = thickness.with_values(np.nan_to_num(limited))
     names = [str(name) for name in good["hole_id"]]
-    thickness, known = honour_holes(thickness, known, holes, names, findings)
+    thickness, known, lost = honour_holes(thickness, known, extrapolate_below_m, holes, names, findings)
     if lost > 1e-6:
         findings.note(
             "extrapolation-limited",

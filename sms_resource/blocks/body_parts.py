@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from sms_resource.blocks.base import ThicknessData
 from sms_resource.blocks.grid import SurfaceGrid
-from sms_resource.blocks.honour import honour
+from sms_resource.blocks.honour import honour, stencils
 from sms_resource.blocks.polygons import CellMoments, lattice_moments, polygon_edges
 from sms_resource.findings import Findings
 
@@ -75,14 +75,29 @@ def hole_distance(top: SurfaceGrid, contacts: pd.DataFrame) -> SurfaceGrid:
 
 
 def honour_holes(
-    thickness: SurfaceGrid, known: SurfaceGrid, holes: ThicknessData, names: list[str], findings: Findings
-) -> tuple[SurfaceGrid, SurfaceGrid]:
-    """Make thickness and known thickness honour the holes.
+    thickness: SurfaceGrid,
+    known: SurfaceGrid,
+    limit_m: float,
+    holes: ThicknessData,
+    names: list[str],
+    findings: Findings,
+) -> tuple[SurfaceGrid, SurfaceGrid, float]:
+    """Make thickness and known thickness honour the holes, and hold the one to so much below the other.
 
-    Holes at one and the same place that contradict each other are reported.
+    Returns
+    -------
+    (thickness, known, cut_m3)
+        ``cut_m3`` is the volume that the limit takes away. Holes at one place that contradict each other are
+        reported.
     """
     x, y, target, at_least = _one_place(holes.x, holes.y, holes.thickness, holes.is_open, names, findings)
-    done = honour(thickness, x, y, target, at_least)
+    held = honour(known, x, y, target, np.zeros(len(x), dtype=bool)).values
+    limited = np.minimum(thickness.values, held + limit_m)
+    cut = float(np.sum(thickness.values - limited) * thickness.dx * thickness.dy)
+    if at_least.any():  # so that clearing the ends of open holes moves no node beyond the limit
+        nodes = np.unique(stencils(thickness, x[at_least], y[at_least])[0])
+        limited.ravel()[nodes] = np.maximum(limited.ravel()[nodes], held.ravel()[nodes])
+    done = honour(thickness.with_values(limited), x, y, target, at_least)
     if done.pins is not None:
         findings.note(
             "contacts-crowded",
@@ -90,8 +105,7 @@ def honour_holes(
             "the base meets them in a cone of less than half a cell round each",
             "check the positions of twin holes if their thickness differs much",
         )
-    held = honour(known, x, y, target, np.zeros(len(x), dtype=bool))
-    return done, known.with_values(np.minimum(held.values, done.values))
+    return done, known.with_values(np.minimum(held, done.values)), cut
 
 
 def _one_place(
