@@ -98,7 +98,9 @@ def cap_hits(
         )
         yield RuleHit("recovery-caution", "cap", _in_domains(frame, columns, suspect), text)
     if context.variogram_assumed:
-        text = "The horizontal variogram is assumed, not inferred from the data."
+        text = (
+            "The horizontal variogram of at least one estimated metal is assumed, not inferred from the data."
+        )
         yield RuleHit("variogram-assumed", "cap", _everywhere(frame), text)
 
 

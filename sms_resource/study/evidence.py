@@ -132,7 +132,7 @@ class Domains(Section):
         {}, "Thickness of a layer, such as cap = 1.5, in place of its logged contact."
     )
     boundaries: Literal["hard", "soft"] = key(
-        "hard", "Whether an estimate uses samples of its own domain only (hard) or of all domains (soft).",
+        "hard", "Whether an estimate uses samples of its own domain only (hard) or of all domains of the body (soft).",
         alternatives=("soft",),
     )  # fmt: skip
 

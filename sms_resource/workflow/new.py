@@ -88,6 +88,7 @@ def _head(guessed: Any, out: Path, questions: list[str]) -> list[str]:
         crs = f'crs = ""  # {OPEN}: projected coordinate system in metres, such as "EPSG:32702"'
         questions.append("study.crs: no file states a projected coordinate system")
     questions.append("study.effective_date: the day on which the data were closed (today was written)")
+    questions.append("study.jurisdiction: whether the deposit lies in the Area or in national waters")
     return [
         "# A study: every decision of one estimate. Lines marked CHECK were guessed with doubt, lines marked DECIDE are",
         "# open. A key that is left out takes its default; docs/study-file.md lists all keys, defaults and alternatives.",
@@ -97,6 +98,7 @@ def _head(guessed: Any, out: Path, questions: list[str]) -> list[str]:
         f"effective_date = {datetime.date.today().isoformat()}  # {OPEN}: the day on which the data were closed",
         crs,
         'vertical_datum = "not stated"  # say which datum holes and grid share, and whether the tide was taken out',
+        'jurisdiction = "area"  # DECIDE: "area" (International Seabed Authority) or "national"',
         "",
     ]
 

@@ -101,6 +101,12 @@ def valued(
             "formula": equivalent.formula, "statements": list(equivalent.statements), "name": equivalent.name,
             "factors": {name: dict(by) for name, by in equivalent.factors.items()},
         }  # fmt: skip
+    if not float(spent["cost_per_dry_tonne"].max()) > 0.0:
+        return (
+            frame,
+            {},
+            facts,
+        )  # without costs every block pays, and a break-even cut-off of zero says nothing
     dry, wet = frame["dry_tonnes"].sum(), frame["wet_tonnes"].sum()
     depth = float(-np.average(frame["elevation"], weights=frame["dry_tonnes"])) if dry > 0 else 0.0
     column = element_column(wanted) if wanted in value.metals else element_column(value.equivalent_in)

@@ -140,3 +140,34 @@ def test_new_guesses_the_unit_of_lengths_and_names_every_file_it_leaves(tmp_path
     study = (tmp_path / "new.toml").read_text()
     assert 'from_m = "cm"' in study and 'recovered_length_m = "cm"' in study
     assert any("shipping.csv" in question for question in made.open_questions)
+
+
+def test_the_columns_of_every_table_stand_in_the_guide() -> None:
+    """A person at sea maps columns from the guide alone."""
+    from sms_resource.loaders.tables import SCHEMAS
+
+    guide = (Path(__file__).parents[2] / "docs" / "getting-started.md").read_text(encoding="utf-8")
+    for role, columns in SCHEMAS.items():
+        line = next(line for line in guide.splitlines() if line.startswith(f"| `{role}` |"))
+        for column in columns:
+            assert (f"**`{column.name}`**" if column.required else f"`{column.name}`") in line, (
+                role,
+                column.name,
+            )
+
+
+def test_no_break_even_without_costs(tmp_path: Path) -> None:
+    """A study with prices and no costs has a value of its blocks, and no break-even cut-off of zero."""
+    from sms_resource.findings import Findings
+    from sms_resource.workflow.worth import valued
+
+    small = SmallStudy(tmp_path)
+    del small.toml["value"]["costs"]
+    study = load_study(small.write())
+    frame = pd.DataFrame(
+        {"elevation": [-1600.0], "dry_tonnes": [150.0], "wet_tonnes": [160.0], "cu_pct": [5.0], "zn_pct": [2.0],
+         "dry_density_tpm3": [3.0], "wet_density_tpm3": [3.2], "domain": ["massive"], "slope_deg": [0.0]}
+    )  # fmt: skip
+    context = type("Bare", (), {"config": study.config, "findings": Findings(), "study": study})()
+    made, tables, _ = valued(context, frame)
+    assert made["value_per_dry_tonne"].iloc[0] > 0 and not tables
