@@ -20,6 +20,7 @@ from .candidate_kernels import CELLS, EDGE, SHELLS, bounding_box, candidates, so
 
 GROUP = 64  # blocks that share one choice of candidates
 PARTY = 8  # blocks of a group that share one order of its samples
+_RANKED = 192  # candidates up to which counting the nearer ones beats sorting
 _WIDE = 0.35  # half diagonal, in radii, beyond which they do not
 ENOUGH, TOO_FEW_SAMPLES, TOO_FEW_HOLES = 0, 1, 2
 
@@ -29,6 +30,7 @@ _STEPS = float(1 << 40)
 _INDEX_BITS = 22
 _INDEX_MASK = (1 << _INDEX_BITS) - 1
 MOST_SAMPLES = 1 << _INDEX_BITS
+_BEYOND = (1 << 63) - 1  # later than any key
 
 
 @njit(cache=True, error_model="numpy")
@@ -61,6 +63,126 @@ def _report(
         status[row] = ENOUGH
 
 
+@njit(cache=True, error_model="numpy")
+def _take_nearest(
+    x, y, z, number, near, holes, tx, ty, tz, skip_hole, skip_sample, most, keys, taken, found
+):  # fmt: skip
+    """Take the nearest samples where no sector and no hole refuses one; how many there are.
+
+    A sample is taken if fewer than ``most`` others are nearer: they are counted, which needs no order and no
+    branch. ``near`` holds sample numbers in rising order, and so does ``found`` after.
+    """
+    for t in range(number):
+        dx = x[t] - tx
+        dy = y[t] - ty
+        dz = z[t] - tz
+        squared = min(dx * dx + dy * dy + dz * dz, 1.5)  # a key holds no more than 2
+        keys[t] = (np.int64(squared * _STEPS + 0.5) << _INDEX_BITS) | near[t]
+    if skip_hole >= 0 or skip_sample >= 0:
+        for t in range(number):
+            if holes[near[t]] == skip_hole or near[t] == skip_sample:
+                keys[t] = _BEYOND
+    reach = (np.int64((1.0 + 1e-12) * _STEPS + 0.5) << _INDEX_BITS) | _INDEX_MASK
+    total = 0
+    for t in range(number):
+        key = keys[t]
+        if key > reach:
+            continue
+        nearer = 0
+        for other in range(number):
+            nearer += int(keys[other] < key)
+        if nearer < most:
+            found[total] = near[t]
+            taken[holes[near[t]]] = 1
+            total += 1
+    return total
+
+
+@njit(cache=True, error_model="numpy")
+def _take_in_turn(
+    x, y, z, near, holes, hole_of, tx, ty, tz, skip_hole, skip_sample, limits, starts, width, offset, queue,
+    sector_of, in_sector, taken, found,
+):  # fmt: skip
+    """Take samples nearest first, each unless its sector or its hole is full; how many there are.
+
+    ``offset`` is the distance of the block from the centre of the shells; the rest as in ``search_samples``.
+    """
+    most, per_hole, sectors, per_sector = limits[0], limits[2], limits[4], limits[5]
+    cells = 1 if sectors == 1 else CELLS
+    nothing_refused = sectors == 1 and per_hole > holes.size
+    in_sector[:] = 0
+    total = 0
+    full = 0
+    front = 0
+    back = 0
+    for shell in range(SHELLS):
+        for fixed in range(cells):
+            cell = shell * CELLS + fixed
+            if fixed < CELLS - 1 and in_sector[fixed] >= per_sector:
+                continue
+            for t in range(starts[cell], starts[cell + 1]):
+                dx = x[t] - tx
+                dy = y[t] - ty
+                dz = z[t] - tz
+                squared = dx * dx + dy * dy + dz * dz
+                hole = hole_of[t]
+                if squared > 1.0 + 1e-12 or taken[hole] >= per_hole:
+                    continue
+                sector = fixed
+                if fixed == CELLS - 1:
+                    sector = int(dx > EDGE) + 2 * int(dy > EDGE)
+                    if sectors > 4:
+                        sector += 4 * int(dz > EDGE)
+                    if in_sector[sector] >= per_sector:
+                        continue
+                i = near[t]
+                if hole == skip_hole or i == skip_sample:
+                    continue
+                key = (np.int64(squared * _STEPS + 0.5) << _INDEX_BITS) | i
+                if nothing_refused and back - front == most - total:
+                    if key > queue[back - 1]:
+                        continue
+                    back -= 1
+                sector_of[i] = sector
+                place = back
+                while place > front and queue[place - 1] > key:
+                    queue[place] = queue[place - 1]
+                    place -= 1
+                queue[place] = key
+                back += 1
+        if front == back:
+            continue
+        # What lies in later shells is at least this far from the block.
+        bound = (shell + 1) * width - offset
+        safe = np.int64(0)
+        if shell == SHELLS - 1:
+            safe = np.int64(_BEYOND)
+        elif bound > 0.0:
+            safe = np.int64(max(bound * bound * _STEPS - 4.0, 0.0)) << _INDEX_BITS
+        while front < back and queue[front] < safe:
+            i = queue[front] & _INDEX_MASK
+            front += 1
+            sector = sector_of[i]
+            hole = holes[i]
+            if in_sector[sector] >= per_sector or taken[hole] >= per_hole:
+                continue
+            in_sector[sector] += 1
+            taken[hole] += 1
+            if in_sector[sector] == per_sector:
+                full += 1
+            place = total
+            while place > 0 and found[place - 1] > i:
+                found[place] = found[place - 1]
+                place -= 1
+            found[place] = i
+            total += 1
+            if total == most or full == sectors:
+                break
+        if total == most or full == sectors:
+            break
+    return total
+
+
 @njit(cache=True, nogil=True, error_model="numpy")
 def search_samples(
     worker, workers, samples, plain, holes, grouped, by_hole, targets, plain_targets, rows, skip_hole,
@@ -74,7 +196,8 @@ def search_samples(
     samples : (3, n) float64, coordinates in the axes of the ellipsoid, in units of its radii
     plain : (3, n) float64, coordinates in metres
     holes : (n,) int32, number of the hole
-    by_hole : (n,) int64, samples ordered by hole; grouped : (3, n) float64, ``samples`` in that order
+    by_hole : (n,) int64, samples ordered by hole, or in their own order where holes have no limit
+    grouped : (3, n) float64, ``samples`` in that order
     targets, plain_targets : (c, 3) float64, the same two for the targets
     rows : (r,) int64, the targets to search for, neighbours next to each other
     skip_hole, skip_sample : (c,) int32, hole and sample that the target must not see; -1 for none
@@ -90,7 +213,7 @@ def search_samples(
     """
     whole, real = wholes[worker], reals[worker]
     most, fewest, per_hole, fewest_holes = limits[0], limits[1], limits[2], limits[3]
-    sectors, per_sector = limits[4], limits[5]
+    sectors = limits[4]
     n = samples.shape[1]
     groups = (rows.size + GROUP - 1) // GROUP
     kept = whole[:n]
@@ -106,8 +229,7 @@ def search_samples(
     in_sector, in_both = np.zeros(8, np.int64), np.zeros(8, np.int64)
     centre, half = np.zeros(3), np.zeros(3)
     width = 0.0
-    cells = 1 if sectors == 1 else CELLS
-    plain_queue = sectors == 1 and per_hole > n  # nothing is refused, so no more need wait than may be taken
+    nothing_refused = sectors == 1 and per_hole > n
     for group in range(worker, groups, workers):
         group_first = group * GROUP
         group_last = min(group_first + GROUP, rows.size)
@@ -117,6 +239,13 @@ def search_samples(
             in_sector, in_both,
         )  # fmt: skip
         party_end = group_first
+        ranked = nothing_refused and number <= _RANKED
+        if ranked:
+            party_end = group_last
+            for t in range(number):
+                i = kept[t]
+                near[t] = i
+                x[t], y[t], z[t] = samples[0, i], samples[1, i], samples[2, i]
         for r in range(group_first, group_last):
             if r == party_end:
                 party_end = min(r + PARTY, group_last)
@@ -133,77 +262,17 @@ def search_samples(
                     hole_of[t] = holes[i]
             row = rows[r]
             tx, ty, tz = targets[row, 0], targets[row, 1], targets[row, 2]
-            offset = math.sqrt((tx - centre[0]) ** 2 + (ty - centre[1]) ** 2 + (tz - centre[2]) ** 2)
-            in_sector[:] = 0
-            total = 0
-            full = 0
-            front = 0
-            back = 0
-            for shell in range(SHELLS):
-                for fixed in range(cells):
-                    cell = shell * CELLS + fixed
-                    if fixed < CELLS - 1 and in_sector[fixed] >= per_sector:
-                        continue
-                    for t in range(starts[cell], starts[cell + 1]):
-                        dx = x[t] - tx
-                        dy = y[t] - ty
-                        dz = z[t] - tz
-                        squared = dx * dx + dy * dy + dz * dz
-                        hole = hole_of[t]
-                        if squared > 1.0 + 1e-12 or taken[hole] >= per_hole:
-                            continue
-                        sector = fixed
-                        if fixed == CELLS - 1:
-                            sector = int(dx > EDGE) + 2 * int(dy > EDGE)
-                            if sectors > 4:
-                                sector += 4 * int(dz > EDGE)
-                            if in_sector[sector] >= per_sector:
-                                continue
-                        i = near[t]
-                        if hole == skip_hole[row] or i == skip_sample[row]:
-                            continue
-                        key = (np.int64(squared * _STEPS + 0.5) << _INDEX_BITS) | i
-                        if plain_queue and back - front == most - total:
-                            if key > queue[back - 1]:
-                                continue
-                            back -= 1
-                        sector_of[i] = sector
-                        place = back
-                        while place > front and queue[place - 1] > key:
-                            queue[place] = queue[place - 1]
-                            place -= 1
-                        queue[place] = key
-                        back += 1
-                if front == back:
-                    continue
-                # What lies in later shells is at least this far from the block.
-                bound = (shell + 1) * width - offset
-                safe = np.int64(0)
-                if shell == SHELLS - 1:
-                    safe = np.int64(1) << 62
-                elif bound > 0.0:
-                    safe = np.int64(max(bound * bound * _STEPS - 4.0, 0.0)) << _INDEX_BITS
-                while front < back and queue[front] < safe:
-                    i = queue[front] & _INDEX_MASK
-                    front += 1
-                    sector = sector_of[i]
-                    hole = holes[i]
-                    if in_sector[sector] >= per_sector or taken[hole] >= per_hole:
-                        continue
-                    in_sector[sector] += 1
-                    taken[hole] += 1
-                    if in_sector[sector] == per_sector:
-                        full += 1
-                    place = total
-                    while place > 0 and found[row, place - 1] > i:
-                        found[row, place] = found[row, place - 1]
-                        place -= 1
-                    found[row, place] = i
-                    total += 1
-                    if total == most or full == sectors:
-                        break
-                if total == most or full == sectors:
-                    break
+            if ranked:
+                total = _take_nearest(
+                    x, y, z, number, near, holes, tx, ty, tz, skip_hole[row], skip_sample[row], most, queue,
+                    taken, found[row],
+                )  # fmt: skip
+            else:
+                offset = math.sqrt((tx - centre[0]) ** 2 + (ty - centre[1]) ** 2 + (tz - centre[2]) ** 2)
+                total = _take_in_turn(
+                    x, y, z, near, holes, hole_of, tx, ty, tz, skip_hole[row], skip_sample[row], limits, starts,
+                    width, offset, queue, sector_of, in_sector, taken, found[row],
+                )  # fmt: skip
             _report(
                 samples, plain, holes, tx, ty, tz, plain_targets, row, total, fewest, fewest_holes, major,
                 taken, found, reach, count, hole_count, nearest, status,

@@ -127,8 +127,12 @@ class Finder:
         self._plain = np.ascontiguousarray(points.T)
         self._scaled = [along(item.axes, points) / np.array(item.radii)[:, None] for item in self.passes]
         n = len(points)
-        self._by_hole = np.argsort(self._holes, kind="stable")
-        self._grouped = [np.ascontiguousarray(item[:, self._by_hole]) for item in self._scaled]
+        by_hole = np.argsort(self._holes, kind="stable")
+        # where holes have no limit their order is no help, and the order of the samples is
+        self._order = [by_hole if (item.max_per_hole or n) < n else np.arange(n) for item in self.passes]
+        self._grouped = [
+            np.ascontiguousarray(item[:, order]) for item, order in zip(self._scaled, self._order)
+        ]
         hole_count = int(self._holes.max()) + 1 if n else 0
         self._whole = np.empty((threads, 5 * n + CELLS * SHELLS + 1 + hole_count), dtype=np.int64)
         self._real = np.empty((threads, 22, n + 2))
@@ -153,7 +157,7 @@ class Finder:
             return out
         finite = np.isfinite(targets).all(axis=1)
         rows = np.flatnonzero(finite)
-        most = len(self._holes) + 1
+        n = len(self._holes)
         for number, item in enumerate(self.passes, start=1):
             if not len(rows):
                 break
@@ -161,10 +165,10 @@ class Finder:
                 [
                     min(item.max_samples, self.capacity),
                     item.min_samples,
-                    min(item.max_per_hole or most, most),
+                    item.max_per_hole if (item.max_per_hole or n) < n else n + 1,
                     item.min_holes,
                     item.sector_count,
-                    min(item.sector_limit, most),
+                    min(item.sector_limit, n + 1),
                 ],
                 dtype=np.int64,
             )
@@ -175,7 +179,7 @@ class Finder:
                 self._plain,
                 self._holes,
                 self._grouped[number - 1],
-                self._by_hole,
+                self._order[number - 1],
                 np.ascontiguousarray(along(item.axes, targets).T / np.array(item.radii)),
                 targets,
                 rows,

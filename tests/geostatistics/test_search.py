@@ -206,3 +206,14 @@ def test_bad_restraints():
         HighGradeRestraint(1.0, fraction=0.0)
     with pytest.raises(ValueError, match="thresholds has 3 numbers; wanted 1 or 2"):
         HighGradeRestraint([1.0, 2.0, 3.0]).per_column(2)
+
+
+@pytest.mark.parametrize("sectors", ["none", "octants"])
+def test_a_sample_on_the_ellipsoid_is_inside(sectors):
+    points = np.array([[3.0, 0.0, 0.0], [0.0, -4.0, 0.0], [0.0, 0.0, 5.0], [3.001, 0.0, 0.0]])
+    item = Neighbourhood((4.0, 3.0, 5.0), 4, 1, 3, 1, sectors, 4)
+    found = Finder(points, np.zeros(4, dtype=np.int32), [item], 1).find(np.zeros((1, 3)))
+    assert found.samples[0, : found.count[0]].tolist() == [0, 1, 2]
+    free = Neighbourhood((4.0, 3.0, 5.0), 4, 1, None, 1, sectors, 4)
+    found = Finder(points, np.zeros(4, dtype=np.int32), [free], 1).find(np.zeros((1, 3)))
+    assert found.samples[0, : found.count[0]].tolist() == [0, 1, 2]
