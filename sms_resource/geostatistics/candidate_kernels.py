@@ -91,7 +91,8 @@ def candidates(
     first = 0
     remaining = 0
     while first < number:
-        last = first + 1
+        # without a limit by hole all samples may pass as one hole
+        last = first + 1 if per_hole < holes.size else number
         while last < number and holes[kept[last]] == holes[kept[first]]:
             last += 1
         # the distance from which on a sample might not be among the nearest of its hole

@@ -20,7 +20,7 @@ from .candidate_kernels import CELLS, EDGE, SHELLS, bounding_box, candidates, so
 
 GROUP = 64  # blocks that share one choice of candidates
 PARTY = 8  # blocks of a group that share one order of its samples
-_RANKED = 192  # candidates up to which counting the nearer ones beats sorting
+_RANKED = 96  # candidates up to which counting the nearer ones beats sorting
 _WIDE = 0.35  # half diagonal, in radii, beyond which they do not
 ENOUGH, TOO_FEW_SAMPLES, TOO_FEW_HOLES = 0, 1, 2
 
