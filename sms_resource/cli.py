@@ -199,8 +199,9 @@ def _run(
             loaded, out, progress=progress, threads=threads, cache=cache, scenarios=scenarios, against=against
         )
     except StudyError as error:
-        _print_findings(_console(stderr=True), error.findings, quiet=False)
-        raise typer.Exit(FAULTY) from None
+        _leave_faulty(error.findings, as_json)
+    except MemoryError:
+        _fail_usage("not enough memory; choose larger blocks.size_m or body.cell_m, or a smaller outline")
     except NotResultsError as error:
         _fail_usage(f"{error}; give another folder with --out")
     except OSError as error:
@@ -263,15 +264,18 @@ def view(
 
 def _verify(results: Path, as_json: bool, quiet: bool, threads: int | None) -> NoReturn:
     """Run results again and say whether the bytes are the same."""
-    from sms_resource.workflow import verify_results
+    from sms_resource.workflow import NotResultsError, verify_results
     from sms_resource.workflow.stage import Silent
 
     if not (results / "manifest.json").is_file():
         _fail_usage(f"{results} holds no results")
     console = _console(stderr=as_json)
-    found = verify_results(
-        results, progress=Silent() if as_json or quiet else _Lines(console), threads=threads
-    )
+    try:
+        found = verify_results(
+            results, progress=Silent() if as_json or quiet else _Lines(console), threads=threads
+        )
+    except NotResultsError as error:
+        _fail_usage(str(error))
     if as_json:
         _print_json({"same": found.same, "differing": found.differing, "causes": found.causes,
                      "findings": found.findings.to_records()})  # fmt: skip
@@ -299,11 +303,16 @@ def _load(path: Path, as_json: bool) -> Any:
     try:
         return load_study(path)
     except StudyError as error:
-        if as_json:
-            _print_json(error.findings.to_records())
-        else:
-            _print_findings(_console(stderr=True), error.findings, quiet=False)
-        raise typer.Exit(FAULTY) from None
+        _leave_faulty(error.findings, as_json)
+
+
+def _leave_faulty(findings: Any, as_json: bool) -> NoReturn:
+    """Print the faults of a study and leave with exit 1."""
+    if as_json:
+        _print_json(findings.to_records())
+    else:
+        _print_findings(_console(stderr=True), findings, quiet=False)
+    raise typer.Exit(FAULTY) from None
 
 
 def _print_json(content: Any) -> None:

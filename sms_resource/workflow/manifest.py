@@ -11,6 +11,7 @@ from typing import Any
 
 from sms_resource import __version__
 from sms_resource.study import Study
+from sms_resource.workflow.folder import NotResultsError
 from sms_resource.workflow.stage import StageRecord, code_fingerprint, file_hash
 
 _LIBRARIES = (
@@ -119,5 +120,15 @@ def read_manifest(folder: Path) -> dict[str, Any]:
     ------
     FileNotFoundError
         If the folder holds no results.
+    NotResultsError
+        If its manifest is damaged.
     """
-    return json.loads((folder / "manifest.json").read_text(encoding="utf-8"))
+    text = (folder / "manifest.json").read_text(encoding="utf-8", errors="replace")
+    try:
+        found = json.loads(text)
+    except json.JSONDecodeError:
+        found = None
+    wanted = {"study", "inputs", "outputs", "versions"}
+    if not isinstance(found, dict) or not wanted <= set(found):
+        raise NotResultsError(f"the manifest of {folder} is damaged")
+    return found

@@ -25,6 +25,7 @@ from sms_resource.study import Study
 from sms_resource.units import element_column, unit_label
 from sms_resource.workflow.estimation import search_text
 from sms_resource.workflow.evidence import all_columns, metal_columns
+from sms_resource.workflow.stage import one_domain
 from sms_resource.workflow.state import (
     BlockState,
     BodyState,
@@ -130,7 +131,8 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
     )
     laboratory = evidence.laboratory
     weights = variograms.samples.set_index("composite_id")["declustering_weight"]
-    composites = evidence.composites[evidence.composites["domain"].isin(config.domains.sulphide)]
+    sulphide = one_domain(config.domains).sulphide
+    composites = evidence.composites[evidence.composites["domain"].isin(sulphide)]
     composites = composites.assign(weight=composites["composite_id"].map(weights))
     return Evidence(
         collars=collars,

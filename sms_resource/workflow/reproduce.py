@@ -187,7 +187,7 @@ def changes_since(
             {"step": "the other run" if number == 0 else "this run" if total else row["key"],
              "kind": "total" if total else "change",
              "dry_tonnes": row["dry_tonnes"] if total else row["dry_tonnes_step"],
-             "decision": "" if total else f"{row['key']}: {row['from']!r} to {row['to']!r}"}
+             "decision": "" if total else f"{row['key']}: {row['from']} to {row['to']}"}
         )  # fmt: skip
     notes = [item for item in differences(manifest, study) if not item.startswith("decision")]
     against = f"{manifest['study']['name']}, results in {other.name}"

@@ -7,7 +7,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from sms_resource.findings import Findings
-from sms_resource.study import Study
+from sms_resource.study import Study, StudyError
 from sms_resource.workflow.folder import ResultFolder
 from sms_resource.workflow.manifest import input_hashes
 from sms_resource.workflow.stage import Outcome, Progress, StageCache, run_stages
@@ -118,6 +118,8 @@ def run_study(
     ------
     NotResultsError
         If ``out`` holds something that is not a result.
+    StudyError
+        If the study's list of scenarios holds one that cannot be.
     """
     from sms_resource.workflow.stages import ESTIMATE_STAGES
 
@@ -131,6 +133,10 @@ def run_study(
             ESTIMATE_STAGES, study, progress=progress, store=store, threads=threads, files=hashes
         )
 
+    if scenarios:
+        from sms_resource.workflow.scenarios import scenario_list
+
+        scenario_list(study)  # a list that cannot be run is told before anything is
     if out is None:
         return _result(study, stages(), None)
     with ResultFolder(out) as folder:
@@ -171,7 +177,16 @@ def more(
     if against is not None:
         from sms_resource.workflow.reproduce import changes_since
 
-        table, words, notes = changes_since(Path(against), study, store=store, files=hashes, threads=threads)
+        try:
+            table, words, notes = changes_since(
+                Path(against), study, store=store, files=hashes, threads=threads
+            )
+        except (StudyError, ValueError, KeyError, OSError) as error:
+            outcome.findings.warning(
+                "against-unreadable", f"the run in {Path(against).name} cannot be compared with this one: {error}",
+                "Run that study again with this version, then compare.", file=study.path.name,
+            )  # fmt: skip
+            return extra
         extra.update(changes=table, against=words)
         for note in notes:
             outcome.findings.note("run-differs", f"Against {words}: {note}.", file=study.path.name)

@@ -85,11 +85,12 @@ def scenario_list(study: Study) -> list[Scenario]:
     Raises
     ------
     StudyError
-        If a scenario changes nothing or two share a label.
+        If a scenario changes nothing, two share a label, or one sets what cannot be set.
     """
     from sms_resource.economics.scenarios import ScenarioError, expand_overrides
 
     choice = study.config.scenarios
+    findings = Findings()
     try:
         single = expand_overrides([{"label": item.label, "set": item.change} for item in choice.single])
         scenarios = [Scenario(label, changes, "list") for label, changes in single]
@@ -97,12 +98,31 @@ def scenario_list(study: Study) -> list[Scenario]:
             for label, changes in expand_overrides(grids=[{"label": grid.label, "vary": grid.vary}]):
                 scenarios.append(Scenario(label, changes, "grid", grid.label))
     except ScenarioError as error:
-        findings = Findings()
         findings.error("scenario-invalid", str(error), "Mend [scenarios] of the study.", file=study.path.name)
         raise StudyError(findings) from None
+    for item in choice.single:
+        _check_overrides(study, item.label, item.change, findings)
+    for grid in choice.grid:
+        for name, values in grid.vary.items():
+            for value in values:
+                _check_overrides(study, grid.label, {name: value}, findings)
+    if findings.has_errors:
+        raise StudyError(findings)
     if choice.ledger:
         scenarios += ledger_scenarios(study)
     return scenarios
+
+
+def _check_overrides(study: Study, label: str, changes: Changes, findings: Findings) -> None:
+    """Put into words which override of a scenario cannot be made."""
+    try:
+        study.with_overrides(changes)
+    except StudyError as error:
+        for item in error.findings.errors:
+            findings.error(
+                "scenario-invalid", f"scenario '{label}': {item.message}", item.remedy, file=study.path.name,
+                column=item.column,
+            )  # fmt: skip
 
 
 def ledger_scenarios(study: Study) -> list[Scenario]:

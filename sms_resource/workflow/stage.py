@@ -54,7 +54,8 @@ class ConfigView:
     def __getattr__(self, name: str) -> Any:
         if name not in self._sections:
             raise AttributeError(f"the stage has not declared that it reads [{name}]")
-        return getattr(self._config, name)
+        section = getattr(self._config, name)
+        return one_domain(section) if name == "domains" else section
 
     def canonical(self) -> dict[str, Any]:
         """The declared sections as plain data."""
@@ -62,6 +63,20 @@ class ConfigView:
             name: getattr(self._config, name).model_dump(mode="json", exclude={"threads"})
             for name in sorted(self._sections)
         }
+
+
+def one_domain(domains: Any) -> Any:
+    """Domains as the stages see them: with ``layout = "single"`` every sulphide code leads to one domain, "sulphide".
+
+    What the study gives by domain (cuts, models, densities) is for the domains that it names, so none of it holds for
+    the one that joins them.
+    """
+    if domains.layout != "single" or len(domains.sulphide) < 2:
+        return domains
+    codes = {
+        code: "sulphide" if domain in domains.sulphide else domain for code, domain in domains.codes.items()
+    }
+    return domains.model_copy(update={"codes": codes, "sulphide": ("sulphide",), "thickness_m": {}})
 
 
 @dataclass

@@ -77,6 +77,18 @@ def test_histogram_of_one_value_but_for_rounding(level: float) -> None:
     assert edges[0] < values.min() and edges[-1] > values.max()
 
 
+@pytest.mark.parametrize(
+    ("role", "code"), [("lithology", "no-composites"), ("densities", "density-unmeasured")]
+)
+def test_check_names_what_would_stop_the_run(tmp_path: Path, role: str, code: str) -> None:
+    """Codes without a log and measured densities without measurements are errors of check, not of a later stage."""
+    small = SmallStudy(tmp_path)
+    del small.rows[role]
+    del small.toml["data"][role]
+    findings = check_study(load_study(small.write()))
+    assert code in {f.code for f in findings if f.severity == "error"}
+
+
 def _centimetres(folder: Path) -> SmallStudy:
     """Run depths in centimetres under names of their own, densities in kg/m3."""
     small = SmallStudy(folder)
