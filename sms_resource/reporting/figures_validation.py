@@ -145,7 +145,7 @@ def leave_one_out(data: ReportData) -> Drawing | None:
         part = frame[(frame["column"] == metal) & frame["estimate"].notna() & frame["true"].notna()]
         x, y = part["estimate"].to_numpy(float), part["true"].to_numpy(float)
         axis.plot(x, y, "o", ms=2.6, mew=0, alpha=0.55, color=style.LINES[0])
-        if x.size > 2 and x.std() > 0:
+        if x.size > 2 and min(x.std(), y.std()) > 1e-9 * max(abs(x.mean()), abs(y.mean())):
             top = float(max(np.quantile(x, 0.995), np.quantile(y, 0.995))) * 1.05
             low = min(0.0, float(min(x.min(), y.min())))
             axis.plot([low, top], [low, top], color=style.INK, lw=0.9)

@@ -264,6 +264,10 @@ def _check_sense(study: Study, rows: dict[str, int], findings: Findings) -> None
             if domain not in known:
                 fault("domains.sulphide", "study-domain", f"domain '{domain}' has no logged code",
                       nearest(domain, sorted(known)))  # fmt: skip
+    if config.domains.codes and known >= set(config.domains.sulphide) and config.data.lithology is None:
+        fault("domains.codes", "study-value-missing", "codes are mapped to domains, but no lithology is given",
+              "Give data.lithology, or leave domains.codes out: every depth is then of the first sulphide domain.",
+              )  # fmt: skip
     if config.domains.unlogged in config.domains.sulphide:
         fault("domains.unlogged", "study-domain", "unlogged depths would count as sulphide",
               "Name a domain outside domains.sulphide, such as \"waste\".")  # fmt: skip

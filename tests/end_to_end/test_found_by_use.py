@@ -11,6 +11,7 @@ import pytest
 
 from sms_resource import load_study, run_study
 from sms_resource.reporting.figures_samples import bars_of
+from sms_resource.study import StudyError
 from sms_resource.workflow import check_study, new_study
 from tests.end_to_end.small_study import SmallStudy
 
@@ -77,16 +78,15 @@ def test_histogram_of_one_value_but_for_rounding(level: float) -> None:
     assert edges[0] < values.min() and edges[-1] > values.max()
 
 
-@pytest.mark.parametrize(
-    ("role", "code"), [("lithology", "no-composites"), ("densities", "density-unmeasured")]
-)
-def test_check_names_what_would_stop_the_run(tmp_path: Path, role: str, code: str) -> None:
-    """Codes without a log and measured densities without measurements are errors of check, not of a later stage."""
+def test_codes_without_a_log_are_named_before_the_run(tmp_path: Path) -> None:
+    """Codes that are mapped while no lithology is given would stop the run at a later stage."""
     small = SmallStudy(tmp_path)
-    del small.rows[role]
-    del small.toml["data"][role]
-    findings = check_study(load_study(small.write()))
-    assert code in {f.code for f in findings if f.severity == "error"}
+    del small.rows["lithology"]
+    del small.toml["data"]["lithology"]
+    with pytest.raises(StudyError) as caught:
+        load_study(small.write())
+    (said,) = [f for f in caught.value.findings if f.severity == "error"]
+    assert (said.code, said.column) == ("study-value-missing", "domains.codes")
 
 
 def _centimetres(folder: Path) -> SmallStudy:
