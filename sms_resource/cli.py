@@ -416,10 +416,14 @@ def _print_summary(console: Any, result: Any) -> None:
 def main() -> None:
     """Run the command line; a fault of the user never shows a traceback."""
     try:
-        app()
-    except KeyboardInterrupt:
-        sys.stderr.write("sms-resource: stopped; earlier results are as they were\n")
-        sys.exit(INTERRUPTED)
+        try:
+            app()
+        except KeyboardInterrupt:
+            sys.exit(INTERRUPTED)
+    except SystemExit as leaving:
+        if leaving.code == INTERRUPTED:
+            sys.stderr.write("sms-resource: stopped; earlier results are as they were\n")
+        raise
     except BrokenPipeError:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         sys.exit(DONE)
