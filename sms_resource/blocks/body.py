@@ -25,6 +25,7 @@ from sms_resource.blocks.body_parts import (
     hole_distance,
     honour_holes,
     measure,
+    one_a_place,
     report_gaps,
 )
 from sms_resource.blocks.grid import SurfaceGrid
@@ -239,6 +240,7 @@ def build_body(
         good["thickness_m"].to_numpy(dtype=np.float64, copy=True), (good["kind"] == "open").to_numpy(copy=True),
         np.zeros(len(good)),
     )  # fmt: skip
+    holes = one_a_place(holes, [str(name) for name in good["hole_id"]], findings)
     drift = None if base_grid is None else drift_from_base_grid(base_grid, top, outline, findings)
     others = data_from_base_points(base_points, top, outline, base_point_sigma_m, findings)
     data = join_data(holes, others)
@@ -253,7 +255,7 @@ def build_body(
             "laid through the ends of the holes",
             "drill one hole deeper, or give a base from geophysics",
         )
-        data = join_data(replace(holes, is_open=np.zeros(len(good), dtype=bool)), others)
+        data = join_data(replace(holes, is_open=np.zeros(len(holes), dtype=bool)), others)
     elif len(good) > 0 and int((~holes.is_open).sum()) < 5 and drift is None:
         findings.warning("contacts-few", f"only {int((~holes.is_open).sum())} holes reached the base",
                          "treat the volume as very uncertain")  # fmt: skip
@@ -269,8 +271,7 @@ def build_body(
         thickness = known = drift
         sigma, volume_sigma = top.with_values(np.full(top.shape, np.nan)), math.nan
         record = {"method": "base grid of the user"}
-    names = [str(name) for name in good["hole_id"]]
-    thickness, known, lost = honour_holes(thickness, known, extrapolate_below_m, holes, names, findings)
+    thickness, known, lost = honour_holes(thickness, known, extrapolate_below_m, holes, findings)
     if lost > 1e-6:
         findings.note(
             "extrapolation-limited",

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -79,7 +80,6 @@ def honour_holes(
     known: SurfaceGrid,
     limit_m: float,
     holes: ThicknessData,
-    names: list[str],
     findings: Findings,
 ) -> tuple[SurfaceGrid, SurfaceGrid, float]:
     """Make thickness and known thickness honour the holes, and hold the one to so much below the other.
@@ -87,10 +87,9 @@ def honour_holes(
     Returns
     -------
     (thickness, known, cut_m3)
-        ``cut_m3`` is the volume that the limit takes away. Holes at one place that contradict each other are
-        reported.
+        ``cut_m3`` is the volume that the limit takes away.
     """
-    x, y, target, at_least = _one_place(holes.x, holes.y, holes.thickness, holes.is_open, names, findings)
+    x, y, target, at_least = holes.x, holes.y, holes.thickness, holes.is_open
     held = honour(known, x, y, target, np.zeros(len(x), dtype=bool)).values
     limited = np.minimum(thickness.values, held + limit_m)
     cut = float(np.sum(thickness.values - limited) * thickness.dx * thickness.dy)
@@ -108,15 +107,17 @@ def honour_holes(
     return done, known.with_values(np.minimum(held, done.values)), cut
 
 
-def _one_place(
-    x: Array, y: Array, target: Array, at_least: Array, names: list[str], findings: Findings
-) -> tuple[Array, Array, Array, Array]:
-    """Join holes at one and the same place: contacts by their mean, lower bounds by the greatest."""
+def one_a_place(holes: ThicknessData, names: list[str], findings: Findings) -> ThicknessData:
+    """Join holes at one and the same place: contacts by their mean, lower bounds by the greatest.
+
+    Those that contradict each other are reported.
+    """
+    x, y, target, at_least = holes.x, holes.y, holes.thickness, holes.is_open
     place = np.round(np.column_stack([x, y]), 3)
     unique, group = np.unique(place, axis=0, return_inverse=True)
     group = group.reshape(-1)
     if len(unique) == len(x):
-        return x, y, target, at_least
+        return holes
     keep: list[int] = []
     target = target.copy()
     for n in range(len(unique)):
@@ -139,7 +140,7 @@ def _one_place(
                 )
         keep.append(chosen)
     index = np.array(sorted(keep))
-    return x[index], y[index], target[index], at_least[index]
+    return replace(holes, thickness=target).select(index)
 
 
 def audit_contacts(contacts: pd.DataFrame, thickness: SurfaceGrid, top: SurfaceGrid) -> pd.DataFrame:

@@ -28,7 +28,7 @@ def slope(grid: SurfaceGrid, footprint_m: float = 5.0) -> SurfaceGrid:
     Returns
     -------
     SurfaceGrid
-        Degrees; NaN where less than half the window has values.
+        Degrees; NaN where less than a quarter of the window has values.
     """
     east, north, _ = _planes(grid, footprint_m)
     return grid.with_values(np.degrees(np.arctan(np.hypot(east, north))))
@@ -107,7 +107,7 @@ def _planes(grid: SurfaceGrid, footprint_m: float) -> tuple[Array, Array, Array]
         return correlate1d(rows, along_y, axis=0, mode="constant")
 
     n = window(m, ones_x, ones_y)
-    enough = good & (n >= max(3.0, 0.5 * x.size * y.size))
+    enough = good & (n >= max(3.0, 0.25 * x.size * y.size))
     safe = np.where(n > 0, n, 1.0)
     mx, my, mz = (window(f, a, b) / safe for f, a, b in ((m, x, ones_y), (m, ones_x, y), (z, ones_x, ones_y)))
     xx = window(m, x * x, ones_y) / safe - mx * mx

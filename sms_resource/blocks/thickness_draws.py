@@ -18,6 +18,7 @@ from sms_resource.blocks.thickness_model import (
     Parameters,
     Sites,
     ThicknessSettings,
+    root_of,
     solve_sets,
 )
 
@@ -185,7 +186,7 @@ class _Bodies:
         if pick not in self.factors:
             weights, covariance = self.system.sets[pick].joint(self.own, self.to_holes)
             covariance[np.diag_indices_from(covariance)] += 1e-8 * (1.0 + covariance.max())
-            self.factors[pick] = weights, np.linalg.cholesky(covariance)
+            self.factors[pick] = weights, root_of(covariance)
         weights, lower = self.factors[pick]
         field = weights @ values + math.sqrt(sill) * (lower @ rng.standard_normal(len(lower)))
         if self.positive:

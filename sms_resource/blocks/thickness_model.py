@@ -300,8 +300,23 @@ def solve_sets(candidates: Iterable[Parameters], holes: Sites, error_variance: A
         if key not in solved:
             covariance = parameters.covariance(pairs)
             covariance[np.diag_indices_from(covariance)] += error_variance + 1e-10
-            lower = np.linalg.cholesky(covariance)
+            lower = root_of(covariance)
             inverse = np.linalg.inv(lower)
             solved[key] = inverse.T @ inverse, 2.0 * float(np.log(np.diag(lower)).sum())
         out.append(FittedSet(parameters, holes, *solved[key]))
     return out
+
+
+def root_of(covariance: Array) -> Array:
+    """Lower Cholesky factor; a matrix that rounding has made indefinite gets a little more on its diagonal."""
+    diagonal = np.diag_indices_from(covariance)
+    extra = 0.0
+    for _ in range(8):
+        try:
+            return np.linalg.cholesky(covariance)
+        except np.linalg.LinAlgError:
+            added = max(extra * 10.0, 1e-10 * float(np.max(covariance[diagonal])))
+            covariance = covariance.copy()
+            covariance[diagonal] += added - extra
+            extra = added
+    raise ValueError("contacts give a covariance that cannot be solved; look for holes at one place")
