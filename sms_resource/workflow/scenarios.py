@@ -13,7 +13,14 @@ import pandas as pd
 from sms_resource.findings import Findings
 from sms_resource.study import Study, StudyError, decisions
 from sms_resource.workflow.evidence import metal_columns
-from sms_resource.workflow.stage import ConfigView, Progress, StageCache, run_stages, stage_key
+from sms_resource.workflow.stage import (
+    ConfigView,
+    Progress,
+    StageCache,
+    named_files,
+    run_stages,
+    stage_key,
+)
 
 Changes = dict[str, Any]
 
@@ -145,8 +152,9 @@ def outcome_stages() -> tuple[Any, ...]:
 def final_key(study: Study, files: dict[str, str]) -> str:
     """Key of the last stage, from the study alone: nothing is run."""
     keys: dict[str, str] = {}
+    named = named_files(files, study)
     for stage in outcome_stages():
-        keys[stage.name] = stage_key(stage, ConfigView(study.config, stage.reads), keys, files)
+        keys[stage.name] = stage_key(stage, ConfigView(study.config, stage.reads), keys, named)
     return keys["classify"]
 
 

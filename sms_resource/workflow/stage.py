@@ -194,6 +194,11 @@ def stage_key(stage: Stage, view: ConfigView, keys: dict[str, str], files: dict[
     return hashlib.sha256(json.dumps(content, sort_keys=True).encode()).hexdigest()
 
 
+def named_files(files: dict[str, str], study: Study) -> dict[str, str]:
+    """Hashes of the inputs, with the name of the study file, which findings carry."""
+    return {**files, "study": study.path.name}
+
+
 def _worked(stage: Stage, context: Context) -> Any:
     """Output of a stage; None where it stopped with an error, or a room refused a value that it was given."""
     try:
@@ -245,11 +250,12 @@ def run_stages(
     outcome = Outcome()
     outcome.findings.extend(study.findings)
     keys: dict[str, str] = {}
+    named = named_files(files or {}, study)
     for stage in stages:
         progress.started(stage.name, stage.label)
         begun = time.perf_counter()
         view = ConfigView(study.config, stage.reads)
-        key = stage_key(stage, view, keys, files or {})
+        key = stage_key(stage, view, keys, named)
         keys[stage.name] = key
         kept = store.get(key) if store is not None else None
         if kept is not None:
