@@ -47,6 +47,22 @@ class BodySection(Section):
     )
 
 
+class Chimneys(Section):
+    """[chimneys]: chimneys as a domain of their own, lighter than the mound and badly seen by a grid."""
+
+    source: Literal["none", "polygons", "relief"] = key(
+        "none",
+        "No such domain, polygons with a height (data.chimneys), or the grid minus a smoothed seafloor.",
+    )
+    domain: str = key(
+        "chimney", "Domain of the chimneys; it must stand first in domains.sulphide and needs a density."
+    )
+    width_m: float = key(
+        15.0, 'What is narrower stands out of the smoothed seafloor, for source = "relief".', gt=0
+    )
+    least_height_m: float = key(2.0, "What stands out less is roughness.", gt=0)
+
+
 class Blocks(Section):
     """[blocks]: the block model."""
 

@@ -124,10 +124,15 @@ class Domains(Section):
         ("massive",), "Domains that make up the body, from the seafloor down.", min_length=1
     )
     unlogged: str = key("waste", "Domain of codes that are not named, and of depths without a log.")
-    layout: Literal["layered", "single"] = key(
-        "layered", "How domains fill the body: as layers between contact surfaces, or one domain throughout.",
+    layout: Literal["layered", "single", "indicator", "signed_distance"] = key(
+        "layered", "How domains fill the body: as layers between contact surfaces, one domain throughout, or the likeliest "
+        "of the logged domains by indicator kriging or by signed distance, with the probability kept.",
         alternatives=("single",),
     )  # fmt: skip
+    logged_range_m: float = key(
+        40.0, "Range in the plane of the logged domains, for indicator and signed distance.", gt=0
+    )
+    logged_vertical_range_m: float = key(6.0, "Upright range of the logged domains.", gt=0)
     thickness_m: dict[str, float] = key(
         {}, "Thickness of a layer, such as cap = 1.5, in place of its logged contact."
     )

@@ -261,7 +261,8 @@ def _check_sense(study: Study, rows: dict[str, int], findings: Findings) -> None
     known = {*config.domains.codes.values(), config.domains.unlogged}
     if config.domains.codes:
         for domain in config.domains.sulphide:
-            if domain not in known:
+            made = config.chimneys.source != "none" and domain == config.chimneys.domain
+            if domain not in known and not made:
                 fault("domains.sulphide", "study-domain", f"domain '{domain}' has no logged code",
                       nearest(domain, sorted(known)))  # fmt: skip
     if config.domains.codes and known >= set(config.domains.sulphide) and config.data.lithology is None:
@@ -283,6 +284,12 @@ def _check_sense(study: Study, rows: dict[str, int], findings: Findings) -> None
                 if element not in config.metals.estimate:
                     fault(f"{section}.{domain}.{element}", "study-metal", f"'{element}' is not estimated",
                           nearest(element, list(config.metals.estimate)))  # fmt: skip
+    if config.chimneys.source != "none" and config.chimneys.domain != config.domains.sulphide[0]:
+        fault("chimneys.domain", "study-domain", f"the domain '{config.chimneys.domain}' is not the first of the body",
+              "Put it first in domains.sulphide.")  # fmt: skip
+    if config.chimneys.source == "polygons" and config.data.chimneys is None:
+        fault("chimneys.source", "study-value-missing", "chimneys are to come from polygons, but no file is given",
+              "Add [data.chimneys], or set source = \"relief\".")  # fmt: skip
     variable = config.cutoff.variable
     if variable not in (*config.metals.estimate, "equivalent", "value"):
         fault("cutoff.variable", "study-metal", f"the cut-off is on '{variable}', which is not estimated",

@@ -88,6 +88,7 @@ class DataFiles(Section):
     exclusions: LayerFile | None = key(
         None, "Zones that are set aside, with status and buffer.", decision=False
     )
+    chimneys: LayerFile | None = key(None, "Polygons of chimneys, with their height_m.", decision=False)
     class_overrides: LayerFile | None = key(
         None, "Polygons in which a CP sets the class (columns: class, reason, by).", decision=False
     )
@@ -107,4 +108,4 @@ TABLE_ROLES = (
     "base_points",
 )  # fmt: skip
 GRID_ROLES = ("bathymetry", "base_grid")
-LAYER_ROLES = ("outline", "exclusions", "class_overrides")
+LAYER_ROLES = ("outline", "exclusions", "chimneys", "class_overrides")

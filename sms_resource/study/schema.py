@@ -27,6 +27,7 @@ class StudyConfig(Section):
     density: evidence.Density = key(evidence.Density(), "Dry and wet density.")
     seafloor: estimate.Seafloor = key(estimate.Seafloor(), "The grid before it bounds the body.")
     body: estimate.BodySection = key(estimate.BodySection(), "The sulphide between seafloor and base.")
+    chimneys: estimate.Chimneys = key(estimate.Chimneys(), "Chimneys as a domain of their own.")
     blocks: estimate.Blocks = key(estimate.Blocks(), "The block model.")
     variograms: estimate.Variograms = key(estimate.Variograms(), "Continuity of grade.")
     search: estimate.Search = key(estimate.Search(), "Which samples an estimate may see.")

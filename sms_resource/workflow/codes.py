@@ -6,6 +6,7 @@ CODES: dict[str, str] = {
     "blocks-empty": "No block of the block model touches the body.",
     "blocks-not-estimated": "Blocks have no estimate of some metal.",
     "cutoff-unknown": "No block has the variable that the study cuts on.",
+    "chimney-height": "Polygons of chimneys have no height.",
     "equivalent-refused": "A metal equivalent or a value cannot be made from what the study states.",
     "neighbourhood-study": "What the study of neighbourhoods recommends.",
     "no-composites": "No sample lies in a domain of the body.",

@@ -71,6 +71,7 @@ def estimate(context: Context) -> EstimateState:
         targets=targets,
         statistics=pass_statistics(frame),
         neighbourhoods=parts,
+        density_cases={case: dry_case(blocks, grades, density, config, case) for case in ("low", "high")},
     )
 
 
@@ -271,6 +272,19 @@ def join_domains(
             weight += np.where(known, masses[domain], 0.0)
         frame[metal] = np.divide(total, weight, out=np.full(len(frame), np.nan), where=weight > 0)
     return frame
+
+
+def dry_case(
+    blocks: BlockState, grades: dict[str, pd.DataFrame], density: DensityState, config: Any, case: str
+) -> NDArray[np.float64]:
+    """Dry tonnes of each block at the low or the high density of its domains."""
+    frame = blocks.model.frame
+    total = np.zeros(len(frame))
+    for domain, share in domain_shares(frame, config.domains.sulphide).items():
+        names = np.full(len(frame), domain, dtype=object)
+        dry, _ = density.model.predict(names, grades[domain], case=case)
+        total += np.where(share > 0, share * dry, 0.0)
+    return total * frame["volume_m3"].to_numpy(dtype=float)
 
 
 def companion_grades(

@@ -222,6 +222,7 @@ def describe(
     deleterious, found = associations.deleterious_summary(inside)
     add_findings(context, found)
     profile, contact_verdicts = contacts.contact_analysis(made.frame, intervals, metals)
+    add_findings(context, contacts.contact_findings(contact_verdicts))
     lost = bracket.lost_core_bracket(
         assays, data.drill.runs, intervals, paths, metals=metals, densities=data.drill.densities,
         options=composite_options(config), domains=sulphide,

@@ -62,19 +62,49 @@ def body(context: Context) -> BodyState:
         made = made.shifted(
             base_m=choice.base_shift_m, top_m=choice.seafloor_shift_m, outline_m=choice.outline_shift_m
         )
-    layers = None
-    if config.domains.layout == "layered" and len(config.domains.sulphide) > 1:
-        from sms_resource.blocks.domains import layered_domains
-
-        layers = layered_domains(
-            made, evidence.domain_intervals, evidence.collars, evidence.paths, config.domains.sulphide,
-            thickness_m=dict(config.domains.thickness_m) or None, findings=context.findings,
-        )  # fmt: skip
+    layers = domain_layers(context, made)
     context.detail = f"{made.volume_m3:,.0f} m3"
     return BodyState(
         seafloor=seafloor, outline=outline, contacts=contacts, body=made, domains=layers,
         facts={**facts, "outline_from": outline_from},
     )  # fmt: skip
+
+
+def domain_layers(context: Context, made: Any) -> Any:
+    """Contact surfaces between the layers of the body, chimneys on top; None where one domain fills it."""
+    from sms_resource.blocks.domains import layered_domains
+    from sms_resource.blocks.layers import LayeredDomains
+
+    config = context.config
+    evidence: EvidenceState = context.done["composite"]
+    chimneys = config.chimneys
+    names = config.domains.sulphide[1:] if chimneys.source != "none" else config.domains.sulphide
+    layers = None
+    if config.domains.layout == "layered" and len(names) > 1:
+        layers = layered_domains(
+            made, evidence.domain_intervals, evidence.collars, evidence.paths, names,
+            thickness_m=dict(config.domains.thickness_m) or None, findings=context.findings,
+        )  # fmt: skip
+    if chimneys.source == "none" or not names:
+        return layers
+    from sms_resource.blocks.chimneys import chimneys_from_polygons, chimneys_from_relief, with_chimneys
+
+    if chimneys.source == "polygons":
+        from sms_resource.workflow.load import read_layer
+
+        polygons = read_layer(context, config.data.chimneys, "chimneys")
+        if polygons is None or "height_m" not in polygons:
+            context.findings.error(
+                "chimney-height", "the polygons of chimneys have no height", "Give each a column height_m, above zero.",
+                file=config.data.chimneys.file, column="height_m",
+            )  # fmt: skip
+            return layers
+        depth = chimneys_from_polygons(made.top, polygons)
+    else:
+        depth = chimneys_from_relief(
+            made.top, width_m=chimneys.width_m, least_height_m=chimneys.least_height_m
+        )
+    return with_chimneys(layers or LayeredDomains((names[0],)), depth, chimneys.domain)
 
 
 def blocks(context: Context) -> BlockState:
@@ -105,8 +135,26 @@ def blocks(context: Context) -> BlockState:
         )  # fmt: skip
         raise StageStop
     frame = VerticalFrame(choice.vertical_frame, state.body.top, state.body.base)
+    if config.domains.layout in ("indicator", "signed_distance"):
+        model = logged_domains(model, evidence, frame, config)
     context.detail = f"{len(model.frame):,} blocks of {' x '.join(f'{size:g}' for size in grid.size)} m"
     return BlockState(model=model, proposal=proposal, frame=frame, seafloor=state.body.top)
+
+
+def logged_domains(model: Any, evidence: EvidenceState, frame: Any, config: Any) -> Any:
+    """Blocks with the likeliest of the logged domains, and its probability."""
+    from sms_resource.blocks.logged_domains import interpolate_domains
+
+    inside = evidence.composites[evidence.composites["domain"].isin(config.domains.sulphide)]
+    return interpolate_domains(
+        model,
+        inside[["easting", "northing", "elevation"]].to_numpy(dtype=float),
+        list(inside["domain"]),
+        method=config.domains.layout,
+        range_m=config.domains.logged_range_m,
+        vertical_range_m=config.domains.logged_vertical_range_m,
+        frame=frame,
+    )
 
 
 def domain_shares(frame: Any, domains: tuple[str, ...]) -> dict[str, np.ndarray]:

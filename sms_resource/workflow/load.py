@@ -120,6 +120,7 @@ def read_layer(context: Context, layer: LayerFile | None, role: str) -> Any:
 
     reader: Any = {
         "outline": boundaries.load_outline,
+        "chimneys": boundaries.load_outline,
         "exclusions": boundaries.load_exclusions,
         "class_overrides": boundaries.load_overrides,
     }[role]

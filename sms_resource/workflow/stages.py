@@ -34,7 +34,7 @@ DENSITY = Stage(
 BODY = Stage(
     "body",
     "Bounding the body",
-    ("study", "seafloor", "body", "domains", "surface_samples"),
+    ("study", "data", "seafloor", "body", "chimneys", "domains", "surface_samples"),
     ("load", "composite"),
     geometry.body,
 )

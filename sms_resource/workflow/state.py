@@ -112,6 +112,8 @@ class EstimateState:
         Grades by nearest sample and by inverse distance, one row a block.
     targets : ndarray (b, 3)
         Block centres in the vertical frame.
+    density_cases : dict of ndarray (b,)
+        Dry tonnes of each block at the "low" and the "high" density of its domains.
     """
 
     frame: pd.DataFrame
@@ -119,6 +121,7 @@ class EstimateState:
     targets: NDArray[np.float64]
     statistics: pd.DataFrame
     neighbourhoods: dict[tuple[str, str], Any] = field(default_factory=dict)
+    density_cases: dict[str, NDArray[np.float64]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, eq=False)

@@ -378,13 +378,22 @@ def compare_estimators(made: EstimateState, metals: list[str], config: Any) -> p
 
 
 def geometry_table(body: BodyState, made: EstimateState, config: Any) -> pd.DataFrame:
-    """Volume and dry tonnes of the body when its surfaces move by what they are known to."""
+    """Volume and dry tonnes of the body when its surfaces, or its densities, move by what they are known to."""
     from sms_resource.blocks.uncertainty import geometry_uncertainty
 
-    mean_density = float(made.frame["dry_tonnes"].sum() / made.frame["volume_m3"].sum())
-    return geometry_uncertainty(
-        body.body, dry_density_tpm3=mean_density, seafloor_sigma_m=config.seafloor.sigma_m
+    volume = float(made.frame["volume_m3"].sum())
+    base = float(made.frame["dry_tonnes"].sum())
+    table = geometry_uncertainty(
+        body.body, dry_density_tpm3=base / volume, seafloor_sigma_m=config.seafloor.sigma_m
     )
+    rows = []
+    for case in ("low", "high"):
+        tonnes = float(made.density_cases[case].sum())
+        rows.append(
+            {"case": f"density_{case}", "what": f"{case} dry density of each domain", "volume_m3": volume, "change_m3": 0.0,
+             "change_pct": 100.0 * (tonnes / base - 1.0), "dry_tonnes": tonnes, "change_dry_tonnes": tonnes - base}
+        )  # fmt: skip
+    return pd.concat([table, pd.DataFrame(rows)], ignore_index=True)
 
 
 def neighbourhood_table(context: Context) -> pd.DataFrame:
