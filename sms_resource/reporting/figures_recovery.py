@@ -13,7 +13,7 @@ from sms_resource.units import element_label
 PROBABILITIES = (0.01, 0.05, 0.1, 0.25, 0.5, 0.75, 0.9, 0.95, 0.99)
 
 TREATMENTS = {
-    "represented": "recovered grade stands\nfor the whole run (upper)",
+    "represented": "recovered grade stands\nfor the whole run",
     "unknown": "lost length unknown\n(weights: recovered length)",
     "neighbour_mean": "lost length takes the mean of\npoorly recovered neighbours",
     "background": "lost length takes\nbackground grade (floor)",

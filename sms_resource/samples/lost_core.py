@@ -17,7 +17,7 @@ Treatment = Literal["unknown", "represented", "background", "neighbour_mean"]
 
 TREATMENTS: dict[str, str] = {
     "unknown": "lost length is unknown; a composite weighs recovered length (default)",
-    "represented": "recovered grade stands for the whole run (upper)",
+    "represented": "recovered grade stands for the whole run",
     "background": "lost length takes a background grade (floor)",
     "neighbour_mean": "lost length takes the mean of poorly recovered intervals nearby",
 }

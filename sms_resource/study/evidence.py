@@ -159,7 +159,7 @@ class Composites(Section):
     )
     lost_core: Literal["unknown", "represented", "background", "neighbour_mean"] = key(
         "unknown",
-        "What stands for lost core: nothing (unknown), the recovered grade of the run (upper), a background grade "
+        "What stands for lost core: nothing (unknown), the recovered grade of the run, a background grade "
         "(floor), or the mean of poorly recovered intervals nearby.",
         alternatives=("represented", "background", "neighbour_mean"),
     )

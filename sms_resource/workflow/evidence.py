@@ -94,7 +94,9 @@ def composite(context: Context) -> EvidenceState:
         )  # fmt: skip
     if empty:
         raise StageStop
-    recovered, found = recovery.recovery_summary(data.drill.runs, intervals)
+    recovered, found = recovery.recovery_summary(
+        data.drill.runs, intervals[intervals["domain"].isin(config.domains.sulphide)]
+    )
     add_findings(context, found)
     used, found = surface_use(surface, config.surface_samples.use)
     add_findings(context, found)

@@ -127,7 +127,8 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
     validation: ValidationState = done["validate"]
     tables = evidence.tables
     collars = evidence.collars.assign(
-        assumed_vertical=evidence.collars["hole_id"].isin(evidence.facts["assumed_vertical"])
+        assumed_vertical=evidence.collars["hole_id"].isin(evidence.facts["assumed_vertical"]),
+        position_sigma_m=evidence.collars["position_sigma_m"].astype(float).fillna(config.position.sigma_m),
     )
     laboratory = evidence.laboratory
     weights = variograms.samples.set_index("composite_id")["declustering_weight"]

@@ -12,7 +12,7 @@ from sms_resource.study import decisions
 from sms_resource.study.codes import CODES
 from sms_resource.study.reference import reference
 
-BASE = """
+BASE = """density.assigned_dry_tpm3 = { massive = 3.3 }
 [study]
 name = "Mound"
 effective_date = 2026-01-31
