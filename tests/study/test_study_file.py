@@ -71,7 +71,7 @@ FAULTS = [
     ("file-missing", BASE.replace("assays.csv", "assay.csv"), "data.assays", 10, "path"),
     (
         "study-domain",
-        BASE + "[domains]\ncodes = { M = 'massive' }\nsulphide = ['masive']\n",
+        BASE.replace("massive", "masive") + "[domains]\ncodes = { M = 'massive' }\nsulphide = ['masive']\n",
         "domains.sulphide",
         17,
         "massive",
