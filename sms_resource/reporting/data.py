@@ -201,6 +201,7 @@ class VariogramRecord:
     plunge, tilt (the ``VariogramModel`` of the geostatistics room), or None. ``intervals`` : parameter, low,
     best, high (jackknife over holes). ``measure`` : what ``experimental`` is a variogram of; where that is not the
     semivariogram, ``fitted_model`` is the model in that measure, before it was turned back to ``model``.
+    ``plane_map`` : along_m, across_m, gamma, pairs; one row a cell of the map in the plane of the body.
     """
 
     metal: str
@@ -215,6 +216,8 @@ class VariogramRecord:
     sample_count: int = 0
     hole_count: int = 0
     measure: str = "semivariogram"
+    plane_map: Frame | None = None
+    plane_map_measure: str = "normal scores"
     fitted_model: Any = None
 
     @property

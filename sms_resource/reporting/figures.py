@@ -16,6 +16,7 @@ from sms_resource.reporting import (
     figures_strip,
     figures_validation,
     figures_value,
+    figures_variogram_map,
 )
 from sms_resource.reporting.data import ReportData
 from sms_resource.reporting.style import Drawing, borrowed_settings
@@ -43,6 +44,7 @@ MAKERS: tuple[tuple[str, Maker], ...] = (
     ("plan of extrapolation", figures_blocks.plan_extrapolation),
     ("geometry uncertainty", figures_value.geometry),
     ("variograms", figures_continuity.variograms),
+    ("variogram map", figures_variogram_map.variogram_maps),
     ("plan of grades", figures_blocks.plan_grades),
     ("cross-sections", figures_section.sections),
     ("swaths", figures_validation.swaths),

@@ -211,7 +211,7 @@ class Validation(Section):
     mean_flag_pct: float = key(10.0, "Difference of block and declustered mean that is flagged.", gt=0)
     swath_m: float | None = key(None, "Width of a swath; twice the block if not given.", gt=0)
     neighbourhood_study: bool = key(
-        False, "Whether the study of neighbourhoods is run as well.", decision=False
+        True, "Whether the study of neighbourhoods is run as well.", decision=False
     )
 
 

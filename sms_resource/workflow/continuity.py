@@ -48,14 +48,48 @@ def variograms(context: Context) -> VariogramState:
                 context.findings.extend([replace(item, message=f"{domain}, {metal}: {item.message}")])
             inferences[(domain, metal)] = inference
     samples = samples.assign(declustering_weight=weights)
+    maps = plane_maps(samples, weights, spacing, config)
     assumed = sum(1 for item in inferences.values() if item.assumed)
     context.detail = (
         f"{len(inferences)} variograms, {assumed} with assumed parts; hole spacing {spacing:.0f} m"
     )
     return VariogramState(
         samples=samples, inferences=inferences, cuts=cuts, scans=pd.concat(scans, ignore_index=True),
-        facts={"hole_spacing_m": spacing},
+        facts={"hole_spacing_m": spacing, "plane_maps": maps},
     )  # fmt: skip
+
+
+def plane_maps(
+    samples: pd.DataFrame, weights: np.ndarray, spacing: float, config: Any
+) -> dict[tuple[str, str], pd.DataFrame]:
+    """Map of the variogram in the plane of each domain, of normal scores of its first metal, for choosing directions."""
+    from sms_resource.geostatistics import variogram_map
+
+    choice = config.variograms
+    metal = metal_columns(config)[0]
+    found = {}
+    for domain in config.domains.sulphide:
+        chosen = (samples["domain"] == domain).to_numpy() & samples[metal].notna().to_numpy()
+        part = samples[chosen]
+        if len(part) < choice.least_composites or part[metal].nunique() < 3:
+            continue
+        made = variogram_map(
+            part[["x", "y", "z"]].to_numpy(dtype=float),
+            part[metal].to_numpy(dtype=float),
+            cell_m=spacing,
+            cells=5,
+            azimuth=choice.azimuth_deg,
+            plunge=choice.plunge_deg,
+            tilt=choice.tilt_deg,
+            bandwidth_m=choice.bandwidth_m or config.composites.length_m,
+            measure="normal_scores",
+            weights=weights[chosen],
+            min_pairs=choice.least_pairs,
+            hole_ids=part["hole_id"].to_numpy(dtype=object),
+            across_holes=True,
+        )
+        found[(domain, metal)] = made.to_frame()
+    return found
 
 
 def body_samples(composites: pd.DataFrame, frame: Any, config: Any) -> pd.DataFrame:

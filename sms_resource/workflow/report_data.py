@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -66,7 +67,10 @@ def report_data(
         evidence=_evidence(study, done),
         body=_body(study, done),
         variograms=tuple(
-            VariogramRecord.from_inference(metal, domain, item)
+            replace(
+                VariogramRecord.from_inference(metal, domain, item),
+                plane_map=done["variograms"].facts["plane_maps"].get((domain, metal)),
+            )
             for (domain, metal), item in done["variograms"].inferences.items()
         ),
         estimation=_estimation(study, done),

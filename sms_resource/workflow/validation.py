@@ -42,6 +42,7 @@ def validate(context: Context) -> ValidationState:
     )
     made = replace(made, companions=companions)
     cross, summary = cross_validation(variograms, blocks, config, context.threads)
+    _, by_sample = cross_validation(variograms, blocks, config, context.threads, "sample")
     swaths = swath_tables(made, variograms, blocks, metals, config)
     comparison = compare_estimators(made, metals, config)
     realised = realised_variances(made, variograms, blocks, config)
@@ -59,11 +60,19 @@ def validate(context: Context) -> ValidationState:
     bracket = lost_core_runs(context)
     geometry = geometry_table(body, made, config)
     context.detail = f"{len(table)} checks, {len(flagged)} flagged"
+    summaries = pd.concat([summary.assign(leave="hole"), by_sample.assign(leave="sample")], ignore_index=True)
     return ValidationState(
-        table=table, cross_validation=cross, cross_summary=summary, swaths=swaths, support=support, bracket=bracket,
-        comparison=comparison, geometry=geometry, neighbourhood=neighbourhood_table(context),
+        table=table,
+        cross_validation=cross,
+        cross_summary=summaries,
+        swaths=swaths,
+        support=support,
+        bracket=bracket,
+        comparison=comparison,
+        geometry=geometry,
+        neighbourhood=neighbourhood_table(context),
         facts={"support_variance": variance_table(realised), "frames_effect": frames_table(context)},
-    )  # fmt: skip
+    )
 
 
 def variance_table(realised: dict[tuple[str, str], dict[str, float]]) -> pd.DataFrame:
@@ -118,9 +127,9 @@ def frames_table(context: Context) -> pd.DataFrame:
 
 
 def cross_validation(
-    state: VariogramState, blocks: BlockState, config: Any, threads: int | None
+    state: VariogramState, blocks: BlockState, config: Any, threads: int | None, leave: str = "hole"
 ) -> tuple[pd.DataFrame, pd.DataFrame]:
-    """Estimate each composite without the composites of its own hole."""
+    """Estimate each composite without the composites of its own hole, or without itself alone."""
     from sms_resource.geostatistics import cross_validation_summary, leave_one_out
 
     domains = state.samples["domain"].to_numpy(dtype=object)
@@ -138,7 +147,7 @@ def cross_validation(
             [state.inferences[(domain, metal)].model for metal in metals],
             hood,
             hole_ids=part["hole_id"].to_numpy(dtype=object),
-            leave="hole",
+            leave=leave,
             coincident=config.kriging.coincident,
             threads=threads,
         )
