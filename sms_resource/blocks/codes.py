@@ -29,7 +29,6 @@ CODES: dict[str, str] = {
     "hole-end-unknown": "how a hole ended is not recorded; it was read from its last logged interval",
     "hole-not-logged": "a hole has no logged interval and gives no contact",
     "internal-waste": "waste lies between sulphide intervals of a hole and is inside the body",
-    "blocks-too-many": "the block grid asks for more blocks than are allowed",
     "blocks-miss-body": "the block grid does not cover the whole body",
     "blocks-volume": "the volume of the blocks and of the body differ more than a thousandth",
     "domain-surface-gap": "a domain has no contact to place its surface",

@@ -35,6 +35,11 @@ class VerticalFrame:
         Where the body is thinner, the proportional frame treats it as so thick: otherwise a thin edge would
         be stretched without limit.
 
+    Attributes
+    ----------
+    mean_thickness_m : float
+        Mean thickness where there is any, the height of the proportional frame; NaN in the other frames.
+
     Notes
     -----
     Off the grid, and where it has no value, the nearest value stands for it, so that every point has a place
@@ -45,7 +50,8 @@ class VerticalFrame:
     top: SurfaceGrid | None = None
     base: SurfaceGrid | None = None
     least_thickness_m: float = 1.0
-    _filled: dict[str, SurfaceGrid] = field(default_factory=dict, repr=False)
+    _filled: dict[str, SurfaceGrid] = field(default_factory=dict, init=False, repr=False)
+    mean_thickness_m: float = field(default=float("nan"), init=False)
 
     def __post_init__(self) -> None:
         if self.kind not in KINDS:
@@ -60,6 +66,13 @@ class VerticalFrame:
             if not grid.has_values:
                 raise ValueError(f"{name} holds no value")
             self._filled[name] = grid.with_values(_nearest(grid.values))
+        if self.kind == "proportional":
+            base = self._filled["base"]
+            x, y = base.mesh()
+            thickness = self._at("top", np.column_stack([x.ravel(), y.ravel()])) - base.values.ravel()
+            body = thickness[thickness > 1e-6]
+            mean = max(float(body.mean()) if body.size else 0.0, self.least_thickness_m)
+            object.__setattr__(self, "mean_thickness_m", mean)
 
     def _at(self, name: str, xyz: Array) -> Array:
         grid = self._filled[name]
@@ -72,18 +85,6 @@ class VerticalFrame:
         top = self._at("top", xyz)
         thickness = np.maximum(top - self._at("base", xyz), self.least_thickness_m)
         return top, thickness, self.mean_thickness_m
-
-    @property
-    def mean_thickness_m(self) -> float:
-        """Mean thickness in m where there is any; the height of the proportional frame."""
-        if self.kind != "proportional":
-            return float("nan")
-        base = self._filled["base"]
-        x, y = base.mesh()
-        here = np.column_stack([x.ravel(), y.ravel()])
-        thickness = self._at("top", here) - base.values.ravel()
-        body = thickness[thickness > 1e-6]
-        return max(float(body.mean()) if body.size else 0.0, self.least_thickness_m)
 
     def forward(self, xyz: ArrayLike) -> Array:
         """Coordinates (n, 3) of world points in the frame."""

@@ -221,3 +221,20 @@ def test_a_long_body_turns_its_blocks() -> None:
     model = fill_blocks(body, grid)
     assert not model.findings.of("warning")
     assert model.volume_m3 == pytest.approx(body.volume_m3, rel=1e-6)
+
+
+def test_every_code_of_the_room_is_explained_and_used() -> None:
+    import re
+    from pathlib import Path
+
+    import sms_resource.blocks as room
+
+    text = "".join(
+        path.read_text(encoding="utf-8")
+        for path in sorted(Path(room.__file__).parent.glob("*.py"))
+        if path.name != "codes.py" and not path.name.startswith("exchange")
+    )
+    used = set(re.findall(r"findings\.(?:error|warning|note)\(\s*\"([a-z-]+)\"", text))
+    assert used <= set(CODES), used - set(CODES)
+    others = {code for code in CODES if code not in used and not code.startswith("exchange")}
+    assert all(f'"{code}"' in text for code in others) or not others, others
