@@ -266,9 +266,26 @@ def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
         leave_one_out_summary=validation.cross_summary,
         estimators=comparison,
         change_of_support=_support(validation.support, done, config),
-        neighbourhood=validation.neighbourhood,
+        neighbourhood=_neighbourhood(validation.neighbourhood),
+        neighbourhood_note=_recommendation(validation.neighbourhood),
         checks=_checks(validation.table),
     )
+
+
+def _neighbourhood(table: pd.DataFrame) -> pd.DataFrame:
+    """Quality of the estimate against the number of samples, as the figure wants it."""
+    if not len(table):
+        return table
+    names = {
+        "max_samples": "sample_number", "mean_slope": "slope", "mean_efficiency": "efficiency",
+        "mean_negative_weight": "negative_weight_sum",
+    }  # fmt: skip
+    return table[table["varied"] == "samples"][list(names)].rename(columns=names)
+
+
+def _recommendation(table: pd.DataFrame) -> str:
+    """What the study of neighbourhoods recommends, and why."""
+    return str(table["recommendation"].iloc[0]) if len(table) else ""
 
 
 def composite_rule(config: Any) -> str:
@@ -286,7 +303,7 @@ def composite_rule(config: Any) -> str:
 
 def _named_axis(swaths: pd.DataFrame, frame: str) -> pd.DataFrame:
     """Swaths of all domains, with the upright axis called what it is in the vertical frame."""
-    names = {"depth": "height against the seafloor", "proportional": "height in the body, as a share of it"}
+    names = {"depth": "Height against the seafloor", "proportional": "Height in the body, by its mean thickness"}
     chosen = swaths[swaths["domain"] == "all"]
     return chosen.assign(axis=chosen["axis"].replace({"elevation": names[frame]} if frame in names else {}))
 
