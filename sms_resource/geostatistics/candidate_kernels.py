@@ -152,44 +152,76 @@ def candidates(
 
 
 @njit(cache=True, error_model="numpy")
-def sort_into_cells(samples, centre, half, sectors, kept, number, near, starts, cell_of, away):
-    """Order the kept samples by shell round ``centre``, and by sector in each shell; the width of a shell.
+def narrowed(source, list_in, number, centre, half, most, out, list_out, lowest, best):
+    """Candidates of a smaller box where no sector and no hole refuses a sample; their number.
+
+    Whatever is farther than the greatest distance of the ``most`` nearest is hopeless. ``source`` (3, n) holds
+    coordinates and ``list_in`` (n,) sample numbers; ``out`` and ``list_out`` receive what is left of them, in
+    its order. ``lowest`` (n,) and ``best`` (n,) are work space.
+    """
+    filled = np.int64(0)
+    for t in range(number):
+        dx = abs(source[0, t] - centre[0])
+        dy = abs(source[1, t] - centre[1])
+        dz = abs(source[2, t] - centre[2])
+        x, y, z = max(dx - half[0], 0.0), max(dy - half[1], 0.0), max(dz - half[2], 0.0)
+        lowest[t] = x * x + y * y + z * z - 1e-9
+        x, y, z = dx + half[0], dy + half[1], dz + half[2]
+        filled = _keep_smallest(best, filled, most, x * x + y * y + z * z + 1e-9)
+    limit = min(best[most - 1], 1.0) if filled == most else 1.0
+    remaining = 0
+    for t in range(number):
+        if lowest[t] <= limit:
+            list_out[remaining] = list_in[t]
+            out[0, remaining], out[1, remaining], out[2, remaining] = source[0, t], source[1, t], source[2, t]
+            remaining += 1
+    return remaining
+
+
+@njit(cache=True, error_model="numpy")
+def sort_into_cells(source, list_in, number, centre, half, sectors, out, list_out, starts, cell_of, away):
+    """Order samples by shell round ``centre``, and by sector in each shell; the width of a shell.
 
     The cells of a shell are the eight sectors, for samples that lie in one sector for all blocks of the box,
-    and a ninth for those that do not. ``near`` (n,) receives sample numbers, ``starts`` (CELLS * SHELLS + 1,)
-    where each cell begins in it; ``cell_of`` and ``away`` (n,) are work space.
+    and a ninth for those that do not. ``starts`` (CELLS * SHELLS + 1,) receives where each cell begins;
+    ``cell_of`` and ``away`` (n,) are work space; the rest as in ``narrowed``.
     """
+    cx, cy, cz = centre[0], centre[1], centre[2]
+    for t in range(number):
+        dx, dy, dz = source[0, t] - cx, source[1, t] - cy, source[2, t] - cz
+        away[t] = math.sqrt(dx * dx + dy * dy + dz * dz)
     widest = 0.0
     for t in range(number):
-        i = kept[t]
-        dx = samples[0, i] - centre[0]
-        dy = samples[1, i] - centre[1]
-        dz = samples[2, i] - centre[2]
-        away[t] = dx * dx + dy * dy + dz * dz
         widest = max(widest, away[t])
-    width = (math.sqrt(widest) + 1e-9) * (1.0 + 1e-9) / SHELLS
+    width = (widest + 1e-9) * (1.0 + 1e-9) / SHELLS
     inverse = 1.0 / width
+    if sectors > 1:
+        hx, hy, hz = half[0] + 1e-8, half[1] + 1e-8, half[2] + 1e-8
+        if sectors <= 4:
+            hz = -1.0  # the third axis parts no quadrants
+        for t in range(number):
+            dx, dy, dz = source[0, t] - cx, source[1, t] - cy, source[2, t] - cz
+            sector = np.int64(dx > EDGE) + 2 * np.int64(dy > EDGE)
+            if hz > 0.0:
+                sector += 4 * np.int64(dz > EDGE)
+            between = (abs(dx) <= hx) | (abs(dy) <= hy) | (abs(dz) <= hz)
+            shell = min(int(away[t] * inverse), SHELLS - 1)
+            cell_of[t] = shell * CELLS + (CELLS - 1 if between else sector)
+    else:
+        for t in range(number):
+            cell_of[t] = min(int(away[t] * inverse), SHELLS - 1) * CELLS
     for cell in range(CELLS * SHELLS + 1):
         starts[cell] = 0
     for t in range(number):
-        sector = 0
-        open_bits = 0
-        if sectors > 1:
-            i = kept[t]
-            dx = samples[0, i] - centre[0]
-            dy = samples[1, i] - centre[1]
-            dz = samples[2, i] - centre[2]
-            sector, open_bits = _sector_bits(dx, dy, dz, half, sectors)
-        shell = min(int(math.sqrt(away[t]) * inverse), SHELLS - 1)
-        cell = shell * CELLS + (sector if open_bits == 0 else CELLS - 1)
-        starts[cell + 1] += 1
-        cell_of[t] = cell
+        starts[cell_of[t] + 1] += 1
     for cell in range(CELLS * SHELLS):
         starts[cell + 1] += starts[cell]
     for t in range(number):
         cell = cell_of[t]
-        near[starts[cell]] = kept[t]
-        starts[cell] += 1
+        place = starts[cell]
+        list_out[place] = list_in[t]
+        out[0, place], out[1, place], out[2, place] = source[0, t], source[1, t], source[2, t]
+        starts[cell] = place + 1
     for cell in range(CELLS * SHELLS, 0, -1):
         starts[cell] = starts[cell - 1]
     starts[0] = 0

@@ -16,7 +16,7 @@ import math
 import numpy as np
 from numba import njit
 
-from .candidate_kernels import CELLS, EDGE, SHELLS, bounding_box, candidates, sort_into_cells
+from .candidate_kernels import CELLS, EDGE, SHELLS, bounding_box, candidates, narrowed, sort_into_cells
 
 GROUP = 64  # blocks that share one choice of candidates
 PARTY = 8  # blocks of a group that share one order of its samples
@@ -208,7 +208,7 @@ def search_samples(
     found : (c, s) int32, receives sample numbers in rising order
     reach : (c, s) float64, receives their distance in the ellipsoid, in metres along its major axis
     count, hole_count : (c,) int32; nearest : (c,) float64 in metres; status : (c,) int8
-    wholes : (workers, w) int64, w >= 5 n + holes + CELLS * SHELLS + 1, and reals : (workers, 22, n + 2) float64:
+    wholes : (workers, w) int64, w >= 6 n + holes + CELLS * SHELLS + 1, and reals : (workers, 28, n + 2) float64:
         work space
     """
     whole, real = wholes[worker], reals[worker]
@@ -221,14 +221,17 @@ def search_samples(
     queue = whole[2 * n : 3 * n]
     sector_of = whole[3 * n : 4 * n]
     hole_of = whole[4 * n : 5 * n]
-    starts = whole[5 * n : 5 * n + CELLS * SHELLS + 1]
-    taken = whole[5 * n + CELLS * SHELLS + 1 :]
+    closest = whole[5 * n : 6 * n]
+    starts = whole[6 * n : 6 * n + CELLS * SHELLS + 1]
+    taken = whole[6 * n + CELLS * SHELLS + 1 :]
     taken[:] = 0
-    x, y, z = real[0], real[1], real[2]
-    lowest, highest, best = real[3], real[4], real[5:22]
+    lowest, highest, best = real[0], real[1], real[2:19]
+    packed, fewer, places = real[19:22], real[22:25], real[25:28]
+    x, y, z = places[0], places[1], places[2]
     in_sector, in_both = np.zeros(8, np.int64), np.zeros(8, np.int64)
     centre, half = np.zeros(3), np.zeros(3)
     width = 0.0
+    left = np.int64(0)
     nothing_refused = sectors == 1 and per_hole > n
     for group in range(worker, groups, workers):
         group_first = group * GROUP
@@ -238,14 +241,11 @@ def search_samples(
             samples, holes, grouped, by_hole, centre, half, limits, prune, kept, lowest, highest, best,
             in_sector, in_both,
         )  # fmt: skip
+        for t in range(number):
+            i = kept[t]
+            packed[0, t], packed[1, t], packed[2, t] = samples[0, i], samples[1, i], samples[2, i]
         party_end = group_first
-        ranked = nothing_refused and number <= _RANKED
-        if ranked:
-            party_end = group_last
-            for t in range(number):
-                i = kept[t]
-                near[t] = i
-                x[t], y[t], z[t] = samples[0, i], samples[1, i], samples[2, i]
+        ranked = False
         for r in range(group_first, group_last):
             if r == party_end:
                 party_end = min(r + PARTY, group_last)
@@ -253,18 +253,25 @@ def search_samples(
                 if half[0] ** 2 + half[1] ** 2 + half[2] ** 2 > _WIDE**2:
                     party_end = r + 1  # too far apart for one order of the samples
                     bounding_box(targets, rows, r, party_end, centre, half)
-                width = sort_into_cells(
-                    samples, centre, half, sectors, kept, number, near, starts, sector_of, highest
-                )
-                for t in range(number):
-                    i = near[t]
-                    x[t], y[t], z[t] = samples[0, i], samples[1, i], samples[2, i]
-                    hole_of[t] = holes[i]
+                source, listed, left = packed, kept, number
+                if nothing_refused and prune and most <= _RANKED and number > 40:
+                    left = narrowed(packed, kept, number, centre, half, most, fewer, closest, lowest, best[0])
+                    source, listed = fewer, closest
+                ranked = nothing_refused and left <= _RANKED
+                if ranked:
+                    near[:left] = listed[:left]
+                    places[:, :left] = source[:, :left]
+                else:
+                    width = sort_into_cells(
+                        source, listed, left, centre, half, sectors, places, near, starts, sector_of, highest
+                    )
+                    for t in range(left):
+                        hole_of[t] = holes[near[t]]
             row = rows[r]
             tx, ty, tz = targets[row, 0], targets[row, 1], targets[row, 2]
             if ranked:
                 total = _take_nearest(
-                    x, y, z, number, near, holes, tx, ty, tz, skip_hole[row], skip_sample[row], most, queue,
+                    x, y, z, left, near, holes, tx, ty, tz, skip_hole[row], skip_sample[row], most, queue,
                     taken, found[row],
                 )  # fmt: skip
             else:

@@ -88,7 +88,7 @@ class Found:
         hashes = np.empty(len(self.count), dtype=np.uint64)
         hash_sets(self.samples, self.count, self.status, hashes)
         usable = np.flatnonzero(self.status == ENOUGH)
-        order = usable[np.argsort(hashes[usable], kind="stable")].astype(np.int64)
+        order = usable[np.argsort(hashes[usable])].astype(np.int64)
         if not len(order):
             return order, order, order
         is_new = np.empty(len(order), dtype=np.bool_)
@@ -134,8 +134,8 @@ class Finder:
             np.ascontiguousarray(item[:, order]) for item, order in zip(self._scaled, self._order)
         ]
         hole_count = int(self._holes.max()) + 1 if n else 0
-        self._whole = np.empty((threads, 5 * n + CELLS * SHELLS + 1 + hole_count), dtype=np.int64)
-        self._real = np.empty((threads, 22, n + 2))
+        self._whole = np.empty((threads, 6 * n + CELLS * SHELLS + 1 + hole_count), dtype=np.int64)
+        self._real = np.empty((threads, 28, n + 2))
         self.capacity = max(min(item.max_samples, max(n, 1)) for item in self.passes)
 
     def find(
