@@ -32,7 +32,7 @@ class BodySection(Section):
     )
     edge_thickness_m: float = key(0.0, "Thickness at the outline.", ge=0)
     extrapolate_below_m: float = key(
-        3.0, "Greatest length that the body goes on below a hole that ended in sulphide.", ge=0
+        5.0, "Greatest length that the body goes on below a hole that ended in sulphide.", ge=0
     )
     drilled_within_m: float = key(25.0, "Distance from a hole within which tonnage counts as drilled.", gt=0)
     cell_m: float | None = key(None, "Cell of the surfaces; that of the seafloor grid if not given.", gt=0)

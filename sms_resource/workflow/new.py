@@ -185,7 +185,7 @@ def _decisions(guessed: Any, questions: list[str]) -> list[str]:
             'outline = "proposed"  # no outline was given: one is proposed from the holes, for you to accept'
         )
     lines += [
-        "extrapolate_below_m = 3.0  # how far the body may go on below a hole that ended in sulphide",
+        "extrapolate_below_m = 5.0  # how far the body may go on below a hole that ended in sulphide",
         "",
         "[blocks]",
         'vertical_frame = "depth"  # or "elevation", or "proportional"; block size and origin are proposed',
