@@ -28,6 +28,7 @@ _HOME: dict[str, str] = {
     "discretisation_offsets": "support_variance",
     "find_coincident": "search",
     "select_for_domain": "search",
+    "sample_findings": "sample_checks",
     "companion_estimates": "companions",
     "leave_one_out": "leave_out",
     "neighbourhood_study": "neighbourhood_study",

@@ -60,7 +60,7 @@ def _rows(flags: ArrayLike, limit: int = 5) -> str:
 def points_array(name: str, given: ArrayLike) -> FloatArray:
     """(n, 3) float array of coordinates, or a ValueError that names the argument."""
     try:
-        array = np.array(given, dtype=float)
+        array = np.asarray(given, dtype=float)
     except (TypeError, ValueError) as reason:
         raise ValueError(f"{name}: wanted numbers, (n, 3): easting, northing, elevation ({reason})") from None
     if array.ndim != 2 or array.shape[1] != 3:

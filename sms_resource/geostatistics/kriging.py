@@ -76,6 +76,16 @@ class KrigingResult:
                 if number:
                     text = f"{name}: {number} of {len(status)} targets are not estimated ({STATUS[code]})"
                     out.warning(kind, text, remedy, column=name)
+            sums = self.negative_weight_sum if status is self.status else self.negative_weight_sum[:, None]
+            done = sums[status[:, column] == 0, column]
+            share = float((done < -0.1).mean()) if len(done) else 0.0
+            if share > 0.1:
+                out.warning(
+                    "kriging-negative-weights",
+                    f"{name}: negative weights sum below -0.1 in {share:.0%} of the targets estimated",
+                    "take fewer samples, or look at the shape of the variogram",
+                    column=name,
+                )
         return out
 
     def __repr__(self) -> str:

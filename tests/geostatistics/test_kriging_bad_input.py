@@ -116,6 +116,17 @@ def test_singular_system_has_a_status(data, road):
     assert result.findings(["cu_pct"])[0].code == "kriging-singular"
 
 
+def test_negative_weights_are_told():
+    """A smooth model over few, screened samples gives large negative weights."""
+    x = np.array([0.0, 5.0, 10.0, 15.0, 20.0, 25.0])
+    points = np.column_stack([x, np.zeros(6), np.zeros(6)])
+    smooth = VariogramModel(1e-4, [Structure("gaussian", 1.0, 30.0)])
+    targets = np.column_stack([np.linspace(-12.0, -6.0, 9), np.zeros(9), np.zeros(9)])
+    result = ordinary_kriging(points, np.sin(x), targets, smooth)
+    assert (result.negative_weight_sum < -0.1).all()
+    assert [item.code for item in result.findings(["cu_pct"])] == ["kriging-negative-weights"]
+
+
 def test_too_few_samples_and_holes(data):
     points, values, _holes, targets = data
     far = targets + [1e5, 0.0, 0.0]
