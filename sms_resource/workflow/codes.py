@@ -5,6 +5,7 @@ CODES: dict[str, str] = {
     "blocks-beyond-search": "Blocks were estimated from samples beyond every search pass.",
     "blocks-empty": "No block of the block model touches the body.",
     "blocks-not-estimated": "Blocks have no estimate of some metal.",
+    "blocks-too-many": "The block model asks for more blocks than are allowed.",
     "cutoff-unknown": "No block has the variable that the study cuts on.",
     "chimney-height": "Polygons of chimneys have no height.",
     "equivalent-refused": "A metal equivalent or a value cannot be made from what the study states.",

@@ -8,7 +8,6 @@ from rasterio import Affine
 from shapely.geometry import LineString, Point, Polygon
 
 from tests.end_to_end.breaking import (
-    Case,
     Spoil,
     append,
     both,
@@ -298,7 +297,35 @@ BODIES = [
         "composite-none",
         None,
     ),
-    Case("no densities", decide("data.densities", None), (("density-unmeasured", None, None, None),) * 2),
+    one(
+        "no densities",
+        decide("data.densities", None),
+        "study-value-missing",
+        "study.toml",
+        None,
+        "density.method",
+        "assigned",
+    ),
+    one(
+        "density of one domain alone",
+        both(
+            decide("data.densities", None),
+            decide("density", {"method": "assigned", "assigned_dry_tpm3": {"cap": 2.5}}),
+        ),
+        "density-unmeasured",
+        None,
+        None,
+        None,
+        "massive",
+    ),
+    one(
+        "no log of the rocks",
+        decide("data.lithology", None),
+        "study-value-missing",
+        "study.toml",
+        "[domains.codes]",
+        "domains.codes",
+    ),
     one(
         "blocks without number",
         decide("blocks.size_m", [0.01, 0.01, 0.01]),
