@@ -154,7 +154,14 @@ def laboratory_quality(
         columns=["element", "aspect", "verdict", "figures"],
     )
     for aspect in ASPECTS:
-        none = verdicts.loc[(verdicts["aspect"] == aspect) & (verdicts["verdict"] == "missing"), "element"]
+        gone = verdicts.loc[(verdicts["aspect"] == aspect) & (verdicts["verdict"] == "missing")]
+        for row in gone.loc[gone["figures"] != ""].to_dict("records"):
+            findings.warning(
+                "quality-missing",
+                f"{row['element'].capitalize()}: {row['figures']}",
+                "State the detection limits of the laboratory.",
+            )
+        none = gone.loc[gone["figures"] == "", "element"]
         if len(none):
             findings.warning(
                 "quality-missing",

@@ -70,9 +70,11 @@ def blank_verdict(name: str, blanks: pd.DataFrame, findings: Findings) -> Line:
     """Verdict on an element from its blanks, with carry-over from the sample before."""
     from scipy.stats import spearmanr
 
-    part = blanks.loc[(blanks["element"] == name) & blanks["judged"]]
+    mine = blanks.loc[blanks["element"] == name]
+    part = mine.loc[mine["judged"]]
     if not len(part):
-        return name, ASPECTS[1], "missing", ""
+        text = f"{len(mine)} blanks, and no detection limit to judge them by" if len(mine) else ""
+        return name, ASPECTS[1], "missing", text
     failed = int(part["failed"].sum())
     text = f"{len(part)} blanks, {failed} over {part['limit'].iloc[0]:g}"
     for row in part.loc[part["failed"]].to_dict("records"):

@@ -40,7 +40,8 @@ def variograms(context: Context) -> VariogramState:
             if not known.any():
                 context.findings.error(
                     "no-composites", f"domain '{domain}' has no {metal} sample",
-                    "Take the domain out of domains.sulphide or map another code to it.", file=context.study.path.name,
+                    f"Take {metal.partition('_')[0]} out of metals.estimate, or the domain out of domains.sulphide.",
+                    file=context.study.path.name,
                 )  # fmt: skip
                 continue
             inference = infer(part, places, metal, known, weights[chosen], spacing, config)
