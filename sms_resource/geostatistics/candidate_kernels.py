@@ -153,7 +153,7 @@ def candidates(
 
 @njit(cache=True, error_model="numpy")
 def narrowed(source, list_in, number, centre, half, most, out, list_out, lowest, best):
-    """Candidates of a smaller box where no sector and no hole refuses a sample; their number.
+    """Candidates of a smaller box where no sector and no hole refuses a sample; their number and reach.
 
     Whatever is farther than the greatest distance of the ``most`` nearest is hopeless. ``source`` (3, n) holds
     coordinates and ``list_in`` (n,) sample numbers; ``out`` and ``list_out`` receive what is left of them, in
@@ -168,14 +168,14 @@ def narrowed(source, list_in, number, centre, half, most, out, list_out, lowest,
         lowest[t] = x * x + y * y + z * z - 1e-9
         x, y, z = dx + half[0], dy + half[1], dz + half[2]
         filled = _keep_smallest(best, filled, most, x * x + y * y + z * z + 1e-9)
-    limit = min(best[most - 1], 1.0) if filled == most else 1.0
+    limit = max(min(best[most - 1], 1.0), 1e-9) if filled == most else 1.0
     remaining = 0
     for t in range(number):
         if lowest[t] <= limit:
             list_out[remaining] = list_in[t]
             out[0, remaining], out[1, remaining], out[2, remaining] = source[0, t], source[1, t], source[2, t]
             remaining += 1
-    return remaining
+    return remaining, limit
 
 
 @njit(cache=True, error_model="numpy")

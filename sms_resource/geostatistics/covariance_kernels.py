@@ -30,26 +30,49 @@ def _covariance(shape, sill, squared):
 
 
 @njit(cache=True, error_model="numpy")
-def fill_matrix(at, n, shapes, sills, inverse, total_sill, matrix):
-    """Lower triangle of K, row by row: element (i, j) stands at (i (i + 1) / 2 + j) packs."""
+def _add_structure(at, n, shape, sill, inverse, first, scaled, matrix):
+    """Add one structure to the lower triangle of K, or write it where it is the ``first``."""
     for i in range(n):
-        row = i * (i + 1) // 2
-        x = load(at, (3 * i) * LANES)
-        y = load(at, (3 * i + 1) * LANES)
-        z = load(at, (3 * i + 2) * LANES)
+        for axis in range(3):
+            place = (3 * i + axis) * LANES
+            store(scaled, place, mul(load(at, place), splat(inverse[axis])))
+    weight = splat(sill)
+    for i in range(n):
+        row = (i * (i + 1) // 2) * LANES
+        x = load(scaled, (3 * i) * LANES)
+        y = load(scaled, (3 * i + 1) * LANES)
+        z = load(scaled, (3 * i + 2) * LANES)
         for j in range(i):
-            dx = sub(x, load(at, (3 * j) * LANES))
-            dy = sub(y, load(at, (3 * j + 1) * LANES))
-            dz = sub(z, load(at, (3 * j + 2) * LANES))
-            value = splat(0.0)
-            for s in range(shapes.size):
-                u = mul(dx, splat(inverse[s, 0]))
-                v = mul(dy, splat(inverse[s, 1]))
-                w = mul(dz, splat(inverse[s, 2]))
-                squared = fma(u, u, fma(v, v, mul(w, w)))
-                value = add(value, _covariance(shapes[s], sills[s], squared))
-            store(matrix, (row + j) * LANES, value)
-        store(matrix, (row + i) * LANES, splat(total_sill))
+            u = sub(x, load(scaled, (3 * j) * LANES))
+            v = sub(y, load(scaled, (3 * j + 1) * LANES))
+            w = sub(z, load(scaled, (3 * j + 2) * LANES))
+            squared = fma(u, u, fma(v, v, mul(w, w)))
+            if shape == SPHERICAL:
+                h = root(squared)
+                h = where_less(h, splat(1.0), h, splat(1.0))
+                value = fnma(h, fnma(mul(h, h), splat(0.5), splat(1.5)), splat(1.0))
+            else:
+                reduced = root(squared) if shape == EXPONENTIAL else squared
+                value = exponential(mul(reduced, splat(-3.0)))
+            place = row + j * LANES
+            so_far = splat(0.0) if first else load(matrix, place)
+            store(matrix, place, fma(weight, value, so_far))
+
+
+@njit(cache=True, error_model="numpy")
+def fill_matrix(at, n, shapes, sills, inverse, total_sill, scaled, matrix):
+    """Lower triangle of K, row by row: element (i, j) stands at (i (i + 1) / 2 + j) packs.
+
+    ``at`` holds the samples, ``scaled`` (3 n packs) is work space.
+    """
+    for s in range(shapes.size):
+        _add_structure(at, n, shapes[s], sills[s], inverse[s], s == 0, scaled, matrix)
+    for i in range(n):
+        row = (i * (i + 1) // 2) * LANES
+        if shapes.size == 0:
+            for j in range(i):
+                store(matrix, row + j * LANES, splat(0.0))
+        store(matrix, row + i * LANES, splat(total_sill))
 
 
 @njit(cache=True, error_model="numpy")

@@ -21,7 +21,7 @@ import numpy as np
 from numba import njit
 
 from .covariance_kernels import SAME_PLACE, block_covariances, fill_matrix, point_covariances
-from .lane_kernels import LANES, div, fma, fnma, load, mul, root, splat, store, where_less
+from .lane_kernels import LANES, add, div, fma, fnma, load, mul, root, splat, store, where_less
 
 DONE, SINGULAR, NOT_FINITE = 0, 3, 4
 SMALLEST_PIVOT = 1e-11  # of the sill: beyond this the weights keep fewer than some five digits
@@ -130,8 +130,8 @@ def _set_samples(at, ones, n, samples, found, count, order, starts, first_run, r
 
 
 @njit(cache=True, error_model="numpy")
-def _solve(matrix, n, inverse_pivot, right, b, bb, ordinary, weights, multiplier, explained):
-    """Weights, multiplier and ``w.k`` of eight systems that are factorised, for their right-hand sides."""
+def _solve(matrix, n, inverse_pivot, right, b, bb, ordinary, weights, multiplier, explained, below_zero):
+    """Weights, multiplier, ``w.k`` and sum of negative weights of eight factorised systems."""
     _forward(matrix, n, inverse_pivot, right, weights)
     mu = splat(0.0)
     if ordinary:
@@ -144,9 +144,14 @@ def _solve(matrix, n, inverse_pivot, right, b, bb, ordinary, weights, multiplier
     store(multiplier, 0, mu)
     _backward(matrix, n, inverse_pivot, weights)
     wk = splat(0.0)
+    zero = splat(0.0)
+    negative = zero
     for i in range(n):
-        wk = fma(load(weights, i * LANES), load(right, i * LANES), wk)
+        weight = load(weights, i * LANES)
+        wk = fma(weight, load(right, i * LANES), wk)
+        negative = add(negative, where_less(weight, zero, weight, zero))
     store(explained, 0, wk)
+    store(below_zero, 0, negative)
 
 
 @njit(cache=True, error_model="numpy")
@@ -161,13 +166,10 @@ def _set_exact(at, where, lane, n, weights):
 
 @njit(cache=True, error_model="numpy")
 def _write(
-    values, found, reach, n, row, lane, weights, multiplier, explained, total_sill, block_variance, means,
-    thresholds, limit, out, columns, estimate, variance, lagrange, slope, efficiency, negative, status,
+    values, found, reach, n, row, lane, weights, multiplier, explained, below_zero, total_sill, block_variance,
+    means, thresholds, limit, out, columns, estimate, variance, lagrange, slope, efficiency, negative, status,
 ):  # fmt: skip
     """Estimates of one target in all columns, and what tells their quality."""
-    below_zero = 0.0
-    for i in range(n):
-        below_zero += min(weights[i * LANES + lane], 0.0)
     kriged = block_variance - explained - multiplier
     # rounding may leave a hair below zero
     kriged = max(kriged, 0.0) if kriged > -1e-6 * total_sill else math.nan
@@ -219,7 +221,7 @@ def krige(
     thresholds : (m,) values above count as the threshold where ``reach`` is beyond ``limit`` (m)
     rows : (c,) int64, output row of each target; columns : (m,) int64, output columns
     estimate ... status : (b, k) outputs
-    rooms : (workers, w) float64 work space, w >= LANES * (s (s + 1) / 2 + 8 s + 16) for s samples
+    rooms : (workers, w) float64 work space, w >= LANES * (s (s + 1) / 2 + 11 s + 16) for s samples
     """
     room = rooms[worker]
     points = offsets.shape[1]
@@ -230,9 +232,11 @@ def krige(
     rest = room[step * (widest + 1) // 2 :]
     at, inverse_pivot, ones = rest[: 3 * step], rest[3 * step : 4 * step], rest[4 * step : 5 * step]
     b, right, weights = rest[5 * step : 6 * step], rest[6 * step : 7 * step], rest[7 * step : 8 * step]
-    rest = rest[8 * step :]
+    scaled = rest[8 * step : 11 * step]
+    rest = rest[11 * step :]
     where, pivots, closest = rest[: 3 * LANES], rest[3 * LANES : 4 * LANES], rest[4 * LANES : 5 * LANES]
     multiplier, explained = rest[5 * LANES : 6 * LANES], rest[6 * LANES : 7 * LANES]
+    below_zero = rest[7 * LANES : 8 * LANES]
     for batch in range(worker, (starts.size + LANES - 1) // LANES, workers):
         first_run = batch * LANES
         runs = min(LANES, starts.size - first_run)
@@ -242,7 +246,7 @@ def krige(
             n = max(n, count[order[starts[run]]])
             longest = max(longest, sizes[run])
         _set_samples(at, ones, n, samples, found, count, order, starts, first_run, runs)
-        fill_matrix(at, n, shapes, sills, inverse, total_sill, matrix)
+        fill_matrix(at, n, shapes, sills, inverse, total_sill, scaled, matrix)
         store(pivots, 0, _factorise(matrix, n, inverse_pivot))
         bb = _forward(matrix, n, inverse_pivot, ones, b)
         for turn in range(longest):
@@ -252,7 +256,9 @@ def krige(
                 store(closest, 0, splat(math.inf))
             else:
                 store(closest, 0, point_covariances(at, n, where, shapes, sills, inverse, nugget, right))
-            _solve(matrix, n, inverse_pivot, right, b, bb, ordinary, weights, multiplier, explained)
+            _solve(
+                matrix, n, inverse_pivot, right, b, bb, ordinary, weights, multiplier, explained, below_zero
+            )
             for lane in range(runs):
                 if turn >= sizes[first_run + lane]:
                     continue
@@ -264,9 +270,11 @@ def krige(
                 if closest[lane] <= SAME_PLACE:
                     _set_exact(at, where, lane, count[row], weights)
                     multiplier[lane] = 0.0
+                    below_zero[lane] = 0.0
                     explained[lane] = block_variance
                 _write(
                     values, found, reach, count[row], row, lane, weights, multiplier[lane], explained[lane],
+                    below_zero[lane],
                     total_sill, block_variance, means, thresholds, limit, rows[row], columns, estimate,
                     variance, lagrange, slope, efficiency, negative, status,
                 )  # fmt: skip

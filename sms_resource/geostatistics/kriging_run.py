@@ -58,7 +58,7 @@ def krige_found(
 ) -> None:
     """Krige one chunk whose samples are found, for columns that share pattern and model."""
     widest = found.samples.shape[1]
-    room = np.empty((workers, LANES * (widest * (widest + 1) // 2 + 8 * widest + 16)))
+    room = np.empty((workers, LANES * (widest * (widest + 1) // 2 + 11 * widest + 16)))
     share_out(
         krige,
         workers,

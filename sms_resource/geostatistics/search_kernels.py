@@ -20,7 +20,9 @@ from .candidate_kernels import CELLS, EDGE, SHELLS, bounding_box, candidates, na
 
 GROUP = 64  # blocks that share one choice of candidates
 PARTY = 8  # blocks of a group that share one order of its samples
-_RANKED = 96  # candidates up to which counting the nearer ones beats sorting
+BINS = 63  # of a histogram of distances; one more for samples out of reach
+_SEARCHED = 512  # candidates up to which a histogram beats shells
+_NARROW = 64  # candidates from which on a smaller box is worth a look
 _WIDE = 0.35  # half diagonal, in radii, beyond which they do not
 ENOUGH, TOO_FEW_SAMPLES, TOO_FEW_HOLES = 0, 1, 2
 
@@ -30,6 +32,7 @@ _STEPS = float(1 << 40)
 _INDEX_BITS = 22
 _INDEX_MASK = (1 << _INDEX_BITS) - 1
 MOST_SAMPLES = 1 << _INDEX_BITS
+_REACH = (1 << 40) + 1  # of the squared radius in steps, with room for rounding
 _BEYOND = (1 << 63) - 1  # later than any key
 
 
@@ -65,36 +68,48 @@ def _report(
 
 @njit(cache=True, error_model="numpy")
 def _take_nearest(
-    x, y, z, number, near, holes, tx, ty, tz, skip_hole, skip_sample, most, keys, taken, found
+    x, y, z, number, near, holes, tx, ty, tz, skip_hole, skip_sample, most, limit, keys, bin_of, bins, taken, found
 ):  # fmt: skip
     """Take the nearest samples where no sector and no hole refuses one; how many there are.
 
-    A sample is taken if fewer than ``most`` others are nearer: they are counted, which needs no order and no
-    branch. ``near`` holds sample numbers in rising order, and so does ``found`` after.
+    A histogram of squared distances, up to about ``limit``, tells in which bin the last sample to take lies; all
+    in nearer bins are taken, and only in that bin are samples compared with each other. ``near`` holds sample
+    numbers in rising order, and so does ``found`` after.
     """
+    scale = BINS / limit / _STEPS
     for t in range(number):
         dx = x[t] - tx
         dy = y[t] - ty
         dz = z[t] - tz
-        squared = min(dx * dx + dy * dy + dz * dz, 1.5)  # a key holds no more than 2
-        keys[t] = (np.int64(squared * _STEPS + 0.5) << _INDEX_BITS) | near[t]
+        steps = np.int64(min(dx * dx + dy * dy + dz * dz, 1.5) * _STEPS + 0.5)
+        bin_of[t] = np.int64(min(steps * scale, BINS - 1.0)) if steps <= _REACH else BINS
+        keys[t] = (steps << _INDEX_BITS) | near[t]
     if skip_hole >= 0 or skip_sample >= 0:
         for t in range(number):
             if holes[near[t]] == skip_hole or near[t] == skip_sample:
-                keys[t] = _BEYOND
-    reach = (np.int64((1.0 + 1e-12) * _STEPS + 0.5) << _INDEX_BITS) | _INDEX_MASK
+                bin_of[t] = BINS
+    bins[:] = 0
+    for t in range(number):
+        bins[bin_of[t]] += 1
+    last = 0
+    before = 0
+    while last < BINS and before + bins[last] <= most:
+        before += bins[last]
+        last += 1
+    # All before ``last`` are taken; of bin ``last`` the nearest of those that are left.
     total = 0
     for t in range(number):
-        key = keys[t]
-        if key > reach:
+        if bin_of[t] > last or bin_of[t] == BINS:
             continue
-        nearer = 0
-        for other in range(number):
-            nearer += int(keys[other] < key)
-        if nearer < most:
-            found[total] = near[t]
-            taken[holes[near[t]]] = 1
-            total += 1
+        if bin_of[t] == last:
+            nearer = before
+            for other in range(number):
+                nearer += int(bin_of[other] == last and keys[other] < keys[t])
+            if nearer >= most:
+                continue
+        found[total] = near[t]
+        taken[holes[near[t]]] = 1
+        total += 1
     return total
 
 
@@ -245,7 +260,8 @@ def search_samples(
             i = kept[t]
             packed[0, t], packed[1, t], packed[2, t] = samples[0, i], samples[1, i], samples[2, i]
         party_end = group_first
-        ranked = False
+        by_histogram = False
+        limit = 1.0
         for r in range(group_first, group_last):
             if r == party_end:
                 party_end = min(r + PARTY, group_last)
@@ -254,11 +270,14 @@ def search_samples(
                     party_end = r + 1  # too far apart for one order of the samples
                     bounding_box(targets, rows, r, party_end, centre, half)
                 source, listed, left = packed, kept, number
-                if nothing_refused and prune and most <= _RANKED and number > 40:
-                    left = narrowed(packed, kept, number, centre, half, most, fewer, closest, lowest, best[0])
+                limit = 1.0
+                if nothing_refused and prune and most <= _SEARCHED and number > _NARROW:
+                    left, limit = narrowed(
+                        packed, kept, number, centre, half, most, fewer, closest, lowest, best[0]
+                    )
                     source, listed = fewer, closest
-                ranked = nothing_refused and left <= _RANKED
-                if ranked:
+                by_histogram = nothing_refused and left <= _SEARCHED
+                if by_histogram:
                     near[:left] = listed[:left]
                     places[:, :left] = source[:, :left]
                 else:
@@ -269,10 +288,10 @@ def search_samples(
                         hole_of[t] = holes[near[t]]
             row = rows[r]
             tx, ty, tz = targets[row, 0], targets[row, 1], targets[row, 2]
-            if ranked:
+            if by_histogram:
                 total = _take_nearest(
-                    x, y, z, left, near, holes, tx, ty, tz, skip_hole[row], skip_sample[row], most, queue,
-                    taken, found[row],
+                    x, y, z, left, near, holes, tx, ty, tz, skip_hole[row], skip_sample[row], most, limit,
+                    queue, sector_of, starts, taken, found[row],
                 )  # fmt: skip
             else:
                 offset = math.sqrt((tx - centre[0]) ** 2 + (ty - centre[1]) ** 2 + (tz - centre[2]) ** 2)

@@ -24,12 +24,12 @@ FloatArray = NDArray[np.float64]
 Int32Array = NDArray[np.int32]
 Int64Array = NDArray[np.int64]
 
-CHUNK = 32768  # targets in work at one time: some 20 MB, whatever the number of targets
+CHUNK = 16384  # targets in work at one time: some 10 MB, whatever the number of targets
 _LONGEST_RUN = 8  # targets that share one factorisation before it is made again
 
 
 def share_out(kernel: Callable[..., None], workers: int, *arguments: Any) -> None:
-    """Run ``kernel(worker, workers, *arguments)`` for every worker, each in a thread of its own.
+    """Run ``kernel(worker, workers, *arguments)`` for every worker, the first here and each other in a thread.
 
     The kernels give up the interpreter's lock. Compared with numba's own parallel loops this compiles in a
     third of the time, may be called from any thread, and lets an exception through.
@@ -37,8 +37,9 @@ def share_out(kernel: Callable[..., None], workers: int, *arguments: Any) -> Non
     if workers == 1:
         kernel(0, 1, *arguments)
         return
-    with ThreadPoolExecutor(workers) as pool:
-        shares = [pool.submit(kernel, worker, workers, *arguments) for worker in range(workers)]
+    with ThreadPoolExecutor(workers - 1) as pool:
+        shares = [pool.submit(kernel, worker, workers, *arguments) for worker in range(1, workers)]
+        kernel(0, workers, *arguments)
         for share in shares:
             share.result()
 
@@ -88,7 +89,7 @@ class Found:
         hashes = np.empty(len(self.count), dtype=np.uint64)
         hash_sets(self.samples, self.count, self.status, hashes)
         usable = np.flatnonzero(self.status == ENOUGH)
-        order = usable[np.argsort(hashes[usable])].astype(np.int64)
+        order = usable[np.argsort(hashes[usable], kind="stable")].astype(np.int64)
         if not len(order):
             return order, order, order
         is_new = np.empty(len(order), dtype=np.bool_)
@@ -99,7 +100,8 @@ class Found:
         part = np.arange(pieces.sum()) - np.repeat(np.cumsum(pieces) - pieces, pieces)
         first = np.repeat(starts, pieces) + part * _LONGEST_RUN
         length = np.minimum(np.repeat(sizes, pieces) - part * _LONGEST_RUN, _LONGEST_RUN)
-        longest_first = np.argsort(-length, kind="stable")
+        # the longest first, and among equals neighbours in space together, for they lie together in memory
+        longest_first = np.lexsort((order[first], -length))
         return order, first[longest_first], length[longest_first]
 
 
