@@ -54,7 +54,7 @@ def background_grades(given: dict[str, Any]) -> dict[str, Any] | None:
 
 def composite(context: Context) -> EvidenceState:
     """Position the holes, join assays to runs and logs, make composites, and describe the evidence."""
-    from sms_resource.samples import desurvey, position, recovery
+    from sms_resource.samples import desurvey, domains, position, recovery
     from sms_resource.samples.composites import composite as make_composites
     from sms_resource.samples.surface import surface_use
 
@@ -94,9 +94,9 @@ def composite(context: Context) -> EvidenceState:
         )  # fmt: skip
     if empty:
         raise StageStop
-    recovered, found = recovery.recovery_summary(
-        data.drill.runs, intervals[intervals["domain"].isin(config.domains.sulphide)]
-    )
+    # a run belongs to the domain that holds most of it; what the host rock gave is no evidence of the sulphide
+    of_body = domains.domain_at(data.drill.runs, intervals).isin(config.domains.sulphide)
+    recovered, found = recovery.recovery_summary(data.drill.runs[of_body.to_numpy()], intervals)
     add_findings(context, found)
     used, found = surface_use(surface, config.surface_samples.use)
     add_findings(context, found)

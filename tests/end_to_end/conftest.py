@@ -17,13 +17,14 @@ from tests.end_to_end.small_study import SmallStudy
 
 MARKUP = "<script>alert(1)</script>"
 MATHS = "H$\\frac{1"
+FORMULA = "=1+2"
 
 
 def hostile(study: SmallStudy) -> SmallStudy:
     """Mark-up, mathematics and a formula in the texts that come from data files and the study."""
     for rows in study.rows.values():
         for row in rows:
-            for old, new in (("H007", MARKUP), ("H008", MATHS)):
+            for old, new in (("H007", MARKUP), ("H008", MATHS), ("H009", FORMULA)):
                 for name in ("hole_id", "sample_id", "original_sample_id"):
                     if str(row.get(name, "")).startswith(old):
                         row[name] = row[name].replace(old, new)

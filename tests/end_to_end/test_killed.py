@@ -58,9 +58,7 @@ def stop(study: Path, out: Path, after: str, *options: str, cache: Path) -> subp
 
 
 @posix
-@pytest.mark.parametrize(
-    ("after", "options"), [("check", ["--no-cache"]), ("body", ["--no-cache"]), ("classify", [])]
-)
+@pytest.mark.parametrize(("after", "options"), [("check", ["--no-cache"]), ("classify", [])])
 def test_ctrl_c_leaves_the_last_results_and_nothing_half_written(
     after: str, options: list[str], run: Run, tmp_path: Path
 ) -> None:

@@ -13,7 +13,7 @@ import pandas as pd
 import pytest
 
 from sms_resource import load_study, run_study
-from tests.end_to_end.conftest import MARKUP, Run, command
+from tests.end_to_end.conftest import FORMULA, MARKUP, Run, command
 from tests.end_to_end.places import contents, tree
 
 METALS = ["cu_pct", "zn_pct", "au_gpt", "ag_gpt"]
@@ -178,12 +178,35 @@ def test_text_from_data_files_is_escaped_in_the_report(run: Run) -> None:
         assert "<script" not in text and "onerror" not in re.sub("&lt;.*?&gt;", "", text), path.name
 
 
+def test_text_from_data_files_is_no_formula_of_the_workbook(run: Run) -> None:
+    from openpyxl import load_workbook
+
+    book = load_workbook(run.out / "workbook.xlsx")
+    cells = [cell for sheet in book for row in sheet.iter_rows() for cell in row if cell.value is not None]
+    assert len(cells) > 500
+    assert FORMULA in {cell.value for cell in cells if cell.data_type == "s"}
+    assert not [cell.value for cell in cells if cell.data_type == "f" and "1+" in str(cell.value)]
+
+
+@pytest.mark.parametrize("name", ["checklist.md", "method.md"])
+def test_text_from_the_study_is_no_mark_up_of_a_draft(run: Run, name: str) -> None:
+    text = (run.out / name).read_text(encoding="utf-8")
+    assert "mound" in text
+    for tag in ("<script", "<img", "<i>", "<b>"):
+        assert tag not in text, name
+
+
 def test_no_forbidden_word_in_anything_that_is_read(run: Run) -> None:
     words = re.compile(
         r"\b(ore|ores|reserve|reserves|proven|probable|compliant|mineable resource|in-situ value|guaranteed|calculated)\b",
         re.IGNORECASE,
     )
-    for path in [*run.out.glob("*.csv"), *run.out.glob("*.json"), *run.out.glob("*.html")]:
+    for path in [
+        *run.out.glob("*.csv"),
+        *run.out.glob("*.json"),
+        *run.out.glob("*.html"),
+        *run.out.glob("*.md"),
+    ]:
         text = path.read_text(encoding="utf-8")
         if path.suffix == ".html":
             text = re.sub(r"data:[a-z/+;0-9,]*base64,[A-Za-z0-9+/=]*", "", text)

@@ -265,6 +265,31 @@ def test_one_domain_joins_the_sulphide_and_leaves_the_rest(study: Study) -> None
     assert joined.codes == {"CP": "sulphide", "MS": "sulphide", "AV": "waste"}
 
 
+def test_recovery_is_that_of_runs_that_lie_mostly_in_the_body(study: Study) -> None:
+    """Run by run from the rows of the files: a run counts for the layer that holds most of it, host rock for none."""
+    made = SmallStudy(study.folder)
+    done = run_stages(ESTIMATE_STAGES[:3], study).done["composite"].tables["recovery"].set_index("domain")
+    wanted = {"cap": [0.0, 0.0], "massive": [0.0, 0.0]}
+    names = {"CP": "cap", "MS": "massive"}
+    for row in made.rows["runs"]:
+        shares = {
+            log["code"]: min(row["to_m"], log["to_m"]) - max(row["from_m"], log["from_m"])
+            for log in made.rows["lithology"]
+            if log["hole_id"] == row["hole_id"]
+        }
+        # half and half: the domain that comes first by name, and massive comes before waste
+        code = max(
+            sorted(shares, key=lambda item: names.get(item, "waste")), key=lambda item: round(shares[item], 6)
+        )
+        if code in names:
+            wanted[names[code]][0] += 1.0
+            wanted[names[code]][1] += row["recovered_length_m"]
+    assert set(done.index) == {"cap", "massive", "all"}
+    for domain, (length, core) in wanted.items():
+        assert done.loc[domain, "length_m"] == pytest.approx(length)
+        assert done.loc[domain, "recovery_pct"] == pytest.approx(100 * core / length)
+
+
 def test_findings_of_the_study_file_come_first(tmp_path: Path) -> None:
     made = SmallStudy(tmp_path / "inner")
     made.write()
