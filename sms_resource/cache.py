@@ -329,4 +329,8 @@ def _canonical_array(array: np.ndarray) -> Any:
     if array.dtype.hasobject:
         return {"array": [_canonical(item) for item in array.ravel().tolist()], "shape": list(array.shape)}
     data = np.ascontiguousarray(array)
-    return {"array": hashlib.sha256(data.tobytes()).hexdigest(), "dtype": data.dtype.str, "shape": list(data.shape)}
+    return {
+        "array": hashlib.sha256(data.tobytes()).hexdigest(),
+        "dtype": data.dtype.str,
+        "shape": list(data.shape),
+    }

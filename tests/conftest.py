@@ -8,7 +8,6 @@ import subprocess
 from collections import Counter
 from collections.abc import Iterator
 from functools import cache
-from importlib.util import find_spec
 from pathlib import Path
 
 import pytest
@@ -19,7 +18,6 @@ EXTRAS = {
     "chromium": ("chromium",),
     "Xvfb or OpenGL": ("xvfb", "opengl", "display"),
     "pdftoppm": ("pdftoppm", "poppler"),
-    "desktop window (PySide6, pyvistaqt)": ("pyside", "pyvistaqt", "desktop"),
 }
 
 
@@ -54,8 +52,6 @@ def missing_extras() -> tuple[str, ...]:
         "chromium": any(map(shutil.which, ("chromium", "chromium-browser", "google-chrome"))),
         "Xvfb or OpenGL": shutil.which("xvfb-run") is not None,
         "pdftoppm": shutil.which("pdftoppm") is not None,
-        "desktop window (PySide6, pyvistaqt)": find_spec("PySide6") is not None
-        and find_spec("pyvistaqt") is not None,
     }
     return tuple(name for name, there in found.items() if not there)
 

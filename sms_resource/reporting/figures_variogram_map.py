@@ -39,7 +39,7 @@ def variogram_maps(data: ReportData) -> Drawing | None:
         element = element_label(record.metal).rpartition(" (")[0]
         axis.set_title(f"{element}, {record.domain}", loc="left")
         figure.colorbar(
-            mesh, ax=axis, shrink=0.8, label=f"Semivariance of {element}, {record.plane_map_measure}"
+            mesh, ax=axis, shrink=0.8, label=f"{element}: semivariance of {record.plane_map_measure} (ratio)"
         )
         tables.append(frame.assign(domain=record.domain, metal=record.metal))
     for axis in panels[len(records) :]:

@@ -303,7 +303,11 @@ def _check_sense(study: Study, rows: dict[str, int], findings: Findings) -> None
     if config.top_cuts.apply == "given" and not config.top_cuts.cuts:
         fault("top_cuts.apply", "study-value-missing", "top cuts are to be applied as given, but none is given",
               "Add [top_cuts.cuts.DOMAIN] with a value by element, or set apply = \"proposed\".")  # fmt: skip
-    if config.data.densities is None and not config.density.assigned_dry_tpm3 and config.density.method != "mineralogy":
+    if (
+        config.data.densities is None
+        and not config.density.assigned_dry_tpm3
+        and config.density.method != "mineralogy"
+    ):
         fault("density.method", "study-value-missing", "no density is given: neither measurements nor assigned values",
               "Add [data.densities], or density.assigned_dry_tpm3 with a value for each domain.")  # fmt: skip
     if config.search.least_samples > config.search.most_samples:

@@ -303,7 +303,10 @@ def composite_rule(config: Any) -> str:
 
 def _named_axis(swaths: pd.DataFrame, frame: str) -> pd.DataFrame:
     """Swaths of all domains, with the upright axis called what it is in the vertical frame."""
-    names = {"depth": "Height against the seafloor", "proportional": "Height in the body, by its mean thickness"}
+    names = {
+        "depth": "Height against the seafloor",
+        "proportional": "Height in the body, by its mean thickness",
+    }
     chosen = swaths[swaths["domain"] == "all"]
     return chosen.assign(axis=chosen["axis"].replace({"elevation": names[frame]} if frame in names else {}))
 

@@ -1,6 +1,6 @@
 """How fast kriging is, against other programs and against the arithmetic that it must do.
 
-Run with ``python -m pytest tests/benchmarks/bench_kriging.py -m benchmark -s``. Times are the best of a few,
+Run with ``python -m pytest tests/benchmarks/bench_kriging.py -m benchmark -n 0 -s``. Times are the best of a few,
 after compilation. Next to the time on the clock stands the time of the processor: what the clock would show
 on a machine that does nothing else is the processor's time over the number of cores (``CORES``).
 """

@@ -575,9 +575,20 @@ def _variograms(rng):
                 ),
                 150,
                 30,
+                plane_map=_plane_map(rng),
             )
         )
     return tuple(records)
+
+
+def _plane_map(rng):
+    """Semivariance by separation in the plane, one cell without pairs."""
+    along, across = np.meshgrid(np.arange(-50.0, 51.0, 20.0), np.arange(-50.0, 51.0, 20.0), indexing="ij")
+    gamma = np.minimum(np.hypot(along, across) / 40.0, 1.0) * rng.lognormal(0, 0.1, along.shape)
+    gamma[0, 0] = np.nan
+    return pd.DataFrame(
+        {"along_m": along.ravel(), "across_m": across.ravel(), "gamma": gamma.ravel(), "pairs": 40}
+    )
 
 
 def _estimation(rng, blocks, composites, domains):
