@@ -114,6 +114,7 @@ def _grid(context: Context, grid: GridFile) -> Any:
 
 
 def read_layer(context: Context, layer: LayerFile | None, role: str) -> Any:
+    """Read one layer of polygons in its role."""
     if layer is None:
         return None
     from sms_resource.loaders import boundaries

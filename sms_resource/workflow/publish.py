@@ -138,7 +138,8 @@ def write_report_files(
     """The report, its figures and the pack that a CP takes away."""
     from sms_resource.reporting.pack import write_pack
     from sms_resource.reporting.report import make_report
-    from sms_resource.workflow.report_data import report_data, truth_page
+    from sms_resource.workflow.report_data import report_data
+    from sms_resource.workflow.truth import truth_page
 
     manifest = {
         "inputs": [{"role": role, "path": entry["file"], **entry} for role, entry in inputs.items()],

@@ -2,11 +2,9 @@
 
 from __future__ import annotations
 
-import json
 from dataclasses import replace
 from typing import Any
 
-import numpy as np
 import pandas as pd
 
 from sms_resource.findings import Findings
@@ -23,9 +21,18 @@ from sms_resource.reporting.data import (
     VariogramRecord,
 )
 from sms_resource.study import Study
-from sms_resource.units import element_column, unit_label
+from sms_resource.units import element_column
 from sms_resource.workflow.estimation import search_text
 from sms_resource.workflow.evidence import all_columns, metal_columns
+from sms_resource.workflow.means import (
+    check_rows,
+    mean_rows,
+    named_axis,
+    neighbourhood_rows,
+    recommendation,
+    support_rows,
+    waterfall_rows,
+)
 from sms_resource.workflow.stage import one_domain
 from sms_resource.workflow.state import (
     BlockState,
@@ -213,22 +220,9 @@ def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
             "spline": "Thickness below the seafloor, by a thin-plate spline through the contacts in holes.",
             "linear": "Thickness below the seafloor, by linear interpolation between the contacts in holes.",
         }[config.body.method],
-        waterfall=_waterfall(done["classify"].waterfall, metal_columns(config)),
+        waterfall=waterfall_rows(done["classify"].waterfall, metal_columns(config)),
         sigma_seafloor_m=config.seafloor.sigma_m,
     )
-
-
-def _waterfall(table: pd.DataFrame, metals: list[str]) -> pd.DataFrame:
-    """Screens as totals and what each takes (negative), dry tonnes and contained metal in tonnes."""
-    rows = []
-    last = len(table) - 1
-    for number, row in enumerate(table.to_dict("records")):
-        total = number in (0, last)
-        sign, kind = (1.0, "remaining") if total else (-1.0, "taken")
-        content = {metal: sign * row[f"{kind}_{metal.partition('_')[0]}_contained_t"] for metal in metals}
-        rows.append({"step": row["what"], "kind": "total" if total else "taken",
-                     "dry_tonnes": sign * row[f"{kind}_dry_tonnes"], **content})  # fmt: skip
-    return pd.DataFrame(rows)
 
 
 def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
@@ -258,34 +252,18 @@ def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
         settings=settings,
         blocks=done["classify"].frame,
         grid=blocks.model.grid.record(),
-        means=_means(done, metals),
-        swaths=_named_axis(validation.swaths, config.blocks.vertical_frame),
+        means=mean_rows(done, metals),
+        swaths=named_axis(validation.swaths, config.blocks.vertical_frame),
         support_variance=validation.facts["support_variance"],
         frames_effect=validation.facts["frames_effect"],
         leave_one_out=validation.cross_validation,
         leave_one_out_summary=validation.cross_summary,
         estimators=comparison,
-        change_of_support=_support(validation.support, done, config),
-        neighbourhood=_neighbourhood(validation.neighbourhood),
-        neighbourhood_note=_recommendation(validation.neighbourhood),
-        checks=_checks(validation.table),
+        change_of_support=support_rows(validation.support, done, config),
+        neighbourhood=neighbourhood_rows(validation.neighbourhood),
+        neighbourhood_note=recommendation(validation.neighbourhood),
+        checks=check_rows(validation.table),
     )
-
-
-def _neighbourhood(table: pd.DataFrame) -> pd.DataFrame:
-    """Quality of the estimate against the number of samples, as the figure wants it."""
-    if not len(table):
-        return table
-    names = {
-        "max_samples": "sample_number", "mean_slope": "slope", "mean_efficiency": "efficiency",
-        "mean_negative_weight": "negative_weight_sum",
-    }  # fmt: skip
-    return table[table["varied"] == "samples"][list(names)].rename(columns=names)
-
-
-def _recommendation(table: pd.DataFrame) -> str:
-    """What the study of neighbourhoods recommends, and why."""
-    return str(table["recommendation"].iloc[0]) if len(table) else ""
 
 
 def composite_rule(config: Any) -> str:
@@ -299,89 +277,6 @@ def composite_rule(config: Any) -> str:
         f"composites of {choice.length_m:g} m inside domains, weighted by {choice.weighting.replace('_', ' ')}; a rest "
         f"under {choice.shortest_m:g} m at a contact {rests[choice.short_rest]}"
     )
-
-
-def _named_axis(swaths: pd.DataFrame, frame: str) -> pd.DataFrame:
-    """Swaths of all domains, with the upright axis called what it is in the vertical frame."""
-    names = {
-        "depth": "Height against the seafloor",
-        "proportional": "Height in the body, by its mean thickness",
-    }
-    chosen = swaths[swaths["domain"] == "all"]
-    return chosen.assign(axis=chosen["axis"].replace({"elevation": names[frame]} if frame in names else {}))
-
-
-def _means(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
-    """Plain, declustered and block means by metal and domain; the plain mean of everything, surface included."""
-    samples = done["variograms"].samples
-    frame = done["classify"].frame
-    surface = done["composite"].surface
-    rows = []
-    for metal in metals:
-        for domain in ("all", *sorted(samples["domain"].unique())):
-            part = samples if domain == "all" else samples[samples["domain"] == domain]
-            blocks = frame if domain == "all" else frame[frame["domain"] == domain]
-            known, filled = part[metal].notna(), blocks[metal].notna()
-            if not known.any() or not filled.any():
-                continue
-            declustered = np.average(part.loc[known, metal], weights=part.loc[known, "declustering_weight"])
-            block = np.average(blocks.loc[filled, metal], weights=blocks.loc[filled, "dry_tonnes"])
-            row = {
-                "metal": metal, "domain": domain, "composite_mean": part.loc[known, metal].mean(),
-                "declustered_mean": declustered, "block_mean": block,
-                "difference_pct": 100.0 * (block / declustered - 1.0) if declustered else np.nan,
-            }  # fmt: skip
-            if domain == "all" and len(surface):
-                every = pd.concat([done["composite"].assays[metal], surface.get(metal)])
-                row["plain_mean_with_surface"] = every.mean()
-            rows.append(row)
-    return pd.DataFrame(rows)
-
-
-def _checks(table: pd.DataFrame) -> pd.DataFrame:
-    """Validation table in the report's words."""
-    if not len(table):
-        return pd.DataFrame(columns=["check", "subject", "value", "limit", "verdict"])
-    verdict = table["verdict"].map({"within": "pass", "flag": "flag"}).fillna(table["verdict"])
-    subject = table["domain"].astype(str) + ", " + table["metal"].astype(str)
-    return table.assign(subject=subject, verdict=verdict)[
-        ["check", "subject", "value", "limit", "verdict", "figures"]
-    ]
-
-
-def _support(curves: pd.DataFrame, done: dict[str, Any], config: Any) -> pd.DataFrame:
-    """Share of dry tonnes and grade above cut-offs: blocks as estimated against the models of change of support."""
-    if not len(curves):
-        return pd.DataFrame(columns=["metal", "cutoff", "support", "proportion", "grade"])
-    frame = done["classify"].frame
-    metal = str(curves["metal"].iloc[0])
-    rows = []
-    domains = curves["domain"].unique()
-    inside = frame[frame["domain"].isin(domains) & frame[metal].notna()]
-    total = inside["dry_tonnes"].sum()
-    for cutoff in sorted(curves["cutoff"].unique()):
-        above = inside[inside[metal] >= cutoff]
-        tonnes = above["dry_tonnes"].sum()
-        grade = np.average(above[metal], weights=above["dry_tonnes"]) if tonnes > 0 else np.nan
-        rows.append(
-            {
-                "metal": metal,
-                "cutoff": cutoff,
-                "support": "blocks",
-                "proportion": tonnes / total,
-                "grade": grade,
-            }
-        )
-    names = {"points": "composites", "discrete_gaussian": "discrete gaussian", "affine": "affine"}
-    for (method, cutoff), part in curves.groupby(["method", "cutoff"], sort=True):
-        weights = part["domain_dry_tonnes"].to_numpy()
-        share = np.average(part["proportion"], weights=weights)
-        content = np.average(part["content"], weights=weights)
-        rows.append(
-            {"metal": metal, "cutoff": cutoff, "support": names.get(str(method), str(method)), "proportion": share,
-             "grade": content / share if share > 1e-9 else np.nan}
-        )  # fmt: skip
-    return pd.DataFrame(rows)
 
 
 def _classes(study: Study, done: dict[str, Any]) -> Classes:
@@ -416,65 +311,6 @@ def _value(done: dict[str, Any], extra: dict[str, Any]) -> ValueEvidence:
         tornado=extra.get("tornado"),
         heat_map=extra.get("heat_map"),
         heat_map_labels=extra.get("heat_map_labels", ("x", "y", "value")),
-    )
-
-
-def truth_page(study: Study, done: dict[str, Any]) -> dict[str, Any] | None:
-    """The estimate against the known truth of an invented deposit, with what explains the difference."""
-    config = study.config
-    named = config.data.truth
-    if not named:
-        return None
-    truth = json.loads(study.resolve(named).read_text(encoding="utf-8"))
-    known = truth["body"]
-    frame = done["classify"].frame
-    metals = metal_columns(config)
-    dry = float(frame["dry_tonnes"].sum())
-    rows = [
-        _truth_row("volume", "m³", known["volume_m3"], float(frame["volume_m3"].sum()), ""),
-        _truth_row(
-            "dry tonnes of the body", "t dry", known["dry_tonnes"], dry, _tonnage_cause(known, frame, done)
-        ),
-        _truth_row(
-            "wet tonnes of the body", "t wet", known["wet_tonnes"], float(frame["wet_tonnes"].sum()), ""
-        ),
-    ]
-    plain = _means(done, metals).query("domain == 'all'").set_index("metal")
-    for metal in metals:
-        filled = frame[metal].notna()
-        block = float(np.average(frame.loc[filled, metal], weights=frame.loc[filled, "dry_tonnes"]))
-        rows.append(
-            _truth_row(f"mean {metal.partition('_')[0]} of the body", unit_label(metal), known[metal], block,
-                       "selective loss of core, smoothing and the few holes")
-        )  # fmt: skip
-    for metal in metals:
-        naive = float(np.asarray(plain.loc[metal, "plain_mean_with_surface"]))
-        rows.append(
-            _truth_row(f"plain mean of all samples, surface included: {metal.partition('_')[0]}",
-                       unit_label(metal), known[metal], naive,
-                       "surface samples are richer than the body, and clusters count many times")
-        )  # fmt: skip
-    return {
-        "file": config.data.truth,
-        "table": pd.DataFrame(rows),
-        "notes": ("The truth is known because the deposit is invented; a real study has no such page.",),
-    }
-
-
-def _truth_row(quantity: str, unit: str, truth: float, estimate: float, cause: str) -> dict[str, Any]:
-    difference = 100.0 * (estimate / truth - 1.0) if truth else np.nan
-    return {"quantity": quantity, "unit": unit, "truth": truth, "estimate": estimate,
-            "difference_pct": difference, "cause": cause}  # fmt: skip
-
-
-def _tonnage_cause(known: dict[str, float], frame: pd.DataFrame, done: dict[str, Any]) -> str:
-    """Split the difference in dry tonnes into volume and density, and name the limit on extrapolation."""
-    volume = float(frame["volume_m3"].sum())
-    density = (frame["dry_tonnes"].sum() / volume) / (known["dry_tonnes"] / known["volume_m3"]) - 1.0
-    cut = float(done["body"].body.record.get("volume_cut_by_limit_m3", 0.0)) / known["volume_m3"]
-    return (
-        f"volume {100 * (volume / known['volume_m3'] - 1.0):+.1f} %, of which the limit on extrapolation below holes "
-        f"that ended in sulphide takes {100 * cut:.1f} %; mean dry density {100 * density:+.1f} %"
     )
 
 

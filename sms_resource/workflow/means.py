@@ -1,0 +1,120 @@
+"""Tables of the stages in the form that the report wants."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+
+def waterfall_rows(table: pd.DataFrame, metals: list[str]) -> pd.DataFrame:
+    """Screens as totals and what each takes (negative), dry tonnes and contained metal in tonnes."""
+    rows = []
+    last = len(table) - 1
+    for number, row in enumerate(table.to_dict("records")):
+        total = number in (0, last)
+        sign, kind = (1.0, "remaining") if total else (-1.0, "taken")
+        content = {metal: sign * row[f"{kind}_{metal.partition('_')[0]}_contained_t"] for metal in metals}
+        rows.append({"step": row["what"], "kind": "total" if total else "taken",
+                     "dry_tonnes": sign * row[f"{kind}_dry_tonnes"], **content})  # fmt: skip
+    return pd.DataFrame(rows)
+
+
+def neighbourhood_rows(table: pd.DataFrame) -> pd.DataFrame:
+    """Quality of the estimate against the number of samples, as the figure wants it."""
+    if not len(table):
+        return table
+    names = {
+        "max_samples": "sample_number", "mean_slope": "slope", "mean_efficiency": "efficiency",
+        "mean_negative_weight": "negative_weight_sum",
+    }  # fmt: skip
+    return table[table["varied"] == "samples"][list(names)].rename(columns=names)
+
+
+def recommendation(table: pd.DataFrame) -> str:
+    """What the study of neighbourhoods recommends, and why."""
+    return str(table["recommendation"].iloc[0]) if len(table) else ""
+
+
+def named_axis(swaths: pd.DataFrame, frame: str) -> pd.DataFrame:
+    """Swaths of all domains, with the upright axis called what it is in the vertical frame."""
+    names = {
+        "depth": "Height against the seafloor",
+        "proportional": "Height in the body, by its mean thickness",
+    }
+    chosen = swaths[swaths["domain"] == "all"]
+    return chosen.assign(axis=chosen["axis"].replace({"elevation": names[frame]} if frame in names else {}))
+
+
+def mean_rows(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
+    """Plain, declustered and block means by metal and domain; the plain mean of everything, surface included."""
+    samples = done["variograms"].samples
+    frame = done["classify"].frame
+    surface = done["composite"].surface
+    rows = []
+    for metal in metals:
+        for domain in ("all", *sorted(samples["domain"].unique())):
+            part = samples if domain == "all" else samples[samples["domain"] == domain]
+            blocks = frame if domain == "all" else frame[frame["domain"] == domain]
+            known, filled = part[metal].notna(), blocks[metal].notna()
+            if not known.any() or not filled.any():
+                continue
+            declustered = np.average(part.loc[known, metal], weights=part.loc[known, "declustering_weight"])
+            block = np.average(blocks.loc[filled, metal], weights=blocks.loc[filled, "dry_tonnes"])
+            row = {
+                "metal": metal, "domain": domain, "composite_mean": part.loc[known, metal].mean(),
+                "declustered_mean": declustered, "block_mean": block,
+                "difference_pct": 100.0 * (block / declustered - 1.0) if declustered else np.nan,
+            }  # fmt: skip
+            if domain == "all" and len(surface):
+                every = pd.concat([done["composite"].assays[metal], surface.get(metal)])
+                row["plain_mean_with_surface"] = every.mean()
+            rows.append(row)
+    return pd.DataFrame(rows)
+
+
+def check_rows(table: pd.DataFrame) -> pd.DataFrame:
+    """Validation table in the report's words."""
+    if not len(table):
+        return pd.DataFrame(columns=["check", "subject", "value", "limit", "verdict"])
+    verdict = table["verdict"].map({"within": "pass", "flag": "flag"}).fillna(table["verdict"])
+    subject = table["domain"].astype(str) + ", " + table["metal"].astype(str)
+    return table.assign(subject=subject, verdict=verdict)[
+        ["check", "subject", "value", "limit", "verdict", "figures"]
+    ]
+
+
+def support_rows(curves: pd.DataFrame, done: dict[str, Any], config: Any) -> pd.DataFrame:
+    """Share of dry tonnes and grade above cut-offs: blocks as estimated against the models of change of support."""
+    if not len(curves):
+        return pd.DataFrame(columns=["metal", "cutoff", "support", "proportion", "grade"])
+    frame = done["classify"].frame
+    metal = str(curves["metal"].iloc[0])
+    rows = []
+    domains = curves["domain"].unique()
+    inside = frame[frame["domain"].isin(domains) & frame[metal].notna()]
+    total = inside["dry_tonnes"].sum()
+    for cutoff in sorted(curves["cutoff"].unique()):
+        above = inside[inside[metal] >= cutoff]
+        tonnes = above["dry_tonnes"].sum()
+        grade = np.average(above[metal], weights=above["dry_tonnes"]) if tonnes > 0 else np.nan
+        rows.append(
+            {
+                "metal": metal,
+                "cutoff": cutoff,
+                "support": "blocks",
+                "proportion": tonnes / total,
+                "grade": grade,
+            }
+        )
+    names = {"points": "composites", "discrete_gaussian": "discrete gaussian", "affine": "affine"}
+    for (method, cutoff), part in curves.groupby(["method", "cutoff"], sort=True):
+        weights = part["domain_dry_tonnes"].to_numpy()
+        share = np.average(part["proportion"], weights=weights)
+        content = np.average(part["content"], weights=weights)
+        rows.append(
+            {"metal": metal, "cutoff": cutoff, "support": names.get(str(method), str(method)), "proportion": share,
+             "grade": content / share if share > 1e-9 else np.nan}
+        )  # fmt: skip
+    return pd.DataFrame(rows)
