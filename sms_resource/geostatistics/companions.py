@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from .inputs import Samples, checked_block, checked_samples, checked_threads, cross, points_array
-from .model import COINCIDENT_M
+from .model import COINCIDENT_M, along
 from .neighbourhood import Neighbourhood, as_passes, check_holes
 from .support_variance import discretisation_offsets
 
@@ -84,7 +84,7 @@ def _by_neighbourhood(
 ) -> None:
     """The kernel on what each pass found."""
     from .companion_kernels import companions
-    from .search_run import Finder, along, share_out, target_chunks
+    from .search_run import Finder, share_out, target_chunks
 
     parts = []
     for group in samples.patterns().values():

@@ -7,8 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from .model import SHAPE_CODES, VariogramModel
-from .search_run import along
+from .model import SHAPE_CODES, VariogramModel, along
 from .support_variance import block_variance, discretisation_offsets
 
 FloatArray = NDArray[np.float64]

@@ -45,6 +45,12 @@ def rotation_axes(azimuth: float, plunge: float = 0.0, tilt: float = 0.0) -> Flo
     return np.array([major, semi, minor])
 
 
+def along(axes: FloatArray, points: FloatArray) -> FloatArray:
+    """Components of (n, 3) points along the rows of ``axes``, as a (3, n) array."""
+    x, y, z = points.T
+    return np.ascontiguousarray(np.stack([row[0] * x + row[1] * y + row[2] * z for row in axes]))
+
+
 @dataclass(frozen=True, slots=True)
 class Structure:
     """One structure of a variogram model.

@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from .candidate_kernels import CELLS, SHELLS
+from .model import along
 from .neighbourhood import Neighbourhood
 from .search_kernels import (
     ENOUGH,
@@ -42,12 +43,6 @@ def share_out(kernel: Callable[..., None], workers: int, *arguments: Any) -> Non
         kernel(0, workers, *arguments)
         for share in shares:
             share.result()
-
-
-def along(axes: FloatArray, points: FloatArray) -> FloatArray:
-    """Components of (n, 3) points along the rows of ``axes``, as a (3, n) array."""
-    x, y, z = points.T
-    return np.ascontiguousarray(np.stack([row[0] * x + row[1] * y + row[2] * z for row in axes]))
 
 
 def near_order(points: FloatArray) -> Int64Array:
