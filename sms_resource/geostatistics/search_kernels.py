@@ -278,8 +278,9 @@ def search_samples(
                     source, listed = fewer, closest
                 by_histogram = nothing_refused and left <= _SEARCHED
                 if by_histogram:
-                    near[:left] = listed[:left]
-                    places[:, :left] = source[:, :left]
+                    for t in range(left):
+                        near[t] = listed[t]
+                        x[t], y[t], z[t] = source[0, t], source[1, t], source[2, t]
                 else:
                     width = sort_into_cells(
                         source, listed, left, centre, half, sectors, places, near, starts, sector_of, highest
