@@ -126,6 +126,8 @@ class Evidence:
     ``top_cuts`` : domain, metal, cut, n, n_cut, mean_before, mean_after, metal_removed_pct, reason.
     ``assay_summary`` : free columns (below detection, over limit, blank, by element).
     ``handheld_used`` : whether handheld readings entered the estimate.
+    ``contact_verdicts`` : contact, metal, n_first, n_second, mean_first, mean_second, ratio, p_value, verdict, reason.
+    ``deleterious`` : elements that are read and not estimated, with their statistics.
     ``twins``, ``contact_analysis`` (distance_m, metal, mean, n, contact), ``associations``, ``lognormal``,
     ``statistics`` : free columns, shown as tables. ``declustering_scan`` : cell_size_m, metal, mean.
     """
@@ -152,6 +154,8 @@ class Evidence:
     handheld_used: bool = False
     twins: Frame | None = None
     contact_analysis: Frame | None = None
+    contact_verdicts: Frame | None = None
+    deleterious: Frame | None = None
     associations: Frame | None = None
     lognormal: Frame | None = None
     statistics: Frame | None = None

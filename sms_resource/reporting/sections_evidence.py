@@ -86,6 +86,7 @@ def evidence(data: ReportData) -> list[Block]:
     blocks.append(Slot(("top_cuts",)))
     with_table(blocks, chosen_cells(e.declustering_scan), "Declustering: cells chosen", most=16)
     blocks.append(Slot(("contacts",)))
+    with_table(blocks, e.contact_verdicts, "Contacts of domains: hard or soft", most=40)
     with_table(blocks, e.twins, "Twin holes", most=20)
     blocks += [
         Heading("Surface samples"),
@@ -113,6 +114,7 @@ def evidence(data: ReportData) -> list[Block]:
         blocks, associations_shown(e.associations, data.subject.metals), "Correlations and ratios", most=12
     )
     blocks.append(Slot(("tracers",)))
+    with_table(blocks, e.deleterious, "Deleterious elements (composites in the body)", most=20)
     blocks += [Heading("Strip logs"), Slot(("strip_logs_*",))]
     return blocks
 

@@ -169,6 +169,8 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
         handheld_used=bool(evidence.facts["handheld_used"]),
         twins=tables["twins"],
         contact_analysis=tables.get("contact_analysis"),
+        contact_verdicts=tables.get("contact_verdicts"),
+        deleterious=tables.get("deleterious"),
         associations=tables["associations"],
         lognormal=tables.get("lognormal"),
         statistics=tables["statistics"],
