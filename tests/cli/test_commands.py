@@ -192,10 +192,10 @@ def test_output_that_is_cut_off_is_no_fault(study: SmallStudy) -> None:
     assert "Traceback" not in done.stderr and "BrokenPipe" not in done.stderr
 
 
-def test_new_writes_a_study_that_checks_after_its_questions_are_answered(
-    study: SmallStudy, tmp_path: Path
+def test_new_writes_a_study_that_checks_and_runs_after_its_questions_are_answered(
+    study: SmallStudy, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    """From the data files alone to a study that `check` accepts, with what a person must answer filled in."""
+    """From the data files alone to a table of tonnes, with what a person must answer filled in."""
     study.path.unlink()
     made = study.folder / "mine.toml"
     files = sorted(path for path in study.folder.iterdir())
@@ -214,6 +214,11 @@ def test_new_writes_a_study_that_checks_after_its_questions_are_answered(
     made.write_text(text, encoding="utf-8")
     checked = call("check", made, "--json")
     assert checked.exit_code == 0, checked.output
+    monkeypatch.setattr("sms_resource.workflow.publish.write_report_files", lambda *_: [])
+    ran = call("run", made, "--out", tmp_path / "results")
+    assert ran.exit_code == 0, ran.output
+    assert "all classes" in ran.output and "Dry tonnes" in ran.output
+    assert (tmp_path / "results" / "grade_tonnage.csv").is_file()
     again = call("new", *files, "--out", made)
     assert again.exit_code == 2 and made.read_text(encoding="utf-8") == text
     assert call("new", *files, "--out", made, "--force").exit_code == 0
