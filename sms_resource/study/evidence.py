@@ -213,6 +213,9 @@ class Laboratory(Section):
     family_error: float = key(
         0.001, "Chance of accusing any good batch, over all batches and elements.", gt=0, lt=1
     )
+    pair_limits: dict[str, dict[Literal["field", "coarse", "pulp"], tuple[float, float]]] = key(
+        {}, "CVavg (%) of duplicates that is good, and that is still acceptable, by element and stage."
+    )
     confidence: float = key(0.95, "Confidence of intervals of check assays.", gt=0, lt=1)
 
 
@@ -259,6 +262,9 @@ class Density(Section):
         "chalcopyrite", 'Mineral that holds the copper, for method = "mineralogy".'
     )
     rest_mineral: str = key("silica", "Mineral that fills up to 100 %.")
+    rest_by_domain: dict[str, str] = key(
+        {}, 'Mineral that fills up in a domain, such as stockwork = "quartz".'
+    )
     confidence: float = key(0.9, "Confidence of the low and high densities.", gt=0, lt=1)
     least_count: int = key(10, "Number of measurements under which a domain's density is called few.", ge=1)
     factor: float = key(1.0, "Factor on every dry density; for scenarios.", gt=0, alternatives=(0.95, 1.05))

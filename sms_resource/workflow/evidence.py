@@ -205,6 +205,8 @@ def describe(
         elements=tuple(config.metals.estimate),
         blank_limits=config.laboratory.blank_limits,
         family_error=config.laboratory.family_error,
+        pair_limits={element: dict(limits) for element, limits in config.laboratory.pair_limits.items()}
+        or None,
         confidence=config.laboratory.confidence,
     )
     bias = floor.surface_bias(
@@ -317,7 +319,11 @@ def density(context: Context) -> DensityState:
         pore_water_tpm3=choice.pore_water_tpm3,
         predictors=[element_column(name) for name in choice.predictors],
         confidence=choice.confidence,
-        norm_settings=NormSettings(copper_mineral=choice.copper_mineral, rest=choice.rest_mineral),
+        norm_settings=NormSettings(
+            copper_mineral=choice.copper_mineral,
+            rest=choice.rest_mineral,
+            rest_by_domain=dict(choice.rest_by_domain),
+        ),
         least_count=choice.least_count,
         factor=choice.factor,
     )
