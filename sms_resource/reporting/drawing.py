@@ -1,12 +1,13 @@
-"""Draw the figures of a report, on two processors where there are two.
+"""Draw the figures of a report: those that changed, on two processors where there are two.
 
-Drawing is what a report spends its time on. Half of the figures are drawn by a second interpreter that is given the data
-in a file; whatever it does not deliver is drawn here, so that a report never depends on it. The pictures are the same
-either way.
+Drawing is what a report spends its time on. A figure whose data are what they were is taken from where the last run kept
+it. Of the others half are drawn by a second interpreter that is given the data in a file; whatever it does not deliver is
+drawn here, so that a report never depends on it. The pictures are the same either way.
 """
 
 from __future__ import annotations
 
+import hashlib
 import os
 import pickle
 import subprocess
@@ -14,26 +15,63 @@ import sys
 import tempfile
 from dataclasses import dataclass, replace
 from pathlib import Path
+from typing import Any, Protocol, cast
 
 from sms_resource.reporting.data import ReportData
 from sms_resource.reporting.figures import MAKERS
-from sms_resource.reporting.style import Drawing, borrowed_settings, save_drawing
+from sms_resource.reporting.reading import Contents, Reading
+from sms_resource.reporting.reading import Path as FieldPath
+from sms_resource.reporting.style import Drawing, borrowed_settings, render
 
 # What the slow figures cost against the others, as measured; only the balance of the two halves rests on it.
 WEIGHTS = {"strip logs": 8.0, "variograms": 7.0, "cross-sections": 3.0, "contact analysis": 3.0, "swaths": 2.0,
            "plan of grades": 2.0, "plan of holes": 2.0, "thickness plan": 2.0}  # fmt: skip
+ALONE_UP_TO = 3.0  # less work than this is done before a second interpreter has started
+RECIPES_KEPT = 4
+
+
+class Store(Protocol):
+    """Where figures are kept between runs."""
+
+    def get(self, key: str, default: Any = None) -> Any:
+        """What is kept under a key, or ``default``."""
+
+    def put(self, key: str, value: Any) -> Any:
+        """Keep something."""
 
 
 @dataclass(frozen=True)
 class Drawn:
-    """One figure on disk: its words and table, its PNG, and the paths written."""
+    """One figure: its words and table, and the contents of its files."""
 
     drawing: Drawing
     picture: bytes
-    paths: list[Path]
+    vector: bytes
+    table: bytes
+
+    def paths(self, folder: Path) -> list[Path]:
+        """Paths of PNG, SVG and table under ``folder``."""
+        key = self.drawing.key
+        return [folder / f"{key}.png", folder / f"{key}.svg", folder / "data" / f"{key}.csv"]
+
+    def write(self, folder: Path) -> None:
+        """Write the three files under ``folder``."""
+        (folder / "data").mkdir(parents=True, exist_ok=True)
+        for path, content in zip(self.paths(folder), (self.picture, self.vector, self.table)):
+            path.write_bytes(content)
 
 
-def draw_all(data: ReportData, folder: Path) -> tuple[list[Drawn], list[str]]:
+@dataclass(frozen=True)
+class Made:
+    """What one maker drew, and the fields of the data that it looked at."""
+
+    drawn: tuple[Drawn, ...]
+    read: tuple[FieldPath, ...]
+
+
+def draw_all(
+    data: ReportData, folder: Path, store: Store | None = None, code: str = ""
+) -> tuple[list[Drawn], list[str]]:
     """Draw and save every figure that the data allow.
 
     Parameters
@@ -41,6 +79,10 @@ def draw_all(data: ReportData, folder: Path) -> tuple[list[Drawn], list[str]]:
     data : ReportData
     folder : Path
         Where ``<key>.png``, ``<key>.svg`` and ``data/<key>.csv`` go.
+    store : Store, optional
+        Where figures are kept; a figure whose data are unchanged is taken from there.
+    code : str
+        Names the code that draws; what other code has drawn is not taken.
 
     Returns
     -------
@@ -49,51 +91,121 @@ def draw_all(data: ReportData, folder: Path) -> tuple[list[Drawn], list[str]]:
     absent : list of str
         What could not be drawn for want of data.
     """
-    theirs = second_half() if (os.cpu_count() or 1) > 1 else []
-    with tempfile.TemporaryDirectory() as place:
-        other = _start(data, folder, Path(place)) if theirs else None
-        made = draw_some(data, folder, [n for n in range(len(MAKERS)) if n not in theirs])
-        found = _collect(other, Path(place)) if other is not None else {}
-    made.update(found)
+    kept = Kept(store, code, data)
+    made = {number: found for number in range(len(MAKERS)) if (found := kept.find(MAKERS[number][0]))}
     left = [number for number in range(len(MAKERS)) if number not in made]
-    made.update(draw_some(data, folder, left))
-    drawn = [item for number in range(len(MAKERS)) for item in made[number]]
-    return drawn, [MAKERS[number][0] for number in range(len(MAKERS)) if not made[number]]
+    fresh = draw_some(data, left) if light(left) else draw_in_two(data, left)
+    kept.keep({MAKERS[number][0]: item for number, item in fresh.items()})
+    made.update(fresh)
+    drawn = [item for number in range(len(MAKERS)) for item in made[number].drawn]
+    for item in drawn:
+        item.write(folder)
+    return drawn, [MAKERS[number][0] for number in range(len(MAKERS)) if not made[number].drawn]
 
 
-def second_half() -> list[int]:
-    """Numbers of the makers that the second interpreter draws: heaviest first, each to the lighter half."""
-    loads, theirs = [0.0, 1.0], []  # the second starts later
-    order = sorted(range(len(MAKERS)), key=lambda number: -WEIGHTS.get(MAKERS[number][0], 1.0))
-    for number in order:
+class Kept:
+    """Figures of runs before, found by what they were made from.
+
+    For each maker the store holds recipes, lists of the fields that it looked at in some run. A maker reads its data in
+    an order that depends on them alone, so where all fields of a recipe hold what they held then, it would look at
+    nothing else and draw the same.
+    """
+
+    def __init__(self, store: Store | None, code: str, data: ReportData) -> None:
+        self._store = store
+        self._code = code
+        self._contents = Contents(data)
+        self._recipe_key = hashlib.sha256(f"recipes {code}".encode()).hexdigest()
+        found = store.get(self._recipe_key) if store is not None else None
+        self._recipes: dict[str, list[tuple[FieldPath, ...]]] = found if isinstance(found, dict) else {}
+
+    def find(self, maker: str) -> Made | None:
+        """What a maker drew from the same data before, if that is kept."""
+        if self._store is None:
+            return None
+        for recipe in self._recipes.get(maker, []):
+            key = self._key(maker, recipe)
+            found = self._store.get(key) if key else None
+            if isinstance(found, Made):
+                return found
+        return None
+
+    def keep(self, fresh: dict[str, Made]) -> None:
+        """Keep what makers drew, and the recipes."""
+        if self._store is None or not fresh:
+            return
+        for maker, made in fresh.items():
+            key = self._key(maker, made.read)
+            if key is not None:
+                self._store.put(key, made)
+                others = [item for item in self._recipes.get(maker, []) if item != made.read]
+                self._recipes[maker] = [made.read, *others][:RECIPES_KEPT]
+        self._store.put(self._recipe_key, self._recipes)
+
+    def _key(self, maker: str, recipe: tuple[FieldPath, ...]) -> str | None:
+        digest = self._contents.digest(recipe)
+        if digest is None:
+            return None
+        return hashlib.sha256(f"figure {self._code} {maker} {digest}".encode()).hexdigest()
+
+
+def weight(number: int) -> float:
+    """What a maker costs against the others."""
+    return WEIGHTS.get(MAKERS[number][0], 1.0)
+
+
+def light(numbers: list[int]) -> bool:
+    """Whether a second interpreter would not be worth its start."""
+    return (os.cpu_count() or 1) < 2 or sum(map(weight, numbers)) <= ALONE_UP_TO
+
+
+def halves(numbers: list[int]) -> tuple[list[int], list[int]]:
+    """Makers that are drawn here and by the second interpreter: heaviest first, each to the lighter half."""
+    loads = [0.0, 1.0]  # the second starts later
+    parts: tuple[list[int], list[int]] = ([], [])
+    for number in sorted(numbers, key=lambda number: -weight(number)):
         half = int(loads[1] < loads[0])
-        loads[half] += WEIGHTS.get(MAKERS[number][0], 1.0)
-        if half:
-            theirs.append(number)
-    return sorted(theirs)
+        loads[half] += weight(number)
+        parts[half].append(number)
+    return sorted(parts[0]), sorted(parts[1])
 
 
-def draw_some(data: ReportData, folder: Path, numbers: list[int]) -> dict[int, list[Drawn]]:
-    """Figures of some makers, by the maker's number."""
-    made: dict[int, list[Drawn]] = {}
-    with borrowed_settings():
-        for number in numbers:
-            result = MAKERS[number][1](data)
-            drawings = [] if result is None else [result] if isinstance(result, Drawing) else list(result)
-            made[number] = []
-            for drawing in drawings:
-                assert drawing.figure is not None  # a maker always draws
-                picture, paths = save_drawing(drawing, folder)
-                size = (float(drawing.figure.get_figwidth()), float(drawing.figure.get_figheight()))
-                words = replace(drawing, figure=None, size_in=size)
-                made[number].append(Drawn(words, picture, paths))
+def draw_in_two(data: ReportData, numbers: list[int]) -> dict[int, Made]:
+    """Figures of some makers, half of them by a second interpreter."""
+    ours, theirs = halves(numbers)
+    with tempfile.TemporaryDirectory() as place:
+        other = _start(data, theirs, Path(place))
+        made = draw_some(data, ours)
+        if other is not None:
+            made.update(_collect(other, Path(place)))
+    made.update(draw_some(data, [number for number in numbers if number not in made]))
     return made
 
 
-def _start(data: ReportData, folder: Path, place: Path) -> subprocess.Popen[bytes] | None:
+def draw_some(data: ReportData, numbers: list[int]) -> dict[int, Made]:
+    """Figures of some makers, by the maker's number."""
+    made: dict[int, Made] = {}
+    with borrowed_settings():
+        for number in numbers:
+            reading = Reading(data)
+            result = MAKERS[number][1](cast(ReportData, reading))
+            drawings = [] if result is None else [result] if isinstance(result, Drawing) else list(result)
+            made[number] = Made(tuple(map(finished, drawings)), reading.paths_read)
+    return made
+
+
+def finished(drawing: Drawing) -> Drawn:
+    """A figure as the contents of its files; the figure itself is let go."""
+    assert drawing.figure is not None  # a maker always draws
+    picture, vector, table = render(drawing)
+    size = (float(drawing.figure.get_figwidth()), float(drawing.figure.get_figheight()))
+    return Drawn(replace(drawing, figure=None, size_in=size), picture, vector, table)
+
+
+def _start(data: ReportData, numbers: list[int], place: Path) -> subprocess.Popen[bytes] | None:
     try:
         with (place / "data").open("wb") as stream:
-            pickle.dump((data, folder), stream, protocol=5)
+            pickle.dump((data, numbers), stream, protocol=5)
         return subprocess.Popen(
             [sys.executable, "-m", "sms_resource.reporting.drawing", str(place)],
             stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL,
@@ -102,7 +214,7 @@ def _start(data: ReportData, folder: Path, place: Path) -> subprocess.Popen[byte
         return None  # no second interpreter: everything is drawn here
 
 
-def _collect(other: subprocess.Popen[bytes], place: Path) -> dict[int, list[Drawn]]:
+def _collect(other: subprocess.Popen[bytes], place: Path) -> dict[int, Made]:
     try:
         if other.wait() != 0:
             return {}
@@ -117,9 +229,8 @@ def _collect(other: subprocess.Popen[bytes], place: Path) -> dict[int, list[Draw
 
 def main(place: Path) -> None:
     """Draw the second half of the figures (called in an interpreter of its own)."""
-    data, folder = pickle.loads((place / "data").read_bytes())
-    made = draw_some(data, folder, second_half())
-    (place / "drawn").write_bytes(pickle.dumps(made, protocol=5))
+    data, numbers = pickle.loads((place / "data").read_bytes())
+    (place / "drawn").write_bytes(pickle.dumps(draw_some(data, numbers), protocol=5))
 
 
 if __name__ == "__main__":

@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from sms_resource.reporting import style
-from sms_resource.reporting.data import ReportData, has
+from sms_resource.reporting.data import Estimation, ReportData, has
 from sms_resource.reporting.maps import (
     block_columns,
     column_mesh,
@@ -164,7 +164,7 @@ def plan_extrapolation(data: ReportData) -> Drawing | None:
     ):
         return None
     beyond = blocks.assign(extrapolated=(blocks["extrapolation"].astype(str) != "drilled").astype(float))
-    work = ReportData(estimation=type(data.estimation)(blocks=beyond, grid=data.estimation.grid))
+    work = ReportData(estimation=Estimation(blocks=beyond, grid=data.estimation.grid))
     columns = block_columns(work, ["extrapolated"])
     columns["extrapolated"] = columns["extrapolated"] * 100.0
     figure, axes = style.new_figure(7.0, 5.8)

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from sms_resource.reporting.data import ReportData
-from sms_resource.reporting.drawing import draw_all
+from sms_resource.reporting.drawing import Store, draw_all
 from sms_resource.reporting.elements import Document
 from sms_resource.reporting.html import write_html
 from sms_resource.reporting.sections import build_document
@@ -21,13 +21,17 @@ class Report:
     paths: list[Path]
 
 
-def make_report(data: ReportData, folder: Path) -> Report:
-    """Draw, build and write ``report.html`` and ``figures/`` (PNG, SVG, and ``data/*.csv``) under ``folder``."""
+def make_report(data: ReportData, folder: Path, store: Store | None = None, code: str = "") -> Report:
+    """Draw, build and write ``report.html`` and ``figures/`` (PNG, SVG, and ``data/*.csv``) under ``folder``.
+
+    Figures whose data are what they were in a run before are taken from ``store``, where the code named by ``code``
+    drew them.
+    """
     folder = Path(folder)
     folder.mkdir(parents=True, exist_ok=True)
-    drawn, absent = draw_all(data, folder / "figures")
+    drawn, absent = draw_all(data, folder / "figures", store, code)
     pictures = {item.drawing.key: item.picture for item in drawn}
-    paths = [path for item in drawn for path in item.paths]
+    paths = [path for item in drawn for path in item.paths(folder / "figures")]
     document = build_document(data, [item.drawing for item in drawn], absent)
     paths.insert(0, write_html(document, pictures, folder / "report.html"))
     return Report(document, pictures, paths)

@@ -13,7 +13,6 @@ import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
-from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -125,19 +124,13 @@ def new_figure(
     return figure, axes
 
 
-def save_drawing(drawing: Drawing, folder: Path) -> tuple[bytes, list[Path]]:
-    """Write PNG, SVG and the table as CSV; return the bytes of the PNG and the paths.
-
-    No time, no version and no random name goes into the files.
-    """
+def render(drawing: Drawing) -> tuple[bytes, bytes, bytes]:
+    """PNG, SVG and the table as CSV; no time, no version and no random name goes into them."""
     import io
 
     from matplotlib.backends.backend_agg import FigureCanvasAgg
     from matplotlib.backends.backend_svg import FigureCanvasSVG
 
-    (folder / "data").mkdir(parents=True, exist_ok=True)
-    png, svg = folder / f"{drawing.key}.png", folder / f"{drawing.key}.svg"
-    table = folder / "data" / f"{drawing.key}.csv"
     figure = drawing.figure
     assert figure is not None  # drawn and not yet let go
     engine = figure.get_layout_engine()
@@ -145,14 +138,12 @@ def save_drawing(drawing: Drawing, folder: Path) -> tuple[bytes, list[Path]]:
         engine.execute(figure)
         figure.set_layout_engine("none")  # placed once, not again for each file
     # The canvases are asked directly: savefig would draw everything once more to place it.
-    buffer = io.BytesIO()
-    FigureCanvasAgg(figure).print_png(buffer, metadata={"Software": None})
-    content = buffer.getvalue()
-    png.write_bytes(content)
-    FigureCanvasSVG(figure).print_svg(svg, metadata={"Date": None, "Creator": None})
+    picture, vector = io.BytesIO(), io.BytesIO()
+    FigureCanvasAgg(figure).print_png(picture, metadata={"Software": None})
+    FigureCanvasSVG(figure).print_svg(vector, metadata={"Date": None, "Creator": None})
     figure.dpi = DPI
-    drawing.table.to_csv(table, index=False, lineterminator="\n", float_format="%.10g")
-    return content, [png, svg, table]
+    table = drawing.table.to_csv(index=False, lineterminator="\n", float_format="%.10g")
+    return picture.getvalue(), vector.getvalue(), table.encode()
 
 
 def nice_length(span: float) -> float:

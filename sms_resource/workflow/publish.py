@@ -14,7 +14,7 @@ from sms_resource.study import Study, decisions
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.layers import write_layers
 from sms_resource.workflow.manifest import versions, write_manifest
-from sms_resource.workflow.stage import Outcome, Progress, StageRecord
+from sms_resource.workflow.stage import Outcome, Progress, StageCache, StageRecord, code_fingerprint
 from sms_resource.workflow.state import ClassState
 from sms_resource.workflow.summary import Summary, summarise
 
@@ -26,6 +26,7 @@ def write_results(
     inputs: dict[str, dict[str, Any]],
     progress: Progress | None = None,
     extra: dict[str, Any] | None = None,
+    store: StageCache | None = None,
 ) -> Summary:
     """Write tables, layers, the report and the manifest of a run.
 
@@ -41,6 +42,8 @@ def write_results(
     progress : Progress, optional
     extra : dict, optional
         Scenario tables and changes against another run, for the report.
+    store : StageCache, optional
+        Where figures are kept between runs.
     """
     if progress:
         progress.started("report", "Writing the report")
@@ -50,7 +53,7 @@ def write_results(
     write_layers(folder / "layers", study, done)
     ledger = ledger_table(study, extra)
     ledger.to_csv(folder / "decisions.csv", index=False)
-    files = write_report_files(folder, study, outcome, inputs, ledger, extra)
+    files = write_report_files(folder, study, outcome, inputs, ledger, extra, store)
     if extra and extra.get("scenarios") is not None:
         extra["scenarios"].to_csv(folder / "scenarios.csv", index=False)
     seconds = time.perf_counter() - begun
@@ -134,6 +137,7 @@ def write_report_files(
     inputs: dict[str, dict[str, Any]],
     ledger: pd.DataFrame,
     extra: dict[str, Any] | None,
+    store: StageCache | None = None,
 ) -> list[Path]:
     """The report, its figures and the pack that a CP takes away."""
     from sms_resource.reporting.pack import write_pack
@@ -148,5 +152,5 @@ def write_report_files(
     }
     truth = truth_page(study, outcome.done)
     data = report_data(study, outcome.done, outcome.findings, ledger, manifest, truth, extra)
-    report = make_report(data, folder)
+    report = make_report(data, folder, store, code_fingerprint())
     return [*report.paths, *write_pack(data, folder, report)]

@@ -146,7 +146,7 @@ def run_study(
         from sms_resource.workflow.publish import write_results
 
         extra = more(study, outcome, store, hashes, threads, progress, scenarios, against)
-        summary = write_results(folder.staging, study, outcome, inputs, progress, extra)
+        summary = write_results(folder.staging, study, outcome, inputs, progress, extra, store)
         folder.publish()
     result = _result(study, outcome, summary)
     result.out = folder.out
