@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from typing import Any
 
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.samples.density_checks import density_findings
+from sms_resource.samples.density_given import three_values
 from sms_resource.samples.density_model import DensityModel, fit_density
 from sms_resource.samples.domains import domain_at
 from sms_resource.samples.intervals import names, numbers, overlap_means
@@ -36,7 +38,7 @@ def density_table(
     pore_water_tpm3: float | None = None,
     salt_tpm3: float = SALT_DENSITY_TPM3,
     dry_contains_salt: bool = False,
-    porosity: Mapping[str, float] | None = None,
+    porosity: Mapping[str, Any] | None = None,
     metals: Sequence[str] | None = None,
     norm_settings: NormSettings | None = None,
 ) -> pd.DataFrame:
@@ -62,7 +64,8 @@ def density_table(
         needs it: without it nothing that rests on pore water is known, and `fit_density` says so.
     dry_contains_salt : bool
         Whether dry densities that are given (not masses) still hold the salt.
-    porosity : mapping of domain to fraction, optional
+    porosity : mapping of domain to fraction or (low, base, high), optional
+        The base is used here.
     metals : sequence of str, optional
         Columns of ``assays`` to join; all that are element columns by default.
 
@@ -82,7 +85,10 @@ def density_table(
         frame["assayed_m" if column == "shared_m" else column] = joined[column]
 
     given = {name: numbers(frame, f"{name}_density_tpm3") for name in ("wet", "dry", "grain")}
-    assumed = np.array([float((porosity or {}).get(str(name), np.nan)) for name in frame["domain"]])
+    base = {
+        str(name): three_values(f"porosity of {name}", value)[1] for name, value in (porosity or {}).items()
+    }
+    assumed = np.array([base.get(str(name), np.nan) for name in frame["domain"]], dtype=np.float64)
     dry, wet, grain, pores, dry_basis, wet_basis = _solve(
         frame, given, assumed, salinity_gkg, water, salt_tpm3, dry_contains_salt
     )

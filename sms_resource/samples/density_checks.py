@@ -6,10 +6,33 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.findings import Findings
-from sms_resource.samples.intervals import numbers
+from sms_resource.samples.intervals import names, numbers
 
 LIGHTEST_WET_TPM3 = 1.0
 HEAVIEST_TPM3 = 7.6
+# A density in use that is further than this from what was measured moves tonnes by more than most bodies can stand
+# (common practice, no source).
+FAR_FROM_MEASURED = 0.10
+LEAST_MEASURED = 3
+
+
+def measured_findings(by_domain: pd.DataFrame, measured: pd.DataFrame) -> Findings:
+    """Domains whose density in use is far from the mean of what was measured there; ``by_domain`` as of the model."""
+    findings = Findings()
+    domain, dry = names(measured["domain"]), numbers(measured, "dry_density_tpm3")
+    for row in by_domain.to_dict("records"):
+        own = dry[(domain == row["domain"]) & np.isfinite(dry)]
+        if len(own) < LEAST_MEASURED or not np.isfinite(row["dry_base"]):
+            continue
+        off = float(row["dry_base"]) / float(own.mean()) - 1.0
+        if abs(off) > FAR_FROM_MEASURED:
+            findings.warning(
+                "density-far",
+                f"Domain {row['domain']}: {row['dry_base']:.2f} t/m3 dry in use ({row['basis']}) is {100 * off:+.0f} % off "
+                f"the mean of the {len(own)} measured there, {own.mean():.2f}",
+                "Find out which is right: dry tonnes of the domain move by as much.",
+            )
+    return findings
 
 
 def density_findings(frame: pd.DataFrame) -> Findings:

@@ -44,3 +44,11 @@ def three_values(what: str, value: Any) -> Floats:
     if result.shape != (3,) or not np.all(np.isfinite(result)) or np.any(np.diff(result) < 0):
         raise ValueError(f"{what} must be a number or (low, base, high) in ascending order, not {value!r}")
     return result
+
+
+def density_row(name: str, dry: Floats, wet: Floats, n: int, basis: str) -> dict[str, object]:
+    """One row of the densities by domain, from dry and wet (low, base, high)."""
+    row: dict[str, object] = {"domain": name}
+    row.update({f"dry_{case}": float(v) for case, v in zip(CASES, dry)})
+    row.update({f"wet_{case}": float(v) for case, v in zip(CASES, wet)})
+    return {**row, "water_tpm3": float(wet[1] - dry[1]), "n": n, "basis": basis}

@@ -11,9 +11,22 @@ import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 
 from sms_resource.findings import Findings
-from sms_resource.samples.density_checks import density_findings
+from sms_resource.samples.density_checks import density_findings, measured_findings
 from sms_resource.samples.density_given import assigned_density, three_values
-from sms_resource.samples.density_regression import CASES, REGRESSORS, Case, Regression, fit_regression
+from sms_resource.samples.density_minerals import mineral_rows
+from sms_resource.samples.density_regression import (
+    CASES,
+    Case,
+    Regression,
+    fit_regression,
+    usable_predictors,
+)
+from sms_resource.samples.density_rows import (
+    assigned_row,
+    measured_row,
+    regression_row,
+    with_measured_water,
+)
 from sms_resource.samples.intervals import names, numbers
 from sms_resource.samples.mineralogy import NormSettings, norm
 from sms_resource.samples.moisture import PORE_WATER_TPM3, pore_water
@@ -25,7 +38,6 @@ COLUMNS = (
     "domain", "dry_low", "dry_base", "dry_high", "wet_low", "wet_base", "wet_high", "water_tpm3", "n", "basis",
 )  # fmt: skip
 FEW_DENSITIES = 10
-LEAST_FOR_OWN_MEAN = 3
 
 
 @dataclass(frozen=True)
@@ -88,7 +100,7 @@ class DensityModel:
             own = self.regression.predict(grades, case) * self.factor
             water = wet - dry
             # the line was seen in measured domains only
-            assigned = np.append((self.by_domain["basis"] == "assigned").to_numpy(), True)[at]
+            assigned = np.append(self.by_domain["basis"].str.startswith("assigned").to_numpy(), True)[at]
             use = np.isfinite(own) & (own > 0) & ~assigned
             return np.where(use, own, dry), np.where(use, own + water, wet)
         if self.porosity is not None:
@@ -162,14 +174,16 @@ def fit_density(
     metals : sequence of str, optional
         Grade columns that blocks will have; others are not used as predictors.
     predictors : sequence of str, optional
-        Grade columns of the regression; by default those of Cu, Zn and Fe that blocks have.
+        Grade columns of the regression; by default those of Cu, Zn and Fe that blocks have. One that is not among
+        ``metals`` is left out with a finding, since no block could use it.
     assigned_dry_tpm3 : mapping
         domain to a number, (low, base, high), or a mapping with dry (or dry_low, dry_base, dry_high) and porosity.
         With the other methods it serves domains without samples.
     porosity : mapping
         domain to a fraction or (low, base, high), for "mineralogy" and wherever the water is not measured.
     composites : DataFrame, optional
-        domain and element columns for the grain density of each domain under "mineralogy".
+        domain and element columns: the grain density of each domain under "mineralogy", its mean grades under
+        "regression".
     confidence : float
         Of the interval of low and high.
     salinity_gkg, pore_water_tpm3 : float
@@ -187,8 +201,9 @@ def fit_density(
     Notes
     -----
     "measured_mean": low and high are the t interval of the mean; a domain with fewer than 3 samples takes the mean of
-    all, with the spread of single samples as its interval. "regression": ordinary least squares with the interval of
-    its mean. Fewer than 10 samples in a domain are a finding.
+    all, with the spread of single samples as its interval. "regression": ordinary least squares over the densities of
+    ``domains`` with the interval of its mean; the row of a domain, which blocks without grades take, is the line at its
+    mean grades. Fewer than 10 samples in a domain are a finding.
     """
     if method not in ("measured_mean", "regression", "mineralogy", "assigned"):
         raise ValueError(
@@ -218,166 +233,34 @@ def fit_density(
     settings = norm_settings or NormSettings()
     fitted = pore_frame = None
     if method == "assigned":
-        rows = [_assigned_row(name, given.get(name), measured, findings) for name in wanted]
+        rows = [assigned_row(name, given.get(name), measured, findings) for name in wanted]
+        rows = [with_measured_water(row, measured, findings) for row in rows]
     elif method == "mineralogy":
-        rows, pore_frame = _mineral_rows(wanted, pores, given, composites, frame, water, settings, findings)
+        rows, pore_frame = mineral_rows(wanted, pores, given, composites, frame, water, settings, findings)
+        if metals is not None and not {"cu_pct", "fe_pct"} <= set(metals):
+            findings.note(
+                "density-by-domain",
+                "Blocks carry no Cu and Fe together, so each takes the density of its domain's mean mineralogy",
+                "Add both to metals.estimate to let density follow the grades of a block.",
+            )
     else:
         rows = [
-            _measured_row(
+            measured_row(
                 name, measured, given.get(name), pores.get(name), confidence, water, least_count, findings
             )
             for name in wanted
         ]
         if method == "regression":
-            known = [m for m in (metals if metals is not None else REGRESSORS) if m in REGRESSORS]
-            fitted = fit_regression(
-                measured, predictors if predictors is not None else known, confidence, findings
-            )
+            chosen = usable_predictors(predictors, metals, findings)
+            body = measured[np.isin(names(measured["domain"]), wanted)] if domains is not None else measured
+            fitted = fit_regression(body, chosen, confidence, findings)
+            if fitted is not None:
+                rows = [regression_row(row, fitted, composites) for row in rows]
     by_domain = pd.DataFrame(rows, columns=list(COLUMNS))
+    if method != "measured_mean":
+        findings.extend(measured_findings(by_domain, measured))
     for case in CASES:
         own = (factor - 1.0) * by_domain[f"dry_{case}"]
         by_domain[f"dry_{case}"] += own
         by_domain[f"wet_{case}"] += own
     return DensityModel(method, by_domain, findings, water, fitted, settings, pore_frame, factor)
-
-
-def _measured_row(
-    name: str,
-    measured: pd.DataFrame,
-    given: tuple[Floats, Floats] | None,
-    pores: Floats | None,
-    confidence: float,
-    water_density: float,
-    least_count: int,
-    findings: Findings,
-) -> dict[str, object]:
-    from scipy.special import stdtrit
-
-    dry_all, wet_all = numbers(measured, "dry_density_tpm3"), numbers(measured, "wet_density_tpm3")
-    own = names(measured["domain"]) == name
-    n = int(own.sum())
-    if n < LEAST_FOR_OWN_MEAN and given is not None:
-        findings.warning(
-            "density-assigned",
-            f"Domain {name} has {n} densities and takes the assigned one, {given[0][1]:.2f} t/m3 dry",
-            "Measure densities of this domain.",
-        )
-        return _row(name, given[0], given[1], n, "assigned")
-    use = own if n >= LEAST_FOR_OWN_MEAN else np.ones(len(measured), dtype=bool)
-    dry = dry_all[use]
-    if len(dry) == 0:
-        findings.error(
-            "density-unmeasured",
-            f"Domain {name} has no density and none is assigned",
-            "Measure it, or assign a dry density (low, base, high) in the study.",
-        )
-        return _row(name, np.full(3, np.nan), np.full(3, np.nan), 0, "none")
-    mean = float(dry.mean())
-    sd = float(dry.std(ddof=1)) if len(dry) > 1 else 0.1 * mean
-    t = float(stdtrit(max(len(dry) - 1, 1), 0.5 + confidence / 2))
-    if n >= LEAST_FOR_OWN_MEAN:
-        half, basis = t * sd / np.sqrt(len(dry)), f"mean of {n} measured"
-        if n < least_count:
-            findings.warning(
-                "density-few",
-                f"Domain {name} has only {n} densities: {mean:.2f} t/m3 dry, "
-                f"{mean - half:.2f} to {mean + half:.2f} at {100 * confidence:.0f} %",
-                "Low and high run through to the tonnes; measure more.",
-            )
-    else:
-        # a domain without samples of its own may lie anywhere among the single samples of the others
-        half, basis = t * sd * np.sqrt(1.0 + 1.0 / len(dry)), f"mean of all {len(dry)} measured"
-        findings.warning(
-            "density-unmeasured",
-            f"Domain {name} has {n} densities and takes the mean of all {len(dry)}, {mean:.2f} t/m3 dry, with a "
-            "wide interval",
-            "Measure densities of this domain, or assign one in the study.",
-        )
-    values = np.array([max(mean - half, 0.0), mean, mean + half])
-    pairs = use & np.isfinite(wet_all)
-    if pairs.any():
-        water = float((wet_all[pairs] - dry_all[pairs]).mean())
-    elif pores is not None:
-        water = float(pores[1]) * water_density
-    else:
-        water = np.nan
-        findings.warning(
-            "density-wet-only",
-            f"Domain {name} has dry densities only, so its wet density and wet tonnes are not known",
-            "Measure wet densities, or give the porosity of the domain.",
-        )
-    return _row(name, values, values + water, n, basis)
-
-
-def _assigned_row(
-    name: str,
-    given: tuple[Floats, Floats] | None,
-    measured: pd.DataFrame,
-    findings: Findings,
-) -> dict[str, object]:
-    n = int((names(measured["domain"]) == name).sum())
-    if given is None:
-        findings.error(
-            "density-unmeasured",
-            f"Domain {name} has no assigned density",
-            "Assign a dry density (low, base, high) in the study.",
-        )
-        return _row(name, np.full(3, np.nan), np.full(3, np.nan), n, "none")
-    findings.warning(
-        "density-assigned",
-        f"Domain {name}: {given[0][1]:.2f} t/m3 dry is assigned, {given[0][0]:.2f} to {given[0][2]:.2f}",
-        "An assigned density rests on no sample of this deposit.",
-    )
-    return _row(name, given[0], given[1], n, "assigned")
-
-
-def _mineral_rows(
-    wanted: Sequence[str],
-    pores: Mapping[str, Floats],
-    given: Mapping[str, tuple[Floats, Floats]],
-    grades: pd.DataFrame | None,
-    frame: pd.DataFrame,
-    water_density: float,
-    settings: NormSettings,
-    findings: Findings,
-) -> tuple[list[dict[str, object]], pd.DataFrame]:
-    source = grades if grades is not None else frame
-    known = source.loc[np.isfinite(numbers(source, "cu_pct")) & np.isfinite(numbers(source, "fe_pct"))]
-    minerals = norm(known, settings)
-    over = int((minerals["sum_pct"] > 102.0).sum())
-    if over:
-        findings.warning(
-            "norm-over-100",
-            f"In {over} of {len(known)} samples the norm needs more than the whole rock",
-            "Choose another copper mineral, or check the assays.",
-        )
-    grain_all = minerals["grain_density_tpm3"].to_numpy(np.float64)
-    domain = names(known["domain"]) if "domain" in known else np.full(len(known), "", dtype=object)
-    rows, table = [], []
-    for name in wanted:
-        here = grain_all[domain == name]
-        porosity = pores.get(name)
-        if porosity is None or (len(here) == 0 and len(grain_all) == 0):
-            if name in given:
-                rows.append(_row(name, *given[name], 0, "assigned"))
-            else:
-                findings.error(
-                    "density-unmeasured",
-                    f"Domain {name} has no porosity, or no assays with Cu and Fe, to make a density from minerals",
-                    "Give the porosity (low, base, high) of the domain in the study, or assign a density.",
-                )
-                rows.append(_row(name, np.full(3, np.nan), np.full(3, np.nan), 0, "none"))
-            table.append({"domain": name, "low": np.nan, "base": np.nan, "high": np.nan})
-            continue
-        grain = float(here.mean() if len(here) else grain_all.mean())
-        dry = grain * (1.0 - porosity[::-1])
-        rows.append(_row(name, dry, dry + porosity[::-1] * water_density, len(here), "minerals and porosity"))
-        table.append({"domain": name, "low": porosity[0], "base": porosity[1], "high": porosity[2]})
-    return rows, pd.DataFrame(table, columns=["domain", "low", "base", "high"])
-
-
-def _row(name: str, dry: Floats, wet: Floats, n: int, basis: str) -> dict[str, object]:
-    row: dict[str, object] = {"domain": name}
-    row.update({f"dry_{case}": float(v) for case, v in zip(CASES, dry)})
-    row.update({f"wet_{case}": float(v) for case, v in zip(CASES, wet)})
-    return {**row, "water_tpm3": float(wet[1] - dry[1]), "n": n, "basis": basis}

@@ -11,7 +11,8 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
-from sms_resource.samples.intervals import numbers
+from sms_resource.samples.intervals import names, numbers
+from sms_resource.units import column_element, element_label
 
 Floats = NDArray[np.float64]
 Case = Literal["low", "base", "high"]
@@ -35,9 +36,9 @@ class Regression:
 
     def statement(self) -> str:
         """The equation and its fit as text."""
-        terms = " ".join(f"{c:+.4f} {p}" for c, p in zip(self.coefficients[1:], self.predictors))
+        terms = " ".join(f"{c:+.4f} {_label(p)}" for c, p in zip(self.coefficients[1:], self.predictors))
         return (
-            f"dry density (t/m3) = {self.coefficients[0]:.3f} {terms}; n {self.count}, "
+            f"dry density (t/m3) = {self.coefficients[0]:.3f} {terms}; {self.count} pairs of density and assays, "
             f"R2 {self.r_squared:.2f}, residual SD {self.residual_sd:.3f} t/m3"
         )
 
@@ -56,6 +57,23 @@ class Regression:
         x = np.column_stack([numbers(grades, name) for name in self.predictors])
         with np.errstate(invalid="ignore"):
             return np.asarray(((x < self.least) | (x > self.greatest)).any(axis=1), dtype=bool)
+
+
+def usable_predictors(
+    predictors: Sequence[str] | None, blocks_have: Sequence[str] | None, findings: Findings
+) -> list[str]:
+    """Predictors that blocks can use, with a warning about those that are not estimated into them."""
+    if predictors is None:
+        return [name for name in REGRESSORS if blocks_have is None or name in blocks_have]
+    lost = [name for name in predictors if blocks_have is not None and name not in blocks_have]
+    if lost:
+        said = ", ".join(map(_label, lost))
+        findings.warning(
+            "density-predictor",
+            f"{said} cannot predict density: blocks do not carry it. The regression goes without",
+            "Add it to metals.estimate, or take it out of density.predictors.",
+        )
+    return [name for name in predictors if name not in lost]
 
 
 def fit_regression(
@@ -77,8 +95,8 @@ def fit_regression(
     if not predictors or freedom < 3 or np.linalg.matrix_rank(design) < design.shape[1]:
         findings.warning(
             "density-regression",
-            f"{len(y)} densities with {', '.join(predictors) or 'no predictor'} beside them are too few, or too "
-            "alike, for a regression; the means of the domains are used",
+            f"{len(y)} of {len(measured)} densities with {', '.join(map(_label, predictors)) or 'no predictor'} beside "
+            "them are too few, or too alike, for a regression; the means of the domains and their intervals are used",
             "Take fewer predictors, or the method measured_mean.",
         )
         return None
@@ -94,7 +112,19 @@ def fit_regression(
     weak = fitted.r_squared < 0.3
     (findings.warning if weak else findings.note)(
         "density-regression",
-        fitted.statement() + ("; grades explain little of it" if weak else ""),
+        f"{fitted.statement()}; pairs by domain: {_by_domain(measured.loc[use])}; low and high are its "
+        f"{100 * confidence:.0f} % interval" + ("; grades explain little of it" if weak else ""),
         "Compare with the means of the domains." if weak else "",
     )
     return fitted
+
+
+def _label(column: str) -> str:
+    return element_label(column) if column_element(column) else column
+
+
+def _by_domain(measured: pd.DataFrame) -> str:
+    if "domain" not in measured:
+        return f"all {len(measured)}"
+    found = pd.Series(names(measured["domain"]), dtype=object).value_counts().sort_index()
+    return ", ".join(f"{domain} {count}" for domain, count in found.items())

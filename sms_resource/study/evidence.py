@@ -256,7 +256,8 @@ class Density(Section):
         {}, 'Porosity by domain, or its low, base and high, for method = "mineralogy" and for wet density.'
     )
     predictors: tuple[str, ...] = key(
-        ("cu", "zn", "fe"), 'Elements of the regression, for method = "regression".'
+        ("cu", "zn", "fe"),
+        'Elements of the regression, for method = "regression"; only those that blocks carry can be used.',
     )
     copper_mineral: Literal["chalcopyrite", "bornite", "covellite", "chalcocite"] = key(
         "chalcopyrite", 'Mineral that holds the copper, for method = "mineralogy".'

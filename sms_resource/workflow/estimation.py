@@ -34,6 +34,7 @@ def estimate(context: Context) -> EstimateState:
     hoods = {domain: neighbourhoods(state, domain, config) for domain in config.domains.sulphide}
     grades, parts, details = krige_domains(state.samples, blocks, state, hoods, config, context.threads)
     frame = join_domains(blocks, grades, density, config)
+    context.findings.extend(density.model.extrapolation_findings(frame))
     metals = metal_columns(config)
     companions: dict[str, pd.DataFrame] = {}
     if config.kriging.estimator != "ordinary_kriging":

@@ -311,7 +311,7 @@ def density(context: Context) -> DensityState:
         table,
         choice.method,
         domains=config.domains.sulphide,
-        metals=all_columns(config),
+        metals=metal_columns(config),
         assigned_dry_tpm3=dict(choice.assigned_dry_tpm3) or None,
         porosity=dict(choice.porosity_fraction) or None,
         composites=evidence.composites[evidence.composites["domain"].isin(config.domains.sulphide)],

@@ -466,3 +466,83 @@ def test_wrong_predictions_name_themselves() -> None:
         model.predict(["massive"], case="best")  # type: ignore[arg-type]
     with pytest.raises(ValueError, match="rows"):
         model.predict(["massive"], many().iloc[:2])
+
+
+def test_a_predictor_that_blocks_do_not_carry_is_left_out_and_named() -> None:
+    table = many()
+    model = fit_density(
+        table, "regression", metals=["cu_pct", "zn_pct"], predictors=["cu_pct", "zn_pct", "fe_pct"]
+    )
+    assert codes(model.findings)[0] == "density-predictor"
+    assert model.regression is not None and model.regression.predictors == ("cu_pct", "zn_pct")
+    blocks = table[["cu_pct", "zn_pct"]].iloc[:3]
+    expected = model.regression.predict(blocks)
+    assert model.predict(["massive"] * 3, blocks)[0] == pytest.approx(expected)
+
+
+def test_the_row_of_a_domain_is_the_line_at_its_mean_grades_and_says_how_many_pairs() -> None:
+    table = many()
+    composites = pd.DataFrame(
+        {"domain": "massive", "cu_pct": [1.0, 4.0], "zn_pct": 1.0, "fe_pct": 25.0, "weight": [1.0, 3.0]}
+    )
+    model = fit_density(table, "regression", domains=["massive"], composites=composites)
+    assert model.regression is not None
+    mean = pd.DataFrame({"cu_pct": [0.25 * 1.0 + 0.75 * 4.0], "zn_pct": [1.0], "fe_pct": [25.0]})
+    row = model.by_domain.iloc[0]
+    for case in ("low", "base", "high"):
+        assert row[f"dry_{case}"] == pytest.approx(model.regression.predict(mean, case)[0])  # type: ignore[arg-type]
+    assert row["dry_low"] < row["dry_base"] < row["dry_high"]
+    said = next(item.message for item in model.findings if item.code == "density-regression")
+    assert f"pairs by domain: massive {len(table)}" in said and "90 % interval" in said
+
+
+def test_the_regression_takes_no_density_of_the_host_rock() -> None:
+    table = many()
+    host = table.assign(domain="waste", dry_density_tpm3=9.0)
+    both = pd.concat([table, host], ignore_index=True)
+    alone = fit_density(table, "regression", domains=["massive"]).regression
+    beside = fit_density(both, "regression", domains=["massive"]).regression
+    assert alone is not None and beside is not None
+    assert beside.coefficients == pytest.approx(alone.coefficients)
+
+
+def test_without_assays_the_regression_says_what_it_did_instead() -> None:
+    table = many().drop(columns=["cu_pct", "zn_pct", "fe_pct"])
+    model = fit_density(table, "regression", domains=["massive"], metals=["cu_pct"], predictors=["cu_pct"])
+    said = next(item for item in model.findings if item.code == "density-regression")
+    assert said.severity == "warning" and said.message.startswith(f"0 of {len(table)} densities with Cu (%)")
+    plain = fit_density(table, domains=["massive"]).by_domain
+    pd.testing.assert_frame_equal(model.by_domain, plain)
+
+
+def test_an_assigned_density_without_low_and_high_or_water_is_told() -> None:
+    dry_only = many().assign(wet_density_tpm3=np.nan)
+    model = fit_density(dry_only, "assigned", domains=["massive"], assigned_dry_tpm3={"massive": 3.0})
+    assert codes(model.findings) == ["density-assigned", "density-wet-only"]
+    assert "no doubt about it reaches the tonnes" in next(iter(model.findings)).message
+    measured = fit_density(many(), "assigned", domains=["massive"], assigned_dry_tpm3={"massive": 3.0})
+    assert measured.by_domain["wet_base"].iloc[0] == pytest.approx(3.15)  # the water that was measured
+
+
+def test_a_density_in_use_far_from_the_measured_mean_is_told() -> None:
+    far = fit_density(many(), "assigned", domains=["massive"], assigned_dry_tpm3={"massive": 2.0})
+    assert "density-far" in codes(far.findings)
+    near = float(many()["dry_density_tpm3"].mean())
+    close = fit_density(many(), "assigned", domains=["massive"], assigned_dry_tpm3={"massive": near})
+    assert "density-far" not in codes(close.findings)
+
+
+def test_a_porosity_with_low_and_high_makes_wet_density_dry_by_its_base() -> None:
+    frame = pd.DataFrame({"hole_id": ["1"], "from_m": [0.0], "to_m": [0.1], "wet_density_tpm3": [3.0]})
+    log = pd.DataFrame({"hole_id": ["1"], "from_m": [0.0], "to_m": [5.0], "domain": ["massive"]})
+    three = density_table(frame, None, log, porosity={"massive": (0.1, 0.2, 0.3)}, pore_water_tpm3=1.0)
+    assert three["dry_density_tpm3"].iloc[0] == pytest.approx(3.0 - 0.2)
+
+
+def test_minerals_do_not_count_as_measured_densities() -> None:
+    grades = pd.DataFrame({"domain": ["massive"] * 30, "cu_pct": 6.0, "fe_pct": 26.0})
+    model = fit_density(
+        many().iloc[:0], "mineralogy", domains=["massive"], porosity={"massive": 0.1}, composites=grades
+    )
+    assert model.by_domain["n"].iloc[0] == 0
+    assert "30 samples" in model.by_domain["basis"].iloc[0]
