@@ -181,14 +181,12 @@ def nearest_holes(data: ReportData) -> float:
     collars = data.evidence.collars
     if collars is None or len(collars) < 2:
         return float("nan")
-    from scipy.spatial import cKDTree
-
     places = collars[["easting", "northing"]].to_numpy(float)
     places = places[np.isfinite(places).all(axis=1)]
     if len(places) < 2:
         return float("nan")
-    distance, _ = cKDTree(places).query(places, k=2)
-    return float(np.median(distance[:, 1]))
+    nearest = [np.partition(np.hypot(*(places - place).T), 1)[1] for place in places]
+    return float(np.median(nearest))
 
 
 def spacing(data: ReportData) -> Answer:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from concurrent.futures import Future
 from pathlib import Path
 
 from sms_resource.reporting.checklist import write_checklist
@@ -12,7 +13,9 @@ from sms_resource.reporting.report import Report, make_report
 from sms_resource.reporting.workbook import write_workbook
 
 
-def write_pack(data: ReportData, folder: Path, report: Report | None = None) -> list[Path]:
+def write_pack(
+    data: ReportData, folder: Path, report: Report | None = None, pages: Future[Path] | None = None
+) -> list[Path]:
     """Write ``report.pdf``, ``workbook.xlsx``, ``checklist.md``, ``checklist.docx`` and ``method.md``.
 
     Parameters
@@ -22,6 +25,8 @@ def write_pack(data: ReportData, folder: Path, report: Report | None = None) -> 
         Output folder, made where it does not exist.
     report : Report, optional
         A report already made of the same data, so that nothing is drawn twice; made (and written) if not given.
+    pages : Future, optional
+        ``report.pdf``, where it is being set already.
 
     Returns
     -------
@@ -31,9 +36,10 @@ def write_pack(data: ReportData, folder: Path, report: Report | None = None) -> 
     folder = Path(folder)
     folder.mkdir(parents=True, exist_ok=True)
     made = report if report is not None else make_report(data, folder)
-    return [
-        write_pdf(made.document, made.pictures, folder / "report.pdf"),
+    others = [
         write_workbook(data, folder / "workbook.xlsx"),
         *write_checklist(data, folder),
         write_method(data, folder / "method.md"),
     ]
+    name = folder / "report.pdf"
+    return [write_pdf(made.document, made.pictures, name) if pages is None else pages.result(), *others]

@@ -7,6 +7,7 @@ import ctypes
 import os
 import shutil
 import sys
+from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 
 _AT_FDCWD = -100
@@ -100,7 +101,10 @@ def _exchange(one: Path, other: Path) -> bool:
 
 def _sync(folder: Path) -> None:
     """Ask the system to put every file of a folder on the disk."""
-    for path in folder.rglob("*"):
-        if path.is_file():
-            with contextlib.suppress(OSError), path.open("rb") as stream:
-                os.fsync(stream.fileno())
+    with ThreadPoolExecutor(8) as pool:  # a disk waits for many files no longer than for one
+        list(pool.map(_sync_file, [path for path in folder.rglob("*") if path.is_file()]))
+
+
+def _sync_file(path: Path) -> None:
+    with contextlib.suppress(OSError), path.open("rb") as stream:
+        os.fsync(stream.fileno())
