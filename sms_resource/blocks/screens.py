@@ -82,7 +82,7 @@ class ScreenResult:
         shares of one block add to 1.
     waterfall : DataFrame
         From the whole body to what remains, in the order of the screens: step, what, taken and remaining
-        volume_m3, dry_tonnes, and contained tonnes of each metal.
+        volume_m3, dry_tonnes, wet_tonnes where the model has them, and contained tonnes of each metal.
     columns : DataFrame
         One row a column of blocks: i, j, easting, northing, area_m2 (inside the outline), thickness_m,
         slope_deg, kept_share.
@@ -261,6 +261,8 @@ def _waterfall(
     tonnes = dry_tonnes(frame, density_column)
     if tonnes is not None:
         quantities["dry_tonnes"] = tonnes
+        if "wet_tonnes" in frame:
+            quantities["wet_tonnes"] = frame["wet_tonnes"].to_numpy(dtype=np.float64)
         for metal in metals:
             grade = frame[metal].to_numpy(dtype=np.float64)
             stem = metal.rpartition("_")[0]

@@ -80,10 +80,8 @@ def geometry_uncertainty(
         0.5 * (moved[0] - moved[1]) if moved else 0.0,
     ]
     together = math.sqrt(sum(term * term for term in terms))
-    rows.append(
-        ("together_high", "base, seafloor and outline, independent, one standard deviation", base + together)
-    )
-    rows.append(("together_low", "base, seafloor and outline, independent, one standard deviation",
+    rows.append(("together_high", "base, seafloor and outline together: thicker", base + together))
+    rows.append(("together_low", "base, seafloor and outline together: thinner",
                  max(base - together, 0.0)))  # fmt: skip
     frame = pd.DataFrame(rows, columns=["case", "what", "volume_m3"])
     frame["change_m3"] = frame["volume_m3"] - base

@@ -153,46 +153,6 @@ def mineable_shapes(
     )  # fmt: skip
 
 
-def skins(
-    frame: pd.DataFrame,
-    shape: Mask,
-    *,
-    block_size: tuple[float, float, float],
-    over_cut_m: float,
-    loss_m: float,
-    host_dry_density_tpm3: float,
-    host_wet_density_tpm3: float,
-    dry_tonnes: str = "dry_tonnes",
-    wet_tonnes: str = "wet_tonnes",
-) -> dict[str, float]:
-    """Dilution and loss of a shape as skins over the area of its floor: depth x area, not a flat percentage.
-
-    Host rock without metal is taken to ``over_cut_m`` below the floor where the shape ends at the base of the body;
-    ``loss_m`` of material stays behind over the whole floor, at the mean density of the shape.
-
-    Returns
-    -------
-    dict
-        floor_m2, diluted_floor_m2, dilution_dry_tonnes, dilution_wet_tonnes, loss_dry_tonnes, loss_wet_tonnes.
-    """
-    held = frame.loc[shape, ["i", "j", "k", "volume_m3", dry_tonnes, wet_tonnes]]
-    area = block_size[0] * block_size[1]
-    floor = held.groupby(["i", "j"], as_index=False)["k"].min()
-    base = frame.groupby(["i", "j"], as_index=False)["k"].min()
-    at_base = floor.merge(base, on=["i", "j", "k"])
-    floor_m2, diluted = area * len(floor), area * len(at_base)
-    volume = float(held["volume_m3"].sum())
-    dry, wet = (float(held[c].sum()) / volume if volume > 0 else 0.0 for c in (dry_tonnes, wet_tonnes))
-    return {
-        "floor_m2": floor_m2,
-        "diluted_floor_m2": diluted,
-        "dilution_dry_tonnes": diluted * over_cut_m * host_dry_density_tpm3,
-        "dilution_wet_tonnes": diluted * over_cut_m * host_wet_density_tpm3,
-        "loss_dry_tonnes": min(floor_m2 * loss_m, volume) * dry,
-        "loss_wet_tonnes": min(floor_m2 * loss_m, volume) * wet,
-    }
-
-
 class _Sums:
     """Tonnes, averages and must-take material of any mask over the blocks."""
 

@@ -149,11 +149,14 @@ def mining(data: ReportData) -> Answer:
         " untested at commercial scale."
     )
     if steps is not None and has(steps, "step", "dry_tonnes", "kind"):
-        taken = steps[steps["kind"].astype(str) != "total"]
+        taken = steps[steps["kind"].astype(str) == "taken"]
         said = "; ".join(
             f"{r['step']} {mass_text(abs(r['dry_tonnes']), 'dry')}" for r in taken.to_dict("records")
         )
         text += f" Screens in the study: {said or 'none'}."
+        skins = steps[steps["kind"].astype(str) == "skin"]
+        said = "; ".join(f"{r['step']} {mass_text(abs(r['dry_tonnes']), 'dry')}" for r in skins.to_dict("records"))
+        text += f" Loss and dilution in the study: {said or 'none'}."
     return PERSON, text
 
 

@@ -17,6 +17,8 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
+from sms_resource.reporting.data_evidence import Evidence
+from sms_resource.reporting.data_evidence import LaboratoryEvidence as LaboratoryEvidence
 
 Frame = pd.DataFrame
 
@@ -81,89 +83,6 @@ class Subject:
 
 
 @dataclass(frozen=True)
-class LaboratoryEvidence:
-    """Laboratory quality.
-
-    ``table`` : the long table of inserts as loaded: kind ("reference" | "blank" | "duplicate" | "check"), batch,
-    sequence, sample_id, original_sample_id, material, stage, element, value, expected, expected_sd.
-    ``verdicts`` : element, aspect ("references" | "blanks" | "duplicates" | "checks"), verdict ("good" |
-    "caution" | "failed" | "missing"), figures (text).
-    ``references``, ``blanks``, ``duplicates``, ``checks`` : the statistics, one row a material, stage or element.
-    ``pairs`` : stage, element, original, repeat (one row a duplicate pair), for the scatter.
-    """
-
-    table: Frame | None = None
-    verdicts: Frame | None = None
-    references: Frame | None = None
-    blanks: Frame | None = None
-    duplicates: Frame | None = None
-    checks: Frame | None = None
-    pairs: Frame | None = None
-
-
-@dataclass(frozen=True)
-class Evidence:
-    """Samples and what they are worth.
-
-    ``collars`` : hole_id, easting, northing, elevation, length_m, ended_in, position_method, position_sigma_m;
-    optional original_elevation, dz_m (collar minus seafloor before any shift), flagged, assumed_vertical (bool).
-    ``collar_shift_m`` : what was added to every collar (0 where nothing was).
-    ``sticks`` : hole_id, from_m, to_m, recovery_pct (0 = lost), domain, <metals>, x_from, y_from, z_from, x_to,
-    y_to, z_to; one row an interval (world coordinates, m).
-    ``runs`` : hole_id, from_m, to_m, recovered_length_m, recovery_pct. ``lithology`` : hole_id, from_m, to_m, code.
-    ``composites`` : hole_id, from_m, to_m, length_m, recovered_length_m, recovery_pct, domain, easting, northing,
-    elevation, <metals>, weight (declustering weight where there is one).
-    ``composite_audit`` : free columns (how intervals became composites); ``composite_rule`` : how, in words
-    (length, short rests, weighting).
-    ``surface`` : sample_id, sample_type, easting, northing, elevation, <metals>. ``surface_use`` : how the study
-    used them, in words; empty when they are kept out. ``dredges`` : as loaded.
-    ``surface_bias`` : metal, n, surface_mean, nearest_core_mean, top_metre_mean, ratio, ratio_low, ratio_high.
-    ``recovery_bias`` : domain, metal, n, spearman, p_value, verdict.
-    ``lost_core`` : treatment, <metals> (mean grade), optional domain, n, dry_tonnes, wet_tonnes.
-    ``lost_core_default`` : the treatment that the estimate uses.
-    ``densities`` : hole_id, domain, dry_density_tpm3, wet_density_tpm3 (one row a measurement).
-    ``density_by_domain`` : domain, dry_low, dry_base, dry_high, wet_base (t/m3), n, basis.
-    ``top_cuts`` : domain, metal, cut, n, n_cut, mean_before, mean_after, metal_removed_pct, reason.
-    ``assay_summary`` : free columns (below detection, over limit, blank, by element).
-    ``handheld_used`` : whether handheld readings entered the estimate.
-    ``contact_verdicts`` : contact, metal, n_first, n_second, mean_first, mean_second, ratio, p_value, verdict, reason.
-    ``deleterious`` : elements that are read and not estimated, with their statistics.
-    ``twins``, ``contact_analysis`` (distance_m, metal, mean, n, contact), ``associations``, ``lognormal``,
-    ``statistics`` : free columns, shown as tables. ``declustering_scan`` : cell_size_m, metal, mean.
-    """
-
-    collars: Frame | None = None
-    collar_shift_m: float | None = None
-    sticks: Frame | None = None
-    runs: Frame | None = None
-    lithology: Frame | None = None
-    composites: Frame | None = None
-    composite_audit: Frame | None = None
-    composite_rule: str = ""
-    surface: Frame | None = None
-    surface_use: str = ""
-    dredges: Frame | None = None
-    surface_bias: Frame | None = None
-    recovery_bias: Frame | None = None
-    lost_core: Frame | None = None
-    lost_core_default: str = "unknown"
-    densities: Frame | None = None
-    density_by_domain: Frame | None = None
-    top_cuts: Frame | None = None
-    assay_summary: Frame | None = None
-    handheld_used: bool = False
-    twins: Frame | None = None
-    contact_analysis: Frame | None = None
-    contact_verdicts: Frame | None = None
-    deleterious: Frame | None = None
-    associations: Frame | None = None
-    lognormal: Frame | None = None
-    statistics: Frame | None = None
-    declustering_scan: Frame | None = None
-    laboratory: LaboratoryEvidence = field(default_factory=LaboratoryEvidence)
-
-
-@dataclass(frozen=True)
 class BodyEvidence:
     """The body between seafloor and base.
 
@@ -175,8 +94,10 @@ class BodyEvidence:
     change_pct (optional wet_tonnes). ``grid_proposal`` : free columns (what is proposed and why).
     ``method`` : how the base was interpolated, in words. ``waterfall`` : step, dry_tonnes (what the step takes,
     negative, or what stands at "start" / "end"), kind ("total" | "taken"); optional <metals> (here contained metal
-    in tonnes).
-    ``sigma_seafloor_m`` : one sigma of the seafloor.
+    in tonnes); kinds "cut-off" and "skin" (loss, dilution) may follow the screens.
+    ``sigma_seafloor_m`` : one sigma of the seafloor. ``splits`` : "domain", "bench", "screen" -> table of tonnes with
+    that column beside proposed_class. ``skins`` : step, dry_tonnes, wet_tonnes, <metals> before and after loss and
+    dilution; ``skins_rule`` : depths and host, in words.
     """
 
     seafloor: Surface | None = None
@@ -194,6 +115,9 @@ class BodyEvidence:
     method: str = ""
     waterfall: Frame | None = None
     sigma_seafloor_m: float | None = None
+    splits: Mapping[str, Frame] | None = None
+    skins: Frame | None = None
+    skins_rule: str = ""
 
 
 @dataclass(frozen=True)
@@ -322,7 +246,8 @@ class ValueEvidence:
     recovery_basis, payable_pct, factor). ``cutoff_costs`` : item, value, unit, inside (which costs are inside).
     ``scenarios`` : scenario, dry_tonnes, <metals>, free columns (one row a scenario).
     ``tornado`` : decision, low_label, high_label, measure ("dry_tonnes" | a metal column | "<metal> content"),
-    low, base, high. ``heat_map`` : x, y, value columns with ``heat_map_labels`` = (x, y, value) axis labels.
+    low, base, high. ``heat_maps`` : one mapping for each grid of two keys: label, x and y (the keys), frame (x, y and
+    one column a measure, dry tonnes first, then a grade).
     """
 
     grade_tonnage: Frame | None = None
@@ -331,8 +256,7 @@ class ValueEvidence:
     cutoff_costs: Frame | None = None
     scenarios: Frame | None = None
     tornado: Frame | None = None
-    heat_map: Frame | None = None
-    heat_map_labels: tuple[str, str, str] = ("x", "y", "value")
+    heat_maps: tuple[Mapping[str, Any], ...] = ()
 
 
 @dataclass(frozen=True)

@@ -2,18 +2,22 @@
 
 from __future__ import annotations
 
-import math
+from typing import Any
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from sms_resource.reporting import style
 from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.elements import column_label
-from sms_resource.reporting.rounding import cutoff_phrase, mass_unit, significant_text
+from sms_resource.reporting.figures_scenarios import heat_map, tornado
+from sms_resource.reporting.rounding import mass_unit, significant_text
 from sms_resource.reporting.style import Drawing
 from sms_resource.reporting.tonnage import whole_domain
 from sms_resource.units import column_element, element_label
+
+__all__ = ["changes", "geometry", "grade_tonnage", "heat_map", "tornado", "waterfall"]
 
 
 def variable_label(variable: str) -> str:
@@ -130,7 +134,12 @@ def _waterfall(
         else np.array([total if i in (0, len(frame) - 1) else "step" for i in range(len(frame))])
     )
     unit, scale = mass_unit(float(np.nanmax(np.abs(values))) if len(values) else 1.0)
-    figure, axes = style.new_figure(8.6, 0.42 * len(frame) + 1.3)
+    metals = [metal for metal in data.subject.metals if metal in frame]
+    panels = 2 if metals else 1
+    figure, axes = style.new_figure(
+        8.6, 0.42 * len(frame) + (1.6 if metals else 1.3), 1, panels, sharey=True,
+        gridspec_kw={"width_ratios": [2.2, 1.0][:panels]},
+    )  # fmt: skip
     axis = axes[0, 0]
     level = 0.0
     for number, (value, kind, _step) in enumerate(zip(values, kinds, frame["step"].astype(str))):
@@ -156,7 +165,36 @@ def _waterfall(
     axis.set_xlabel(f"Dry tonnes ({unit} dry), {data.tally_label}")
     axis.margins(x=0.12)
     axis.set_xlim(left=0)
+    if metals:
+        _metal_left(axes[0, 1], frame, kinds == total, metals)
+        figure.legend(*axes[0, 1].get_legend_handles_labels(), loc="outside lower center", ncols=6)
     return Drawing(key, section, title, caption, f"Waterfall of dry tonnes: {title.lower()}.", figure, frame)
+
+
+def _metal_left(axis: Any, frame: pd.DataFrame, total: NDArray[np.bool_], metals: list[str]) -> None:
+    """Contained metal that is left after each step, in percent of that of the first row."""
+    place = np.arange(len(frame))[::-1]
+    for number, metal in enumerate(metals):
+        values = frame[metal].to_numpy(float)
+        left = np.empty(len(values))
+        for row, value in enumerate(values):
+            left[row] = value if total[row] or row == 0 else left[row - 1] + value
+        if not left[0] > 0:
+            continue
+        axis.plot(
+            100.0 * left / left[0], place, color=style.LINES[number % len(style.LINES)], lw=1.0,
+            marker="osD^v"[number % 5], ms=4.0, label=f"{element_label(metal).rpartition(' (')[0]} metal",
+        )  # fmt: skip
+    axis.set_xlabel("Contained metal left\n(% of the body)")
+    axis.margins(x=0.15)
+    axis.grid(axis="x", color="#e4e4e0", lw=0.6)
+    axis.tick_params(axis="y", length=0)
+
+
+def case_words(frame: pd.DataFrame) -> list[str]:
+    """What each case of the geometry moves, in words where the table has them."""
+    words = frame["what"] if "what" in frame else frame["case"].astype(str).str.replace("_", " ")
+    return [style.short(str(word), 62) for word in words]
 
 
 def signed(value: float) -> str:
@@ -175,7 +213,8 @@ def waterfall(data: ReportData) -> Drawing | None:
         "waterfall",
         "tonnes",
         "From the body to what the screens leave",
-        "Each bar is what a screen takes in dry tonnes; nothing is dropped in silence.",
+        "Each bar is what a screen takes in dry tonnes; nothing is dropped in silence. Where the study asks for them,"
+        " the cut-off, under-cut loss and over-cut dilution follow the screens.",
         "total",
     )
 
@@ -220,9 +259,9 @@ def geometry(data: ReportData) -> Drawing | None:
             fontsize=7,
         )
     axis.axvline(0, color=style.INK, lw=0.9)
-    axis.set_yticks(place, [style.short(case.replace("_", " ")) for case in frame["case"].astype(str)])
+    axis.set_yticks(place, case_words(frame))
     axis.set_xlabel("Change of dry tonnes of the body (%)")
-    axis.margins(x=0.18)
+    axis.margins(x=0.26)
     return Drawing(
         "geometry",
         "body",
@@ -232,121 +271,3 @@ def geometry(data: ReportData) -> Drawing | None:
         figure,
         frame,
     )
-
-
-def measure_label(measure: str) -> str:
-    """What a measure of a scenario is called on an axis."""
-    if measure in ("dry_tonnes", "wet_tonnes"):
-        return f"{measure.partition('_')[0].capitalize()} tonnes above cut-off"
-    return element_label(measure) if column_element(measure) else column_label(measure)
-
-
-def tornado(data: ReportData) -> Drawing | None:
-    """Ranked effect of each decision on dry tonnes, grade and metal, in percent of the base."""
-    frame = data.value.tornado
-    if frame is None or not has(frame, "decision", "measure", "low", "base", "high"):
-        return None
-    measures = list(dict.fromkeys(frame["measure"].astype(str)))[:3]
-    spread = frame.assign(size=((frame["high"] - frame["low"]).abs() / frame["base"].abs()).fillna(0.0))
-    names = (
-        spread.groupby("decision", sort=True)["size"]
-        .max()
-        .sort_values(ascending=False, kind="stable")
-        .index[:14]
-    )
-    figure, axes = style.new_figure(
-        3.1 * len(measures) + 2.0, 0.34 * len(names) + 1.2, 1, len(measures), sharey=True
-    )
-    for axis, measure in zip(axes[0], measures):
-        part = (
-            frame[frame["measure"] == measure]
-            .drop_duplicates("decision")
-            .set_index("decision")
-            .reindex(names)
-        )
-        for number, (_, row) in enumerate(part.iterrows()):
-            y = len(names) - 1 - number
-            if not math.isfinite(float(row["base"])) or not row["base"]:
-                continue
-            for side, colour, label in (("low", "#d9915b", "low_label"), ("high", "#6fa58f", "high_label")):
-                value = 100 * (float(row[side]) / float(row["base"]) - 1)
-                axis.barh(y, value, color=colour, height=0.62)
-                if label in row and isinstance(row[label], str):
-                    axis.annotate(
-                        row[label][:22],
-                        (value, y),
-                        xytext=(3 if value >= 0 else -3, 0),
-                        textcoords="offset points",
-                        va="center",
-                        ha="left" if value >= 0 else "right",
-                        fontsize=5.8,
-                    )
-        axis.axvline(0, color=style.INK, lw=0.9)
-        axis.set_xlabel(f"{measure_label(measure)}: change (%)")
-        axis.margins(x=0.3)
-    axes[0, 0].set_yticks(range(len(names)), [str(n).replace("_", " ")[:44] for n in names][::-1])
-    return Drawing(
-        "tornado",
-        "scenarios",
-        f"What moves the estimate ({data.tally_label})",
-        f"Each decision moved alone to its low (orange) and high (green) alternative; at {data.cutoff_text}.",
-        "Tornado of the effect of each decision.",
-        figure,
-        frame,
-    )
-
-
-def heat_map(data: ReportData) -> Drawing | None:
-    """A two-way grid of scenarios as a heat map with the numbers written in."""
-    frame = data.value.heat_map
-    if frame is None or not has(frame, "x", "y", "value"):
-        return None
-    grid = frame.pivot_table(index="y", columns="x", values="value", aggfunc="first")
-    labels = data.value.heat_map_labels
-    figure, axes = style.new_figure(
-        min(9.5, 0.85 * grid.shape[1] + 2.4), min(8.0, 0.48 * grid.shape[0] + 1.5)
-    )
-    axis = axes[0, 0]
-    values = grid.to_numpy(float)
-    scale, unit_note = 1.0, ""
-    if "tonnes" in labels[2].lower():
-        unit, scale = mass_unit(float(np.nanmax(values)))
-        unit_note = f" ({unit})"
-    image = axis.imshow(values / scale, origin="lower", aspect="auto", cmap=style.SURFACE_MAP)
-    middle = 0.5 * (np.nanmin(values) + np.nanmax(values))
-    if values.size <= 150:
-        for (row, column), value in np.ndenumerate(values):
-            if np.isfinite(value):
-                axis.text(
-                    column,
-                    row,
-                    significant_text(value / scale, 3),
-                    ha="center",
-                    va="center",
-                    fontsize=7,
-                    color="white" if value < middle else style.INK,
-                )
-    ticks = (
-        [(f"{v:g}" if isinstance(v, (int, float)) else str(v)) for v in grid.columns],
-        [(f"{v:g}" if isinstance(v, (int, float)) else str(v)) for v in grid.index],
-    )
-    axis.set_xticks(range(grid.shape[1]), ticks[0])
-    axis.set_yticks(range(grid.shape[0]), ticks[1])
-    axis.set_xlabel(labels[0])
-    axis.set_ylabel(labels[1])
-    figure.colorbar(image, ax=axis, label=f"{labels[2]}{unit_note}")
-    return Drawing(
-        "heat_map",
-        "scenarios",
-        f"{labels[2]} by {labels[0].lower()} and {labels[1].lower()} ({data.tally_label})",
-        "Each cell is one scenario run.",
-        "Heat map of a grid of scenarios.",
-        figure,
-        frame,
-    )
-
-
-def cutoff_words(data: ReportData) -> str:
-    """The study's cut-off as a phrase."""
-    given = data.subject.cutoff or {}
-    return cutoff_phrase(given.get("variable"), given.get("value"))

@@ -17,6 +17,7 @@ from sms_resource.reporting.elements import (
     with_table,
 )
 from sms_resource.reporting.rounding import mass_text
+from sms_resource.reporting.splits import skins_table, split_tables
 from sms_resource.reporting.summaries import checks_shown
 from sms_resource.reporting.tonnage import rows_at_cutoff, screens_table, tonnage_table
 from sms_resource.units import element_label
@@ -110,8 +111,10 @@ def tonnes(data: ReportData) -> list[Block]:
                 f"Connected shapes with their must-take material, at {data.cutoff_text} ({label})",
             )
         )
-    with_table(blocks, screens_table(data), f"What the screens take ({label})")
+    blocks += split_tables(data)
+    with_table(blocks, screens_table(data), f"From the body to what remains ({label})")
     blocks.append(Slot(("waterfall",)))
+    blocks += skins_table(data)
     return blocks
 
 
@@ -134,13 +137,13 @@ def scenarios(data: ReportData) -> list[Block]:
             Heading("Scenarios"),
             frame_table(v.scenarios, f"Scenarios at the study's cut-off ({data.tally_label})", most=40),
         ]
-    blocks.append(Slot(("tornado", "heat_map")))
+    blocks.append(Slot(("tornado", "heat_map*")))
     return (
         blocks
         if v.equivalent
         or v.cutoff_costs is not None
         or v.scenarios is not None
         or v.tornado is not None
-        or v.heat_map is not None
+        or v.heat_maps
         else []
     )

@@ -226,7 +226,31 @@ class Screens(Section):
     thickness_grade_of: str = key("cu", "Element of the thickness times grade.")
     least_patch_m2: float | None = key(None, "Least area of a connected patch.", ge=0)
     bench_m: float | None = key(
-        None, "Height of a bench of the mineable shape; that of a block if not given.", gt=0
+        None,
+        "Height of a bench, of the mineable shape and of the table by bench; that of a block if not given.",
+        gt=0,
+    )
+    over_cut_m: float = key(
+        0.0,
+        "Depth cut beyond what is taken, upright under the base and level beside it: dilution. 0 is none; 0.2 to 0.5 "
+        "is common practice.",
+        ge=0,
+        le=10,
+    )
+    under_cut_m: float = key(
+        0.0, "Depth left of what should be taken, on the same faces: loss. 0 is none.", ge=0, le=10
+    )
+    host_dry_density_tpm3: float | None = key(
+        None,
+        "Dry density of the rock that over-cutting takes; mean of what is measured outside the sulphide if not given.",
+        gt=0,
+        le=7.6,
+    )
+    host_wet_density_tpm3: float | None = key(
+        None, "Its wet density; mean of what is measured outside the sulphide if not given.", gt=0, le=7.6
+    )
+    host_grades: dict[str, float] = key(
+        {}, "Grade of each element in that rock, in the unit it is estimated in; none where not named."
     )
     exclude_status: tuple[str, ...] = key(
         ("active_vent", "set_aside", "preservation"), "Status of zones whose tonnes are excluded."

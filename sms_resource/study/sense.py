@@ -31,6 +31,7 @@ def _elements(config: Any) -> Iterator[Fault]:
         *((f"checks.warn_above.{name}", name) for name in config.checks.warn_above),
         *((f"checks.error_above.{name}", name) for name in config.checks.error_above),
         *((f"search.restrain_above.{name}", name) for name in config.search.restrain_above),
+        *((f"screens.host_grades.{name}", name) for name in config.screens.host_grades),
         *((f"composites.background.{name}", name)
           for name, value in config.composites.background.items() if not isinstance(value, dict)),
     ]  # fmt: skip
@@ -45,6 +46,20 @@ def _elements(config: Any) -> Iterator[Fault]:
             "screens.thickness_grade_of", f"'{screens.thickness_grade_of}' is not estimated",
             f"Name one of {', '.join(config.metals.estimate)}.",
         )  # fmt: skip
+    yield from _host(screens)
+
+
+def _host(screens: Any) -> Iterator[Fault]:
+    dry, wet = screens.host_dry_density_tpm3, screens.host_wet_density_tpm3
+    if dry is not None and wet is not None and wet < dry:
+        yield (
+            "screens.host_wet_density_tpm3",
+            f"{wet!r} t/m³ wet is under {dry!r} t/m³ dry",
+            "Give both of the same rock.",
+        )
+    for name, grade in screens.host_grades.items():
+        if not grade >= 0:
+            yield f"screens.host_grades.{name}", f"a grade of {grade!r}", "A grade is at least 0."
 
 
 def _domains(config: Any) -> Iterator[Fault]:

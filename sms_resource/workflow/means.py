@@ -9,16 +9,40 @@ import pandas as pd
 
 
 def waterfall_rows(table: pd.DataFrame, metals: list[str]) -> pd.DataFrame:
-    """Screens as totals and what each takes (negative), dry tonnes and contained metal in tonnes."""
+    """Waterfall in the report's form: totals, and what each step takes (negative) or adds.
+
+    Returns
+    -------
+    DataFrame
+        step, kind ("total", "taken" by a screen, "cut-off", "skin"), dry_tonnes, wet_tonnes, and contained metal in
+        tonnes under each metal's name.
+    """
+    totals = ("body", "remains", "above_cutoff", "delivered")
+    kinds = {"below_cutoff": "cut-off", "loss": "skin", "dilution": "skin"}
     rows = []
-    last = len(table) - 1
-    for number, row in enumerate(table.to_dict("records")):
-        total = number in (0, last)
-        sign, kind = (1.0, "remaining") if total else (-1.0, "taken")
-        content = {metal: sign * row[f"{kind}_{metal.partition('_')[0]}_contained_t"] for metal in metals}
-        rows.append({"step": row["what"], "kind": "total" if total else "taken",
-                     "dry_tonnes": sign * row[f"{kind}_dry_tonnes"], **content})  # fmt: skip
+    for row in table.to_dict("records"):
+        total = row["step"] in totals
+        sign, of = (1.0, "remaining") if total else (-1.0, "taken")
+        kind = "total" if total else kinds.get(row["step"], "taken")
+        masses = {
+            name: sign * row[f"{of}_{name}"] for name in ("dry_tonnes", "wet_tonnes") if f"{of}_{name}" in row
+        }
+        content = {metal: sign * row[f"{of}_{metal.partition('_')[0]}_contained_t"] for metal in metals}
+        rows.append({"step": row["what"], "kind": kind, **masses, **content})
     return pd.DataFrame(rows)
+
+
+def skins_rule(screens: Any, host: dict[str, float] | None) -> str:
+    """Depths of loss and dilution and the host rock, in words; empty where there are none."""
+    if host is None:
+        return ""
+    return (
+        f"Under-cut {screens.under_cut_m:g} m, over-cut {screens.over_cut_m:g} m, times the area of the faces between "
+        "what is above the cut-off and what is not (floor, sides, and roof under material left on top; not the "
+        "seafloor). Over-cutting takes what is there: sulphide under the cut-off or in a screen with its own grade, "
+        f"beyond the body host rock of {host['dry_density_tpm3']:.3g} t/m³ dry and {host['wet_density_tpm3']:.3g} t/m³ "
+        "wet" + (" with the grades of the study." if screens.host_grades else " without metal.")
+    )
 
 
 def neighbourhood_rows(table: pd.DataFrame) -> pd.DataFrame:
@@ -50,7 +74,7 @@ def named_axis(swaths: pd.DataFrame, frame: str) -> pd.DataFrame:
 def mean_rows(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
     """Plain, declustered and block means by metal and domain; the plain mean of everything, surface included."""
     samples = done["variograms"].samples
-    frame = done["classify"].frame
+    frame = done["classify"].frame[["domain", "dry_tonnes", *metals]]
     surface = done["composite"].surface
     rows = []
     for metal in metals:
@@ -89,8 +113,8 @@ def support_rows(curves: pd.DataFrame, done: dict[str, Any], config: Any) -> pd.
     """Share of dry tonnes and grade above cut-offs: blocks as estimated against the models of change of support."""
     if not len(curves):
         return pd.DataFrame(columns=["metal", "cutoff", "support", "proportion", "grade"])
-    frame = done["classify"].frame
     metal = str(curves["metal"].iloc[0])
+    frame = done["classify"].frame[["domain", "dry_tonnes", metal]]
     rows = []
     domains = curves["domain"].unique()
     inside = frame[frame["domain"].isin(domains) & frame[metal].notna()]

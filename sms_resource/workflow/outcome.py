@@ -8,8 +8,10 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.units import element_column
+from sms_resource.workflow.cheap import cutoff_column
 from sms_resource.workflow.evidence import metal_columns
-from sms_resource.workflow.screening import kept, screened
+from sms_resource.workflow.screening import kept, on_to_delivery, screened, skinned
+from sms_resource.workflow.splits import split_tables
 from sms_resource.workflow.stage import Context, StageStop
 from sms_resource.workflow.state import (
     BlockState,
@@ -50,7 +52,7 @@ def classify(context: Context) -> ClassState:
     context.findings.extend(proposal.findings)
     frame["proposed_class"] = proposal.classes
     frame["class_reasons"] = proposal.block_reasons
-    frame, waterfall = screened(context, frame, metals)
+    frame, waterfall, marks = screened(context, frame, metals)
     frame, value_tables, value_facts = valued(context, frame)
     variable, at = cutoff_column(config), config.cutoff.at
     if variable not in frame or not frame[variable].notna().any():
@@ -65,9 +67,18 @@ def classify(context: Context) -> ClassState:
     tonnage = grade_tonnage(
         left, metals=metals, cutoff_variable=variable, cutoffs=steps, groups=("proposed_class",)
     )
-    by_domain = grade_tonnage(
-        left, metals=metals, cutoff_variable=variable, cutoffs=steps, groups=("proposed_class", "domain")
+    split = split_tables(
+        frame,
+        marks,
+        blocks.model,
+        variable=variable,
+        at=at,
+        steps=steps,
+        metals=metals,
+        bench_m=config.screens.bench_m,
     )
+    skins, skin_facts = skinned(context, frame, variable, at, metals)
+    waterfall = on_to_delivery(waterfall, skins, variable, at)
     above = left[left[variable] >= at]
     shape = shapes(frame, blocks, variable, at, metals, config)
     context.detail = (
@@ -79,12 +90,13 @@ def classify(context: Context) -> ClassState:
         smoothing=proposal.before_after,
         waterfall=waterfall,
         grade_tonnage=tonnage,
-        facts={"tally_label": proposal.tally_label, "cutoff_variable": variable, **value_facts},
+        facts={"tally_label": proposal.tally_label, "cutoff_variable": variable, **skin_facts, **value_facts},
         tables={
             "overrides": proposal.overrides,
             "class_summary": proposal.summary,
             "moved": proposal.moved,
-            "grade_tonnage_by_domain": by_domain,
+            **split,
+            **({} if skins is None else {"dilution_and_loss": skins}),
             "mineable_shape": shape,
             **value_tables,
         },
@@ -144,12 +156,6 @@ def shapes(
         allowed=(frame["kept_share"] > 0.5).to_numpy(),
     )
     return made.table
-
-
-def cutoff_column(config: Any) -> str:
-    """Block column that the cut-off is on."""
-    special = {"equivalent": "equivalent", "value": "value_per_dry_tonne"}
-    return special.get(config.cutoff.variable) or element_column(config.cutoff.variable)
 
 
 def class_columns(judged: str) -> Any:

@@ -4,16 +4,22 @@ from __future__ import annotations
 
 import json
 import time
+from concurrent.futures import Executor, ThreadPoolExecutor
 from pathlib import Path
 from typing import Any
 
 import pandas as pd
 
 from sms_resource.findings import Findings
+from sms_resource.reporting.data import ReportData
+from sms_resource.reporting.pack import write_pack
+from sms_resource.reporting.pdf import write_pdf
+from sms_resource.reporting.report import Report, make_report
 from sms_resource.study import Study, decisions
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.layers import write_layers
 from sms_resource.workflow.manifest import versions, write_manifest
+from sms_resource.workflow.splits import write_splits
 from sms_resource.workflow.stage import Outcome, Progress, StageCache, StageRecord, code_fingerprint
 from sms_resource.workflow.state import ClassState
 from sms_resource.workflow.summary import Summary, summarise
@@ -49,11 +55,15 @@ def write_results(
         progress.started("report", "Writing the report")
     begun = time.perf_counter()
     done = outcome.done
-    write_tables(folder, study, done, outcome.findings)
-    write_layers(folder / "layers", study, done)
     ledger = ledger_table(study, extra)
-    ledger.to_csv(folder / "decisions.csv", index=False)
-    files = write_report_files(folder, study, outcome, inputs, ledger, extra, store)
+    data, report = write_report(folder, study, outcome, inputs, ledger, extra, store)
+    with ThreadPoolExecutor(2) as pool:
+        # Pages are set by a library that leaves this interpreter free, so the tables are written meanwhile.
+        pages = pool.submit(write_pdf, report.document, report.pictures, folder / "report.pdf")
+        write_tables(folder, study, done, outcome.findings, pool)
+        write_layers(folder / "layers", study, done)
+        ledger.to_csv(folder / "decisions.csv", index=False)
+        files = [*report.paths, *write_pack(data, folder, report, pages)]
     if extra and extra.get("scenarios") is not None:
         extra["scenarios"].to_csv(folder / "scenarios.csv", index=False)
     seconds = time.perf_counter() - begun
@@ -83,13 +93,16 @@ def block_columns(frame: pd.DataFrame, metals: list[str]) -> list[str]:
     return head + [name for name in frame.columns if name not in head]
 
 
-def write_tables(folder: Path, study: Study, done: dict[str, Any], findings: Findings) -> None:
-    """Block model, grade-tonnage, composites, variograms, validation and findings."""
+def write_tables(
+    folder: Path, study: Study, done: dict[str, Any], findings: Findings, pool: Executor
+) -> None:
+    """Block model (by a thread of the pool), grade-tonnage, composites, variograms, validation and findings."""
     metals = metal_columns(study.config)
     state: ClassState = done["classify"]
     frame = state.frame[block_columns(state.frame, metals)]
-    frame.to_parquet(folder / "block_model.parquet", index=False, compression="zstd")
+    blocks = pool.submit(frame.to_parquet, folder / "block_model.parquet", index=False, compression="zstd")
     state.grade_tonnage.to_csv(folder / "grade_tonnage.csv", index=False)
+    write_splits(folder, state.tables)
     composites = done["composite"].composites
     weights = done["variograms"].samples.set_index("composite_id")["declustering_weight"]
     composites = composites.assign(declustering_weight=composites["composite_id"].map(weights))
@@ -101,6 +114,7 @@ def write_tables(folder: Path, study: Study, done: dict[str, Any], findings: Fin
     write_json(folder / "variograms.json", records)
     done["validate"].table.to_csv(folder / "validation.csv", index=False)
     write_json(folder / "findings.json", findings.to_records())
+    blocks.result()
 
 
 def write_json(path: Path, content: Any) -> None:
@@ -130,7 +144,7 @@ def ledger_table(study: Study, extra: dict[str, Any] | None = None) -> pd.DataFr
     return pd.DataFrame(rows)
 
 
-def write_report_files(
+def write_report(
     folder: Path,
     study: Study,
     outcome: Outcome,
@@ -138,10 +152,8 @@ def write_report_files(
     ledger: pd.DataFrame,
     extra: dict[str, Any] | None,
     store: StageCache | None = None,
-) -> list[Path]:
-    """The report, its figures and the pack that a CP takes away."""
-    from sms_resource.reporting.pack import write_pack
-    from sms_resource.reporting.report import make_report
+) -> tuple[ReportData, Report]:
+    """Write report.html and its figures; return what they are made from, and the report."""
     from sms_resource.workflow.report_data import report_data
     from sms_resource.workflow.truth import truth_page
 
@@ -152,5 +164,4 @@ def write_report_files(
     }
     truth = truth_page(study, outcome.done)
     data = report_data(study, outcome.done, outcome.findings, ledger, manifest, truth, extra)
-    report = make_report(data, folder, store, code_fingerprint())
-    return [*report.paths, *write_pack(data, folder, report)]
+    return data, make_report(data, folder, store, code_fingerprint())

@@ -20,6 +20,7 @@ from sms_resource.reporting.data import (
     ValueEvidence,
     VariogramRecord,
 )
+from sms_resource.samples.topcut_tables import cut_summary
 from sms_resource.study import Study
 from sms_resource.units import element_column
 from sms_resource.workflow.estimation import search_text
@@ -30,6 +31,7 @@ from sms_resource.workflow.means import (
     named_axis,
     neighbourhood_rows,
     recommendation,
+    skins_rule,
     support_rows,
     waterfall_rows,
 )
@@ -44,6 +46,11 @@ from sms_resource.workflow.state import (
     VariogramState,
 )
 
+WEIGHTINGS = {
+    "recovered_length": "recovered length",
+    "length": "length",
+    "recovered_length_density": "recovered length times density",
+}
 DELETERIOUS = ("as", "hg", "sb", "pb")
 
 
@@ -145,14 +152,14 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
     weights = variograms.samples.set_index("composite_id")["declustering_weight"]
     sulphide = one_domain(config.domains).sulphide
     composites = evidence.composites[evidence.composites["domain"].isin(sulphide)]
-    composites = composites.assign(weight=composites["composite_id"].map(weights))
     return Evidence(
         collars=collars,
         collar_shift_m=evidence.facts["collar_shift_m"],
         sticks=evidence.sticks,
         runs=data.drill.runs,
         lithology=data.drill.lithology,
-        composites=composites,
+        composites=composites.assign(weight=composites["composite_id"].map(weights)),
+        weighting=WEIGHTINGS[config.composites.weighting],
         composite_audit=tables["composite_audit"],
         composite_rule=composite_rule(config),
         surface=evidence.surface,
@@ -164,10 +171,19 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
         lost_core_default=config.composites.lost_core,
         densities=density.table,
         density_by_domain=density.by_domain,
-        top_cuts=variograms.cuts if len(variograms.cuts) else tables["top_cut_study"],
+        top_cuts=cut_summary(composites, tables["top_cut_study"], variograms.cuts),
+        top_cut_curves=tables["top_cut_curves"],
         assay_summary=tables["assay_summary"],
         handheld_used=bool(evidence.facts["handheld_used"]),
         twins=tables["twins"],
+        twin_pairs=tables["twin_pairs"],
+        twin_clusters=tables["twin_clusters"],
+        positions=tables["positions"],
+        collar_match=tables["collar_match"],
+        hole_ends=tables["hole_ends"],
+        dredge_tracks=tables.get("dredge_tracks"),
+        tracers=tables.get("tracers"),
+        lost_core_composites=tables["lost_core"],
         contact_analysis=tables.get("contact_analysis"),
         contact_verdicts=tables.get("contact_verdicts"),
         deleterious=tables.get("deleterious"),
@@ -183,6 +199,7 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
             duplicates=laboratory.duplicates,
             checks=laboratory.checks,
             pairs=laboratory.duplicate_pairs,
+            check_pairs=laboratory.check_pairs,
         ),
     )
 
@@ -224,6 +241,11 @@ def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
         }[config.body.method],
         waterfall=waterfall_rows(done["classify"].waterfall, metal_columns(config)),
         sigma_seafloor_m=config.seafloor.sigma_m,
+        splits={
+            name: done["classify"].tables[f"grade_tonnage_by_{name}"] for name in ("domain", "bench", "screen")
+        },
+        skins=done["classify"].tables.get("dilution_and_loss"),
+        skins_rule=skins_rule(config.screens, done["classify"].facts.get("host")),
     )
 
 
@@ -311,8 +333,7 @@ def _value(done: dict[str, Any], extra: dict[str, Any]) -> ValueEvidence:
         cutoff_costs=costs,
         scenarios=extra.get("scenarios"),
         tornado=extra.get("tornado"),
-        heat_map=extra.get("heat_map"),
-        heat_map_labels=extra.get("heat_map_labels", ("x", "y", "value")),
+        heat_maps=tuple(extra.get("heat_maps", ())),
     )
 
 

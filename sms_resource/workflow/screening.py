@@ -1,14 +1,27 @@
-"""What practice takes from the body, block by block and as a waterfall."""
+"""What practice takes from the body: screens block by block, then over-cut and under-cut, as one waterfall."""
 
 from __future__ import annotations
 
+from typing import Any
+
+import numpy as np
 import pandas as pd
 
-from sms_resource.units import element_column
-from sms_resource.workflow.stage import Context
+from sms_resource.units import column_element, element_column, element_label
+from sms_resource.workflow.stage import Context, StageStop
+from sms_resource.workflow.state import DensityState
+
+SKIN_STEPS = {
+    "cut": "above the cut-off",
+    "loss": "under-cut loss",
+    "dilution": "over-cut dilution",
+    "delivered": "after loss and dilution",
+}
 
 
-def screened(context: Context, frame: pd.DataFrame, metals: list[str]) -> tuple[pd.DataFrame, pd.DataFrame]:
+def screened(
+    context: Context, frame: pd.DataFrame, metals: list[str]
+) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]:
     """Mark what the screens take of each block.
 
     Returns
@@ -17,6 +30,8 @@ def screened(context: Context, frame: pd.DataFrame, metals: list[str]) -> tuple[
         With ``kept_share`` (of the block's volume in the body) and ``screened_by``.
     waterfall : DataFrame
         From the whole body to what remains.
+    marks : DataFrame
+        kept_share and the share that each screen takes of each block, in its order.
     """
     from sms_resource.blocks.screens import ScreenSettings, apply_screens
 
@@ -44,6 +59,7 @@ def screened(context: Context, frame: pd.DataFrame, metals: list[str]) -> tuple[
     return (
         frame.assign(kept_share=marks["kept_share"].to_numpy(), screened_by=marks["screened_by"].to_numpy()),
         found.waterfall,
+        marks,
     )
 
 
@@ -56,3 +72,116 @@ def kept(frame: pd.DataFrame) -> pd.DataFrame:
         dry_tonnes=left["dry_tonnes"] * share,
         wet_tonnes=left["wet_tonnes"] * share,
     )
+
+
+def skinned(
+    context: Context, frame: pd.DataFrame, variable: str, at: float, metals: list[str]
+) -> tuple[pd.DataFrame | None, dict[str, Any]]:
+    """What is above the cut-off before and after under-cut loss and over-cut dilution; None where neither is asked for.
+
+    Returns
+    -------
+    table : DataFrame or None
+        step ("above the cut-off", "under-cut loss", "over-cut dilution", "after loss and dilution"), volume_m3,
+        dry_tonnes, wet_tonnes, and each metal's grade and contained tonnes.
+    facts : dict
+        "host": the densities of the host rock; empty without a table.
+    """
+    from sms_resource.blocks.skins import skins
+
+    choice = context.config.screens
+    if not (choice.over_cut_m > 0 or choice.under_cut_m > 0):
+        return None, {}
+    host = host_rock(context)
+    above = (frame[variable] >= at).to_numpy()
+    made = skins(
+        context.done["blocks"].model.with_frame(frame),
+        context.done["body"].body,
+        np.where(above, frame["kept_share"].to_numpy(), 0.0),
+        host=host,
+        over_cut_m=choice.over_cut_m,
+        under_cut_m=choice.under_cut_m,
+        metals=metals,
+    )
+    densities = {"dry_density_tpm3": host.dry_density_tpm3, "wet_density_tpm3": host.wet_density_tpm3}
+    return made.table.assign(step=made.table["step"].map(SKIN_STEPS)), {"host": densities}
+
+
+def host_rock(context: Context) -> Any:
+    """What over-cutting takes outside the body: as the study says, else as it is measured outside the sulphide."""
+    from sms_resource.blocks.skins import Host
+
+    choice = context.config.screens
+    state: DensityState = context.done["density"]
+    table = state.table
+    outside = table[~table["domain"].isin(context.config.domains.sulphide)]
+    found = {}
+    for basis in ("dry", "wet"):
+        name = f"{basis}_density_tpm3"
+        stated = getattr(choice, f"host_{name}")
+        measured = outside[name].dropna() if name in outside else pd.Series(dtype=float)
+        found[name] = float(stated if stated is not None else measured.mean())
+        if np.isnan(found[name]):
+            context.findings.error(
+                "host-density", f"the {basis} density of the rock that over-cutting takes is not known",
+                f"Give screens.host_{name}: no density is measured outside the sulphide.",
+                file=context.study.path.name, column=f"screens.host_{name}",
+            )  # fmt: skip
+        elif stated is None and choice.over_cut_m > 0:
+            context.findings.note(
+                "host-density-measured",
+                f"the {basis} density of the rock that over-cutting takes is the mean of {len(measured)} measurements "
+                f"outside the sulphide: {found[name]:.3g} t/m³",
+                f"Give screens.host_{name} if the rock under the base is another.",
+                file=context.study.path.name, column=f"screens.host_{name}",
+            )  # fmt: skip
+    if any(np.isnan(value) for value in found.values()):
+        raise StageStop
+    if found["wet_density_tpm3"] < found["dry_density_tpm3"]:
+        context.findings.error(
+            "host-density", "the rock that over-cutting takes would be lighter wet than dry: "
+            f"{found['wet_density_tpm3']:.3g} and {found['dry_density_tpm3']:.3g} t/m³",
+            "Give both screens.host_dry_density_tpm3 and screens.host_wet_density_tpm3.",
+            file=context.study.path.name, column="screens.host_wet_density_tpm3",
+        )  # fmt: skip
+        raise StageStop
+    grades = {element_column(name): grade for name, grade in choice.host_grades.items()}
+    return Host(found["dry_density_tpm3"], found["wet_density_tpm3"], grades)
+
+
+def on_to_delivery(
+    waterfall: pd.DataFrame, skins: pd.DataFrame | None, variable: str, at: float
+) -> pd.DataFrame:
+    """Go on from what no screen takes: the cut-off, then loss and dilution where the study asks for them.
+
+    Parameters
+    ----------
+    waterfall : DataFrame
+        Of the screens; taken and remaining quantities.
+    skins : DataFrame or None
+        Of :func:`skinned`.
+    variable, at
+        Column and value of the cut-off.
+    """
+    if skins is None:
+        return waterfall
+    named = element_label(variable) if column_element(variable) else variable.replace("_", " ")
+    names = [str(name) for name in waterfall.columns]
+    quantities = [name.removeprefix("taken_") for name in names if name.startswith("taken_")]
+    left = {name: float(waterfall[f"remaining_{name}"].iloc[-1]) for name in quantities}
+    steps = skins.set_index("step")[quantities]
+    above = steps.loc[SKIN_STEPS["cut"]].to_dict()
+    taken = {
+        ("below_cutoff", "below the cut-off"): {name: left[name] - above[name] for name in quantities},
+        ("above_cutoff", f"above the cut-off ({named} ≥ {at:g})"): None,
+        ("loss", SKIN_STEPS["loss"]): steps.loc[SKIN_STEPS["loss"]].to_dict(),
+        ("dilution", SKIN_STEPS["dilution"]): (-steps.loc[SKIN_STEPS["dilution"]]).to_dict(),
+        ("delivered", SKIN_STEPS["delivered"]): None,
+    }
+    rows = []
+    for (step, what), amount in taken.items():
+        amount = amount or dict.fromkeys(quantities, 0.0)
+        left = {name: left[name] - amount[name] for name in quantities}
+        rows.append({"step": step, "what": what} | {f"taken_{name}": amount[name] for name in quantities}
+                    | {f"remaining_{name}": left[name] for name in quantities})  # fmt: skip
+    return pd.concat([waterfall, pd.DataFrame(rows)], ignore_index=True)

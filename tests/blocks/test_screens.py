@@ -9,11 +9,12 @@ import pandas as pd
 import pytest
 import shapely
 
+from sms_resource.blocks.benches import bench_parts, benches
 from sms_resource.blocks.body import Body, build_body
 from sms_resource.blocks.grid import BlockGrid, SurfaceGrid
 from sms_resource.blocks.model import BlockModel, fill_blocks, propose_grid
 from sms_resource.blocks.screens import ScreenSettings, apply_screens
-from sms_resource.blocks.skins import benches, skins
+from sms_resource.blocks.skins import Host, skins
 from sms_resource.blocks.uncertainty import geometry_uncertainty
 from tests.blocks.mounds import invent_mound
 from tests.blocks.solids import NO_CONTACTS
@@ -178,48 +179,115 @@ def test_benches_sum_to_the_blocks(mound: tuple[Body, BlockModel]) -> None:
             (tonnes * frame["cu_pct"]).sum() / 100, rel=1e-9
         )
         assert (np.diff(table["floor_elevation"]) < 0).all()
+        parts = bench_parts(model, height_m=height, floor_m=floor)
+        np.testing.assert_allclose(parts.groupby("row")["share"].sum(), np.ones(len(frame)), rtol=1e-12)
     by_block = benches(model)
     np.testing.assert_allclose(by_block["volume_m3"], frame.groupby("k")["volume_m3"].sum()[::-1], rtol=1e-12)
     with pytest.raises(ValueError, match="height_m"):
         benches(model, height_m=0)
+    none = model.with_frame(frame.iloc[:0])
+    assert len(benches(none, metals=["cu_pct"])) == 0
+
+
+def test_benches_tell_wet_tonnes_and_grades_of_what_is_known(slab: tuple[Body, BlockModel]) -> None:
+    _, model = slab
+    upper = (model.frame["k"] == 1).to_numpy()
+    dry = 3.0 * model.frame["volume_m3"]
+    frame = model.frame.assign(wet_tonnes=1.1 * dry, cu_pct=np.where(upper, 6.0, np.nan))
+    table = benches(model.with_frame(frame), height_m=4.0, metals=["cu_pct"])
+    assert table[["floor_elevation", "roof_elevation"]].to_numpy().tolist() == [[-1504.0, -1500.0]]
+    assert table["wet_tonnes"].iloc[0] == pytest.approx(1.1 * 28_800)
+    assert table["cu_pct"].iloc[0] == pytest.approx(6.0)  # the lower half has no grade, which is not zero
+    assert table["cu_contained_t"].iloc[0] == pytest.approx(14_400 * 0.06)
 
 
 def test_skins_of_a_slab_by_hand(slab: tuple[Body, BlockModel]) -> None:
-    """Floor 60 x 40, sides 2 x (60 + 40) x 4 m; over-cut 0.3 m into waste of 2 t/m3, under-cut 0.1 m."""
+    """Floor 60 x 40, sides 2 x (60 + 40) x 4 m; over-cut 0.3 m into host of 2 t/m3, under-cut 0.1 m."""
     body, model = slab
-    made = skins(model, body, np.ones(len(model)), over_cut_m=0.3, under_cut_m=0.1, waste_dry_density_tpm3=2.0,
-                 metals=["cu_pct"])  # fmt: skip
+    model = model.with_frame(model.frame.assign(wet_tonnes=3.2 * model.frame["volume_m3"]))
+    host = Host(2.0, 2.4, {"cu_pct": 0.1})
+    made = skins(
+        model, body, np.ones(len(model)), host=host, over_cut_m=0.3, under_cut_m=0.1, metals=["cu_pct"]
+    )
     assert made.blocks["floor_area_m2"].sum() == pytest.approx(2400)
     assert made.blocks["side_area_m2"].sum() == pytest.approx(800)
     assert made.blocks["roof_area_m2"].sum() == 0
+    assert made.blocks["dilution_m3"].sum() == pytest.approx(0.3 * 3200)
     table = made.table.set_index("step")
     assert table.loc["cut", "dry_tonnes"] == pytest.approx(28_800)
     assert table.loc["dilution", "dry_tonnes"] == pytest.approx(0.3 * 3200 * 2)
+    assert table.loc["dilution", "wet_tonnes"] == pytest.approx(0.3 * 3200 * 2.4)
+    assert table.loc["dilution", "cu_pct"] == pytest.approx(0.1)
     assert table.loc["loss", "dry_tonnes"] == pytest.approx(0.1 * 3200 * 3)
+    assert table.loc["loss", "wet_tonnes"] == pytest.approx(0.1 * 3200 * 3.2)
     delivered = 28_800 - 960 + 1920
     assert table.loc["delivered", "dry_tonnes"] == pytest.approx(delivered)
-    assert table.loc["delivered", "cu_pct"] == pytest.approx(2.0 * (28_800 - 960) / delivered)
+    assert table.loc["delivered", "wet_tonnes"] == pytest.approx(3.2 * (9600 - 320) + 2.4 * 960)
+    assert table.loc["delivered", "cu_pct"] == pytest.approx((2.0 * (28_800 - 960) + 0.1 * 1920) / delivered)
+    nothing = skins(model, body, np.ones(len(model)), host=host, over_cut_m=0.0).table.set_index("step")
+    assert nothing.loc["delivered", "dry_tonnes"] == pytest.approx(28_800)
+    assert nothing.loc["loss", "dry_tonnes"] == nothing.loc["dilution", "dry_tonnes"] == 0.0
 
 
 def test_dilution_from_inside_the_body_carries_its_grade(slab: tuple[Body, BlockModel]) -> None:
     body, model = slab
     upper = (model.frame["k"] == 1).to_numpy()
     frame = model.frame.assign(cu_pct=np.where(upper, 6.0, 1.0))
-    made = skins(model.with_frame(frame), body, upper.astype(float), over_cut_m=0.5, waste_dry_density_tpm3=2.0,
-                 metals=["cu_pct"])  # fmt: skip
+    made = skins(
+        model.with_frame(frame), body, upper.astype(float), host=Host(2.0), over_cut_m=0.5, metals=["cu_pct"]
+    )
     table = made.table.set_index("step")
     floor, side = 2400 * 0.5 * 3.0, 200 * 2 * 0.5 * 2.0
     assert table.loc["dilution", "dry_tonnes"] == pytest.approx(floor + side)
     assert table.loc["dilution", "cu_contained_t"] == pytest.approx(floor * 0.01)
-    below = skins(
-        model.with_frame(frame), body, (~upper).astype(float), over_cut_m=0.5, waste_dry_density_tpm3=2.0
-    )
+    below = skins(model.with_frame(frame), body, (~upper).astype(float), host=Host(2.0), over_cut_m=0.5)
     assert below.blocks["roof_area_m2"].sum() == pytest.approx(2400)
-    for wrong in ({"over_cut_m": -1.0}, {"waste_dry_density_tpm3": 0.0}):
+    ungraded = frame.assign(cu_pct=np.where(upper, 6.0, np.nan))
+    told = skins(model.with_frame(ungraded), body, np.full(len(model), 1.0), host=Host(2.0), over_cut_m=0.0,
+                 metals=["cu_pct"]).table.set_index("step")  # fmt: skip
+    assert told.loc["cut", "cu_pct"] == pytest.approx(6.0)  # missing is not zero
+    for wrong in ({"over_cut_m": -1.0}, {"under_cut_m": math.nan}):
         with pytest.raises(ValueError, match=next(iter(wrong))):
-            skins(model, body, np.ones(len(model)), **({"waste_dry_density_tpm3": 2.0} | wrong))
+            skins(model, body, np.ones(len(model)), host=Host(2.0), **wrong)
     with pytest.raises(ValueError, match="kept_share"):
-        skins(model, body, np.ones(3), waste_dry_density_tpm3=2.0)
+        skins(model, body, np.ones(3), host=Host(2.0))
+    for densities in ((0.0,), (2.0, 1.9)):
+        with pytest.raises(ValueError, match="density"):
+            Host(*densities)
+
+
+def test_no_block_gives_more_than_it_has(slab: tuple[Body, BlockModel]) -> None:
+    """A deep over-cut takes what is left below and then host; a block cut on all sides is taken once."""
+    body, model = slab
+    upper = (model.frame["k"] == 1).to_numpy()
+    deep = skins(model, body, upper.astype(float), host=Host(2.0), over_cut_m=3.0, metals=["cu_pct"])
+    table = deep.table.set_index("step")
+    assert table.loc["dilution", "dry_tonnes"] == pytest.approx(
+        2400 * (2 * 3.0 + 1 * 2.0) + 200 * 2 * 3.0 * 2.0
+    )
+    island = ((model.frame["i"] == 4) & (model.frame["j"] == 4)).to_numpy()
+    round_it = skins(model, body, (~island).astype(float), host=Host(2.0), over_cut_m=4.0, metals=["cu_pct"])
+    outer = 4.0 * (2400 + 800 - 25) * 2.0  # floor and outer sides; from the island, its 25 x 4 m3 at most
+    got = round_it.table.set_index("step").loc["dilution", "dry_tonnes"]
+    assert got == pytest.approx(outer + 25 * 4 * 3.0)
+    assert round_it.blocks["side_area_m2"].sum() == pytest.approx(800 + 4 * 5 * 4)
+
+
+def test_water_down_the_slope_does_not_dilute() -> None:
+    """A layer of 4 m on a plane of 45 degrees: its floor, its ends and the side uphill are rock, the rest is water."""
+    x, _ = np.meshgrid(np.arange(-20.0, 101, 2.0), np.arange(-20.0, 61, 2.0))
+    top = SurfaceGrid(-20, -20, 2, 2, -1500.0 - x, CRS)
+    body = build_body(top, shapely.box(0, 0, 60, 40), NO_CONTACTS, base_grid=top.with_values(top.values - 4))
+    model = fill_blocks(body, BlockGrid((0, 0, -1580), (2, 2, 2), (30, 20, 40)))
+    model = model.with_frame(model.frame.assign(dry_density_tpm3=3.0))
+    made = skins(model, body, np.ones(len(model)), host=Host(2.0), over_cut_m=0.5)
+    assert made.blocks["floor_area_m2"].sum() == pytest.approx(2400, rel=1e-6)
+    # Ends to the north and the south 2 x 60 x 4 m, the uphill end 40 x 4 m; the lower end stands against rock as well
+    # where the seafloor outside is higher than the middle of a block: not more than its own 40 x 4 m.
+    sides = made.blocks["side_area_m2"].sum()
+    assert 2 * 240 + 120 <= sides <= 2 * 240 + 2 * 160
+    downhill = (model.frame["i"] == 29).to_numpy() & (model.frame["k"] == model.frame["k"].min()).to_numpy()
+    assert downhill.any() and made.table["dry_tonnes"].iloc[2] == pytest.approx(0.5 * 2.0 * (2400 + sides))
 
 
 def test_geometry_uncertainty_of_a_slab_by_hand(slab: tuple[Body, BlockModel]) -> None:

@@ -10,7 +10,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from sms_resource.economics import ShapeRules, mineable_shapes, skins
+from sms_resource.economics import ShapeRules, mineable_shapes
 from sms_resource.economics.closure import greatest_closure, needed_by
 
 SIZE = (5.0, 5.0, 2.0)
@@ -197,15 +197,3 @@ def test_what_is_needed() -> None:
     pairs = np.array([(2, 1), (1, 0), (3, 1)])
     assert needed_by(pairs, np.array([False, False, True, False])).tolist() == [True, True, False, False]
     assert not needed_by(np.empty((0, 2), int), np.array([True])).any()
-
-
-def test_skins_by_hand() -> None:
-    # two columns reach the base of the body, one stops above it
-    frame = blocks({(0, 0, 0): 5, (1, 0, 0): 5, (2, 0, 0): 0, (2, 0, 1): 5})
-    shape = np.array([True, True, False, True])
-    got = skins(frame, shape, block_size=SIZE, over_cut_m=0.4, loss_m=0.2, host_dry_density_tpm3=2.0,
-                host_wet_density_tpm3=2.4)  # fmt: skip
-    assert (got["floor_m2"], got["diluted_floor_m2"]) == (75.0, 50.0)
-    assert got["dilution_dry_tonnes"] == pytest.approx(50 * 0.4 * 2.0)
-    assert got["dilution_wet_tonnes"] == pytest.approx(50 * 0.4 * 2.4)
-    assert got["loss_dry_tonnes"] == pytest.approx(75 * 0.2 * 100 / 50)
