@@ -126,6 +126,10 @@ class Body:
         known = body.known.with_values(np.clip(body.known.values + top_m - base_m, 0.0, moved.values))
         return _assemble(replace(body, top=top, thickness=moved, known=known))
 
+    def cut(self, outline: Any) -> Body:
+        """The body with the base that it has, cut at another outline; it has nothing outside its own."""
+        return _assemble(replace(self, outline=self.outline.intersection(outline)))
+
     def scaled_sigma(self, factor: float) -> Body:
         """The body with its base lowered by ``factor`` standard deviations of the thickness, point by point."""
         sigma = np.nan_to_num(self.thickness_sigma.values)

@@ -35,8 +35,10 @@ def geometry_uncertainty(
         case, what, volume_m3, change_m3, change_pct (and dry_tonnes, change_dry_tonnes).
         "base_mean" moves the volume by the standard deviation of the interpolated volume;
         "base_everywhere" lowers or raises the base by one standard deviation at every point at once, which is
-        far less likely; "together" is the root of the sum of squares of base_mean, seafloor and outline, taken
-        as independent.
+        far less likely; "outline_in" interpolates the base anew from the holes that are still inside, and does not
+        have to make the body smaller: these holes keep their thickness, so the base falls more steeply from the
+        edge; "outline_cut" leaves the base as it is; "together" is the root of the sum of squares of base_mean,
+        seafloor and outline (half the span of its cases), taken as independent.
 
     Raises
     ------
@@ -68,16 +70,21 @@ def geometry_uncertainty(
         )
     moved: list[float] = []
     if outline_m > 0 and body.recipe:
-        for name, sign in (("out", 1.0), ("in", -1.0)):
-            outline = body.outline.buffer(sign * outline_m)
-            volume = 0.0 if outline.is_empty else body.shifted(outline_m=sign * outline_m).volume_m3
+        inner = body.outline.buffer(-outline_m)
+        cases = [
+            ("out", "further out, base interpolated anew", lambda: body.shifted(outline_m=outline_m)),
+            ("in", "further in, base interpolated anew", lambda: body.shifted(outline_m=-outline_m)),
+            ("cut", "further in, body cut off there", lambda: body.cut(inner)),
+        ]
+        for name, what, make in cases:
+            volume = 0.0 if name != "out" and inner.is_empty else make().volume_m3
             moved.append(volume)
-            rows.append((f"outline_{name}", f"outline {outline_m:g} m further {name}", volume))
+            rows.append((f"outline_{name}", f"outline {outline_m:g} m {what}", volume))
     changes = {case: volume - base for case, _, volume in rows}
     terms = [
         sigma if math.isfinite(sigma) else 0.0,
         0.5 * (changes["seafloor_up"] - changes["seafloor_down"]),
-        0.5 * (moved[0] - moved[1]) if moved else 0.0,
+        0.5 * (max(moved) - min(moved)) if moved else 0.0,
     ]
     together = math.sqrt(sum(term * term for term in terms))
     rows.append(("together_high", "base, seafloor and outline together: thicker", base + together))

@@ -302,6 +302,7 @@ def test_geometry_uncertainty_of_a_slab_by_hand(slab: tuple[Body, BlockModel]) -
     assert table.loc["outline_out", "volume_m3"] == pytest.approx(wider, rel=1e-3)
     assert table.loc["outline_in", "volume_m3"] == pytest.approx(4 * 50 * 30, rel=1e-9)
     assert table.loc["outline_in", "change_dry_tonnes"] == pytest.approx(3 * (6000 - 9600))
+    assert table.loc["outline_cut", "volume_m3"] == pytest.approx(6000, rel=1e-9)
     for wrong in ({"seafloor_sigma_m": -1.0}, {"outline_m": math.nan}, {"dry_density_tpm3": 0.0}):
         with pytest.raises(ValueError, match=next(iter(wrong))):
             geometry_uncertainty(body, **wrong)
@@ -314,6 +315,11 @@ def test_geometry_uncertainty_of_a_mound(mound: tuple[Body, BlockModel]) -> None
     # One sigma everywhere at once is worse than one sigma of the whole.
     assert table["base_everywhere_down"] > table["base_mean_down"]
     assert table["outline_out"] > 0 > table["outline_in"]
+    inner = body.outline.buffer(-5.0)
+    x, y = body.thickness.mesh()
+    strip = shapely.contains_xy(body.outline, x, y) & ~shapely.contains_xy(inner, x, y)
+    near = body.thickness.values[strip].sum() * body.thickness.dx * body.thickness.dy  # a plain sum of cells
+    assert table["outline_cut"] == pytest.approx(-near, rel=0.05) and table["outline_cut"] < 0
     assert table["together_high"] >= max(table["base_mean_down"], table["seafloor_up"])
     shifted = body.shifted(base_m=-0.5)
     thick = body.thickness.values > 0
