@@ -4,8 +4,6 @@ from __future__ import annotations
 
 from typing import Literal
 
-from pydantic import model_validator
-
 from sms_resource.study.base import Section, key
 
 Triple = tuple[float, float, float]
@@ -77,12 +75,6 @@ class Blocks(Section):
         "depth", "Coordinate in which samples and blocks are compared: elevation, depth below seafloor, or position "
         "between seafloor and base.", alternatives=("elevation", "proportional"),
     )  # fmt: skip
-
-    @model_validator(mode="after")
-    def _positive(self) -> Blocks:
-        if self.size_m is not None and min(self.size_m) <= 0:
-            raise ValueError("size_m must be three lengths above zero")
-        return self
 
 
 class StructureChoice(Section):

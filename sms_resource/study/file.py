@@ -11,6 +11,7 @@ from typing import Any, get_args
 from pydantic import BaseModel, ValidationError
 
 from sms_resource.findings import Finding, Findings
+from sms_resource.study.faults import one_each, place_of, shown, wanted
 from sms_resource.study.files import GRID_ROLES, LAYER_ROLES, TABLE_ROLES
 from sms_resource.study.locate import key_rows, nearest, row_of
 from sms_resource.study.schema import StudyConfig
@@ -163,30 +164,30 @@ def _validate(raw: dict[str, Any], text: str, name: str) -> tuple[StudyConfig | 
         return StudyConfig.model_validate(raw), findings
     except ValidationError as error:
         rows = key_rows(text)
-        for fault in error.errors():
-            findings.extend([_fault_finding(dict(fault), rows, name)])
+        for fault in one_each([dict(fault) for fault in error.errors()]):
+            findings.extend([_fault_finding(fault, rows, name)])
         return None, findings
 
 
 def _fault_finding(fault: dict[str, Any], rows: dict[str, int], name: str) -> Finding:
-    place = [str(part) for part in fault["loc"]]
+    whole = [str(part) for part in fault["loc"]]
+    place, which = place_of(tuple(fault["loc"]))
     dotted = ".".join(place)
     row = row_of(rows, dotted)
     if fault["type"] == "extra_forbidden":
         table = ".".join(place[:-1]) or "the top level"
         return Finding("error", "study-unknown-key", f"'{place[-1]}' is not a key of {table}",
                        nearest(place[-1], known_keys(place[:-1])), name, row, dotted)  # fmt: skip
-    if fault["type"] == "missing" and place[-1].isdigit():
-        short = f"'{'.'.join(place[:-1])}' has too few values"
+    if fault["type"] == "missing" and whole[-1].isdigit():
+        count = len(fault["input"]) if isinstance(fault.get("input"), list | tuple) else 0
+        short = f"'{dotted}' is {shown(fault.get('input'))}: it has too few values ({count})"
         return Finding("error", "study-value", short, describe(place), name, row, dotted)
     if fault["type"] == "missing":
         return Finding("error", "study-missing-key", f"'{dotted}' must be given", f"Add it: {describe(place)}", name,
                        row, dotted)  # fmt: skip
-    came = fault.get("input")
-    wanted = str(fault["msg"]).removeprefix("Value error, ")
-    return Finding(
-        "error", "study-value", f"'{dotted}' is {came!r}: {wanted}", describe(place), name, row, dotted
-    )
+    said = wanted(fault["type"], str(fault["msg"]), dict(fault.get("ctx") or {}))
+    message = f"{which}'{dotted}' is {shown(fault.get('input'))}: {said}"
+    return Finding("error", "study-value", message, describe(place), name, row, dotted)
 
 
 def _section_at(place: list[str]) -> type[BaseModel] | None:

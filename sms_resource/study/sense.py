@@ -110,7 +110,11 @@ def _numbers(config: Any) -> Iterator[Fault]:
     search = config.search
     if search.least_holes > search.most_samples:
         yield "search.least_holes", "least_holes is above most_samples", "Lower it."
-    for dotted, lengths in (("search.radii_m", search.radii_m), ("search.passes", search.passes)):
+    for dotted, lengths in (
+        ("search.radii_m", search.radii_m),
+        ("search.passes", search.passes),
+        ("blocks.size_m", config.blocks.size_m),
+    ):
         if lengths is not None and not min(lengths) > 0:
             yield dotted, f"{list(lengths)} holds a number that is not above zero", "Give numbers above zero."
     points = config.kriging.discretisation
