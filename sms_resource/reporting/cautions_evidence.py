@@ -8,6 +8,7 @@ import numpy as np
 
 from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.elements import Caution, number_text
+from sms_resource.reporting.summaries import missing_checks
 from sms_resource.units import element_label
 
 FEW_COMPOSITES = 50
@@ -188,7 +189,7 @@ def samples(data: ReportData) -> Iterator[Caution]:
                 "lost-core",
                 "What lost core may hold",
                 "The treatments of lost core give a bracket of mean grade; the estimate uses one of them.",
-                f"Mean of composites: {'; '.join(words)}. In use:"
+                f"Mean of the blocks: {'; '.join(words)}. In use:"
                 f" {data.evidence.lost_core_default.replace('_', ' ')}.",
             )
     if data.evidence.handheld_used:
@@ -211,17 +212,25 @@ def quality(data: ReportData) -> Iterator[Caution]:
             "Laboratory inserts in the study: 0.",
         )
     else:
-        bad = verdicts[verdicts["verdict"].isin(["failed", "missing", "caution"])]
-        if len(bad):
+        bad = verdicts[verdicts["verdict"].isin(["failed", "caution"])]
+        missing = missing_checks(verdicts)
+        if len(bad) or missing:
             said = "; ".join(
-                f"{r['element']} {r['aspect']}: {r['verdict']} ({r.get('figures', '')})"
+                f"{str(r['element']).capitalize()} {r['aspect']}: {r['verdict']} ({r.get('figures', '')})"
                 for r in bad.head(14).to_dict("records")
             )
             yield Caution(
                 "quality",
                 "Laboratory quality",
                 "Some of the laboratory checks failed, need care, or are missing.",
-                said + ("." if len(bad) <= 14 else f"; and {len(bad) - 14} more."),
+                " ".join(
+                    part
+                    for part in (
+                        said + ("." if len(bad) <= 14 else f"; and {len(bad) - 14} more.") if said else "",
+                        *missing,
+                    )
+                    if part
+                ),
             )
     density = data.evidence.density_by_domain
     if density is None or not has(density, "domain", "dry_base"):

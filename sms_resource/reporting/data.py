@@ -196,7 +196,8 @@ class Estimation:
     ``leave_one_out_summary`` : free columns. ``estimators`` : metal, then one column an estimator (mean grade).
     ``change_of_support`` : metal, cutoff, support ("blocks" | "discrete gaussian" | "affine" | "composites"),
     proportion, grade. ``support_variance`` : metal, domain, realised, theoretical, ratio.
-    ``neighbourhood`` : sample_number, slope, efficiency, negative_weight_sum, seconds; free otherwise.
+    ``neighbourhood`` : varied ("samples" | "block_size" | "discretisation"), setting (text), used (bool), slope,
+    efficiency, negative_weight_sum, operations_per_target; free otherwise.
     ``neighbourhood_note`` : its recommendation. ``frames_effect`` : frame, <metals> or error columns.
     ``checks`` : check, subject, value, limit, verdict ("pass" | "flag" | "fail").
     """

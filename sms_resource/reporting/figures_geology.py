@@ -55,6 +55,14 @@ def contacts(data: ReportData) -> Drawing | None:
     )
 
 
+def _threshold(frame: pd.DataFrame | None, ratio: str) -> float:
+    """What the study calls high; NaN where it does not say."""
+    if frame is None or not has(frame, "ratio", "threshold"):
+        return float("nan")
+    mine = frame.loc[frame["ratio"] == ratio, "threshold"]
+    return float(mine.iloc[0]) if len(mine) else float("nan")
+
+
 def tracers(data: ReportData) -> Drawing | None:
     """Ratios of metals against depth below the collar."""
     composites = data.evidence.composites
@@ -91,10 +99,16 @@ def tracers(data: ReportData) -> Drawing | None:
         if (ratio > 0).any():
             axis.set_xscale("log")
             style.log_axis(axis.xaxis)
+        at = _threshold(data.evidence.tracers, f"{a}/{b}".lower())
+        if np.isfinite(at):
+            axis.axvline(at, color=style.INK, lw=1.0, ls=":", label="threshold of the study")
         axis.set_xlabel(f"{a}/{b} by mass (ratio)")
     axes[0, 0].set_ylabel("Depth down the hole (m)")
     axes[0, 0].invert_yaxis()
-    axes[0, 0].legend(title="domain", title_fontsize=7.5)
+    shown = {}
+    for axis in axes[0]:
+        shown.update(dict(zip(*reversed(axis.get_legend_handles_labels()))))
+    axes[0, 0].legend(shown.values(), shown, title="domain", title_fontsize=7.5)
     return Drawing(
         "tracers",
         "evidence",

@@ -70,15 +70,13 @@ def plan_holes(data: ReportData) -> Drawing | None:
     if has(dredges, "start_easting", "end_easting", "start_northing", "end_northing"):
         assert dredges is not None
         for number, row in enumerate(dredges.itertuples()):
+            ends = [row.start_easting, row.end_easting], [row.start_northing, row.end_northing]
+            # the whole track is where the rock may come from: a band, with no mark that could pass for a place
+            axis.plot(*ends, color=style.LINES[3], alpha=0.35, lw=8, solid_capstyle="round", zorder=6)
             axis.plot(
-                [row.start_easting, row.end_easting],
-                [row.start_northing, row.end_northing],
-                ls=(0, (4, 2)),
-                color=style.LINES[3],
-                lw=1.4,
-                zorder=7,
-                label="dredge track" if number == 0 else None,
-            )
+                *ends, ls=(0, (4, 2)), color=style.LINES[3], lw=1.4, zorder=7,
+                label="dredge: anywhere on its track" if number == 0 else None,
+            )  # fmt: skip
     axis.scatter(
         blank["easting"],
         blank["northing"],
@@ -111,7 +109,7 @@ def plan_holes(data: ReportData) -> Drawing | None:
         extend="max",
     )
     figure.legend(
-        handles=[*axis.get_legend_handles_labels()[0], *handles], loc="outside lower center", ncols=4
+        handles=[*axis.get_legend_handles_labels()[0], *handles], loc="outside lower center", ncols=3
     )
     style.finish_plan(axis)
     name = element_label(metal)
@@ -245,7 +243,21 @@ def plan_collars(data: ReportData) -> Drawing | None:
     bars.legend()
     columns = [
         c
-        for c in ("hole_id", "easting", "northing", "elevation", "original_elevation", "dz_m", "flagged")
+        for c in (
+            "hole_id",
+            "easting",
+            "northing",
+            "position_method",
+            "position_sigma_m",
+            "original_elevation",
+            "seafloor_elevation",
+            "dz_m",
+            "limit_m",
+            "flagged_before",
+            "elevation",
+            "dz_after_m",
+            "flagged",
+        )
         if c in collars
     ]
     return Drawing(

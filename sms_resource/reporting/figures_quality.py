@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 import pandas as pd
 
@@ -168,59 +170,99 @@ def blanks(data: ReportData) -> Drawing | None:
 
 
 def duplicates(data: ReportData) -> Drawing | None:
-    """Original against repeat for each element, on log scales, with lines of 10 and 20 % difference."""
-    pairs = data.evidence.laboratory.pairs
-    if pairs is None or not has(pairs, "element", "original", "repeat"):
-        return None
-    frame = pairs[(pairs["original"] > 0) & (pairs["repeat"] > 0)]
+    """Original against repeat on log scales: duplicates above, check laboratory with its reduced major axis below."""
+    lab = data.evidence.laboratory
     wanted = [m.partition("_")[0] for m in data.subject.metals]
-    elements = [e for e in wanted if (frame["element"] == e).any()][:MOST_PANELS]
-    if not elements:
+    given = (
+        ("duplicates", _positive(lab.pairs, wanted)),
+        ("check laboratory", _positive(lab.check_pairs, wanted)),
+    )
+    kinds = {kind: frame for kind, frame in given if frame is not None}
+    if not kinds:
         return None
-    rows, columns = panel_grid(len(elements), 4)
+    across = [e for e in wanted if any((frame["element"] == e).any() for frame in kinds.values())]
+    panels = [
+        (kind, e)
+        for kind, frame in kinds.items()
+        for e in across[:MOST_PANELS]
+        if (frame["element"] == e).any()
+    ]
+    rows, columns = panel_grid(len(panels), min(4, len(across)))
     figure, axes = style.new_figure(2.65 * columns, 2.75 * rows + 0.2, rows, columns)
-    stages = sorted(frame["stage"].astype(str).unique()) if "stage" in frame else ["pairs"]
-    for axis, element in zip(axes.ravel(), elements):
-        part = frame[frame["element"] == element]
-        low, high = (
-            part[["original", "repeat"]].min().min() / 1.3,
-            part[["original", "repeat"]].max().max() * 1.3,
-        )
-        ends = np.array([low, high])
-        axis.plot(ends, ends, color=style.INK, lw=0.8)
-        for factor, line in ((0.10, "--"), (0.20, ":")):
-            for side in (1 + factor, 1 / (1 + factor)):
-                axis.plot(ends, ends * side, color=style.QUIET, lw=0.6, ls=line)
-        for number, stage in enumerate(stages):
-            mine = part[part["stage"].astype(str) == stage] if "stage" in part else part
-            axis.plot(
-                mine["original"],
-                mine["repeat"],
-                style.MARKERS[number % 7],
-                ms=3,
-                mew=0,
-                alpha=0.75,
-                color=style.LINES[number % 7],
-                label=f"{stage}",
-            )
+    stages = sorted(kinds["duplicates"]["stage"].astype(str).unique()) if "duplicates" in kinds else []
+    marks = {("duplicates", stage): number for number, stage in enumerate(stages)}
+    marks["check laboratory", ""] = len(stages)
+    handles: dict[str, Any] = {}
+    for axis, (kind, element) in zip(axes.ravel(), panels):
+        part = kinds[kind][kinds[kind]["element"] == element]
+        both = part[["original", "repeat"]].to_numpy(float)
+        ends = np.array([both.min() / 1.3, both.max() * 1.3])
+        handles["equal"] = axis.plot(ends, ends, color=style.INK, lw=0.8)[0]
+        if kind == "duplicates":
+            for factor, line in ((0.10, "--"), (0.20, ":")):
+                for side in (1 + factor, 1 / (1 + factor)):
+                    axis.plot(ends, ends * side, color=style.QUIET, lw=0.6, ls=line)
+        else:
+            handles.update(_reduced_major_axis(axis, lab.checks, element, ends))
+        for stage in stages if kind == "duplicates" else [""]:
+            mine = part[part["stage"].astype(str) == stage] if kind == "duplicates" else part
+            number = marks[kind, stage] % 7
+            handles[stage or kind] = axis.plot(
+                mine["original"], mine["repeat"], style.MARKERS[number], ms=3, mew=0, alpha=0.75,
+                color=style.LINES[number],
+            )[0]  # fmt: skip
         axis.set_xscale("log")
         axis.set_yscale("log")
-        axis.set_xlim(low, high)
-        axis.set_ylim(low, high)
+        axis.set_xlim(*ends)
+        axis.set_ylim(*ends)
         style.log_axis(axis.xaxis)
         style.log_axis(axis.yaxis)
         axis.set_aspect("equal")
         axis.set_xlabel(f"Original, {element_name(element)}")
-        axis.set_ylabel(f"Repeat, {element_name(element)}")
-    for axis in axes.ravel()[len(elements) :]:
+        axis.set_ylabel(f"{'Repeat' if kind == 'duplicates' else 'Check'}, {element_name(element)}")
+    for axis in axes.ravel()[len(panels) :]:
         axis.set_axis_off()
-    figure.legend(*axes[0, 0].get_legend_handles_labels(), loc="outside lower center", ncols=5)
+    figure.legend(list(handles.values()), list(handles), loc="outside lower center", ncols=6)
+    table = pd.concat([frame.assign(kind=kind) for kind, frame in kinds.items()], ignore_index=True)
     return Drawing(
         "duplicates",
         "evidence",
-        "Duplicates",
-        "Dashed lines: 10 % apart; dotted: 20 %.",
-        "Scatter of duplicate pairs by element.",
+        "Duplicates and check laboratory",
+        "Duplicates: dashed lines are 10 % apart, dotted 20 %. Check laboratory: reduced major axis with the interval of "
+        "its slope (band).",
+        "Scatter of duplicate pairs and of check assays by element.",
         figure,
-        frame,
+        table,
     )
+
+
+def _positive(pairs: pd.DataFrame | None, wanted: list[str]) -> pd.DataFrame | None:
+    """Pairs of the wanted elements that a log scale can show; None where there are none."""
+    if pairs is None or not has(pairs, "element", "original", "repeat"):
+        return None
+    frame = pairs[(pairs["original"] > 0) & (pairs["repeat"] > 0) & pairs["element"].isin(wanted)]
+    return frame if len(frame) else None
+
+
+def _reduced_major_axis(
+    axis: Any, checks: pd.DataFrame | None, element: str, ends: np.ndarray
+) -> dict[str, Any]:
+    """Draw the line and the band of its slope; returns what the legend shows."""
+    if checks is None or not has(checks, "element", "slope", "intercept", "slope_low", "slope_high"):
+        return {}
+    row = checks[checks["element"] == element]
+    if not len(row) or not np.isfinite(float(row["slope"].iloc[0])):
+        return {}
+    found = row.iloc[0]
+    x = np.geomspace(float(ends[0]), float(ends[1]), 40)
+    # the limits of the slope turn about the means, so the least slope goes with the greatest intercept
+    sides = [found[f"intercept_{b}"] + found[f"slope_{a}"] * x for a, b in (("low", "high"), ("high", "low"))]
+    band = axis.fill_between(
+        x, *(np.maximum(side, 1e-12) for side in sides), color=style.LINES[1], alpha=0.25, lw=0
+    )
+    y = found["intercept"] + found["slope"] * x
+    line = axis.plot(x[y > 0], y[y > 0], color=style.LINES[1], lw=1.2)[0]
+    axis.set_title(
+        f"slope {found['slope']:.3f} ({found['slope_low']:.3f} to {found['slope_high']:.3f})", fontsize=7
+    )
+    return {"reduced major axis": line, "interval of its slope": band}

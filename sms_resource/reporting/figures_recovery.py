@@ -76,12 +76,12 @@ def recovery(data: ReportData) -> Drawing | None:
         axis.set_xlabel("Recovery (%)")
         axis.set_ylabel(element_label(metal))
         if bias is not None and has(bias, "metal", "spearman", "p_value"):
-            mine = bias[bias["metal"] == metal].head(2)
-            words = "; ".join(
-                f"{row.get('domain', '')} ρ {row['spearman']:+.2f}, p {row['p_value']:.2g}"
+            mine = bias[bias["metal"] == metal].head(4)
+            words = "\n".join(
+                f"{style.short(row.get('domain', ''), 20)}: ρ {row['spearman']:+.2f}, p {row['p_value']:.2g}"
                 for row in mine.to_dict("records")
             )
-            axis.set_title(words, fontsize=6.5)
+            axis.set_title(words, fontsize=6)
         if metal == metals[0]:
             axis.legend(loc="upper right", handletextpad=0.1)
     for axis in panels[len(metals) :]:
@@ -229,7 +229,7 @@ def lost_core(data: ReportData) -> Drawing | None:
         "lost_core",
         "evidence",
         "What lost core could do to the grade",
-        "Mean grade of the composites under each treatment of lost core; the filled dot is the treatment that"
+        "Mean grade of the blocks of the body under each treatment of lost core; the filled dot is the treatment that"
         " the estimate uses. The ends are the bracket, not a confidence interval.",
         "Dot plots of mean grade by treatment of lost core.",
         figure,

@@ -83,9 +83,11 @@ def histograms(data: ReportData) -> Drawing | None:
         axis.bar(edges[:-1], counts, width=np.diff(edges), align="edge", color="#7f9bb0", ec="white", lw=0.5)
         mean = float(values.mean())
         weighted = float(np.average(values, weights=weights)) if weights.sum() > 0 else mean
-        axis.axvline(mean, color=style.INK, lw=1.2, label=f"mean {mean:.3g}")
+        axis.axvline(mean, color=style.INK, lw=1.2, label=f"mean, each alike {mean:.3g}")
         if abs(weighted - mean) > 1e-12:
-            axis.axvline(weighted, color="#d55e00", lw=1.2, ls="--", label=f"weighted mean {weighted:.3g}")
+            axis.axvline(
+                weighted, color="#d55e00", lw=1.2, ls="--", label=f"mean, declustered {weighted:.3g}"
+            )
         cv = float(values.std() / mean) if mean else float("nan")
         axis.plot([], [], " ", label=f"n {values.size}, CV {cv:.2f}")
         axis.legend(loc="upper right")
@@ -99,10 +101,21 @@ def histograms(data: ReportData) -> Drawing | None:
         "evidence",
         "Histograms of the composites",
         "Composites inside the body's domains, after the treatment of lost core, before top cuts. CV is the "
-        "coefficient of variation. The weighted mean uses the weights that the composites carry.",
+        "coefficient of variation, each composite alike. The declustered mean takes weight from holes that stand close "
+        f"together; the table of statistics weighs composites by {data.evidence.weighting}.",
         "Histograms of composite grades, one for each metal.",
         figure,
         pd.concat(tables, ignore_index=True),
+    )
+
+
+def cut_words(cuts: pd.DataFrame | None) -> str:
+    """Which lines of a figure are top cuts, and how many there are of each."""
+    used = int(cuts["cut"].notna().sum()) if cuts is not None and has(cuts, "cut") else 0
+    proposed = int(cuts["proposed"].notna().sum()) if cuts is not None and has(cuts, "proposed") else 0
+    return (
+        f"Top cuts in use (dashed): {used or 'none'}; proposed by the study of extreme grades (dotted):"
+        f" {proposed or 'none'}."
     )
 
 
@@ -141,8 +154,9 @@ def log_probability(data: ReportData) -> Drawing | None:
             )
             if cuts is not None and has(cuts, "domain", "metal", "cut"):
                 mine = cuts[(cuts["metal"] == metal) & (cuts["domain"].astype(str) == name)]
-                for cut in mine["cut"].dropna():
-                    axis.axvline(float(cut), color=style.LINES[number], ls="--", lw=0.9)
+                for column, line in (("cut", "--"), ("proposed", ":")):
+                    for cut in mine[column].dropna() if column in mine else ():
+                        axis.axvline(float(cut), color=style.LINES[number], ls=line, lw=1.0)
         axis.set_xscale("log")
         style.log_axis(axis.xaxis)
         axis.set_yticks(ndtri(np.array(PROBABILITIES)), [f"{100 * q:g}" for q in PROBABILITIES])
@@ -159,8 +173,7 @@ def log_probability(data: ReportData) -> Drawing | None:
         "log_probability",
         "evidence",
         "Log-probability plots",
-        "A straight line is a lognormal population; a break is a mixture; dashed lines are the top cuts in"
-        " use.",
+        f"A straight line is a lognormal population; a break is a mixture. {cut_words(cuts)}",
         "Log-probability plots of composite grades by metal and domain.",
         figure,
         pd.concat(tables, ignore_index=True),
@@ -233,41 +246,4 @@ def density(data: ReportData) -> Drawing | None:
         "Dot plot of measured and used densities by domain.",
         figure,
         used,
-    )
-
-
-def top_cuts(data: ReportData) -> Drawing | None:
-    """Metal removed and composites cut by each top cut."""
-    cuts = data.evidence.top_cuts
-    if cuts is None or not has(cuts, "metal", "domain", "metal_removed_pct", "n_cut"):
-        return None
-    cuts = cuts[cuts["cut"].notna()] if "cut" in cuts else cuts
-    if not len(cuts):
-        return None
-    figure, axes = style.new_figure(7.0, 0.36 * len(cuts) + 1.1)
-    axis = axes[0, 0]
-    place = np.arange(len(cuts))[::-1]
-    axis.barh(place, cuts["metal_removed_pct"].to_numpy(float), color="#7f9bb0", height=0.6)
-    for y, row in zip(place, cuts.to_dict("records")):
-        axis.text(
-            row["metal_removed_pct"],
-            y,
-            f"  {int(row['n_cut'])} of {int(row.get('n', 0) or 0)} cut at {row.get('cut', float('nan')):.4g}",
-            va="center",
-            fontsize=7,
-        )
-    axis.set_yticks(
-        place, [f"{element_label(m)}, {style.short(d)}" for m, d in zip(cuts["metal"], cuts["domain"])]
-    )
-    axis.set_xlabel("Metal removed by the cut (% of the uncapped mean)")
-    axis.margins(x=0.35)
-    axis.set_xlim(left=0)
-    return Drawing(
-        "top_cuts",
-        "evidence",
-        "What the top cuts remove",
-        "Each bar is one cut in use; the table gives capped and uncapped means.",
-        "Bars of metal removed by each top cut.",
-        figure,
-        cuts,
     )

@@ -5,7 +5,12 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import replace
 
-from sms_resource.reporting import sections_estimate, sections_evidence, sections_record
+from sms_resource.reporting import (
+    sections_estimate,
+    sections_evidence,
+    sections_record,
+    sections_samples,
+)
 from sms_resource.reporting.cautions import all_cautions
 from sms_resource.reporting.data import ReportData
 from sms_resource.reporting.elements import (
@@ -50,7 +55,7 @@ def build_document(data: ReportData, drawings: Sequence[Drawing], absent: Sequen
         pictures.setdefault(drawing.section, []).append(drawing)
     makers: dict[str, Callable[[ReportData], list[Block]]] = {
         "decisions": sections_record.decisions,
-        "evidence": sections_evidence.evidence,
+        "evidence": sections_samples.evidence,
         "body": sections_evidence.body,
         "continuity": sections_evidence.continuity,
         "estimate": sections_estimate.estimate,

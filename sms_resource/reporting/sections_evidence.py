@@ -1,4 +1,4 @@
-"""Sections on the evidence, the body and the continuity."""
+"""Sections on the body and the continuity."""
 
 from __future__ import annotations
 
@@ -12,111 +12,18 @@ from sms_resource.reporting.elements import (
     Paragraph,
     Slot,
     Table,
-    frame_table,
     number_text,
     with_table,
 )
 from sms_resource.reporting.figures_continuity import domain_slug
-from sms_resource.reporting.summaries import (
-    associations_shown,
-    blanks_by_element,
-    chosen_cells,
-    cuts_in_use,
-    references_by_material,
-)
 from sms_resource.units import column_element, element_label
 
-
-def evidence(data: ReportData) -> list[Block]:
-    """Positions, recovery, composites, surface samples, laboratory, density, logs."""
-    e, lab = data.evidence, data.evidence.laboratory
-    blocks: list[Block] = [Heading("Where the samples are"), Slot(("plan_holes",))]
-    if e.collars is not None and has(e.collars, "ended_in"):
-        counts = e.collars["ended_in"].astype(str).value_counts().sort_index()
-        words = ", ".join(f"{count} {name}" for name, count in counts.items())
-        vertical = int(e.collars["assumed_vertical"].sum()) if "assumed_vertical" in e.collars else None
-        blocks.append(
-            Paragraph(
-                f"How the {len(e.collars)} holes ended: {words}."
-                + (f" {vertical} without survey are assumed vertical." if vertical is not None else "")
-            )
-        )
-    blocks += [Heading("Collars against the seafloor"), Slot(("plan_collars",))]
-    if e.collar_shift_m is not None:
-        blocks.append(
-            Paragraph(
-                f"Shift applied to all collars: {e.collar_shift_m:+.2f} m; the delivered elevations are kept"
-                " in the data files."
-            )
-        )
-    if e.collars is not None and has(e.collars, "flagged", "dz_m") and e.collars["flagged"].any():
-        bad = e.collars[e.collars["flagged"].astype(bool)]
-        blocks.append(
-            frame_table(
-                bad,
-                "Flagged collars",
-                columns=(
-                    "hole_id",
-                    "easting",
-                    "northing",
-                    "original_elevation",
-                    "elevation",
-                    "dz_m",
-                    "position_method",
-                    "position_sigma_m",
-                ),
-                most=20,
-            )
-        )
-    blocks += [Heading("Core recovery and lost core"), Slot(("recovery",))]
-    with_table(blocks, e.recovery_bias, "Grade against recovery: rank correlation", most=40)
-    blocks.append(Slot(("lost_core",)))
-    with_table(blocks, e.lost_core, "Treatments of lost core (mean grade of composites)")
-    blocks.append(Heading("Composites"))
-    with_table(blocks, e.composite_audit, "From intervals to composites")
-    with_table(blocks, e.statistics, "Statistics of the composites")
-    blocks.append(Slot(("histograms", "log_probability")))
-    with_table(blocks, e.lognormal, "Lognormal estimators of the mean")
-    cuts = cuts_in_use(e.top_cuts)
-    with_table(blocks, cuts, "Top cuts")
-    if cuts is None and e.top_cuts is not None and len(e.top_cuts):
-        blocks.append(
-            Paragraph(f"Top cuts: {len(e.top_cuts)} sets of metal and domain studied, no cut in use.")
-        )
-    blocks.append(Slot(("top_cuts",)))
-    with_table(blocks, chosen_cells(e.declustering_scan), "Declustering: cells chosen", most=16)
-    blocks.append(Slot(("contacts",)))
-    with_table(blocks, e.contact_verdicts, "Contacts of domains: hard or soft", most=40)
-    with_table(blocks, e.twins, "Twin holes", most=20)
-    blocks += [
-        Heading("Surface samples"),
-        Paragraph(f"Use of the surface samples: {e.surface_use.rstrip('. ') or 'kept out of the estimate'}."),
-    ]
-    with_table(blocks, e.surface_bias, "Surface samples against core")
-    blocks.append(Slot(("surface_against_core",)))
-    blocks.append(Heading("Laboratory quality"))
-    if lab.verdicts is None:
-        blocks.append(Paragraph("No laboratory inserts were given with this study."))
-    with_table(blocks, lab.verdicts, "Verdicts")
-    blocks.append(Slot(("control_charts",)))
-    with_table(blocks, references_by_material(lab.references), "Reference materials", most=30)
-    blocks.append(Slot(("blanks",)))
-    with_table(blocks, blanks_by_element(lab.blanks), "Blanks", most=20)
-    blocks.append(Slot(("duplicates",)))
-    with_table(blocks, lab.duplicates, "Duplicates (statistics named in the heads)", most=30)
-    with_table(blocks, lab.checks, "Check laboratory (reduced major axis)", most=20)
-    with_table(blocks, e.assay_summary, "Assays: below detection, over limit, blank", most=30)
-    blocks.append(Heading("Density"))
-    with_table(blocks, e.density_by_domain, "Density by domain")
-    blocks.append(Slot(("density",)))
-    blocks.append(Heading("Metal associations"))
-    with_table(
-        blocks, associations_shown(e.associations, data.subject.metals), "Correlations and ratios", most=12
-    )
-    blocks.append(Slot(("tracers",)))
-    with_table(blocks, e.deleterious, "Deleterious elements (composites in the body)", most=20)
-    blocks += [Heading("Strip logs"), Slot(("strip_logs_*",))]
-    return blocks
+GEOMETRY_NOTE = (
+    "One thing is moved at a time. An outline further in does not have to make the body smaller: the holes that are "
+    "still inside keep their thickness, so the base falls more steeply from the edge, and the holes that fall outside "
+    "no longer hold it up; what the outer strip itself is worth stands beside it as the body cut off. Together is "
+    "the root of the sum of squares of the base as a whole, the seafloor and half the span of the outlines."
+)
 
 
 def body(data: ReportData) -> list[Block]:
@@ -172,7 +79,7 @@ def body(data: ReportData) -> list[Block]:
             )
         )
     with_table(blocks, body.audit, "Audit of the body", most=12)
-    with_table(blocks, body.geometry_uncertainty, "Uncertainty of the geometry")
+    with_table(blocks, body.geometry_uncertainty, "Uncertainty of the geometry", note=GEOMETRY_NOTE)
     blocks.append(Slot(("geometry",)))
     with_table(blocks, body.grid_proposal, "Block grid: what is proposed, and why")
     return blocks if body.volumes or body.thickness is not None or body.method else []

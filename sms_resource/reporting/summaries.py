@@ -7,6 +7,12 @@ from collections.abc import Sequence
 import pandas as pd
 
 from sms_resource.reporting.data import has
+from sms_resource.reporting.elements import number_text
+
+ASPECTS = {
+    "references": "reference materials that can be judged", "blanks": "blanks that can be judged",
+    "duplicates": "duplicates", "checks": "results of a check laboratory",
+}  # fmt: skip
 
 
 def references_by_material(frame: pd.DataFrame | None) -> pd.DataFrame | None:
@@ -65,6 +71,71 @@ def cuts_in_use(frame: pd.DataFrame | None) -> pd.DataFrame | None:
     ]
     columns = [c for c in (*wanted, "cv", "cv_cut", "reason") if c in cut]
     return cut[columns] if len(cut) else None
+
+
+def cuts_shown(frame: pd.DataFrame | None) -> pd.DataFrame | None:
+    """Every metal and domain with what is proposed and what is in use, in words where there is none."""
+    if frame is None or not has(frame, "metal", "domain", "cut"):
+        return None
+    proposed = frame["proposed"] if "proposed" in frame else pd.Series(float("nan"), index=frame.index)
+    holes = frame["holes_cut"].map(_few_holes) if "holes_cut" in frame else ""
+    columns = {
+        "Domain": frame["domain"],
+        "Metal": frame["metal"],
+        "Proposed cut": [number_text(value, 4) if value == value else "none" for value in proposed],
+        "Cut in use": [number_text(value, 4) if value == value else "none used" for value in frame["cut"]],
+        "Effect shown of": frame.get("effect_of", "cut in use"),
+        "Count": frame["n"],
+        "Count cut": frame["n_cut"],
+        "Mean before": frame.get("mean_before"),
+        "Mean after": frame.get("mean_after"),
+        "CV before": frame.get("cv_before"),
+        "CV after": frame.get("cv_after"),
+        "Metal removed (%)": frame["metal_removed_pct"],
+        "Holes of the cut samples (count)": holes,
+        "Reason for the proposal": frame.get("reason", ""),
+    }
+    return pd.DataFrame({name: values for name, values in columns.items() if values is not None})
+
+
+def _few_holes(text: object, most: int = 6) -> str:
+    """The first holes of a list, and how many more there are."""
+    parts = [part for part in str(text or "").split(", ") if part]
+    rest = f" and {len(parts) - most} more" if len(parts) > most else ""
+    return ", ".join(parts[:most]) + rest
+
+
+def named_elements(frame: pd.DataFrame | None) -> pd.DataFrame | None:
+    """Elements as people write them: ``cu`` becomes ``Cu``."""
+    if frame is None or not has(frame, "element"):
+        return frame
+    return frame.assign(element=[str(name).capitalize() for name in frame["element"]])
+
+
+def verdicts_shown(frame: pd.DataFrame | None) -> pd.DataFrame | None:
+    """Verdicts that rest on something; what was not inserted is told by `missing_checks`."""
+    if frame is None or not has(frame, "element", "verdict"):
+        return frame
+    return named_elements(frame[frame["verdict"] != "missing"])
+
+
+def missing_checks(frame: pd.DataFrame | None) -> tuple[str, ...]:
+    """One sentence for each aspect of laboratory quality that some elements lack."""
+    if frame is None or not has(frame, "element", "aspect", "verdict"):
+        return ()
+    said = []
+    every = set(frame["element"])
+    for aspect, part in frame[frame["verdict"] == "missing"].groupby("aspect", sort=False):
+        name = ASPECTS.get(str(aspect), str(aspect))
+        elements = [str(element).capitalize() for element in dict.fromkeys(part["element"])]
+        text = f"No {name} for {'any element' if set(part['element']) == every else ', '.join(elements)}"
+        known = [
+            f"{str(e).capitalize()}: {f}"
+            for e, f in zip(part["element"], part["figures"])
+            if str(f or "").strip()
+        ]
+        said.append(text + (f" ({'; '.join(known)})" if known else "") + ".")
+    return tuple(said)
 
 
 def chosen_cells(frame: pd.DataFrame | None) -> pd.DataFrame | None:

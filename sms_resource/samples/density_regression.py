@@ -90,6 +90,9 @@ def fit_regression(
     )
     use = np.isfinite(x).all(axis=1)
     x, y = x[use], y[use]
+    where = (
+        names(measured["domain"]) if "domain" in measured else np.array(["all"] * len(measured), dtype=object)
+    )
     design = np.column_stack([np.ones(len(y)), x])
     freedom = len(y) - design.shape[1]
     if not predictors or freedom < 3 or np.linalg.matrix_rank(design) < design.shape[1]:
@@ -112,7 +115,7 @@ def fit_regression(
     weak = fitted.r_squared < 0.3
     (findings.warning if weak else findings.note)(
         "density-regression",
-        f"{fitted.statement()}; pairs by domain: {_by_domain(measured.loc[use])}; low and high are its "
+        f"{fitted.statement()}; pairs by domain: {_by_domain(where[np.asarray(use)])}; low and high are its "
         f"{100 * confidence:.0f} % interval" + ("; grades explain little of it" if weak else ""),
         "Compare with the means of the domains." if weak else "",
     )
@@ -123,8 +126,6 @@ def _label(column: str) -> str:
     return element_label(column) if column_element(column) else column
 
 
-def _by_domain(measured: pd.DataFrame) -> str:
-    if "domain" not in measured:
-        return f"all {len(measured)}"
-    found = pd.Series(names(measured["domain"]), dtype=object).value_counts().sort_index()
+def _by_domain(where: NDArray[np.object_]) -> str:
+    found = pd.Series(where, dtype=object).value_counts().sort_index()
     return ", ".join(f"{domain} {count}" for domain, count in found.items())

@@ -33,7 +33,7 @@ class CollarMatch:
     collars : DataFrame
         The collars with ``elevation`` after the policy, ``original_elevation``, ``seafloor_elevation``,
         ``dz_m`` (original minus seafloor: positive floats, negative sinks), ``dz_after_m``, ``vertical_sigma_m``,
-        ``limit_m`` and ``flagged`` (after the policy).
+        ``limit_m``, ``flagged_before`` (as delivered) and ``flagged`` (after the policy).
     shift_m : float
         What was added to every collar (0 unless the policy is "shift_median").
     table : DataFrame
@@ -105,6 +105,7 @@ def match_collars(
     result["dz_after_m"] = rest
     result["vertical_sigma_m"] = vertical
     result["limit_m"] = limit
+    result["flagged_before"] = known & (np.abs(difference) > limit)
     result["flagged"] = flagged
     _report(result, known, median, policy, limit, findings)
     table = _summary(difference, rest, limit)
@@ -207,8 +208,9 @@ def hole_ends(collars: pd.DataFrame) -> tuple[pd.DataFrame, Findings]:
 def position_table(table: pd.DataFrame, label: str) -> tuple[pd.DataFrame, Findings]:
     """Positions by method: count and standard deviation (least, median, greatest) in m."""
     findings = Findings()
-    column = "position_method" if "position_method" in table else "method"
-    method = table[column].fillna("").replace("", "not given") if column in table else "not given"
+    # a column "method" is how the sample was assayed, not how it was placed
+    given = "position_method" in table
+    method = table["position_method"].fillna("").replace("", "not given") if given else "not given"
     frame = pd.DataFrame({"method": method, "sigma_m": numbers(table, "position_sigma_m")}, index=table.index)
     grouped = frame.groupby("method")["sigma_m"]
     result = pd.DataFrame(

@@ -49,15 +49,29 @@ def cut_curve(
         upper = np.unique(value[value >= np.quantile(value, 0.8)]) if len(value) else value
         cuts = upper if len(upper) <= 200 else np.quantile(upper, np.linspace(0, 1, 200))
     tried = np.unique(np.asarray(cuts, dtype=np.float64))
-    total = float(weight @ value)
-    rows = []
-    for cut in tried:
-        lowered = np.minimum(value, cut)
-        mean = float(np.average(lowered, weights=weight))
-        deviation = float(np.sqrt(np.average((lowered - mean) ** 2, weights=weight)))
-        removed = 100.0 * (1.0 - float(weight @ lowered) / total) if total > 0 else 0.0
-        rows.append((cut, mean, deviation / mean if mean > 0 else np.nan, removed, int(np.sum(value > cut))))
-    return pd.DataFrame(rows, columns=["cut", "mean", "cv", "metal_removed_pct", "n_cut"])
+    columns = ["cut", "mean", "cv", "metal_removed_pct", "n_cut"]
+    if not len(value):
+        return pd.DataFrame(columns=columns, dtype=np.float64)
+    # sums below each cut from running sums of the sorted values, about their mean so that squares keep their digits
+    order = np.argsort(value, kind="stable")
+    ordered, share = value[order], weight[order] / weight.sum()
+    uncut = float(share @ ordered)
+    off = ordered - uncut
+    below = np.searchsorted(ordered, tried, side="right")
+    sums = [np.concatenate([[0.0], np.cumsum(share * off**power)])[below] for power in (0, 1, 2)]
+    rest, at = 1.0 - sums[0], tried - uncut
+    shift = sums[1] + rest * at
+    mean = uncut + shift
+    deviation = np.sqrt(np.maximum(sums[2] + rest * at**2 - shift**2, 0.0))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        cv = np.where(mean > 0, deviation / mean, np.nan)
+        removed = (
+            np.where(below == len(value), 0.0, -100.0 * shift / uncut) if uncut > 0 else np.zeros(len(tried))
+        )
+    return pd.DataFrame(
+        {"cut": tried, "mean": mean, "cv": cv, "metal_removed_pct": removed, "n_cut": len(value) - below},
+        columns=columns,
+    )
 
 
 def top_cut_study(
@@ -90,7 +104,10 @@ def top_cut_study(
     domain = names(composites["domain"])
     for name in sorted(set(domain)):
         for metal in metals:
-            part = composites.loc[(domain == name) & np.isfinite(numbers(composites, metal))]
+            known = np.isfinite(numbers(composites, metal))
+            if weight_column and weight_column in composites:
+                known &= numbers(composites, weight_column) > 0
+            part = composites.loc[(domain == name) & known]
             rows.append(_proposal(name, metal, part, weight_column))
     return pd.DataFrame(rows)
 
@@ -116,7 +133,7 @@ def apply_top_cuts(
     Parameters
     ----------
     frame : DataFrame
-        Composites with domain and metals.
+        Composites with domain and metals; means are weighted by ``weight``, or ``length_m`` without it.
     cuts : mapping
         (domain, metal) to the cut, in the unit of the metal's column. The domain "all" stands for every domain that
         has no cut of its own.
@@ -136,7 +153,8 @@ def apply_top_cuts(
     """
     result = frame.copy()
     domain = names(frame["domain"])
-    length = numbers(frame, "length_m") if "length_m" in frame else np.ones(len(frame))
+    columns_of_weight = [name for name in ("weight", "length_m") if name in frame]
+    length = numbers(frame, columns_of_weight[0]) if columns_of_weight else np.ones(len(frame))
     rows = []
     own = {key for key in cuts if key[0] != "all"}
     for (name, metal), cut in cuts.items():
@@ -220,7 +238,7 @@ def _proposal(name: str, metal: str, part: pd.DataFrame, weight_column: str | No
             n_cut=int(line["n_cut"]), metal_removed_pct=float(line["metal_removed_pct"]),
             mean_after=float(line["mean"]), cv_cut=float(line["cv"]), percentile=100.0 * float(np.mean(~above)),
         )  # fmt: skip
-        holes, spacing, together = _where(part, above)
+        holes, spacing, together = where_they_lie(part, above)
         row.update(holes_cut=holes, spacing_m=spacing)
         if together:
             reason += "; the cut samples lie together, so look whether they are a domain of their own before cutting"
@@ -266,7 +284,7 @@ def _find_cut(values: Floats, weights: Floats, cv: float) -> tuple[float, str]:
     )
 
 
-def _where(part: pd.DataFrame, above: NDArray[np.bool_]) -> tuple[str, float, bool]:
+def where_they_lie(part: pd.DataFrame, above: NDArray[np.bool_]) -> tuple[str, float, bool]:
     """Holes of the cut samples, median distance to the nearest other one, and whether they lie together."""
     from scipy.spatial import cKDTree
 

@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
+from sms_resource.samples.topcuts import top_cut_findings
 from sms_resource.units import element_column
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.stage import Context
@@ -25,6 +26,7 @@ def variograms(context: Context) -> VariogramState:
     metals = metal_columns(config)
     samples = body_samples(evidence.composites, block_state.frame, config)
     samples, cuts = cut_grades(samples, evidence.tables["top_cut_study"], config)
+    context.findings.extend(top_cut_findings(cuts))
     spacing = hole_spacing(evidence.collars, body_state.outline)
     scans: list[pd.DataFrame] = []
     inferences: dict[tuple[str, str], Any] = {}

@@ -4,13 +4,13 @@ from __future__ import annotations
 
 from typing import Any
 
-import numpy as np
 import pandas as pd
 
 from sms_resource.loaders.tables import LoadedData
 from sms_resource.units import element_column
 from sms_resource.workflow.stage import Context, StageStop
 from sms_resource.workflow.state import DensityState, EvidenceState
+from sms_resource.workflow.worth_of_samples import JoinedSamples, add_findings, describe
 
 
 def metal_columns(config: Any) -> list[str]:
@@ -100,7 +100,17 @@ def composite(context: Context) -> EvidenceState:
     add_findings(context, found)
     used, found = surface_use(surface, config.surface_samples.use)
     add_findings(context, found)
-    laboratory, tables = describe(context, assays, surface, intervals, match.collars, made, paths)
+    joined = JoinedSamples(
+        assays,
+        surface,
+        intervals,
+        match.collars,
+        made.frame,
+        paths,
+        tuple(metal_columns(config)),
+        tuple(elements),
+    )
+    laboratory, tables = describe(context, joined, composite_options(config))
     context.detail = f"{len(inside)} composites in sulphide of {len(made.frame)}"
     return EvidenceState(
         collars=match.collars,
@@ -148,12 +158,6 @@ def with_cap(
     return pd.concat([composites, cap], ignore_index=True)
 
 
-def add_findings(context: Context, *found: Any) -> None:
-    """Take over findings of a room."""
-    for part in found:
-        context.findings.extend(part)
-
-
 def plain_grades(context: Context, table: pd.DataFrame, label: str) -> tuple[pd.DataFrame, pd.DataFrame]:
     """Grades as plain numbers: limits resolved, methods that are not accepted left out."""
     from sms_resource.samples.assays import resolve_assays
@@ -170,82 +174,6 @@ def plain_grades(context: Context, table: pd.DataFrame, label: str) -> tuple[pd.
     if len(table):  # a table that was not given lacks nothing
         add_findings(context, found)
     return frame, summary
-
-
-def describe(
-    context: Context,
-    assays: pd.DataFrame,
-    surface: pd.DataFrame,
-    intervals: pd.DataFrame,
-    collars: pd.DataFrame,
-    made: Any,
-    paths: Any,
-) -> tuple[Any, dict[str, pd.DataFrame]]:
-    """What the evidence is worth: bias, laboratory, twins, extreme grades, associations."""
-    from sms_resource.samples import (
-        associations,
-        bracket,
-        contacts,
-        lognormal,
-        quality,
-        recovery,
-        topcuts,
-        twins,
-    )
-    from sms_resource.samples import surface as floor
-
-    data: LoadedData = context.done["load"]
-    config = context.config
-    metals, elements = metal_columns(config), all_columns(config)
-    sulphide = config.domains.sulphide
-    inside = made.frame[made.frame["domain"].isin(sulphide)]
-    laboratory = quality.laboratory_quality(
-        data.laboratory,
-        assays,
-        elements=tuple(config.metals.estimate),
-        blank_limits=config.laboratory.blank_limits,
-        family_error=config.laboratory.family_error,
-        pair_limits={element: dict(limits) for element, limits in config.laboratory.pair_limits.items()}
-        or None,
-        confidence=config.laboratory.confidence,
-    )
-    bias = floor.surface_bias(
-        surface,
-        made.frame,
-        metals,
-        config.study.seed,
-        domains=sulphide,
-        distance_m=config.surface_samples.compare_within_m,
-    )
-    pairs = twins.twin_report(collars, inside, config.checks.twin_distance_m, metals=metals)
-    logs = lognormal.lognormal_table(inside, metals)
-    if not len(surface):
-        bias = bias.iloc[:0]
-    add_findings(context, laboratory.findings, floor.surface_findings(bias), pairs.findings)
-    add_findings(context, lognormal.lognormal_findings(logs))
-    deleterious, found = associations.deleterious_summary(inside)
-    add_findings(context, found)
-    profile, contact_verdicts = contacts.contact_analysis(made.frame, intervals, metals)
-    add_findings(context, contacts.contact_findings(contact_verdicts))
-    lost = bracket.lost_core_bracket(
-        assays, data.drill.runs, intervals, paths, metals=metals, densities=data.drill.densities,
-        options=composite_options(config), domains=sulphide,
-    )  # fmt: skip
-    tables = {
-        "recovery_bias": recovery.recovery_bias(inside, metals),
-        "surface_bias": bias,
-        "top_cut_study": topcuts.top_cut_study(inside, metals),
-        "twins": pairs.comparison if len(pairs.comparison) else pairs.pairs,
-        "lognormal": logs,
-        "deleterious": deleterious,
-        "associations": associations.metal_associations(inside, elements, by_domain=True),
-        "tracers": associations.tracer_ratios(inside, thresholds=dict(config.associations.tracer_thresholds)),
-        "contact_analysis": profile,
-        "contact_verdicts": contact_verdicts,
-        "statistics": _statistics(inside, metals),
-        "lost_core": lost,
-    }
-    return laboratory, tables
 
 
 def domain_table(data: LoadedData, config: Any) -> pd.DataFrame:
@@ -265,27 +193,6 @@ def domain_table(data: LoadedData, config: Any) -> pd.DataFrame:
             "domain": config.domains.sulphide[0],
         }
     )
-
-
-def _statistics(composites: pd.DataFrame, metals: list[str]) -> pd.DataFrame:
-    """Weighted mean, spread and quantiles of each metal in each domain."""
-    rows = []
-    groups = [("all", composites), *composites.groupby("domain", sort=True)]
-    for domain, part in groups:
-        for metal in metals:
-            known = part[metal].notna() & (part["weight"] > 0)
-            values, weights = part.loc[known, metal].to_numpy(), part.loc[known, "weight"].to_numpy()
-            if not len(values):
-                continue
-            mean = float(np.average(values, weights=weights))
-            spread = float(np.sqrt(np.average((values - mean) ** 2, weights=weights)))
-            low, middle, high = np.quantile(values, [0.1, 0.5, 0.9])
-            rows.append(
-                {"domain": domain, "metal": metal, "n": len(values), "mean": mean, "sd": spread,
-                 "cv": spread / mean if mean else np.nan, "minimum": values.min(), "p10": low, "median": middle,
-                 "p90": high, "maximum": values.max()}
-            )  # fmt: skip
-    return pd.DataFrame(rows)
 
 
 def density(context: Context) -> DensityState:

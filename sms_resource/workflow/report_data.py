@@ -29,12 +29,11 @@ from sms_resource.workflow.means import (
     check_rows,
     mean_rows,
     named_axis,
-    neighbourhood_rows,
-    recommendation,
     skins_rule,
     support_rows,
     waterfall_rows,
 )
+from sms_resource.workflow.neighbourhood import recommendation, timeless
 from sms_resource.workflow.stage import one_domain
 from sms_resource.workflow.state import (
     BlockState,
@@ -284,7 +283,7 @@ def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
         leave_one_out_summary=validation.cross_summary,
         estimators=comparison,
         change_of_support=support_rows(validation.support, done, config),
-        neighbourhood=neighbourhood_rows(validation.neighbourhood),
+        neighbourhood=timeless(validation.neighbourhood),
         neighbourhood_note=recommendation(validation.neighbourhood),
         checks=check_rows(validation.table),
     )

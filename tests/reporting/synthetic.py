@@ -272,8 +272,44 @@ def full_report_data(*, cells: int = 4, name: str = "Example Mound", note: str =
                 "mean_before": [2.6, 41.0],
                 "mean_after": [2.5, 39.6],
                 "metal_removed_pct": [3.8, 3.4],
+                "proposed": [np.nan, 160.0],
+                "effect_of": "cut in use",
+                "cv_before": [0.9, 0.8],
+                "cv_after": [0.7, 0.7],
+                "holes_cut": ["H01 (2), H02 (1)", "H03 (4)"],
                 "reason": "break in the log-probability plot",
             }
+        ),
+        top_cut_curves=_curves(domains),
+        weighting="recovered length",
+        positions=pd.DataFrame(
+            {
+                "table": ["collars"],
+                "method": ["USBL"],
+                "positions": [40],
+                "with_sigma": [40],
+                "sigma_median_m": [4.0],
+            }
+        ),
+        hole_ends=pd.DataFrame(
+            {"ended_in": ["sulphide", "host", "lost"], "holes": [10, 28, 2], "share_pct": [25.0, 70.0, 5.0]}
+        ),
+        collar_match=pd.DataFrame({"quantity": ["median_m"], "before": [0.82], "after": [0.0]}),
+        twin_pairs=pd.DataFrame({"hole_a": ["H01"], "hole_b": ["H02"], "distance_m": [1.5], "dz_m": [0.1]}),
+        twin_clusters=pd.DataFrame({"site": [1], "holes": [2], "hole_ids": ["H01, H02"], "spread_m": [0.75]}),
+        twins=pd.DataFrame(
+            {
+                "hole_a": "H01",
+                "hole_b": "H02",
+                "metal": METALS,
+                "shared_m": 9.0,
+                "mean_a": [3.0, 2.0, 2.5, 40.0],
+                "mean_b": [3.3, 1.9, 2.1, 44.0],
+                "relative_pct": [-9.5, 5.1, 17.4, -9.5],
+            }
+        ),
+        dredge_tracks=pd.DataFrame(
+            {"dredge_id": ["D1"], "length_m": [216.0], "azimuth": [77.0], "half_length_m": [108.0]}
         ),
         assay_summary=pd.DataFrame(
             {"element": ["cu", "au"], "below_detection": [0, 4], "over_limit": [1, 0]}
@@ -524,7 +560,44 @@ def _laboratory(rng):
         table=pd.DataFrame(rows),
         verdicts=verdicts,
         pairs=pd.DataFrame(pairs),
+        check_pairs=pd.DataFrame(pairs).assign(stage=""),
+        checks=pd.DataFrame(
+            {
+                "element": ["cu"],
+                "n": [60],
+                "slope": [1.01],
+                "slope_low": [0.99],
+                "slope_high": [1.03],
+                "intercept": [0.0],
+                "intercept_low": [-0.05],
+                "intercept_high": [0.05],
+                "verdict": ["good"],
+            }
+        ),
         duplicates=pd.DataFrame({"element": ["cu"], "stage": ["pulp"], "n": [30], "cv_avg_pct": [6.1]}),
+    )
+
+
+def _curves(domains):
+    """What a cut would do, for every domain and metal."""
+    cut = np.linspace(1.0, 3.0, 9)
+    return pd.concat(
+        [
+            pd.DataFrame(
+                {
+                    "domain": domain,
+                    "metal": metal,
+                    "cut": cut * MEANS[metal],
+                    "mean": MEANS[metal] * (1 - 0.1 * (3 - cut) ** 2 / 4),
+                    "cv": 0.8 - 0.1 * (3 - cut),
+                    "metal_removed_pct": 10 * (3 - cut) ** 2 / 4,
+                    "n_cut": np.arange(8, -1, -1) * 3,
+                }
+            )
+            for domain in domains
+            for metal in METALS
+        ],
+        ignore_index=True,
     )
 
 
@@ -688,7 +761,9 @@ def _estimation(rng, blocks, composites, domains):
         ),
         neighbourhood=pd.DataFrame(
             {
-                "sample_number": [4, 8, 16, 24],
+                "varied": "samples",
+                "setting": ["4", "8", "16", "24"],
+                "used": [False, False, True, False],
                 "slope": [0.6, 0.75, 0.82, 0.84],
                 "efficiency": [0.2, 0.35, 0.41, 0.42],
                 "negative_weight_sum": [0.0, -0.01, -0.03, -0.06],
@@ -747,7 +822,7 @@ def _value(blocks):
     )
     heat = pd.DataFrame(
         [
-            {"x": c, "y": d, "value": 4e5 * d * np.exp(-c / 4)}
+            {"x": f"{c:g}", "y": f"{d:g}", "dry_tonnes": 4e5 * d * np.exp(-c / 4), "cu_pct": 3.0 + c}
             for c in (0.5, 1.0, 1.5, 2.0)
             for d in (0.9, 1.0, 1.1)
         ]
@@ -761,8 +836,7 @@ def _value(blocks):
             {"scenario": ["base", "density low"], "dry_tonnes": [4.2e5, 3.9e5], "cu_pct": [3.0, 3.0]}
         ),
         tornado=tornado,
-        heat_map=heat,
-        heat_map_labels=("Cut-off, Cu (%)", "Factor on dry density (ratio)", "Dry tonnes above cut-off"),
+        heat_maps=({"label": "both", "x": "cutoff.at", "y": "density.factor", "frame": heat},),
         equivalent={
             "formula": "CuEq = Cu + 0.378 Au + 0.0030 Ag",
             "statement": "The study states that each metal can be recovered and sold.",

@@ -133,3 +133,9 @@ def test_positions_by_method() -> None:
     table, findings = position_table(frame, "collars")
     assert table.set_index("method").loc["USBL", "sigma_median_m"] == 5.0
     assert codes(findings) == ["position-sigma-missing"]
+
+
+def test_how_a_sample_was_assayed_is_not_how_it_was_placed() -> None:
+    frame = pd.DataFrame({"method": ["laboratory", "handheld"], "position_sigma_m": [2.0, 3.0]})
+    table, _ = position_table(frame, "surface samples")
+    assert table["method"].tolist() == ["not given"] and table["positions"].tolist() == [2]

@@ -6,6 +6,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
+from sms_resource.samples.topcut_tables import cut_curves, cut_summary
 from sms_resource.samples.topcuts import (
     apply_top_cuts,
     cut_curve,
@@ -125,3 +126,65 @@ def test_no_cuts_change_nothing() -> None:
 def test_a_cut_must_be_positive(value: float) -> None:
     with pytest.raises(ValueError, match="positive"):
         apply_top_cuts(composites([1.0]), {("massive", "au_gpt"): value})
+
+
+def test_curve_equals_cutting_one_value_after_another() -> None:
+    rng = np.random.default_rng(12)
+    value, weight = rng.lognormal(5.0, 1.5, 500), rng.uniform(0.1, 2.0, 500)
+    curve = cut_curve(value, weight)
+    for row in curve.iloc[::17].itertuples():
+        lowered = np.minimum(value, row.cut)
+        mean = np.average(lowered, weights=weight)
+        spread = np.sqrt(np.average((lowered - mean) ** 2, weights=weight))
+        assert row.mean == pytest.approx(mean, rel=1e-12)
+        assert row.cv == pytest.approx(spread / mean, rel=1e-9)
+        assert row.metal_removed_pct == pytest.approx(
+            100 * (1 - mean / np.average(value, weights=weight)), abs=1e-9
+        )
+        assert row.n_cut == (value > row.cut).sum()
+    assert curve["metal_removed_pct"].iloc[-1] == 0.0 and curve["n_cut"].iloc[-1] == 0
+    assert (np.diff(curve["mean"]) > 0).all()
+
+
+def test_curves_of_every_domain_and_metal_end_uncut() -> None:
+    rng = np.random.default_rng(3)
+    frame = composites(rng.lognormal(1, 1, 900), cu_pct=rng.lognormal(0, 0.4, 900), weight=1.0)
+    frame["domain"] = np.where(frame.index % 2 == 0, "cap", "massive")
+    frame.loc[:9, "au_gpt"] = np.nan
+    curves = cut_curves(frame, ["au_gpt", "cu_pct", "zn_pct"])
+    assert set(zip(curves["domain"], curves["metal"])) == {
+        (domain, metal) for domain in ("cap", "massive") for metal in ("au_gpt", "cu_pct")
+    }
+    for (domain, metal), part in curves.groupby(["domain", "metal"]):
+        whole = frame.loc[(frame["domain"] == domain), metal].dropna()
+        assert len(part) <= 60 and part["n_cut"].iloc[-1] == 0
+        assert part["cut"].iloc[-1] == whole.max() and part["mean"].iloc[-1] == pytest.approx(whole.mean())
+        assert part["cut"].iloc[0] >= np.quantile(whole, 0.8)
+
+
+def test_the_summary_puts_what_is_used_beside_what_is_proposed() -> None:
+    body = np.random.default_rng(1).lognormal(1, 0.6, 300)
+    frame = composites([*body, 150.0, 180.0, 260.0], weight=2.0)
+    study = top_cut_study(frame, ["au_gpt"], weight_column="weight")
+    none = pd.DataFrame({"domain": [], "metal": [], "cut": []})
+    row = cut_summary(frame, study, none).iloc[0]
+    assert np.isnan(row["cut"]) and row["proposed"] == body.max() and row["effect_of"] == "proposed, not used"
+    assert row["n_cut"] == 3 and row["holes_cut"] == "H0 (1), H1 (1), H2 (1)"
+    everywhere = pd.DataFrame({"domain": ["all"], "metal": ["au_gpt"], "cut": [170.0]})
+    row = cut_summary(frame, study, everywhere).iloc[0]
+    assert row["cut"] == 170.0 and row["effect_of"] == "cut in use" and row["n_cut"] == 2
+    assert row["mean_before"] == pytest.approx(frame["au_gpt"].mean())
+    assert row["mean_after"] == pytest.approx(frame["au_gpt"].clip(upper=170.0).mean())
+    assert row["cv_after"] == pytest.approx(frame["au_gpt"].clip(upper=170.0).std(ddof=0) / row["mean_after"])
+    own = pd.DataFrame({"domain": ["all", "massive"], "metal": "au_gpt", "cut": [170.0, 200.0]})
+    assert cut_summary(frame, study, own)["n_cut"].iloc[0] == 1
+    tame = composites(np.full(30, 2.0), weight=1.0)
+    row = cut_summary(tame, top_cut_study(tame, ["au_gpt"]), none).iloc[0]
+    assert row["effect_of"] == "none" and row["n_cut"] == 0 and row["mean_after"] == row["mean_before"] == 2.0
+
+
+def test_means_of_applied_cuts_take_the_weights_of_the_composites() -> None:
+    frame = composites([1.0, 5.0], weight=[3.0, 1.0])
+    _, summary = apply_top_cuts(frame, {("massive", "au_gpt"): 3.0})
+    assert summary["mean_before"].iloc[0] == pytest.approx((3 * 1 + 5) / 4)
+    assert summary["mean_after"].iloc[0] == pytest.approx((3 * 1 + 3) / 4)

@@ -1,0 +1,187 @@
+"""What the samples of a study are worth: bias, laboratory, twins, extreme grades, associations, positions."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+from sms_resource.loaders.tables import LoadedData
+from sms_resource.workflow.stage import Context
+
+
+@dataclass(frozen=True, eq=False)
+class JoinedSamples:
+    """Samples as the stage composite has joined them.
+
+    Attributes
+    ----------
+    assays, surface : DataFrame
+        Accepted assays and surface samples as plain numbers.
+    intervals : DataFrame
+        hole_id, from_m, to_m, domain.
+    collars : DataFrame
+        Collars after the match with the seafloor.
+    composites : DataFrame
+        All domains, uncut.
+    paths : HolePaths
+    metals, elements : tuple of str
+        Columns that are estimated, and all that are read.
+    """
+
+    assays: pd.DataFrame
+    surface: pd.DataFrame
+    intervals: pd.DataFrame
+    collars: pd.DataFrame
+    composites: pd.DataFrame
+    paths: Any
+    metals: tuple[str, ...]
+    elements: tuple[str, ...]
+
+
+def add_findings(context: Context, *found: Any) -> None:
+    """Take over findings of a room."""
+    for part in found:
+        context.findings.extend(part)
+
+
+def describe(
+    context: Context, joined: JoinedSamples, options: dict[str, Any]
+) -> tuple[Any, dict[str, pd.DataFrame]]:
+    """The verdicts on the laboratory, and the tables of the evidence; ``options`` are those of compositing."""
+    from sms_resource.samples import bracket, contacts, lognormal, recovery, topcut_tables, topcuts
+
+    data: LoadedData = context.done["load"]
+    config = context.config
+    metals = list(joined.metals)
+    sulphide = config.domains.sulphide
+    inside = joined.composites[joined.composites["domain"].isin(sulphide)]
+    laboratory = _laboratory(context, joined)
+    logs = lognormal.lognormal_table(inside, metals)
+    add_findings(context, lognormal.lognormal_findings(logs))
+    profile, contact_verdicts = contacts.contact_analysis(joined.composites, joined.intervals, metals)
+    add_findings(context, contacts.contact_findings(contact_verdicts))
+    tables = {
+        "recovery_bias": recovery.recovery_bias(inside, metals),
+        "top_cut_study": topcuts.top_cut_study(inside, metals, weight_column="weight"),
+        "top_cut_curves": topcut_tables.cut_curves(inside, metals),
+        "lognormal": logs,
+        "contact_analysis": profile,
+        "contact_verdicts": contact_verdicts,
+        "statistics": statistics(inside, metals),
+        "lost_core": bracket.lost_core_bracket(
+            joined.assays, data.drill.runs, joined.intervals, joined.paths, metals=metals,
+            densities=data.drill.densities, options=options, domains=sulphide,
+        ),
+        **_surface(context, joined, metals),
+        **_places(context, joined, inside, metals),
+        **_associations(context, joined, inside),
+    }  # fmt: skip
+    return laboratory, tables
+
+
+def _laboratory(context: Context, joined: JoinedSamples) -> Any:
+    from sms_resource.samples import quality
+
+    data: LoadedData = context.done["load"]
+    config = context.config
+    limits = {element: dict(pair) for element, pair in config.laboratory.pair_limits.items()}
+    made = quality.laboratory_quality(
+        data.laboratory,
+        joined.assays,
+        elements=tuple(config.metals.estimate),
+        blank_limits=config.laboratory.blank_limits,
+        family_error=config.laboratory.family_error,
+        pair_limits=limits or None,
+        confidence=config.laboratory.confidence,
+    )
+    add_findings(context, made.findings)
+    return made
+
+
+def _surface(context: Context, joined: JoinedSamples, metals: list[str]) -> dict[str, pd.DataFrame]:
+    """Surface samples against core, and dredges as the tracks that they are."""
+    from sms_resource.samples import surface as floor
+
+    data: LoadedData = context.done["load"]
+    config = context.config
+    bias = floor.surface_bias(
+        joined.surface,
+        joined.composites,
+        metals,
+        config.study.seed,
+        domains=config.domains.sulphide,
+        distance_m=config.surface_samples.compare_within_m,
+    )
+    if not len(joined.surface):
+        bias = bias.iloc[:0]
+    add_findings(context, floor.surface_findings(bias))
+    if not len(data.dredges):
+        return {"surface_bias": bias}
+    tracks, found = floor.dredge_tracks(data.dredges)
+    add_findings(context, found)
+    return {"surface_bias": bias, "dredge_tracks": tracks}
+
+
+def _places(
+    context: Context, joined: JoinedSamples, inside: pd.DataFrame, metals: list[str]
+) -> dict[str, pd.DataFrame]:
+    """Twins and clusters of holes, positions by method, and whether collars would fit better elsewhere in plan."""
+    from sms_resource.samples import position, twins
+
+    data: LoadedData = context.done["load"]
+    pairs = twins.twin_report(joined.collars, inside, context.config.checks.twin_distance_m, metals=metals)
+    assert data.seafloor is not None  # its absence is an error of the stage load
+    add_findings(
+        context,
+        pairs.findings,
+        position.horizontal_fit_findings(position.horizontal_fit(joined.collars, data.seafloor)),
+    )
+    by_method = []
+    for table, label in ((joined.collars, "collars"), (joined.surface, "surface samples")):
+        if len(table):
+            placed, found = position.position_table(table, label)
+            by_method.append(placed)
+            add_findings(context, found)
+    return {
+        "twin_pairs": pairs.pairs,
+        "twin_clusters": pairs.clusters[pairs.clusters["holes"] > 1].reset_index(drop=True),
+        "twins": pairs.comparison,
+        "positions": pd.concat(by_method, ignore_index=True) if by_method else pd.DataFrame(),
+    }
+
+
+def _associations(context: Context, joined: JoinedSamples, inside: pd.DataFrame) -> dict[str, pd.DataFrame]:
+    from sms_resource.samples import associations
+
+    deleterious, found = associations.deleterious_summary(inside)
+    add_findings(context, found)
+    thresholds = dict(context.config.associations.tracer_thresholds)
+    return {
+        "deleterious": deleterious,
+        "associations": associations.metal_associations(inside, list(joined.elements), by_domain=True),
+        "tracers": associations.tracer_ratios(inside, thresholds=thresholds),
+    }
+
+
+def statistics(composites: pd.DataFrame, metals: list[str]) -> pd.DataFrame:
+    """Weighted mean, spread and quantiles of each metal in each domain."""
+    rows = []
+    groups = [("all", composites), *composites.groupby("domain", sort=True)]
+    for domain, part in groups:
+        for metal in metals:
+            known = part[metal].notna() & (part["weight"] > 0)
+            values, weights = part.loc[known, metal].to_numpy(), part.loc[known, "weight"].to_numpy()
+            if not len(values):
+                continue
+            mean = float(np.average(values, weights=weights))
+            spread = float(np.sqrt(np.average((values - mean) ** 2, weights=weights)))
+            low, middle, high = np.quantile(values, [0.1, 0.5, 0.9])
+            rows.append(
+                {"domain": domain, "metal": metal, "n": len(values), "mean": mean, "sd": spread,
+                 "cv": spread / mean if mean else np.nan, "minimum": values.min(), "p10": low, "median": middle,
+                 "p90": high, "maximum": values.max()}
+            )  # fmt: skip
+    return pd.DataFrame(rows)
