@@ -36,7 +36,8 @@ class NeighbourhoodStudy:
         ``max_samples``, ``block_x_m``, ``block_y_m``, ``block_z_m``, ``points_x``, ``points_y``, ``points_z``,
         ``column``, ``targets``, ``estimated_share``, ``mean_slope``, ``slope_p10``, ``mean_efficiency``,
         ``negative_weight_share`` (targets with a negative sum below -0.05), ``mean_negative_weight``,
-        ``mean_variance``, ``block_variance``, ``microseconds_per_target`` (of this machine, this time).
+        ``mean_variance``, ``block_variance``, ``mean_samples``, ``operations_per_target`` (see :func:`operations`),
+        ``microseconds_per_target`` (of this machine, this time).
     max_samples, block_size, discretisation :
         The recommended settings; None where that was not varied.
     recommendation : str
@@ -59,6 +60,28 @@ def _thinned(targets: ArrayLike, most: int) -> np.ndarray:
     if len(places) <= most:
         return places
     return places[np.linspace(0, len(places) - 1, most).round().astype(int)]
+
+
+def operations(samples: np.ndarray, points: int) -> float:
+    """Mean floating-point operations of an estimate, counted from its systems and not measured.
+
+    Parameters
+    ----------
+    samples : ndarray (targets,)
+        Samples that each target found.
+    points : int
+        Points that stand for a block.
+
+    Returns
+    -------
+    float
+        Covariances between samples (17 operations each) and with the points (14 each), factorisation (n^3/3 + n^2) and
+        weights (2 n^2 + 6 n); an upper bound where targets that see the same samples share a factorisation.
+    """
+    n = np.asarray(samples, dtype=float)
+    if not len(n):
+        return float("nan")
+    return float(np.mean(8.5 * n * (n - 1.0) + 14.0 * n * points + n**3 / 3.0 + 3.0 * n**2 + 6.0 * n))
 
 
 def neighbourhood_study(
@@ -132,6 +155,7 @@ def neighbourhood_study(
             slope, negative = of(result.slope_of_regression), of(result.negative_weight_sum)
             slope = slope[np.isfinite(slope)]
             some = len(negative) > 0
+            counted = of(result.sample_count).astype(float)
             rows.append(
                 {
                     "varied": varied,
@@ -148,6 +172,8 @@ def neighbourhood_study(
                     "mean_negative_weight": negative.mean() if some else np.nan,
                     "mean_variance": of(result.variance).mean() if some else np.nan,
                     "block_variance": block_variance(one, block, points),
+                    "mean_samples": float(counted.mean()) if some else np.nan,
+                    "operations_per_target": operations(counted, points[0] * points[1] * points[2]),
                     "microseconds_per_target": taken / max(len(places), 1) * 1e6,
                 }
             )

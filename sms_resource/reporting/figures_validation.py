@@ -1,4 +1,4 @@
-"""Checks of the estimate as pictures: swaths, leave one hole out, change of support, estimators, neighbourhood."""
+"""Checks of the estimate as pictures: swaths, leave one hole out, change of support, estimators."""
 
 from __future__ import annotations
 
@@ -269,64 +269,4 @@ def estimators(data: ReportData) -> Drawing | None:
         "Dot plot of mean grades by estimator.",
         figure,
         rows,
-    )
-
-
-def neighbourhood(data: ReportData) -> Drawing | None:
-    """Slope, efficiency and negative weights against the number of samples."""
-    frame = data.estimation.neighbourhood
-    number = next(
-        (c for c in ("sample_number", "samples", "max_samples") if frame is not None and c in frame), None
-    )
-    if frame is None or number is None:
-        return None
-    measures = [
-        (c, t)
-        for c, t in (
-            ("slope", "Slope of regression (ratio)"),
-            ("slope_of_regression", "Slope of regression (ratio)"),
-            ("efficiency", "Kriging efficiency (ratio)"),
-            ("kriging_efficiency", "Kriging efficiency (ratio)"),
-            ("negative_weight_sum", "Sum of negative weights (ratio)"),
-        )
-        if c in frame
-    ]
-    if not measures:
-        return None
-    figure, axes = style.new_figure(3.3 * len(measures), 2.7, 1, len(measures))
-    groups = [
-        c for c in ("block_size", "discretisation") if c in frame and frame[c].astype(str).nunique() > 1
-    ]
-    parts = (
-        list(frame.groupby([frame[c].astype(str) for c in groups], sort=False)) if groups else [("", frame)]
-    )
-    for axis, (column, text) in zip(axes[0], measures):
-        for place, (name, part) in enumerate(parts[:7]):
-            label = ", ".join(name) if isinstance(name, tuple) else str(name)
-            mean = part.groupby(number)[column].mean()
-            axis.plot(
-                mean.index,
-                mean.to_numpy(),
-                marker=style.MARKERS[place % 7],
-                ms=4,
-                color=style.LINES[place % 7],
-                label=label or None,
-            )
-        axis.set_xlabel("Most samples (count)")
-        axis.set_ylabel(text)
-    if groups:
-        figure.legend(
-            *axes[0, 0].get_legend_handles_labels(),
-            loc="outside lower center",
-            ncols=4,
-            title=" and ".join(g.replace("_", " ") for g in groups),
-        )
-    return Drawing(
-        "neighbourhood",
-        "estimate",
-        "Neighbourhood study",
-        data.estimation.neighbourhood_note or "Slope and efficiency against the number of samples.",
-        "Curves of slope, efficiency and negative weights against the number of samples.",
-        figure,
-        frame.drop(columns=[c for c in ("seconds", "time_s") if c in frame]),
     )

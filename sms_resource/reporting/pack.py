@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from concurrent.futures import Future
+from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 
 from sms_resource.reporting.checklist import write_checklist
@@ -13,9 +13,7 @@ from sms_resource.reporting.report import Report, make_report
 from sms_resource.reporting.workbook import write_workbook
 
 
-def write_pack(
-    data: ReportData, folder: Path, report: Report | None = None, pages: Future[Path] | None = None
-) -> list[Path]:
+def write_pack(data: ReportData, folder: Path, report: Report | None = None) -> list[Path]:
     """Write ``report.pdf``, ``workbook.xlsx``, ``checklist.md``, ``checklist.docx`` and ``method.md``.
 
     Parameters
@@ -25,8 +23,6 @@ def write_pack(
         Output folder, made where it does not exist.
     report : Report, optional
         A report already made of the same data, so that nothing is drawn twice; made (and written) if not given.
-    pages : Future, optional
-        ``report.pdf``, where it is being set already.
 
     Returns
     -------
@@ -36,10 +32,12 @@ def write_pack(
     folder = Path(folder)
     folder.mkdir(parents=True, exist_ok=True)
     made = report if report is not None else make_report(data, folder)
-    others = [
-        write_workbook(data, folder / "workbook.xlsx"),
-        *write_checklist(data, folder),
-        write_method(data, folder / "method.md"),
-    ]
-    name = folder / "report.pdf"
-    return [write_pdf(made.document, made.pictures, name) if pages is None else pages.result(), *others]
+    with ThreadPoolExecutor(1) as pool:
+        # Pages are set by a library that leaves this interpreter free; the rest is written meanwhile.
+        pages = pool.submit(write_pdf, made.document, made.pictures, folder / "report.pdf")
+        others = [
+            write_workbook(data, folder / "workbook.xlsx"),
+            *write_checklist(data, folder),
+            write_method(data, folder / "method.md"),
+        ]
+        return [pages.result(), *others]

@@ -2,9 +2,7 @@
 
 from __future__ import annotations
 
-import pandas as pd
-
-from sms_resource.reporting.data import ReportData
+from sms_resource.reporting.data import Estimation, ReportData, has
 from sms_resource.reporting.elements import (
     Block,
     Bullets,
@@ -21,11 +19,6 @@ from sms_resource.reporting.splits import skins_table, split_tables
 from sms_resource.reporting.summaries import checks_shown
 from sms_resource.reporting.tonnage import rows_at_cutoff, screens_table, tonnage_table
 from sms_resource.units import element_label
-
-
-def untimed(frame: pd.DataFrame | None) -> pd.DataFrame | None:
-    """A frame without measured times: the same study gives the same bytes."""
-    return frame if frame is None else frame.drop(columns=[c for c in ("seconds", "time_s") if c in frame])
 
 
 def estimate(data: ReportData) -> list[Block]:
@@ -49,9 +42,15 @@ def estimate(data: ReportData) -> list[Block]:
     with_table(blocks, s.support_variance, "Realised against theoretical block variance")
     blocks.append(Slot(("change_of_support",)))
     with_table(blocks, s.frames_effect, "Effect of the vertical frame")
-    with_table(blocks, untimed(s.neighbourhood), "Neighbourhood study", note=s.neighbourhood_note, most=30)
+    with_table(blocks, s.neighbourhood, "Neighbourhood study", note=neighbourhood_words(s), most=30)
     blocks.append(Slot(("neighbourhood",)))
     return blocks if s.blocks is not None or s.settings else []
+
+
+def neighbourhood_words(s: Estimation) -> str:
+    """What the study recommends, and where its times are."""
+    times = "Times differ from run to run: those of this one are in the folder measured/ of the results."
+    return f"{s.neighbourhood_note} {times}" if has(s.neighbourhood) else s.neighbourhood_note
 
 
 def classes(data: ReportData) -> list[Block]:

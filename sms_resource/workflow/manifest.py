@@ -49,11 +49,11 @@ def input_hashes(study: Study) -> dict[str, dict[str, Any]]:
 
 
 def output_hashes(folder: Path) -> dict[str, str]:
-    """SHA-256 of every file of a folder, by its relative path; the manifest itself is left out."""
+    """SHA-256 of every file of a folder, by its relative path; the manifest and what was measured are left out."""
     return {
         path.relative_to(folder).as_posix(): file_hash(path)
         for path in sorted(folder.rglob("*"))
-        if path.is_file() and path.name != "manifest.json"
+        if path.is_file() and path.name != "manifest.json" and path.parent != folder / "measured"
     }
 
 

@@ -45,22 +45,6 @@ def skins_rule(screens: Any, host: dict[str, float] | None) -> str:
     )
 
 
-def neighbourhood_rows(table: pd.DataFrame) -> pd.DataFrame:
-    """Quality of the estimate against the number of samples, as the figure wants it."""
-    if not len(table):
-        return table
-    names = {
-        "max_samples": "sample_number", "mean_slope": "slope", "mean_efficiency": "efficiency",
-        "mean_negative_weight": "negative_weight_sum",
-    }  # fmt: skip
-    return table[table["varied"] == "samples"][list(names)].rename(columns=names)
-
-
-def recommendation(table: pd.DataFrame) -> str:
-    """What the study of neighbourhoods recommends, and why."""
-    return str(table["recommendation"].iloc[0]) if len(table) else ""
-
-
 def named_axis(swaths: pd.DataFrame, frame: str) -> pd.DataFrame:
     """Swaths of all domains, with the upright axis called what it is in the vertical frame."""
     names = {

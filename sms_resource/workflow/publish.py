@@ -2,23 +2,25 @@
 
 from __future__ import annotations
 
+import hashlib
 import json
 import time
-from concurrent.futures import Executor, ThreadPoolExecutor
+from concurrent.futures import Executor, Future, ThreadPoolExecutor
 from pathlib import Path
 from typing import Any
 
 import pandas as pd
 
 from sms_resource.findings import Findings
-from sms_resource.reporting.data import ReportData
+from sms_resource.reporting.figures_neighbourhood import measured
 from sms_resource.reporting.pack import write_pack
-from sms_resource.reporting.pdf import write_pdf
-from sms_resource.reporting.report import Report, make_report
+from sms_resource.reporting.reading import content
+from sms_resource.reporting.report import make_report
 from sms_resource.study import Study, decisions
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.layers import write_layers
 from sms_resource.workflow.manifest import versions, write_manifest
+from sms_resource.workflow.neighbourhood import recommendation
 from sms_resource.workflow.splits import write_splits
 from sms_resource.workflow.stage import Outcome, Progress, StageCache, StageRecord, code_fingerprint
 from sms_resource.workflow.state import ClassState
@@ -56,14 +58,12 @@ def write_results(
     begun = time.perf_counter()
     done = outcome.done
     ledger = ledger_table(study, extra)
-    data, report = write_report(folder, study, outcome, inputs, ledger, extra, store)
-    with ThreadPoolExecutor(2) as pool:
-        # Pages are set by a library that leaves this interpreter free, so the tables are written meanwhile.
-        pages = pool.submit(write_pdf, report.document, report.pictures, folder / "report.pdf")
-        write_tables(folder, study, done, outcome.findings, pool)
+    with ThreadPoolExecutor(1) as pool:
+        blocks = write_tables(folder, study, done, outcome.findings, pool)
         write_layers(folder / "layers", study, done)
         ledger.to_csv(folder / "decisions.csv", index=False)
-        files = [*report.paths, *write_pack(data, folder, report, pages)]
+        files = write_report_files(folder, study, outcome, inputs, ledger, extra, store)
+        blocks.result()
     if extra and extra.get("scenarios") is not None:
         extra["scenarios"].to_csv(folder / "scenarios.csv", index=False)
     seconds = time.perf_counter() - begun
@@ -95,12 +95,12 @@ def block_columns(frame: pd.DataFrame, metals: list[str]) -> list[str]:
 
 def write_tables(
     folder: Path, study: Study, done: dict[str, Any], findings: Findings, pool: Executor
-) -> None:
-    """Block model (by a thread of the pool), grade-tonnage, composites, variograms, validation and findings."""
+) -> Future[None]:
+    """Composites, grade-tonnage, variograms, validation, findings; the block model by a thread that is returned."""
     metals = metal_columns(study.config)
     state: ClassState = done["classify"]
     frame = state.frame[block_columns(state.frame, metals)]
-    blocks = pool.submit(frame.to_parquet, folder / "block_model.parquet", index=False, compression="zstd")
+    writing = pool.submit(frame.to_parquet, folder / "block_model.parquet", index=False, compression="zstd")
     state.grade_tonnage.to_csv(folder / "grade_tonnage.csv", index=False)
     write_splits(folder, state.tables)
     composites = done["composite"].composites
@@ -114,7 +114,23 @@ def write_tables(
     write_json(folder / "variograms.json", records)
     done["validate"].table.to_csv(folder / "validation.csv", index=False)
     write_json(folder / "findings.json", findings.to_records())
-    blocks.result()
+    return writing
+
+
+def write_times(folder: Path, done: dict[str, Any], store: StageCache | None) -> None:
+    """The study of neighbourhoods with its times, which no two runs share; the manifest does not hold its hashes."""
+    table = done["validate"].neighbourhood
+    if not len(table):
+        return
+    key = hashlib.sha256(b"times " + code_fingerprint().encode() + content(table)).hexdigest()
+    files = store.get(key) if store is not None else None
+    if not isinstance(files, tuple):
+        files = measured(table.drop(columns="recommendation"), recommendation(table))
+        if store is not None:
+            store.put(key, files)
+    folder.mkdir()
+    for ending, made in zip(("png", "svg", "csv"), files):
+        (folder / f"neighbourhood.{ending}").write_bytes(made)
 
 
 def write_json(path: Path, content: Any) -> None:
@@ -144,7 +160,7 @@ def ledger_table(study: Study, extra: dict[str, Any] | None = None) -> pd.DataFr
     return pd.DataFrame(rows)
 
 
-def write_report(
+def write_report_files(
     folder: Path,
     study: Study,
     outcome: Outcome,
@@ -152,8 +168,8 @@ def write_report(
     ledger: pd.DataFrame,
     extra: dict[str, Any] | None,
     store: StageCache | None = None,
-) -> tuple[ReportData, Report]:
-    """Write report.html and its figures; return what they are made from, and the report."""
+) -> list[Path]:
+    """The report, its figures and the pack that a CP takes away."""
     from sms_resource.workflow.report_data import report_data
     from sms_resource.workflow.truth import truth_page
 
@@ -164,4 +180,6 @@ def write_report(
     }
     truth = truth_page(study, outcome.done)
     data = report_data(study, outcome.done, outcome.findings, ledger, manifest, truth, extra)
-    return data, make_report(data, folder, store, code_fingerprint())
+    report = make_report(data, folder, store, code_fingerprint())
+    write_times(folder / "measured", outcome.done, store)
+    return [*report.paths, *write_pack(data, folder, report)]

@@ -12,6 +12,7 @@ from sms_resource.units import contained_tonnes, element_column
 from sms_resource.workflow.estimation import companion_grades, neighbourhoods
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.lost_core import lost_core_runs, totals
+from sms_resource.workflow.neighbourhood import neighbourhood_table
 from sms_resource.workflow.stage import Context
 from sms_resource.workflow.state import (
     BlockState,
@@ -320,41 +321,6 @@ def geometry_table(body: BodyState, made: EstimateState, config: Any) -> pd.Data
              "change_pct": 100.0 * (tonnes / base - 1.0), "dry_tonnes": tonnes, "change_dry_tonnes": tonnes - base}
         )  # fmt: skip
     return pd.concat([table, pd.DataFrame(rows)], ignore_index=True)
-
-
-def neighbourhood_table(context: Context) -> pd.DataFrame:
-    """Quality of the estimate against the number of samples, where the study asks for it."""
-    config = context.config
-    if not config.validation.neighbourhood_study:
-        return pd.DataFrame()
-    from sms_resource.geostatistics.neighbourhood_study import neighbourhood_study
-
-    blocks: BlockState = context.done["blocks"]
-    state: VariogramState = context.done["variograms"]
-    made: EstimateState = context.done["estimate"]
-    domain, metal = config.domains.sulphide[0], element_column(config.classes.judged_on)
-    tonnes = made.frame.groupby("domain")["dry_tonnes"].sum()
-    domain = str(tonnes.reindex(config.domains.sulphide).idxmax())
-    part = state.samples[(state.samples["domain"] == domain) & state.samples[metal].notna()]
-    chosen = np.flatnonzero((made.frame["domain"] == domain).to_numpy())
-    picked = chosen[:: max(1, len(chosen) // 400)]
-    size = blocks.model.grid.size
-    found = neighbourhood_study(
-        part[["x", "y", "z"]].to_numpy(dtype=float),
-        part[metal].to_numpy(dtype=float),
-        made.targets[picked],
-        state.inferences[(domain, metal)].model,
-        neighbourhoods(state, domain, config)[-1],
-        block_size=size,
-        discretisation=config.kriging.discretisation,
-        hole_ids=part["hole_id"].to_numpy(dtype=object),
-        block_sizes=[tuple(f * s for s in size) for f in (1.0, 2.0, 4.0)],
-        coincident=config.kriging.coincident,
-        threads=context.threads,
-    )
-    context.findings.note("neighbourhood-study", found.recommendation, "Set search.most_samples.")
-    # Times are for notebooks: the same study must give the same bytes.
-    return found.table.drop(columns="microseconds_per_target").assign(recommendation=found.recommendation)
 
 
 def contained(frame: pd.DataFrame, metal: str) -> float:

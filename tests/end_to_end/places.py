@@ -19,4 +19,8 @@ def tree(folder: Path) -> dict[str, tuple[str, int]]:
 
 def contents(folder: Path, *, without: tuple[str, ...] = ("manifest.json",)) -> dict[str, str]:
     """Digest of every file of a folder but those that tell times."""
-    return {name: digest for name, (digest, _) in tree(folder).items() if name not in without}
+    return {
+        name: digest
+        for name, (digest, _) in tree(folder).items()
+        if name not in without and not name.startswith("measured/")
+    }

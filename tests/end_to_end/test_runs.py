@@ -130,6 +130,23 @@ def test_the_manifest_names_every_byte(run: Run) -> None:
     assert all(stage["seconds"] >= 0 for stage in manifest["stages"])
 
 
+def test_times_of_the_neighbourhood_study_stand_apart(run: Run) -> None:
+    """Table and picture hold time against samples, block size and points; the report holds the rest and says where."""
+    table = pd.read_csv(run.out / "measured" / "neighbourhood.csv")
+    assert list(table["varied"].unique()) == ["samples", "block_size", "discretisation"]
+    assert (table["microseconds_per_target"] > 0).all()
+    assert table.groupby("varied")["used"].sum().max() == 1
+    picture = (run.out / "measured" / "neighbourhood.svg").read_text()
+    assert picture.startswith("<?xml")
+    page = (run.out / "report.html").read_text()
+    assert "measured/" in page
+    plain = pd.read_csv(run.out / "figures" / "data" / "neighbourhood.csv")
+    assert "microseconds_per_target" not in plain
+    assert len(plain) == len(table)
+    cost = plain[plain["varied"] == "samples"]["operations_per_target"]
+    assert cost.is_monotonic_increasing
+
+
 def test_the_ledger_tells_chosen_from_default(run: Run) -> None:
     ledger = pd.read_csv(run.out / "decisions.csv").set_index("key")
     assert ledger.loc["blocks.size_m", "origin"] == "chosen"
