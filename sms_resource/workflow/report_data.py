@@ -241,7 +241,8 @@ def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
         waterfall=waterfall_rows(done["classify"].waterfall, metal_columns(config)),
         sigma_seafloor_m=config.seafloor.sigma_m,
         splits={
-            name: done["classify"].tables[f"grade_tonnage_by_{name}"] for name in ("domain", "bench", "screen")
+            name: done["classify"].tables[f"grade_tonnage_by_{name}"]
+            for name in ("domain", "bench", "screen")
         },
         skins=done["classify"].tables.get("dilution_and_loss"),
         skins_rule=skins_rule(config.screens, done["classify"].facts.get("host")),
@@ -273,7 +274,7 @@ def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
     comparison = validation.comparison.set_index("estimator")[metals].T.rename_axis("metal").reset_index()
     return Estimation(
         settings=settings,
-        blocks=done["classify"].frame,
+        blocks=done["propose"].frame,
         grid=blocks.model.grid.record(),
         means=mean_rows(done, metals),
         swaths=named_axis(validation.swaths, config.blocks.vertical_frame),

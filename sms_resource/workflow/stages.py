@@ -2,7 +2,16 @@
 
 from __future__ import annotations
 
-from sms_resource.workflow import continuity, estimation, evidence, geometry, load, outcome, validation
+from sms_resource.workflow import (
+    continuity,
+    estimation,
+    evidence,
+    geometry,
+    load,
+    outcome,
+    proposal,
+    validation,
+)
 from sms_resource.workflow.stage import Stage
 
 _SAMPLES = ("metals", "domains", "composites")
@@ -71,16 +80,23 @@ VALIDATE = Stage(
     ("load", "composite", "body", "blocks", "density", "variograms", "estimate"),
     validation.validate,
 )
+PROPOSE = Stage(
+    "propose",
+    "Proposing classes",
+    ("study", "data", "prospects", "position", "classes", "screens", "density", "seafloor", "surface_samples",
+     "metals", "domains"),
+    ("load", "composite", "density", "body", "blocks", "variograms", "estimate"),
+    proposal.propose,
+)  # fmt: skip
 CLASSIFY = Stage(
     "classify",
-    "Proposing classes",
-    ("study", "data", "prospects", "position", "classes", "screens", "cutoff", "value", "density", "seafloor",
-     "surface_samples", "metals", "domains"),
-    ("load", "composite", "density", "body", "blocks", "variograms", "estimate"),
+    "Summing tonnes",
+    ("screens", "cutoff", "value", "metals", "domains"),
+    ("density", "body", "blocks", "propose"),
     outcome.classify,
-)  # fmt: skip
+)
 
 CHECK_STAGES = (LOAD, CHECK)
 ESTIMATE_STAGES = (
-    LOAD, CHECK, COMPOSITE, DENSITY, BODY, BLOCKS, VARIOGRAMS, ESTIMATE, VALIDATE, CLASSIFY,
+    LOAD, CHECK, COMPOSITE, DENSITY, BODY, BLOCKS, VARIOGRAMS, ESTIMATE, VALIDATE, PROPOSE, CLASSIFY,
 )  # fmt: skip

@@ -141,6 +141,27 @@ class ValidationState:
 
 
 @dataclass(frozen=True, eq=False)
+class ProposalState:
+    """Output of the stage propose: nothing in it depends on prices, costs or the cut-off.
+
+    Attributes
+    ----------
+    frame : DataFrame
+        One row a block, with proposed_class, class_reasons, kept_share and screened_by.
+    marks : DataFrame
+        The share that each screen takes of each block.
+    """
+
+    frame: pd.DataFrame
+    reasons: pd.DataFrame
+    smoothing: pd.DataFrame
+    waterfall: pd.DataFrame
+    marks: pd.DataFrame
+    tally_label: str
+    tables: dict[str, pd.DataFrame] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, eq=False)
 class ClassState:
     """Output of the stage classify."""
 
