@@ -73,6 +73,8 @@ def _cut(cuts: pd.DataFrame | None, domain: str, metal: str) -> dict[str, Any]:
 
 
 def _panel(axis: Any, part: pd.DataFrame, cut: dict[str, Any]) -> None:
+    from matplotlib.ticker import MaxNLocator
+
     x = part["cut"].to_numpy(float)
     mean, cv = part["mean"].to_numpy(float), part["cv"].to_numpy(float)
     axis.plot(x, 100.0 * mean / mean[-1] if mean[-1] else np.full(len(x), 100.0), color=MEAN, lw=1.5)
@@ -81,6 +83,9 @@ def _panel(axis: Any, part: pd.DataFrame, cut: dict[str, Any]) -> None:
         if np.isfinite(float(cut.get(name, np.nan))):
             axis.axvline(float(cut[name]), color=colour, lw=1.4, ls=line)
     axis.grid(True, axis="y")
+    axis.xaxis.set_major_locator(
+        MaxNLocator(3, steps=[1, 2, 2.5, 5, 10])
+    )  # text is what drawing spends its time on
     if np.isnan(float(cut.get("cut", np.nan))):
         words = "none used" + ("" if np.isfinite(float(cut.get("proposed", np.nan))) else ", none proposed")
         axis.text(0.97, 0.05, words, transform=axis.transAxes, ha="right", fontsize=6.5, color=style.QUIET)
@@ -99,7 +104,7 @@ def _counts(axis: Any, x: np.ndarray, counts: np.ndarray) -> None:
         if not len(at):
             break
         place = float(x[at[-1]])
-        if last - place < 0.13 * span:
+        if last - place < 0.16 * span:
             continue
         last = place
         axis.plot(

@@ -21,6 +21,7 @@ from sms_resource.samples import (
     quality,
     recovery,
     surface,
+    topcut_tables,
     topcuts,
     twins,
 )
@@ -195,7 +196,11 @@ def test_all_but_the_strip_logs_in_five_seconds() -> None:
     frame = made.frame
     recovery.recovery_bias(frame, METALS)
     recovery.recovery_summary(cores, log)
-    topcuts.top_cut_study(frame, METALS)
+    study = topcuts.top_cut_study(frame, METALS, weight_column="weight")
+    curves = topcut_tables.cut_curves(frame, METALS)
+    topcut_tables.cut_summary(frame, study, study)
+    position.position_table(match.collars, "collars")
+    position.horizontal_fit(match.collars, Flat())
     table = density.density_table(pieces, plain, log)
     density.fit_density(table).predict(frame["domain"])
     surface.surface_bias(points, frame, METALS, 1)
@@ -207,3 +212,4 @@ def test_all_but_the_strip_logs_in_five_seconds() -> None:
     quality.laboratory_quality(inserts, plain)
     assert time.process_time() - start < 5.0
     assert len(frame) > 19_000
+    assert len(curves) == 4 * 60  # two domains, two metals
