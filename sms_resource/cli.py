@@ -231,13 +231,13 @@ def view(
         float | None, typer.Option(help="Azimuth of a plane that opens the blocks (degrees).")
     ] = None,
     frame: Annotated[
-        str, typer.Option(help="elevation, or depth to see the seafloor laid flat.")
+        str, typer.Option(help="elevation, depth (seafloor laid flat) or proportional (base laid flat too).")
     ] = "elevation",
     screens: Annotated[
         bool, typer.Option("--screens/--no-screens", help="Leave out what screens took.")
     ] = True,
     hide: Annotated[
-        list[str] | None, typer.Option(help="Layer to hide: seafloor, base, body, blocks, holes, names.")
+        list[str] | None, typer.Option(help="Layer to hide: seafloor, base, body, blocks, holes, names, or a domain.")
     ] = None,
 ) -> None:
     """Open the seafloor, the blocks above a cut-off and the holes in a window."""

@@ -71,9 +71,9 @@ def one_each(faults: list[dict[str, Any]]) -> list[dict[str, Any]]:
     for fault in faults:
         place, which = place_of(tuple(fault["loc"]))
         whole = kept.get((*place, ""))
-        if whole is not None and isinstance(whole.get("input"), list | tuple):
-            if whole["type"].partition("_")[0] in ("float", "int"):
-                del kept[(*place, "")]
+        listed = whole is not None and isinstance(whole.get("input"), list | tuple)
+        if whole is not None and listed and whole["type"].partition("_")[0] in ("float", "int"):
+            del kept[(*place, "")]
         kept.setdefault((*place, which), fault)
     return list(kept.values())
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import Any
 
@@ -12,6 +13,7 @@ from numpy.typing import NDArray
 from sms_resource.blocks.grid import BlockGrid, SurfaceGrid
 
 Array = NDArray[np.float64]
+LEAST_M = 1.0  # thinner than that, the body is not stretched to the mean thickness
 SINK = 0.1  # m under the seafloor at which cut blocks end, so that the two skins do not flicker
 # Corners of the six faces of a block, outward, as steps along i, j, k.
 FACES = (
@@ -36,18 +38,34 @@ class View:
         Factor on heights.
     flat : SurfaceGrid, optional
         Seafloor that is laid flat: heights are then minus the depth below it.
+    thickness : SurfaceGrid, optional
+        Thickness of the body under ``flat``: the base is laid flat too, at minus the mean thickness, and heights
+        between the two are in proportion. Below the base they go on in metres; where the body is thinner than
+        ``LEAST_M`` nothing below it has a place.
     """
 
     origin: tuple[float, float, float]
     exaggeration: float = 1.0
     flat: SurfaceGrid | None = None
+    thickness: SurfaceGrid | None = None
+
+    @property
+    def mean_m(self) -> float:
+        """Mean thickness of the body: how far apart the flat surfaces lie; as in the frame of the estimate."""
+        if self.thickness is None:
+            return math.nan
+        body = self.thickness.values[self.thickness.values > 1e-6]
+        return max(float(body.mean()) if body.size else 0.0, LEAST_M)
 
     def place(self, points: Any) -> Array:
-        """Scene coordinates (n, 3) of true ones."""
+        """Scene coordinates (n, 3) of true ones; NaN where a point has no place."""
         points = np.array(points, dtype=float).reshape(-1, 3)
         if self.flat is not None:
             floor = self.flat.sample(points[:, 0], points[:, 1])
             points[:, 2] = np.where(np.isfinite(floor), points[:, 2] - floor, np.nan)
+            if self.thickness is not None:
+                thick = np.nan_to_num(self.thickness.sample(points[:, 0], points[:, 1]))
+                points[:, 2] = _in_proportion(points[:, 2], thick, self.mean_m)
         points = points - np.array(
             [self.origin[0], self.origin[1], 0.0 if self.flat is not None else self.origin[2]]
         )
@@ -69,6 +87,13 @@ class View:
         return (low[0] - x, high[0] - x, low[1] - y, high[1] - y, (low[2] - base) * f, (high[2] - base) * f)
 
 
+def _in_proportion(height: Array, thick: Array, mean_m: float) -> Array:
+    """Heights against the seafloor (m, negative down) with the base at minus the mean thickness."""
+    inside = np.maximum(height, -np.maximum(thick, LEAST_M))
+    below = np.where(thick < LEAST_M, np.where(height < inside, np.nan, 0.0), height - inside)
+    return np.asarray(inside / np.maximum(thick, LEAST_M) * mean_m + below)
+
+
 def block_skin(
     grid: BlockGrid,
     index: NDArray[np.int64],
@@ -82,7 +107,7 @@ def block_skin(
     ----------
     grid : BlockGrid
     index : ndarray (n, 3)
-        i, j, k of the blocks that show. In a view that lies flat, k counts layers below the seafloor, from
+        i, j, k of the blocks that show. In a view with the seafloor alone laid flat, k counts layers below it, from
         -1 downward.
     view : View
     top, base : SurfaceGrid, optional
@@ -112,16 +137,20 @@ def block_skin(
         corners.append(index[found][:, None, :] + np.array(face)[None, :, :])
     row = np.concatenate(rows)
     nodes = np.concatenate(corners).reshape(-1, 3)
-    flat = view.flat is not None
+    flat = view.flat is not None and view.thickness is None
     origin_z = 0.0 if flat else grid.origin[2]
     local = nodes * np.asarray(grid.size)
     world = grid.to_world(local)
     world[:, 2] = origin_z + local[:, 2]
     if not flat:
         world[:, 2] = _between(world, top, base)
-    placed = View(view.origin, view.exaggeration).place(world)
     if flat:
+        placed = View(view.origin, view.exaggeration).place(world)
         placed[:, 2] = local[:, 2] * view.exaggeration
+    else:
+        placed = view.place(world)
+        whole = np.isfinite(placed[:, 2]).reshape(-1, 4).all(axis=1)
+        placed, row = placed.reshape(-1, 4, 3)[whole].reshape(-1, 3), row[whole]
     quads = np.column_stack([np.full(len(row), 4), np.arange(4 * len(row)).reshape(-1, 4)])
     return pv.PolyData(placed.astype(np.float32), quads.ravel()), row
 

@@ -12,6 +12,7 @@ from sms_resource.viewer.results import read_results
 if TYPE_CHECKING:
     from sms_resource.viewer.scene import Scene
 
+FRAMES = ("elevation", "depth", "proportional")
 PICTURES = (".png", ".jpg", ".jpeg", ".tif", ".tiff", ".bmp")
 
 
@@ -49,12 +50,13 @@ def open_scene(
         Azimuth in degrees, and offset in m, of a vertical plane that opens the blocks.
     colour : str, optional
         Column that colours the blocks; None takes ``variable``.
-    frame : "elevation" | "depth"
-        True heights, or the seafloor laid flat.
+    frame : "elevation" | "depth" | "proportional"
+        True heights, the seafloor laid flat, or seafloor and base laid flat, whatever frame the estimate was made in.
     screened : bool
         Whether to leave out what the screens took, as the study's table does.
     hide : sequence of str
-        Of "seafloor", "base", "body", "blocks", "holes", "names"; a window can show them again.
+        Of "seafloor", "base", "body", "blocks", "holes", "names", or domains of the blocks; a window can show them
+        again.
     size : (int, int)
         Pixels.
 
@@ -75,12 +77,18 @@ def open_scene(
     from sms_resource.viewer.scene import LAYERS, Settings
 
     picture = None if screenshot is None else Path(screenshot)
-    _check_arguments(picture, exaggeration, frame, hide, LAYERS, size)
+    _check_arguments(picture, exaggeration, frame, size)
     results = read_results(folder, variable=variable, cutoff=cutoff)
+    domains = set(results.blocks["domain"].astype(str)) if "domain" in results.blocks else set()
+    unknown = [name for name in hide if name not in LAYERS and name not in domains]
+    if unknown:
+        known = ", ".join([*LAYERS, *sorted(domains)])
+        raise ValueError(f"hide names {unknown[0]!r}, which is not one of {known}")
     settings = Settings(
         variable=results.variable, cutoff=results.cutoff, colour=colour or results.variable,
         exaggeration=float(exaggeration), frame=frame, screened=screened, section=_section(section),
-        hidden=frozenset(hide),
+        hidden=frozenset(name for name in hide if name in LAYERS),
+        hidden_domains=frozenset(name for name in hide if name not in LAYERS),
     )  # fmt: skip
     if settings.colour not in results.blocks:
         raise ValueError(f"colour {settings.colour!r} is not a column of the block model")
@@ -125,18 +133,12 @@ def _section(section: float | tuple[float, float] | None) -> tuple[float, float]
     return float(azimuth), float(offset)
 
 
-def _check_arguments(
-    picture: Path | None, exaggeration: float, frame: str, hide: Sequence[str], layers: Sequence[str],
-    size: tuple[int, int],
-) -> None:  # fmt: skip
+def _check_arguments(picture: Path | None, exaggeration: float, frame: str, size: tuple[int, int]) -> None:
     if picture is not None and picture.suffix.lower() not in PICTURES:
         raise ValueError(f"screenshot {picture.name!r} should end in one of {', '.join(PICTURES)}")
     if not 0 < exaggeration <= 100:
         raise ValueError(f"exaggeration must lie between 0 and 100, not {exaggeration!r}")
-    if frame not in ("elevation", "depth"):
-        raise ValueError(f"frame must be 'elevation' or 'depth', not {frame!r}")
-    unknown = [name for name in hide if name not in layers]
-    if unknown:
-        raise ValueError(f"hide names {unknown[0]!r}, which is not one of {', '.join(layers)}")
+    if frame not in FRAMES:
+        raise ValueError(f"frame must be one of {', '.join(FRAMES)}, not {frame!r}")
     if min(size) < 50:
         raise ValueError(f"size must be at least 50 x 50 pixels, not {size!r}")

@@ -10,7 +10,8 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from sms_resource.units import column_element, element_label
+from sms_resource.units import column_element
+from sms_resource.viewer.axes import label_of, round_ranges
 from sms_resource.viewer.geometry import (
     View,
     block_skin,
@@ -46,8 +47,8 @@ class Settings:
         Column that colours the blocks: a grade, "domain" or "proposed_class".
     exaggeration : float
         Factor on heights.
-    frame : "elevation" | "depth"
-        True heights, or the seafloor laid flat.
+    frame : "elevation" | "depth" | "proportional"
+        True heights, the seafloor laid flat, or seafloor and base laid flat.
     screened : bool
         Whether what the screens took is left out, of picture and of tonnes.
     section : (float, float), optional
@@ -55,6 +56,8 @@ class Settings:
         seen along the azimuth, are taken away.
     hidden : frozenset of str
         Of ``LAYERS``.
+    hidden_domains : frozenset of str
+        Domains whose blocks are taken away, as a section takes them: tonnes stay those of the whole body.
     """
 
     variable: str
@@ -65,6 +68,7 @@ class Settings:
     screened: bool = False
     section: tuple[float, float] | None = None
     hidden: frozenset[str] = field(default_factory=frozenset)
+    hidden_domains: frozenset[str] = field(default_factory=frozenset)
 
 
 class Scene:
@@ -96,6 +100,16 @@ class Scene:
     def has_depth(self) -> bool:
         """Whether the seafloor can be laid flat."""
         return self.results.seafloor is not None and "depth_below_seafloor_m" in self.results.blocks
+
+    @property
+    def has_proportion(self) -> bool:
+        """Whether seafloor and base can be laid flat."""
+        return self.results.seafloor is not None and self.results.thickness is not None
+
+    @property
+    def domains(self) -> list[str]:
+        """Domains of the blocks; a block goes by the one that fills most of it."""
+        return self.words("domain") if "domain" in self.results.blocks else []
 
     @property
     def has_screens(self) -> bool:
@@ -143,6 +157,10 @@ class Scene:
         self.settings = replace(before, **changes)
         if {"exaggeration", "frame"} & set(changes):
             self.draw()
+            if (
+                self.settings.frame != before.frame
+            ):  # the body lies elsewhere now; the direction of sight stays
+                self.plotter.reset_camera(bounds=self._bounds, render=False)
             return
         if "hidden" in changes:
             for layer in LAYERS:
@@ -155,13 +173,16 @@ class Scene:
                 self._show(layer)
         if "colour" in changes:
             self._draw_holes()
-        if {"variable", "cutoff", "colour", "screened", "section"} & set(changes):
+        if {"variable", "cutoff", "colour", "screened", "section", "hidden_domains"} & set(changes):
             self.draw_blocks()
 
     def _view(self) -> View:
         x, y = (10.0 * math.floor(value / 10.0) for value in self._middle[:2])
         z = 10.0 * math.floor(float(self._places[:, 2].min()) / 10.0)
-        flat = self.results.seafloor if self.settings.frame == "depth" and self.has_depth else None
+        frame = self.settings.frame
+        if frame == "proportional" and self.has_proportion:
+            return View((x, y, z), self.settings.exaggeration, self.results.seafloor, self.results.thickness)
+        flat = self.results.seafloor if frame == "depth" and self.has_depth else None
         return View((x, y, z), self.settings.exaggeration, flat)
 
     def _surroundings(self) -> tuple[float, float, float, float]:
@@ -174,10 +195,12 @@ class Scene:
         return low[0] - margin, low[1] - margin, high[0] + margin, high[1] + margin
 
     def visible(self) -> NDArray[np.bool_]:
-        """Blocks that the cut-off, the screens and the section leave in sight."""
+        """Blocks that the cut-off, the screens, hidden domains and the section leave in sight."""
         keep = self.results.numbers(self.settings.variable) >= self.settings.cutoff
         if self.settings.screened:
             keep &= self._kept > 0
+        if self.settings.hidden_domains and self.domains:
+            keep &= ~self.results.blocks["domain"].astype(str).isin(self.settings.hidden_domains).to_numpy()
         if self.settings.section is not None:
             azimuth, offset = self.settings.section
             angle = math.radians(azimuth)
@@ -190,7 +213,7 @@ class Scene:
         keep = np.flatnonzero(self.visible())
         self.shown = len(keep)
         index = self._index[keep]
-        if self.view.flat is not None:
+        if self.view.flat is not None and self.view.thickness is None:
             index = flat_index(self.results.grid, index, self.results.numbers("depth_below_seafloor_m")[keep])
         skin, row = block_skin(self.results.grid, index, self.view, self.results.seafloor, self.results.base)
         self.plotter.remove_actor("blocks", render=False)
@@ -324,17 +347,22 @@ class Scene:
                 actor.SetVisibility(layer not in self.settings.hidden)
 
     def _draw_axes(self) -> None:
-        flat = self.view.flat is not None
+        self.plotter.remove_bounds_axes()  # or the old axes would count as part of the scene
         true = self.view.true_ranges(tuple(self.plotter.bounds))
         low, high, counts = round_ranges(true)
         self._bounds = self.view.scene_bounds(low, high)
         self.plotter.show_bounds(
             bounds=self._bounds, axes_ranges=[v for pair in zip(low, high, strict=True) for v in pair],
             xtitle="Easting (m)", ytitle="Northing (m)",
-            ztitle="Minus depth below seafloor (m)" if flat else "Elevation (m)", fmt="%.0f", n_xlabels=counts[0],
+            ztitle=self._height_title(), fmt="%.0f", n_xlabels=counts[0],
             n_ylabels=counts[1], n_zlabels=counts[2], color=INK, font_size=12, location="outer", use_3d_text=False,
             render=False,
         )  # fmt: skip
+
+    def _height_title(self) -> str:
+        if self.view.thickness is not None:
+            return f"Place between seafloor (0) and base (-{self.view.mean_m:.1f} m)"
+        return "Elevation (m)" if self.view.flat is None else "Minus depth below seafloor (m)"
 
     def _draw_words(self) -> None:
         settings = self.settings
@@ -343,11 +371,17 @@ class Scene:
         lines.append(", ".join(part for part in (self.results.label, "estimated, rounded", basis) if part))
         if settings.section is not None:
             lines.append(f"Section toward {settings.section[0]:.0f}°; tonnes are of the whole body")
+        if settings.hidden_domains:
+            lines.append(
+                f"Hidden: {', '.join(sorted(settings.hidden_domains))}; tonnes are of the whole body"
+            )
         self.plotter.add_text(
             "\n".join(lines), name="words", position="upper_left", font_size=10, color=INK, render=False
         )
         x, y, z = self.view.origin
         seen = "seafloor laid flat" if self.view.flat is not None else "true heights"
+        if self.view.thickness is not None:
+            seen = f"seafloor and base laid flat, by the mean thickness of {self.view.mean_m:.1f} m"
         foot = (
             f"Vertical exaggeration {settings.exaggeration:g} x; {seen}; axes show true coordinates "
             f"(local origin {x:.0f} E, {y:.0f} N, {z:.0f} m).\nHoles: tube = core by grade, pale tube = core without an "
@@ -364,29 +398,3 @@ class Scene:
         self.plotter.camera_position = [away, (0.0, 0.0, 0.0), (0.0, 0.0, 1.0)]
         self.plotter.reset_camera(bounds=self._bounds, render=False)
         self.plotter.camera.zoom(1.14)
-
-
-def round_ranges(true: list[float]) -> tuple[list[float], list[float], list[int]]:
-    """Round ends of three axes, and how many labels then fall on round numbers.
-
-    Parameters
-    ----------
-    true : list of float
-        Low and high of easting, northing and elevation.
-    """
-    low, high, counts = [], [], []
-    for a, b, wanted in ((true[0], true[1], 5), (true[2], true[3], 5), (true[4], true[5], 2)):
-        span = max(b - a, 1e-6)
-        power = 10.0 ** math.floor(math.log10(span / wanted))
-        step = next(power * n for n in (1, 2, 5, 10) if power * n >= 0.8 * span / wanted)
-        start, end = math.floor(a / step + 1e-9), math.ceil(b / step - 1e-9)
-        end = max(end, start + 1)
-        low.append(start * step)
-        high.append(end * step)
-        counts.append(end - start + 1)
-    return low, high, counts
-
-
-def label_of(column: str) -> str:
-    """What the colour bar says: name and unit."""
-    return element_label(column) if column_element(column) else column.replace("_", " ")

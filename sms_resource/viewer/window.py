@@ -10,12 +10,13 @@ from sms_resource.viewer.scene import INK, Scene
 
 ON, OFF = "#0072b2", "#d9dde1"
 STEP, BOX = 30, 18
+MOST_DOMAINS = 6
 LAYER_BOXES = (("seafloor", "Seafloor"), ("blocks", "Blocks"), ("holes", "Holes"), ("names", "Hole names"),
                ("body", "Body, solid"), ("base", "Base surface"))  # fmt: skip
 
 
 def add_controls(scene: Scene) -> None:
-    """Add sliders (cut-off, exaggeration, section) and boxes (layers, screens, flat seafloor, section)."""
+    """Add sliders (cut-off, exaggeration, section) and boxes (layers, screens, vertical frames, domains, section)."""
     plotter = scene.plotter
     low, high = scene.limits
     _slider(scene, lambda value: scene.change(cutoff=float(value)), (low, high), scene.settings.cutoff,
@@ -37,9 +38,11 @@ def add_controls(scene: Scene) -> None:
             lambda on: scene.change(screened=bool(on)),
         )
         row += 1
-    if scene.has_depth:
-        _box(scene, row, "Seafloor laid flat", scene.settings.frame == "depth",
-             lambda on: scene.change(frame="depth" if on else "elevation"))  # fmt: skip
+    row = _FrameSwitch(scene).add(row)
+    domains = scene.domains if 1 < len(scene.domains) <= MOST_DOMAINS else []
+    for domain in domains:
+        on = domain not in scene.settings.hidden_domains
+        _box(scene, row, f"Domain {domain}", on, _domain_switch(scene, domain))
         row += 1
     section = _SectionSwitch(scene)
     _box(scene, row, "Section", scene.settings.section is not None, section.switch)
@@ -56,6 +59,15 @@ def next_colour(scene: Scene) -> None:
     scene.plotter.render()
 
 
+def _domain_switch(scene: Scene, domain: str) -> Callable[[bool], None]:
+    def switch(on: bool) -> None:
+        hidden = set(scene.settings.hidden_domains)
+        hidden.discard(domain) if on else hidden.add(domain)
+        scene.change(hidden_domains=frozenset(hidden))
+
+    return switch
+
+
 def _layer_switch(scene: Scene, layer: str) -> Callable[[bool], None]:
     def switch(on: bool) -> None:
         hidden = set(scene.settings.hidden)
@@ -63,6 +75,34 @@ def _layer_switch(scene: Scene, layer: str) -> Callable[[bool], None]:
         scene.change(hidden=frozenset(hidden))
 
     return switch
+
+
+class _FrameSwitch:
+    """Boxes for the vertical frames; one at most is on, and without any heights are true."""
+
+    def __init__(self, scene: Scene) -> None:
+        self._scene = scene
+        self._boxes: dict[str, Any] = {}
+
+    def add(self, row: int) -> int:
+        """Add a box for each frame that the results allow; the next free row."""
+        frames = [("depth", "Seafloor laid flat", self._scene.has_depth),
+                  ("proportional", "Seafloor and base laid flat", self._scene.has_proportion)]  # fmt: skip
+        for frame, text, possible in frames:
+            if possible:
+                on = self._scene.settings.frame == frame
+                self._boxes[frame] = _box(self._scene, row, text, on, self._switch(frame))
+                row += 1
+        return row
+
+    def _switch(self, frame: str) -> Callable[[bool], None]:
+        def switch(on: bool) -> None:
+            for other, widget in self._boxes.items():
+                if other != frame:
+                    widget.GetRepresentation().SetState(0)
+            self._scene.change(frame=frame if on else "elevation")
+
+        return switch
 
 
 class _SectionSwitch:
@@ -131,9 +171,9 @@ def _slider(
     return widget
 
 
-def _box(scene: Scene, row: int, text: str, on: bool, act: Callable[[bool], None]) -> None:
+def _box(scene: Scene, row: int, text: str, on: bool, act: Callable[[bool], None]) -> Any:
     x, y = 14.0, 60.0 + STEP * row
-    scene.plotter.add_checkbox_button_widget(
+    widget = scene.plotter.add_checkbox_button_widget(
         act,
         value=on,
         position=(x, y),
@@ -146,3 +186,4 @@ def _box(scene: Scene, row: int, text: str, on: bool, act: Callable[[bool], None
     scene.plotter.add_text(
         text, position=(x + BOX + 8, y), font_size=8, color=INK, name=f"box-{row}", render=False
     )
+    return widget

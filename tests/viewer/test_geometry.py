@@ -9,7 +9,9 @@ import numpy as np
 import pytest
 
 from sms_resource.blocks.grid import BlockGrid, SurfaceGrid
+from sms_resource.viewer.axes import round_ranges
 from sms_resource.viewer.geometry import (
+    LEAST_M,
     SINK,
     View,
     block_skin,
@@ -20,7 +22,6 @@ from sms_resource.viewer.geometry import (
     surface_mesh,
     tubes,
 )
-from sms_resource.viewer.scene import round_ranges
 from tests.viewer.invented_results import CENTRE, RADIUS, THICKNESS, seafloor_at, sticks, thickness_at
 
 ORIGIN = (512150.0, 8200120.0, -1680.0)
@@ -153,3 +154,49 @@ def test_axes_end_on_round_numbers() -> None:
 def test_module_needs_no_display(monkeypatch: pytest.MonkeyPatch, tmp_path: Path) -> None:
     monkeypatch.delenv("DISPLAY", raising=False)
     assert surface_mesh(surface("top"), View(ORIGIN)).n_cells > 0
+
+
+def test_seafloor_and_base_laid_flat() -> None:
+    """Roof at 0, base at minus the mean thickness, half-way at half of it; below the base metres go on."""
+    top, thick = surface("top"), surface("thickness")
+    view = View(ORIGIN, 2.0, top, thick)
+    inside = thick.values[thick.values > 1e-6]
+    mean = float(inside.mean())
+    assert (
+        view.mean_m == pytest.approx(mean) == pytest.approx(THICKNESS / 2, rel=0.01)
+    )  # of a paraboloid: its half
+    rng = np.random.default_rng(3)
+    angle, r = rng.uniform(0, 2 * math.pi, 300), RADIUS * np.sqrt(rng.uniform(0, 0.85, 300))
+    x, y = CENTRE[0] + r * np.cos(angle), CENTRE[1] + r * np.sin(angle)
+    roof, depth = top.sample(x, y), thick.sample(x, y)
+    assert depth.min() > LEAST_M
+    for share in (0.0, 0.25, 1.0):
+        placed = view.place(np.column_stack([x, y, roof - share * depth]))
+        np.testing.assert_allclose(placed[:, 2], -2.0 * share * mean, atol=1e-6)
+    deeper = view.place(np.column_stack([x, y, roof - depth - 3.0]))
+    np.testing.assert_allclose(deeper[:, 2], -2.0 * (mean + 3.0), atol=1e-6)
+    away = [[CENTRE[0] + 50, CENTRE[1], float(seafloor_at(np.array(CENTRE[0] + 50), np.array(CENTRE[1]))) - d]
+            for d in (0.0, 5.0)]  # fmt: skip
+    placed = view.place(away)
+    assert placed[0, 2] == pytest.approx(0.0, abs=1e-6) and np.isnan(placed[1, 2])
+    assert math.isnan(View(ORIGIN, 2.0, top).mean_m)
+
+
+def test_blocks_fill_the_room_between_flat_surfaces() -> None:
+    """All blocks of the body, laid flat, hold the area of the body times its mean thickness but for the edge."""
+    top, thick = surface("top"), surface("thickness")
+    base = top.with_values(top.values - thick.values)
+    grid = BlockGrid((CENTRE[0] - 60, CENTRE[1] - 60, -1680.0), (4.0, 4.0, 2.0), (30, 30, 25))
+    i, j, k = (a.ravel() for a in np.meshgrid(np.arange(30), np.arange(30), np.arange(25), indexing="ij"))
+    x, y, z = grid.centres(i, j, k).T
+    depth = seafloor_at(x, y) - z
+    keep = (depth > -3) & (depth < thickness_at(x, y) + 3) & (thickness_at(x, y) > 2.0)
+    view = View(ORIGIN, 1.0, top, thick)
+    skin, row = block_skin(grid, np.column_stack([i, j, k])[keep], view, top, base)
+    z = skin.points[:, 2]
+    assert len(row) == skin.n_cells and np.isfinite(z).all()
+    assert z.max() <= 0.0 and z.min() >= -view.mean_m - 1e-4
+    columns = len(np.unique(np.column_stack([i, j])[keep], axis=0))
+    volume = skin.clean().triangulate().volume
+    roof = SINK / thickness_at(x[keep], y[keep]).clip(2.0).mean() * view.mean_m
+    assert volume == pytest.approx(columns * 16.0 * (view.mean_m - roof), rel=0.03)

@@ -120,7 +120,33 @@ def test_layers_are_shown_and_hidden(scene: Scene) -> None:
     assert actors["seafloor"].GetVisibility() and not actors["base"].GetVisibility()
 
 
-@pytest.mark.parametrize("frame", ["elevation", "depth"])
+def test_domains_are_shown_and_hidden(scene: Scene) -> None:
+    scene.change(cutoff=1.0)
+    whole, tonnes = scene.shown, scene.tonnage().dry_tonnes
+    scene.change(hidden_domains=frozenset({"massive"}))
+    left = scene.results.blocks[scene.visible()]
+    assert set(left["domain"]) == {"cap"} and 0 < scene.shown < whole
+    assert scene.tonnage().dry_tonnes == tonnes
+    assert "Hidden: massive; tonnes are of the whole body" in scene.plotter.actors["words"].GetText(2)
+    scene.change(hidden_domains=frozenset())
+    assert scene.shown == whole
+
+
+def test_frames_differ_in_the_picture_and_in_words(scene: Scene) -> None:
+    seen, words = {}, {}
+    for frame in ("elevation", "depth", "proportional"):
+        scene.change(frame=frame)
+        seen[frame], words[frame] = picture_of(scene), scene.plotter.actors["foot"].GetText(0)
+    assert np.abs(seen["depth"] - seen["proportional"]).max() > 50
+    assert np.abs(seen["elevation"] - seen["proportional"]).max() > 50
+    assert "true heights" in words["elevation"]
+    assert "base laid flat" not in words["depth"] and "base laid flat" in words["proportional"]
+    low, high = scene.plotter.actors["blocks"].GetBounds()[4:]
+    mean = scene.view.mean_m
+    assert high <= 0 and low == pytest.approx(-2.0 * mean, abs=0.2)  # exaggerated twice
+
+
+@pytest.mark.parametrize("frame", ["elevation", "depth", "proportional"])
 def test_axes_tell_true_coordinates(scene: Scene, frame: str) -> None:
     scene.change(frame=frame, exaggeration=4.0)
     axes = scene.plotter.renderer.cube_axes_actor
@@ -130,12 +156,27 @@ def test_axes_tell_true_coordinates(scene: Scene, frame: str) -> None:
     low, high = axes.GetZAxisRange()
     if frame == "elevation":
         assert low <= -1670 and -1650 <= high < -1620
+    elif frame == "proportional":
+        assert -30 <= low <= -7 and high >= 0  # a mean of 7.5 m, and a hole that goes on below the base
     else:
         assert -30 <= low <= -15 and high >= 0
     bounds = axes.GetBounds()
     assert (bounds[5] - bounds[4]) == pytest.approx(
         4.0 * (high - low)
     )  # heights are exaggerated, labels are not
+
+
+def test_axes_do_not_grow_when_frames_are_changed(scene: Scene) -> None:
+    def ranges() -> list[float]:
+        axes = scene.plotter.renderer.cube_axes_actor
+        return [*axes.GetXAxisRange(), *axes.GetZAxisRange(), *axes.GetBounds()]
+
+    first = ranges()
+    for frame in ("depth", "proportional", "elevation", "proportional", "elevation"):
+        scene.change(frame=frame)
+    scene.change(exaggeration=5.0)
+    scene.change(exaggeration=2.0)
+    assert ranges() == pytest.approx(first)
 
 
 def test_every_colour_draws(scene: Scene) -> None:
@@ -153,7 +194,7 @@ def test_every_colour_draws(scene: Scene) -> None:
         ({"exaggeration": 0.0}, "exaggeration must lie"),
         ({"exaggeration": float("nan")}, "exaggeration must lie"),
         ({"frame": "sideways"}, "frame must be"),
-        ({"hide": ["fish"]}, "'fish'"),
+        ({"hide": ["fish"]}, "'fish', which is not one of .*cap, massive"),
         ({"size": (3, 3)}, "at least 50 x 50"),
         ({"colour": "fish", "screenshot": "a.png"}, "'fish' is not a column"),
         ({"variable": "fish"}, "there is no variable 'fish'"),
@@ -221,14 +262,30 @@ with drawing_with(find_drawing(window=True)):
     height.InvokeEvent("EndInteractionEvent")
     assert scene.settings.exaggeration == 4.0
     boxes = widgets.button_widgets
-    assert len(boxes) == 9, len(boxes)
-    for number, box in enumerate(boxes):
+    assert len(boxes) == 12, len(boxes)
+    def press(box):
         state = box.GetRepresentation().GetState()
         box.GetRepresentation().SetState(1 - state)
         box.InvokeEvent("StateChangedEvent")
+    depth, proportional, cap = boxes[7:10]
+    for number, box in enumerate(boxes):
+        if box not in (depth, proportional, cap):
+            press(box)
+    press(depth)
+    assert scene.settings.frame == "depth"
+    press(proportional)
+    assert scene.settings.frame == "proportional" and not depth.GetRepresentation().GetState()
+    press(proportional)
+    assert scene.settings.frame == "elevation"
+    press(depth)
+    assert scene.settings.frame == "depth" and depth.GetRepresentation().GetState()
     hidden = scene.settings.hidden
     assert hidden == {"seafloor", "blocks", "holes"}, hidden
-    assert scene.settings.screened and scene.settings.frame == "depth" and scene.settings.section is not None
+    assert scene.settings.screened and scene.settings.section is not None
+    assert scene.settings.hidden_domains == {"massive"}
+    press(cap)
+    assert scene.settings.hidden_domains == {"cap", "massive"} and scene.shown == 0
+    press(cap)
     assert len(widgets.slider_widgets) == 4
     boxes[-1].GetRepresentation().SetState(0)
     boxes[-1].InvokeEvent("StateChangedEvent")
