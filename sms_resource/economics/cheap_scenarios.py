@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from collections.abc import Sequence
 
 import numpy as np
 import pandas as pd
@@ -11,32 +10,20 @@ from numpy.typing import NDArray
 
 from sms_resource import units
 from sms_resource.economics.costs import CostModel
+from sms_resource.economics.exact_sums import exact_parts
 from sms_resource.economics.grade_tonnage import content_columns
 from sms_resource.economics.recovery import Recovery
-from sms_resource.economics.terms import MetalTerms, SellingTerms
+from sms_resource.economics.scenario_terms import (
+    CheapScenario,
+    Coefficients,
+    bends,
+    needed_columns,
+    needs_deductions,
+    scenario_groups,
+)
 from sms_resource.findings import Findings
 
 Floats = NDArray[np.float64]
-Curve = tuple[tuple[float, float], ...]
-
-
-@dataclass(frozen=True)
-class CheapScenario:
-    """Terms and costs under which blocks are chosen by value.
-
-    Parameters
-    ----------
-    label : str
-    terms : SellingTerms
-    costs : CostModel
-    cutoff : float, optional
-        Net value per dry tonne that a block must reach. None: each block must pay for its own costs.
-    """
-
-    label: str
-    terms: SellingTerms
-    costs: CostModel = field(default_factory=CostModel)
-    cutoff: float | None = None
 
 
 def cheap_scenarios(
@@ -44,6 +31,7 @@ def cheap_scenarios(
     scenarios: Sequence[CheapScenario],
     *,
     metals: Sequence[str],
+    parts: str | None = None,
     domain: str = "domain",
     slope: str = "slope_deg",
     elevation: str = "elevation",
@@ -52,9 +40,10 @@ def cheap_scenarios(
 ) -> tuple[pd.DataFrame, Findings]:
     """What each scenario selects from the same blocks.
 
-    Gives what ``block_value``, ``block_costs`` and a cut on their difference give one by one, to rounding, in one
-    pass over the blocks for all scenarios. Scenarios with the same metals share a pass; recoveries that bend with
-    grade and costs by slope and depth take one more pass for each distinct bend.
+    Gives what ``block_value``, ``block_costs`` and a cut on their difference give one by one, in one pass over the
+    blocks for all scenarios. Tonnes, grades and contents are those of ``grade_tonnage`` to the last bit, since both
+    sum exactly (see ``exact_parts``), wherever ``in_doubt`` is 0. Scenarios with the same metals share a pass;
+    recoveries that bend with grade and costs by slope and depth take one more pass for each distinct bend.
 
     Parameters
     ----------
@@ -62,12 +51,16 @@ def cheap_scenarios(
         One row a block, as for ``block_value`` and ``block_costs``.
     metals : sequence of str
         Grade columns to report.
+    parts : str, optional
+        Column, such as the class, whose values each get their own dry tonnes too.
 
     Returns
     -------
     DataFrame
-        One row a scenario in the order given: label, dry_tonnes, wet_tonnes, each grade, each content and
-        mean_net_value_per_dry_tonne of what is selected. NaN where the terms have errors.
+        One row a scenario in the order given: label, dry_tonnes, wet_tonnes, each grade, each content,
+        ``<part>_dry_tonnes`` of each part, mean_net_value_per_dry_tonne of what is selected (the mean equivalent
+        where it chooses), and in_doubt: how many blocks lie so near their threshold that rounding could put them on
+        either side. NaN where the terms have errors.
     Findings
         Errors of terms and costs, each once for all scenarios that share it.
     """
@@ -83,48 +76,63 @@ def cheap_scenarios(
         if not any(finding.severity == "error" for finding in problems):
             sound.append(index)
     dry, wet = (frame[c].to_numpy(dtype=np.float64) for c in (dry_tonnes, wet_tonnes))
-    grades = (
-        np.column_stack([frame[m].to_numpy(dtype=np.float64) for m in metals])
-        if metals
-        else np.empty((len(dry), 0))
-    )
-    # Only metals with missing grades need graded tonnes of their own: all others are graded by every dry tonne.
-    gaps = np.isnan(grades)
-    partial = np.flatnonzero(gaps.any(axis=0))
-    quantities = np.column_stack(
-        [dry, wet, np.where(gaps, 0.0, grades) * dry[:, None], ~gaps[:, partial] * dry[:, None]]
-    )
-    sums = np.full((quantities.shape[1] + 1, len(scenarios)), np.nan)
+    quantities, columns = _quantities(frame, dry, wet, metals, parts)
+    sums = np.full((len(columns) + 2, len(scenarios)), np.nan)
     sums[:, sound] = 0.0
     domains, names = (
         pd.factorize(frame[domain].astype(str)) if domain in frame else (np.zeros(len(dry), int), [""])
     )
-    columns = {m.column for i in sound for m in _paid(scenarios[i].terms)} | ({slope, elevation} & set(frame))
-    needed = frame[sorted(columns)]
+    wanted = {c for i in sound for c in needed_columns(scenarios[i])} | ({slope, elevation} & set(frame))
+    needed = frame[sorted(wanted)]
     for code, name in enumerate(names):
         rows = np.flatnonzero(domains == code)
         part = needed.iloc[rows]
         wet_per_dry = np.divide(wet[rows], dry[rows], out=np.full(len(rows), np.nan), where=dry[rows] > 0)
-        for members in _groups([scenarios[i] for i in sound], str(name)).values():
+        for members in scenario_groups([scenarios[i] for i in sound], str(name)).values():
             chosen = [sound[i] for i in members]
             group = [scenarios[i] for i in chosen]
             sums[:, chosen] += _weigh(part, group, str(name), quantities[rows], wet_per_dry, slope, elevation)
-    graded = np.tile(sums[0], (len(metals), 1))
-    graded[partial] = sums[2 + len(metals) : -1]
-    return _table(scenarios, sums, graded, metals), findings
+    return _table(scenarios, dict(zip([*columns, "value", "in_doubt"], sums)), metals, parts), findings
+
+
+def _quantities(
+    frame: pd.DataFrame, dry: Floats, wet: Floats, metals: Sequence[str], parts: str | None
+) -> tuple[Floats, list[str]]:
+    """What is summed over the chosen blocks, dry tonnes first; each but those in two parts that sum exactly."""
+    made: dict[str, Floats] = {"dry": dry}
+
+    def put(name: str, values: Floats) -> None:
+        made[f"{name} coarse"], made[f"{name} fine"] = exact_parts(values)
+
+    put("dry_tonnes", dry)
+    put("wet_tonnes", wet)
+    for metal in metals:
+        grade = frame[metal].to_numpy(dtype=np.float64)
+        gaps = np.isnan(grade)
+        put(metal, np.where(gaps, 0.0, grade) * dry)
+        if gaps.any():  # all other metals are graded by every dry tonne
+            put(f"graded {metal}", ~gaps * dry)
+    if parts is not None:
+        coarse, fine = made["dry_tonnes coarse"], made["dry_tonnes fine"]
+        for name in sorted(frame[parts].astype(str).unique()):
+            mine = (frame[parts].astype(str) == name).to_numpy()
+            made[f"part {name} coarse"], made[f"part {name} fine"] = (
+                np.where(mine, coarse, 0.0),
+                np.where(mine, fine, 0.0),
+            )
+    return np.column_stack(list(made.values())), list(made)
 
 
 def _problems(scenario: CheapScenario, frame: pd.DataFrame, slope: str, elevation: str) -> Findings:
-    found = scenario.terms.check()
-    found.extend(scenario.costs.check())
-    for metal in scenario.terms.metals:
-        if metal.column not in frame and metal.payable_pct != 0:
+    found = Findings() if scenario.equivalent is not None else scenario.terms.check()
+    for column in needed_columns(scenario):
+        if column not in frame:
             found.error(
-                "metal-missing",
-                f"The blocks have no column {metal.column}.",
-                "Estimate it.",
-                column=metal.column,
+                "metal-missing", f"The blocks have no column {column}.", "Estimate it.", column=column
             )
+    if scenario.equivalent is not None:
+        return found
+    found.extend(scenario.costs.check())
     wanted = [
         (slope, bool(scenario.costs.slope_factors)),
         (elevation, scenario.costs.depth_rate_per_100_m != 0),
@@ -135,43 +143,6 @@ def _problems(scenario: CheapScenario, frame: pd.DataFrame, slope: str, elevatio
                 "cost-column-missing", f"Costs go by {column}, which the blocks do not have.", "Add it."
             )
     return found
-
-
-def _groups(scenarios: Sequence[CheapScenario], domain: str) -> dict[object, list[int]]:
-    """Scenarios that share metals, bends of recovery in this domain, shapes of cost and the kind of terms."""
-    groups: dict[object, list[int]] = {}
-    for index, scenario in enumerate(scenarios):
-        paid = _paid(scenario.terms)
-        key = (
-            tuple((m.column, _resolved(m.recovery, domain)[1]) for m in paid),
-            _needs_deductions(scenario.terms),
-            None if scenario.terms.product is None else scenario.terms.product.carrier,
-            scenario.costs.slope_factors,
-            scenario.costs.depth_rate_per_100_m,
-            scenario.costs.reference_depth_m if scenario.costs.depth_rate_per_100_m else 0.0,
-        )
-        groups.setdefault(key, []).append(index)
-    return groups
-
-
-def _paid(terms: SellingTerms) -> list[MetalTerms]:
-    carrier = None if terms.product is None else terms.product.carrier
-    return [m for m in terms.metals if m.payable_pct != 0 or m.column == carrier]
-
-
-def _needs_deductions(terms: SellingTerms) -> bool:
-    return terms.product is not None or any(m.deduction > 0 for m in _paid(terms))
-
-
-def _resolved(recovery: Recovery | None, domain: str) -> tuple[float, Curve]:
-    """Constant share and bend of a recovery in one domain: one of them is neutral."""
-    if recovery is not None and recovery.by_domain:
-        recovery = recovery.by_domain.get(domain)
-    if recovery is None:
-        return np.nan, ()
-    if recovery.by_domain:
-        raise ValueError("a recovery by domain may not hold another recovery by domain")
-    return (recovery.percent / 100.0, ()) if recovery.percent is not None else (1.0, recovery.by_grade)
 
 
 def _weigh(
@@ -186,41 +157,38 @@ def _weigh(
     from sms_resource.economics import scenario_kernels as kernels
 
     first = group[0]
-    paid = _paid(first.terms)
     columns = []
-    for metal in paid:
-        grade = part[metal.column].to_numpy(dtype=np.float64)
-        bend = _resolved(metal.recovery, domain)[1]
+    for name, bend in bends(first, domain):
+        grade = part[name].to_numpy(dtype=np.float64)
         columns.append(grade * Recovery(by_grade=bend).fraction(grade) if bend else grade)
     recovered = np.column_stack(columns) if columns else np.zeros((len(part), 1))
-    shapes = np.column_stack([wet_per_dry, *_cost_shapes(part, first.costs, wet_per_dry, slope, elevation)])
-    width = max(len(paid), 1)
-    coefficients = _Coefficients.empty(len(group), width, kernels.TILE)
+    if first.equivalent is not None:
+        shapes = np.zeros((len(part), 3))
+    else:
+        shapes = np.column_stack(
+            [wet_per_dry, *_cost_shapes(part, first.costs, wet_per_dry, slope, elevation)]
+        )
+    carrier = 0
+    if first.equivalent is None and first.terms.product is not None:
+        carrier = list(needed_columns(first)).index(first.terms.product.carrier)
+    coefficients = Coefficients.empty(len(group), recovered.shape[1], kernels.TILE)
     for s, scenario in enumerate(group):
-        coefficients.fill(s, scenario, _paid(scenario.terms), domain)
+        coefficients.fill(s, scenario, domain)
+    coefficients.set_nearness(recovered, shapes, carrier)
     padded = coefficients.tiled(kernels.TILE)
-    tiles = padded["worth"].shape[0]
-    sums = np.zeros((kernels.RUNS, tiles, quantities.shape[1] + 1, kernels.TILE))
+    sums = np.zeros((kernels.RUNS, padded["worth"].shape[0], quantities.shape[1] + 2, kernels.TILE))
     block = tuple(np.ascontiguousarray(a) for a in (recovered, shapes, quantities))
-    if _needs_deductions(first.terms):
-        carrier = 0
-        if first.terms.product is not None:
-            carrier = [m.column for m in paid].index(first.terms.product.carrier)
+    if needs_deductions(first):
         kernels.deducted_sums(
             block[0], carrier, block[1], block[2], padded["share"], padded["worth"], padded["by_carrier"],
-            padded["flat"], padded["product"], padded["charge"], padded["royalty"], padded["threshold"], sums,
+            padded["flat"], padded["product"], padded["charge"], padded["royalty"], padded["threshold"],
+            padded["nearness"], sums,
         )  # fmt: skip
     else:
         kernels.linear_sums(
-            block[0],
-            block[1],
-            block[2],
-            padded["worth"],
-            padded["charge"],
-            padded["royalty"],
-            padded["threshold"],
-            sums,
-        )
+            block[0], block[1], block[2], padded["worth"], padded["charge"], padded["royalty"], padded["threshold"],
+            padded["nearness"], sums,
+        )  # fmt: skip
     whole = sums.sum(axis=0)  # (tiles, quantities, TILE), runs in a fixed order
     return np.moveaxis(whole, 0, 1).reshape(whole.shape[1], -1)[:, : len(group)]
 
@@ -238,77 +206,26 @@ def _cost_shapes(
     return steep * wet_per_dry, steep * deep * wet_per_dry
 
 
-@dataclass
-class _Coefficients:
-    """Coefficients of the kernels, one column a scenario."""
-
-    arrays: dict[str, Floats]
-
-    @classmethod
-    def empty(cls, count: int, width: int, tile: int) -> _Coefficients:
-        total = -(-count // tile) * tile
-        by_metal = {name: np.zeros((width, total)) for name in ("share", "worth", "by_carrier", "flat")}
-        by_shape = {"charge": np.zeros((2, total)), "threshold": np.zeros((3, total))}
-        by_shape["threshold"][0] = np.inf  # where there is no scenario nothing is selected
-        return cls({**by_metal, **by_shape, "royalty": np.zeros((1, total)), "product": np.zeros((1, total))})
-
-    def fill(self, s: int, scenario: CheapScenario, paid: Sequence[MetalTerms], domain: str) -> None:
-        """Coefficients of one scenario in one domain."""
-        terms, costs, a = scenario.terms, scenario.costs, self.arrays
-        product = terms.product
-        # A royalty on payable value scales what is paid; one on net value is taken from the sum.
-        kept = 1.0 - terms.royalty_pct / 100.0 if terms.royalty_basis == "payable" else 1.0
-        a["royalty"][0, s] = terms.royalty_pct / 100.0 if terms.royalty_basis == "net" else 0.0
-        carrier_share = 1.0
-        if product is not None:
-            carrier_share = _resolved(terms.metal(product.carrier).recovery, domain)[0] / product.grade
-            moist = product.freight / (1.0 - product.moisture_pct / 100.0)
-            a["product"][0, s] = carrier_share * (product.treatment_charge + moist)
-        for m, metal in enumerate(paid):
-            pays = (metal.payable_pct or 0.0) / 100.0
-            price = metal.net_price * kept if metal.price is not None else 0.0
-            recovery = _resolved(metal.recovery, domain)[0] if metal.recovery is not None else 0.0
-            # "before" pays a share of what is left after the deduction; "minimum" pays the lesser of the two.
-            left = price * (pays if metal.deduction_kind == "before" else float(pays > 0))
-            a["share"][m, s] = pays * price * recovery
-            a["worth"][m, s] = left * recovery
-            taken = left * metal.deduction
-            a["by_carrier" if product is not None else "flat"][m, s] = (
-                taken * carrier_share if product else taken
-            )
-        if not _needs_deductions(terms):
-            a["worth"][:, s] = a["share"][:, s]
-        a["charge"][0, s] = terms.treatment_per_dry_tonne
-        a["charge"][1, s] = terms.freight_per_wet_tonne
-        if scenario.cutoff is None:
-            a["threshold"][0, s] = costs.processing_per_dry_tonne + costs.general_per_dry_tonne
-            a["threshold"][1, s] = costs.vessel_per_wet_tonne()
-            a["threshold"][2, s] = costs.lifting_per_wet_tonne
-        else:
-            a["threshold"][0, s] = scenario.cutoff
-
-    def tiled(self, tile: int) -> Mapping[str, Floats]:
-        """Arrays of shape (tiles, rows, tile); those of one row lose it."""
-        out = {}
-        for name, array in self.arrays.items():
-            cut = np.ascontiguousarray(np.moveaxis(array.reshape(array.shape[0], -1, tile), 0, 1))
-            out[name] = cut[:, 0] if name in ("royalty", "product") else cut
-        return out
-
-
 def _table(
-    scenarios: Sequence[CheapScenario], sums: Floats, graded: Floats, metals: Sequence[str]
+    scenarios: Sequence[CheapScenario], sums: dict[str, Floats], metals: Sequence[str], parts: str | None
 ) -> pd.DataFrame:
-    width = len(metals)
+    def whole(name: str) -> Floats:
+        return sums[f"{name} coarse"] + sums[f"{name} fine"]
+
     out: dict[str, object] = {"label": [scenario.label for scenario in scenarios]}
-    out["dry_tonnes"], out["wet_tonnes"] = sums[0], sums[1]
-    metal_sums = sums[2 : 2 + width]
+    out["dry_tonnes"], out["wet_tonnes"] = whole("dry_tonnes"), whole("wet_tonnes")
     with np.errstate(divide="ignore", invalid="ignore"):
-        for index, metal in enumerate(metals):
-            out[metal] = np.where(graded[index] > 0, metal_sums[index] / graded[index], np.nan)
-        mean = np.where(sums[0] > 0, sums[-1] / sums[0], np.nan)
-    for index, metal in enumerate(metals):
+        for metal in metals:
+            graded = whole(f"graded {metal}" if f"graded {metal} fine" in sums else "dry_tonnes")
+            out[metal] = np.where(graded > 0, whole(metal) / graded, np.nan)
+        mean = np.where(sums["dry"] > 0, sums["value"] / sums["dry"], np.nan)
+    for metal in metals:
+        mass = units.contained_tonnes(whole(metal), np.ones(1), metal)
         for name, factor in content_columns(metal).items():
-            out[name] = units.contained_tonnes(metal_sums[index], 1.0, metal) * factor
+            out[name] = mass * factor
+    if parts is not None:
+        for name in [key[5:-5] for key in sums if key.startswith("part ") and key.endswith(" fine")]:
+            out[f"{name}_dry_tonnes"] = whole(f"part {name}")
     out["mean_net_value_per_dry_tonne"] = mean
+    out["in_doubt"] = sums["in_doubt"]
     return pd.DataFrame(out)

@@ -42,6 +42,12 @@ class MetalEquivalent:
         element, _, unit = self.base.rpartition("_")
         return f"{element}eq_{unit}"
 
+    @property
+    def columns(self) -> tuple[str, ...]:
+        """Grade columns that add to the equivalent; a metal that is not paid adds nothing and may be missing."""
+        first = next(iter(self.factors.values()))
+        return tuple(column for column in first if any(by[column] for by in self.factors.values()))
+
     def apply(self, frame: pd.DataFrame, *, domain: str = "domain") -> NDArray[np.float64]:
         """Equivalent grade of each block; NaN where a grade is missing or the domain has no factor."""
         out = np.full(len(frame), np.nan)
@@ -49,8 +55,8 @@ class MetalEquivalent:
         for name, factors in self.factors.items():
             mine = np.ones(len(frame), dtype=bool) if domains is None else domains == name
             total = np.zeros(int(mine.sum()))
-            for column, factor in factors.items():
-                total = total + factor * frame[column].to_numpy(dtype=np.float64)[mine]
+            for column in self.columns:
+                total = total + factors[column] * frame[column].to_numpy(dtype=np.float64)[mine]
             out[mine] = total
         return out
 

@@ -10,6 +10,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource import units
+from sms_resource.economics.exact_sums import exact_parts
 
 ALL = "all"
 Floats = NDArray[np.float64]
@@ -47,7 +48,8 @@ def grade_tonnage(
 
     A block is in when its cut-off variable is at or above the cut-off; a block whose cut-off variable is
     missing is never in (see :func:`missing_tonnage`). Every block falls into one bin between two cut-offs;
-    the bins are summed from the top, so all cut-offs cost one pass and tonnes cannot rise with the cut-off.
+    the bins are summed from the top, so all cut-offs cost one pass and tonnes cannot rise with the cut-off. Sums
+    are exact up to one rounding at the end: they do not depend on the other cut-offs, the groups or the order.
 
     Parameters
     ----------
@@ -86,11 +88,14 @@ def grade_tonnage(
         np.stack([frame[m].to_numpy(dtype=np.float64) for m in metals]) if metals else np.empty((0, len(dry)))
     )
     known = ~np.isnan(grades)
-    # One row a quantity: dry, wet, then graded tonnes and metal of each element.
-    quantities = np.vstack([dry, wet, known * dry, np.where(known, grades, 0.0) * dry])
+    # One row a quantity: dry, wet, then graded tonnes and metal of each element; each in two parts, so that no sum
+    # depends on which other cut-offs or groups it is made with.
+    quantities = [dry, wet, *(known * dry), *(np.where(known, grades, 0.0) * dry)]
+    parts = np.stack([part for quantity in quantities for part in exact_parts(quantity)])
 
     labels, code = _group_codes(frame, groups)
-    sums, occupied = _sums_above(values, levels, quantities, code, [len(names) for names in labels])
+    split, occupied = _sums_above(values, levels, parts, code, [len(names) for names in labels])
+    sums = split[0::2] + split[1::2]
     return _tidy(sums, occupied, levels, labels, groups, metals, cutoff_variable)
 
 

@@ -23,6 +23,7 @@ def linear_sums(
     charge: np.ndarray,
     royalty: np.ndarray,
     threshold: np.ndarray,
+    nearness: np.ndarray,
     sums: np.ndarray,
 ) -> None:
     """Sums of quantities over blocks whose value meets its costs, where value is linear in the grades.
@@ -36,8 +37,10 @@ def linear_sums(
     grades (n, m), quantities (n, q) with dry tonnes first
     shapes (n, 3): wet tonnes, unit cost of the vessel and unit cost of lifting, each per dry tonne
     worth (tiles, m, TILE), charge (tiles, 2, TILE), royalty (tiles, TILE), threshold (tiles, 3, TILE)
-    sums (RUNS, tiles, q + 1, TILE)
-        Filled: the quantities, then dry tonnes x value. Must come as zeros.
+    nearness (tiles, TILE)
+        How near the value of a block may lie to what it must reach before its side is in doubt.
+    sums (RUNS, tiles, q + 2, TILE)
+        Filled: the quantities, then dry tonnes x value, then blocks in doubt. Must come as zeros.
     """
     count, metals = grades.shape
     wide = quantities.shape[1]
@@ -65,6 +68,7 @@ def linear_sums(
                     taken = x >= needed[s]
                     inside[s] = 1.0 if taken else 0.0
                     sums[run, tile, wide, s] += tonnes * x if taken else 0.0
+                    sums[run, tile, wide + 1, s] += 1.0 if abs(x - needed[s]) <= nearness[tile, s] else 0.0
                 for q in range(wide):
                     quantity = quantities[b, q]
                     for s in range(TILE):
@@ -85,6 +89,7 @@ def deducted_sums(
     charge: np.ndarray,
     royalty: np.ndarray,
     threshold: np.ndarray,
+    nearness: np.ndarray,
     sums: np.ndarray,
 ) -> None:
     """As :func:`linear_sums`, where a buyer takes deductions or the metals go into a product.
@@ -123,6 +128,7 @@ def deducted_sums(
                     taken = x >= needed[s]
                     inside[s] = 1.0 if taken else 0.0
                     sums[run, tile, wide, s] += tonnes * x if taken else 0.0
+                    sums[run, tile, wide + 1, s] += 1.0 if abs(x - needed[s]) <= nearness[tile, s] else 0.0
                 for q in range(wide):
                     quantity = quantities[b, q]
                     for s in range(TILE):

@@ -72,7 +72,8 @@ def block_value(
     """
     findings = terms.check()
     for metal in terms.metals:
-        if metal.column not in frame:
+        idle = metal.payable_pct == 0 and (terms.product is None or terms.product.carrier != metal.column)
+        if metal.column not in frame and not idle:
             findings.error(
                 "metal-missing",
                 f"The blocks have no column {metal.column}.",
@@ -129,7 +130,7 @@ def recovered_grades(
     domains = frame[domain].astype(str).to_numpy(dtype=object) if domain in frame else None
     out = {}
     for metal in terms.metals:
-        if metal.recovery is None:
+        if metal.recovery is None or metal.column not in frame:
             out[metal.column] = np.full(len(frame), np.nan)
             continue
         grades = frame[metal.column].to_numpy(dtype=np.float64)

@@ -167,7 +167,8 @@ def more(
     """Scenario tables, and what changed against another run, where they are asked for."""
     extra: dict[str, Any] = {}
     if scenarios:
-        from sms_resource.workflow.scenarios import run_scenarios, scenario_list, tables
+        from sms_resource.workflow.scenario_tables import tables
+        from sms_resource.workflow.scenarios import run_scenarios, scenario_list
 
         run = run_scenarios(
             study, scenario_list(study), store=store, files=hashes, threads=threads, progress=progress

@@ -12,7 +12,7 @@ import pandas as pd
 
 from sms_resource.findings import Findings
 from sms_resource.study import Study, StudyError, decisions
-from sms_resource.workflow.evidence import metal_columns
+from sms_resource.workflow.cheap import cheap_rows, cutoff_column, is_cheap, measures_at
 from sms_resource.workflow.stage import (
     ConfigView,
     Progress,
@@ -160,15 +160,9 @@ def final_key(study: Study, files: dict[str, str]) -> str:
 
 def measures(study: Study, done: dict[str, Any]) -> dict[str, float]:
     """Dry and wet tonnes, grades and contained metal at the study's cut-off, all classes together."""
-    state = done["classify"]
-    table = state.grade_tonnage
-    row = table[(table["cutoff"] == study.config.cutoff.at) & (table["proposed_class"] == "all")].iloc[0]
-    skip = {"cutoff_variable", "cutoff", "proposed_class"}
-    found = {str(name): float(value) for name, value in row.items() if name not in skip}
-    for name in ("indicated", "inferred"):
-        part = table[(table["cutoff"] == study.config.cutoff.at) & (table["proposed_class"] == name)]
-        found[f"{name}_dry_tonnes"] = float(part["dry_tonnes"].iloc[0]) if len(part) else 0.0
-    return found
+    table = done["classify"].grade_tonnage
+    mine = table[table["cutoff_variable"] == cutoff_column(study.config)]
+    return measures_at(mine, study.config.cutoff.at)
 
 
 def run_scenarios(
@@ -180,7 +174,7 @@ def run_scenarios(
     threads: int | None = None,
     progress: Progress | None = None,
 ) -> ScenarioRun:
-    """Run each scenario through the stages that its changes touch.
+    """Run each scenario through the stages that its changes touch; those of value and cut-off alone all at once.
 
     Parameters
     ----------
@@ -202,16 +196,24 @@ def run_scenarios(
     base = one(study, recent, store, files, threads)
     if isinstance(base, Findings):
         return ScenarioRun(pd.DataFrame(), {}, base)
+    cheap = at_once(study, scenarios, recent, files, threads, progress)
     rows: list[dict[str, Any]] = []
-    for number, scenario in enumerate(scenarios, 1):
+    number = 0
+    slow = len(scenarios) - len(cheap)
+    for index, scenario in enumerate(scenarios):
         begun = time.perf_counter()
-        if progress:
-            progress.started(f"{number}/{len(scenarios)}", scenario.label)
-        try:
-            changed = study.with_overrides(scenario.changes)
-            found = one(changed, recent, store, files, threads)
-        except StudyError as error:
-            found = error.findings
+        found: dict[str, float] | Findings
+        if index in cheap:
+            found = cheap[index]
+        else:
+            number += 1
+            if progress:
+                progress.started(f"{number}/{slow}", scenario.label)
+            try:
+                changed = study.with_overrides(scenario.changes)
+                found = one(changed, recent, store, files, threads)
+            except StudyError as error:
+                found = error.findings
         state = "run"
         if isinstance(found, Findings):
             state = "not run"
@@ -224,12 +226,38 @@ def run_scenarios(
             {"label": scenario.label, "origin": scenario.origin, "group": scenario.group, "state": state,
              "changes": json.dumps(scenario.changes, ensure_ascii=False), **found}
         )  # fmt: skip
-        if progress:
+        if progress and index not in cheap:
             said = f"{found['dry_tonnes']:,.0f} dry t" if found else "not run"
             progress.finished(
-                f"{number}/{len(scenarios)}", time.perf_counter() - begun, f"{scenario.label}: {said}", False
+                f"{number}/{slow}", time.perf_counter() - begun, f"{scenario.label}: {said}", False
             )
     return ScenarioRun(pd.DataFrame(rows), base, findings)
+
+
+def at_once(
+    study: Study,
+    scenarios: list[Scenario],
+    recent: RecentStages,
+    files: dict[str, str],
+    threads: int | None,
+    progress: Progress | None,
+) -> dict[int, dict[str, float]]:
+    """Rows of the scenarios that change value and cut-off alone, by their place in the list."""
+    count = sum(is_cheap(scenario.changes) for scenario in scenarios)
+    if not count:
+        return {}
+    begun = time.perf_counter()
+    if progress:
+        progress.started("scenarios", f"{count} scenarios of value and cut-off")
+    kept = recent.get(final_key(study, files))
+    if kept is None:
+        outcome = run_stages(outcome_stages(), study, store=recent, threads=threads, files=files)
+        kept = (outcome.done["classify"],)
+    found = cheap_rows(study, [scenario.changes for scenario in scenarios], kept[0])
+    if progress:
+        detail = f"{len(found)} scenarios of value and cut-off, in one pass over the blocks"
+        progress.finished("scenarios", time.perf_counter() - begun, detail, False)
+    return found
 
 
 def one(
@@ -255,90 +283,3 @@ def stage_row_key(key: str) -> str:
     import hashlib
 
     return hashlib.sha256(f"row {key}".encode()).hexdigest()
-
-
-def effects(study: Study, run: ScenarioRun) -> dict[str, str]:
-    """What the alternatives of each decision do to dry tonnes, grade and metal, in words."""
-    if not len(run.table):
-        return {}
-    lead = metal_columns(study.config)[0]
-    content = next(
-        (name for name in run.base if name.startswith(lead.partition("_")[0] + "_") and name.endswith("_t")),
-        "",
-    )
-    found: dict[str, str] = {}
-    part = run.table[run.table["origin"] == "ledger"]
-    for group, rows in part.groupby("group", sort=False):
-        words = []
-        for row in rows.to_dict("records"):
-            value = row["label"].partition(" = ")[2]
-            if row["state"] != "run":
-                words.append(f"{value}: could not be run")
-                continue
-            says = [f"dry t {_percent(row['dry_tonnes'], run.base['dry_tonnes'])}"]
-            says.append(f"{lead.partition('_')[0].capitalize()} {_percent(row[lead], run.base[lead])}")
-            if content:
-                says.append(f"metal {_percent(row[content], run.base[content])}")
-            words.append(f"{value}: " + ", ".join(says))
-        found[str(group)] = "; ".join(words)
-    return found
-
-
-def effect_sizes(study: Study, run: ScenarioRun) -> dict[str, float]:
-    """Largest change, in percent, of dry tonnes or of the first metal's content, by decision."""
-    if not len(run.table):
-        return {}
-    lead = metal_columns(study.config)[0].partition("_")[0]
-    names = ["dry_tonnes", *[name for name in run.base if name in (f"{lead}_t", f"{lead}_kg")]]
-    part = run.table[(run.table["origin"] == "ledger") & (run.table["state"] == "run")]
-    found: dict[str, float] = {}
-    for row in part.to_dict("records"):
-        sizes = [abs(100.0 * (row[name] / run.base[name] - 1.0)) for name in names if run.base[name]]
-        found[row["group"]] = max([found.get(row["group"], 0.0), *sizes])
-    return found
-
-
-def _percent(value: float, base: float) -> str:
-    if not base or value != value:
-        return "n/a"
-    return f"{100.0 * (value / base - 1.0):+.1f} %"
-
-
-def tables(study: Study, run: ScenarioRun) -> dict[str, Any]:
-    """Tornado, heat map and effects for the report."""
-    from sms_resource.economics.scenarios import heat_table, tornado_table
-
-    made: dict[str, Any] = {
-        "scenarios": run.table,
-        "effects": effects(study, run),
-        "effect_pct": effect_sizes(study, run),
-    }
-    metals = metal_columns(study.config)
-    ran = run.table[run.table["state"] == "run"] if len(run.table) else run.table
-    ledger = ran[ran["origin"] == "ledger"] if len(ran) else ran
-    if len(ledger):
-        chosen = [
-            "dry_tonnes",
-            metals[0],
-            *[name for name in run.base if name == f"{metals[0].partition('_')[0]}_t"],
-        ]
-        made["tornado_table"] = tornado_table(ledger.rename(columns={"group": "key"}), run.base, chosen)
-        made["tornado"] = made["tornado_table"].rename(columns={"key": "decision"})
-    for grid in study.config.scenarios.grid:
-        if len(grid.vary) != 2 or not len(ran):
-            continue
-        first, second = grid.vary
-        rows = ran[ran["group"] == grid.label]
-        parts = rows["changes"].map(json.loads)
-        flat = rows.assign(
-            **{first: [part[first] for part in parts], second: [part[second] for part in parts]}
-        )
-        made.setdefault("heat_tables", {})[grid.label] = heat_table(
-            flat, rows=first, columns=second, measure="dry_tonnes"
-        )
-        if "heat_map" not in made:
-            made["heat_map"] = pd.DataFrame(
-                {"x": flat[second], "y": flat[first], "value": flat["dry_tonnes"]}
-            )
-            made["heat_map_labels"] = (second, first, "Dry tonnes above the cut-off (t dry)")
-    return made

@@ -17,10 +17,10 @@ from sms_resource.cli import app
 from sms_resource.study import Study
 from sms_resource.workflow.manifest import input_hashes
 from sms_resource.workflow.publish import ledger_table
+from sms_resource.workflow.scenario_tables import effects
 from sms_resource.workflow.scenarios import (
     RecentStages,
     Scenario,
-    effects,
     ledger_scenarios,
     measures,
     outcome_stages,
@@ -62,7 +62,7 @@ def light(monkeypatch: pytest.MonkeyPatch) -> None:
 CHANGES: list[tuple[dict[str, Any], str]] = [
     ({"cutoff.at": 5.0}, "classify"),
     ({"value.metals.cu.price": 7000.0}, "classify"),
-    ({"screens.vent_buffer_m": 12.0}, "classify"),
+    ({"screens.vent_buffer_m": 12.0}, "propose"),
     ({"search.most_samples": 8}, "estimate"),
     ({"variograms.range_factor": 0.7}, "variograms"),
     ({"top_cuts.apply": "given", "top_cuts.cuts": {"massive": {"cu": 6.0}}}, "variograms"),
@@ -258,7 +258,7 @@ def test_what_changed_since_another_run_adds_up_and_names_decisions(
     caught: dict[str, Any] = {}
 
     def catch(*arguments: Any) -> list[Path]:
-        caught.update(arguments[-1])
+        caught.update(next(item for item in arguments if isinstance(item, dict) and "changes" in item))
         return []
 
     publish.write_report_files = catch  # type: ignore[assignment]  # put back by the fixture

@@ -836,7 +836,9 @@ def _value(blocks):
             {"scenario": ["base", "density low"], "dry_tonnes": [4.2e5, 3.9e5], "cu_pct": [3.0, 3.0]}
         ),
         tornado=tornado,
-        heat_maps=({"label": "both", "x": "cutoff.at", "y": "density.factor", "frame": heat},),
+        heat_maps=(
+            {"label": "both", "x": "cutoff.at (Cu, %)", "y": "density.factor (ratio)", "frame": heat},
+        ),
         equivalent={
             "formula": "CuEq = Cu + 0.378 Au + 0.0030 Ag",
             "statement": "The study states that each metal can be recovered and sold.",
