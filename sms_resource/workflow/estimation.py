@@ -37,10 +37,14 @@ def estimate(context: Context) -> EstimateState:
     context.findings.extend(density.model.extrapolation_findings(frame))
     metals = metal_columns(config)
     companions: dict[str, pd.DataFrame] = {}
+    means = domain_means(blocks, grades, density, config)
     if config.kriging.estimator != "ordinary_kriging":
         wanted = (config.kriging.estimator,)
-        companions = companion_grades(state.samples, blocks, hoods, density, config, context.threads, wanted)
+        companions, others = companion_grades(
+            state.samples, blocks, hoods, density, config, context.threads, wanted
+        )
         frame[metals] = companions[config.kriging.estimator][metals]
+        means = others[config.kriging.estimator]
     for name, values in details.items():
         frame[name] = values
     failed = int(frame[metals].isna().any(axis=1).sum())
@@ -72,6 +76,7 @@ def estimate(context: Context) -> EstimateState:
         targets=targets,
         statistics=pass_statistics(frame),
         neighbourhoods=parts,
+        domain_means=means,
         density_cases={case: dry_case(blocks, grades, density, config, case) for case in ("low", "high")},
     )
 
@@ -275,6 +280,30 @@ def join_domains(
     return frame
 
 
+def domain_means(
+    blocks: BlockState, grades: dict[str, pd.DataFrame], density: DensityState, config: Any
+) -> pd.DataFrame:
+    """Mean grade of each domain over its own part of every block, weighted by dry mass: domain, metal, mean, dry_tonnes.
+
+    A block that holds several domains has a mixed grade, which must not be held against one domain's samples.
+    """
+    frame = blocks.model.frame
+    volume = frame["volume_m3"].to_numpy(dtype=float)
+    rows = []
+    for domain, share in domain_shares(frame, config.domains.sulphide).items():
+        names = np.full(len(frame), domain, dtype=object)
+        dry, _ = density.model.predict(names, grades[domain])
+        mass = np.where(share > 0, volume * share * dry, 0.0)
+        for metal in metal_columns(config):
+            values = grades[domain][metal].to_numpy(dtype=float)
+            known = np.isfinite(values) & (mass > 0)
+            mean = float(np.average(values[known], weights=mass[known])) if known.any() else np.nan
+            rows.append(
+                {"domain": domain, "metal": metal, "mean": mean, "dry_tonnes": float(mass[known].sum())}
+            )
+    return pd.DataFrame(rows)
+
+
 def dry_case(
     blocks: BlockState, grades: dict[str, pd.DataFrame], density: DensityState, config: Any, case: str
 ) -> NDArray[np.float64]:
@@ -291,8 +320,8 @@ def dry_case(
 def companion_grades(
     samples: pd.DataFrame, blocks: BlockState, hoods: dict[str, list[Any]], density: DensityState, config: Any,
     threads: int | None, methods: tuple[str, ...] = COMPANIONS,
-) -> dict[str, pd.DataFrame]:  # fmt: skip
-    """Block grades by the nearest sample, inverse distance and the moving average, on the widest search."""
+) -> tuple[dict[str, pd.DataFrame], dict[str, pd.DataFrame]]:  # fmt: skip
+    """Block grades, and means by domain, of nearest sample, inverse distance and moving average on the widest search."""
     from sms_resource.geostatistics import companion_estimates
 
     metals = metal_columns(config)
@@ -323,7 +352,10 @@ def companion_grades(
                 made[method][used] = found[method]
         for method in methods:
             tables[method][domain] = pd.DataFrame(made[method], columns=metals)
-    return {method: join_domains(blocks, table, density, config)[metals] for method, table in tables.items()}
+    return (
+        {method: join_domains(blocks, table, density, config)[metals] for method, table in tables.items()},
+        {method: domain_means(blocks, table, density, config) for method, table in tables.items()},
+    )
 
 
 def pass_statistics(frame: pd.DataFrame) -> pd.DataFrame:

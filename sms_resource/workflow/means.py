@@ -58,18 +58,21 @@ def named_axis(swaths: pd.DataFrame, frame: str) -> pd.DataFrame:
 def mean_rows(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
     """Plain, declustered and block means by metal and domain; the plain mean of everything, surface included."""
     samples = done["variograms"].samples
-    frame = done["classify"].frame[["domain", "dry_tonnes", *metals]]
+    frame = done["classify"].frame[["dry_tonnes", *metals]]
+    by_domain = done["estimate"].domain_means.set_index(["domain", "metal"])["mean"]
     surface = done["composite"].surface
     rows = []
     for metal in metals:
         for domain in ("all", *sorted(samples["domain"].unique())):
             part = samples if domain == "all" else samples[samples["domain"] == domain]
-            blocks = frame if domain == "all" else frame[frame["domain"] == domain]
-            known, filled = part[metal].notna(), blocks[metal].notna()
-            if not known.any() or not filled.any():
+            known, filled = part[metal].notna(), frame[metal].notna()
+            if domain == "all":
+                block = np.average(frame.loc[filled, metal], weights=frame.loc[filled, "dry_tonnes"])
+            else:
+                block = by_domain.get((domain, metal), np.nan)
+            if not known.any() or np.isnan(block):
                 continue
             declustered = np.average(part.loc[known, metal], weights=part.loc[known, "declustering_weight"])
-            block = np.average(blocks.loc[filled, metal], weights=blocks.loc[filled, "dry_tonnes"])
             row = {
                 "metal": metal, "domain": domain, "composite_mean": part.loc[known, metal].mean(),
                 "declustered_mean": declustered, "block_mean": block,

@@ -114,6 +114,8 @@ class EstimateState:
         Block centres in the vertical frame.
     density_cases : dict of ndarray (b,)
         Dry tonnes of each block at the "low" and the "high" density of its domains.
+    domain_means : DataFrame
+        domain, metal, mean, dry_tonnes: of each domain's own part of the blocks, by dry mass.
     """
 
     frame: pd.DataFrame
@@ -122,6 +124,7 @@ class EstimateState:
     statistics: pd.DataFrame
     neighbourhoods: dict[tuple[str, str], Any] = field(default_factory=dict)
     density_cases: dict[str, NDArray[np.float64]] = field(default_factory=dict)
+    domain_means: pd.DataFrame = field(default_factory=pd.DataFrame)
 
 
 @dataclass(frozen=True, eq=False)

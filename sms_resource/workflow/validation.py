@@ -34,7 +34,7 @@ def validate(context: Context) -> ValidationState:
     config = context.config
     metals = metal_columns(config)
     hoods = {domain: neighbourhoods(variograms, domain, config) for domain in config.domains.sulphide}
-    companions = companion_grades(
+    companions, companion_means = companion_grades(
         variograms.samples, blocks, hoods, context.done["density"], config, context.threads
     )
     made = replace(made, companions=companions)
@@ -45,7 +45,7 @@ def validate(context: Context) -> ValidationState:
     realised = realised_variances(made, variograms, blocks, config)
     table = validation_table(
         cross_validation=summary if len(summary) else None,
-        means=mean_table(made, variograms, metals, config),
+        means=mean_table(made, companion_means["nearest"], variograms, metals, config),
         swaths=swaths[swaths["domain"] != "all"],
         block_variance=realised,
         limits=ValidationLimits(mean_pct=config.validation.mean_flag_pct),
@@ -163,24 +163,27 @@ def cross_validation(
     return cross, summary
 
 
-def mean_table(made: EstimateState, state: VariogramState, metals: list[str], config: Any) -> pd.DataFrame:
-    """Block, declustered, plain and nearest-sample means by domain and metal."""
+def mean_table(
+    made: EstimateState, nearest: pd.DataFrame, state: VariogramState, metals: list[str], config: Any
+) -> pd.DataFrame:
+    """Block, declustered, plain and nearest-sample means by domain and metal; of blocks the domain's own part."""
     rows = []
+    block_means = made.domain_means.set_index(["domain", "metal"])["mean"]
+    nearest_means = nearest.set_index(["domain", "metal"])["mean"]
     for domain in config.domains.sulphide:
-        inside = (made.frame["domain"] == domain).to_numpy()
         part = state.samples[state.samples["domain"] == domain]
-        tonnes = made.frame.loc[inside, "dry_tonnes"].to_numpy(dtype=float)
         for metal in metals:
             known = part[metal].notna()
-            if not known.any() or not tonnes.sum() > 0:
+            block_mean = float(block_means[(domain, metal)])
+            if not known.any() or np.isnan(block_mean):
                 continue
             weights = part.loc[known, "declustering_weight"] * part.loc[known, "weight"]
             rows.append(
                 {"domain": domain, "metal": metal,
-                 "block_mean": weighted(made.frame.loc[inside, metal], tonnes),
+                 "block_mean": block_mean,
                  "declustered_mean": weighted(part.loc[known, metal], weights),
                  "sample_mean": weighted(part.loc[known, metal], part.loc[known, "weight"]),
-                 "nearest_mean": weighted(made.companions["nearest"].loc[inside, metal], tonnes),
+                 "nearest_mean": float(nearest_means[(domain, metal)]),
                  "sample_count": int(known.sum())}
             )  # fmt: skip
     return pd.DataFrame(rows)

@@ -130,6 +130,18 @@ def test_the_manifest_names_every_byte(run: Run) -> None:
     assert all(stage["seconds"] >= 0 for stage in manifest["stages"])
 
 
+def test_domains_inside_blocks_hold_the_metal_of_the_blocks(run: Run) -> None:
+    """Means of the domains' own parts, times their dry tonnes, are the metal of all blocks."""
+    made = run.result.stages["estimate"]
+    assert (made.frame["domain"] == "cap").any() and (made.frame["domain"] == "massive").any()
+    for metal in METALS:
+        part = made.domain_means[made.domain_means["metal"] == metal]
+        assert set(part["domain"]) == {"cap", "massive"}
+        whole = (made.frame["dry_tonnes"] * made.frame[metal]).sum()
+        np.testing.assert_allclose((part["dry_tonnes"] * part["mean"]).sum(), whole, rtol=1e-9)
+        np.testing.assert_allclose(part["dry_tonnes"].sum(), made.frame["dry_tonnes"].sum(), rtol=1e-9)
+
+
 def test_times_of_the_neighbourhood_study_stand_apart(run: Run) -> None:
     """Table and picture hold time against samples, block size and points; the report holds the rest and says where."""
     table = pd.read_csv(run.out / "measured" / "neighbourhood.csv")
