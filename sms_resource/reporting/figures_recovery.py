@@ -110,6 +110,8 @@ def surface_against_core(data: ReportData) -> Drawing | None:
     bias = data.evidence.surface_bias
     if bias is None or not has(bias, "metal", "ratio", "ratio_low", "ratio_high"):
         return None
+    if "sample_type" in bias and (bias["sample_type"] == "all").any():
+        bias = bias[bias["sample_type"] == "all"]
     figure, axes = style.new_figure(8.8, 0.55 * len(bias) + 2.0, 1, 2)
     ratio, means = axes[0]
     place = np.arange(len(bias))[::-1]

@@ -110,10 +110,17 @@ def _places(data: ReportData) -> list[Block]:
 def _recovery(data: ReportData) -> list[Block]:
     e = data.evidence
     blocks: list[Block] = [Heading("Core recovery and lost core"), Slot(("recovery",))]
-    with_table(
-        blocks, e.recovery_bias, "Grade against recovery: rank correlation", most=40,
-        labels={"mean_low": "Mean where recovery is low", "mean_high": "Mean where recovery is high"},
-    )  # fmt: skip
+    bias = e.recovery_bias
+    if bias is not None and has(bias, "n") and not bias["n"].any():
+        blocks.append(
+            Paragraph("No recovery is given with the grades: whether grade goes with it cannot be judged.")
+        )
+    else:
+        with_table(
+            blocks, bias, "Grade against recovery: rank correlation", most=40,
+            labels={"mean_low": "Mean where recovery is low", "mean_high": "Mean where recovery is high",
+                    "biased": "Taken as biased"},
+        )  # fmt: skip
     blocks.append(Slot(("lost_core",)))
     with_table(blocks, _spaced(e.lost_core), "Treatments of lost core, through to tonnes and block grades")
     made = e.lost_core_composites
@@ -210,7 +217,13 @@ def _surface(data: ReportData) -> list[Block]:
         Heading("Surface samples"),
         Paragraph(f"Use of the surface samples: {e.surface_use.rstrip('. ') or 'kept out of the estimate'}."),
     ]
-    with_table(blocks, e.surface_bias, "Surface samples against core", labels=SURFACE)
+    with_table(
+        blocks,
+        _spaced(e.surface_bias, "sample_type"),
+        "Surface samples against core",
+        most=40,
+        labels=SURFACE,
+    )
     blocks.append(Slot(("surface_against_core",)))
     with_table(
         blocks, e.dredge_tracks, "Dredges: tracks, never points", digits=4,
@@ -226,12 +239,12 @@ def _surface(data: ReportData) -> list[Block]:
 def _laboratory(data: ReportData) -> list[Block]:
     lab = data.evidence.laboratory
     blocks: list[Block] = [Heading("Laboratory quality")]
-    if lab.verdicts is None:
+    shown, missing = verdicts_shown(lab.verdicts), missing_checks(lab.verdicts)
+    if lab.verdicts is None or (lab.table is not None and not len(lab.table)):
         blocks.append(Paragraph("No laboratory inserts were given with this study."))
-    with_table(blocks, verdicts_shown(lab.verdicts), "Verdicts")
-    missing = missing_checks(lab.verdicts)
-    if missing:
+    elif missing:
         blocks.append(Bullets(missing))
+    with_table(blocks, shown, "Verdicts")
     blocks.append(Slot(("control_charts",)))
     with_table(blocks, named_elements(references_by_material(lab.references)), "Reference materials", most=30)
     blocks.append(Slot(("blanks",)))
@@ -309,7 +322,8 @@ def _fixed(frame: pd.DataFrame) -> pd.DataFrame:
     return frame.assign(**made)
 
 
-def _spaced(frame: pd.DataFrame | None) -> pd.DataFrame | None:
-    if frame is None or not has(frame, "treatment"):
+def _spaced(frame: pd.DataFrame | None, column: str = "treatment") -> pd.DataFrame | None:
+    """Names of a column without their underscores."""
+    if frame is None or not has(frame, column):
         return frame
-    return frame.assign(treatment=[str(name).replace("_", " ") for name in frame["treatment"]])
+    return frame.assign(**{column: [str(name).replace("_", " ") for name in frame[column]]})

@@ -55,6 +55,7 @@ CODES: dict[str, str] = {
     "top-cut-unused": "a top cut names a domain or metal that has no samples",
     "surface-bias": "surface samples are richer or poorer than the core beside them",
     "surface-used": "surface samples are used, and for what",
+    "surface-mixed": "surface samples estimate a domain that has core of its own",
     "surface-none": "there are no surface samples with a core near them",
     "dredge-spread": "a dredge is a track and not a point",
     "twin-holes": "holes stand close enough to be twins",

@@ -69,9 +69,11 @@ def surface_bias(
     points = surface.loc[surface["sample_type"] != "dredge"]
     types = ["all", *sorted(set(points["sample_type"]))] if by_type else ["all"]
     rows = []
-    for metal in metals:
-        pairs = _pairs(points, core, metal, distance_m)
-        for kind in types:
+    pairs_of = {metal: _pairs(points, core, metal, distance_m) for metal in metals}
+    # all samples first, so that their intervals are the same whether or not the types are asked for
+    for kind in types:
+        for metal in metals:
+            pairs = pairs_of[metal]
             chosen = pairs if kind == "all" else pairs.loc[pairs["sample_type"] == kind]
             row = _compare(chosen, generator, repeats, confidence)
             rows.append({"metal": metal, "sample_type": kind, **row})
@@ -130,8 +132,9 @@ def cap_samples(
     thickness_m: float,
     types: Sequence[str],
     domain: str = "cap",
+    core: pd.DataFrame | None = None,
 ) -> tuple[pd.DataFrame, Findings]:
-    """Surface samples as the samples of a thin cap, a domain of its own; never mixed with core.
+    """Surface samples as the samples of a thin cap, which ought to be a domain of its own.
 
     Parameters
     ----------
@@ -141,6 +144,10 @@ def cap_samples(
         Stated thickness of the cap in m.
     types : sequence of str
         Sample types that the study lets in; never "dredge".
+    domain : str
+        Domain that they estimate.
+    core : DataFrame, optional
+        Composites of the core with their domain: where some are of the same domain, that is a finding.
 
     Returns
     -------
@@ -177,16 +184,28 @@ def cap_samples(
         f"{len(frame)} surface samples ({', '.join(types)}) estimate domain {domain}, a cap of {thickness_m:g} m",
         "The report names this use; surface samples alone support no more than an exploration target.",
     )
+    shared = int((names(core["domain"]) == domain).sum()) if core is not None else 0
+    if shared and len(frame):
+        findings.warning(
+            "surface-mixed",
+            f"Domain {domain} is estimated from {shared} composites of core and {len(frame)} surface samples together; "
+            "surface samples are commonly richer",
+            "Give the cap a domain of its own: surface_samples.cap_domain, with a thickness in domains.thickness_m.",
+        )
     return frame, findings
 
 
-def surface_use(surface: pd.DataFrame, use: str) -> tuple[str, Findings]:
+def surface_use(
+    surface: pd.DataFrame, use: str, cap_types: Sequence[str] = SAMPLE_TYPES
+) -> tuple[str, Findings]:
     """What the study does with surface samples, in words for the report.
 
     Parameters
     ----------
     surface : DataFrame
     use : "none", "outline" or "cap"
+    cap_types : sequence of str
+        Types that a cap takes; the others stay out of it.
 
     Raises
     ------
@@ -200,13 +219,23 @@ def surface_use(surface: pd.DataFrame, use: str) -> tuple[str, Findings]:
         return f"{len(surface)} surface samples ({types or 'none'}) are kept out of the estimate", findings
     words = {
         "outline": "help to draw the outline of the body",
-        "cap": "estimate a thin cap, a domain of its own",
+        "cap": "estimate a thin cap",
     }
     if use not in words:
         raise ValueError(f"use must be 'none', 'outline' or 'cap', not {use!r}")
-    text = (
-        f"{len(surface)} surface samples ({types or 'none'}) {words[use]}; their grades stay out of the body"
-    )
+    if use == "cap":
+        taken = surface[surface["sample_type"].isin(list(cap_types))]
+        of = [
+            f"{counts[kind]} {kind.replace('_', ' ')}"
+            for kind in SAMPLE_TYPES
+            if kind in counts and kind in cap_types
+        ]
+        left = (
+            f"; the other {len(surface) - len(taken)} are kept out of it" if len(taken) < len(surface) else ""
+        )
+        text = f"{len(taken)} surface samples ({', '.join(of) or 'none'}) {words[use]}{left}"
+    else:
+        text = f"{len(surface)} surface samples ({types or 'none'}) {words[use]}; their grades stay out of the body"
     findings.warning("surface-used", text, "The report names this use.")
     return text, findings
 

@@ -98,7 +98,7 @@ def composite(context: Context) -> EvidenceState:
     of_body = domains.domain_at(data.drill.runs, intervals).isin(config.domains.sulphide)
     recovered, found = recovery.recovery_summary(data.drill.runs[of_body.to_numpy()], intervals)
     add_findings(context, found)
-    used, found = surface_use(surface, config.surface_samples.use)
+    used, found = surface_use(surface, config.surface_samples.use, config.surface_samples.cap_types)
     add_findings(context, found)
     joined = JoinedSamples(
         assays,
@@ -153,6 +153,7 @@ def with_cap(
         thickness_m=choice.cap_thickness_m,
         types=choice.cap_types,
         domain=choice.cap_domain,
+        core=composites,
     )
     add_findings(context, found)
     return pd.concat([composites, cap], ignore_index=True)

@@ -114,6 +114,7 @@ def _surface(context: Context, joined: JoinedSamples, metals: list[str]) -> dict
         config.study.seed,
         domains=config.domains.sulphide,
         distance_m=config.surface_samples.compare_within_m,
+        by_type=True,
     )
     if not len(joined.surface):
         bias = bias.iloc[:0]

@@ -138,3 +138,41 @@ def test_each_use_is_named() -> None:
     assert "outline" in text and codes(findings) == ["surface-used"]
     with pytest.raises(ValueError, match="use must be"):
         surface_use(surface, "body")
+
+
+def test_a_cap_names_the_samples_that_it_takes_and_those_that_it_leaves() -> None:
+    surface = pd.DataFrame({"sample_type": ["grab"] * 3 + ["push_core"] * 2})
+    text, findings = surface_use(surface, "cap", ("push_core", "gravity_core"))
+    assert text == "2 surface samples (2 push core) estimate a thin cap; the other 3 are kept out of it"
+    assert codes(findings) == ["surface-used"]
+
+
+def test_a_cap_that_shares_its_domain_with_core_is_told() -> None:
+    surface = pd.DataFrame(
+        {"sample_id": ["a"], "sample_type": ["grab"], "easting": [1.0], "northing": [1.0], "elevation": [-9.0],
+         "cu_pct": [9.0]}
+    )  # fmt: skip
+    core = pd.DataFrame({"domain": ["cap", "cap", "massive"]})
+    options = {"thickness_m": 1.0, "types": ("grab",)}
+    _, mixed = cap_samples(surface, ["cu_pct"], domain="cap", core=core, **options)
+    assert codes(mixed) == ["surface-used", "surface-mixed"]
+    assert "2 composites of core and 1 surface samples" in list(mixed)[1].message
+    _, alone = cap_samples(surface, ["cu_pct"], domain="crust", core=core, **options)
+    assert codes(alone) == ["surface-used"]
+
+
+def test_intervals_of_all_samples_do_not_depend_on_the_types() -> None:
+    rng = np.random.default_rng(2)
+    place = {"easting": rng.uniform(0, 50, 20), "northing": rng.uniform(0, 50, 20), "elevation": -1600.0}
+    surface = pd.DataFrame(
+        {**place, "sample_type": ["grab", "chimney"] * 10, "cu_pct": rng.lognormal(1, 0.3, 20)}
+    )
+    core = pd.DataFrame(
+        {**place, "hole_id": [f"H{i % 6}" for i in range(20)], "from_m": 0.0, "length_m": 1.0, "zn_pct": 2.0,
+         "cu_pct": rng.lognormal(0, 0.3, 20), "domain": "massive"}
+    )  # fmt: skip
+    surface["zn_pct"] = rng.lognormal(1, 0.4, 20)
+    plain = surface_bias(surface, core, ["cu_pct", "zn_pct"], 5)
+    typed = surface_bias(surface, core, ["cu_pct", "zn_pct"], 5, by_type=True)
+    pd.testing.assert_frame_equal(typed[typed["sample_type"] == "all"].reset_index(drop=True), plain)
+    assert set(typed["sample_type"]) == {"all", "chimney", "grab"}
