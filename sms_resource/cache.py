@@ -27,7 +27,8 @@ import numpy as np
 T = TypeVar("T")
 
 FOLDER_VARIABLE = "SMS_RESOURCE_CACHE"
-DEFAULT_LIMIT_BYTES = 2 * 1024**3
+LIMIT_VARIABLE = "SMS_RESOURCE_CACHE_GB"
+DEFAULT_LIMIT_BYTES = 2 * 10**9
 _MAGIC = b"smsrcch1"
 _TRAILER = 32 + 8 + len(_MAGIC)  # digest, length of the pickle, magic
 _STALE_SECONDS = 3600.0
@@ -79,6 +80,27 @@ def user_cache_folder() -> Path:
     return base / "sms_resource"
 
 
+def limit_in_bytes() -> int:
+    """Most that a cache may hold: gigabytes (1e9 bytes) in the variable SMS_RESOURCE_CACHE_GB, or 2 GB.
+
+    A value that is no number of zero or more counts as not given; :func:`limit_fault` says so.
+    """
+    given = os.environ.get(LIMIT_VARIABLE, "").strip()
+    if not given or limit_fault():
+        return DEFAULT_LIMIT_BYTES
+    return int(float(given) * 1e9)
+
+
+def limit_fault() -> str:
+    """What is wrong with the variable SMS_RESOURCE_CACHE_GB; empty where nothing is."""
+    given = os.environ.get(LIMIT_VARIABLE, "").strip()
+    try:
+        sound = not given or 0.0 <= float(given) < float("inf")
+    except ValueError:
+        sound = False
+    return "" if sound else f"{LIMIT_VARIABLE} is {given!r}; a number of gigabytes, zero or more, was wanted"
+
+
 class StageCache:
     """Results of stages on disk, found again by their key.
 
@@ -86,8 +108,8 @@ class StageCache:
     ----------
     folder : path, optional
         Where entries live; :func:`user_cache_folder` if not given.
-    limit_bytes : int
-        Entries used least recently are removed once all together exceed this.
+    limit_bytes : int, optional
+        Entries used least recently are removed once all together exceed this; :func:`limit_in_bytes` if not given.
 
     Notes
     -----
@@ -95,9 +117,9 @@ class StageCache:
     cannot be written, :meth:`put` returns False and the result is simply not kept.
     """
 
-    def __init__(
-        self, folder: str | os.PathLike[str] | None = None, *, limit_bytes: int = DEFAULT_LIMIT_BYTES
-    ):
+    def __init__(self, folder: str | os.PathLike[str] | None = None, *, limit_bytes: int | None = None):
+        if limit_bytes is None:
+            limit_bytes = limit_in_bytes()
         if limit_bytes < 0:
             raise ValueError(f"limit_bytes is {limit_bytes}; zero or more was wanted")
         self.folder = Path(folder) if folder is not None else user_cache_folder()

@@ -159,14 +159,31 @@ def export(
 @app.command()
 def cache(
     clear: Annotated[bool, typer.Option("--clear", help="Remove everything that is kept.")] = False,
+    shrink_to: Annotated[
+        float | None,
+        typer.Option(
+            "--shrink-to",
+            min=0.0,
+            help="Remove what was used least recently until this many gigabytes are left.",
+        ),
+    ] = None,
 ) -> None:
-    """Show how much is kept of earlier runs, and where; or remove it."""
-    from sms_resource.cache import StageCache
+    """Show how much is kept of earlier runs, and where; or remove it.
 
+    Runs keep at most 2 GB; the variable SMS_RESOURCE_CACHE_GB sets another limit, 0 keeps nothing. SMS_RESOURCE_CACHE names
+    another folder.
+    """
+    from sms_resource.cache import StageCache, limit_fault
+
+    if limit_fault():
+        _fail_usage(limit_fault())
     store = StageCache()
     if clear:
         typer.echo(f"Removed {store.clear()} entries from {store.folder}")
         return
+    if shrink_to is not None:
+        removed = StageCache(store.folder, limit_bytes=int(shrink_to * 1e9)).evict()
+        typer.echo(f"Removed {removed} entries from {store.folder}")
     count, size = store.size()
     typer.echo(
         f"{count} entries, {size / 1e6:.1f} MB of at most {store.limit_bytes / 1e6:.0f} MB, in {store.folder}"
@@ -237,7 +254,8 @@ def view(
         bool, typer.Option("--screens/--no-screens", help="Leave out what screens took.")
     ] = True,
     hide: Annotated[
-        list[str] | None, typer.Option(help="Layer to hide: seafloor, base, body, blocks, holes, names, or a domain.")
+        list[str] | None,
+        typer.Option(help="Layer to hide: seafloor, base, body, blocks, holes, names, or a domain."),
     ] = None,
 ) -> None:
     """Open the seafloor, the blocks above a cut-off and the holes in a window."""

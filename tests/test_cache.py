@@ -19,7 +19,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from sms_resource.cache import CacheKeyError, StageCache, cache_key, user_cache_folder
+from sms_resource.cache import CacheKeyError, StageCache, cache_key, limit_fault, user_cache_folder
 
 KEYS = [cache_key(n) for n in range(20)]
 
@@ -276,3 +276,39 @@ def test_processes_share_a_cache_that_evicts_all_the_time(tmp_path: pathlib.Path
     cache.evict()
     assert cache.size()[1] <= 900_000
     assert not list(cache.folder.rglob("*.part"))
+
+
+@pytest.mark.parametrize(
+    ("given", "wanted"), [("", 2e9), ("0.5", 5e8), ("0", 0), (" 3 ", 3e9), ("-1", 2e9), ("lots", 2e9)]
+)
+def test_the_limit_comes_from_the_environment(
+    given: str, wanted: float, tmp_path: pathlib.Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setenv("SMS_RESOURCE_CACHE_GB", given)
+    assert StageCache(tmp_path).limit_bytes == wanted
+    assert bool(limit_fault()) == (given in ("-1", "lots"))
+    assert StageCache(tmp_path, limit_bytes=7).limit_bytes == 7
+
+
+def test_the_command_shrinks_and_refuses_a_limit_that_is_none(
+    tmp_path: pathlib.Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    from typer.testing import CliRunner
+
+    from sms_resource.cli import app
+
+    monkeypatch.setenv("SMS_RESOURCE_CACHE", str(tmp_path))
+    monkeypatch.setenv("SMS_RESOURCE_CACHE_GB", "0.003")
+    store = StageCache()
+    keys = [cache_key(number) for number in range(4)]
+    for number, key in enumerate(keys):
+        store.put(key, bytes(1_000_000))
+        if key in store:
+            os.utime(store.path(key), (number, number))
+    assert [key in store for key in keys].count(True) == 2  # each is a little more than 1 MB
+    assert "of at most 3 MB" in CliRunner().invoke(app, ["cache"]).output
+    said = CliRunner().invoke(app, ["cache", "--shrink-to", "0.0015"])
+    assert said.exit_code == 0 and "Removed 1 entries" in said.output and keys[-1] in store
+    monkeypatch.setenv("SMS_RESOURCE_CACHE_GB", "lots")
+    refused = CliRunner().invoke(app, ["cache"])
+    assert refused.exit_code == 2 and "gigabytes" in refused.output
