@@ -82,12 +82,7 @@ def _places(data: ReportData) -> list[Block]:
     )  # fmt: skip
     blocks += [Heading("Collars against the seafloor"), Slot(("plan_collars",))]
     if e.collar_shift_m is not None:
-        blocks.append(
-            Paragraph(
-                f"Shift applied to all collars: {e.collar_shift_m:+.2f} m; the delivered elevations are kept"
-                " in the data files."
-            )
-        )
+        blocks.append(Paragraph(_collar_policy(e.collars, e.collar_shift_m)))
     with_table(
         blocks, _worded(e.collar_match), "Collars less seafloor, before and after",
         labels={"quantity": "Collar less seafloor", "before": "As delivered", "after": "As used"},
@@ -107,6 +102,18 @@ def _places(data: ReportData) -> list[Block]:
     return blocks
 
 
+def _collar_policy(collars: pd.DataFrame | None, shift_m: float) -> str:
+    """What was done to the elevations of the collars."""
+    kept = "the delivered elevations are kept in the data files."
+    if collars is not None and has(collars, "dz_m", "dz_after_m") and not shift_m:
+        known = collars["dz_m"].notna()
+        if (collars.loc[known, "dz_after_m"].abs() < 1e-9).all() and (
+            collars.loc[known, "dz_m"].abs() > 1e-9
+        ).any():
+            return f"Each collar was put on the seafloor below it; {kept}"
+    return f"Shift applied to all collars: {shift_m:+.2f} m; {kept}"
+
+
 def _recovery(data: ReportData) -> list[Block]:
     e = data.evidence
     blocks: list[Block] = [Heading("Core recovery and lost core"), Slot(("recovery",))]
@@ -122,7 +129,17 @@ def _recovery(data: ReportData) -> list[Block]:
                     "biased": "Taken as biased"},
         )  # fmt: skip
     blocks.append(Slot(("lost_core",)))
-    with_table(blocks, _spaced(e.lost_core), "Treatments of lost core, through to tonnes and block grades")
+    runs = _spaced(e.lost_core)
+    if runs is not None and len(runs):
+        above = [c for c in runs.columns if str(c).endswith("_above_cutoff")]
+        with_table(
+            blocks, runs.drop(columns=above), "Treatments of lost core, through to tonnes and block grades"
+        )
+        if above:
+            part = runs[["treatment", *above]].rename(
+                columns={c: c.removesuffix("_above_cutoff") for c in above}
+            )
+            with_table(blocks, part, f"Treatments of lost core, blocks at {data.cutoff_text}")
     made = e.lost_core_composites
     if made is not None and has(made, "treatment", "domain"):
         metals = [m for m in data.subject.metals if m in made]

@@ -95,7 +95,13 @@ def cuts_shown(frame: pd.DataFrame | None) -> pd.DataFrame | None:
         "Holes of the cut samples (count)": holes,
         "Reason for the proposal": frame.get("reason", ""),
     }
-    return pd.DataFrame({name: values for name, values in columns.items() if values is not None})
+    shown = pd.DataFrame({name: values for name, values in columns.items() if values is not None})
+    idle = [
+        name
+        for name, nothing in (("Effect shown of", "none"), ("Holes of the cut samples (count)", ""))
+        if (shown[name] == nothing).all()
+    ]
+    return shown.drop(columns=idle)
 
 
 def _few_holes(text: object, most: int = 6) -> str:

@@ -224,7 +224,7 @@ def _proposal(name: str, metal: str, part: pd.DataFrame, weight_column: str | No
     if n < LEAST_SAMPLES:
         reason = f"only {n} samples: too few to tell a tail from an accident"
     elif not row["cv"] > TAME_CV:  # type: ignore[operator]
-        reason = f"the coefficient of variation is {row['cv']:.2f}, at most {TAME_CV}: no cut is needed"
+        reason = f"CV {row['cv']:.2f}, at most {TAME_CV}: no cut is needed"
     else:
         cut, reason = _find_cut(values, weights, float(row["cv"]))  # type: ignore[arg-type]
     row.update(

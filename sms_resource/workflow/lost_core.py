@@ -53,7 +53,7 @@ def lost_core_runs(context: Context) -> pd.DataFrame:
             evidence.assays, data.drill.runs, intervals, evidence.paths, metals=all_columns(config),
             densities=data.drill.densities, **options,
         )  # fmt: skip
-        samples = body_samples(made.frame, blocks.frame, config)
+        samples = body_samples(with_surface(made.frame, evidence.composites), blocks.frame, config)
         samples, _ = cut_grades(samples, evidence.tables["top_cut_study"], config)
         grades, _, _ = krige_domains(samples, part, variograms, hoods, config, context.threads)
         found[treatment] = (len(samples), totals(join_domains(part, grades, density, config), metals, config))
@@ -67,6 +67,12 @@ def lost_core_runs(context: Context) -> pd.DataFrame:
     return pd.DataFrame(rows)
 
 
+def with_surface(composites: pd.DataFrame, of_study: pd.DataFrame) -> pd.DataFrame:
+    """Composites with the surface samples that the study lets estimate a cap; no treatment of lost core touches them."""
+    cap = of_study[of_study["composite_id"].astype(str).str.startswith("surface-")]
+    return pd.concat([composites, cap], ignore_index=True) if len(cap) else composites
+
+
 def _ratio(value: float, base: float) -> float:
     """Value over base; 1 where both are zero."""
     if value == base:
@@ -75,16 +81,18 @@ def _ratio(value: float, base: float) -> float:
 
 
 def totals(frame: pd.DataFrame, metals: list[str], config: Any) -> dict[str, float]:
-    """Dry and wet tonnes and mean grades of all blocks, and of those above the study's cut-off on a metal."""
+    """Dry and wet tonnes and mean grades of all blocks, and of those at the study's cut-off where it is on a metal."""
     variable = config.cutoff.variable
-    variable = variable if variable in config.metals.estimate else config.metals.estimate[0]
-    grade = frame[element_column(variable)].to_numpy(dtype=float)
-    at = config.cutoff.at if config.cutoff.variable == variable else 0.0
+    on_metal = variable in config.metals.estimate
+    grade = frame[element_column(variable if on_metal else config.metals.estimate[0])].to_numpy(dtype=float)
+    parts = [("", np.isfinite(grade))]
+    if on_metal:  # treatments are run before blocks have a value or an equivalent
+        parts.append(("_above_cutoff", grade >= config.cutoff.at))
     found: dict[str, float] = {}
-    for suffix, chosen in (("", np.isfinite(grade)), ("_above_cutoff", grade >= at)):
+    for suffix, chosen in parts:
         dry = frame.loc[chosen, "dry_tonnes"].to_numpy(dtype=float)
         found[f"dry_tonnes{suffix}"] = float(dry.sum())
-        found[f"wet_tonnes{suffix}"] = float(frame.loc[chosen, "wet_tonnes"].sum())
+        found[f"wet_tonnes{suffix}"] = float(frame.loc[chosen, "wet_tonnes"].sum(min_count=1))
         for metal in metals:
             values = frame.loc[chosen, metal].to_numpy(dtype=float)
             known = np.isfinite(values)
