@@ -5,6 +5,8 @@ from __future__ import annotations
 import json
 from pathlib import Path
 
+import pandas as pd
+
 from sms_resource.findings import Findings
 from sms_resource.workflow.folder import is_results, recover
 from sms_resource.workflow.manifest import read_manifest
@@ -34,7 +36,6 @@ def export_results(results: Path, out: Path, formats: tuple[str, ...] = ()) -> t
         If a format is not known.
     """
     import geopandas as gpd
-    import pandas as pd
 
     from sms_resource.blocks.exchange import FORMATS, write_exchange
     from sms_resource.blocks.grid import BlockGrid
@@ -58,12 +59,15 @@ def export_results(results: Path, out: Path, formats: tuple[str, ...] = ()) -> t
     for name in ("seafloor", "base"):
         surfaces[name], found = load_grid(layers / f"{name}.tif", shown_as=f"layers/{name}.tif", crs=crs)
         findings.extend(found)
+    zones = layers / "exclusions.gpkg"
     written, found = write_exchange(
         out,
         model,
         formats=formats or FORMATS,
         metals=manifest["metals"],
         outline=gpd.read_file(layers / "outline.gpkg"),
+        exclusions=gpd.read_file(zones) if zones.is_file() else None,
+        collars=collar_points(sticks),
         sticks=sticks,
         composites=composites,
         seafloor=surfaces["seafloor"],
@@ -71,3 +75,14 @@ def export_results(results: Path, out: Path, formats: tuple[str, ...] = ()) -> t
     )
     findings.extend(found)
     return written, findings
+
+
+def collar_points(sticks: pd.DataFrame) -> pd.DataFrame:
+    """Tops of the holes with their length: in plan an upright hole is a point, and its line has no length there."""
+    first = sticks.sort_values(["hole_id", "from_m"], kind="stable").drop_duplicates("hole_id")
+    length = sticks.groupby("hole_id")["to_m"].max()
+    return pd.DataFrame(
+        {"hole_id": first["hole_id"].to_numpy(), "easting": first["x_from"].to_numpy(),
+         "northing": first["y_from"].to_numpy(), "elevation": first["z_from"].to_numpy(),
+         "length_m": first["hole_id"].map(length).to_numpy()}
+    )  # fmt: skip

@@ -25,7 +25,12 @@ def write_layers(folder: Path, study: Study, done: dict[str, Any]) -> None:
     sticks.to_parquet(folder / "holes.parquet", index=False)
     record = {**blocks.model.grid.record(), "crs": crs}
     (folder / "block_grid.json").write_text(json.dumps(record, indent=1), encoding="utf-8")
-    write_outline(folder / "outline.gpkg", body.body.outline, crs)
+    write_shapes(folder / "outline.gpkg", "outline", outline_frame(body.body.outline, crs))
+    zones = done["load"].exclusions
+    if zones is not None and len(zones):
+        write_shapes(
+            folder / "exclusions.gpkg", "exclusions", zones[["name", "status", "buffer_m", "geometry"]]
+        )
 
 
 def write_surface(path: Path, surface: Any, crs: str) -> None:
@@ -45,14 +50,18 @@ def write_surface(path: Path, surface: Any, crs: str) -> None:
         target.write(np.flipud(surface.values).astype("float32"), 1)
 
 
-def write_outline(path: Path, outline: Any, crs: str) -> None:
-    """The outline as GeoPackage, with a fixed time of change so that the same run gives the same bytes."""
-    import sqlite3
-
+def outline_frame(outline: Any, crs: str) -> Any:
+    """The outline as a layer of one row."""
     import geopandas as gpd
 
-    frame = gpd.GeoDataFrame({"name": ["body"]}, geometry=[outline], crs=crs)
-    frame.to_file(path, layer="outline", driver="GPKG")
+    return gpd.GeoDataFrame({"name": ["body"]}, geometry=[outline], crs=crs)
+
+
+def write_shapes(path: Path, layer: str, frame: Any) -> None:
+    """A layer as GeoPackage, with a fixed time of change so that the same run gives the same bytes."""
+    import sqlite3
+
+    frame.to_file(path, layer=layer, driver="GPKG")
     with sqlite3.connect(path) as connection:
         connection.execute("UPDATE gpkg_contents SET last_change = '2000-01-01T00:00:00.000Z'")
     connection.close()
