@@ -2,59 +2,12 @@
 
 from __future__ import annotations
 
-import math
-
 import numpy as np
 import pandas as pd
 import pytest
 
 from sms_resource.blocks.frames import VerticalFrame
-from sms_resource.blocks.grid import SurfaceGrid
-from sms_resource.geostatistics import Neighbourhood, Structure, VariogramModel, leave_one_out
-
-
-def slope_deposit(seed: int, dip_deg: float = 25.0) -> tuple[SurfaceGrid, SurfaceGrid, pd.DataFrame]:
-    """A body draped over a slope: seafloor, base, and metre composites of a grade that lies in layers."""
-    rng = np.random.default_rng(seed)
-    cell = 2.0
-    x, y = np.meshgrid(cell * np.arange(101), cell * np.arange(101))
-    top = -1500 - math.tan(math.radians(dip_deg)) * x + 1.5 * np.sin(x / 23) * np.cos(y / 17)
-    thickness = 10 + 3 * np.sin(x / 60) * np.sin(y / 50)
-    seafloor = SurfaceGrid(0, 0, cell, cell, top)
-    base = seafloor.with_values(top - thickness)
-    east, north = (a.ravel() for a in np.meshgrid(np.arange(20, 181, 27.0), np.arange(20, 181, 27.0)))
-    east, north = east + rng.uniform(-4, 4, east.size), north + rng.uniform(-4, 4, east.size)
-    rows = []
-    for n, (e, m) in enumerate(zip(east, north, strict=True)):
-        surface = float(seafloor.sample(e, m))
-        depth = surface - float(base.sample(e, m))
-        for metre in np.arange(0.5, depth, 1.0):
-            # Rich under the seafloor, a lean layer, and a second rich layer above the base.
-            grade = 4 + 5 * math.exp(-metre / 2) + 3 * math.exp(-(((metre / depth - 0.8) / 0.12) ** 2))
-            rows.append((f"H{n}", e, m, surface - metre, grade * math.exp(rng.normal(0, 0.15))))
-    return (
-        seafloor,
-        base,
-        pd.DataFrame(rows, columns=["hole_id", "easting", "northing", "elevation", "cu_pct"]),
-    )
-
-
-def errors(seed: int) -> dict[str, float]:
-    """Root mean square error of each frame, a whole hole left out at a time."""
-    seafloor, base, composites = slope_deposit(seed)
-    model = VariogramModel(0.3, [Structure("spherical", 2.7, (80.0, 80.0, 4.0))])
-    search = Neighbourhood((90.0, 90.0, 6.0), max_samples=16, min_samples=2, max_per_hole=4)
-    xyz = composites[["easting", "northing", "elevation"]].to_numpy()
-    found = {}
-    for kind in ("elevation", "depth", "proportional"):
-        frame = VerticalFrame(kind, seafloor, base)  # type: ignore[arg-type]
-        left = leave_one_out(
-            frame.forward(xyz), composites["cu_pct"].to_numpy(), model, search, hole_ids=composites["hole_id"]
-        )
-        # A sample without neighbours on its level gets the mean: that is what a user would be left with.
-        estimate = left["estimate"].fillna(composites["cu_pct"].mean())
-        found[kind] = float(np.sqrt(np.mean((estimate - left["true"]) ** 2)))
-    return found
+from tests.blocks.draped import errors, slope_deposit
 
 
 def test_a_draped_body_is_estimated_better_in_depth() -> None:
