@@ -27,6 +27,11 @@ def variograms(context: Context) -> VariogramState:
     samples = body_samples(evidence.composites, block_state.frame, config)
     samples, cuts = cut_grades(samples, evidence.tables["top_cut_study"], config)
     context.findings.extend(top_cut_findings(cuts))
+    if config.top_cuts.apply != "given" and config.top_cuts.cuts:
+        context.findings.warning(
+            "top-cut-not-applied", f"the study gives top cuts and does not apply them (apply = \"{config.top_cuts.apply}\")",
+            "Set top_cuts.apply = \"given\", or take the cuts out.", file=context.study.path.name,
+        )  # fmt: skip
     spacing = hole_spacing(evidence.collars, body_state.outline)
     scans: list[pd.DataFrame] = []
     inferences: dict[tuple[str, str], Any] = {}
