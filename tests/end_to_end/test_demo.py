@@ -157,3 +157,22 @@ def test_findings_of_the_demo_are_no_errors_and_have_their_codes(demo: Demo) -> 
     codes = {item["code"] for item in found}
     # the diseases of real data that the demo has: poor recovery, rich surface samples, open holes, prospects not judged
     assert {"recovery-low", "surface-bias", "hole-end-sulphide", "class-prospects-not-judged"} <= codes
+
+
+def test_the_report_shows_what_the_samples_are_worth(demo: Demo) -> None:
+    page = (demo.out / "report.html").read_text(encoding="utf-8")
+    for title in (
+        "Positions by method", "How the holes ended", "Collars less seafloor, before and after",
+        "Collars, furthest off the median first", "Treatments of lost core, composites (means by length)",
+        "Statistics of the composites, weighted by recovered length", "Twin holes: grades compared",
+        "Clusters: sites with more than one hole", "Top cuts: proposed, and in use", "Dredges: tracks, never points",
+        "Check laboratory (reduced major axis)", "Contacts of domains: hard or soft", "Tracers over the whole depth",
+    ):  # fmt: skip
+        assert title in page, title
+    assert page.count("none used") >= 12  # no cut is in use in any of three domains and four metals
+    curves = pd.read_csv(demo.out / "figures" / "data" / "top_cuts.csv")
+    assert len(curves[["domain", "metal"]].drop_duplicates()) == 12
+    last = curves.groupby(["domain", "metal"]).tail(1)
+    assert (last["n_cut"] == 0).all() and (last["metal_removed_pct"] == 0).all()
+    collars = pd.read_csv(demo.out / "figures" / "data" / "plan_collars.csv")
+    assert len(collars) == 73 and (collars["original_elevation"] != collars["elevation"]).all()
