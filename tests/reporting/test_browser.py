@@ -13,7 +13,7 @@ PROBE = """<!DOCTYPE html><html><body style="margin:0">
 document.getElementById("f").onload = () => {
   const d = document.getElementById("f").contentDocument, w = d.documentElement, images = [...d.images];
   const over = [...d.querySelectorAll("body *")].filter(e =>
-    e.getBoundingClientRect().right > w.clientWidth + 1 && !e.closest(".table") && !e.closest(".skip"));
+    e.getBoundingClientRect().right > w.clientWidth + 1 && !e.closest(".scroll") && !e.closest(".skip"));
   document.body.dataset.answer = [w.scrollWidth - w.clientWidth, over.length, images.length,
     images.filter(i => i.naturalWidth > 50).length].join(" ");
 };
