@@ -170,6 +170,8 @@ _SPATIAL = {
     "xyz-irregular": "The points do not stand on a regular grid.",
     "xyz-duplicate-node": "A node of the grid has two values.",
     "xyz-sparse": "Few nodes of the grid have a value.",
+    "chimney-not-polygon": "A chimney is not a polygon.",
+    "chimney-without-height": "A chimney has no height above zero.",
     "layer-reprojected": "The layer was brought into the study's coordinate system.",
     "geometry-empty": "A record has no shape, or one that is not finite.",
     "geometry-repaired": "A shape was not sound and was repaired.",
@@ -178,6 +180,7 @@ _SPATIAL = {
     "status-unknown": "A zone has a status that is not known.",
     "buffer-missing": "A point or line has no buffer.",
     "buffer-negative": "A buffer is negative.",
+    "override-class": "A class override names a class that there is not.",
     "override-incomplete": "A class override lacks its class, its reason or who gave it.",
 }
 

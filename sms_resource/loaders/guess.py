@@ -22,7 +22,7 @@ __all__ = ["Guess", "GuessedFile", "GuessedStudy", "guess_study"]
 
 ROLES = (
     "collars", "surveys", "runs", "lithology", "assays", "densities", "surface_samples", "dredges", "laboratory",
-    "bathymetry", "outline", "exclusions", "class_overrides", "base_points", "base_grid",
+    "bathymetry", "outline", "exclusions", "chimneys", "class_overrides", "base_points", "base_grid",
 )  # fmt: skip
 TITLE_ROWS = (1, 2, 3, 4, 5)  # rows in which the names of the columns are looked for
 _COMPANIONS = frozenset(

@@ -14,6 +14,7 @@ from sms_resource.loaders.guess_types import Confidence, Guess, GuessedFile
 from sms_resource.loaders.headers import find_header
 from sms_resource.loaders.netcdf import is_classic, read_netcdf
 from sms_resource.loaders.raster import RasterCells, read_raster
+from sms_resource.loaders.shapes import AREAS
 from sms_resource.loaders.synonyms import bare_name
 from sms_resource.loaders.vectors import layer_names, read_layer
 from sms_resource.loaders.xyz import looks_like_xyz, read_xyz
@@ -31,7 +32,10 @@ _CLASS_COLUMNS = {
     "reason": "reason why",
     "by": "by who author person",
 }
-_AREAS = {"Polygon", "MultiPolygon"}
+_CHIMNEY_COLUMNS = {
+    "name": "name chimney chimneyname label title id",
+    "height_m": "height heightm chimneyheight h",
+}
 
 
 def is_raster(path: Path) -> bool:
@@ -70,14 +74,16 @@ def guess_grid(path: Path) -> tuple[GuessedFile | None, str]:
         )
     if cells.crs is not None:
         form.append(Guess("crs_inside", crs_name(cells.crs), "the file states it", "sure"))
-    zone = _utm_zone(cells) if cells.crs is not None and cells.crs.is_geographic else None
+    form += _uncertainty(path)
+    degrees = cells.crs is not None and cells.crs.is_geographic
+    zone = _utm_zone(cells) if degrees else None
     because = f"{path.name} is in degrees and lies in this zone"
     hint = Guess("crs", zone, because, "doubtful") if zone else None
     base = "base" in path.stem.casefold()
     role = "base_grid" if base else "bathymetry"
     step = abs(float(cells.transform.a))
     rows, columns = cells.values.shape
-    because = f"it is a grid of {columns} x {rows} cells of {step:g}" + (
+    because = f"it is a grid of {columns} x {rows} cells of {step:.3g}{' degrees' if degrees else ''}" + (
         " and its name says base" if base else ""
     )
     # a grid that states its system and covers more ground is the safer choice
@@ -86,6 +92,22 @@ def guess_grid(path: Path) -> tuple[GuessedFile | None, str]:
     return GuessedFile(
         path, "grid", Guess("role", role, because, "likely"), form=tuple(form), hint=hint, score=score
     ), ""
+
+
+def _uncertainty(path: Path) -> list[Guess]:
+    """The band that a raster itself calls an uncertainty."""
+    import rasterio
+    from rasterio.errors import RasterioError
+
+    try:
+        with rasterio.open(path) as source:
+            names = [str(name or "").casefold() for name in source.descriptions]
+    except (RasterioError, OSError, ValueError):
+        return []
+    for band, name in enumerate(names, start=1):
+        if band > 1 and any(word in name for word in ("uncert", "sigma", "std")):
+            return [Guess("uncertainty_band", str(band), f"the file calls its band {band} “{name}”", "sure")]
+    return []
 
 
 def guess_layers(path: Path) -> tuple[list[GuessedFile], list[str | None], str]:
@@ -139,7 +161,7 @@ def _zones(path: Path, frame: Any, kinds: set[str], layer: str | None) -> Guesse
     if kinds and {guess.key for guess in classes} == {"class", "reason", "by"}:
         role = Guess("role", "class_overrides", "its polygons have a class, a reason and a name", "likely")
         return GuessedFile(path, "layer", role, classes, form=tuple(form), score=2.0)
-    if kinds and ("status" in keys or "buffer_m" in keys) and (kinds & _AREAS or named or "buffer_m" in keys):
+    if kinds and ("status" in keys or "buffer_m" in keys) and (kinds & AREAS or named or "buffer_m" in keys):
         confidence: Confidence = "likely" if named else "doubtful"
         because = f"it has {', '.join(guess.value for guess in zones)}" + (
             " and its name says so" if named else ""
@@ -149,17 +171,24 @@ def _zones(path: Path, frame: Any, kinds: set[str], layer: str | None) -> Guesse
         return GuessedFile(
             path, "layer", role, zones, form=tuple(form), missing=missing, score=2.0 + named, unused=()
         )
-    if kinds and kinds <= _AREAS | {"LineString", "MultiLineString"}:
+    heights = _match(headers, _CHIMNEY_COLUMNS)
+    chimneys = any(word in text for word in ("chimney", "spire", "edifice"))
+    if kinds and kinds <= AREAS and chimneys:
+        tall = "height_m" in {guess.key for guess in heights}
+        because = "it holds polygons" + (" with a height" if tall else "") + " and its name says so"
+        role = Guess("role", "chimneys", because, "likely" if tall else "doubtful")
+        return GuessedFile(
+            path, "layer", role, heights, form=tuple(form), missing=() if tall else ("height_m",), score=2.0
+        )
+    if kinds and kinds <= AREAS | {"LineString", "MultiLineString"}:
         outlined = any(word in text for word in ("outline", "body", "boundary", "limit", "domain"))
         because = (
             "it holds "
-            + ("polygons" if kinds <= _AREAS else "lines")
+            + ("polygons" if kinds <= AREAS else "lines")
             + (" and its name says so" if outlined else "")
         )
-        role = Guess("role", "outline", because, "likely" if outlined and kinds <= _AREAS else "doubtful")
-        return GuessedFile(
-            path, "layer", role, form=tuple(form), score=1.0 + outlined + bool(kinds <= _AREAS)
-        )
+        role = Guess("role", "outline", because, "likely" if outlined and kinds <= AREAS else "doubtful")
+        return GuessedFile(path, "layer", role, form=tuple(form), score=1.0 + outlined + bool(kinds <= AREAS))
     return None
 
 

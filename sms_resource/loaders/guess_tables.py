@@ -21,6 +21,7 @@ from sms_resource.loaders.words import WORDS, plain_word
 from sms_resource.units import ELEMENTS
 
 CLOSE = 0.86  # likeness of two names that may be a slip of spelling
+LONGEST_M = 300.0  # no hole into a seafloor deposit is longer; a depth of water is mostly more
 _TELLING = {
     "collars": ("length_m", "ended_in", "position_sigma_m"),
     "surveys": ("azimuth", "dip"),
@@ -138,6 +139,16 @@ def _columns(raw: RawTable, role: str) -> list[Guess]:
             taken[name] = Guess(name, header, f"“{header}” is a usual name for it", "likely")
         else:
             taken[name] = Guess(name, header, f"“{header}” is like a usual name for it", "doubtful")
+    length = taken.get("length_m")
+    if role == "collars" and length is not None and bare_name(length.value) == "depth":
+        # beside an elevation of its own, a depth of metres to tens of metres is where the hole ended
+        values = parse_numbers(raw.column(length.value), decimal=raw.decimal).values
+        short = bool(np.isfinite(values).any()) and 0 < float(np.nanmedian(values)) < LONGEST_M
+        because = f"“{length.value}” stands beside an elevation, and its values are those of lengths of holes"
+        if short:
+            taken["length_m"] = Guess("length_m", length.value, because, "doubtful")
+        else:
+            del taken["length_m"]
     return [taken[column.name] for column in SCHEMAS[role] if column.name in taken]
 
 

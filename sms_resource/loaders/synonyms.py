@@ -34,7 +34,7 @@ _RAW: Mapping[str, Mapping[str, str]] = {
         "hole_id": _HOLE,
         **_PLACE,
         "length_m": "length totaldepth td eoh maxdepth holelength finaldepth holedepth depthdrilled drilledlength endofhole "
-        "totallength",
+        "totallength depth",
         "azimuth": "azimuth azi az bearing",
         "dip": "dip",
         "ended_in": "endedin endin ended endreason terminatedin bottomedin holeended",

@@ -252,7 +252,10 @@ def _check_sense(study: Study, rows: dict[str, int], findings: Findings) -> None
 
     for role, file in study.files().items():
         path = study.resolve(file)
-        if not path.is_file():
+        if path.is_dir():
+            fault(f"data.{role}", "file-missing", f"a folder stands where the file of {role} should be: {file}",
+                  "Name a file; the path starts at the folder of the study file.")  # fmt: skip
+        elif not path.is_file():
             fault(f"data.{role}", "file-missing", f"the file of {role} does not exist: {file}",
                   "Correct the path; it starts at the folder of the study file.")  # fmt: skip
         elif not path.is_relative_to(study.folder.resolve()):
@@ -260,7 +263,11 @@ def _check_sense(study: Study, rows: dict[str, int], findings: Findings) -> None
                           "The manifest names it; keep it with the study to make the run repeatable.",
                           file=name, row=row_of(rows, f"data.{role}"), column=f"data.{role}")  # fmt: skip
     known = {*config.domains.codes.values(), config.domains.unlogged}
-    if config.domains.codes:
+    undecided = [code for code, domain in config.domains.codes.items() if domain.strip() in ("", "?")]
+    if undecided:
+        fault("domains.codes", "study-domain", f"no domain is named for {', '.join(undecided)}",
+              "Replace each question mark by a domain: one of domains.sulphide, or such as \"waste\".")  # fmt: skip
+    if config.domains.codes and not undecided:
         for domain in config.domains.sulphide:
             made = config.chimneys.source != "none" and domain == config.chimneys.domain
             if domain not in known and not made:

@@ -46,7 +46,11 @@ class GridFile(Section):
 
     file: str = key(..., "Path of the file, relative to the study file.", decision=False)
     crs: str | None = key(None, 'Coordinate system, where the file has none inside, such as "EPSG:32702".')
-    reproject: bool = key(False, "Whether to reproject a grid that is in another coordinate system.")
+    reproject: bool = key(
+        False,
+        "Whether to resample a grid that is in another projected system, or rotated; refused otherwise. A grid in "
+        "degrees is always resampled into study.crs, with a note.",
+    )
     vertical: Literal["elevation", "depth"] = key(
         "elevation", "Whether cells hold elevations or depths (positive down)."
     )
@@ -65,7 +69,10 @@ class LayerFile(Section):
     crs: str | None = key(None, "Coordinate system, where the file has none inside.")
     reproject: bool = key(False, "Whether to reproject a layer that is in another coordinate system.")
     columns: dict[str, str] = key(
-        {}, "Mapping from name, status and buffer_m to the file's columns.", decision=False
+        {},
+        "Mapping to the file's columns: name, status, buffer_m of zones; name, height_m of chimneys; class, reason, "
+        "by of class overrides.",
+        decision=False,
     )
 
 
@@ -88,7 +95,11 @@ class DataFiles(Section):
     exclusions: LayerFile | None = key(
         None, "Zones that are set aside, with status and buffer.", decision=False
     )
-    chimneys: LayerFile | None = key(None, "Polygons of chimneys, with their height_m.", decision=False)
+    chimneys: LayerFile | None = key(
+        None,
+        'Polygons of chimneys with the height_m of each, for chimneys.source = "polygons".',
+        decision=False,
+    )
     class_overrides: LayerFile | None = key(
         None, "Polygons in which a CP sets the class (columns: class, reason, by).", decision=False
     )

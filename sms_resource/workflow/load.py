@@ -71,6 +71,10 @@ def load(context: Context) -> LoadedData:
         loaded["base_grid"] = _grid(context, data.base_grid)
     loaded["outline"] = read_layer(context, data.outline, "outline")
     loaded["exclusions"] = read_layer(context, data.exclusions, "exclusions")
+    # what later stages read is read here too, so that the command check shows what is wrong with it
+    for role, layer in (("chimneys", data.chimneys), ("class_overrides", data.class_overrides)):
+        if layer is not None:
+            context.findings.extend(_layer(context, layer, role)[1].errors)
     loaded["files"] = context.study.files()
     if data.truth:
         check_truth(context, data.truth)
@@ -117,16 +121,23 @@ def read_layer(context: Context, layer: LayerFile | None, role: str) -> Any:
     """Read one layer of polygons in its role."""
     if layer is None:
         return None
+    frame, found = _layer(context, layer, role)
+    context.findings.extend(found)
+    return frame
+
+
+def _layer(context: Context, layer: LayerFile, role: str) -> Any:
+    """A layer in its role, and what is wrong with it."""
     from sms_resource.loaders import boundaries
 
     reader: Any = {
         "outline": boundaries.load_outline,
-        "chimneys": boundaries.load_outline,
+        "chimneys": boundaries.load_chimneys,
         "exclusions": boundaries.load_exclusions,
         "class_overrides": boundaries.load_overrides,
     }[role]
     options: dict[str, Any] = {} if role == "outline" else {"columns": dict(layer.columns)}
-    frame, found = reader(
+    return reader(
         context.study.resolve(layer.file),
         shown_as=layer.file,
         layer=layer.layer,
@@ -135,8 +146,6 @@ def read_layer(context: Context, layer: LayerFile | None, role: str) -> Any:
         reproject=layer.reproject,
         **options,
     )
-    context.findings.extend(found)
-    return frame
 
 
 def check(context: Context) -> dict[str, int]:

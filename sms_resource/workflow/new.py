@@ -61,10 +61,11 @@ def new_study(files: list[Path], out: Path) -> NewStudy:
     questions: list[str] = []
     lines = _head(guessed, out, questions)
     for file in guessed.files:
-        lines += _file(file, out, questions)
+        lines += _file(file, out, questions, guessed.crs.value if guessed.crs else None)
     for path, why in guessed.others:
         lines.append(f"# Not used: {path.name}: {why}")
         questions.append(f"{path.name} is not used: {why}")
+    lines += [""] if guessed.others else []
     lines += _decisions(guessed, questions)
     out.write_text("\n".join(lines) + "\n", encoding="utf-8")
     return NewStudy(out, _lines(guessed), questions)
@@ -103,7 +104,24 @@ def _head(guessed: Any, out: Path, questions: list[str]) -> list[str]:
     ]
 
 
-def _file(file: Any, out: Path, questions: list[str]) -> list[str]:
+def _elsewhere(file: Any, stated: str, crs: str | None, questions: list[str]) -> list[str]:
+    """What becomes of a file that is not in the study's coordinate system."""
+    from sms_resource.loaders.coordinate_systems import parse_crs, same_crs
+
+    own, study = parse_crs(stated), parse_crs(crs)
+    if own is None or study is None or same_crs(own, study):
+        return []
+    if file.kind == "grid" and own.is_geographic:
+        return [
+            "# It is in degrees: a run resamples it into study.crs, and says so. Heights stay as they are."
+        ]
+    questions.append(f"data.{file.role.value}.reproject: {file.path.name} is in {stated}, the study in {crs}")
+    return [
+        f"# reproject = true  # {OPEN}: the file is not in study.crs, and a run refuses it without this line"
+    ]
+
+
+def _file(file: Any, out: Path, questions: list[str], crs: str | None) -> list[str]:
     role = file.role.value
     relative = Path(os.path.relpath(file.path.absolute(), out.absolute().parent)).as_posix()
     doubt = (
@@ -115,6 +133,7 @@ def _file(file: Any, out: Path, questions: list[str]) -> list[str]:
     for guess in file.form:
         if guess.key == "crs_inside":
             lines.append(f"# The file states {guess.value}.")
+            lines += _elsewhere(file, guess.value, crs, questions)
             continue
         value = int(guess.value) if guess.key in ("band", "uncertainty_band", "header_row") else guess.value
         lines.append(f"{guess.key} = {quoted(value)}  # {_reason(guess, role, questions)}")
@@ -159,6 +178,13 @@ def _decisions(guessed: Any, questions: list[str]) -> list[str]:
         "",
     ]
     lines += _domains(roles.get("lithology"), questions)
+    if "chimneys" in roles:
+        lines += [
+            "[chimneys]",
+            f'source = "none"  # {OPEN}: "polygons" makes them a domain of their own, the first in domains.sulphide',
+            "",
+        ]
+        questions.append("chimneys.source: whether the chimneys are a domain of their own")
     lines += [
         "[composites]",
         "length_m = 1.0",

@@ -10,7 +10,7 @@ import pyproj
 import pytest
 from shapely.geometry import LineString, MultiPolygon, Point, Polygon
 
-from sms_resource.loaders.boundaries import load_exclusions, load_outline, load_overrides
+from sms_resource.loaders.boundaries import load_chimneys, load_exclusions, load_outline, load_overrides
 
 CRS = "EPSG:32702"
 SQUARE = Polygon([(500000, 8000000), (500100, 8000000), (500100, 8000100), (500000, 8000100)])
@@ -120,3 +120,41 @@ def test_a_table_is_no_layer(tmp_path: Path) -> None:
     (tmp_path / "o.csv").write_text("a,b\n1,2\n")
     outline, found = load_outline(tmp_path / "o.csv", crs=CRS)
     assert outline is None and [item.code for item in found] == ["layer-empty"]
+
+
+def test_chimneys_keep_their_height(tmp_path: Path) -> None:
+    far = Polygon([(x + 500, y) for x, y in SQUARE.exterior.coords])
+    path = save(tmp_path / "c.gpkg", [SQUARE, far], name=["a", None], height=[7.5, 12.0])
+    chimneys, found = load_chimneys(path, crs=CRS, columns={"height_m": "height"})
+    assert chimneys is not None and not len(found)
+    assert list(chimneys["height_m"]) == [7.5, 12.0] and list(chimneys["name"]) == ["a", ""]
+
+
+@pytest.mark.parametrize(
+    ("heights", "code", "row"),
+    [
+        ([7.5, None], "chimney-without-height", 3),
+        ([0.0, 2.0], "chimney-without-height", 2),
+        (["7.5", "tall"], "not-a-number", 3),
+    ],
+)
+def test_a_chimney_without_a_height_is_named(tmp_path: Path, heights: list[Any], code: str, row: int) -> None:
+    path = save(tmp_path / "c.gpkg", [SQUARE, SQUARE], height_m=heights)
+    _, found = load_chimneys(path, crs=CRS)
+    assert (code, row, "height_m") in [(item.code, item.row, item.column) for item in found.errors]
+
+
+def test_chimneys_that_are_no_polygons_or_have_no_column(tmp_path: Path) -> None:
+    points = save(tmp_path / "p.gpkg", [Point(500010, 8000010)], height_m=[3.0])
+    chimneys, found = load_chimneys(points, crs=CRS)
+    assert chimneys is None and [item.code for item in found] == ["chimney-not-polygon"]
+    chimneys, found = load_chimneys(save(tmp_path / "n.gpkg", [SQUARE], high=[3.0]), crs=CRS)
+    assert chimneys is None and [item.code for item in found] == ["column-missing"]
+
+
+def test_an_override_to_a_class_that_there_is_not(tmp_path: Path) -> None:
+    path = save(
+        tmp_path / "k.gpkg", [SQUARE] * 2, **{"class": ["Indicated", "sure"], "reason": "r", "by": "A"}
+    )
+    _, found = load_overrides(path, crs=CRS)
+    assert [(item.code, item.row) for item in found] == [("override-class", 3)]

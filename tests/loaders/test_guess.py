@@ -173,3 +173,38 @@ def test_names_that_nearly_fit_are_doubtful(tmp_path: Path) -> None:
     (tmp_path / "surveys.csv").write_text("hole_id,depth_m,azimut,dip\nH1,0,10,-89\n")
     guess = next(g for g in guess_study([tmp_path]).by_role()["surveys"].columns if g.key == "azimuth")
     assert (guess.value, guess.confidence) == ("azimut", "doubtful")
+
+
+def test_chimneys_are_told_from_an_outline(tmp_path: Path) -> None:
+    from shapely.geometry import box
+
+    from tests.loaders.test_boundaries import save
+
+    save(tmp_path / "outline.gpkg", [box(0, 0, 100, 100)])
+    save(tmp_path / "chimneys.gpkg", [box(10, 10, 14, 14)], name=["a"], height=[7.0])
+    study = guess_study([tmp_path])
+    chimneys = study.by_role()["chimneys"]
+    assert chimneys.column_map == {"name": "name", "height_m": "height"} and chimneys.missing == ()
+    assert study.by_role()["outline"].path.name == "outline.gpkg" and study.others == ()
+
+
+def test_a_band_of_uncertainty_is_found_by_its_name(tmp_path: Path) -> None:
+    import rasterio
+
+    cells = np.full((2, 20, 30), -1600.0)
+    cells[1] = 0.2
+    geotiff(tmp_path / "g.tif", cells)
+    assert "uncertainty_band" not in guess_study([tmp_path]).by_role()["bathymetry"].form_map
+    with rasterio.open(tmp_path / "g.tif", "r+") as grid:
+        grid.descriptions = ("elevation", "Uncertainty")
+    assert guess_study([tmp_path]).by_role()["bathymetry"].form_map["uncertainty_band"] == "2"
+
+
+@pytest.mark.parametrize(("depth", "length"), [("12.5", "Depth"), ("1650", None)])
+def test_depth_beside_an_elevation_may_be_a_length(tmp_path: Path, depth: str, length: str | None) -> None:
+    text = f"HoleID,East,North,RL,Depth\nH1,1,2,-1650,{depth}\nH2,1,2,-1650,{depth}\n"
+    (tmp_path / "collars.csv").write_text(text)
+    columns = guess_study([tmp_path]).by_role()["collars"].columns
+    found = {guess.key: (guess.value, guess.confidence) for guess in columns}
+    assert found["elevation"] == ("RL", "likely")
+    assert found.get("length_m") == ((length, "doubtful") if length else None)

@@ -1,0 +1,90 @@
+"""What a first user met, with files of his own and the written guide alone."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import geopandas as gpd
+import pytest
+from shapely.geometry import Point
+
+from sms_resource import load_study, run_study
+from sms_resource.study import StudyError
+from sms_resource.workflow import check_study, new_study
+from tests.end_to_end.small_study import CENTRE, CRS, SmallStudy
+
+
+def chimneys(small: SmallStudy, height: float | None) -> None:
+    """A chimney of 6 m width in the middle of the mound, mapped by its own column."""
+    place = small.folder / "spires.gpkg"
+    place.parent.mkdir(parents=True, exist_ok=True)
+    shapes = gpd.GeoDataFrame({"tall": [height]}, geometry=[Point(CENTRE).buffer(3.0)], crs=CRS)
+    shapes.to_file(place)
+    small.toml["data"]["chimneys"] = {"file": place.name, "columns": {"height_m": "tall"}}
+    small.toml["chimneys"] = {"source": "polygons"}
+    domains = small.toml["domains"]
+    domains["sulphide"] = ["chimney", *domains["sulphide"]]
+    domains["codes"]["CH"] = "chimney"
+    nearest = min(
+        small.rows["collars"],
+        key=lambda row: abs(row["easting"] - CENTRE[0]) + abs(row["northing"] - CENTRE[1]),
+    )
+    for row in small.rows["lithology"]:
+        if row["hole_id"] == nearest["hole_id"] and row["from_m"] == 0:
+            row["code"] = "CH"
+    small.toml["density"] = {
+        "method": "assigned",
+        "assigned_dry_tpm3": dict.fromkeys(domains["sulphide"], 2.8),
+    }
+
+
+def test_polygons_of_chimneys_make_a_domain(tmp_path: Path) -> None:
+    small = SmallStudy(tmp_path)
+    chimneys(small, 1.5)
+    result = run_study(load_study(small.write()), out=None)
+    assert not result.findings.has_errors, result.findings.errors
+    frame = result.block_model.frame
+    volume = float((frame["volume_m3"] * frame["share_chimney"]).sum())
+    # a foot of 6 m across, 1.5 m high: pi 3^2 1.5 = 42.4 m3, on cells of the surface that cut a circle roughly
+    assert volume == pytest.approx(42.4, rel=0.2)
+
+
+def test_a_chimney_without_a_height_is_found_by_check(tmp_path: Path) -> None:
+    small = SmallStudy(tmp_path)
+    chimneys(small, None)
+    (said,) = [
+        item for item in check_study(load_study(small.write())) if item.code == "chimney-without-height"
+    ]
+    assert (said.file, said.row, said.column) == ("spires.gpkg", 2, "tall")
+
+
+def test_a_question_mark_of_a_new_study_is_named(tmp_path: Path) -> None:
+    small = SmallStudy(tmp_path)
+    small.toml["domains"]["codes"] = dict.fromkeys(small.toml["domains"]["codes"], "?")
+    with pytest.raises(StudyError) as caught:
+        load_study(small.write())
+    (said,) = caught.value.findings.errors
+    assert said.column == "domains.codes" and "no domain is named for" in said.message and said.row
+
+
+def test_a_folder_is_not_called_missing(tmp_path: Path) -> None:
+    small = SmallStudy(tmp_path)
+    path = small.write()
+    (tmp_path / "assays.csv").unlink()
+    (tmp_path / "assays.csv").mkdir()
+    with pytest.raises(StudyError) as caught:
+        load_study(path)
+    assert "a folder stands where the file of assays should be" in caught.value.findings.errors[0].message
+
+
+def test_new_says_what_becomes_of_another_coordinate_system(tmp_path: Path) -> None:
+    small = SmallStudy(tmp_path)
+    small.write()
+    outline = gpd.GeoDataFrame({"name": ["a"]}, geometry=[Point(CENTRE).buffer(20.0)], crs=CRS).to_crs(
+        "EPSG:4326"
+    )
+    outline.to_file(tmp_path / "my_outline.geojson")
+    grids = [path for path in tmp_path.iterdir() if path.suffix == ".tif"]
+    made = new_study([*grids, tmp_path / "my_outline.geojson"], tmp_path / "new.toml")
+    assert "# reproject = true  # DECIDE" in (tmp_path / "new.toml").read_text(encoding="utf-8")
+    assert any("data.outline.reproject" in question for question in made.open_questions)
