@@ -162,6 +162,8 @@ def column_label(column: str) -> str:
 
 def _tonnes_label(name: str) -> str:
     """``dry_tonnes_above_cutoff`` becomes ``dry tonnes above cutoff (t)``; empty where there are no tonnes."""
+    if name.endswith("_pct"):
+        return ""
     return f"{name.replace('_', ' ')} (t)" if "tonnes" in name else ""
 
 
