@@ -199,9 +199,10 @@ def _statements(terms: SellingTerms, base: str, formula: str, unsold: list[str])
             if metal.equivalent_recovery_pct is not None
             else str(metal.recovery)
         )
-        said.append(
-            f"{metal.symbol}: price {metal.price}; recovery {recovery}; payability {_payable(metal):g} % of recovered metal."
-        )
+        payability = f"{_payable(metal):g} % of recovered metal"
+        if metal.equivalent_payable_pct is not None:
+            payability += ", stated for the equivalent"
+        said.append(f"{metal.symbol}: price {metal.price}; recovery {recovery}; payability {payability}.")
     said.append("The grade of each metal is printed beside the equivalent.")
     for metal in terms.metals:
         if metal.payable_pct == 0:

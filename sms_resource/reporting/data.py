@@ -95,7 +95,9 @@ class BodyEvidence:
     ``method`` : how the base was interpolated, in words. ``waterfall`` : step, dry_tonnes (what the step takes,
     negative, or what stands at "start" / "end"), kind ("total" | "taken"); optional <metals> (here contained metal
     in tonnes); kinds "cut-off" and "skin" (loss, dilution) may follow the screens.
-    ``sigma_seafloor_m`` : one sigma of the seafloor. ``splits`` : "domain", "bench", "screen" -> table of tonnes with
+    ``sigma_seafloor_m`` : one sigma of the seafloor; ``sigma_seafloor_from`` : "file" or "study". ``slope``
+    (degrees), ``roughness`` (m) : surfaces over ``footprint_m``. ``slope_classes`` : slope (words), area_m2,
+    dry_tonnes, wet_tonnes, share_pct. ``splits`` : "domain", "bench", "screen" -> table of tonnes with
     that column beside proposed_class. ``skins`` : step, dry_tonnes, wet_tonnes, <metals> before and after loss and
     dilution; ``skins_rule`` : depths and host, in words.
     """
@@ -115,6 +117,11 @@ class BodyEvidence:
     method: str = ""
     waterfall: Frame | None = None
     sigma_seafloor_m: float | None = None
+    sigma_seafloor_from: str = "study"
+    slope: Surface | None = None
+    roughness: Surface | None = None
+    footprint_m: float = 0.0
+    slope_classes: Frame | None = None
     splits: Mapping[str, Frame] | None = None
     skins: Frame | None = None
     skins_rule: str = ""
@@ -223,9 +230,9 @@ class Classes:
     """Proposed classes.
 
     ``criteria`` : label -> value. ``reasons`` : proposed_class, reason, blocks, dry_tonnes.
-    ``before_after`` : proposed_class, before_dry_tonnes, after_dry_tonnes (smoothing). ``overrides`` : polygon,
-    from_class, to_class, reason, who, dry_tonnes. ``flags`` : sentences. ``exploration_target`` : dry_tonnes_low,
-    dry_tonnes_high, grades {metal: (low, high)}, basis.
+    ``before_after`` : proposed_class, by_criteria_dry_tonnes, after_rules_dry_tonnes, smoothed_dry_tonnes,
+    final_dry_tonnes. ``overrides`` : name, proposed_class, by, reason, blocks, dry_tonnes. ``flags`` : sentences.
+    ``exploration_target`` : dry_tonnes_low, dry_tonnes_high, grades {metal: (low, high)}, basis.
     """
 
     criteria: Mapping[str, Any] | None = None
@@ -242,8 +249,12 @@ class ValueEvidence:
 
     ``grade_tonnage`` : cutoff_variable, cutoff, proposed_class (and "all"), dry_tonnes, wet_tonnes, <metals>;
     optional domain ("all" rows are used).
-    ``mineable_shape`` : the same columns for connected shapes with their must-take material.
-    ``equivalent`` : formula, statement, table (metal, price, price_unit, price_date, price_source, recovery_pct,
+    ``beside_support`` : cutoff, block_dry_tonnes, block_grade, support_dry_tonnes, support_grade, tonnes_difference_pct
+    (all classes; the blocks beside a model of change of support). ``by_value`` : cutoff, dry_tonnes, value_by_grade,
+    value_by_value, gain (the same tonnes chosen by grade and by value).
+    ``mineable_shape`` : method ("cut-off alone" and each shape), dry_tonnes, wet_tonnes, <metals>, below_dry_tonnes (taken
+    though below the cut-off), left_dry_tonnes (above it and left).
+    ``equivalent`` : name, formula, statements, table (metal, price, price_unit, price_date, price_source, recovery_pct,
     recovery_basis, payable_pct, factor). ``cutoff_costs`` : item, value, unit, inside (which costs are inside).
     ``scenarios`` : scenario, dry_tonnes, <metals>, free columns (one row a scenario).
     ``tornado`` : decision, low_label, high_label, measure ("dry_tonnes" | a metal column | "<metal> content"),
@@ -252,6 +263,8 @@ class ValueEvidence:
     """
 
     grade_tonnage: Frame | None = None
+    beside_support: Frame | None = None
+    by_value: Frame | None = None
     mineable_shape: Frame | None = None
     equivalent: Mapping[str, Any] | None = None
     cutoff_costs: Frame | None = None

@@ -10,118 +10,13 @@ from numpy.typing import NDArray
 
 from sms_resource.reporting import style
 from sms_resource.reporting.data import ReportData, has
-from sms_resource.reporting.elements import column_label
+from sms_resource.reporting.figures_grade_tonnage import grade_tonnage
 from sms_resource.reporting.figures_scenarios import heat_map, tornado
 from sms_resource.reporting.rounding import mass_unit, significant_text
 from sms_resource.reporting.style import Drawing
-from sms_resource.reporting.tonnage import whole_domain
-from sms_resource.units import column_element, element_label
+from sms_resource.units import element_label
 
 __all__ = ["changes", "geometry", "grade_tonnage", "heat_map", "tornado", "waterfall"]
-
-
-def variable_label(variable: str) -> str:
-    """Axis label of a cut-off variable: ``Cu (%)`` or words with the unit."""
-    return element_label(variable) if column_element(variable) else column_label(variable)
-
-
-def grade_tonnage(data: ReportData) -> Drawing | None:
-    """Dry tonnes and grades against the cut-off, one panel a class."""
-    table = data.value.grade_tonnage
-    if table is None or not has(table, "cutoff", "proposed_class", "dry_tonnes"):
-        return None
-    rows = whole_domain(table)
-    wanted = (data.subject.cutoff or {}).get("variable")
-    variable = str(
-        wanted
-        if wanted is not None
-        else rows["cutoff_variable"].iloc[0]
-        if "cutoff_variable" in rows
-        else "cutoff"
-    )
-    if "cutoff_variable" in rows and (rows["cutoff_variable"] == variable).any():
-        rows = rows[rows["cutoff_variable"] == variable]
-    names = sorted(
-        rows.loc[rows["dry_tonnes"] > 0, "proposed_class"].astype(str).unique(), key=style.class_rank
-    )[:6]
-    metals = [m for m in data.subject.metals if m in rows]
-    if not names or not metals:
-        return None
-    across = 2 if len(names) > 1 else 1
-    down = -(-len(names) // across)
-    figure, axes = style.new_figure(5.0 * across, 3.3 * down + 0.3, down, across)
-    for panel, (axis, name) in enumerate(zip(axes.ravel(), names)):
-        part = rows[rows["proposed_class"].astype(str) == name].sort_values("cutoff")
-        unit, scale = mass_unit(float(part["dry_tonnes"].max()))
-        axis.fill_between(
-            part["cutoff"],
-            part["dry_tonnes"] / scale,
-            color=style.class_colour(name) if name.lower() != "all" else "#d5dae0",
-            alpha=0.75,
-            lw=0,
-            step=None,
-        )
-        axis.plot(
-            part["cutoff"], part["dry_tonnes"] / scale, color=style.INK, lw=1.2, label="dry tonnes (left)"
-        )
-        axis.set_ylim(0, float(part["dry_tonnes"].max()) / scale * 1.08 or 1.0)
-        axis.set_xlim(float(part["cutoff"].min()), float(part["cutoff"].max()))
-        axis.set_xlabel(f"Cut-off, {variable_label(variable)}")
-        axis.set_ylabel(f"Dry tonnes above ({unit} dry)")
-        axis.set_title("All classes" if name.lower() == "all" else f"{style.class_name(name)} (proposed)")
-        right = axis.twinx()
-        right.spines["right"].set_visible(True)
-        for number, metal in enumerate(metals):
-            start = part[metal].dropna()
-            relative = part[metal] / start.iloc[0] if len(start) and start.iloc[0] else part[metal] * np.nan
-            right.plot(
-                part["cutoff"],
-                relative,
-                color=style.LINES[number % 7],
-                ls=("-", "--", "-.", ":")[number % 4],
-                lw=1.4,
-                label=f"{element_label(metal).rpartition(' (')[0]} grade" if panel == 0 else None,
-            )
-            if len(start):
-                right.annotate(
-                    f"{start.iloc[0]:.3g} {element_label(metal).rpartition(' (')[2].rstrip(')')}"
-                    f" {element_label(metal).rpartition(' (')[0]}",
-                    (0.98, 0.06 + 0.075 * number),
-                    xycoords="axes fraction",
-                    ha="right",
-                    fontsize=6.8,
-                    bbox={"facecolor": "white", "alpha": 0.75, "edgecolor": "none", "pad": 0.8},
-                    color=style.LINES[number % 7],
-                )
-        right.set_ylabel("Grade above / grade at the lowest cut-off (ratio)")
-        right.set_ylim(bottom=0)
-        cutoff = (data.subject.cutoff or {}).get("value")
-        if cutoff is not None and variable == wanted:
-            axis.axvline(
-                float(cutoff),
-                color="#d55e00",
-                lw=1,
-                ls=":",
-                label="cut-off of the study" if panel == 0 else None,
-            )
-        if panel == 0:
-            left_handles, left_names = axis.get_legend_handles_labels()
-            right_handles, right_names = right.get_legend_handles_labels()
-            figure.legend(
-                left_handles + right_handles, left_names + right_names, loc="outside lower center", ncols=6
-            )
-    for axis in axes.ravel()[len(names) :]:
-        axis.set_axis_off()
-    return Drawing(
-        "grade_tonnage",
-        "tonnes",
-        f"Tonnes and grade against cut-off ({data.tally_label})",
-        "Block support, no dilution. Grades are drawn as a ratio to their value at the lowest cut-off, so"
-        " that four metals share an axis; the numbers in the panel are those values.",
-        "Grade-tonnage curves, one panel for each proposed class.",
-        figure,
-        rows,
-    )
 
 
 def _waterfall(

@@ -15,6 +15,7 @@ from sms_resource.reporting.elements import (
     with_table,
 )
 from sms_resource.reporting.rounding import mass_text
+from sms_resource.reporting.shapes_table import shapes_table
 from sms_resource.reporting.splits import skins_table, split_tables
 from sms_resource.reporting.summaries import checks_shown
 from sms_resource.reporting.tonnage import rows_at_cutoff, screens_table, tonnage_table
@@ -101,15 +102,14 @@ def tonnes(data: ReportData) -> list[Block]:
             )
         )
     blocks.append(Slot(("grade_tonnage",)))
-    shape = rows_at_cutoff(data, data.value.mineable_shape) if data.value.mineable_shape is not None else None
-    if shape is not None and len(shape):
-        blocks.append(
-            tonnage_table(
-                data,
-                shape,
-                f"Connected shapes with their must-take material, at {data.cutoff_text} ({label})",
-            )
-        )
+    with_table(
+        blocks, data.value.beside_support, f"Blocks beside the model of change of support ({label})", most=30,
+        note="Kriged blocks are smoother than what a selection would meet; the discrete Gaussian model says by how much. "
+        "It starts from the same dry tonnes at the lowest cut-off.",
+    )  # fmt: skip
+    shape = shapes_table(data)
+    if shape is not None:
+        blocks.append(shape)
     blocks += split_tables(data)
     with_table(blocks, screens_table(data), f"From the body to what remains ({label})")
     blocks.append(Slot(("waterfall",)))
@@ -124,13 +124,15 @@ def scenarios(data: ReportData) -> list[Block]:
     if v.equivalent:
         blocks.append(Heading("Metal equivalent"))
         blocks.append(
-            Paragraph(
-                f"{v.equivalent.get('formula', '')}. {v.equivalent.get('statement', '')}".strip(". ") + "."
-            )
+            Bullets(tuple(v.equivalent.get("statements") or (f"Formula: {v.equivalent.get('formula')}.",)))
         )
         table = v.equivalent.get("table")
         with_table(blocks, table, "Prices, recoveries and payabilities")
     with_table(blocks, v.cutoff_costs, "Costs inside the cut-off")
+    with_table(
+        blocks, v.by_value, "The same dry tonnes chosen by grade and by value", most=30,
+        note="Means of net value per dry tonne of what is chosen, before costs of lifting; no total is shown.",
+    )  # fmt: skip
     if v.scenarios is not None and len(v.scenarios):
         blocks += [
             Heading("Scenarios"),

@@ -49,7 +49,9 @@ class Classes(Section):
         (), "Codes of downgrade rules that the study switches off, each with a reason."
     )
     floor: Literal["unclassified", "inferred"] = key(
-        "inferred", "Lowest class that a downgrade rule may lead to."
+        "inferred",
+        "Lowest class that a downgrade rule may lead to. What the criteria of Inferred do not reach stays unclassified.",
+        alternatives=("unclassified",),
     )
     smooth: bool = key(True, "Whether classes are smoothed to connected volumes.", alternatives=(False,))
     least_volume_m3: float = key(500.0, "Least volume of a connected class.", ge=0)
@@ -60,8 +62,22 @@ class Cutoff(Section):
 
     variable: str = key("cu", 'Element, or "equivalent" or "value", that the cut-off is on.')
     at: float = key(1.0, "Cut-off of the table of tonnes, in the variable's unit.", ge=0)
-    steps: tuple[float, ...] = key(
-        (0.0, 0.5, 1.0, 1.5, 2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 8.0, 10.0), "Cut-offs of the grade-tonnage curve."
+    steps: tuple[float, ...] | Literal["all"] = key(
+        (0.0, 0.5, 1.0, 1.5, 2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 8.0, 10.0),
+        'Cut-offs of the grade-tonnage curve; "all" takes the value of every block as one.',
+    )
+    curves: dict[str, tuple[float, ...] | Literal["all"]] = key(
+        {},
+        'Further grade-tonnage curves, each with its cut-offs or "all": by element, "equivalent" or "value". They '
+        "stand in grade_tonnage.csv after that of the study's variable.",
+        decision=False,
+    )
+    most_steps: int = key(
+        2000,
+        'Most cut-offs of a curve that asks for "all"; more distinct values are thinned evenly, and a finding says so.',
+        ge=2,
+        le=100_000,
+        decision=False,
     )
     basis: str = key("", "Why this cut-off: the costs, prices and date behind it.", decision=False)
 
@@ -95,6 +111,12 @@ class Metal(Section):
     )
     equivalent_recovery_pct: float | None = key(
         None, "Single recovery for a metal equivalent, where recovery varies with grade.", ge=0, le=100
+    )
+    equivalent_payable_pct: float | None = key(
+        None,
+        "Single payability for a metal equivalent, where a deduction makes it vary with grade.",
+        ge=0,
+        le=100,
     )
 
     @model_validator(mode="after")

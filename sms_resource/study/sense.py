@@ -7,6 +7,7 @@ from itertools import pairwise
 from typing import Any
 
 from sms_resource import units
+from sms_resource.study.sense_evidence import evidence_faults
 
 # Dotted key, what is wrong, what to do.
 Fault = tuple[str, str, str]
@@ -22,6 +23,7 @@ def value_faults(config: Any) -> Iterator[Fault]:
     yield from _domains(config)
     yield from _numbers(config)
     yield from _curves(config)
+    yield from evidence_faults(config)
 
 
 def _elements(config: Any) -> Iterator[Fault]:
@@ -137,8 +139,21 @@ def _numbers(config: Any) -> Iterator[Fault]:
                     "a range is not above zero",
                     "Give metres above zero.",
                 )
-    if any(step < 0 for step in config.cutoff.steps):
-        yield "cutoff.steps", "a cut-off is below zero", "Give grades or values of zero and more."
+    yield from _cutoffs(config)
+
+
+def _cutoffs(config: Any) -> Iterator[Fault]:
+    steps = {"cutoff.steps": config.cutoff.steps}
+    steps |= {f"cutoff.curves.{name}": value for name, value in config.cutoff.curves.items()}
+    for dotted, row in steps.items():
+        if not isinstance(row, str) and any(step < 0 for step in row):
+            yield dotted, "a cut-off is below zero", "Give grades or values of zero and more."
+    for name in config.cutoff.curves:
+        if name not in (*config.metals.estimate, "equivalent", "value"):
+            yield (
+                f"cutoff.curves.{name}", f"a curve is asked for on '{name}', which is not estimated",
+                f"Name one of {', '.join(config.metals.estimate)}, equivalent or value.",
+            )  # fmt: skip
 
 
 def _curves(config: Any) -> Iterator[Fault]:

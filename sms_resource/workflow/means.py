@@ -129,3 +129,19 @@ def support_rows(curves: pd.DataFrame, done: dict[str, Any], config: Any) -> pd.
              "grade": content / share if share > 1e-9 else np.nan}
         )  # fmt: skip
     return pd.DataFrame(rows)
+
+
+def beside_support(done: dict[str, Any], config: Any) -> pd.DataFrame:
+    """Tonnes and grade of the blocks beside those of the discrete Gaussian model, at the cut-offs of the study's metal.
+
+    Empty where the cut-off is not on a metal, or no curve could be made.
+    """
+    from sms_resource.economics import beside_change_of_support
+
+    table, variable = done["classify"].grade_tonnage, done["classify"].facts["cutoff_variable"]
+    rows = support_rows(done["validate"].support, done, config)
+    curve = rows[(rows["support"] == "discrete gaussian") & (rows["metal"] == variable)]
+    if not len(curve):
+        return pd.DataFrame()
+    own = table[table["cutoff_variable"] == variable]
+    return beside_change_of_support(own, curve, metal=variable)

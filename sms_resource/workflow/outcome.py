@@ -16,13 +16,12 @@ from sms_resource.workflow.state import (
     ClassState,
     ProposalState,
 )
+from sms_resource.workflow.tonnage_tables import tonnage_table
 from sms_resource.workflow.worth import valued
 
 
 def classify(context: Context) -> ClassState:
     """Value the blocks, and sum what screens and cut-offs leave of them."""
-    from sms_resource.economics import grade_tonnage
-
     config = context.config
     metals = metal_columns(config)
     blocks: BlockState = context.done["blocks"]
@@ -37,10 +36,7 @@ def classify(context: Context) -> ClassState:
             )  # fmt: skip
         raise StageStop
     left = kept(frame)
-    steps = sorted({0.0, at, *config.cutoff.steps})
-    tonnage = grade_tonnage(
-        left, metals=metals, cutoff_variable=variable, cutoffs=steps, groups=("proposed_class",)
-    )
+    tonnage, steps = tonnage_table(context, left, metals)
     split = split_tables(
         frame,
         proposal.marks,
@@ -68,9 +64,22 @@ def classify(context: Context) -> ClassState:
             **split,
             **({} if skins is None else {"dilution_and_loss": skins}),
             "mineable_shape": shape,
+            "value_against_grade": by_value(left, variable, steps),
             **value_tables,
         },
     )
+
+
+def by_value(left: pd.DataFrame, variable: str, steps: list[float]) -> pd.DataFrame:
+    """What choosing the same dry tonnes by value would gain over a grade cut-off; empty without value or grade."""
+    from sms_resource.economics import value_against_grade
+
+    if "value_per_dry_tonne" not in left or variable == "value_per_dry_tonne":
+        return pd.DataFrame()
+    if not left["value_per_dry_tonne"].notna().any():
+        return pd.DataFrame()
+    table = value_against_grade(left, value="value_per_dry_tonne", grade=variable, cutoffs=steps)
+    return table[table["dry_tonnes"] > 0].reset_index(drop=True)
 
 
 def shapes(

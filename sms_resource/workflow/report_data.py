@@ -26,6 +26,7 @@ from sms_resource.units import element_column
 from sms_resource.workflow.estimation import search_text
 from sms_resource.workflow.evidence import all_columns, metal_columns
 from sms_resource.workflow.means import (
+    beside_support,
     check_rows,
     mean_rows,
     named_axis,
@@ -87,8 +88,8 @@ def report_data(
             for (domain, metal), item in done["variograms"].inferences.items()
         ),
         estimation=_estimation(study, done),
-        classes=_classes(study, done),
-        value=_value(done, extra),
+        classes=_classes(study, done, findings),
+        value=_value(study, done, extra),
         record=RunRecord(
             ledger=ledger,
             findings=findings,
@@ -199,11 +200,17 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
             checks=laboratory.checks,
             pairs=laboratory.duplicate_pairs,
             check_pairs=laboratory.check_pairs,
+            materials=laboratory.materials,
+            batches=laboratory.batches,
+            rates=laboratory.rates,
         ),
     )
 
 
 def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
+    from sms_resource.blocks.relief import roughness, slope
+    from sms_resource.workflow.geometry import seafloor_sigma
+
     config = study.config
     data = done["load"]
     state: BodyState = done["body"]
@@ -239,7 +246,12 @@ def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
             "linear": "Thickness below the seafloor, by linear interpolation between the contacts in holes.",
         }[config.body.method],
         waterfall=waterfall_rows(done["classify"].waterfall, metal_columns(config)),
-        sigma_seafloor_m=config.seafloor.sigma_m,
+        sigma_seafloor_m=seafloor_sigma(state),
+        sigma_seafloor_from=state.facts["sigma_from"],
+        slope=slope(state.seafloor, config.seafloor.footprint_m),
+        roughness=roughness(state.seafloor, config.seafloor.footprint_m),
+        footprint_m=config.seafloor.footprint_m,
+        slope_classes=done["classify"].tables["slope_classes"],
         splits={
             name: done["classify"].tables[f"grade_tonnage_by_{name}"]
             for name in ("domain", "bench", "screen")
@@ -303,17 +315,19 @@ def composite_rule(config: Any) -> str:
     )
 
 
-def _classes(study: Study, done: dict[str, Any]) -> Classes:
+def _classes(study: Study, done: dict[str, Any], findings: Findings) -> Classes:
     state: ClassState = done["classify"]
     choice = study.config.classes
     criteria = {
         name.replace("_", " "): ", ".join(map(str, value)) if isinstance(value, tuple) else value
         for name, value in choice.model_dump().items()
     }
-    smoothing = state.smoothing.rename(
-        columns={"after_rules_dry_tonnes": "before_dry_tonnes", "final_dry_tonnes": "after_dry_tonnes"}
+    steps = {"criteria": "by_criteria", "rules": "after_rules", "smoothed": "smoothed", "final": "final"}
+    smoothing = state.smoothing[["proposed_class", *[f"dry_tonnes_{step}" for step in steps]]].rename(
+        columns={f"dry_tonnes_{step}": f"{name}_dry_tonnes" for step, name in steps.items()}
     )
-    flags = tuple(state.facts.get("flags", ()))
+    told = ("class-inferred-richer", "class-domain-unknown")
+    flags = tuple(item.message for item in findings if item.code in told)
     return Classes(
         criteria=criteria,
         reasons=state.reasons,
@@ -323,13 +337,15 @@ def _classes(study: Study, done: dict[str, Any]) -> Classes:
     )
 
 
-def _value(done: dict[str, Any], extra: dict[str, Any]) -> ValueEvidence:
+def _value(study: Study, done: dict[str, Any], extra: dict[str, Any]) -> ValueEvidence:
     state: ClassState = done["classify"]
     costs = state.tables.get("cutoffs")
     return ValueEvidence(
         grade_tonnage=state.grade_tonnage,
+        beside_support=beside_support(done, study.config),
+        by_value=state.tables.get("value_against_grade"),
         mineable_shape=state.tables.get("mineable_shape"),
-        equivalent=state.facts.get("equivalent_page"),
+        equivalent=state.facts.get("equivalent"),
         cutoff_costs=costs,
         scenarios=extra.get("scenarios"),
         tornado=extra.get("tornado"),

@@ -34,7 +34,8 @@ def summarise(study: Study, done: dict[str, Any]) -> Summary:
     table = state.grade_tonnage
     rows = []
     order = {"measured": 0, "indicated": 1, "inferred": 2, "unclassified": 3, "all": 4}
-    chosen = table[table["cutoff"] == at]
+    own = table["cutoff_variable"] == state.facts["cutoff_variable"]
+    chosen = table[own & (table["cutoff"] == at)]
     for row in sorted(chosen.to_dict("records"), key=lambda item: order.get(str(item["proposed_class"]), 9)):
         if not row["dry_tonnes"] > 0:
             continue

@@ -270,11 +270,13 @@ def support_curves(
     from sms_resource.geostatistics import block_variance
     from sms_resource.geostatistics.support import change_of_support
     from sms_resource.workflow.estimation import frame_size
+    from sms_resource.workflow.tonnage_tables import support_levels
 
     variable = config.cutoff.variable
     if variable not in config.metals.estimate:
         variable = config.metals.estimate[0]
     metal = element_column(variable)
+    cuts = support_levels(config.cutoff, variable, state.samples[metal].dropna().to_numpy(dtype=float))
     tables = []
     for domain in config.domains.sulphide:
         item = state.inferences.get((domain, metal))
@@ -286,7 +288,7 @@ def support_curves(
         curves = change_of_support(
             part[metal].to_numpy(dtype=float),
             factor,
-            np.asarray(config.cutoff.steps, dtype=float),
+            cuts,
             weights=part["declustering_weight"].to_numpy(dtype=float),
         ).curves.rename(columns={"metal": "content"})
         tonnes = made.frame.loc[made.frame["domain"] == domain, "dry_tonnes"].sum()
@@ -310,11 +312,12 @@ def compare_estimators(made: EstimateState, metals: list[str], config: Any) -> p
 def geometry_table(body: BodyState, made: EstimateState, config: Any) -> pd.DataFrame:
     """Volume and dry tonnes of the body when its surfaces, or its densities, move by what they are known to."""
     from sms_resource.blocks.uncertainty import geometry_uncertainty
+    from sms_resource.workflow.geometry import seafloor_sigma
 
     volume = float(made.frame["volume_m3"].sum())
     base = float(made.frame["dry_tonnes"].sum())
     table = geometry_uncertainty(
-        body.body, dry_density_tpm3=base / volume, seafloor_sigma_m=config.seafloor.sigma_m
+        body.body, dry_density_tpm3=base / volume, seafloor_sigma_m=seafloor_sigma(body)
     )
     rows = []
     for case in ("low", "high"):

@@ -46,6 +46,7 @@ def selling_terms(value: Any) -> Any:
                 refining_charge=choice.refining_charge,
                 sold_statement=choice.sold_statement,
                 equivalent_recovery_pct=choice.equivalent_recovery_pct,
+                equivalent_payable_pct=choice.equivalent_payable_pct,
             )
         )
     product = None
@@ -97,10 +98,7 @@ def valued(
     facts: dict[str, Any] = {"terms": worth.statement, "currency": terms.currency}
     if equivalent is not None:
         frame["equivalent"] = equivalent.apply(frame)
-        facts["equivalent"] = {
-            "formula": equivalent.formula, "statements": list(equivalent.statements), "name": equivalent.name,
-            "factors": {name: dict(by) for name, by in equivalent.factors.items()},
-        }  # fmt: skip
+        facts["equivalent"] = equivalent_page(terms, equivalent)
     if not float(spent["cost_per_dry_tonne"].max()) > 0.0:
         return (
             frame,
@@ -124,6 +122,47 @@ def valued(
         ]
     )  # fmt: skip
     return frame, {"cutoffs": table}, facts
+
+
+def equivalent_page(terms: Any, equivalent: Any) -> dict[str, Any]:
+    """What stands beside a metal equivalent: formula, statements, and every input of every metal as a table."""
+    from sms_resource.economics.equivalent import EVERYWHERE
+
+    rows = []
+    for metal in terms.metals:
+        share = (
+            metal.equivalent_payable_pct if metal.equivalent_payable_pct is not None else metal.payable_pct
+        )
+        row = {
+            "metal": metal.column,
+            "price": metal.price.amount if metal.price else np.nan,
+            "price_unit": f"{terms.currency}/{metal.price.unit}" if metal.price else "",
+            "price_date": metal.price.date if metal.price else "",
+            "price_source": metal.price.source if metal.price else "",
+            **_recovery_cells(metal),
+            "payable_pct": share,
+        }
+        for domain, factors in equivalent.factors.items():
+            row["factor" if domain == EVERYWHERE else f"factor in {domain}"] = factors[metal.column]
+        rows.append(row)
+    return {
+        "name": equivalent.name,
+        "formula": equivalent.formula,
+        "statements": list(equivalent.statements),
+        "table": pd.DataFrame(rows),
+    }
+
+
+def _recovery_cells(metal: Any) -> dict[str, Any]:
+    """Recovery that the equivalent uses, as one number where it is one, and what it rests on."""
+    recovery = metal.recovery
+    if metal.equivalent_recovery_pct is not None:
+        return {"recovery_pct": metal.equivalent_recovery_pct, "recovery_basis": "stated for the equivalent"}
+    if recovery is None:
+        return {"recovery_pct": np.nan, "recovery_basis": ""}
+    if recovery.percent is not None:
+        return {"recovery_pct": recovery.percent, "recovery_basis": recovery.basis}
+    return {"recovery_pct": np.nan, "recovery_basis": str(recovery)}
 
 
 def add(context: Context, findings: Any, *, fatal: bool) -> None:

@@ -343,6 +343,13 @@ def full_report_data(*, cells: int = 4, name: str = "Example Mound", note: str =
     )
     body = BodyEvidence(
         seafloor=Grid(x, y, top),
+        slope=Grid(x, y, np.degrees(np.arctan(np.hypot(*np.gradient(top, 2.0))))),
+        roughness=Grid(x, y, 0.1 + 0.05 * np.sin(gx / 9.0) ** 2),
+        footprint_m=8.0,
+        slope_classes=pd.DataFrame(
+            {"slope": ["0 to 10°", "over 30°"], "area_m2": [9000.0, 400.0], "dry_tonnes": [4.4e5, 2e4],
+             "wet_tonnes": [4.7e5, 2.2e4], "share_pct": [95.7, 4.3]}
+        ),
         base=Grid(x, y, base),
         thickness=Grid(x, y, np.where(inside, thick, np.nan)),
         thickness_sigma=Grid(x, y, np.where(inside, 1 + 0.1 * thick, np.nan)),
@@ -829,8 +836,15 @@ def _value(blocks):
     )
     return ValueEvidence(
         grade_tonnage=frame,
-        mineable_shape=frame.assign(
-            dry_tonnes=frame["dry_tonnes"] * 0.9, wet_tonnes=frame["wet_tonnes"] * 0.9
+        mineable_shape=pd.DataFrame(
+            {
+                "method": ["cut-off alone", "patches", "full benches"],
+                "dry_tonnes": [4.2e5, 4.4e5, 4.6e5],
+                "wet_tonnes": [4.6e5, 4.8e5, 5.0e5],
+                "cu_pct": [3.0, 2.9, 2.8],
+                "below_dry_tonnes": [0.0, 3e4, 6e4],
+                "left_dry_tonnes": [0.0, 1e4, 2e4],
+            }
         ),
         scenarios=pd.DataFrame(
             {"scenario": ["base", "density low"], "dry_tonnes": [4.2e5, 3.9e5], "cu_pct": [3.0, 3.0]}
@@ -841,7 +855,7 @@ def _value(blocks):
         ),
         equivalent={
             "formula": "CuEq = Cu + 0.378 Au + 0.0030 Ag",
-            "statement": "The study states that each metal can be recovered and sold.",
+            "statements": ["The study states that each metal can be recovered and sold."],
             "table": pd.DataFrame(
                 {
                     "metal": ["cu_pct", "au_gpt"],
