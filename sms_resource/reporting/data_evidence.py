@@ -19,7 +19,9 @@ class LaboratoryEvidence:
     "caution" | "failed" | "missing"), figures (text).
     ``references``, ``blanks``, ``duplicates``, ``checks`` : the statistics, one row a material, stage or element.
     ``pairs``, ``check_pairs`` : stage, element, original, repeat (one row a pair of duplicates, or of a result and that
-    of the check laboratory), for the scatter.
+    of the check laboratory), for the scatter. ``materials`` : element, material, n, expected, mean, bias_pct,
+    bias_low_pct, bias_high_pct, failures. ``batches`` : element, batch, n, mean_z, p_adjusted, failures, verdict.
+    ``rates`` : kind, stage, element, inserts, share_pct.
     """
 
     table: Frame | None = None
@@ -30,6 +32,9 @@ class LaboratoryEvidence:
     checks: Frame | None = None
     pairs: Frame | None = None
     check_pairs: Frame | None = None
+    materials: Frame | None = None
+    batches: Frame | None = None
+    rates: Frame | None = None
 
 
 @dataclass(frozen=True)

@@ -25,7 +25,7 @@ from sms_resource.reporting.style import Drawing, borrowed_settings, render
 
 # What the slow figures cost against the others, as measured; only the balance of the two halves rests on it.
 WEIGHTS = {"strip logs": 8.0, "variograms": 7.0, "cross-sections": 3.0, "contact analysis": 3.0, "swaths": 2.0,
-           "plan of grades": 2.0, "plan of holes": 2.0, "thickness plan": 2.0}  # fmt: skip
+           "top cuts": 3.0, "plan of grades": 2.0, "plan of holes": 2.0, "thickness plan": 2.0}  # fmt: skip
 ALONE_UP_TO = 3.0  # less work than this is done before a second interpreter has started
 RECIPES_KEPT = 4
 

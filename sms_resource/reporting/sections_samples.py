@@ -16,27 +16,10 @@ from sms_resource.reporting.elements import (
     number_text,
     with_table,
 )
-from sms_resource.reporting.summaries import (
-    associations_shown,
-    blanks_by_element,
-    chosen_cells,
-    cuts_shown,
-    missing_checks,
-    named_elements,
-    references_by_material,
-    verdicts_shown,
-)
+from sms_resource.reporting.sections_laboratory import laboratory
+from sms_resource.reporting.summaries import associations_shown, chosen_cells, cuts_shown
 
 QUANTILES = {"sd": "Standard deviation", "p10": "10th percentile", "p90": "90th percentile"}
-PAIRS = {
-    "cv_avg_pct": "CVavg (%)", "hard_mean_pct": "HARD, mean (%)", "hard_p90_pct": "HARD, 90th percentile (%)",
-    "hard_within_10_share": "Share with HARD up to 10 %", "good_pct": "CVavg, good up to (%)",
-    "acceptable_pct": "CVavg, acceptable up to (%)",
-}  # fmt: skip
-AXIS = {
-    "slope_low": "Slope, lower limit", "slope_high": "Slope, upper limit", "intercept_low": "Intercept, lower limit",
-    "intercept_high": "Intercept, upper limit",
-}  # fmt: skip
 LOGNORMAL = {
     "mean": "Mean, each alike", "sichel": "Sichel's mean", "land_low": "Land's limit, lower",
     "land_high": "Land's limit, upper", "log_sd": "Standard deviation of logs", "left_out": "Not positive, left out",
@@ -58,7 +41,7 @@ def evidence(data: ReportData) -> list[Block]:
         *_extremes(data),
         *_contacts_and_twins(data),
         *_surface(data),
-        *_laboratory(data),
+        *laboratory(data),
         *_density_and_metals(data),
         Heading("Strip logs"),
         Slot(("strip_logs_*",)),
@@ -249,35 +232,6 @@ def _surface(data: ReportData) -> list[Block]:
                 "rise_m": "Rise (m)", "half_length_m": "Spread to each side of its middle (m)"},
         note="The rock of a dredge may come from anywhere along its track; no dredge is compared with core or estimated"
         " from.",
-    )  # fmt: skip
-    return blocks
-
-
-def _laboratory(data: ReportData) -> list[Block]:
-    lab = data.evidence.laboratory
-    blocks: list[Block] = [Heading("Laboratory quality")]
-    shown, missing = verdicts_shown(lab.verdicts), missing_checks(lab.verdicts)
-    if lab.verdicts is None or (lab.table is not None and not len(lab.table)):
-        blocks.append(Paragraph("No laboratory inserts were given with this study."))
-    elif missing:
-        blocks.append(Bullets(missing))
-    with_table(blocks, shown, "Verdicts")
-    blocks.append(Slot(("control_charts",)))
-    with_table(blocks, named_elements(references_by_material(lab.references)), "Reference materials", most=30)
-    blocks.append(Slot(("blanks",)))
-    with_table(blocks, named_elements(blanks_by_element(lab.blanks)), "Blanks", most=20)
-    blocks.append(Slot(("duplicates",)))
-    with_table(
-        blocks, named_elements(lab.duplicates), "Duplicates (statistics named in the heads)", most=30, labels=PAIRS
-    )  # fmt: skip
-    with_table(
-        blocks, named_elements(lab.checks), "Check laboratory (reduced major axis)", most=20, labels=AXIS
-    )  # fmt: skip
-    with_table(
-        blocks, data.evidence.assay_summary, "Assays: below detection, over limit, blank", most=30,
-        labels={"column": "Element", "mean_half": "Mean, half the limit", "mean_zero": "Mean, zero",
-                "mean_as_is": "Mean, the limit", "mean_ros": "Mean, order statistics (ROS)"},
-        note="Means of the samples, each alike, under each treatment of results below detection.",
     )  # fmt: skip
     return blocks
 

@@ -118,6 +118,37 @@ def named_elements(frame: pd.DataFrame | None) -> pd.DataFrame | None:
     return frame.assign(element=[str(name).capitalize() for name in frame["element"]])
 
 
+def batches_shown(frame: pd.DataFrame | None) -> tuple[pd.DataFrame | None, str]:
+    """Batches of reference materials that are not good, and a sentence with the counts."""
+    if frame is None or not has(frame, "element", "batch", "verdict"):
+        return None, ""
+    counts = frame["verdict"].astype(str).value_counts().sort_index()
+    words = ", ".join(f"{count} {name}" for name, count in counts.items())
+    text = f"Batches of reference materials, each element by itself: {words}; judged after allowing for all of them."
+    bad = frame[frame["verdict"] != "good"]
+    columns = [
+        c for c in ("element", "batch", "n", "mean_z", "p_adjusted", "failures", "verdict") if c in bad
+    ]
+    return (named_elements(bad[columns]) if len(bad) else None), text
+
+
+def rates_shown(frame: pd.DataFrame | None) -> pd.DataFrame | None:
+    """Inserts by kind and stage, a column an element: count, and share of the samples."""
+    if frame is None or not has(frame, "kind", "stage", "element", "inserts", "share_pct"):
+        return None
+    rows = []
+    for (kind, stage), part in frame.groupby(["kind", "stage"], sort=False):
+        row = {"Inserts": f"{kind}, {stage}" if stage else str(kind)}
+        for item in part.to_dict("records"):
+            share = item["share_pct"]
+            text = f"{int(item['inserts'])}" + (
+                f" ({share:.1f} %)" if share == share and item["inserts"] else ""
+            )
+            row[str(item["element"]).capitalize()] = text
+        rows.append(row)
+    return pd.DataFrame(rows).fillna("0")
+
+
 def verdicts_shown(frame: pd.DataFrame | None) -> pd.DataFrame | None:
     """Verdicts that rest on something; what was not inserted is told by `missing_checks`."""
     if frame is None or not has(frame, "element", "verdict"):

@@ -169,3 +169,33 @@ def test_an_empty_study_shows_no_table_of_samples() -> None:
     assert not [block for block in blocks if isinstance(block, Table)]
     said = [block.text for block in blocks if isinstance(block, Paragraph)]
     assert any("No laboratory inserts" in text for text in said)
+
+
+def test_reference_materials_carry_their_interval_and_bad_batches_are_named(data: ReportData) -> None:
+    lab = data.evidence.laboratory
+    materials = pd.DataFrame(
+        {"element": ["au"], "material": ["RM"], "n": [24], "expected": [0.85], "mean": [0.83], "bias_pct": [-2.4],
+         "bias_low_pct": [-4.7], "bias_high_pct": [-0.04], "cv_pct": [5.6], "warnings": [0], "failures": [3]}
+    )  # fmt: skip
+    batches = pd.DataFrame(
+        {"element": ["au", "au"], "batch": ["B1", "B2"], "n": [6, 6], "mean_z": [-4.9, 0.1], "p_adjusted": [1e-9, 1.0],
+         "failures": [6, 0], "verdict": ["accused", "good"]}
+    )  # fmt: skip
+    rates = pd.DataFrame(
+        {"kind": ["reference", "duplicate"], "stage": ["", "pulp"], "element": "au", "inserts": [48, 0],
+         "share_pct": [4.73, 0.0]}
+    )  # fmt: skip
+    changed = replace(lab, materials=materials, batches=batches, rates=rates)
+    given = with_evidence(data, laboratory=changed)
+    shown = tables(given)
+    table = shown["Reference materials: bias and its interval"]
+    assert column(table, "Bias, lower limit (%)") == ["−4.70"] and column(table, "Failed by the rules") == [
+        "3"
+    ]
+    assert column(shown["Batches that stand out"], "Batch") == ["B1"]
+    assert shown["Inserts: count, and share of the samples"].rows == (
+        ("reference", "48 (4.7 %)"),
+        ("duplicate, pulp", "0"),
+    )
+    said = [block.text for block in evidence(given) if isinstance(block, Paragraph)]
+    assert any("1 accused, 1 good" in text for text in said)
