@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from sms_resource.reporting.data import ReportData
+import pandas as pd
+
+from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.elements import Block, Bullets, Heading, Paragraph, Slot, with_table
 from sms_resource.reporting.summaries import (
     batches_shown,
@@ -32,8 +34,8 @@ def laboratory(data: ReportData) -> list[Block]:
     shown, missing = verdicts_shown(lab.verdicts), missing_checks(lab.verdicts)
     if lab.verdicts is None or (lab.table is not None and not len(lab.table)):
         blocks.append(Paragraph("No laboratory inserts were given with this study."))
-    elif missing:
-        blocks.append(Bullets(missing))
+    elif missing or _blind_to_carry_over(lab.blanks):
+        blocks.append(Bullets((*missing, *_blind_to_carry_over(lab.blanks))))
     with_table(blocks, shown, "Verdicts")
     with_table(
         blocks, rates_shown(lab.rates), "Inserts: count, and share of the samples",
@@ -58,7 +60,7 @@ def laboratory(data: ReportData) -> list[Block]:
         blocks.append(Paragraph(said))
     with_table(
         blocks, bad, "Batches that stand out", most=20,
-        labels={"mean_z": "Mean deviation (SD)", "p_adjusted": "p after allowing for all"},
+        labels={"mean_z": "Mean deviation (SD)", "adjusted_p_value": "p after allowing for all"},
     )  # fmt: skip
     blocks.append(Slot(("blanks",)))
     with_table(blocks, named_elements(blanks_by_element(lab.blanks)), "Blanks", most=20)
@@ -76,3 +78,10 @@ def laboratory(data: ReportData) -> list[Block]:
         note="Means of the samples, each alike, under each treatment of results below detection.",
     )  # fmt: skip
     return blocks
+
+
+def _blind_to_carry_over(blanks: pd.DataFrame | None) -> tuple[str, ...]:
+    """A sentence where no blank names the sample before it."""
+    if blanks is None or not has(blanks, "grade_before") or blanks["grade_before"].notna().any():
+        return ()
+    return ("Carry-over is not judged: no blank names the sample before it.",)

@@ -129,7 +129,8 @@ def batches_shown(frame: pd.DataFrame | None) -> tuple[pd.DataFrame | None, str]
     columns = [
         c for c in ("element", "batch", "n", "mean_z", "p_adjusted", "failures", "verdict") if c in bad
     ]
-    return (named_elements(bad[columns]) if len(bad) else None), text
+    shown = named_elements(bad[columns].rename(columns={"p_adjusted": "adjusted_p_value"}))
+    return (shown if len(bad) else None), text
 
 
 def rates_shown(frame: pd.DataFrame | None) -> pd.DataFrame | None:

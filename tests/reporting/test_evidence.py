@@ -193,9 +193,20 @@ def test_reference_materials_carry_their_interval_and_bad_batches_are_named(data
         "3"
     ]
     assert column(shown["Batches that stand out"], "Batch") == ["B1"]
+    assert column(shown["Batches that stand out"], "p after allowing for all") == ["< 0.0001"]
     assert shown["Inserts: count, and share of the samples"].rows == (
         ("reference", "48 (4.7 %)"),
         ("duplicate, pulp", "0"),
     )
     said = [block.text for block in evidence(given) if isinstance(block, Paragraph)]
     assert any("1 accused, 1 good" in text for text in said)
+
+
+@pytest.mark.parametrize(("before", "told"), [([np.nan, np.nan], 1), ([3.0, np.nan], 0)])
+def test_carry_over_that_cannot_be_judged_is_told_once(
+    data: ReportData, before: list[float], told: int
+) -> None:
+    blanks = pd.DataFrame({"element": ["cu", "zn"], "value": 0.01, "failed": False, "grade_before": before})
+    given = with_evidence(data, laboratory=replace(data.evidence.laboratory, blanks=blanks))
+    said = [item for block in evidence(given) if isinstance(block, Bullets) for item in block.items]
+    assert sum("Carry-over" in item for item in said) == told
