@@ -158,7 +158,7 @@ def _domains(terms: SellingTerms) -> list[str]:
 def _grade_that_pays(
     terms: SellingTerms, column: str, cost: float, wet_per_dry: float, domain: str
 ) -> float | None:
-    """Least grade of one metal whose net value meets the cost; by halving, since recoveries may bend."""
+    """Least grade of one metal whose net value meets the cost; narrowed down, since recoveries may bend."""
     highest = _HIGHEST[column.rpartition("_")[2]]
 
     def net(grades: np.ndarray) -> np.ndarray:
@@ -175,10 +175,8 @@ def _grade_that_pays(
     if first == 0:
         return 0.0
     low, high = scan[first - 1], scan[first]
-    for _ in range(60):
-        middle = 0.5 * (low + high)
-        if net(np.array([middle]))[0] >= cost:
-            high = middle
-        else:
-            low = middle
+    for _ in range(10):  # 64 parts each time: as narrow as 60 halvings, in a sixth of the calls
+        steps = np.linspace(low, high, 65)[1:]
+        found = int(np.argmax(net(steps) >= cost))  # the last one pays
+        low, high = (steps[found - 1] if found else low), steps[found]
     return float(high)
