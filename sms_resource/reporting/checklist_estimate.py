@@ -155,7 +155,9 @@ def mining(data: ReportData) -> Answer:
         )
         text += f" Screens in the study: {said or 'none'}."
         skins = steps[steps["kind"].astype(str) == "skin"]
-        said = "; ".join(f"{r['step']} {mass_text(abs(r['dry_tonnes']), 'dry')}" for r in skins.to_dict("records"))
+        said = "; ".join(
+            f"{r['step']} {mass_text(abs(r['dry_tonnes']), 'dry')}" for r in skins.to_dict("records")
+        )
         text += f" Loss and dilution in the study: {said or 'none'}."
     return PERSON, text
 
@@ -217,8 +219,20 @@ def classification(data: ReportData) -> Answer:
         PERSON,
         (
             f"Needed: whether the result reflects the Competent Person's view.{judged} Proposed: {names}."
-            f" Criteria: {said}."
+            f" Criteria: {said}.{_target(data)}"
         ),
+    )
+
+
+def _target(data: ReportData) -> str:
+    """The exploration target as ranges, with its caution."""
+    target = data.classes.exploration_target
+    if not target:
+        return ""
+    low, high = (mass_text(float(target[f"dry_tonnes_{end}"]), "dry") for end in ("low", "high"))
+    return (
+        f" Exploration target, not part of the estimate: {low} to {high}; conceptual, insufficient exploration to estimate"
+        " a resource, and uncertain whether further exploration will result in one."
     )
 
 

@@ -82,10 +82,12 @@ def target(data: ReportData) -> Paragraph:
         f"{element_label(m)} {number_text(v[0], 2)} to {number_text(v[1], 2)}"
         for m, v in (target.get("grades") or {}).items()
     )
+    basis = str(target.get("basis") or "").rstrip(".")
     return Paragraph(
-        "Exploration target (conceptual; insufficient exploration to estimate a resource; uncertain whether"
-        f" further exploration will result in one): {mass_text(low, 'dry')} to {mass_text(high, 'dry')};"
-        f" {grades}.",
+        f"Exploration target, not part of the estimate: {mass_text(low, 'dry')} to {mass_text(high, 'dry')}"
+        f"{'; ' + grades if grades else ''}. The quantity and grade are conceptual. There has been insufficient exploration"
+        " to estimate a resource, and it is uncertain whether further exploration will result in one."
+        f"{' Basis: ' + basis + '.' if basis else ''}",
         "note",
     )
 

@@ -14,7 +14,6 @@ from sms_resource.reporting.elements import (
     number_text,
     plain_words,
 )
-from sms_resource.reporting.sections_estimate import target
 from sms_resource.reporting.tonnage import rows_at_cutoff, tonnage_table
 
 
@@ -35,8 +34,6 @@ def summary(data: ReportData, cautions: Sequence[Caution]) -> list[Block]:
                 "note",
             )
         )
-    if data.classes.exploration_target:
-        blocks.append(target(data))
     blocks.append(Facts(tuple(basis(data))))
     triggered = [c.title for c in cautions if not c.always]
     blocks.append(

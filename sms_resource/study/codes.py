@@ -10,6 +10,7 @@ CODES: dict[str, str] = {
     "study-metal": "An element is named that is not estimated.",
     "study-missing": "The study file cannot be read.",
     "study-missing-key": "A key that must be given is missing.",
+    "study-no-drilling": "Surface samples are given without holes, which carry no block estimate.",
     "study-syntax": "The study file is not valid TOML.",
     "study-unknown-key": "A key is not known.",
     "study-value": "A value does not fit its key.",

@@ -182,6 +182,13 @@ def _fault_finding(fault: dict[str, Any], rows: dict[str, int], name: str) -> Fi
         count = len(fault["input"]) if isinstance(fault.get("input"), list | tuple) else 0
         short = f"'{dotted}' is {shown(fault.get('input'))}: it has too few values ({count})"
         return Finding("error", "study-value", short, describe(place), name, row, dotted)
+    given = fault.get("input")
+    if fault["type"] == "missing" and dotted in ("data.collars", "data.assays") and "surface_samples" in (given or ()):
+        return Finding("error", "study-no-drilling",
+                       f"'{dotted}' is not given: surface samples alone carry no block estimate",
+                       "They may support an exploration target at most: tonnes and grade as ranges, stated as conceptual, "
+                       "with too little exploration to estimate a resource. For an estimate add collars and assays of holes.",
+                       name, row, dotted)  # fmt: skip
     if fault["type"] == "missing":
         return Finding("error", "study-missing-key", f"'{dotted}' must be given", f"Add it: {describe(place)}", name,
                        row, dotted)  # fmt: skip

@@ -19,6 +19,7 @@ from sms_resource.workflow.state import (
     ProposalState,
     VariogramState,
 )
+from sms_resource.workflow.target import unclassified_target
 
 
 def propose(context: Context) -> ProposalState:
@@ -48,7 +49,7 @@ def propose(context: Context) -> ProposalState:
     context.findings.extend(proposal.findings)
     frame["proposed_class"] = proposal.classes
     frame["class_reasons"] = proposal.block_reasons
-    frame, waterfall, marks = screened(context, frame, metals)
+    frame, waterfall, marks, slopes = screened(context, frame, metals)
     context.detail = proposal.tally_label.split(" (")[0]
     return ProposalState(
         frame=frame,
@@ -61,6 +62,8 @@ def propose(context: Context) -> ProposalState:
             "overrides": proposal.overrides,
             "class_summary": proposal.summary,
             "moved": proposal.moved,
+            "exploration_target": unclassified_target(context, frame, metals),
+            "slope_classes": slopes,
         },
     )
 

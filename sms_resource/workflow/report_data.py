@@ -219,6 +219,8 @@ def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
     volumes = {"volume_m3": made.volume_m3}
     for name, volume in zip(made.categories["category"], made.categories["volume_m3"]):
         volumes[f"{name}_m3"] = float(volume)
+    steepness: Any = slope(state.seafloor, config.seafloor.footprint_m)
+    rough: Any = roughness(state.seafloor, config.seafloor.footprint_m)
     extrapolated = 1.0 - volumes.get("drilled_m3", made.volume_m3) / made.volume_m3
     return BodyEvidence(
         seafloor=state.seafloor,
@@ -248,8 +250,8 @@ def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
         waterfall=waterfall_rows(done["classify"].waterfall, metal_columns(config)),
         sigma_seafloor_m=seafloor_sigma(state),
         sigma_seafloor_from=state.facts["sigma_from"],
-        slope=slope(state.seafloor, config.seafloor.footprint_m),
-        roughness=roughness(state.seafloor, config.seafloor.footprint_m),
+        slope=steepness,
+        roughness=rough,
         footprint_m=config.seafloor.footprint_m,
         slope_classes=done["classify"].tables["slope_classes"],
         splits={
@@ -334,7 +336,18 @@ def _classes(study: Study, done: dict[str, Any], findings: Findings) -> Classes:
         before_after=smoothing,
         overrides=state.tables.get("overrides"),
         flags=flags,
+        exploration_target=target_words(state.tables.get("exploration_target")),
     )
+
+
+def target_words(table: pd.DataFrame | None) -> dict[str, Any] | None:
+    """The exploration target as the report takes it: ranges, what they rest on, and nothing where there is none."""
+    if table is None or not len(table):
+        return None
+    columns = (table[name] for name in ("quantity", "low", "high"))
+    ranges = {str(name): (float(low), float(high)) for name, low, high in zip(*columns)}
+    low, high = ranges.pop("dry_tonnes")
+    return {"dry_tonnes_low": low, "dry_tonnes_high": high, "grades": ranges, "basis": str(table["basis"].iloc[0])}
 
 
 def _value(study: Study, done: dict[str, Any], extra: dict[str, Any]) -> ValueEvidence:
