@@ -65,6 +65,8 @@ def body(data: ReportData) -> list[Block]:
                 f" {body.extrapolation.get('basis') or 'not stated'}."
             )
         )
+    blocks.append(Slot(("plan_slope",)))
+    with_table(blocks, body.slope_classes, f"The body by slope of the seafloor over {body.footprint_m:g} m")
     blocks.append(Slot(("plan_thickness", "plan_extrapolation")))
     if body.contacts is not None and has(body.contacts, "kind"):
         counts = body.contacts["kind"].astype(str).value_counts().sort_index()

@@ -79,7 +79,7 @@ def split_tables(data: ReportData) -> list[Block]:
         if len(rows) < 2:
             continue
         total = {"screen": "The whole body"}.get(column, "All")
-        names = [total if name == "all" else str(name) for name in rows[column]]
+        names = [total if name == "all" else f"{str(name)[:1].upper()}{str(name)[1:]}" for name in rows[column]]
         label = data.tally_label
         title = f"{label[0].upper()}{label[1:]} at {data.cutoff_text}, {words}"
         blocks.append(mass_table(data, rows, names, head, title, note, (len(rows) - 1,)))

@@ -39,6 +39,14 @@ def variograms(context: Context) -> VariogramState:
     for domain in config.domains.sulphide:
         chosen = (samples["domain"] == domain).to_numpy()
         part = samples[chosen]
+        if not chosen.any() and domain not in config.domains.codes.values():
+            context.findings.warning(
+                "domain-without-samples",
+                f"domain '{domain}' comes from its shape alone and has no sample: its tonnes have no grade, and a block "
+                "that it shares takes the grade of the rest",
+                "Map a logged code to it in domains.codes, if any core is of it.", file=context.study.path.name,
+            )  # fmt: skip
+            continue
         places = part[["x", "y", "z"]].to_numpy(dtype=float)
         weights[chosen], scan = decluster(part, metals[0], spacing, domain)
         scans.append(scan)

@@ -206,7 +206,7 @@ def krige_domains(
         rows = _domain_rows(samples, domain, config.domains.boundaries)
         used = shares[domain] > 0
         table = np.full((len(targets), len(metals)), np.nan)
-        if used.any() and rows.any():
+        if used.any() and rows.any() and (domain, metals[0]) in state.inferences:
             part = samples[rows]
             result = ordinary_kriging(
                 part[["x", "y", "z"]].to_numpy(dtype=float),

@@ -70,6 +70,18 @@ def body(context: Context) -> BodyState:
     )  # fmt: skip
 
 
+def seafloor_sigma(state: BodyState) -> float:
+    """One sigma of the seafloor over the body: the median of the file's own uncertainty, or the study's number."""
+    import shapely
+
+    top = state.body.top
+    if top.uncertainty is None:
+        return float(state.facts["sigma_median_m"])
+    x, y = top.mesh()
+    inside = top.uncertainty[shapely.contains_xy(state.outline, x, y) & np.isfinite(top.uncertainty)]
+    return float(np.median(inside)) if inside.size else float(state.facts["sigma_median_m"])
+
+
 def domain_layers(context: Context, made: Any) -> Any:
     """Contact surfaces between the layers of the body, chimneys on top; None where one domain fills it."""
     from sms_resource.blocks.domains import layered_domains

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -11,6 +12,7 @@ from sms_resource.units import column_element, element_column, element_label
 from sms_resource.workflow.stage import Context, StageStop
 from sms_resource.workflow.state import DensityState
 
+SLOPE_EDGES = (0.0, 10.0, 15.0, 20.0, 25.0, 30.0, 90.0)
 SKIN_STEPS = {
     "cut": "above the cut-off",
     "loss": "under-cut loss",
@@ -21,7 +23,7 @@ SKIN_STEPS = {
 
 def screened(
     context: Context, frame: pd.DataFrame, metals: list[str]
-) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]:
+) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame, pd.DataFrame]:
     """Mark what the screens take of each block.
 
     Returns
@@ -32,6 +34,8 @@ def screened(
         From the whole body to what remains.
     marks : DataFrame
         kept_share and the share that each screen takes of each block, in its order.
+    slopes : DataFrame
+        The body by class of slope.
     """
     from sms_resource.blocks.screens import ScreenSettings, apply_screens
 
@@ -60,7 +64,37 @@ def screened(
         frame.assign(kept_share=marks["kept_share"].to_numpy(), screened_by=marks["screened_by"].to_numpy()),
         found.waterfall,
         marks,
+        slope_classes(frame, found.columns),
     )
+
+
+def slope_classes(frame: pd.DataFrame, columns: pd.DataFrame) -> pd.DataFrame:
+    """Area in plan and tonnes of the body, dry and wet, by class of the slope of the seafloor over a machine.
+
+    Parameters
+    ----------
+    frame : DataFrame
+        One row a block: i, j, dry_tonnes, wet_tonnes.
+    columns : DataFrame
+        One row a column of blocks: i, j, area_m2, slope_deg.
+
+    Returns
+    -------
+    DataFrame
+        slope, area_m2, dry_tonnes, wet_tonnes, share_pct (of the dry tonnes); columns without a slope are "not known".
+    """
+    held = frame.groupby(["i", "j"], as_index=False)[["dry_tonnes", "wet_tonnes"]].sum()
+    held = held.merge(columns[["i", "j", "area_m2", "slope_deg"]], on=["i", "j"], how="left")
+    names = [
+        f"over {low:g}°" if high >= 90 else f"{low:g} to {high:g}°" for low, high in pairwise(SLOPE_EDGES)
+    ]
+    number = np.searchsorted(SLOPE_EDGES[1:-1], held["slope_deg"].to_numpy(dtype=float), side="left")
+    words = np.array([*names, "not known"], dtype=object)
+    held["slope"] = words[np.where(held["slope_deg"].notna(), number, len(names))]
+    sums = held.groupby("slope")[["area_m2", "dry_tonnes", "wet_tonnes"]].sum()
+    table = sums.reindex([name for name in words if name in sums.index]).reset_index()
+    whole = table["dry_tonnes"].sum()
+    return table.assign(share_pct=100.0 * table["dry_tonnes"] / whole if whole > 0 else np.nan)
 
 
 def kept(frame: pd.DataFrame) -> pd.DataFrame:

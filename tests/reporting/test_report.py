@@ -123,7 +123,7 @@ def test_every_maker_draws_with_full_data(drawings, page):
 
 def test_axes_carry_units_plans_a_bar_and_sections_their_exaggeration(drawings):
     unit = re.compile(
-        r"\((m|%|g/t|t/m³|ratio|count|kt dry|t dry|Mt dry|kt)\)|%|^(Holes|Composites|Drilled"
+        r"\((m|°|%|g/t|t/m³|ratio|count|kt dry|t dry|Mt dry|kt)\)|%|^(Holes|Composites|Drilled"
         r" length)|squared|SD$|g/t|\bratio\b"
     )
     for drawing in drawings:
