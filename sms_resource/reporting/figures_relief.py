@@ -45,10 +45,14 @@ def plan_slope(data: ReportData) -> Drawing | None:
         axis = axes[0, 1]
         draw_seafloor(axis, data, window, faint=True)
         u, v, heights = thinned(rough)
-        inside = heights[np.isfinite(heights)]
+        shown = heights[
+            np.ix_((v >= window[2]) & (v <= window[3]), (u >= window[0]) & (u <= window[1]))
+        ]  # what lies outside the picture has no say in its colours
+        inside = shown[np.isfinite(shown)]
+        most = float(np.quantile(inside, 0.98)) if inside.size else 0.0
         image = axis.pcolormesh(
-            u, v, np.ma.masked_invalid(heights), cmap=style.SURFACE_MAP, vmin=0.0,
-            vmax=max(float(np.quantile(inside, 0.98)), 1e-3), shading="nearest", rasterized=True, zorder=2,
+            u, v, np.ma.masked_invalid(heights), cmap="YlOrBr", vmin=0.0,
+            vmax=max(most, 1e-3), shading="nearest", rasterized=True, zorder=2,
         )  # fmt: skip
         figure.colorbar(image, ax=axis, orientation="horizontal", shrink=0.9, extend="max",
                         label=f"Roughness over {data.body.footprint_m:g} m (m)")  # fmt: skip
