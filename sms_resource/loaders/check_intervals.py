@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from sms_resource.findings import Findings, Severity
 from sms_resource.loaders.headers import canonical_text
-from sms_resource.loaders.places import counted, file_of, header_of, in_rows, not_reported, report_rows
+from sms_resource.loaders.places import counted, file_of, given, header_of, in_rows, not_reported, report_rows
 from sms_resource.loaders.settings import CheckSettings
 from sms_resource.loaders.tables import LoadedData
 
@@ -56,7 +56,7 @@ def _single_intervals(frame: pd.DataFrame, lengths: pd.Series, file: str | None,
     rows = frame["source_row"].to_numpy()
     start, end = frame["from_m"].to_numpy(dtype=np.float64), frame["to_m"].to_numpy(dtype=np.float64)
     for name, values in (("from_m", start), ("to_m", end)):
-        blank = np.isnan(values) & not_reported(frame, name)
+        blank = np.isnan(values) & not_reported(frame, name) & given(frame, name)
         report_rows(
             findings, "error", "interval-incomplete", rows[blank], f"The interval has no {name}.",
             "Complete the row, or remove it.", file=file, column=header_of(frame, name),

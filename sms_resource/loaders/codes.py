@@ -31,6 +31,7 @@ _FILES = {
 _COLUMNS = {
     "header-missing": "The row of column names is empty.",
     "header-empty": "A column has cells but no name.",
+    "header-below": "The names of the columns stand below the row where they were looked for.",
     "column-missing": "A column that is needed or mapped is not in the file.",
     "column-duplicate": "Two columns may be meant.",
     "columns-unused": "Columns of the file that were not read.",
@@ -53,7 +54,7 @@ _CELLS = {
     "date-in-identifier": "A name was turned into a date by a spreadsheet.",
     "identifier-number": "Names are stored as numbers, so leading zeros may be lost.",
     "identifier-missing": "A row has no name.",
-    "missing-code": "A code such as -999 stands for a missing value; read as blank.",
+    "missing-code": "A code such as -999 or 1e30 stands for a missing value; read as blank.",
     "word-unknown": "A word is not one that the column may hold.",
     "result-unclear": "A result such as nd may mean not determined or not detected.",
     "detection-limit-missing": "A result is below detection and its limit is not given.",

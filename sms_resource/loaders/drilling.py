@@ -82,7 +82,8 @@ def to_elevation(
                 'Write vertical = "elevation" if the file has elevations, or correct the value.',
                 file=source.name, column=header_of(frame, column), most=5,
             )  # fmt: skip
-        frame[column] = -values + 0.0
+        # a value of the wrong sign is reported once, and not turned into a second fault
+        frame[column] = np.where(negative, values, -values + 0.0)
     return frame
 
 

@@ -124,6 +124,12 @@ def file_of(frame: pd.DataFrame, default: str | None = None) -> str | None:
     return name
 
 
+def given(frame: pd.DataFrame, column: str) -> bool:
+    """Whether the file has a canonical column; so taken where it is not known."""
+    headers: dict[str, str] = frame.attrs.get("headers", {})
+    return not headers or column in headers
+
+
 def header_of(frame: pd.DataFrame, column: str) -> str:
     """What the file calls a canonical column."""
     headers: dict[str, str] = frame.attrs.get("headers", {})

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
@@ -17,6 +17,7 @@ from sms_resource.loaders.workbook import read_workbook
 
 TEXT_ENDINGS = frozenset({".csv", ".txt", ".tsv", ".dat", ".tab", ".asc", ".xyz", ".prn", ""})
 WORKBOOK_ENDINGS = frozenset({".xlsx", ".xlsm"})
+LOOK_BELOW = 5  # rows under the header row in which its names are looked for
 VECTOR_ENDINGS = frozenset({".gpkg", ".shp", ".geojson", ".fgb", ".gml", ".kml", ".sqlite", ".json"})
 
 
@@ -205,3 +206,23 @@ def _from_vector(source: TableSource, findings: Findings) -> RawTable | None:
         points = (geometry.x.reset_index(drop=True), geometry.y.reset_index(drop=True))
     crs = None if frame.crs is None else frame.crs.to_string()
     return RawTable(table.headers, table.cells, table.rows, table.decimal, points, crs)
+
+
+def names_below(source: TableSource, raw: RawTable) -> int | None:
+    """Row of a table that holds the columns which the study maps, where its header row holds none of them.
+
+    A title above the names is the usual cause, in a workbook most often a merged cell.
+    """
+    from sms_resource.loaders.headers import find_header
+
+    mapped = list(source.columns.values())
+    if len(mapped) < 2 or any(find_header(name, raw.headers) for name in mapped):
+        return None
+    for row in range(source.header_row + 1, source.header_row + LOOK_BELOW + 1):
+        below, _ = read_table(replace(source, header_row=row))
+        if (
+            below is not None
+            and sum(bool(find_header(name, below.headers)) for name in mapped) > len(mapped) / 2
+        ):
+            return row
+    return None

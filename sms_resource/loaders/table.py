@@ -18,8 +18,8 @@ from sms_resource.loaders.parsing import (
     parse_identifiers,
     parse_numbers,
 )
-from sms_resource.loaders.places import counted, mark, report_rows
-from sms_resource.loaders.reading import RawTable, read_table
+from sms_resource.loaders.places import counted, in_rows, mark, report_rows
+from sms_resource.loaders.reading import RawTable, names_below, read_table
 from sms_resource.loaders.source import TableSource
 from sms_resource.loaders.tables import (
     BLANK,
@@ -56,6 +56,16 @@ def load_table(
     raw, findings = read_table(source)
     wanted = tuple(dict.fromkeys((*elements, *optional_elements))) if role in GRADE_ROLES else ()
     if raw is None:
+        return mark(empty_table(role, wanted), source.name, {}), findings
+    below = names_below(source, raw)
+    if below is not None:
+        findings.error(
+            "header-below",
+            f"Row {source.header_row} does not hold the names of the columns that the study maps; row {below} does.",
+            f"Write header_row = {below} beside the file in the study.",
+            file=source.name,
+            row=source.header_row,
+        )
         return mark(empty_table(role, wanted), source.name, {}), findings
     return TableMaker(source, role, raw, findings, wanted, frozenset(elements)).make(), findings
 
@@ -172,13 +182,14 @@ class TableMaker:
             return found[0]
         if (required or declared) and not quiet and name not in self.constants:
             near = nearest(declared or name, self.raw.headers)
+            said = column_element(name) or name  # an element is mapped by its own name
             self.findings.error(
                 "column-missing",
                 f"There is no column {declared or name!r}"
-                + (f" for {name}" if declared else "")
+                + (f" for {said}" if declared else "")
                 + f". The file has: {', '.join(h for h in self.raw.headers if h)[:300]}.",
                 (f"The nearest is {near!r}: " if near else "")
-                + f'map it in the study with columns = {{ {name} = "..." }}.',
+                + f'map it in the study with columns = {{ {said} = "..." }}.',
                 file=self.file,
                 row=self.source.header_row,
                 column=declared or name,
@@ -327,13 +338,13 @@ class TableMaker:
             )  # fmt: skip
         coded = np.flatnonzero(parsed.coded)
         if len(coded):
-            from sms_resource.loaders.places import counted, in_rows
-
+            cells = self.raw.column(header).iloc[coded]
+            told = list(dict.fromkeys(str(cell).strip() for cell in cells))[:3]
             self.findings.warning(
                 "missing-code",
-                f"{counted(len(coded), 'cell')} with a code such as -999 in place of a value, read as blank "
+                f"{counted(len(coded), 'cell')} with a code in place of a value ({', '.join(told)}), read as blank "
                 f"({in_rows(rows[coded])}).",
-                "Leave the cells empty.",
+                "Leave the cells empty; correct what is no code.",
                 file=self.file,
                 row=int(rows[coded[0]]),
                 column=header,

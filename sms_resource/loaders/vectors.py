@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import warnings
 from difflib import get_close_matches
 from pathlib import Path
@@ -13,7 +14,9 @@ from sms_resource.findings import Findings
 def first_line(error: BaseException) -> str:
     """First line of what a native library said, short enough to print."""
     text = str(error).strip().splitlines()
-    return text[0][:160] if text else type(error).__name__
+    # a path of this machine says nothing that the name of the file does not
+    said = re.sub(r"(?:[A-Za-z]:)?[\\/](?:[^'\"\\/:]+[\\/])+", "", text[0]).rstrip(". ") if text else ""
+    return said[:160] or type(error).__name__
 
 
 def layer_names(path: Path) -> list[str]:

@@ -88,3 +88,69 @@ def test_new_says_what_becomes_of_another_coordinate_system(tmp_path: Path) -> N
     made = new_study([*grids, tmp_path / "my_outline.geojson"], tmp_path / "new.toml")
     assert "# reproject = true  # DECIDE" in (tmp_path / "new.toml").read_text(encoding="utf-8")
     assert any("data.outline.reproject" in question for question in made.open_questions)
+
+
+def errors_of(small: SmallStudy) -> list[tuple[str, str]]:
+    """Code and text of each error of the check."""
+    findings = check_study(load_study(small.path))
+    return [(item.code, f"{item.message} {item.remedy}") for item in findings.errors]
+
+
+def test_a_title_over_the_names_is_one_fault_with_its_remedy(tmp_path: Path) -> None:
+    """A merged title used to be told as a fault a column and a fault a row."""
+    import openpyxl
+
+    small = SmallStudy(tmp_path)
+    small.write()
+    book = openpyxl.Workbook()
+    sheet = book.active
+    assert sheet is not None
+    sheet["A1"] = "Assays of the cruise"
+    sheet.merge_cells("A1:H1")
+    for line in (tmp_path / "assays.csv").read_text(encoding="utf-8").splitlines():
+        sheet.append(line.split(","))
+    book.save(tmp_path / "assays.xlsx")
+    header = (tmp_path / "assays.csv").read_text(encoding="utf-8").splitlines()[0].split(",")
+    small.toml["data"]["assays"] |= {"file": "assays.xlsx", "columns": {name: name for name in header[:4]}}
+    small.write()
+    ((code, text),) = errors_of(small)
+    assert code == "header-below" and "header_row = 2" in text
+    small.toml["data"]["assays"]["header_row"] = 2
+    small.write()
+    assert errors_of(small) == []
+
+
+def test_a_missing_column_of_grades_is_mapped_by_its_element(tmp_path: Path) -> None:
+    """The remedy writes the key as the guide does."""
+    small = SmallStudy(tmp_path)
+    small.toml["data"]["assays"].setdefault("columns", {})["cu"] = "Copper"
+    small.write()
+    ((code, text),) = errors_of(small)
+    assert code == "column-missing" and 'columns = { cu = "..." }' in text
+
+
+def test_a_wrong_sign_is_told_once(tmp_path: Path) -> None:
+    """Elevations that the study calls depths are not then found to lie above the sea as well."""
+    small = SmallStudy(tmp_path)
+    small.toml["data"]["collars"]["vertical"] = "depth"
+    small.write()
+    assert all(
+        'vertical = "elevation"' in text for code, text in errors_of(small) if code == "elevation-sign"
+    )
+
+
+def test_a_code_for_nothing_is_named(tmp_path: Path) -> None:
+    """1e300 is no grade: what was read as blank is spelled out."""
+    small = SmallStudy(tmp_path)
+    small.rows["assays"][2]["cu_pct"] = "1e300"
+    (said,) = [item for item in check_study(load_study(small.write())) if item.code == "missing-code"]
+    assert "1e300" in said.message and said.row == 4
+
+
+def test_a_broken_grid_tells_no_path_of_the_machine(tmp_path: Path) -> None:
+    small = SmallStudy(tmp_path)
+    small.write()
+    (grid,) = [path for path in tmp_path.iterdir() if path.suffix == ".tif"]
+    grid.write_bytes(b"\\x00\\x17 junk" * 500)
+    ((code, text),) = [pair for pair in errors_of(small) if pair[0].startswith("grid")]
+    assert code == "grid-unreadable" and str(tmp_path) not in text and grid.name in text and ".." not in text
