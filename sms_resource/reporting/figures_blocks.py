@@ -140,6 +140,7 @@ def plan_classes(data: ReportData) -> Drawing | None:
         title="Proposed class",
     )
     style.finish_plan(axis)
+    axis.set_title(data.tally_label, fontsize=8)
     return Drawing(
         "plan_classes",
         "classes",
@@ -191,6 +192,7 @@ def plan_extrapolation(data: ReportData) -> Drawing | None:
             zorder=8,
         )
     style.finish_plan(axis)
+    axis.set_title(data.tally_label, fontsize=8)
     return Drawing(
         "plan_extrapolation",
         "body",

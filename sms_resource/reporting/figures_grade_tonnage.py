@@ -19,8 +19,10 @@ FEW = 0.01  # share of the tonnes below which a grade rests on so few blocks tha
 SUPPORT = "#7a4fa3"
 
 
-def variable_label(variable: str) -> str:
+def variable_label(variable: str, currency: str = "") -> str:
     """Axis label of a cut-off variable: ``Cu (%)`` or words with the unit."""
+    if variable == "value_per_dry_tonne" and currency:
+        return f"net value ({currency} per dry tonne)"
     return element_label(variable) if column_element(variable) else column_label(variable)
 
 
@@ -52,6 +54,9 @@ def grade_tonnage(data: ReportData) -> Drawing | None:
         part = rows[rows["proposed_class"].astype(str) == name].sort_values("cutoff")
         curve = beside if name == "all" and has(beside, "cutoff", "support_dry_tonnes") else None
         right = _panel(axis, part, name, metals, variable, curve)
+        axis.set_xlabel(
+            f"Cut-off, {variable_label(variable, str((data.subject.cutoff or {}).get('currency') or ''))}"
+        )
         rights.append(right)
         at = (data.subject.cutoff or {}).get("value")
         if at is not None and variable == wanted:
@@ -117,7 +122,6 @@ def _panel(
         )  # fmt: skip
     axis.set_ylim(0, most / scale * 1.08 or 1.0)
     axis.set_xlim(float(part["cutoff"].min()), float(part["cutoff"].max()))
-    axis.set_xlabel(f"Cut-off, {variable_label(variable)}")
     axis.set_ylabel(f"Dry tonnes above ({unit} dry)")
     axis.set_title("All classes" if whole else f"{style.class_name(name)} (proposed)")
     right = axis.twinx()

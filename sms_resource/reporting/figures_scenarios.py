@@ -47,7 +47,8 @@ def tornado(data: ReportData) -> Drawing | None:
     for axis, measure in zip(axes[0], measures):
         part = frame[frame["measure"] == measure].drop_duplicates("decision").set_index("decision")
         _bars(axis, part.reindex(names))
-        axis.set_xlabel(f"{measure_label(measure).partition(' (')[0]}: change (%)")
+        said = measure_label(measure).partition(" (")[0]
+        axis.set_xlabel(f"{said}{' grade' if column_element(measure) else ''}: change (%)")
     axes[0, 0].set_yticks(
         range(len(names)), [style.short(str(name).replace("_", " ")) for name in names][::-1]
     )

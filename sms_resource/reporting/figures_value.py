@@ -155,7 +155,7 @@ def geometry(data: ReportData) -> Drawing | None:
         )
     axis.axvline(0, color=style.INK, lw=0.9)
     axis.set_yticks(place, case_words(frame))
-    axis.set_xlabel("Change of dry tonnes of the body (%)")
+    axis.set_xlabel(f"Change of dry tonnes of the body (%), {data.tally_label}")
     axis.margins(x=0.26)
     return Drawing(
         "geometry",

@@ -187,7 +187,7 @@ def _fault_finding(fault: dict[str, Any], rows: dict[str, int], name: str) -> Fi
         return Finding("error", "study-no-drilling",
                        f"'{dotted}' is not given: surface samples alone carry no block estimate",
                        "They may support an exploration target at most: tonnes and grade as ranges, stated as conceptual, "
-                       "with too little exploration to estimate a resource. For an estimate add collars and assays of holes.",
+                       "with too little exploration to estimate a resource. For an estimate add collars and assays.",
                        name, row, dotted)  # fmt: skip
     if fault["type"] == "missing":
         return Finding("error", "study-missing-key", f"'{dotted}' must be given", f"Add it: {describe(place)}", name,

@@ -9,6 +9,7 @@ import pandas as pd
 
 from sms_resource.study import Study
 from sms_resource.units import element_column, unit_label
+from sms_resource.workflow.cheap import NAMED
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.scenarios import ScenarioRun
 
@@ -30,9 +31,23 @@ def effects(study: Study, run: ScenarioRun) -> dict[str, str]:
             says = [f"dry t {_percent(row[tonnes], run.base[tonnes])}"]
             says.append(f"{lead.partition('_')[0].capitalize()} {_percent(row[lead], run.base[lead])}")
             says += [f"metal {_percent(row[name], run.base[name])}" for name in contents]
+            says += class_words(row, run.base)
             words.append(f"{value}: " + ", ".join(says))
         found[str(group)] = "; ".join(words)
     return found
+
+
+def class_words(row: dict[str, Any], base: dict[str, float]) -> list[str]:
+    """What a scenario does to the dry tonnes of a class, where that is not what it does to all of them."""
+    share = row["dry_tonnes"] / base["dry_tonnes"] if base["dry_tonnes"] else float("nan")
+    said = []
+    for name in NAMED:
+        before, after = base.get(f"{name}_dry_tonnes", 0.0), row[f"{name}_dry_tonnes"]
+        if before and abs(after / before - share) > 5e-4:
+            said.append(f"{name.capitalize()} dry t {_percent(after, before)}")
+        elif not before and after:
+            said.append(f"{name.capitalize()} from none to {after:,.0f} dry t")
+    return said
 
 
 def effect_sizes(study: Study, run: ScenarioRun) -> dict[str, float]:
@@ -152,4 +167,6 @@ def key_unit(study: Study, key: str) -> str:
 
 
 def _short(value: Any) -> str:
+    if isinstance(value, float):
+        return f"{value:.12g}"
     return value if isinstance(value, str) else json.dumps(value, ensure_ascii=False)
