@@ -19,7 +19,7 @@ from sms_resource.reporting.shapes_table import shapes_table
 from sms_resource.reporting.splits import skins_table, split_tables
 from sms_resource.reporting.summaries import checks_shown
 from sms_resource.reporting.tonnage import rows_at_cutoff, screens_table, tonnage_table
-from sms_resource.units import element_label
+from sms_resource.units import column_element, element_label
 
 
 def estimate(data: ReportData) -> list[Block]:
@@ -105,7 +105,8 @@ def tonnes(data: ReportData) -> list[Block]:
         )
     blocks.append(Slot(("grade_tonnage",)))
     with_table(
-        blocks, data.value.beside_support, f"Blocks beside the model of change of support ({label})", most=30,
+        blocks, data.value.beside_support,
+        f"Blocks beside the model of change of support, cut-off and grade in {_cut_variable(data)} ({label})", most=30,
         note="Kriged blocks are smoother than what a selection would meet; the discrete Gaussian model says by how much. "
         "It starts from the same dry tonnes at the lowest cut-off.",
     )  # fmt: skip
@@ -117,6 +118,18 @@ def tonnes(data: ReportData) -> list[Block]:
     blocks.append(Slot(("waterfall",)))
     blocks += skins_table(data)
     return blocks
+
+
+def _cut_variable(data: ReportData) -> str:
+    """The variable of the cut-off with its unit."""
+    name = str((data.subject.cutoff or {}).get("variable") or "the cut-off's variable")
+    return element_label(name) if column_element(name) else name
+
+
+def _currency(data: ReportData) -> str:
+    """Unit of value, where the study has a currency."""
+    currency = (data.subject.cutoff or {}).get("currency")
+    return f" ({currency} per dry tonne)" if currency else ""
 
 
 def scenarios(data: ReportData) -> list[Block]:
@@ -132,7 +145,8 @@ def scenarios(data: ReportData) -> list[Block]:
         with_table(blocks, table, "Prices, recoveries and payabilities")
     with_table(blocks, v.cutoff_costs, "Costs inside the cut-off")
     with_table(
-        blocks, v.by_value, "The same dry tonnes chosen by grade and by value", most=30,
+        blocks, v.by_value,
+        f"The same dry tonnes chosen by a cut-off on {_cut_variable(data)} and by value{_currency(data)}", most=30,
         note="Means of net value per dry tonne of what is chosen, before costs of lifting; no total is shown.",
     )  # fmt: skip
     if v.scenarios is not None and len(v.scenarios):

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from collections.abc import Mapping
 from typing import Any
 
 import pandas as pd
@@ -37,7 +38,7 @@ def effects(study: Study, run: ScenarioRun) -> dict[str, str]:
     return found
 
 
-def class_words(row: dict[str, Any], base: dict[str, float]) -> list[str]:
+def class_words(row: Mapping[Any, Any], base: dict[str, float]) -> list[str]:
     """What a scenario does to the dry tonnes of a class, where that is not what it does to all of them."""
     share = row["dry_tonnes"] / base["dry_tonnes"] if base["dry_tonnes"] else float("nan")
     said = []

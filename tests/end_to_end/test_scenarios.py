@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -17,7 +18,7 @@ from sms_resource.cli import app
 from sms_resource.study import Study
 from sms_resource.workflow.manifest import input_hashes
 from sms_resource.workflow.publish import ledger_table
-from sms_resource.workflow.scenario_tables import effects
+from sms_resource.workflow.scenario_tables import effects, tables
 from sms_resource.workflow.scenarios import (
     RecentStages,
     Scenario,
@@ -25,6 +26,7 @@ from sms_resource.workflow.scenarios import (
     measures,
     outcome_stages,
     run_scenarios,
+    scenario_list,
 )
 from sms_resource.workflow.stage import run_stages
 from tests.end_to_end.small_study import SmallStudy
@@ -210,6 +212,41 @@ def test_effects_of_alternatives_stand_in_the_ledger(study: Study, store: StageC
     # 50 m round the vent is more than the whole body
     assert "50: dry t -100.0 %" in table.loc["screens.vent_buffer_m", "effect"]
     assert table.loc["composites.length_m", "effect"] == ""
+
+
+def test_the_ledger_tells_what_an_alternative_does_to_the_classes(study: Study, store: StageCache) -> None:
+    """Without a floor every downgraded Inferred block is unclassified: no tonne moves, but a class does."""
+    (wanted,) = [item for item in ledger_scenarios(study) if item.group == "classes.floor"]
+    run = run_scenarios(study, [wanted], store=store, files=hashes(study))
+    row, base = run.table.iloc[0], run.base
+    assert (
+        row["dry_tonnes"] == base["dry_tonnes"] and row["inferred_dry_tonnes"] < base["inferred_dry_tonnes"]
+    )
+    assert "Inferred dry t -" in effects(study, run)["classes.floor"]
+
+
+def test_the_report_holds_every_grid_and_what_was_moved_alone(study: Study, store: StageCache) -> None:
+    made = study.with_overrides({})
+    grids = [{"label": "one", "vary": {"cutoff.at": [2.0, 6.0], "value.metals.cu.price": [7000.0, 9000.0]}},
+             {"label": "two", "vary": {"cutoff.at": [2.0, 5.0], "density.factor": [0.9, 1.1]}}]  # fmt: skip
+    section = type(study.config.scenarios)(
+        ledger=False, grid=grids, single=[{"label": "low cut", "change": {"cutoff.at": 3.0}}]
+    )
+    made = replace(made, config=made.config.model_copy(update={"scenarios": section}))
+    run = run_scenarios(made, scenario_list(made), store=store, files=hashes(study))
+    said = tables(made, run)
+    assert [grid["label"] for grid in said["heat_maps"]] == ["one", "two"]
+    assert said["heat_maps"][0]["x"] == "value.metals.cu.price (US$/t)"
+    assert said["heat_maps"][1]["y"] == "cutoff.at (Cu, %)"
+    frame = said["heat_maps"][1]["frame"].set_index(["y", "x"])
+    assert frame.loc[("2", "1.1"), "dry_tonnes"] / frame.loc[("2", "0.9"), "dry_tonnes"] == pytest.approx(
+        11 / 9
+    )
+    tornado = said["tornado"]
+    assert list(tornado["measure"]) == ["dry_tonnes", "cu_pct", "cu_t"] and set(tornado["decision"]) == {
+        "cutoff.at"
+    }
+    assert (tornado["high_label"].iloc[0], tornado["low_label"].iloc[0]) == ("3", "base")
 
 
 def test_the_command_runs_lists_and_grids(tmp_path: Path, light: None) -> None:
