@@ -9,13 +9,13 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
+from sms_resource.loaders.check_outline import check_outline
 from sms_resource.loaders.coordinate_systems import crs_name, parse_crs, same_crs
 from sms_resource.loaders.places import counted, file_of, header_of, listed, not_reported, report_rows
 from sms_resource.loaders.settings import CheckSettings
 from sms_resource.loaders.tables import LoadedData
 
 STEEP = 0.6  # vertical error of a sample on a flank of 30 degrees, per metre of its horizontal error
-LEAST_OUTLINE_M2, MOST_OUTLINE_M2 = 100.0, 4e6
 LONGEST_DREDGE_M = 5000.0
 
 
@@ -75,7 +75,7 @@ def check_positions(data: LoadedData, settings: CheckSettings, findings: Finding
     if data.base_grid is not None and data.seafloor is not None:
         _base_grid(data, findings)
     _far_below(data, settings, findings)
-    _outline(data, findings, misplaced)
+    check_outline(data, findings, misplaced)
 
 
 def _numbers(frame: pd.DataFrame, *names: str) -> list[NDArray[np.float64]]:
@@ -343,39 +343,4 @@ def _far_below(data: LoadedData, settings: CheckSettings, findings: Findings) ->
             [f"The interval ends {v:g} m below the seafloor." for v in end[deep]],
             "Check that the depth is in metres below the seafloor, and not below the sea surface.",
             file=file_of(frame, data.files.get(role)), column=header_of(frame, "to_m"),
-        )  # fmt: skip
-
-
-def _outline(data: LoadedData, findings: Findings, misplaced: bool) -> None:
-    import shapely
-
-    if data.outline is None or len(data.outline) == 0:
-        return
-    file = data.files.get("outline")
-    whole = data.outline.geometry.union_all()
-    area = float(whole.area)
-    if not LEAST_OUTLINE_M2 <= area <= MOST_OUTLINE_M2:
-        findings.warning(
-            "outline-size", f"The outline holds {area:.0f} m2.", "Check its coordinate system and its units.", file=file
-        )  # fmt: skip
-    outside = 0.0
-    if data.seafloor is not None:
-        box = shapely.box(*data.seafloor.bounds)
-        outside = float(whole.difference(box).area)
-        if outside > 1e-6 * max(area, 1.0):
-            findings.error(
-                "outline-off-grid",
-                f"{100 * outside / area:.1f} % of the outline lies outside the grid of the seafloor.",
-                "Check that both are in one coordinate system, or use a larger grid.",
-                file=file,
-            )
-    if misplaced or outside >= area:
-        return
-    collars = data.drill.collars
-    good = collars[["easting", "northing"]].notna().all(axis=1)
-    places = collars.loc[good, ["easting", "northing"]].to_numpy(dtype=np.float64)
-    if len(places) and not shapely.contains_xy(whole, places[:, 0], places[:, 1]).any():
-        findings.error(
-            "outline-without-holes", "No hole starts inside the outline.",
-            "Check that outline and collars are in one coordinate system.", file=file,
         )  # fmt: skip

@@ -38,6 +38,7 @@ _COLUMNS = {
     "unit-differs": "The name of a column states another unit than the tool's, and the study gives none.",
     "mapping-unknown": "The study maps or gives a unit to something that is no column or element.",
     "constant-ignored": "The study gives a constant for a column that the file has.",
+    "element-blank": "An element that is to be estimated has no value in any row.",
     "element-missing": "The file has no column of an element; it is blank.",
     "unit-missing": "Nothing states the unit of an element.",
     "unit-unknown": "The unit is not one that is converted.",
@@ -141,6 +142,7 @@ _PLACES = {
     "base-above-seafloor": "The base of the sulphide lies above the seafloor.",
     "base-off-grid": "The grid of the base lies nowhere under the seafloor's.",
     "outline-size": "The outline is very small or very large.",
+    "outline-no-depth": "Part of the outline lies where the grid of the seafloor has no value.",
     "outline-off-grid": "The outline lies outside the grid of the seafloor.",
     "outline-without-holes": "No hole starts inside the outline.",
 }

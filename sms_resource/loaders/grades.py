@@ -40,6 +40,15 @@ def grade_columns(maker: TableMaker, element: str) -> dict[str, Any]:
             "Write the limit into the cell, such as <0.01, or give detection_limits in the study.",
             file=maker.file, column=header,
         )  # fmt: skip
+    if maker.role == "assays" and element in maker.needed and count and (parsed.status == BLANK).all():
+        maker.findings.error(
+            "element-blank",
+            f"The column of {element} is blank in all {count} rows, and {element} is to be estimated.",
+            f"Name the column that holds it, or take {element} out of metals.estimate.",
+            file=maker.file,
+            row=maker.source.header_row,
+            column=header,
+        )
     return {
         name: parsed.values * factor,
         f"{name}_status": parsed.status,

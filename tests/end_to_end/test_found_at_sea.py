@@ -154,3 +154,31 @@ def test_a_broken_grid_tells_no_path_of_the_machine(tmp_path: Path) -> None:
     grid.write_bytes(b"\\x00\\x17 junk" * 500)
     ((code, text),) = [pair for pair in errors_of(small) if pair[0].startswith("grid")]
     assert code == "grid-unreadable" and str(tmp_path) not in text and grid.name in text and ".." not in text
+
+
+def test_a_metal_without_any_grade_is_found_by_check(tmp_path: Path) -> None:
+    """The run used to tell it, after the body was made."""
+    small = SmallStudy(tmp_path)
+    for row in small.rows["assays"]:
+        row["ag_gpt"] = ""
+    small.write()
+    ((code, text),) = errors_of(small)
+    assert code == "element-blank" and "take ag out of metals.estimate" in text
+
+
+def test_an_outline_over_lost_seafloor_is_found_by_check(tmp_path: Path) -> None:
+    import rasterio
+
+    small = SmallStudy(tmp_path)
+    study = load_study(small.write())
+    assert "outline-no-depth" not in {item.code for item in check_study(study)}
+    (path,) = [path for path in tmp_path.iterdir() if path.suffix == ".tif"]
+    with rasterio.open(path, "r+") as grid:
+        cells = grid.read(1)
+        lost = [grid.index(CENTRE[0] + shift, CENTRE[1] + shift) for shift in (-10.0, 10.0)]
+        (top, bottom), (left, right) = sorted(i for i, _ in lost), sorted(j for _, j in lost)
+        cells[top:bottom, left:right] = grid.nodata
+        grid.write(cells, 1)
+    (said,) = [item for item in check_study(load_study(small.path)) if item.code == "outline-no-depth"]
+    # 20 x 20 m of a circle of radius 24 m: 400 / (pi 24^2) = 22 %
+    assert said.severity == "warning" and said.message.startswith("22 %")
