@@ -9,14 +9,14 @@ import pandas as pd
 from sms_resource.workflow.cheap import cutoff_column
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.screening import kept, on_to_delivery, skinned
-from sms_resource.workflow.splits import split_tables
+from sms_resource.workflow.splits import CARRIED, split_tables
 from sms_resource.workflow.stage import Context, StageStop
 from sms_resource.workflow.state import (
     BlockState,
     ClassState,
     ProposalState,
 )
-from sms_resource.workflow.tonnage_tables import tonnage_table
+from sms_resource.workflow.tonnage_tables import tonnage_table, variable_column
 from sms_resource.workflow.worth import valued
 
 
@@ -35,7 +35,7 @@ def classify(context: Context) -> ClassState:
                 "Fill [value.metals], or cut on a metal.", file=context.study.path.name, column="cutoff.variable",
             )  # fmt: skip
         raise StageStop
-    left = kept(frame)
+    left = kept(frame[summed_columns(frame, metals, config)])
     tonnage, steps = tonnage_table(context, left, metals)
     split = split_tables(
         frame,
@@ -49,9 +49,9 @@ def classify(context: Context) -> ClassState:
     )
     skins, skin_facts = skinned(context, frame, variable, at, metals)
     waterfall = on_to_delivery(proposal.waterfall, skins, variable, at)
-    above = left[left[variable] >= at]
+    above = left.loc[left[variable] >= at, "dry_tonnes"]
     shape = shapes(frame, blocks, variable, at, metals, config)
-    context.detail = f"{above['dry_tonnes'].sum():,.0f} dry t above the cut-off"
+    context.detail = f"{above.sum():,.0f} dry t above the cut-off"
     return ClassState(
         frame=frame,
         reasons=proposal.reasons,
@@ -68,6 +68,13 @@ def classify(context: Context) -> ClassState:
             **value_tables,
         },
     )
+
+
+def summed_columns(frame: pd.DataFrame, metals: list[str], config: Any) -> list[str]:
+    """Columns that tables of tonnes are summed from; a block has a hundred others, which are dear to select from."""
+    wanted = {*CARRIED, *metals, "kept_share", "domain", "proposed_class", "value_per_dry_tonne", "equivalent",
+              *map(variable_column, (config.cutoff.variable, *config.cutoff.curves))}  # fmt: skip
+    return [name for name in frame if name in wanted]
 
 
 def by_value(left: pd.DataFrame, variable: str, steps: list[float]) -> pd.DataFrame:
