@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import os
 import sys
 from pathlib import Path
@@ -11,6 +10,14 @@ from typing import Annotated, Any, NoReturn
 import typer
 
 from sms_resource import __version__
+from sms_resource.cli.printing import (
+    Lines,
+    console_of,
+    print_findings,
+    print_guesses,
+    print_json,
+    print_summary,
+)
 
 DONE, FAULTY, USAGE, INTERRUPTED = 0, 1, 2, 130
 
@@ -66,9 +73,9 @@ def new(
     if missing:
         _fail_usage(f"no such file: {', '.join(missing)}")
     made = new_study(files, out)
-    console = _console()
+    console = console_of()
     console.print(f"Wrote {out}", highlight=False, markup=False)
-    _print_guesses(console, made.guesses)
+    print_guesses(console, made.guesses)
     if made.open_questions:
         console.print("\nTo decide before a run (each is marked in the file):", markup=False)
         for question in made.open_questions:
@@ -84,10 +91,10 @@ def check(study: StudyArgument, as_json: JsonOption = False, quiet: QuietOption 
     loaded = _load(study, as_json)
     findings = check_study(loaded)
     if as_json:
-        _print_json(findings.to_records())
+        print_json(findings.to_records())
     else:
-        console = _console()
-        _print_findings(console, findings, quiet)
+        console = console_of()
+        print_findings(console, findings, quiet)
         counts = findings.counts()
         console.print(
             f"{counts['error']} errors, {counts['warning']} warnings, {counts['note']} notes", highlight=False
@@ -150,8 +157,8 @@ def export(
         written, findings = export_results(results, out, tuple(formats or ()))
     except (FileNotFoundError, ValueError) as error:
         _fail_usage(str(error))
-    console = _console()
-    _print_findings(console, findings, quiet=False)
+    console = console_of()
+    print_findings(console, findings, quiet=False)
     for path in written:
         console.print(str(path), highlight=False, markup=False, soft_wrap=True)
 
@@ -209,8 +216,8 @@ def _run(
     if against is not None and not (against / "manifest.json").is_file():
         _fail_usage(f"{against} holds no results")
     loaded = _load(study, as_json)
-    console = _console(stderr=as_json)
-    progress = Silent() if as_json or quiet else _Lines(console)
+    console = console_of(stderr=as_json)
+    progress = Silent() if as_json or quiet else Lines(console)
     try:
         result = run_study(
             loaded, out, progress=progress, threads=threads, cache=cache, scenarios=scenarios, against=against
@@ -224,11 +231,11 @@ def _run(
     except OSError as error:
         _fail_usage(f"the results cannot be written: {error}")
     if as_json:
-        _print_json(result.findings.to_records())
+        print_json(result.findings.to_records())
     else:
-        _print_findings(console, result.findings, quiet=True)
+        print_findings(console, result.findings, quiet=True)
         if not quiet:
-            _print_summary(console, result)
+            print_summary(console, result)
     raise typer.Exit(FAULTY if result.findings.has_errors else DONE)
 
 
@@ -287,18 +294,18 @@ def _verify(results: Path, as_json: bool, quiet: bool, threads: int | None) -> N
 
     if not (results / "manifest.json").is_file():
         _fail_usage(f"{results} holds no results")
-    console = _console(stderr=as_json)
+    console = console_of(stderr=as_json)
     try:
         found = verify_results(
-            results, progress=Silent() if as_json or quiet else _Lines(console), threads=threads
+            results, progress=Silent() if as_json or quiet else Lines(console), threads=threads
         )
     except NotResultsError as error:
         _fail_usage(str(error))
     if as_json:
-        _print_json({"same": found.same, "differing": found.differing, "causes": found.causes,
+        print_json({"same": found.same, "differing": found.differing, "causes": found.causes,
                      "findings": found.findings.to_records()})  # fmt: skip
     else:
-        _print_findings(console, found.findings, quiet=True)
+        print_findings(console, found.findings, quiet=True)
         console.print(
             "The same bytes." if found.same else f"{len(found.differing)} outputs differ:", highlight=False
         )
@@ -327,108 +334,10 @@ def _load(path: Path, as_json: bool) -> Any:
 def _leave_faulty(findings: Any, as_json: bool) -> NoReturn:
     """Print the faults of a study and leave with exit 1."""
     if as_json:
-        _print_json(findings.to_records())
+        print_json(findings.to_records())
     else:
-        _print_findings(_console(stderr=True), findings, quiet=False)
+        print_findings(console_of(stderr=True), findings, quiet=False)
     raise typer.Exit(FAULTY) from None
-
-
-def _print_json(content: Any) -> None:
-    json.dump(content, sys.stdout, indent=1, ensure_ascii=False)
-    sys.stdout.write("\n")
-
-
-def _console(stderr: bool = False) -> Any:
-    from rich.console import Console
-
-    return Console(stderr=stderr, soft_wrap=False, width=None if sys.stdout.isatty() else 110)
-
-
-class _Lines:
-    """One line a stage: what it did, and how long it took."""
-
-    def __init__(self, console: Any) -> None:
-        self.console = console
-        self.status: Any = None
-
-    def started(self, name: str, label: str) -> None:
-        """Show what is under way, where a person watches."""
-        if self.console.is_terminal:
-            self.status = self.console.status(f"{label} …")
-            self.status.start()
-
-    def finished(self, name: str, seconds: float, detail: str, from_cache: bool) -> None:
-        """Print the line of the stage."""
-        if self.status is not None:
-            self.status.stop()
-            self.status = None
-        kept = " (kept from before)" if from_cache else ""
-        self.console.print(f"{name:<11}{seconds:7.2f} s  {detail}{kept}", highlight=False, markup=False)
-
-
-_STYLES = {"error": "bold red", "warning": "yellow", "note": "dim"}
-
-
-def _print_findings(console: Any, findings: Any, quiet: bool) -> None:
-    """Findings by kind; many of one kind are folded after the first few, and counted."""
-    from rich.text import Text
-
-    most = 8
-    seen: dict[tuple[str, str, str | None], int] = {}
-    for severity in ("error",) if quiet else ("error", "warning", "note"):
-        for item in findings.of(severity):
-            kind = (severity, item.code, item.file)
-            seen[kind] = seen.get(kind, 0) + 1
-            if seen[kind] > most:
-                continue
-            line = Text(f"{severity} ", style=_STYLES[severity])
-            line.append(f"[{item.code}] ", style="bold")
-            line.append(f"{item.where}: " if item.where else "")
-            line.append(item.message)
-            if item.remedy:
-                line.append(f"  -> {item.remedy}", style="cyan")
-            console.print(line, highlight=False)
-    for (severity, code, file), count in seen.items():
-        if count > most:
-            rest = f"{severity} [{code}] {file or ''}: and {count - most} more; --json lists every one"
-            console.print(rest, highlight=False, markup=False, style=_STYLES[severity])
-
-
-def _print_guesses(console: Any, guesses: Any) -> None:
-    from rich.table import Table
-
-    table = Table(title="What was guessed, and why", title_justify="left")
-    for name in ("file", "what", "guess", "because"):
-        table.add_column(name, overflow="fold")
-    for guess in guesses:
-        table.add_row(guess.file, guess.what, guess.value, guess.because)
-    console.print(table)
-
-
-def _print_summary(console: Any, result: Any) -> None:
-    from rich.table import Table
-
-    counts = result.findings.counts()
-    if result.out is None:
-        console.print(
-            f"\nNot run: {counts['error']} errors. Earlier results, if any, are as they were.",
-            style="bold red",
-        )
-        return
-    summary = result.summary
-    table = Table(title=summary.title, title_justify="left", caption=summary.caption, caption_justify="left")
-    for number, name in enumerate(summary.columns):
-        table.add_column(name, justify="left" if number == 0 else "right")
-    for row in summary.rows:
-        table.add_row(*row)
-    console.print()
-    console.print(table)
-    console.print(
-        f"Findings: {counts['error']} errors, {counts['warning']} warnings, {counts['note']} notes "
-        f"(in {result.out / 'findings.json'})",
-        highlight=False, markup=False, soft_wrap=True,
-    )  # fmt: skip
-    console.print(f"Report:   {result.out / 'report.html'}", highlight=False, markup=False, soft_wrap=True)
 
 
 def main() -> None:
@@ -445,7 +354,3 @@ def main() -> None:
     except BrokenPipeError:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         sys.exit(DONE)
-
-
-if __name__ == "__main__":
-    main()
