@@ -20,6 +20,13 @@ _LIBRARIES = (
 )  # fmt: skip
 
 
+# Formats that stand alone, and endings of what is read along with the others.
+_TABLE_ENDINGS = frozenset(
+    {".toml", ".csv", ".xlsx", ".xlsm", ".parquet", ".pq", ".json", ".geojson", ".gpkg"}
+)
+_BESIDE = frozenset({".dbf", ".shx", ".prj", ".cpg", ".hdr", ".tfw", ".tifw", ".wld", ".asw", ".agw", ".stx"})
+
+
 def versions() -> dict[str, str]:
     """Version of the package, of Python and of the libraries that make the numbers."""
     found = {"sms_resource": __version__, "python": platform.python_version()}
@@ -31,20 +38,42 @@ def versions() -> dict[str, str]:
     return found
 
 
+def companions(path: Path) -> list[Path]:
+    """Files beside a grid or a layer that its readers open with it, by name."""
+    ending = path.suffix.lower()
+    if ending in _TABLE_ENDINGS:
+        return []
+    return sorted(
+        other
+        for other in path.parent.iterdir()
+        if other != path
+        and other.is_file()
+        and (
+            (other.stem == path.stem and other.suffix.lower() in _BESIDE)
+            or (other.name.startswith(f"{path.name}.") and other.suffix.lower() in (".xml", ".msk"))
+        )
+    )
+
+
 def input_hashes(study: Study) -> dict[str, dict[str, Any]]:
-    """Hash, size and place of every input file, by role, the study itself first."""
+    """Hash, size and place of every input file, by role, the study itself first.
+
+    What stands beside a file and is read with it (attributes and system of a shapefile, world file of a raster) is an
+    input of its own, under its role and its ending.
+    """
     entries: dict[str, dict[str, Any]] = {}
     folder = study.folder.resolve()
     for role, file in {"study": study.path.name, **study.files()}.items():
         path = study.resolve(file)
         if not path.is_file():
             continue
-        entries[role] = {
-            "file": file,
-            "sha256": file_hash(path),
-            "bytes": path.stat().st_size,
-            "outside_folder": not path.is_relative_to(folder),
-        }
+        for name, part in {role: path, **{f"{role} {p.name}": p for p in companions(path)}}.items():
+            entries[name] = {
+                "file": file if part == path else (Path(file).parent / part.name).as_posix(),
+                "sha256": file_hash(part),
+                "bytes": part.stat().st_size,
+                "outside_folder": not part.is_relative_to(folder),
+            }
     return entries
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from pathlib import Path
 
 import geopandas as gpd
@@ -9,8 +10,8 @@ import pytest
 from shapely.geometry import Point
 
 from sms_resource import load_study, run_study
-from sms_resource.study import StudyError
-from sms_resource.workflow import check_study, new_study
+from sms_resource.study import Study, StudyError
+from sms_resource.workflow import Result, check_study, new_study, verify_results
 from tests.end_to_end.small_study import CENTRE, CRS, SmallStudy
 
 
@@ -182,3 +183,32 @@ def test_an_outline_over_lost_seafloor_is_found_by_check(tmp_path: Path) -> None
     (said,) = [item for item in check_study(load_study(small.path)) if item.code == "outline-no-depth"]
     # 20 x 20 m of a circle of radius 24 m: 400 / (pi 24^2) = 22 %
     assert said.severity == "warning" and said.message.startswith("22 %")
+
+
+def test_attributes_of_a_shapefile_are_inputs(tmp_path: Path) -> None:
+    """A buffer stands in the .dbf: changing it alone must not bring back what was kept with the old one."""
+    small = SmallStudy(tmp_path)
+    small.toml["data"]["exclusions"] = {"file": "zones.shp"}
+    study = load_study_with_zone(small, 1.0)
+    first = run_study(study, out=tmp_path / "results")
+    assert not first.findings.has_errors
+    inputs = json.loads((tmp_path / "results" / "manifest.json").read_text(encoding="utf-8"))["inputs"]
+    assert {"exclusions", "exclusions zones.dbf", "exclusions zones.prj"} <= set(inputs)
+    study = load_study_with_zone(small, 15.0)
+    second = run_study(study, out=None)
+    assert kept(second) < 0.8 * kept(first)
+    assert any("zones.dbf" in cause for cause in verify_results(tmp_path / "results").causes)
+
+
+def load_study_with_zone(small: SmallStudy, buffer: float) -> Study:
+    """The small study with a vent in its middle, in a shapefile; only the .dbf tells its buffer."""
+    path = small.write()
+    zone = {"name": ["v"], "status": ["active_vent"], "buffer_m": [buffer]}
+    gpd.GeoDataFrame(zone, geometry=[Point(CENTRE)], crs=CRS).to_file(small.folder / "zones.shp")
+    return load_study(path)
+
+
+def kept(result: Result) -> float:
+    """Dry tonnes that screens leave, above no cut-off."""
+    table = result.grade_tonnage
+    return float(table.loc[table["proposed_class"] == "all", "dry_tonnes"].max())
