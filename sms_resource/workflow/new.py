@@ -169,6 +169,10 @@ def _decisions(guessed: Any, questions: list[str]) -> list[str]:
     for role in ("collars", "assays", "bathymetry"):
         if role not in roles:
             questions.append(f"data.{role}: no such file was found among those given")
+    if "surface_samples" in roles and not {"collars", "assays"} & set(roles):
+        questions.append(
+            "an estimate needs holes with assays: surface samples alone give no tonnes and no grade of a body"
+        )
     known = [name for name in ("cu", "zn", "au", "ag") if name in guessed.elements]
     rest = [name for name in guessed.elements if name not in known]
     lines = [

@@ -212,3 +212,12 @@ def kept(result: Result) -> float:
     """Dry tonnes that screens leave, above no cut-off."""
     table = result.grade_tonnage
     return float(table.loc[table["proposed_class"] == "all", "dry_tonnes"].max())
+
+
+def test_new_says_that_surface_samples_alone_are_no_body(tmp_path: Path) -> None:
+    small = SmallStudy(tmp_path)
+    small.write()
+    made = new_study([tmp_path / "surface_samples.csv"], tmp_path / "new.toml")
+    assert any("surface samples alone" in question for question in made.open_questions)
+    made = new_study([tmp_path / "surface_samples.csv", tmp_path / "assays.csv"], tmp_path / "new.toml")
+    assert not any("surface samples alone" in question for question in made.open_questions)
