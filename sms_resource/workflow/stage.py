@@ -14,6 +14,7 @@ from typing import Any, Protocol
 
 from sms_resource.findings import Finding, Findings
 from sms_resource.study import Study, StudyConfig
+from sms_resource.workflow.extended import lengthened, shortened
 
 
 class Progress(Protocol):
@@ -121,6 +122,8 @@ class Stage:
         Takes a Context, returns the output of the stage (anything that can be pickled).
     reads_files : bool
         Whether the contents of the study's files are part of its key.
+    extends : str or None
+        Stage to whose frame of blocks this one adds columns; only those are kept.
     """
 
     name: str
@@ -129,6 +132,7 @@ class Stage:
     needs: tuple[str, ...]
     work: Callable[[Context], Any]
     reads_files: bool = False
+    extends: str | None = None
 
 
 @dataclass
@@ -258,15 +262,17 @@ def run_stages(
         key = stage_key(stage, view, keys, named)
         keys[stage.name] = key
         kept = store.get(key) if store is not None else None
+        base = outcome.done[stage.extends].frame if stage.extends else None
         if kept is not None:
             output, found, detail = kept
+            output = output if base is None else lengthened(output, base)
         else:
             findings = Findings()
             context = Context(view, outcome.done, findings, study, threads)
             output = _worked(stage, context)
             found, detail = tuple(findings), context.detail
             if store is not None and not findings.has_errors:
-                store.put(key, (output, found, detail))
+                store.put(key, (output if base is None else shortened(output, base), found, detail))
         seconds = time.perf_counter() - begun
         outcome.done[stage.name] = output
         outcome.findings.extend(found)

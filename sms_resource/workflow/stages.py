@@ -87,6 +87,7 @@ PROPOSE = Stage(
      "metals", "domains"),
     ("load", "composite", "density", "body", "blocks", "variograms", "estimate"),
     proposal.propose,
+    extends="estimate",
 )  # fmt: skip
 CLASSIFY = Stage(
     "classify",
@@ -94,6 +95,7 @@ CLASSIFY = Stage(
     ("screens", "cutoff", "value", "metals", "domains"),
     ("density", "body", "blocks", "propose"),
     outcome.classify,
+    extends="propose",
 )
 
 CHECK_STAGES = (LOAD, CHECK)
