@@ -158,6 +158,7 @@ _SPATIAL = {
     "grid-too-large": "The grid has more cells than are read.",
     "grid-no-position": "The grid does not say where its cells are.",
     "grid-band-missing": "The grid has no such band.",
+    "grid-uncertainty-negative": "The band of uncertainty holds values below zero.",
     "grid-unit": "The grid says that it is not in metres.",
     "grid-fill-undeclared": "Cells hold a value for no data that is not declared.",
     "grid-variable-chosen": "The file has several grids; the one named like an elevation was read.",

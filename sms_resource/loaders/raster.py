@@ -189,6 +189,14 @@ def _read_open(
         )
     values = _band(data, band)
     sigma = _band(data, uncertainty_band) if uncertainty_band is not None else None
+    if sigma is not None and (sigma < 0).any():
+        findings.error(
+            "grid-uncertainty-negative",
+            f"Band {uncertainty_band}, meant for uncertainty, holds values below zero.",
+            "Correct uncertainty_band in the study: an uncertainty is a standard error in metres.",
+            file=name,
+            column=f"band {uncertainty_band}",
+        )
     crs = parse_crs(data.crs.to_wkt() if data.crs else None)
     return RasterCells(values, data.transform, crs, sigma)
 

@@ -167,6 +167,55 @@ def _curves(config: Any) -> Iterator[Fault]:
             )  # fmt: skip
         if any(not 0 <= share <= 100 for share in shares):
             yield f"value.metals.{element}", "a recovery is outside 0 to 100 %", "Give per cent."
+    factors = config.value.costs.slope_factors
+    if any(after[0] <= before[0] for before, after in pairwise(factors)) or any(
+        item[1] <= 0 for item in factors
+    ):
+        yield (
+            "value.costs.slope_factors", "the slopes do not rise, or a factor is not above zero",
+            "List points of (slope in degrees, factor above zero) from the flattest up.",
+        )  # fmt: skip
+    if config.cutoff.variable == "equivalent" and config.value.metals:
+        yield from _equivalent(config.value)
+    for role in ("bathymetry", "base_grid"):
+        grid = getattr(config.data, role)
+        if grid is not None and grid.uncertainty_band == grid.band:
+            yield (
+                f"data.{role}.uncertainty_band", f"band {grid.band} is named as elevation and as uncertainty",
+                "Name two bands.",
+            )  # fmt: skip
+
+
+def _equivalent(value: Any) -> Iterator[Fault]:
+    """What a cut-off on an equivalent would be refused for at the end of a run."""
+    if value.equivalent_in not in value.metals:
+        yield (
+            "value.equivalent_in", f"'{value.equivalent_in}' is not among the metals of [value]",
+            f"Name one of {', '.join(value.metals)}, or give its price, recovery and payability.",
+        )  # fmt: skip
+    for name, metal in value.metals.items():
+        if metal.payable_pct == 0:
+            continue
+        recovery = (
+            metal.recovery_pct,
+            metal.recovery_by_grade,
+            metal.recovery_by_domain,
+            metal.equivalent_recovery_pct,
+        )
+        missing = [
+            what
+            for what, given in (
+                ("price", metal.price is not None),
+                ("recovery", any(item not in (None, (), [], {}) for item in recovery)),
+                ("payability", metal.payable_pct is not None),
+            )
+            if not given
+        ]
+        if missing:
+            yield (
+                f"value.metals.{name}", f"the cut-off is on an equivalent, and {name} has no {' and no '.join(missing)}",
+                f"Give what is missing (payable_pct = 0 if it is not paid), or take {name} out of [value.metals].",
+            )  # fmt: skip
 
 
 def _several(value: Any) -> tuple[float, ...]:

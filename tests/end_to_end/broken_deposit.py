@@ -374,14 +374,15 @@ BODIES = [
     ),
 ]
 
-# What is cut on must be known; this is told only when the blocks are made.
+# What is cut on must be known.
 CUTOFFS = [
     one(
         "equivalent of a metal without recovery",
         both(decide("value.metals.cu.recovery_pct", None), decide("cutoff.variable", "equivalent")),
-        "equivalent-refused",
+        "study-value",
         "study.toml",
-        None,
-        "cu_pct",
+        "[value.metals.cu]",
+        "value.metals.cu",
+        "no recovery",
     ),
 ]

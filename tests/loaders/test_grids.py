@@ -393,3 +393,10 @@ def test_files_cut_at_any_place_have_a_finding_or_a_grid(tmp_path: Path, kind: s
         (tmp_path / name).write_bytes(data[: int(len(data) * share)])
         grid, found = load(tmp_path / name)
         assert grid is not None or found.has_errors, share
+
+
+def test_a_band_below_zero_is_no_uncertainty(tmp_path: Path) -> None:
+    geotiff(tmp_path / "g.tif", np.stack([NORTH_UP, NORTH_UP]))
+    _, found = load_grid(tmp_path / "g.tif", crs=CRS, uncertainty_band=2)
+    (said,) = found.errors
+    assert (said.code, said.column) == ("grid-uncertainty-negative", "band 2")
