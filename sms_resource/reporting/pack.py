@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 
 from sms_resource.reporting.checklist import write_checklist
@@ -32,12 +31,13 @@ def write_pack(data: ReportData, folder: Path, report: Report | None = None) -> 
     folder = Path(folder)
     folder.mkdir(parents=True, exist_ok=True)
     made = report if report is not None else make_report(data, folder)
-    with ThreadPoolExecutor(1) as pool:
-        # Pages are set by a library that leaves this interpreter free; the rest is written meanwhile.
-        pages = pool.submit(write_pdf, made.document, made.pictures, folder / "report.pdf")
-        others = [
-            write_workbook(data, folder / "workbook.xlsx"),
-            *write_checklist(data, folder),
-            write_method(data, folder / "method.md"),
-        ]
-        return [pages.result(), *others]
+    return [write_pdf(made.document, made.pictures, folder / "report.pdf"), *write_forms(data, folder)]
+
+
+def write_forms(data: ReportData, folder: Path) -> list[Path]:
+    """Write the pack without its pages: workbook, checklist and method statement; return their paths."""
+    return [
+        write_workbook(data, folder / "workbook.xlsx"),
+        *write_checklist(data, folder),
+        write_method(data, folder / "method.md"),
+    ]

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
 import json
 import time
 from concurrent.futures import Executor, Future, ThreadPoolExecutor
@@ -13,11 +12,12 @@ import pandas as pd
 
 from sms_resource.findings import Findings
 from sms_resource.reporting.figures_neighbourhood import measured
-from sms_resource.reporting.pack import write_pack
-from sms_resource.reporting.reading import content
+from sms_resource.reporting.pack import write_forms
+from sms_resource.reporting.pdf import write_pdf
 from sms_resource.reporting.report import make_report
 from sms_resource.study import Study, decisions
 from sms_resource.workflow.evidence import metal_columns
+from sms_resource.workflow.kept_files import KeptFiles
 from sms_resource.workflow.layers import write_layers
 from sms_resource.workflow.manifest import versions, write_manifest
 from sms_resource.workflow.neighbourhood import recommendation
@@ -58,12 +58,26 @@ def write_results(
     begun = time.perf_counter()
     done = outcome.done
     ledger = ledger_table(study, extra)
-    with ThreadPoolExecutor(1) as pool:
+    kept = KeptFiles(store, outcome)
+    with ThreadPoolExecutor(2) as pool:
+        # The pages and the block model are written by libraries that leave this interpreter free meanwhile.
+        files = write_report_files(folder, study, outcome, inputs, ledger, extra, store, pool)
         blocks = write_tables(folder, study, done, outcome.findings, pool)
-        write_layers(folder / "layers", study, done)
+        kept.write(
+            "evidence",
+            folder,
+            ("composite", "variograms", "validate"),
+            lambda place: write_evidence(place, done),
+        )
+        kept.write(
+            "layers", folder / "layers", ("load", "composite", "body", "blocks"),
+            lambda place: write_layers(place, study, done),
+        )  # fmt: skip
+        if len(done["validate"].neighbourhood):
+            kept.write("times", folder / "measured", ("validate",), lambda place: write_times(place, done))
         ledger.to_csv(folder / "decisions.csv", index=False)
-        files = write_report_files(folder, study, outcome, inputs, ledger, extra, store)
         blocks.result()
+        files = [item.result() if isinstance(item, Future) else item for item in files]
     if extra and extra.get("scenarios") is not None:
         extra["scenarios"].to_csv(folder / "scenarios.csv", index=False)
     seconds = time.perf_counter() - begun
@@ -96,13 +110,19 @@ def block_columns(frame: pd.DataFrame, metals: list[str]) -> list[str]:
 def write_tables(
     folder: Path, study: Study, done: dict[str, Any], findings: Findings, pool: Executor
 ) -> Future[None]:
-    """Composites, grade-tonnage, variograms, validation, findings; the block model by a thread that is returned."""
+    """Tables of tonnes and findings; the block model by a thread that is returned."""
     metals = metal_columns(study.config)
     state: ClassState = done["classify"]
     frame = state.frame[block_columns(state.frame, metals)]
     writing = pool.submit(frame.to_parquet, folder / "block_model.parquet", index=False, compression="zstd")
     state.grade_tonnage.to_csv(folder / "grade_tonnage.csv", index=False)
     write_splits(folder, state.tables)
+    write_json(folder / "findings.json", findings.to_records())
+    return writing
+
+
+def write_evidence(folder: Path, done: dict[str, Any]) -> None:
+    """Composites, variograms and validation: nothing that prices or cut-offs touch."""
     composites = done["composite"].composites
     weights = done["variograms"].samples.set_index("composite_id")["declustering_weight"]
     composites = composites.assign(declustering_weight=composites["composite_id"].map(weights))
@@ -113,22 +133,12 @@ def write_tables(
     ]
     write_json(folder / "variograms.json", records)
     done["validate"].table.to_csv(folder / "validation.csv", index=False)
-    write_json(folder / "findings.json", findings.to_records())
-    return writing
 
 
-def write_times(folder: Path, done: dict[str, Any], store: StageCache | None) -> None:
+def write_times(folder: Path, done: dict[str, Any]) -> None:
     """The study of neighbourhoods with its times, which no two runs share; the manifest does not hold its hashes."""
     table = done["validate"].neighbourhood
-    if not len(table):
-        return
-    key = hashlib.sha256(b"times " + code_fingerprint().encode() + content(table)).hexdigest()
-    files = store.get(key) if store is not None else None
-    if not isinstance(files, tuple):
-        files = measured(table.drop(columns="recommendation"), recommendation(table))
-        if store is not None:
-            store.put(key, files)
-    folder.mkdir()
+    files = measured(table.drop(columns="recommendation"), recommendation(table))
     for ending, made in zip(("png", "svg", "csv"), files):
         (folder / f"neighbourhood.{ending}").write_bytes(made)
 
@@ -167,9 +177,10 @@ def write_report_files(
     inputs: dict[str, dict[str, Any]],
     ledger: pd.DataFrame,
     extra: dict[str, Any] | None,
-    store: StageCache | None = None,
-) -> list[Path]:
-    """The report, its figures and the pack that a CP takes away."""
+    store: StageCache | None,
+    pool: Executor,
+) -> list[Path | Future[Path]]:
+    """The report, its figures and the pack that a CP takes away; what a thread still writes comes as a future."""
     from sms_resource.workflow.report_data import report_data
     from sms_resource.workflow.truth import truth_page
 
@@ -181,5 +192,5 @@ def write_report_files(
     truth = truth_page(study, outcome.done)
     data = report_data(study, outcome.done, outcome.findings, ledger, manifest, truth, extra)
     report = make_report(data, folder, store, code_fingerprint())
-    write_times(folder / "measured", outcome.done, store)
-    return [*report.paths, *write_pack(data, folder, report)]
+    pages = pool.submit(write_pdf, report.document, report.pictures, folder / "report.pdf")
+    return [*report.paths, pages, *write_forms(data, folder)]
