@@ -95,6 +95,7 @@ def tracers(data: ReportData) -> Drawing | None:
                 alpha=0.65,
                 color=style.LINES[number],
                 label=style.short(name, 24),
+                rasterized=style.is_dense(len(composites)),
             )
         if (ratio > 0).any():
             axis.set_xscale("log")

@@ -72,6 +72,7 @@ def recovery(data: ReportData) -> Drawing | None:
                 alpha=0.65,
                 color=style.LINES[number],
                 label=style.short(name, 24),
+                rasterized=style.is_dense(len(composites)),
             )
         axis.set_xlabel("Recovery (%)")
         axis.set_ylabel(element_label(metal))

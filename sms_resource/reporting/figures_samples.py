@@ -148,6 +148,7 @@ def log_probability(data: ReportData) -> Drawing | None:
                 mew=0,
                 color=style.LINES[number],
                 label=f"{style.short(name, 24)} ({values.size})",
+                rasterized=style.is_dense(len(composites)),
             )
             tables.append(
                 pd.DataFrame({"metal": metal, "domain": name, "value": values, "cumulative_share": p})

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pandas as pd
@@ -12,22 +12,33 @@ from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.style import Drawing
 from sms_resource.units import element_label
 
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+
 HOLES_A_PAGE = 24
 MOST_CODES = 18
 ROCK_COLOURS = ("#8da9c4", "#c9a66b", "#7f8f6a", "#b48291", "#d8cfc0", "#5f6f7a", "#a3c1ad", "#c4b7d4")
 ROCK_HATCHES = ("", "///", "...", "xx", "", "\\\\\\", "++", "oo")
 
 
-def _bars(frame: pd.DataFrame, centres: pd.Series, left: float, width: Any) -> list[Any]:
-    """Corners of one rectangle an interval, ``width`` to the right of ``centre + left``."""
+def _bars(frame: pd.DataFrame, centres: pd.Series, left: float, width: Any) -> np.ndarray:
+    """Corners of one rectangle an interval, shape (n, 4, 2), ``width`` to the right of ``centre + left``."""
     x0 = centres.to_numpy(float) + left
     x1 = x0 + np.broadcast_to(np.asarray(width, dtype=float), x0.shape)
     y0, y1 = frame["from_m"].to_numpy(float), frame["to_m"].to_numpy(float)
-    return list(
-        np.stack(
-            [np.stack([x0, y0], 1), np.stack([x1, y0], 1), np.stack([x1, y1], 1), np.stack([x0, y1], 1)], 1
-        )
+    return np.stack(
+        [np.stack([x0, y0], 1), np.stack([x1, y0], 1), np.stack([x1, y1], 1), np.stack([x0, y1], 1)], 1
     )
+
+
+def _alike(axis: Axes, bars: np.ndarray, **look: Any) -> None:
+    """Rectangles of one look as one path: far quicker to write than one by one."""
+    from matplotlib.patches import PathPatch
+    from matplotlib.path import Path
+
+    if len(bars):
+        # Not add_patch, which looks for the limits corner by corner; they are set by the holes.
+        axis.add_artist(PathPatch(Path.make_compound_path_from_polys(bars), snap=True, **look))
 
 
 def strip_logs(data: ReportData, holes_a_page: int = HOLES_A_PAGE) -> list[Drawing]:
@@ -82,21 +93,18 @@ def strip_logs(data: ReportData, holes_a_page: int = HOLES_A_PAGE) -> list[Drawi
                 for code in codes:
                     mine = (part["code"].astype(str) == code).to_numpy()
                     if mine.any():
-                        axis.add_collection(
-                            PolyCollection(
-                                _bars(part[mine], at[mine], -0.42, 0.16),
-                                fc=ROCK_COLOURS[look[code] % 8],
-                                hatch=ROCK_HATCHES[(look[code] + look[code] // 8) % 8],
-                                ec=style.QUIET,
-                                lw=0.3,
-                            )
+                        _alike(
+                            axis,
+                            _bars(part[mine], at[mine], -0.42, 0.16),
+                            fc=ROCK_COLOURS[look[code] % 8],
+                            hatch=ROCK_HATCHES[(look[code] + look[code] // 8) % 8],
+                            ec=style.QUIET,
+                            lw=0.3,
                         )
-            axis.add_collection(
-                PolyCollection(_bars(here, centre, -0.24, 0.26), fc="none", ec=style.INK, lw=0.5)
-            )
+            _alike(axis, _bars(here, centre, -0.24, 0.26), fc="none", ec=style.INK, lw=0.5)
             if known.any():
                 cells = PolyCollection(
-                    _bars(here[known], centre[known], -0.24, 0.26),
+                    list(_bars(here[known], centre[known], -0.24, 0.26)),
                     array=here.loc[known, metal].to_numpy(float),
                     cmap=style.GRADE_MAP,
                     edgecolors="face",
@@ -112,12 +120,8 @@ def strip_logs(data: ReportData, holes_a_page: int = HOLES_A_PAGE) -> list[Drawi
             if "recovery_pct" in base:
                 at = base["hole_id"].astype(str).map(place)
                 share = np.clip(base["recovery_pct"].fillna(0.0).to_numpy(float), 0, 110) / 100.0 * 0.34
-                axis.add_collection(
-                    PolyCollection(_bars(base, at, 0.06, share), fc="#b9c3cc", ec="white", lw=0.2)
-                )
-                axis.add_collection(
-                    PolyCollection(_bars(base, at, 0.06, 0.34), fc="none", ec=style.RULE, lw=0.3)
-                )
+                _alike(axis, _bars(base, at, 0.06, share), fc="#b9c3cc", ec="white", lw=0.2)
+                _alike(axis, _bars(base, at, 0.06, 0.34), fc="none", ec=style.RULE, lw=0.3)
             deepest = float(here["to_m"].max()) if len(here) else 1.0
             for hole, x in place.items():
                 end = here.loc[here["hole_id"].astype(str) == hole, "to_m"].max()

@@ -77,7 +77,7 @@ def draw_seafloor(
         cmap="Greys_r",
         vmin=low - (0.9 if faint else 0.35),
         vmax=1.0,
-        interpolation="nearest",
+        interpolation="none",  # a vector file holds the cells as they are, not their enlargement
         zorder=0,
     )
     axes.set_xlim(window[0], window[1])

@@ -26,6 +26,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 DPI = 130
+DENSE = 1500  # points; a vector of each is slower to write and to open than the picture
 GRADE_MAP = "viridis"
 SURFACE_MAP = "cividis"
 INK = "#1f2328"
@@ -181,6 +182,11 @@ def as_csv(table: pd.DataFrame) -> str:
             texts[np.isnan(values)] = ""
             written.isetitem(number, texts)
     return str(written.to_csv(index=False, lineterminator="\n", float_format="%.10g"))
+
+
+def is_dense(points: int) -> bool:
+    """Whether so many points of a panel go into the vector file as one picture; its words and axes stay vectors."""
+    return points > DENSE
 
 
 def nice_length(span: float) -> float:
