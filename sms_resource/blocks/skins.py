@@ -12,7 +12,7 @@ import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 
 from sms_resource.blocks.body import Body
-from sms_resource.blocks.columns import plan_columns
+from sms_resource.blocks.columns import Columns, plan_columns
 from sms_resource.blocks.grid import BlockGrid
 from sms_resource.blocks.model import BlockModel
 from sms_resource.blocks.screens import dry_tonnes
@@ -77,6 +77,7 @@ def skins(
     under_cut_m: float = 0.0,
     metals: Sequence[str] = (),
     density_column: str = "dry_density_tpm3",
+    columns: Columns | None = None,
 ) -> Skins:
     """Over-cut dilution and under-cut loss: a depth times the area of the faces, not a flat percentage.
 
@@ -100,6 +101,8 @@ def skins(
         Depth of both skins (0.2 to 0.5 m is common practice, no source).
     metals : sequence of str
         Grade columns. Dry mass without a grade does not weigh in the mean grade.
+    columns : Columns, optional
+        Of :func:`plan_columns` for the same blocks, where they are at hand.
 
     Raises
     ------
@@ -115,7 +118,7 @@ def skins(
             raise ValueError(f"{name} must be a depth of at least 0 m, not {value!r}")
     per_m3 = _per_cubic_metre(frame, metals, density_column, wet=host.wet_density_tpm3 is not None)
     volume = frame["volume_m3"].to_numpy(dtype=np.float64)
-    faces, inside, outside = _over_cut(model, body, share, over_cut_m)
+    faces, inside, outside = _over_cut(model, body, columns or plan_columns(model, body), share, over_cut_m)
     exposed = np.sum(list(faces.values()), axis=0)
     lost = np.minimum(exposed * under_cut_m, volume * share)
     rock = _host_per_cubic_metre(host, per_m3, metals)
@@ -144,12 +147,11 @@ def skins(
 
 
 def _over_cut(
-    model: BlockModel, body: Body, share: Array, depth_m: float
+    model: BlockModel, body: Body, columns: Columns, share: Array, depth_m: float
 ) -> tuple[dict[str, Array], list[tuple[Array, Array]], Array]:
     """Areas of open faces; volumes over-cut of the block on each face's other side; and of the host, a block."""
     frame, grid = model.frame, model.grid
     volume = frame["volume_m3"].to_numpy(dtype=np.float64)
-    columns = plan_columns(model, body)
     area = columns.area_m2[columns.of_block]
     height = volume / np.where(area > 0, area, 1.0)
     size = grid.size

@@ -24,6 +24,7 @@ from sms_resource.workflow.target import unclassified_target
 
 def propose(context: Context) -> ProposalState:
     """Propose classes with their reasons and mark what screens take; prices and cut-offs have no part in it."""
+    from sms_resource.blocks.columns import plan_columns
     from sms_resource.classification import propose_classes
 
     config = context.config
@@ -58,6 +59,7 @@ def propose(context: Context) -> ProposalState:
         waterfall=waterfall,
         marks=marks,
         tally_label=proposal.tally_label,
+        columns=plan_columns(blocks.model, context.done["body"].body),
         tables={
             "overrides": proposal.overrides,
             "class_summary": proposal.summary,

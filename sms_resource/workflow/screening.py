@@ -136,6 +136,7 @@ def skinned(
         over_cut_m=choice.over_cut_m,
         under_cut_m=choice.under_cut_m,
         metals=metals,
+        columns=context.done["propose"].columns,
     )
     densities = {"dry_density_tpm3": host.dry_density_tpm3, "wet_density_tpm3": host.wet_density_tpm3}
     return made.table.assign(step=made.table["step"].map(SKIN_STEPS)), {"host": densities}

@@ -153,6 +153,8 @@ class ProposalState:
         One row a block, with proposed_class, class_reasons, kept_share and screened_by.
     marks : DataFrame
         The share that each screen takes of each block.
+    columns : Columns
+        Columns of blocks with their area in plan.
     """
 
     frame: pd.DataFrame
@@ -161,6 +163,7 @@ class ProposalState:
     waterfall: pd.DataFrame
     marks: pd.DataFrame
     tally_label: str
+    columns: Any = None
     tables: dict[str, pd.DataFrame] = field(default_factory=dict)
 
 
