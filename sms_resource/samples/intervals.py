@@ -65,7 +65,10 @@ def numbers(table: pd.DataFrame, column: str) -> Floats:
     """A column as a fresh float array; all NaN where the table has no such column."""
     if column not in table.columns:
         return np.full(len(table), np.nan)
-    return np.array(pd.to_numeric(table[column], errors="coerce"), dtype=np.float64)
+    values = table[column]
+    if values.dtype != np.float64:
+        values = pd.to_numeric(values, errors="coerce")
+    return np.array(values, dtype=np.float64)
 
 
 def lengths(table: pd.DataFrame) -> Floats:

@@ -112,7 +112,8 @@ def twin_report(
 
 def _compare(pairs: pd.DataFrame, composites: pd.DataFrame, metals: Sequence[str]) -> pd.DataFrame:
     rows = []
-    groups = dict(list(composites.groupby("hole_id", sort=False))) if len(pairs) else {}
+    needed = composites[[c for c in ("hole_id", "from_m", "to_m", *metals) if c in composites]]
+    groups = dict(list(needed.groupby("hole_id", sort=False))) if len(pairs) else {}
     for pair in lines(pairs):
         first, second = groups.get(pair.hole_a), groups.get(pair.hole_b)
         if first is None or second is None:
