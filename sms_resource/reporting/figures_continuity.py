@@ -40,6 +40,11 @@ def model_curve(
     return np.asarray(model.variogram(distance[:, None] * unit[None, :]), dtype=float)
 
 
+def _label(group: pd.DataFrame) -> str:
+    """What the direction of a group is called."""
+    return next((str(group[name].iloc[0]) for name in ("label", "kind") if name in group), "")
+
+
 def _panel(axis: Axes, record: VariogramRecord, group: pd.DataFrame) -> pd.DataFrame:
     kind = str(group["kind"].iloc[0]) if "kind" in group else ""
     distance = group["distance"].to_numpy(float)
@@ -47,16 +52,8 @@ def _panel(axis: Axes, record: VariogramRecord, group: pd.DataFrame) -> pd.DataF
     known = np.isfinite(distance) & np.isfinite(gamma) & (pairs > 0)
     sizes = 10 + 50 * np.sqrt(pairs[known] / max(1.0, pairs[known].max() if known.any() else 1.0))
     axis.scatter(distance[known], gamma[known], s=sizes, color=style.LINES[0], alpha=0.85, lw=0, zorder=3)
-    for x, y, count in zip(distance[known], gamma[known], pairs[known]):
-        axis.annotate(
-            f"{int(count)}",
-            (x, y),
-            xytext=(0, 5),
-            textcoords="offset points",
-            fontsize=5.8,
-            ha="center",
-            color=style.QUIET,
-        )
+    counts = [f"{int(count)}" for count in pairs[known]]
+    style.words_above(axis, distance[known], gamma[known], counts, 5, fontsize=5.8, color=style.QUIET)
     reach = float(distance[known].max()) if known.any() else 1.0
     fine = np.linspace(reach / 400, reach * 1.05, 200)
     azimuth = (
@@ -78,9 +75,7 @@ def _panel(axis: Axes, record: VariogramRecord, group: pd.DataFrame) -> pd.DataF
     top = max([float(gamma[known].max()) if known.any() else 1.0, float(total or 0.0)])
     axis.set_ylim(0, top * 1.2)
     axis.set_xlim(0, reach * 1.08)
-    axis.set_xlabel("Distance (m)")
-    label = str(group["label"].iloc[0]) if "label" in group else kind
-    axis.set_title(label.replace("_", " "), fontsize=8)
+    axis.set_title(_label(group).replace("_", " "), fontsize=8)
     return group.assign(
         model=np.interp(distance, fine, curve) if curve is not None else np.nan,
         metal=record.metal,
@@ -130,11 +125,24 @@ def variograms(data: ReportData) -> list[Drawing]:
         if not rows:
             continue
         across = max(len(groups) for _, groups in rows)
-        figure, axes = style.new_figure(3.2 * across + 0.3, 2.25 * len(rows) + 0.1, len(rows), across)
-        tables = []
-        for line, (record, groups) in zip(axes, rows):
-            for axis, group in zip(line, groups):
+        # Where every row shows the same directions, the distances stand once, below the last.
+        alike = len({tuple(_label(group) for group in groups) for _, groups in rows}) == 1
+        figure, axes = style.new_figure(
+            3.2 * across + 0.3,
+            (2.0 if alike else 2.25) * len(rows) + (0.35 if alike else 0.1),
+            len(rows),
+            across,
+            sharex="col" if alike else False,
+        )
+        tables, reach = [], [0.0] * across
+        for row, (line, (record, groups)) in enumerate(zip(axes, rows), 1):
+            for column, (axis, group) in enumerate(zip(line, groups)):
                 tables.append(_panel(axis, record, group))
+                if row == len(rows) or not alike:
+                    axis.set_xlabel("Distance (m)")
+                if alike:
+                    reach[column] = max(reach[column], axis.get_xlim()[1])
+                    axis.set_xlim(0, reach[column])
             for axis in line[len(groups) :]:
                 axis.set_axis_off()
             line[0].set_ylabel(_axis_label(record))

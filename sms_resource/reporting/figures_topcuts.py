@@ -99,6 +99,8 @@ def _counts(axis: Any, x: np.ndarray, counts: np.ndarray) -> None:
     """Round numbers of composites cut along the upper edge, where they do not run into one another."""
     span = float(x[-1] - x[0]) or 1.0
     last = np.inf
+    places: list[float] = []
+    words: list[str] = []
     for wanted in COUNTS:
         at = np.flatnonzero(counts >= wanted)
         if not len(at):
@@ -107,13 +109,11 @@ def _counts(axis: Any, x: np.ndarray, counts: np.ndarray) -> None:
         if last - place < 0.16 * span:
             continue
         last = place
-        axis.plot(
-            [place], [1.0], "|", color=style.QUIET, ms=4, transform=axis.get_xaxis_transform(), clip_on=False
-        )
-        axis.annotate(
-            f"{int(counts[at[-1]])}", (place, 1.0), xycoords=axis.get_xaxis_transform(), xytext=(0, 3),
-            textcoords="offset points", ha="center", fontsize=6, color=style.QUIET, annotation_clip=False,
-        )  # fmt: skip
+        places.append(place)
+        words.append(f"{int(counts[at[-1]])}")
+    edge = np.ones(len(places))
+    axis.plot(places, edge, "|", color=style.QUIET, ms=4, transform=axis.get_xaxis_transform(), clip_on=False)
+    style.words_above(axis, places, edge, words, 3, edge=True, fontsize=6, color=style.QUIET)
 
 
 def _legend(cuts: pd.DataFrame | None) -> list[Any]:

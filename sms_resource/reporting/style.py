@@ -152,7 +152,7 @@ def render(drawing: Drawing) -> tuple[bytes, bytes, bytes]:
 
     figure = drawing.figure
     assert figure is not None  # drawn and not yet let go
-    picture, vector = io.BytesIO(), io.BytesIO()
+    picture, vector = io.BytesIO(), io.StringIO()
     with settled(figure):
         engine = figure.get_layout_engine()
         if engine is not None:
@@ -167,7 +167,7 @@ def render(drawing: Drawing) -> tuple[bytes, bytes, bytes]:
         image.save(picture, format="png", dpi=(DPI, DPI), compress_level=3)
         FigureCanvasSVG(figure).print_svg(vector, metadata={"Date": None, "Creator": None})
     figure.dpi = DPI
-    return picture.getvalue(), vector.getvalue(), as_csv(drawing.table).encode()
+    return picture.getvalue(), vector.getvalue().encode(), as_csv(drawing.table).encode()
 
 
 def as_csv(table: pd.DataFrame) -> str:
@@ -187,6 +187,21 @@ def as_csv(table: pd.DataFrame) -> str:
 def is_dense(points: int) -> bool:
     """Whether so many points of a panel go into the vector file as one picture; its words and axes stay vectors."""
     return points > DENSE
+
+
+def words_above(
+    axes: Axes, x: Any, y: Any, words: list[str], points: float, *, edge: bool = False, **look: Any
+) -> None:
+    """Short words ``points`` above places in the data, or above the upper edge where ``y`` is a share of the height.
+
+    A text with a transform of its own is lighter than an annotation, which is placed anew each time it is asked for.
+    """
+    from matplotlib.transforms import ScaledTranslation
+
+    base = axes.get_xaxis_transform() if edge else axes.transData
+    place = base + ScaledTranslation(0, points / 72, axes.figure.dpi_scale_trans)
+    for at, height, text in zip(x, y, words):
+        axes.text(at, height, text, transform=place, ha="center", **look)
 
 
 def nice_length(span: float) -> float:
