@@ -249,11 +249,8 @@ def at_once(
     begun = time.perf_counter()
     if progress:
         progress.started("scenarios", f"{count} scenarios of value and cut-off")
-    kept = recent.get(final_key(study, files))
-    if kept is None:
-        outcome = run_stages(outcome_stages(), study, store=recent, threads=threads, files=files)
-        kept = (outcome.done["classify"],)
-    found = cheap_rows(study, [scenario.changes for scenario in scenarios], kept[0])
+    outcome = run_stages(outcome_stages(), study, store=recent, threads=threads, files=files)
+    found = cheap_rows(study, [scenario.changes for scenario in scenarios], outcome.done["classify"])
     if progress:
         detail = f"{len(found)} scenarios of value and cut-off, in one pass over the blocks"
         progress.finished("scenarios", time.perf_counter() - begun, detail, False)

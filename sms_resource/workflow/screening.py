@@ -29,7 +29,8 @@ def screened(
     Returns
     -------
     frame : DataFrame
-        With ``kept_share`` (of the block's volume in the body) and ``screened_by``.
+        With ``kept_share`` (of the block's volume in the body), ``screened_by`` and ``slope_deg`` of the seafloor
+        above it, over the footprint of a machine.
     waterfall : DataFrame
         From the whole body to what remains.
     marks : DataFrame
@@ -60,8 +61,13 @@ def screened(
     )
     context.findings.extend(found.findings)
     marks = found.blocks
+    slope = frame[["i", "j"]].merge(found.columns[["i", "j", "slope_deg"]], on=["i", "j"], how="left")
     return (
-        frame.assign(kept_share=marks["kept_share"].to_numpy(), screened_by=marks["screened_by"].to_numpy()),
+        frame.assign(
+            kept_share=marks["kept_share"].to_numpy(),
+            screened_by=marks["screened_by"].to_numpy(),
+            slope_deg=slope["slope_deg"].to_numpy(),
+        ),
         found.waterfall,
         marks,
         slope_classes(frame, found.columns),

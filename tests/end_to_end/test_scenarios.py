@@ -131,7 +131,7 @@ def test_a_scenario_is_what_a_study_file_with_that_value_gives(
 def test_rows_are_kept_and_not_run_twice(
     study: Study, store: StageCache, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    wanted = [Scenario("cut", {"cutoff.at": 5.5}, "list")]
+    wanted = [Scenario("light", {"density.factor": 0.97}, "list")]
     first = run_scenarios(study, wanted, store=store, files=hashes(study)).table
     monkeypatch.setattr("sms_resource.workflow.scenarios.run_stages", None)
     second = run_scenarios(study, wanted, store=store, files=hashes(study)).table

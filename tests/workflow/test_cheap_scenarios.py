@@ -85,7 +85,7 @@ def store(study: Study, tmp_path_factory: pytest.TempPathFactory) -> StageCache:
 
 @pytest.fixture(scope="module")
 def state(study: Study, store: StageCache) -> ClassState:
-    return store.get(final_key(study, hashes(study)))[0]
+    return run_stages(outcome_stages(), study, store=store, files=hashes(study)).done["classify"]
 
 
 def test_every_column_is_that_of_a_fresh_run_bit_for_bit(study: Study, store: StageCache) -> None:
@@ -135,8 +135,8 @@ def test_what_is_not_whole_is_left_to_the_stages_which_tell_why(study: Study, st
         {"density.factor": 1.05, "cutoff.at": 5.0},
         {"cutoff.variable": "value", "cutoff.at": 100.0},
     ]  # fmt: skip
-    kept = store.get(final_key(study, hashes(study)))[0]
-    assert set(cheap.cheap_rows(study, changes, kept)) == {5}
+    state = run_stages(outcome_stages(), study, store=store, files=hashes(study)).done["classify"]
+    assert set(cheap.cheap_rows(study, changes, state)) == {5}
     run = run_scenarios(
         study, [Scenario(str(n), c, "list") for n, c in enumerate(changes)], store=store, files=hashes(study)
     )
