@@ -12,6 +12,7 @@ from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.maps import (
     draw_boundaries,
     draw_seafloor,
+    draw_surface,
     plan_window,
     thinned,
 )
@@ -145,18 +146,10 @@ def plan_thickness(data: ReportData) -> Drawing | None:
     contacts = data.body.contacts
     for axis, (surface, label) in zip(axes[0], shown):
         draw_seafloor(axis, data, window, faint=True)
-        x, y, values = thinned(surface)
+        values = thinned(surface)[2]
         values = np.where(values > 0, values, np.nan)
-        image = axis.pcolormesh(
-            x,
-            y,
-            np.ma.masked_invalid(values),
-            cmap=style.SURFACE_MAP,
-            vmin=0,
-            shading="nearest",
-            rasterized=True,
-            zorder=2,
-        )
+        most = float(np.nanmax(values)) if np.isfinite(values).any() else 1.0
+        image = draw_surface(axis, surface, values, cmap=style.SURFACE_MAP, vmin=0, vmax=most)
         figure.colorbar(image, ax=axis, orientation="horizontal", shrink=0.8, label=label)
         draw_boundaries(axis, data)
         if has(contacts, "easting", "northing", "kind"):

@@ -7,7 +7,7 @@ import pandas as pd
 
 from sms_resource.reporting import style
 from sms_resource.reporting.data import ReportData
-from sms_resource.reporting.maps import draw_boundaries, draw_seafloor, plan_window, thinned
+from sms_resource.reporting.maps import draw_boundaries, draw_seafloor, draw_surface, plan_window, thinned
 from sms_resource.reporting.style import Drawing
 
 EDGES = (0.0, 10.0, 15.0, 20.0, 25.0, 30.0, 90.0)
@@ -32,10 +32,9 @@ def plan_slope(data: ReportData) -> Drawing | None:
     axis = axes[0, 0]
     draw_seafloor(axis, data, window, faint=True)
     x, y, values = thinned(slope)
-    image = axis.pcolormesh(
-        x, y, np.ma.masked_invalid(values), cmap=ListedColormap(list(COLOURS)), norm=BoundaryNorm(EDGES, 6), alpha=0.85,
-        shading="nearest", rasterized=True, zorder=2,
-    )  # fmt: skip
+    image = draw_surface(
+        axis, slope, cmap=ListedColormap(list(COLOURS)), norm=BoundaryNorm(EDGES, 6), alpha=0.85
+    )
     bar = figure.colorbar(image, ax=axis, orientation="horizontal", shrink=0.9, spacing="uniform")
     bar.set_label(f"Slope over {data.body.footprint_m:g} m (°)")
     bar.set_ticks(list(EDGES), labels=[f"{edge:g}" for edge in EDGES])
@@ -50,10 +49,7 @@ def plan_slope(data: ReportData) -> Drawing | None:
         ]  # what lies outside the picture has no say in its colours
         inside = shown[np.isfinite(shown)]
         most = float(np.quantile(inside, 0.98)) if inside.size else 0.0
-        image = axis.pcolormesh(
-            u, v, np.ma.masked_invalid(heights), cmap="YlOrBr", vmin=0.0,
-            vmax=max(most, 1e-3), shading="nearest", rasterized=True, zorder=2,
-        )  # fmt: skip
+        image = draw_surface(axis, rough, cmap="YlOrBr", vmin=0.0, vmax=max(most, 1e-3))
         figure.colorbar(image, ax=axis, orientation="horizontal", shrink=0.9, extend="max",
                         label=f"Roughness over {data.body.footprint_m:g} m (m)")  # fmt: skip
         draw_boundaries(axis, data)

@@ -102,6 +102,27 @@ def draw_seafloor(
         axes.clabel(lines, levels=levels[:: max(1, len(levels) // 6)], fmt="%.0f", fontsize=6, inline=True)
 
 
+def draw_surface(axes: Axes, surface: Surface, values: Any = None, **look: Any) -> Any:
+    """Cells of a surface inside the limits of the axes, which stay; ``values`` (thinned) stand in for its own.
+
+    An image: drawn in a tenth of the time of a mesh, and a vector file holds one value a cell.
+    """
+    x, y, own = thinned(surface)
+    values = own if values is None else values
+    (x0, x1), (y0, y1) = axes.get_xlim(), axes.get_ylim()
+    dx, dy = ((side[1] - side[0]) / 2 if len(side) > 1 else 0.5 for side in (x, y))
+    columns, rows = (x >= x0 - dx) & (x <= x1 + dx), (y >= y0 - dy) & (y <= y1 + dy)
+    if columns.any() and rows.any():
+        x, y, values = x[columns], y[rows], values[np.ix_(rows, columns)]
+    image = axes.imshow(
+        np.ma.masked_invalid(values), origin="lower", interpolation="none", zorder=2,
+        extent=(x[0] - dx, x[-1] + dx, y[0] - dy, y[-1] + dy), **look,
+    )  # fmt: skip
+    axes.set_xlim(x0, x1)
+    axes.set_ylim(y0, y1)
+    return image
+
+
 def draw_boundaries(axes: Axes, data: ReportData) -> list[Any]:
     """Outline of the body, and exclusion zones hatched by status; returns the handles of a legend."""
     from matplotlib.patches import Patch, PathPatch

@@ -172,6 +172,10 @@ def render(drawing: Drawing) -> tuple[bytes, bytes, bytes]:
 
 def as_csv(table: pd.DataFrame) -> str:
     """A table as CSV with ten figures; its floats are written column by column, as pandas would write them one by one."""
+    header = str(table.iloc[:0].to_csv(index=False, lineterminator="\n"))
+    if len(table) and (table.dtypes == np.float64).all() and table.notna().all(axis=None):
+        line = ",".join(["%.10g"] * table.shape[1]) + "\n"
+        return header + line * len(table) % tuple(table.to_numpy().ravel().tolist())
     written = table.copy(deep=False)
     for number, kind in enumerate(table.dtypes):
         if kind == np.float64 and len(table):
