@@ -145,8 +145,8 @@ def samples(data: ReportData) -> Iterator[Caution]:
         mean = float(composites["recovery_pct"].mean())
     bias = data.evidence.recovery_bias
     linked = (
-        bias[(bias["p_value"] < SMALL_P)]
-        if bias is not None and has(bias, "p_value", "spearman", "metal")
+        bias[(bias["p_adjusted"] < SMALL_P)]
+        if bias is not None and has(bias, "p_adjusted", "spearman", "metal")
         else None
     )
     low = np.isfinite(mean) and mean < LOW_RECOVERY_PCT
@@ -161,7 +161,7 @@ def samples(data: ReportData) -> Iterator[Caution]:
                 " Grade goes with recovery: "
                 + "; ".join(
                     f"{element_label(r['metal'])} in {r.get('domain', 'all')}: ρ {r['spearman']:+.2f}, p"
-                    f" {r['p_value']:.2g}"
+                    f" {r['p_adjusted']:.2g} for all tests together"
                     for r in linked.head(6).to_dict("records")
                 )
                 + "."

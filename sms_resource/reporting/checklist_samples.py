@@ -65,11 +65,9 @@ def recovery(data: ReportData) -> Answer:
         " under 50 %."
     )
     bias = e.recovery_bias
-    if bias is not None and has(bias, "metal", "p_value", "spearman"):
-        linked = bias[bias["p_value"] < 0.05]
-        text += (
-            f" Grade goes with recovery (p < 0.05) in {len(linked)} of {len(bias)} sets of metal and domain."
-        )
+    if bias is not None and has(bias, "metal", "p_adjusted", "spearman"):
+        linked = bias[bias["p_adjusted"] < 0.05]
+        text += f" Grade goes with recovery (adjusted p < 0.05) in {len(linked)} of {len(bias)} sets of metal and domain."
     return (
         ANSWERED,
         (

@@ -57,7 +57,7 @@ class Evidence:
     used them, in words; empty when they are kept out. ``dredges`` : as loaded. ``dredge_tracks`` : dredge_id,
     length_m, azimuth, half_length_m.
     ``surface_bias`` : metal, n, surface_mean, nearest_core_mean, top_metre_mean, ratio, ratio_low, ratio_high.
-    ``recovery_bias`` : domain, metal, n, spearman, p_value, verdict.
+    ``recovery_bias`` : domain, metal, n, spearman, p_value (of one test), p_adjusted (of all), verdict.
     ``lost_core`` : treatment, <metals> (mean grade of the blocks), composites, dry_tonnes, wet_tonnes.
     ``lost_core_composites`` : treatment, domain, <metals> (mean grade of the composites), n.
     ``lost_core_default`` : the treatment that the estimate uses.

@@ -133,6 +133,7 @@ _SUFFIXES = (
 _WORDS = {
     "n": "count",
     "p_value": "p",
+    "p_adjusted": "p, all tests together (Holm)",
     "spearman": "rank correlation",
     "dry_low": "dry, low (t/m³)",
     "dry_base": "dry, base (t/m³)",

@@ -76,10 +76,10 @@ def recovery(data: ReportData) -> Drawing | None:
             )
         axis.set_xlabel("Recovery (%)")
         axis.set_ylabel(element_label(metal))
-        if bias is not None and has(bias, "metal", "spearman", "p_value"):
+        if bias is not None and has(bias, "metal", "spearman", "p_adjusted"):
             mine = bias[bias["metal"] == metal].head(4)
             words = "\n".join(
-                f"{style.short(row.get('domain', ''), 20)}: ρ {row['spearman']:+.2f}, p {row['p_value']:.2g}"
+                f"{style.short(row.get('domain', ''), 20)}: ρ {row['spearman']:+.2f}, adjusted p {row['p_adjusted']:.2g}"
                 for row in mine.to_dict("records")
             )
             axis.set_title(words, fontsize=6)

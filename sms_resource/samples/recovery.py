@@ -13,6 +13,7 @@ from sms_resource.samples.bracket import lost_core_bracket
 from sms_resource.samples.core_length import recovered_lengths, recovered_on_pieces
 from sms_resource.samples.desurvey import HolePaths
 from sms_resource.samples.intervals import counted, cut_holes, names, numbers, overlap_pairs, valid_intervals
+from sms_resource.samples.reference_materials import holm
 
 __all__ = [
     "join_recovery",
@@ -34,6 +35,9 @@ BANDS: tuple[tuple[float, str], ...] = (
     (0.0, "missing"),
 )
 LEAST_SAMPLES = 8
+# Size of a correlation, in words, after Cohen (1988), Statistical Power Analysis, 2nd ed., p. 79-80: medium from 0.3,
+# large from 0.5.
+MEDIUM, LARGE = 0.3, 0.5
 
 
 def join_recovery(intervals: pd.DataFrame, runs: pd.DataFrame) -> pd.DataFrame:
@@ -82,16 +86,19 @@ def recovery_bias(
     samples : DataFrame
         Composites, or assays after `join_recovery`: domain (optional), recovery_pct and the metals.
     significance : float
-        p-value below which a correlation is called one.
+        Chance of calling any correlation one where there is none, over all domains and metals together.
 
     Returns
     -------
     DataFrame
-        domain, metal, n, spearman, p_value, mean_low (grade where recovery is in its lower half), mean_high, biased
-        (True where a link is seen, or cannot be excluded for want of samples), verdict in plain words.
+        domain, metal, n, spearman, p_value (of the test alone), p_adjusted (for the number of tests, by Holm's
+        step-down), mean_low (grade where recovery is in its lower half), mean_high, biased (True where a link is seen at
+        the adjusted p-value, or cannot be excluded for want of samples), verdict in plain words.
 
     Notes
     -----
+    Adjustment: Holm (1979), Scandinavian Journal of Statistics 6, 65-70.
+
     Core loss is selective, and its sign is not known beforehand: Annels & Dominy (2003), Applied Earth Science 112(3).
     """
     from scipy.stats import spearmanr
@@ -115,22 +122,41 @@ def recovery_bias(
             rows.append(
                 {
                     "domain": name, "metal": metal, "n": n, "spearman": rho, "p_value": p,
-                    "mean_low": low, "mean_high": high, "biased": not p >= significance,
-                    "verdict": _verdict(n, rho, p, significance),
+                    "mean_low": low, "mean_high": high,
                 }
             )  # fmt: skip
-    columns = ["domain", "metal", "n", "spearman", "p_value", "mean_low", "mean_high", "biased", "verdict"]
-    return pd.DataFrame(rows, columns=columns)
+    table = pd.DataFrame(
+        rows, columns=["domain", "metal", "n", "spearman", "p_value", "mean_low", "mean_high"]
+    )
+    raw = table["p_value"].to_numpy(np.float64)
+    judged, adjusted = np.isfinite(raw), np.full(len(raw), np.nan)
+    adjusted[judged] = holm(raw[judged])
+    table.insert(5, "p_adjusted", adjusted)
+    table["biased"] = ~(adjusted >= significance)
+    table["verdict"] = [
+        _verdict(n, rho, p, both, significance)
+        for n, rho, p, both in zip(table["n"], table["spearman"], raw, adjusted)
+    ]
+    return table
 
 
-def _verdict(n: int, rho: float, p: float, significance: float) -> str:
+def _verdict(n: int, rho: float, p: float, adjusted: float, significance: float) -> str:
     if not np.isfinite(rho):
         return f"cannot be judged on {n} samples"
-    if p >= significance:
-        return "no link between grade and recovery is seen"
+    if adjusted >= significance:
+        chance = " beyond what so many tests give by chance" if p < significance else ""
+        return f"no link between grade and recovery is seen{chance}"
+    size = abs(rho)
+    how, sure = (
+        ("weakly ", "may be") if size < MEDIUM else ("", "is probably" if size >= LARGE else "may well be")
+    )
     if rho > 0:
-        return "grade rises with recovery: lost core is probably poorer, and recovered grade overstates"
-    return "grade falls with recovery: lost core is probably richer, and recovered grade understates"
+        return f"grade rises {how}with recovery: lost core {sure} poorer, and recovered grade overstates{_share(size)}"
+    return f"grade falls {how}with recovery: lost core {sure} richer, and recovered grade understates{_share(size)}"
+
+
+def _share(size: float) -> str:
+    return " a little" if size < MEDIUM else ""
 
 
 def recovery_bias_findings(table: pd.DataFrame) -> Findings:
@@ -140,7 +166,7 @@ def recovery_bias_findings(table: pd.DataFrame) -> Findings:
         findings.warning(
             "recovery-bias",
             f"{row['metal']} in {row['domain']}: {row['verdict']} (rank correlation {row['spearman']:+.2f}, "
-            f"p {row['p_value']:.2g}, {row['n']} samples)",
+            f"p {row['p_adjusted']:.2g} for all tests together, {row['p_value']:.2g} alone, {row['n']} samples)",
             "Compare the treatments of lost core.",
         )
     return findings

@@ -219,7 +219,8 @@ def full_report_data(*, cells: int = 4, name: str = "Example Mound", note: str =
                     "metal": m,
                     "n": 90,
                     "spearman": 0.31,
-                    "p_value": 0.004,
+                    "p_value": 0.0004,
+                    "p_adjusted": 0.004,
                     "verdict": "grade rises with recovery",
                 }
                 for d in domains
@@ -347,8 +348,13 @@ def full_report_data(*, cells: int = 4, name: str = "Example Mound", note: str =
         roughness=Grid(x, y, 0.1 + 0.05 * np.sin(gx / 9.0) ** 2),
         footprint_m=8.0,
         slope_classes=pd.DataFrame(
-            {"slope": ["0 to 10°", "over 30°"], "area_m2": [9000.0, 400.0], "dry_tonnes": [4.4e5, 2e4],
-             "wet_tonnes": [4.7e5, 2.2e4], "share_pct": [95.7, 4.3]}
+            {
+                "slope": ["0 to 10°", "over 30°"],
+                "area_m2": [9000.0, 400.0],
+                "dry_tonnes": [4.4e5, 2e4],
+                "wet_tonnes": [4.7e5, 2.2e4],
+                "share_pct": [95.7, 4.3],
+            }
         ),
         base=Grid(x, y, base),
         thickness=Grid(x, y, np.where(inside, thick, np.nan)),

@@ -129,7 +129,7 @@ def test_triggers_that_the_full_data_do_not_meet(data):
 def test_good_evidence_lifts_the_caution(data):
     e = data.evidence
     runs = e.runs.assign(recovery_pct=95.0)
-    bias = e.recovery_bias.assign(p_value=0.5)
+    bias = e.recovery_bias.assign(p_value=0.03, p_adjusted=0.5)
     enough = e.density_by_domain.assign(n=40)
     verdicts = e.laboratory.verdicts.assign(verdict="good")
     good = replace(

@@ -95,6 +95,38 @@ def test_spearman_is_that_of_scipy() -> None:
     assert (row["spearman"], row["p_value"]) == pytest.approx((expected.statistic, expected.pvalue))
 
 
+def test_one_small_p_among_twenty_tests_is_no_link() -> None:
+    """The table of a user test: 20 tests, the least p 0.029 at a correlation of -0.09. Holm: 20 x 0.029 = 0.58."""
+    rng = np.random.default_rng(3)
+    count, metals = 590, [f"m{number}_pct" for number in range(20)]
+    recovery = rng.uniform(5, 100, count)
+    frame = pd.DataFrame({"domain": "massive", "recovery_pct": recovery})
+    for metal in metals:
+        noise = rng.normal(0, 1, count)
+        noise -= np.polyval(np.polyfit(recovery, noise, 1), recovery)
+        frame[metal] = noise - (0.0037 * recovery if metal == "m0_pct" else 0.0)
+    table = recovery_bias(frame, metals)
+    first = table[table["metal"] == "m0_pct"].iloc[0]
+    assert 0.01 < first["p_value"] < 0.05 and -0.12 < first["spearman"] < -0.07
+    assert first["p_adjusted"] == pytest.approx(min(1.0, 20 * first["p_value"]))
+    assert not first["biased"] and "richer" not in first["verdict"]
+    assert codes(recovery_bias_findings(table)) == []
+    # the same column alone is a link, and a weak one
+    alone = recovery_bias(frame, ["m0_pct"]).iloc[0]
+    assert alone["biased"] and alone["p_adjusted"] == alone["p_value"]
+    assert "weakly" in alone["verdict"] and "probably" not in alone["verdict"]
+
+
+def test_adjusted_p_values_are_those_of_statsmodels() -> None:
+    multipletests = pytest.importorskip("statsmodels.stats.multitest").multipletests
+    frame = pd.concat(
+        [biased(sign, seed).assign(domain=f"d{seed}") for seed, sign in enumerate((0, 0.1, 0.3, 0.05))]
+    )
+    table = recovery_bias(frame.assign(cu_pct=frame["zn_pct"].to_numpy()[::-1]), ["zn_pct", "cu_pct"])
+    assert table["p_adjusted"].to_numpy() == pytest.approx(multipletests(table["p_value"], method="holm")[1])
+    assert table["biased"].tolist() == (table["p_adjusted"] < 0.05).tolist()
+
+
 def test_few_samples_are_not_judged_and_count_as_possibly_biased() -> None:
     row = recovery_bias(biased(1, count=5), ["zn_pct"]).iloc[0]
     assert row["biased"] and "cannot be judged" in row["verdict"]
