@@ -17,6 +17,7 @@ def body(context: Context) -> BodyState:
 
     from sms_resource.blocks import body as room
     from sms_resource.blocks.contacts import base_contacts
+    from sms_resource.blocks.relief import roughness, slope
     from sms_resource.blocks.seafloor import prepare_seafloor
 
     data: LoadedData = context.done["load"]
@@ -66,7 +67,9 @@ def body(context: Context) -> BodyState:
     context.detail = f"{made.volume_m3:,.0f} m3"
     return BodyState(
         seafloor=seafloor, outline=outline, contacts=contacts, body=made, domains=layers,
-        facts={**facts, "outline_from": outline_from},
+        facts={**facts, "outline_from": outline_from,
+               "slope": slope(seafloor, config.seafloor.footprint_m),
+               "roughness": roughness(seafloor, config.seafloor.footprint_m)},
     )  # fmt: skip
 
 

@@ -126,6 +126,7 @@ def _subject(study: Study, done: dict[str, Any]) -> Subject:
             "value": config.cutoff.at,
             "basis": config.cutoff.basis,
             "currency": config.value.currency if config.value.metals else "",
+            "equivalent_in": element_column(config.value.equivalent_in) if config.value.metals else "",
             "date": "; ".join(sorted({m.price_date for m in config.value.metals.values() if m.price_date})),
         },
         prospects={"judged_by": prospects.by, "basis": prospects.basis} if prospects.judged else None,
@@ -208,7 +209,6 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
 
 
 def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
-    from sms_resource.blocks.relief import roughness, slope
     from sms_resource.workflow.geometry import seafloor_sigma
 
     config = study.config
@@ -219,8 +219,6 @@ def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
     volumes = {"volume_m3": made.volume_m3}
     for name, volume in zip(made.categories["category"], made.categories["volume_m3"]):
         volumes[f"{name}_m3"] = float(volume)
-    steepness: Any = slope(state.seafloor, config.seafloor.footprint_m)
-    rough: Any = roughness(state.seafloor, config.seafloor.footprint_m)
     extrapolated = 1.0 - volumes.get("drilled_m3", made.volume_m3) / made.volume_m3
     return BodyEvidence(
         seafloor=state.seafloor,
@@ -250,8 +248,8 @@ def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
         waterfall=waterfall_rows(done["classify"].waterfall, metal_columns(config)),
         sigma_seafloor_m=seafloor_sigma(state),
         sigma_seafloor_from=state.facts["sigma_from"],
-        slope=steepness,
-        roughness=rough,
+        slope=state.facts["slope"],
+        roughness=state.facts["roughness"],
         footprint_m=config.seafloor.footprint_m,
         slope_classes=done["classify"].tables["slope_classes"],
         splits={
@@ -347,7 +345,12 @@ def target_words(table: pd.DataFrame | None) -> dict[str, Any] | None:
     columns = (table[name] for name in ("quantity", "low", "high"))
     ranges = {str(name): (float(low), float(high)) for name, low, high in zip(*columns)}
     low, high = ranges.pop("dry_tonnes")
-    return {"dry_tonnes_low": low, "dry_tonnes_high": high, "grades": ranges, "basis": str(table["basis"].iloc[0])}
+    return {
+        "dry_tonnes_low": low,
+        "dry_tonnes_high": high,
+        "grades": ranges,
+        "basis": str(table["basis"].iloc[0]),
+    }
 
 
 def _value(study: Study, done: dict[str, Any], extra: dict[str, Any]) -> ValueEvidence:
