@@ -25,6 +25,7 @@ CODES: dict[str, str] = {
     "collar-off-grid": "a collar lies outside the bathymetric surface",
     "collar-shift": "collars and bathymetry differ by a common amount",
     "collar-shift-plan": "collars fit the bathymetry better after a move in plan",
+    "collar-shift-plan-open": "whether collars are off in plan cannot be told from the relief",
     "position-sigma-missing": "positions come without their uncertainty",
     "hole-end-unknown": "the log does not say how holes ended",
     "hole-end-sulphide": "holes ended in sulphide, so the base is deeper than they show",

@@ -112,67 +112,6 @@ def match_collars(
     return CollarMatch(result, float(shift), table, findings)
 
 
-def horizontal_fit(
-    collars: pd.DataFrame, seafloor: Seafloor, *, reach_m: float = 20.0, step_m: float = 1.0
-) -> pd.DataFrame:
-    """Spread of collar minus seafloor when all collars move together in plan.
-
-    Holes and bathymetry are often metres apart before they are matched. A clear minimum of the spread away from
-    zero says so; on a smooth or flat floor there is none, and nothing can be said.
-
-    Returns
-    -------
-    DataFrame
-        shift_east_m, shift_north_m, spread_m (1.4826 x median absolute deviation), median_m, collars; sorted by
-        spread, best first. The shift is what would be added to the collars.
-    """
-    x, y, z = (numbers(collars, name) for name in ("easting", "northing", "elevation"))
-    steps = np.arange(-reach_m, reach_m + step_m / 2, step_m)
-    east, north = (axis.ravel() for axis in np.meshgrid(steps, steps))
-    floor = np.asarray(
-        seafloor.sample((x[None, :] + east[:, None]).ravel(), (y[None, :] + north[:, None]).ravel())
-    ).reshape(len(east), len(x))
-    difference = z[None, :] - floor
-    count = np.isfinite(difference).sum(axis=1)
-    enough = count >= max(3, int(0.8 * len(x)))
-    difference, east, north, count = difference[enough], east[enough], north[enough], count[enough]
-    median = np.nanmedian(difference, axis=1) if len(difference) else np.empty(0)
-    spread = (
-        1.4826 * np.nanmedian(np.abs(difference - median[:, None]), axis=1)
-        if len(difference)
-        else np.empty(0)
-    )
-    table = pd.DataFrame(
-        {
-            "shift_east_m": east,
-            "shift_north_m": north,
-            "spread_m": spread,
-            "median_m": median,
-            "collars": count,
-        }
-    )
-    return table.sort_values("spread_m", kind="stable").reset_index(drop=True)
-
-
-def horizontal_fit_findings(table: pd.DataFrame) -> Findings:
-    """Warn where collars fit the bathymetry clearly better after a move in plan (`horizontal_fit`)."""
-    findings = Findings()
-    here = table.loc[(table["shift_east_m"] == 0) & (table["shift_north_m"] == 0)]
-    if table.empty or here.empty:
-        return findings
-    best, now = table.iloc[0], float(here["spread_m"].iloc[0])
-    distance = float(np.hypot(best["shift_east_m"], best["shift_north_m"]))
-    # a third less spread is more than the choice of the best of many moves gives on a rough floor
-    if distance >= 2.0 and float(best["spread_m"]) < 0.67 * now:
-        findings.warning(
-            "collar-shift-plan",
-            f"Collars fit the bathymetry better {distance:.0f} m away ({best['shift_east_m']:+.0f} m east, "
-            f"{best['shift_north_m']:+.0f} m north): the spread falls from {now:.2f} to {best['spread_m']:.2f} m",
-            "Check the datum and the navigation of both; nothing was moved.",
-        )
-    return findings
-
-
 def hole_ends(collars: pd.DataFrame) -> tuple[pd.DataFrame, Findings]:
     """How the holes ended: count, share and drilled length for sulphide, host, lost and unknown."""
     findings = Findings()

@@ -131,6 +131,7 @@ def _places(
 ) -> dict[str, pd.DataFrame]:
     """Twins and clusters of holes, positions by method, and whether collars would fit better elsewhere in plan."""
     from sms_resource.samples import position, twins
+    from sms_resource.samples.plan_shift import plan_shift
 
     data: LoadedData = context.done["load"]
     pairs = twins.twin_report(joined.collars, inside, context.config.checks.twin_distance_m, metals=metals)
@@ -138,7 +139,7 @@ def _places(
     add_findings(
         context,
         pairs.findings,
-        position.horizontal_fit_findings(position.horizontal_fit(joined.collars, data.seafloor)),
+        plan_shift(joined.collars, data.seafloor, context.config.study.seed).findings,
     )
     by_method = []
     for table, label in ((joined.collars, "collars"), (joined.surface, "surface samples")):

@@ -6,10 +6,9 @@ import numpy as np
 import pandas as pd
 import pytest
 
+from sms_resource.samples.plan_shift import horizontal_fit, plan_shift
 from sms_resource.samples.position import (
     hole_ends,
-    horizontal_fit,
-    horizontal_fit_findings,
     match_collars,
     position_table,
 )
@@ -108,9 +107,73 @@ def test_a_move_in_plan_is_found() -> None:
     best = horizontal_fit(moved, Cone(), reach_m=10.0).iloc[0]
     assert (best["shift_east_m"], best["shift_north_m"]) == pytest.approx((-6.0, 3.0), abs=1.0)
     assert best["median_m"] == pytest.approx(0.5, abs=0.3)
-    findings = horizontal_fit_findings(horizontal_fit(moved, Cone(), reach_m=10.0))
-    assert codes(findings) == ["collar-shift-plan"] and "nothing was moved" in findings[0].remedy
-    assert len(horizontal_fit_findings(horizontal_fit(frame, Cone(), reach_m=10.0))) == 0
+    found = plan_shift(moved, Cone(), 1, reach_m=10.0)
+    assert found.verdict == "shift" and found.p_value <= 0.01
+    assert codes(found.findings) == ["collar-shift-plan"] and "nothing was moved" in found.findings[0].remedy
+    assert len(plan_shift(frame, Cone(), 1, reach_m=10.0).findings) == 0
+
+
+class Flank:
+    """A plane of 0.4 with the roughness of a grid, drawn once."""
+
+    def __init__(self, seed: int, roughness_m: float = 0.3) -> None:
+        from scipy.ndimage import gaussian_filter
+
+        rough = gaussian_filter(np.random.default_rng(seed).normal(0, 1, (200, 200)), 1.5)
+        self.rough = roughness_m * rough / rough.std()
+
+    def sample(self, x: np.ndarray, y: np.ndarray) -> np.ndarray:
+        cell = tuple(np.clip(np.round(np.asarray(axis) + 100).astype(int), 0, 199) for axis in (x, y))
+        return -1600.0 - 0.4 * np.asarray(x) + self.rough[cell]
+
+
+def test_a_plane_flank_shows_no_move() -> None:
+    """14 collars that were never moved: the spread alone finds a better place nearly always, and no warning comes."""
+    tempted = 0
+    for seed in range(12):
+        floor, rng = Flank(seed), np.random.default_rng(100 + seed)
+        x, y = rng.uniform(-40, 40, (2, 14))
+        frame = pd.DataFrame(
+            {"easting": x, "northing": y, "elevation": floor.sample(x, y) + rng.normal(0, 0.5, 14)}
+        )
+        found = plan_shift(frame, floor, 1)
+        best = found.table["spread_m"].iloc[0]
+        tempted += found.verdict != "none" and best < 0.67
+        assert "collar-shift-plan" not in codes(found.findings)
+        if found.verdict != "none":
+            assert codes(found.findings) == ["collar-shift-plan-open"]
+            assert "not resolvable" in found.findings[0].message
+    assert tempted >= 6
+
+
+class Ridge:
+    """A ridge that runs north: it fixes a move east and none along itself."""
+
+    def sample(self, x: np.ndarray, y: np.ndarray) -> np.ndarray:
+        return -1600.0 + 15.0 * np.exp(-((np.asarray(x) / 25.0) ** 2)) + 0.0 * np.asarray(y)
+
+
+def test_a_ridge_fixes_no_move_along_its_strike() -> None:
+    rng = np.random.default_rng(4)
+    x, y = rng.uniform(-45, 45, (2, 30))
+    frame = pd.DataFrame(
+        {"easting": x + 6.0, "northing": y, "elevation": Ridge().sample(x, y) + rng.normal(0, 0.1, 30)}
+    )
+    found = plan_shift(frame, Ridge(), 1)
+    assert found.verdict == "not resolved" and found.p_value <= 0.01
+    assert min(found.weak_azimuth, 180.0 - found.weak_azimuth) < 5.0
+    assert codes(found.findings) == ["collar-shift-plan-open"]
+
+
+def test_the_same_seed_gives_the_same_verdict() -> None:
+    frame = drilled(0.5, 1, count=12, noise=0.4)
+    moved = frame.assign(easting=frame["easting"] + 4.0)
+    first, second = (plan_shift(moved, Cone(), 5) for _ in range(2))
+    assert (first.verdict, first.weak_sigma_m) == (
+        second.verdict,
+        second.weak_sigma_m,
+    ) or first.verdict == "none"
+    assert [item.message for item in first.findings] == [item.message for item in second.findings]
 
 
 def test_how_holes_ended() -> None:

@@ -29,6 +29,7 @@ from sms_resource.samples.assays import resolve_assays
 from sms_resource.samples.codes import CODES
 from sms_resource.samples.composites import composite
 from sms_resource.samples.desurvey import hole_paths
+from sms_resource.samples.plan_shift import plan_shift
 from tests.samples.test_composites import many_holes
 
 SOURCES = sorted(Path(room.__path__[0]).glob("*.py"))
@@ -200,7 +201,7 @@ def test_all_but_the_strip_logs_in_five_seconds() -> None:
     curves = topcut_tables.cut_curves(frame, METALS)
     topcut_tables.cut_summary(frame, study, study)
     position.position_table(match.collars, "collars")
-    position.horizontal_fit(match.collars, Flat())
+    plan_shift(match.collars, Flat(), 1)
     table = density.density_table(pieces, plain, log)
     density.fit_density(table).predict(frame["domain"])
     surface.surface_bias(points, frame, METALS, 1)
