@@ -44,6 +44,7 @@ CODES: dict[str, str] = {
     "density-few": "a domain has too few densities",
     "density-unmeasured": "a domain has no density of its own",
     "density-assigned": "densities were assigned, not measured",
+    "density-unused": "a density or porosity that the study gives came to nothing",
     "density-regression": "what the regression of density on grades rests on",
     "density-predictor": "an element cannot predict density because blocks do not carry it",
     "density-minerals": "what a density from minerals and porosity rests on",

@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
 from sms_resource.samples.intervals import names, numbers
@@ -31,6 +34,66 @@ def measured_findings(by_domain: pd.DataFrame, measured: pd.DataFrame) -> Findin
                 f"Domain {row['domain']}: {row['dry_base']:.2f} t/m3 dry in use ({row['basis']}) is {100 * off:+.0f} % off "
                 f"the mean of the {len(own)} measured there, {own.mean():.2f}",
                 "Find out which is right: dry tonnes of the domain move by as much.",
+            )
+    return findings
+
+
+def unused_findings(
+    method: str,
+    by_domain: pd.DataFrame,
+    frame: pd.DataFrame,
+    given: Mapping[str, object],
+    pores: Mapping[str, NDArray[np.float64]],
+    water_density: float,
+) -> Findings:
+    """Densities and porosities that the study gives for a domain and that came to nothing.
+
+    Parameters
+    ----------
+    method : str
+    by_domain : DataFrame
+        Of the model, before any factor.
+    frame : DataFrame
+        From `density.density_table`.
+    given, pores : mapping
+        Domain to its assigned density, and to its porosity (low, base, high).
+    water_density : float
+        Pore water, t/m3.
+    """
+    findings = Findings()
+    rows = {str(row["domain"]): row for row in by_domain.to_dict("records")}
+    domain = names(frame["domain"]) if "domain" in frame else np.empty(0, dtype=object)
+    for name in given:
+        row = rows.get(name)
+        if row is not None and not str(row["basis"]).startswith("assigned"):
+            findings.warning(
+                "density-unused",
+                f"The density that is assigned to domain {name} is not used: by the method {method.replace('_', ' ')} "
+                f"the domain has {row['dry_base']:.2f} t/m3 dry ({row['basis']})",
+                "An assigned density stands where a domain has too little of its own, or with density.method = "
+                '"assigned"; choose that, or take it out.',
+                column=f"density.assigned_dry_tpm3.{name}",
+            )
+    for name, values in pores.items():
+        row = rows.get(name)
+        if row is None or "porosity" in str(row["basis"]):
+            continue
+        solved = any(
+            "porosity" in str(basis)
+            for column in ("dry_basis", "wet_basis")
+            if column in frame
+            for basis in frame.loc[domain == name, column]
+        )
+        # water of the domain that is just what the porosity holds came from it
+        if not solved and not np.isclose(
+            float(row["water_tpm3"]), values[1] * water_density, rtol=1e-9, atol=0.0
+        ):
+            findings.warning(
+                "density-unused",
+                f"The porosity of domain {name} is not used: its water was measured, or its density needs none "
+                f"({row['basis']})",
+                'It serves density.method = "mineralogy", and samples and domains whose water is not known; take it out.',
+                column=f"density.porosity_fraction.{name}",
             )
     return findings
 

@@ -11,7 +11,7 @@ import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 
 from sms_resource.findings import Findings
-from sms_resource.samples.density_checks import density_findings, measured_findings
+from sms_resource.samples.density_checks import density_findings, measured_findings, unused_findings
 from sms_resource.samples.density_given import assigned_density, three_values
 from sms_resource.samples.density_minerals import mineral_rows
 from sms_resource.samples.density_regression import (
@@ -259,6 +259,7 @@ def fit_density(
     by_domain = pd.DataFrame(rows, columns=list(COLUMNS))
     if method != "measured_mean":
         findings.extend(measured_findings(by_domain, measured))
+    findings.extend(unused_findings(method, by_domain, frame, given, pores, water))
     for case in CASES:
         own = (factor - 1.0) * by_domain[f"dry_{case}"]
         by_domain[f"dry_{case}"] += own

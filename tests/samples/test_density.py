@@ -546,3 +546,37 @@ def test_minerals_do_not_count_as_measured_densities() -> None:
     )
     assert model.by_domain["n"].iloc[0] == 0
     assert "30 samples" in model.by_domain["basis"].iloc[0]
+
+
+@pytest.mark.parametrize("method", ["measured_mean", "regression"])
+def test_an_assigned_density_or_porosity_that_is_not_used_is_told(method: str) -> None:
+    both = pd.concat([many(), many(1, 5).assign(domain="chimney"), many(2, 2).assign(domain="cap")])
+    model = fit_density(
+        both, method, domains=["chimney", "cap", "massive"], assigned_dry_tpm3={"chimney": 1.8, "cap": 2.0},
+        porosity={"massive": 0.1, "cap": 0.3},
+    )  # fmt: skip
+    unused = [item for item in model.findings if item.code == "density-unused"]
+    assert [item.column for item in unused] == [
+        "density.assigned_dry_tpm3.chimney",  # it has five of its own
+        "density.porosity_fraction.massive",  # its water was measured
+    ]
+    assert "assigned to domain chimney is not used" in unused[0].message
+
+
+def test_what_is_used_is_not_called_unused() -> None:
+    minerals = fit_density(
+        many(),
+        "mineralogy",
+        domains=["massive"],
+        porosity={"massive": 0.1},
+        assigned_dry_tpm3={"massive": 3.0},
+    )
+    assert [item.column for item in minerals.findings if item.code == "density-unused"] == [
+        "density.assigned_dry_tpm3.massive"
+    ]
+    dry_only = many().assign(wet_density_tpm3=np.nan)
+    assert "density-unused" not in codes(fit_density(dry_only, porosity={"massive": 0.1}).findings)
+    given = fit_density(
+        many(), "assigned", domains=["massive"], assigned_dry_tpm3={"massive": 3.0}, porosity={"massive": 0.1}
+    )
+    assert "density-unused" not in codes(given.findings)
