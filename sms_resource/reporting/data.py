@@ -50,7 +50,8 @@ class Surface(Protocol):
 class Subject:
     """Who, what, where, and the decisions that change the labels of the whole report.
 
-    ``cutoff`` : ``{"variable": "cu_pct", "value": 2.0, "basis": str, "currency": str, "date": str}``.
+    ``cutoff`` : ``{"variable": "cu_pct", "value": 2.0, "basis": str, "currency": str, "date": str}``; for an
+    equivalent also ``equivalent_in``, the grade column that it is in.
     ``prospects`` : ``{"judged_by": str, "basis": str, "date": str}``; both of the first two must say something,
     or every tonnage is labelled a block-model tally.
     ``site_visit`` : ``{"who": str, "date": str, "statement": str}``.
@@ -327,7 +328,18 @@ class ReportData:
         from sms_resource.reporting.rounding import cutoff_phrase
 
         given = self.subject.cutoff or {}
-        return cutoff_phrase(given.get("variable"), given.get("value"))
+        return cutoff_phrase(given.get("variable"), given.get("value"), **self._cutoff_units())
+
+    def cutoff_label(self, variable: Any = None) -> str:
+        """What a cut-off is on with its unit, such as ``CuEq (%)``; the study's own where no variable is given."""
+        from sms_resource.reporting.rounding import cutoff_label
+
+        own = (self.subject.cutoff or {}).get("variable") or "cut-off's variable"
+        return cutoff_label(own if variable is None else variable, **self._cutoff_units())
+
+    def _cutoff_units(self) -> dict[str, str]:
+        given = self.subject.cutoff or {}
+        return {name: str(given.get(name) or "") for name in ("equivalent_in", "currency")}
 
 
 def has(frame: Frame | None, *columns: str) -> bool:

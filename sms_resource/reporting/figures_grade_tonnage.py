@@ -9,21 +9,13 @@ import pandas as pd
 
 from sms_resource.reporting import style
 from sms_resource.reporting.data import ReportData, has
-from sms_resource.reporting.elements import column_label
-from sms_resource.reporting.rounding import mass_unit
+from sms_resource.reporting.rounding import mass_unit, significant_text
 from sms_resource.reporting.style import Drawing
 from sms_resource.reporting.tonnage import whole_domain
-from sms_resource.units import column_element, element_label
+from sms_resource.units import element_label
 
 FEW = 0.01  # share of the tonnes below which a grade rests on so few blocks that it is not drawn
 SUPPORT = "#7a4fa3"
-
-
-def variable_label(variable: str, currency: str = "") -> str:
-    """Axis label of a cut-off variable: ``Cu (%)`` or words with the unit."""
-    if variable == "value_per_dry_tonne" and currency:
-        return f"net value ({currency} per dry tonne)"
-    return element_label(variable) if column_element(variable) else column_label(variable)
 
 
 def grade_tonnage(data: ReportData) -> Drawing | None:
@@ -54,9 +46,7 @@ def grade_tonnage(data: ReportData) -> Drawing | None:
         part = rows[rows["proposed_class"].astype(str) == name].sort_values("cutoff")
         curve = beside if name == "all" and has(beside, "cutoff", "support_dry_tonnes") else None
         right = _panel(axis, part, name, metals, variable, curve)
-        axis.set_xlabel(
-            f"Cut-off, {variable_label(variable, str((data.subject.cutoff or {}).get('currency') or ''))}"
-        )
+        axis.set_xlabel(f"Cut-off, {data.cutoff_label(variable)}")
         rights.append(right)
         at = (data.subject.cutoff or {}).get("value")
         if at is not None and variable == wanted:
@@ -81,7 +71,7 @@ def grade_tonnage(data: ReportData) -> Drawing | None:
         "tonnes",
         f"Tonnes and grade against cut-off ({data.tally_label})",
         "Block support, no dilution. Grades are drawn as a ratio to their value at the lowest cut-off, so that all metals "
-        "share an axis; the numbers in the panel are those values. A grade ends where less than "
+        "share an axis; the numbers over the panel are those values. A grade ends where less than "
         f"{100 * FEW:g} % of the panel's tonnes are left: it would rest on a few blocks.{words}",
         "Grade-tonnage curves, one panel for each proposed class.",
         figure,
@@ -123,10 +113,10 @@ def _panel(
     axis.set_ylim(0, most / scale * 1.08 or 1.0)
     axis.set_xlim(float(part["cutoff"].min()), float(part["cutoff"].max()))
     axis.set_ylabel(f"Dry tonnes above ({unit} dry)")
-    axis.set_title("All classes" if whole else f"{style.class_name(name)} (proposed)")
     right = axis.twinx()
     right.spines["right"].set_visible(True)
     enough = readable(part)
+    bases: list[str] = []
     for number, metal in enumerate(metals):
         start = part[metal].dropna()
         base = float(start.iloc[0]) if len(start) else 0.0
@@ -144,11 +134,17 @@ def _panel(
                 ls=(0, (1, 1.5)), label=f"{symbol} grade, change of support",
             )  # fmt: skip
         if len(start):
-            right.annotate(
-                f"{base:.3g} {words.rstrip(')')} {symbol}", (0.98, 0.96 - 0.075 * number), xycoords="axes fraction",
-                ha="right", va="top", fontsize=6.8, color=colour,
-                bbox={"facecolor": "white", "alpha": 0.75, "edgecolor": "none", "pad": 0.8},
-            )  # fmt: skip
+            bases.append(f"{significant_text(base, 3)} {words.rstrip(')')} {symbol}")
+    lines = [f"Grades at cut-off {float(part['cutoff'].min()):g}, where every ratio is 1:"] if bases else []
+    lines += [" · ".join(bases[row : row + 6]) for row in range(0, len(bases), 6)]
+    # Above the panel: inside it they would lie on the curves, and seem to belong to the end they stand at.
+    axis.annotate(
+        "\n".join(lines), (0, 1), xytext=(0, 3), xycoords="axes fraction", textcoords="offset points", ha="left",
+        va="bottom", fontsize=6.8, color=style.QUIET, linespacing=1.35,
+    )  # fmt: skip
+    axis.set_title(
+        "All classes" if whole else f"{style.class_name(name)} (proposed)", pad=5 + 10.5 * len(lines)
+    )
     right.set_ylabel("Grade above / grade at the lowest cut-off (ratio)")
     right.set_ylim(bottom=0)
     return right

@@ -114,17 +114,52 @@ def is_inferred(proposed_class: Any) -> bool:
     return str(proposed_class).strip().lower() == "inferred"
 
 
-def cutoff_phrase(variable: Any, value: Any) -> str:
-    """A cut-off in words: ``Cu ≥ 2 %``; "no cut-off" where none is given."""
-    if variable is None or value is None:
-        return "no cut-off"
+_VALUES = ("value", "value_per_dry_tonne", "net_value_per_dry_tonne")
+
+
+def cutoff_names(variable: Any, *, equivalent_in: str = "", currency: str = "") -> tuple[str, str]:
+    """Name and unit of what a cut-off is on.
+
+    Parameters
+    ----------
+    variable : str
+        A grade column, "equivalent", or a value per dry tonne.
+    equivalent_in : str
+        Grade column that an equivalent is in, such as ``cu_pct``.
+    currency : str
+
+    Examples
+    --------
+    >>> cutoff_names("cu_pct"), cutoff_names("equivalent", equivalent_in="cu_pct")
+    (('Cu', '%'), ('CuEq', '%'))
+    >>> cutoff_names("value_per_dry_tonne", currency="US$")
+    ('net value', 'US$/t dry')
+    """
     column = str(variable)
     if column_element(column):
-        name, _, unit = element_label(column).rpartition(" (")
-        return f"{name} ≥ {float(value):g} {unit.rstrip(')')}"
+        return element_label(column).rpartition(" (")[0], unit_label(column)
+    if column == "equivalent":
+        if not column_element(equivalent_in):
+            return "metal equivalent", ""
+        return f"{element_label(equivalent_in).rpartition(' (')[0]}Eq", unit_label(equivalent_in)
+    if column in _VALUES:
+        return "net value", f"{currency or 'currency'}/t dry"
     stem, _, unit = column.rpartition("_")
-    units = {"pct": "%", "gpt": "g/t"}
-    if unit in units:
-        name = {"cueq": "CuEq", "aueq": "AuEq", "zneq": "ZnEq"}.get(stem.lower(), stem.replace("_", " "))
-        return f"{name} ≥ {float(value):g} {units[unit]}"
-    return f"{column.replace('_', ' ')} ≥ {float(value):g}"
+    if unit in ("pct", "gpt"):
+        names = {"cueq": "CuEq", "aueq": "AuEq", "zneq": "ZnEq"}
+        return names.get(stem.lower(), stem.replace("_", " ")), unit_label(column)
+    return column.replace("_", " "), ""
+
+
+def cutoff_label(variable: Any, *, equivalent_in: str = "", currency: str = "") -> str:
+    """What a cut-off is on, with its unit in brackets: ``CuEq (%)``, ``net value (US$/t dry)``."""
+    name, unit = cutoff_names(variable, equivalent_in=equivalent_in, currency=currency)
+    return f"{name} ({unit})" if unit else name
+
+
+def cutoff_phrase(variable: Any, value: Any, *, equivalent_in: str = "", currency: str = "") -> str:
+    """A cut-off in words: ``Cu ≥ 2 %``, ``CuEq ≥ 2 %``; "no cut-off" where none is given."""
+    if variable is None or value is None:
+        return "no cut-off"
+    name, unit = cutoff_names(variable, equivalent_in=equivalent_in, currency=currency)
+    return f"{name} ≥ {float(value):g} {unit}".rstrip()

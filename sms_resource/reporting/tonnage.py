@@ -70,6 +70,8 @@ def tonnage_table(data: ReportData, rows: pd.DataFrame, title: str, *, first: Se
     contained = {metal: _metal_unit_of(rows, metal) for metal in metals}
     head = [*[str(name).replace("_", " ").capitalize() for name in first], "Proposed class"]
     head += [f"Dry tonnes ({unit} dry)", f"Wet tonnes ({unit} wet)"]
+    equivalent = ["equivalent"] if "equivalent" in rows and rows["equivalent"].notna().any() else []
+    head += [data.cutoff_label("equivalent").replace(" ", "\u00a0") for _ in equivalent]
     head += [element_label(metal).replace(" ", "\u00a0") for metal in metals]
     head += [
         f"{element_label(metal).rpartition(' (')[0]} contained ({contained[metal][0]} metal)"
@@ -90,7 +92,7 @@ def tonnage_table(data: ReportData, rows: pd.DataFrame, title: str, *, first: Se
         cells = [str(row[item]) for item in first] + [name]
         cells.append(significant_text(float(row["dry_tonnes"]) / scale, figures))
         cells.append(significant_text(float(row.get("wet_tonnes", float("nan"))) / scale, figures))
-        cells += [significant_text(float(row[metal]), figures) for metal in metals]
+        cells += [significant_text(float(row[metal]), figures) for metal in (*equivalent, *metals)]
         supported = metal_figures(figures, figures)
         for metal in metals:
             mass = contained_metal(row["dry_tonnes"], row[metal], metal) / contained[metal][1]

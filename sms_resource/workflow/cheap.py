@@ -11,6 +11,7 @@ from typing import Any
 
 import pandas as pd
 
+from sms_resource.reporting.rounding import cutoff_phrase
 from sms_resource.study import Study, StudyError
 from sms_resource.units import element_column
 from sms_resource.workflow.evidence import metal_columns
@@ -32,6 +33,14 @@ def cutoff_column(config: Any) -> str:
     """Block column that the cut-off is on."""
     special = {"equivalent": "equivalent", "value": "value_per_dry_tonne"}
     return special.get(config.cutoff.variable) or element_column(config.cutoff.variable)
+
+
+def cutoff_words(config: Any) -> str:
+    """The study's cut-off in words with its unit: ``CuEq ≥ 2 %``, ``net value ≥ 200 US$/t dry``."""
+    return cutoff_phrase(
+        cutoff_column(config), config.cutoff.at,
+        equivalent_in=element_column(config.value.equivalent_in), currency=config.value.currency,
+    )  # fmt: skip
 
 
 def measures_at(table: pd.DataFrame, at: float) -> Row:

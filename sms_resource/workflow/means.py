@@ -7,6 +7,8 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
+from sms_resource.workflow.splits import CARRIED
+
 
 def waterfall_rows(table: pd.DataFrame, metals: list[str]) -> pd.DataFrame:
     """Waterfall in the report's form: totals, and what each step takes (negative) or adds.
@@ -83,6 +85,40 @@ def mean_rows(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
                 row["plain_mean_with_surface"] = every.mean()
             rows.append(row)
     return pd.DataFrame(rows)
+
+
+def with_equivalent(table: pd.DataFrame, frame: pd.DataFrame) -> pd.DataFrame:
+    """The table of tonnes with the mean equivalent of what is above each cut-off, where the cut-off is on it.
+
+    Parameters
+    ----------
+    table : DataFrame
+        From ``grade_tonnage``, by class.
+    frame : DataFrame
+        The blocks, with what screens leave of them.
+
+    Returns
+    -------
+    DataFrame
+        With a column ``equivalent`` in the unit of the equivalent; rows of other variables have none.
+    """
+    from sms_resource.economics import grade_tonnage
+    from sms_resource.workflow.screening import kept
+
+    own = table[table["cutoff_variable"] == "equivalent"]
+    if "equivalent" not in frame or not len(own):
+        return table
+    columns = [*CARRIED, "kept_share", "proposed_class", "equivalent"]
+    blocks = kept(frame[[name for name in dict.fromkeys(columns) if name in frame]])
+    made = grade_tonnage(
+        blocks.rename(columns={"equivalent": "equivalent_pct"}), metals=["equivalent_pct"],
+        cutoff_variable="equivalent_pct", cutoffs=sorted(own["cutoff"].unique()),
+    )  # fmt: skip
+    means = made[["cutoff", "proposed_class", "equivalent_pct"]].rename(
+        columns={"equivalent_pct": "equivalent"}
+    )
+    means["cutoff_variable"] = "equivalent"
+    return table.merge(means, on=["cutoff_variable", "cutoff", "proposed_class"], how="left")
 
 
 def check_rows(table: pd.DataFrame) -> pd.DataFrame:

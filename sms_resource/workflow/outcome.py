@@ -6,7 +6,7 @@ from typing import Any
 
 import pandas as pd
 
-from sms_resource.workflow.cheap import cutoff_column
+from sms_resource.workflow.cheap import cutoff_column, cutoff_words
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.screening import kept, on_to_delivery, skinned
 from sms_resource.workflow.splits import CARRIED, split_tables
@@ -48,7 +48,7 @@ def classify(context: Context) -> ClassState:
         bench_m=config.screens.bench_m,
     )
     skins, skin_facts = skinned(context, frame, variable, at, metals)
-    waterfall = on_to_delivery(proposal.waterfall, skins, variable, at)
+    waterfall = on_to_delivery(proposal.waterfall, skins, cutoff_words(config))
     above = left.loc[left[variable] >= at, "dry_tonnes"]
     shape = shapes(frame, blocks, variable, at, metals, config)
     context.detail = f"{above.sum():,.0f} dry t above the cut-off"

@@ -33,6 +33,7 @@ from sms_resource.workflow.means import (
     skins_rule,
     support_rows,
     waterfall_rows,
+    with_equivalent,
 )
 from sms_resource.workflow.neighbourhood import recommendation, timeless
 from sms_resource.workflow.stage import one_domain
@@ -357,7 +358,7 @@ def _value(study: Study, done: dict[str, Any], extra: dict[str, Any]) -> ValueEv
     state: ClassState = done["classify"]
     costs = state.tables.get("cutoffs")
     return ValueEvidence(
-        grade_tonnage=state.grade_tonnage,
+        grade_tonnage=with_equivalent(state.grade_tonnage, state.frame),
         beside_support=beside_support(done, study.config),
         by_value=state.tables.get("value_against_grade"),
         mineable_shape=state.tables.get("mineable_shape"),

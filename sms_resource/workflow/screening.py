@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
-from sms_resource.units import column_element, element_column, element_label
+from sms_resource.units import element_column
 from sms_resource.workflow.stage import Context, StageStop
 from sms_resource.workflow.state import DensityState
 
@@ -190,9 +190,7 @@ def host_rock(context: Context) -> Any:
     return Host(found["dry_density_tpm3"], found["wet_density_tpm3"], grades)
 
 
-def on_to_delivery(
-    waterfall: pd.DataFrame, skins: pd.DataFrame | None, variable: str, at: float
-) -> pd.DataFrame:
+def on_to_delivery(waterfall: pd.DataFrame, skins: pd.DataFrame | None, cutoff: str) -> pd.DataFrame:
     """Go on from what no screen takes: the cut-off, then loss and dilution where the study asks for them.
 
     Parameters
@@ -201,12 +199,11 @@ def on_to_delivery(
         Of the screens; taken and remaining quantities.
     skins : DataFrame or None
         Of :func:`skinned`.
-    variable, at
-        Column and value of the cut-off.
+    cutoff : str
+        The cut-off in words.
     """
     if skins is None:
         return waterfall
-    named = element_label(variable) if column_element(variable) else variable.replace("_", " ")
     names = [str(name) for name in waterfall.columns]
     quantities = [name.removeprefix("taken_") for name in names if name.startswith("taken_")]
     left = {name: float(waterfall[f"remaining_{name}"].iloc[-1]) for name in quantities}
@@ -214,7 +211,7 @@ def on_to_delivery(
     above = steps.loc[SKIN_STEPS["cut"]].to_dict()
     taken = {
         ("below_cutoff", "below the cut-off"): {name: left[name] - above[name] for name in quantities},
-        ("above_cutoff", f"above the cut-off ({named} ≥ {at:g})"): None,
+        ("above_cutoff", f"above the cut-off ({cutoff})"): None,
         ("loss", SKIN_STEPS["loss"]): steps.loc[SKIN_STEPS["loss"]].to_dict(),
         ("dilution", SKIN_STEPS["dilution"]): (-steps.loc[SKIN_STEPS["dilution"]]).to_dict(),
         ("delivered", SKIN_STEPS["delivered"]): None,

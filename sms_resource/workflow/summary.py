@@ -5,10 +5,12 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any
 
-from sms_resource.reporting.rounding import cutoff_phrase, mass_text, significant_text
+from sms_resource.reporting.rounding import cutoff_label, mass_text, significant_text
 from sms_resource.study import Study
-from sms_resource.units import element_label
+from sms_resource.units import element_column, element_label
+from sms_resource.workflow.cheap import cutoff_words
 from sms_resource.workflow.evidence import metal_columns
+from sms_resource.workflow.means import with_equivalent
 from sms_resource.workflow.state import ClassState
 
 
@@ -31,7 +33,8 @@ def summarise(study: Study, done: dict[str, Any]) -> Summary:
     state: ClassState = done["classify"]
     metals = metal_columns(study.config)
     at = study.config.cutoff.at
-    table = state.grade_tonnage
+    table = with_equivalent(state.grade_tonnage, state.frame)
+    equivalent = ["equivalent"] if "equivalent" in table else []
     rows = []
     order = {"measured": 0, "indicated": 1, "inferred": 2, "unclassified": 3, "all": 4}
     own = table["cutoff_variable"] == state.facts["cutoff_variable"]
@@ -46,13 +49,20 @@ def summarise(study: Study, done: dict[str, Any]) -> Summary:
                 name,
                 mass_text(row["dry_tonnes"], "dry", approximate=False) + (" (approx.)" if rough else ""),
                 mass_text(row["wet_tonnes"], "wet", approximate=False),
-                *[significant_text(row[metal], 2) for metal in metals],
+                *[significant_text(row[metal], 2) for metal in (*equivalent, *metals)],
             ]
         )
-    cutoff = cutoff_phrase(state.facts["cutoff_variable"], at)
+    cutoff = cutoff_words(study.config)
+    base = element_column(study.config.value.equivalent_in)
     return Summary(
         title=f"{study.config.study.name}: {state.facts['tally_label']}, {cutoff}",
-        columns=["Proposed class", "Dry tonnes", "Wet tonnes", *[element_label(metal) for metal in metals]],
+        columns=[
+            "Proposed class",
+            "Dry tonnes",
+            "Wet tonnes",
+            *[cutoff_label("equivalent", equivalent_in=base) for _ in equivalent],
+            *[element_label(metal) for metal in metals],
+        ],
         rows=rows,
         caption="Draft for a Competent Person. Estimated, rounded; totals may not add. Classes are proposed.",
     )

@@ -59,6 +59,9 @@ def test_cutoff_phrase():
     assert cutoff_phrase("cu_pct", 2.0) == "Cu ≥ 2 %"
     assert cutoff_phrase("au_gpt", 0.5) == "Au ≥ 0.5 g/t"
     assert cutoff_phrase("cueq_pct", 1.5) == "CuEq ≥ 1.5 %"
+    assert cutoff_phrase("equivalent", 2.0, equivalent_in="cu_pct") == "CuEq ≥ 2 %"
+    assert cutoff_phrase("equivalent", 0.5, equivalent_in="au_gpt") == "AuEq ≥ 0.5 g/t"
+    assert cutoff_phrase("value_per_dry_tonne", 200.0, currency="US$") == "net value ≥ 200 US$/t dry"
     assert cutoff_phrase(None, None) == "no cut-off"
 
 
