@@ -12,6 +12,7 @@ CODES: dict[str, str] = {
     "recovery-bias": "grade and recovery go together, so the recovered core is not a fair sample",
     "recovery-low": "mean recovery of a domain is low",
     "background-zero": "lost core takes a grade of zero because the study gives no background grade",
+    "composite-cut": "composites are shorter than the assays that they are cut out of",
     "composite-none": "no composite carries a grade",
     "composite-dropped": "length was dropped by the rule for the short rest",
     "lithology-unmapped": "a logged code is not in the mapping to domains",

@@ -12,6 +12,7 @@ from sms_resource.findings import Findings
 from sms_resource.samples.core_length import recovered_lengths
 from sms_resource.samples.desurvey import HolePaths
 from sms_resource.samples.intervals import Pieces, lengths, numbers, take
+from sms_resource.samples.shared_assays import TOLD_FROM
 
 Floats = NDArray[np.float64]
 
@@ -124,6 +125,17 @@ def report_composites(
     dropped = float(audit.loc[audit["quantity"] == "length_m", "dropped"].iloc[0])
     if dropped > 0:
         findings.note("composite-dropped", f"{dropped:.2f} m were dropped as rests that are too short")
+    graded = metal_weights.to_numpy().max(axis=1, initial=0.0) > 0
+    shared = int((frame["shared_assay"].to_numpy()[graded] > 0).sum())
+    if shared >= TOLD_FROM * max(int(graded.sum()), 1) and shared:
+        usual = float(np.median(lengths(assays)))
+        findings.warning(
+            "composite-cut",
+            f"{shared} of {int(graded.sum())} composites ({100.0 * shared / graded.sum():.0f} %) are cut out of longer "
+            f"assays and repeat the grade of one beside them; half the assays are {usual:.2g} m and longer",
+            "Set composites.length_m to the length of most assays; the variogram takes those of one assay as one sample.",
+            column="composites.length_m",
+        )
     if not (metal_weights.to_numpy() > 0).any():
         findings.error(
             "composite-none",

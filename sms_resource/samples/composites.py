@@ -25,6 +25,7 @@ from sms_resource.samples.intervals import (
     valid_intervals,
 )
 from sms_resource.samples.lost_core import LostCore, Treatment, treat_lost_core
+from sms_resource.samples.shared_assays import shared_assays
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -43,7 +44,8 @@ class Composites:
     ----------
     frame : DataFrame
         composite_id, hole_id, from_m, to_m, mid_depth_m, length_m, assayed_length_m, recovered_length_m,
-        recovery_pct, domain, easting, northing, elevation (of the middle), each metal, weight.
+        recovery_pct, domain, easting, northing, elevation (of the middle), each metal, weight, shared_assay (a number
+        common to composites that were cut out of one assay; 0 for those that share none).
         A composite without an assay keeps its length and has NaN for grades.
     audit : DataFrame
         quantity, before, in_composites, dropped, difference.
@@ -186,6 +188,7 @@ def composite(
     xyz = paths.positions(names(frame["hole_id"]), frame["mid_depth_m"])
     frame["easting"], frame["northing"], frame["elevation"] = xyz.T
     frame = frame.assign(**dict(zip(metals, grade.T)), weight=metal_weight.max(axis=1, initial=0.0))
+    frame["shared_assay"] = shared_assays(np.where(kept >= 0, owner, -1), sample, assayed, count)
 
     audit = audit_table(assays, runs, first, pieces, kept >= 0, grades, recovered, metals, poor)
     keep = ~plan["dropped"].to_numpy()
@@ -194,7 +197,7 @@ def composite(
     frame.insert(0, "composite_id", frame["hole_id"].astype(str) + "-" + number.astype(str).str.zfill(3))
     order = [
         "composite_id", *INTERVAL, "mid_depth_m", "length_m", "assayed_length_m", "recovered_length_m",
-        "recovery_pct", "domain", "easting", "northing", "elevation", *metals, "weight",
+        "recovery_pct", "domain", "easting", "northing", "elevation", *metals, "weight", "shared_assay",
     ]  # fmt: skip
     metal_weights = pd.DataFrame(metal_weight[keep], columns=list(metals))
     report_composites(

@@ -220,14 +220,27 @@ def infer(
         assumed_nugget_share=choice.assumed_nugget_share,
         jackknife=choice.intervals,
     )
-    found = infer_variogram(
-        places[known],
-        part.loc[known, metal].to_numpy(dtype=float),
-        part.loc[known, "hole_id"].to_numpy(dtype=object),
-        settings,
-        weights=weights[known],
-    )
+    places, values, holes, weights = one_sample_an_assay(part[known], places[known], metal, weights[known])
+    found = infer_variogram(places, values, holes, settings, weights=weights)
     return scaled(found, choice.range_factor) if choice.range_factor != 1.0 else found
+
+
+def one_sample_an_assay(
+    part: pd.DataFrame, places: np.ndarray, metal: str, weights: np.ndarray
+) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
+    """Places, values, holes and weights with composites of one assay as one sample in their middle.
+
+    Two composites out of one assay have the same grade: as a pair they would show continuity that nobody measured.
+    """
+    from sms_resource.samples.shared_assays import one_sample_each
+
+    values, holes = part[metal].to_numpy(dtype=float), part["hole_id"].to_numpy(dtype=object)
+    group, size = one_sample_each(part["shared_assay"].to_numpy(dtype=np.int64))
+    if size.max(initial=1) == 1:
+        return places, values, holes, weights
+    first = np.unique(group, return_index=True)[1]
+    middle = np.column_stack([np.bincount(group, axis) / size for axis in places.T])
+    return middle, np.bincount(group, values) / size, holes[first], np.bincount(group, weights) / size
 
 
 def scaled(found: Any, factor: float) -> Any:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import pandas as pd
@@ -156,7 +157,9 @@ def with_cap(
         core=composites,
     )
     add_findings(context, found)
-    return pd.concat([composites, cap], ignore_index=True)
+    joined = pd.concat([composites, cap], ignore_index=True)
+    joined["shared_assay"] = joined["shared_assay"].fillna(0).astype(int)  # a surface sample is its own assay
+    return joined
 
 
 def plain_grades(context: Context, table: pd.DataFrame, label: str) -> tuple[pd.DataFrame, pd.DataFrame]:
@@ -173,7 +176,8 @@ def plain_grades(context: Context, table: pd.DataFrame, label: str) -> tuple[pd.
         label=label,
     )
     if len(table):  # a table that was not given lacks nothing
-        add_findings(context, found)
+        file = context.done["load"].files.get(label.replace(" ", "_"))
+        add_findings(context, [replace(item, file=file) for item in found])
     return frame, summary
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -41,10 +41,29 @@ class JoinedSamples:
     elements: tuple[str, ...]
 
 
+# The table that a finding of the samples room is about, by the start of its code; the room knows no files.
+TABLE_OF = (
+    ("collar-", "collars"), ("hole-end-", "collars"), ("survey-", "surveys"), ("assay-in-", "assays"),
+    ("assay-without-", "assays"), ("composite-none", "assays"), ("recovery-over-", "runs"),
+    ("density-impossible", "densities"),
+)  # fmt: skip
+
+
 def add_findings(context: Context, *found: Any) -> None:
-    """Take over findings of a room."""
+    """Take over findings of a room, with the file of the table, or the study, that each is about."""
+    files = context.done["load"].files
     for part in found:
-        context.findings.extend(part)
+        context.findings.extend(
+            item if item.file else replace(item, file=_file_of(item, files, context.study.path.name))
+            for item in part
+        )
+
+
+def _file_of(item: Any, files: dict[str, str], study: str) -> str | None:
+    if item.column and "." in item.column:  # a dotted key
+        return study
+    role = next((role for start, role in TABLE_OF if item.code.startswith(start)), "")
+    return files.get(role)
 
 
 def describe(

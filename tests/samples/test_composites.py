@@ -259,3 +259,19 @@ def test_composites_equal_a_slow_twin() -> None:
     made = composite(assays, cores, logs, paths(*names, length=41.0), metals=CU, weighting="length")
     slow = overlap_means(made.frame, assays, CU)
     assert made.frame["cu_pct"].to_numpy() == pytest.approx(slow["cu_pct"].to_numpy(), nan_ok=True)
+
+
+def test_composites_cut_out_of_one_assay_are_marked_and_told() -> None:
+    cores = [("A", 0, 7, 100.0)]
+    made = make([("A", 0, 2, 3.0), ("A", 2, 3, 4.0), ("A", 3, 4.5, 5.0), ("A", 4.5, 7, 6.0)], cores)
+    # 0-1 and 1-2 are of the first assay, 5-6 and 6-7 of the last; 4-5 rests on two
+    assert made.frame["shared_assay"].tolist() == [1, 1, 0, 0, 0, 2, 2]
+    found = [item for item in made.findings if item.code == "composite-cut"]
+    assert len(found) == 1 and "4 of 7 composites (57 %)" in found[0].message
+    fitting = make([("A", n, n + 1, 1.0 + n) for n in range(7)], cores)
+    assert not fitting.frame["shared_assay"].any() and "composite-cut" not in codes(fitting.findings)
+
+
+def test_composites_without_a_grade_share_no_assay() -> None:
+    made = make([("A", 0, 2, np.nan), ("A", 2, 3, 4.0)], [("A", 0, 3, 100.0)])
+    assert not made.frame["shared_assay"].any()
