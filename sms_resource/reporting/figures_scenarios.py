@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -16,6 +17,7 @@ from sms_resource.reporting.style import Drawing
 from sms_resource.units import column_element, element_label
 
 MOST_DECISIONS = 14
+CUT_OFF = 2.5  # times the third longest bar of a tornado
 LOW, HIGH = "#d9915b", "#6fa58f"
 
 
@@ -60,38 +62,63 @@ def tornado(data: ReportData) -> Drawing | None:
         "tornado",
         "scenarios",
         f"What moves the estimate ({data.tally_label})",
-        f"Each decision moved alone to its low (orange) and high (green) alternative; at {data.cutoff_text}.{told}",
+        f"Each decision moved alone to its low (orange) and high (green) alternative; at {data.cutoff_text}. "
+        f"Hatched bars go on beyond the axis, to the number beside them.{told}",
         "Tornado of the effect of each decision on dry tonnes, grade and metal, ranked.",
         figure,
         frame,
     )
 
 
+def _changes(row: Mapping[Any, Any]) -> list[tuple[str, str, float]]:
+    """Side, colour and change in percent of each alternative that changes something."""
+    base = float(row["base"])
+    if not math.isfinite(base) or not base:
+        return []
+    found = [
+        (side, colour, 100 * (float(row[side]) / base - 1)) for side, colour in (("low", LOW), ("high", HIGH))
+    ]
+    return [item for item in found if math.isfinite(item[2]) and abs(item[2]) >= 0.05]
+
+
+def _longest(rows: Sequence[Mapping[Any, Any]]) -> float:
+    """Length at which bars are cut off, so that one or two giants do not hide what all others do."""
+    sizes = sorted((max((abs(item[2]) for item in _changes(row)), default=0.0) for row in rows), reverse=True)
+    third = sizes[2] if len(sizes) > 2 else 0.0
+    return CUT_OFF * third if third > 0 and sizes[0] > CUT_OFF * third else math.inf
+
+
 def _bars(axis: Any, part: pd.DataFrame) -> None:
     """One measure: a bar to each side for each decision, with the alternative that it is."""
     ends: list[float] = [0.0]
-    for number, row in enumerate(part.to_dict("records")):
+    rows = part.to_dict("records")
+    longest = _longest(rows)
+    for number, row in enumerate(rows):
         y = len(part) - 1 - number
-        base = float(row["base"])
-        if not math.isfinite(base) or not base:
-            continue
-        for side, colour in (("low", LOW), ("high", HIGH)):
-            value = 100 * (float(row[side]) / base - 1)
-            if not math.isfinite(value) or abs(value) < 0.05:
-                continue
+        for side, colour, change in _changes(row):
+            value = math.copysign(min(abs(change), longest), change)
             ends.append(value)
-            axis.barh(y, value, color=colour, height=0.62)
+            cut = abs(change) > longest
+            axis.barh(
+                y, value, color=colour, height=0.62, hatch="////" if cut else None, edgecolor="white", lw=0
+            )
             said = row.get(f"{side}_label")
-            if isinstance(said, str) and said != "base":
+            words = said.strip('"').replace("_", " ") if isinstance(said, str) and said != "base" else ""
+            text = (
+                f"{style.short(words, 14)}: {change:+.0f} %".replace("-", "\u2212")
+                if cut
+                else style.short(words, 20)
+            )
+            if text:
                 axis.annotate(
-                    style.short(said.strip('"').replace("_", " "), 20), (value, y),
+                    text, (value, y),
                     xytext=(3 if value >= 0 else -3, 0), textcoords="offset points", va="center",
                     ha="left" if value >= 0 else "right", fontsize=6.2,
                 )  # fmt: skip
     axis.axvline(0, color=style.INK, lw=0.9)
     # Room for the words beside the bars, on the side that has any.
     low, high = min(ends), max(ends)
-    room = 0.45 * max(high - low, 1e-6)
+    room = (1.0 if math.isfinite(longest) else 0.45) * max(high - low, 1e-6)
     axis.set_xlim(low - (room if low < 0 else 0.1 * room), high + (room if high > 0 else 0.1 * room))
 
 
