@@ -216,6 +216,7 @@ def _run(
     if against is not None and not (against / "manifest.json").is_file():
         _fail_usage(f"{against} holds no results")
     loaded = _load(study, as_json)
+    _warn_of_cache(cache)
     console = console_of(stderr=as_json)
     progress = Silent() if as_json or quiet else Lines(console)
     try:
@@ -268,18 +269,21 @@ def view(
     """Open the seafloor, the blocks above a cut-off and the holes in a window."""
     from sms_resource.workflow import view_results
 
-    message = view_results(
-        results,
-        screenshot=screenshot,
-        variable=variable,
-        cutoff=cutoff,
-        exaggeration=exaggeration,
-        colour=colour,
-        section=section,
-        frame=frame,
-        screened=screens,
-        **({"hide": tuple(hide)} if hide else {}),
-    )
+    try:
+        message = view_results(
+            results,
+            screenshot=screenshot,
+            variable=variable,
+            cutoff=cutoff,
+            exaggeration=exaggeration,
+            colour=colour,
+            section=section,
+            frame=frame,
+            screened=screens,
+            **({"hide": tuple(hide)} if hide else {}),
+        )
+    except FileNotFoundError as error:
+        _fail_usage(str(error))
     if message:
         typer.echo(message, err=True)
         raise typer.Exit(FAULTY)
@@ -314,6 +318,14 @@ def _verify(results: Path, as_json: bool, quiet: bool, threads: int | None) -> N
         for cause in found.causes:
             console.print(f"  {cause}", highlight=False, markup=False)
     raise typer.Exit(DONE if found.same else FAULTY)
+
+
+def _warn_of_cache(used: bool) -> None:
+    """One line where the limit of the cache cannot be read: the run goes on with the usual one."""
+    from sms_resource.cache import DEFAULT_LIMIT_BYTES, limit_fault
+
+    if used and limit_fault():
+        typer.echo(f"sms-resource: {limit_fault()}; {DEFAULT_LIMIT_BYTES / 1e9:g} GB is taken", err=True)
 
 
 def _fail_usage(message: str) -> NoReturn:

@@ -19,6 +19,8 @@ from sms_resource.loaders.words import STATUS_WORDS, plain_word
 if TYPE_CHECKING:
     import geopandas as gpd
 
+# Heights of a chimney that are doubted and refused (common practice, no source; chimneys stand 2 to 18 m as a rule).
+TALL_CHIMNEY_M, TALLEST_CHIMNEY_M = 60.0, 300.0
 CLASSES = ("measured", "indicated", "inferred", "unclassified")
 
 
@@ -94,8 +96,8 @@ def load_chimneys(
     Returns
     -------
     chimneys : GeoDataFrame or None
-        name, height_m (above zero), geometry (polygons, 2D), source_row. A polygon without a height above zero is
-        an error and is left out.
+        name, height_m (above zero), geometry (polygons, 2D), source_row. A polygon without a height above zero, or
+        higher than 300 m, is an error and is left out.
     findings : Findings
     """
     findings = Findings()
@@ -120,6 +122,17 @@ def load_chimneys(
         findings, "error", "chimney-without-height", rows[~high],
         "The chimney has no height above zero.", "Give each its height in metres.", file=name, column=header,
     )  # fmt: skip
+    for severity, code, wrong in (
+        ("error", "chimney-too-high", height > TALLEST_CHIMNEY_M),
+        ("warning", "chimney-high", (height > TALL_CHIMNEY_M) & (height <= TALLEST_CHIMNEY_M)),
+    ):
+        limit = TALLEST_CHIMNEY_M if severity == "error" else TALL_CHIMNEY_M
+        report_rows(
+            findings, severity, code, rows[wrong],  # type: ignore[arg-type]
+            [f"The chimney is {value:g} m high, above {limit:g} m." for value in height[wrong]],
+            "Give its height above the seafloor in metres, not its depth or elevation.", file=name, column=header,
+        )  # fmt: skip
+    high &= height <= TALLEST_CHIMNEY_M
     out = frame[["geometry", "source_row"]]
     out["name"] = frame[found["name"]].fillna("").astype(str).to_numpy() if "name" in found else ""
     out["height_m"] = height

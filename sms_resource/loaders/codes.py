@@ -175,6 +175,8 @@ _SPATIAL = {
     "xyz-duplicate-node": "A node of the grid has two values.",
     "xyz-sparse": "Few nodes of the grid have a value.",
     "chimney-not-polygon": "A chimney is not a polygon.",
+    "chimney-too-high": "A chimney is higher than any can be.",
+    "chimney-high": "A chimney is higher than is believed.",
     "chimney-without-height": "A chimney has no height above zero.",
     "layer-reprojected": "The layer was brought into the study's coordinate system.",
     "geometry-empty": "A record has no shape, or one that is not finite.",

@@ -21,7 +21,6 @@ CODES: dict[str, str] = {
     "scenario-invalid": "The list of scenarios holds one that cannot be.",
     "stage-refused": "A stage cannot work with a value that the study or its data give it.",
     "top-cut-not-applied": "The study gives top cuts and does not apply them.",
-    "top-cut-proposed": "Top cuts that the tool proposes were applied.",
     "truth-unreadable": "The known truth of an invented deposit cannot be read.",
     "validation-flag": "A check of the estimate is outside its limit.",
 }

@@ -39,7 +39,9 @@ def variograms(context: Context) -> VariogramState:
     for domain in config.domains.sulphide:
         chosen = (samples["domain"] == domain).to_numpy()
         part = samples[chosen]
-        if not chosen.any() and domain not in config.domains.codes.values():
+        chimney = config.chimneys.source != "none" and domain == config.chimneys.domain
+        shape_alone = chimney or domain not in config.domains.codes.values()
+        if shape_alone and not part[metals].notna().any(axis=None):
             context.findings.warning(
                 "domain-without-samples",
                 f"domain '{domain}' comes from its shape alone and has no sample: its tonnes have no grade, and a block "
@@ -55,7 +57,9 @@ def variograms(context: Context) -> VariogramState:
             if not known.any():
                 context.findings.error(
                     "no-composites", f"domain '{domain}' has no {metal} sample",
-                    f"Take {metal.partition('_')[0]} out of metals.estimate, or the domain out of domains.sulphide.",
+                    f"Take {metal.partition('_')[0]} out of metals.estimate, or "
+                    + ("its code out of domains.codes: chimneys then have tonnes and no grade." if chimney
+                       else "the domain out of domains.sulphide."),
                     file=context.study.path.name,
                 )  # fmt: skip
                 continue

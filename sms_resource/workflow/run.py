@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 from sms_resource.findings import Findings
 from sms_resource.study import Study, StudyError
 from sms_resource.workflow.folder import ResultFolder
+from sms_resource.workflow.foresight import override_faults, scenario_faults
 from sms_resource.workflow.manifest import input_hashes
 from sms_resource.workflow.stage import Outcome, Progress, StageCache, run_stages
 
@@ -68,7 +69,10 @@ def check_study(study: Study) -> Findings:
     """
     from sms_resource.workflow.stages import CHECK_STAGES
 
-    return run_stages(CHECK_STAGES, study, keep_on=True).findings
+    findings = run_stages(CHECK_STAGES, study, keep_on=True).findings
+    findings.extend(override_faults(study))
+    findings.extend(scenario_faults(study))
+    return findings
 
 
 def default_cache() -> StageCache | None:
@@ -119,7 +123,7 @@ def run_study(
     NotResultsError
         If ``out`` holds something that is not a result.
     StudyError
-        If the study's list of scenarios holds one that cannot be.
+        If the study's list of scenarios holds one that cannot be, or a polygon sets a class that is not allowed.
     """
     from sms_resource.workflow.stages import ESTIMATE_STAGES
 
@@ -133,10 +137,11 @@ def run_study(
             ESTIMATE_STAGES, study, progress=progress, store=store, threads=threads, files=hashes
         )
 
+    early = override_faults(study)  # told before anything is run
     if scenarios:
-        from sms_resource.workflow.scenarios import scenario_list
-
-        scenario_list(study)  # a list that cannot be run is told before anything is
+        early.extend(scenario_faults(study))
+    if early.has_errors:
+        raise StudyError(early)
     if out is None:
         return _result(study, stages(), None)
     with ResultFolder(out) as folder:

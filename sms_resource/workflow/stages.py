@@ -51,7 +51,7 @@ BLOCKS = Stage("blocks", "Filling the blocks", ("blocks", "domains"), ("composit
 VARIOGRAMS = Stage(
     "variograms",
     "Inferring continuity",
-    ("variograms", "top_cuts", *_SAMPLES),
+    ("variograms", "top_cuts", "chimneys", *_SAMPLES),
     ("composite", "body", "blocks"),
     continuity.variograms,
 )

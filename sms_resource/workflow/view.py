@@ -23,10 +23,17 @@ def view_results(
     -------
     str or None
         What is wrong, and what to do, where nothing could be shown.
+
+    Raises
+    ------
+    FileNotFoundError
+        If the folder holds no results.
     """
     recover(Path(folder).absolute())
     if not is_results(Path(folder)):
-        return f"{folder} holds no results. Make them with: sms-resource run STUDY --out {folder}"
+        raise FileNotFoundError(
+            f"{folder} holds no results. Make them with: sms-resource run STUDY --out {folder}"
+        )
     from sms_resource.viewer import ViewerUnavailable, open_scene
 
     try:

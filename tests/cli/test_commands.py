@@ -9,7 +9,9 @@ import sys
 import time
 from pathlib import Path
 
+import geopandas as gpd
 import pytest
+import shapely
 from typer.testing import CliRunner, Result
 
 from sms_resource import __version__
@@ -17,7 +19,7 @@ from sms_resource.cli import app
 from sms_resource.workflow.folder import ResultFolder
 from tests.end_to_end.conftest import command
 from tests.end_to_end.places import tree
-from tests.end_to_end.small_study import SmallStudy
+from tests.end_to_end.small_study import CRS, SOUTH, WEST, SmallStudy
 
 DEMO = Path(__file__).parents[2] / "demo_deposit"
 
@@ -169,9 +171,48 @@ def test_verify_and_against_need_results(study: SmallStudy, tmp_path: Path) -> N
 
 
 def test_view_of_no_results_is_told(tmp_path: Path) -> None:
-    done = call("view", tmp_path / "nowhere")
-    assert done.exit_code in (1, 2)
-    assert "nowhere" in done.output
+    for command_name in ("view", "export"):  # wrong usage, and the same for both
+        done = call(command_name, tmp_path / "nowhere")
+        assert done.exit_code == 2
+        assert "nowhere holds no results" in done.output.replace("\n", "")
+
+
+def test_a_limit_of_the_cache_that_is_no_number_is_told_by_a_run(
+    study: SmallStudy, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setenv("SMS_RESOURCE_CACHE_GB", "lots")
+    (tmp_path / "file").write_text("x")  # stops the run before it starts
+    done = call("run", study.path, "--out", tmp_path / "file" / "results")
+    said = [line for line in done.stderr.splitlines() if "SMS_RESOURCE_CACHE_GB" in line]
+    assert said == [
+        "sms-resource: SMS_RESOURCE_CACHE_GB is 'lots'; a number of gigabytes, zero or more, was wanted; 2 GB is taken"
+    ]
+    quiet = call("run", study.path, "--out", tmp_path / "file" / "results", "--no-cache")
+    assert "SMS_RESOURCE_CACHE_GB" not in quiet.stderr
+
+
+def test_check_sees_scenarios_and_overrides_that_a_run_refuses(study: SmallStudy) -> None:
+    study.toml["scenarios"] = {"ledger": False, "single": [{"label": "a", "change": {"density.faktor": 1.1}}]}
+    study.toml["data"]["class_overrides"] = {"file": "overrides.gpkg"}
+    columns = {"class": ["Inferred", "Measured"], "reason": ["x", "y"], "by": ["A. Person"] * 2}
+    square = shapely.box(WEST, SOUTH, WEST + 30.0, SOUTH + 30.0)
+    study.after.append(
+        lambda folder: gpd.GeoDataFrame(columns, geometry=[square] * 2, crs=CRS).to_file(
+            folder / "overrides.gpkg"
+        )
+    )
+    path = study.write()
+    done = call("check", path, "--json")
+    assert done.exit_code == 1
+    errors = [item for item in json.loads(done.stdout) if item["severity"] == "error"]
+    assert [(item["code"], item["file"], item["row"]) for item in errors] == [
+        ("class-override-refused", "overrides.gpkg", 3),
+        ("scenario-invalid", "study.toml", None),
+    ]
+    # a run without scenarios asks for the overrides alone, before its first stage
+    done = call("run", path, "--json", "--out", path.parent / "results")
+    assert done.exit_code == 1
+    assert [item["code"] for item in json.loads(done.stdout)] == ["class-override-refused"]
 
 
 def test_the_cache_is_shown_and_cleared(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:

@@ -135,13 +135,16 @@ def test_chimneys_keep_their_height(tmp_path: Path) -> None:
     [
         ([7.5, None], "chimney-without-height", 3),
         ([0.0, 2.0], "chimney-without-height", 2),
+        ([7.5, 1e6], "chimney-too-high", 3),
+        ([61.0, 7.5], "chimney-high", 2),
         (["7.5", "tall"], "not-a-number", 3),
     ],
 )
 def test_a_chimney_without_a_height_is_named(tmp_path: Path, heights: list[Any], code: str, row: int) -> None:
     path = save(tmp_path / "c.gpkg", [SQUARE, SQUARE], height_m=heights)
     _, found = load_chimneys(path, crs=CRS)
-    assert (code, row, "height_m") in [(item.code, item.row, item.column) for item in found.errors]
+    assert (code, row, "height_m") in [(item.code, item.row, item.column) for item in found]
+    assert bool(found.errors) == (code != "chimney-high")
 
 
 def test_chimneys_that_are_no_polygons_or_have_no_column(tmp_path: Path) -> None:

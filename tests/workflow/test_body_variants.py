@@ -187,6 +187,34 @@ def test_chimneys_are_a_light_domain_on_top(tmp_path: Path, source: str) -> None
     assert (share[~near] < 1e-9).all()
 
 
+@pytest.mark.parametrize("graded", [(), ("cu_pct",)], ids=["no core", "copper alone"])
+def test_a_logged_chimney_without_grades_has_tonnes_or_a_remedy_that_can_be_taken(
+    tmp_path: Path, graded: tuple[str, ...]
+) -> None:
+    """A code is mapped to chimneys: without core of it the run goes on; with one metal the remedy keeps the rule."""
+
+    def logged(study: SmallStudy) -> None:
+        study.toml["domains"]["codes"] = {"CH": "chimney", **study.toml["domains"]["codes"]}
+        if graded:
+            for row in study.rows["lithology"]:
+                row["code"] = "CH" if row["code"] == "CP" else row["code"]
+            for row in study.rows["assays"]:
+                if row["from_m"] < 2:
+                    row.update(dict.fromkeys(("zn_pct", "au_gpt", "ag_gpt"), ""))
+
+    if not graded:
+        outcome = run(tmp_path, *chimneys("polygons"), logged)
+        assert "domain-without-samples" in {item.code for item in outcome.findings}
+        return
+    study = SmallStudy(tmp_path)
+    for change in (*chimneys("polygons"), logged):
+        change(study)
+    errors = run_stages(ESTIMATE_STAGES, load_study(study.write()), threads=1).findings.errors
+    found = [item for item in errors if "'chimney'" in item.message]
+    assert [item.code for item in found] == ["no-composites"] * 3
+    assert all("domains.sulphide" not in item.remedy and "domains.codes" in item.remedy for item in found)
+
+
 def test_outside_the_tenure_is_taken_and_told(tmp_path: Path) -> None:
     def change(study: SmallStudy) -> None:
         held = shapely.box(WEST, SOUTH, CENTRE[0] + 5.0, SOUTH + 60.0)
