@@ -9,6 +9,7 @@ from __future__ import annotations
 import dataclasses
 import hashlib
 from collections.abc import Mapping
+from types import FunctionType, MethodType
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -46,6 +47,8 @@ class Reading:
         known = getattr(type(self._part), name, None)
         if isinstance(known, property) and known.fget is not None:
             return known.fget(self)  # so that what it reads is written down too
+        if isinstance(known, FunctionType):
+            return MethodType(known, self)  # for the same reason
         value = getattr(self._part, name)
         if is_part(value):
             return Reading(value, self._seen, (*self._path, name))
@@ -60,7 +63,9 @@ class Reading:
 
 def is_part(value: Any) -> bool:
     """Whether a value is a group of fields of the report's data, and not a leaf."""
-    return dataclasses.is_dataclass(value) and type(value).__module__ == "sms_resource.reporting.data"
+    return dataclasses.is_dataclass(value) and type(value).__module__.startswith(
+        "sms_resource.reporting.data"
+    )
 
 
 class Contents:
