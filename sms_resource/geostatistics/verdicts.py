@@ -179,7 +179,15 @@ def _swath_rows(swaths: pd.DataFrame, domain: str, limits: ValidationLimits) -> 
         judged = part[(part["sample_count"] >= limits.swath_samples) & part["difference_pct"].notna()]
         off = int((judged["difference_pct"].abs() > limits.swath_pct).sum())
         share = off / len(judged) if len(judged) else math.nan
-        worst = float(judged["difference_pct"].abs().max()) if len(judged) else math.nan
+        few = len(part) - len(judged)
+        if len(judged):
+            text = (
+                f"{off} of {len(judged)} slices with {limits.swath_samples} samples or more are off by over "
+                f"{limits.swath_pct:g} %, the worst by {float(judged['difference_pct'].abs().max()):.1f} %; {few} slices "
+                "not judged"
+            )
+        else:
+            text = f"no slice has {limits.swath_samples} samples or more: none of {few} is judged"
         rows.append(
             _row(
                 f"swath along {axis}",
@@ -190,8 +198,7 @@ def _swath_rows(swaths: pd.DataFrame, domain: str, limits: ValidationLimits) -> 
                 math.nan,
                 f"at most {limits.swath_share:.0%} of slices off by over {limits.swath_pct:g} %",
                 None if not len(judged) else share <= limits.swath_share,
-                f"{off} of {len(judged)} slices with {limits.swath_samples} samples or more are off by over "
-                f"{limits.swath_pct:g} %, the worst by {worst:.1f} %; {len(part) - len(judged)} slices not judged",
+                text,
             )
         )
     return rows
@@ -211,9 +218,22 @@ def _block_variance_row(
         percent(realised, expected),
         f"{low:g} to {high:g} of the theoretical",
         _between(figures["ratio"], low, high),
-        f"variance of block estimates {realised:.4g}, theoretical for estimates {expected:.4g} and for true blocks "
-        f"{figures['theoretical_blocks']:.4g}: kriging smooths by {100.0 * figures['smoothing']:.0f} %",
+        f"variance of block estimates {_figure(realised)}, theoretical for estimates {_figure(expected)} and for true "
+        f"blocks {_figure(figures['theoretical_blocks'])}: {_smoothing(figures['smoothing'])}",
     )
+
+
+def _figure(value: float) -> str:
+    return f"{value:.4g}" if math.isfinite(value) else "not known"
+
+
+def _smoothing(share: float) -> str:
+    """What the estimates lack against the variance of true blocks, in words."""
+    if not math.isfinite(share):
+        return "how much kriging smooths cannot be told"
+    if share < 0.0:
+        return f"the estimates vary {-100.0 * share:.0f} % more than true blocks should"
+    return f"kriging smooths by {100.0 * share:.0f} %"
 
 
 def _estimator_rows(estimators: pd.DataFrame, limits: ValidationLimits) -> list[dict[str, Any]]:

@@ -12,7 +12,7 @@ import numpy as np
 
 from sms_resource.reporting import cautions_estimate, cautions_evidence
 from sms_resource.reporting.data import ReportData
-from sms_resource.reporting.elements import Caution
+from sms_resource.reporting.elements import Caution, element_words
 from sms_resource.reporting.rounding import is_inferred, mass_text
 from sms_resource.reporting.style import class_name
 from sms_resource.reporting.tonnage import class_rows, rows_at_cutoff
@@ -120,8 +120,11 @@ def _labels(data: ReportData) -> Iterator[Caution]:
             f"{mass_text(tonnes, 'dry', figures=subject.inferred_figures, approximate=True)}, {share:.0f} %"
             f" of the dry tonnes at {data.cutoff_text}.",
         )
-    for flag in data.classes.flags:
-        yield Caution("class-flag", "About the proposed classes", flag, "See the table of proposed classes.")
+    if data.classes.flags:
+        flagged = " ".join(f"{element_words(flag).rstrip('. ')}." for flag in data.classes.flags)
+        yield Caution(
+            "class-flag", "About the proposed classes", flagged, "See the table of proposed classes."
+        )
     if data.classes.exploration_target:
         target = data.classes.exploration_target
         low, high = float(target.get("dry_tonnes_low", np.nan)), float(target.get("dry_tonnes_high", np.nan))

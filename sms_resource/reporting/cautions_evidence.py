@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 import numpy as np
+import pandas as pd
 
 from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.elements import Caution, number_text
@@ -76,6 +77,12 @@ def geometry(data: ReportData) -> Iterator[Caution]:
         )
 
 
+def _assumed_sigma(collars: pd.DataFrame) -> str:
+    """How many collars carry the study's own standard error, in words; empty where none does."""
+    count = int(collars["sigma_assumed"].sum()) if "sigma_assumed" in collars else 0
+    return f" The sigma of {count} of {len(collars)} holes is the study's, assumed." if count else ""
+
+
 def _position(data: ReportData) -> Iterator[Caution]:
     collars, grid = data.evidence.collars, data.estimation.grid
     if collars is not None and has(collars, "position_sigma_m") and grid is not None:
@@ -93,7 +100,8 @@ def _position(data: ReportData) -> Iterator[Caution]:
                 "position",
                 "Position uncertain against the blocks",
                 "Holes may lie in a neighbouring block.",
-                f"Largest position sigma {number_text(sigma)} m; half a block {number_text(half)} m.",
+                f"Largest position sigma {number_text(sigma)} m; half a block {number_text(half)} m."
+                + _assumed_sigma(collars),
             )
     if collars is not None and has(collars, "dz_m"):
         dz = collars["dz_m"].dropna().abs()

@@ -328,18 +328,20 @@ class ReportData:
         from sms_resource.reporting.rounding import cutoff_phrase
 
         given = self.subject.cutoff or {}
-        return cutoff_phrase(given.get("variable"), given.get("value"), **self._cutoff_units())
+        return cutoff_phrase(given.get("variable"), given.get("value"), **_cutoff_units(given))
 
-    def cutoff_label(self, variable: Any = None) -> str:
-        """What a cut-off is on with its unit, such as ``CuEq (%)``; the study's own where no variable is given."""
-        from sms_resource.reporting.rounding import cutoff_label
 
-        own = (self.subject.cutoff or {}).get("variable") or "cut-off's variable"
-        return cutoff_label(own if variable is None else variable, **self._cutoff_units())
+def cutoff_head(data: ReportData, variable: Any = None) -> str:
+    """What a cut-off is on with its unit, such as ``CuEq (%)``; the study's own where no variable is given."""
+    from sms_resource.reporting.rounding import cutoff_label
 
-    def _cutoff_units(self) -> dict[str, str]:
-        given = self.subject.cutoff or {}
-        return {name: str(given.get(name) or "") for name in ("equivalent_in", "currency")}
+    given = data.subject.cutoff or {}
+    own = given.get("variable") or "cut-off's variable"
+    return cutoff_label(own if variable is None else variable, **_cutoff_units(given))
+
+
+def _cutoff_units(given: Mapping[str, Any]) -> dict[str, str]:
+    return {name: str(given.get(name) or "") for name in ("equivalent_in", "currency")}
 
 
 def has(frame: Frame | None, *columns: str) -> bool:

@@ -42,6 +42,7 @@ class Evidence:
     """Samples and what they are worth.
 
     ``collars`` : hole_id, easting, northing, elevation, length_m, ended_in, position_method, position_sigma_m;
+    optional sigma_assumed (the study's own put for a missing one);
     optional original_elevation, dz_m (collar minus seafloor before any shift), dz_after_m, limit_m, flagged_before,
     flagged, assumed_vertical (bool). ``collar_match`` : quantity, before, after. ``hole_ends`` : ended_in, holes,
     share_pct, length_m. ``positions`` : table, method, positions, with_sigma, sigma_min_m, sigma_median_m, sigma_max_m.

@@ -13,9 +13,9 @@ from typing import Any
 
 import pandas as pd
 
-from sms_resource.reporting.rounding import NO_VALUE, group_digits
+from sms_resource.reporting.rounding import NO_VALUE, group_digits, significant_text
 from sms_resource.reporting.style import Drawing, class_name
-from sms_resource.units import column_element, element_label
+from sms_resource.units import ELEMENTS, column_element, element_label
 
 
 @dataclass(frozen=True)
@@ -145,20 +145,52 @@ _WORDS = {
     "cv": "coefficient of variation",
     "hole_id": "hole",
     "sample_id": "sample",
+    "cutoff": "cut-off (in the unit of what it is on)",
+    "cutoff_variable": "cut-off on",
 }
+_CONTENT = {"t": "t", "kg": "kg", "oz": "troy oz"}
+_ELEMENT = re.compile(r"\b[a-z][a-z0-9]*_(?:pct|gpt|ppm)\b")
+_GIVEN = ("value", "key", "alternatives")  # texts of the study stay as the study has them
+MASS_NOTE = (
+    "Tonnes, volumes and contained metal to {} significant figures; the data files hold them unrounded."
+)
 
 
 def column_label(column: str) -> str:
     """A column name as a person reads it, with its unit: ``length_m`` becomes ``Length (m)``."""
     name = str(column)
-    label = _WORDS.get(name) or _tonnes_label(name) or _element_phrase(name)
+    label = _WORDS.get(name) or _tonnes_label(name) or _content_label(name) or _element_phrase(name)
     if not label:
         label = name.replace("_", " ")
         for suffix, text in _SUFFIXES:
             if name.endswith(suffix):
                 label = f"{name[: -len(suffix)].replace('_', ' ')} {text}".strip()
                 break
+    label = label.replace("cutoff", "cut-off")
     return label[:1].upper() + label[1:]
+
+
+def _content_label(name: str) -> str:
+    """``cu_t`` becomes ``Cu contained (t)``; empty where the column holds no metal."""
+    element, _, unit = name.rpartition("_")
+    if unit not in _CONTENT or element not in ELEMENTS:
+        return ""
+    return (
+        f"{element_label(f'{element}_{ELEMENTS[element]}').rpartition(' (')[0]} contained ({_CONTENT[unit]})"
+    )
+
+
+def element_words(text: str) -> str:
+    """Names of grade columns inside a text as people write them: ``au_gpt failed`` becomes ``Au (g/t) failed``."""
+    return _ELEMENT.sub(lambda m: element_label(m[0]) if column_element(m[0]) else m[0], text)
+
+
+def is_mass(column: str) -> bool:
+    """Whether a column holds tonnes, volume or contained metal, whose size and not whose decimals is reported."""
+    name = str(column)
+    if name.endswith("_pct") or "_per_" in name:
+        return False
+    return "tonnes" in name or name.endswith(("_contained_t", "_m3", "_m2"))
 
 
 def _tonnes_label(name: str) -> str:
@@ -224,17 +256,24 @@ def frame_table(
     note: str = "",
     most: int = 60,
     key: str = "",
+    mass_digits: int = 3,
 ) -> Table:
-    """Turn a frame into a table of texts; beyond ``most`` rows the note says how many were left to the files."""
+    """Turn a frame into a table of texts; beyond ``most`` rows the note says how many were left to the files.
+
+    Tonnes, volumes and contained metal carry ``mass_digits`` significant figures: two where they are reported, three
+    where a table shows what a step or a choice does and two would hide it.
+    """
     chosen = [name for name in columns or frame.columns if name in frame.columns and name != "source_row"]
     names = {**{name: column_label(name) for name in chosen}, **(labels or {})}
     shown = frame[chosen].head(most)
     rows = tuple(
-        tuple(_cell(name, value, digits) for name, value in zip(chosen, record))
+        tuple(_cell(name, value, digits, mass_digits) for name, value in zip(chosen, record))
         for record in shown.itertuples(index=False, name=None)
     )
     if len(frame) > most:
         note = f"{note} The first {most} of {len(frame)} rows; the data files hold all.".strip()
+    if any(is_mass(name) and pd.api.types.is_numeric_dtype(shown[name]) for name in chosen):
+        note = f"{note} {MASS_NOTE.format(mass_digits)}".strip()
     numeric = tuple(
         pd.api.types.is_numeric_dtype(shown[name]) and not pd.api.types.is_bool_dtype(shown[name])
         for name in chosen
@@ -242,10 +281,13 @@ def frame_table(
     return Table(title, tuple(names[name] for name in chosen), rows, numeric, note, key=key)
 
 
-def _cell(column: str, value: Any, digits: int) -> str:
-    if column.endswith("p_value") and isinstance(value, float) and value < 1e-4:
+def _cell(column: str, value: Any, digits: int, mass_digits: int) -> str:
+    if column.endswith(("p_value", "_p")) and isinstance(value, float) and value < 1e-4:
         return "< 0.0001"
-    return class_name(value) if column == "proposed_class" else cell_text(value, digits)
+    if is_mass(column) and isinstance(value, (int, float)) and abs(value) >= 1.0:
+        return significant_text(float(value), mass_digits)
+    text = class_name(value) if column == "proposed_class" else cell_text(value, digits)
+    return element_words(text) if isinstance(value, str) and column not in _GIVEN else text
 
 
 def plain_words(text: str) -> str:

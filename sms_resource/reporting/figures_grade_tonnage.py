@@ -8,7 +8,7 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.reporting import style
-from sms_resource.reporting.data import ReportData, has
+from sms_resource.reporting.data import ReportData, cutoff_head, has
 from sms_resource.reporting.rounding import mass_unit, significant_text
 from sms_resource.reporting.style import Drawing
 from sms_resource.reporting.tonnage import whole_domain
@@ -46,7 +46,7 @@ def grade_tonnage(data: ReportData) -> Drawing | None:
         part = rows[rows["proposed_class"].astype(str) == name].sort_values("cutoff")
         curve = beside if name == "all" and has(beside, "cutoff", "support_dry_tonnes") else None
         right = _panel(axis, part, name, metals, variable, curve)
-        axis.set_xlabel(f"Cut-off, {data.cutoff_label(variable)}")
+        axis.set_xlabel(f"Cut-off, {cutoff_head(data, variable)}")
         rights.append(right)
         at = (data.subject.cutoff or {}).get("value")
         if at is not None and variable == wanted:

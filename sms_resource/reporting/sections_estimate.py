@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
-from sms_resource.reporting.data import Estimation, ReportData, has
+import pandas as pd
+
+from sms_resource.reporting.data import Estimation, ReportData, cutoff_head, has
 from sms_resource.reporting.elements import (
     Block,
     Bullets,
     Heading,
     Paragraph,
     Slot,
+    element_words,
     facts_from,
     frame_table,
     number_text,
@@ -19,7 +22,7 @@ from sms_resource.reporting.shapes_table import shapes_table
 from sms_resource.reporting.splits import skins_table, split_tables
 from sms_resource.reporting.summaries import checks_shown
 from sms_resource.reporting.tonnage import rows_at_cutoff, screens_table, tonnage_table
-from sms_resource.units import column_element, element_label
+from sms_resource.units import element_label
 
 
 def estimate(data: ReportData) -> list[Block]:
@@ -34,7 +37,12 @@ def estimate(data: ReportData) -> list[Block]:
     if words:
         blocks.append(Paragraph(words))
     with_table(blocks, shown, "Checks and their verdicts", most=40)
-    with_table(blocks, s.means, "Global means: composites, declustered, blocks")
+    with_table(
+        blocks, s.means, "Global means: composites, declustered, blocks",
+        labels={"composite_mean": "Composites in the body, each alike", "declustered_mean": "Composites, declustered",
+                "block_mean": "Blocks", "difference_pct": "Blocks against declustered (%)",
+                "mean_with_surface": "Composites in the body and surface samples, each alike"},
+    )  # fmt: skip
     with_table(blocks, s.estimators, "Mean grade by estimator")
     blocks.append(Slot(("estimators",)))
     blocks.append(Slot(("swaths",)))
@@ -42,10 +50,24 @@ def estimate(data: ReportData) -> list[Block]:
     blocks.append(Slot(("leave_one_out",)))
     with_table(blocks, s.support_variance, "Realised against theoretical block variance")
     blocks.append(Slot(("change_of_support",)))
-    with_table(blocks, s.frames_effect, "Effect of the vertical frame")
+    with_table(
+        blocks, s.frames_effect, "Effect of the vertical frame on the error of leaving one hole out",
+        labels={m: f"Root mean square error, {element_label(m)}" for m in data.subject.metals},
+        note=frames_note(data),
+    )  # fmt: skip
     with_table(blocks, s.neighbourhood, "Neighbourhood study", note=neighbourhood_words(s), most=30)
     blocks.append(Slot(("neighbourhood",)))
     return blocks if s.blocks is not None or s.settings else []
+
+
+def frames_note(data: ReportData) -> str:
+    """What the errors by vertical frame are, and which frame is in use."""
+    used = (data.estimation.settings or {}).get("Vertical frame")
+    return (
+        "Errors, not grades: the root of the mean squared difference between a composite and its estimate without its own"
+        " hole, over all domains, in the unit of the grade. The smaller the error, the more alike are neighbours in that"
+        " frame; every frame uses the variograms of the frame in use" + (f", {used}." if used else ".")
+    )
 
 
 def neighbourhood_words(s: Estimation) -> str:
@@ -62,8 +84,8 @@ def classes(data: ReportData) -> list[Block]:
     if facts:
         blocks += [Heading("Criteria of the study"), facts]
     if c.flags:
-        blocks.append(Bullets(tuple(c.flags)))
-    with_table(blocks, c.reasons, "Why blocks have their proposed class", most=40)
+        blocks.append(Bullets(tuple(element_words(flag) for flag in c.flags)))
+    with_table(blocks, c.reasons, "Why blocks have their proposed class", most=40, mass_digits=2)
     with_table(blocks, c.before_after, "Before and after smoothing to connected volumes")
     with_table(blocks, c.overrides, "Overrides by polygon")
     if c.exploration_target:
@@ -106,7 +128,7 @@ def tonnes(data: ReportData) -> list[Block]:
     blocks.append(Slot(("grade_tonnage",)))
     with_table(
         blocks, data.value.beside_support,
-        f"Blocks beside the model of change of support, cut-off and grade in {_cut_variable(data)} ({label})", most=30,
+        f"Blocks beside the model of change of support ({label})", most=30, labels=beside_labels(data),
         note="Kriged blocks are smoother than what a selection would meet; the discrete Gaussian model says by how much. "
         "It starts from the same dry tonnes at the lowest cut-off.",
     )  # fmt: skip
@@ -120,16 +142,67 @@ def tonnes(data: ReportData) -> list[Block]:
     return blocks
 
 
-def _cut_variable(data: ReportData) -> str:
-    """The variable of the cut-off with its unit."""
-    name = str((data.subject.cutoff or {}).get("variable") or "the cut-off's variable")
-    return element_label(name) if column_element(name) else name
+def beside_labels(data: ReportData) -> dict[str, str]:
+    """Heads of the table of change of support, with units."""
+    return {
+        "cutoff": f"Cut-off, {cutoff_head(data)}",
+        "block_dry_tonnes": "Blocks, dry tonnes (t)",
+        "block_grade": f"Blocks, {cutoff_head(data)}",
+        "support_dry_tonnes": "Change of support, dry tonnes (t)",
+        "support_grade": f"Change of support, {cutoff_head(data)}",
+        "tonnes_difference_pct": "Dry tonnes, blocks against change of support (%)",
+    }
 
 
-def _currency(data: ReportData) -> str:
-    """Unit of value, where the study has a currency."""
-    currency = (data.subject.cutoff or {}).get("currency")
-    return f" ({currency} per dry tonne)" if currency else ""
+def value_labels(data: ReportData) -> dict[str, str]:
+    """Heads of the table of value by grade and by value, with units."""
+    name, unit = cutoff_head(data).partition(" (")[0], cutoff_head(data, "value").partition("(")[2]
+    return {
+        "cutoff": f"Cut-off, {cutoff_head(data)}",
+        "value_by_grade": f"Mean net value, chosen by {name} ({unit}",
+        "value_by_value": f"Mean net value, chosen by value ({unit}",
+        "gain": f"Gain of choosing by value ({unit}",
+    }
+
+
+def cutoff_costs(data: ReportData) -> pd.DataFrame | None:
+    """Cut-offs that costs ask for, each named with its unit."""
+    frame = data.value.cutoff_costs
+    if frame is None or not has(frame, "variable"):
+        return frame
+    return frame.assign(variable=[cutoff_head(data, name) for name in frame["variable"]])
+
+
+def cost_labels(data: ReportData) -> dict[str, str]:
+    """Heads of the table of costs inside the cut-off."""
+    unit = cutoff_head(data, "value").partition("(")[2]
+    return {
+        "variable": "Cut-off on", "cutoff": "Cut-off", "cost_per_dry_tonne": f"Cost ({unit}",
+        "inside": "Costs inside", "outside": "Costs outside", "text": "In words",
+    }  # fmt: skip
+
+
+def price_note(data: ReportData) -> str:
+    """What a price does to a cut-off on an equivalent; empty where no scenario or grid varies a price."""
+    cut, v = data.subject.cutoff or {}, data.value
+    if cut.get("variable") != "equivalent":
+        return ""
+    varied = [f"{grid.get('x')} {grid.get('y')}" for grid in v.heat_maps]
+    if v.scenarios is not None:
+        named = [name for name in ("scenario", "label", "changes", "decision") if name in v.scenarios]
+        varied += [" ".join(map(str, row)) for row in v.scenarios[named].to_numpy()]
+    if v.tornado is not None and "decision" in v.tornado:
+        varied += list(v.tornado["decision"].astype(str))
+    if not any("price" in text for text in varied):
+        return ""
+    name = cutoff_head(data).partition(" (")[0]
+    base = name.removesuffix("Eq")
+    return (
+        f"A price also changes the equivalent. A higher price of {base} lowers the factor of every other metal, so less"
+        f" adds up to {data.cutoff_text} and fewer tonnes lie above it, although they are worth more; a higher price of"
+        " another metal does the opposite. The cut-off itself is kept as a grade: where costs set it, set it anew with"
+        " the price, or cut on value."
+    )
 
 
 def scenarios(data: ReportData) -> list[Block]:
@@ -143,10 +216,10 @@ def scenarios(data: ReportData) -> list[Block]:
         )
         table = v.equivalent.get("table")
         with_table(blocks, table, "Prices, recoveries and payabilities")
-    with_table(blocks, v.cutoff_costs, "Costs inside the cut-off")
+    with_table(blocks, cutoff_costs(data), "Costs inside the cut-off", labels=cost_labels(data))
     with_table(
-        blocks, v.by_value,
-        f"The same dry tonnes chosen by a cut-off on {_cut_variable(data)} and by value{_currency(data)}", most=30,
+        blocks, v.by_value, f"The same dry tonnes chosen by a cut-off on {cutoff_head(data)} and by value", most=30,
+        labels=value_labels(data),
         note="Means of net value per dry tonne of what is chosen, before costs of lifting; no total is shown.",
     )  # fmt: skip
     if v.scenarios is not None and len(v.scenarios):
@@ -154,6 +227,8 @@ def scenarios(data: ReportData) -> list[Block]:
             Heading("Scenarios"),
             frame_table(v.scenarios, f"Scenarios at the study's cut-off ({data.tally_label})", most=40),
         ]
+    if price_note(data):
+        blocks.append(Paragraph(price_note(data), "note"))
     blocks.append(Slot(("tornado", "heat_map*")))
     return (
         blocks

@@ -16,6 +16,7 @@ from sms_resource.reporting.elements import (
     with_table,
 )
 from sms_resource.reporting.figures_continuity import domain_slug
+from sms_resource.reporting.rounding import significant_text
 from sms_resource.units import column_element, element_label
 
 GEOMETRY_NOTE = (
@@ -34,7 +35,7 @@ def body(data: ReportData) -> list[Block]:
         blocks.append(Paragraph(f"Base: {body.method.rstrip('. ')}."))
     if body.volumes:
         whole = float(body.volumes.get("volume_m3", float("nan")))
-        rows = [("Whole body", number_text(whole, 4), "100")]
+        rows = [("Whole body", significant_text(whole, 3), "100")]
         for key, name in (
             ("drilled_m3", "Drilled"),
             ("sideways_m3", "Extrapolated sideways"),
@@ -44,7 +45,7 @@ def body(data: ReportData) -> list[Block]:
                 rows.append(
                     (
                         name,
-                        number_text(float(body.volumes[key]), 4),
+                        significant_text(float(body.volumes[key]), 3),
                         f"{100 * float(body.volumes[key]) / whole:.1f}",
                     )
                 )
@@ -66,7 +67,10 @@ def body(data: ReportData) -> list[Block]:
             )
         )
     blocks.append(Slot(("plan_slope",)))
-    with_table(blocks, body.slope_classes, f"The body by slope of the seafloor over {body.footprint_m:g} m")
+    with_table(
+        blocks, body.slope_classes, f"The body by slope of the seafloor over {body.footprint_m:g} m",
+        mass_digits=2,
+    )  # fmt: skip
     blocks.append(Slot(("plan_thickness", "plan_extrapolation")))
     if body.contacts is not None and has(body.contacts, "kind"):
         counts = body.contacts["kind"].astype(str).value_counts().sort_index()
@@ -81,7 +85,12 @@ def body(data: ReportData) -> list[Block]:
             )
         )
     with_table(blocks, body.audit, "Audit of the body", most=12)
-    with_table(blocks, body.geometry_uncertainty, "Uncertainty of the geometry", note=GEOMETRY_NOTE)
+    moved = body.geometry_uncertainty
+    if moved is not None and "what" in moved:
+        moved = moved.drop(columns="case", errors="ignore")
+    with_table(
+        blocks, moved, "Uncertainty of the geometry", note=GEOMETRY_NOTE, labels={"what": "What is moved"}
+    )
     blocks.append(Slot(("geometry",)))
     with_table(blocks, body.grid_proposal, "Block grid: what is proposed, and why")
     return blocks if body.volumes or body.thickness is not None or body.method else []

@@ -15,13 +15,14 @@ from sms_resource.reporting.elements import (
     Paragraph,
     Table,
     cell_text,
+    element_words,
     frame_table,
     plain_words,
     setting_text,
     with_table,
 )
 from sms_resource.reporting.method import method_statement
-from sms_resource.reporting.rounding import NO_VALUE
+from sms_resource.reporting.rounding import NO_VALUE, round_significant
 from sms_resource.reporting.words import SOURCES
 
 MOST_TEXT = 300
@@ -120,7 +121,11 @@ def findings(data: ReportData) -> list[Block]:
     ]
     if len(findings):
         rows = [
-            (f.severity, f.code, f.where or NO_VALUE, plain_words(f.message), plain_words(f.remedy))
+            (
+                f.severity,
+                f.code,
+                *(element_words(plain_words(t)) for t in (f.where or NO_VALUE, f.message, f.remedy)),
+            )
             for f in findings
         ]
         order = sorted(range(len(rows)), key=lambda n: ("error", "warning", "note").index(rows[n][0]))
@@ -138,7 +143,15 @@ def truth(data: ReportData) -> list[Block]:
     if not truth:
         return []
     blocks: list[Block] = [Paragraph(f"Truth from {truth.get('file', 'a file named in the study')}.")]
-    with_table(blocks, truth.get("table"), "Estimate against truth, with what causes the difference")
+    table = truth.get("table")
+    note = ""
+    if table is not None and has(table, "unit", "truth", "estimate"):
+        large = ~table["unit"].isin(("%", "g/t", "ppm"))
+        table = table.copy()
+        for name in ("truth", "estimate"):
+            table.loc[large, name] = [round_significant(float(v), 3) for v in table.loc[large, name]]
+        note = "Tonnes and volumes to 3 significant figures; differences from unrounded values."
+    with_table(blocks, table, "Estimate against truth, with what causes the difference", note=note)
     if truth.get("notes"):
         blocks.append(Bullets(tuple(str(n) for n in truth["notes"])))
     return blocks
@@ -154,6 +167,16 @@ def sources(data: ReportData) -> list[Block]:
     return [Bullets(tuple(dict.fromkeys((*data.record.sources, *SOURCES))))]
 
 
+def input_rows(inputs: list[dict[str, Any]]) -> tuple[tuple[str, str, str, str], ...]:
+    """One row a file, with all that the study takes from it; the same path with other bytes is another row."""
+    roles: dict[tuple[str, str, str], list[str]] = {}
+    for item in inputs:
+        file = (str(item.get("path", "")), str(item.get("sha256", ""))[:16], cell_text(item.get("bytes")))
+        role = str(item.get("role") or "").replace("_", " ")
+        roles.setdefault(file, []).extend([role] if role and role not in roles.get(file, ()) else [])
+    return tuple((path, ", ".join(used), sha, size) for (path, sha, size), used in roles.items())
+
+
 def manifest(data: ReportData) -> list[Block]:
     """Inputs with their hashes, seed and versions; no times, so that the same study gives the same page."""
     manifest = data.record.manifest
@@ -162,15 +185,12 @@ def manifest(data: ReportData) -> list[Block]:
     blocks: list[Block] = []
     inputs = [i for i in manifest.get("inputs") or () if isinstance(i, dict)]
     if inputs:
-        rows = tuple(
-            (str(i.get("path", "")), str(i.get("sha256", ""))[:16], cell_text(i.get("bytes"))) for i in inputs
-        )
         blocks.append(
             Table(
                 "Input files",
-                ("File", "SHA-256 (first 16)", "Bytes"),
-                rows,
-                (False, False, True),
+                ("File", "Used as", "SHA-256 (first 16)", "Bytes"),
+                input_rows(inputs),
+                (False, False, False, True),
                 "Full hashes are in manifest.json.",
             )
         )

@@ -58,7 +58,10 @@ def _places(data: ReportData) -> list[Block]:
     )  # fmt: skip
     if e.collars is not None and has(e.collars, "assumed_vertical"):
         count = int(e.collars["assumed_vertical"].sum())
-        blocks.append(Paragraph(f"{count} of {len(e.collars)} holes without survey are assumed vertical."))
+        if count:
+            blocks.append(
+                Paragraph(f"{count} of {len(e.collars)} holes have no survey and are assumed vertical.")
+            )
     with_table(
         blocks, e.hole_ends, "How the holes ended",
         labels={"ended_in": "Ended in", "share_pct": "Share of the holes (%)", "length_m": "Drilled length (m)"},
@@ -73,16 +76,31 @@ def _places(data: ReportData) -> list[Block]:
     if e.collars is not None and has(e.collars, "dz_m"):
         off = (e.collars["dz_m"] - e.collars["dz_m"].median()).abs()
         worst = e.collars.loc[off.sort_values(ascending=False, kind="stable").index]
+        shown, sigma_note = sigma_marked(_fixed(worst))
         with_table(
-            blocks, _fixed(worst), "Collars, furthest off the median first", most=20, digits=4,
+            blocks, shown, "Collars, furthest off the median first", most=20, digits=4,
             columns=("hole_id", "position_method", "position_sigma_m", "original_elevation", "seafloor_elevation", "dz_m",
                      "limit_m", "flagged_before", "elevation", "dz_after_m", "flagged"),
             labels={"original_elevation": "Elevation as delivered (m)", "seafloor_elevation": "Seafloor (m)",
                     "dz_m": "Delivered less seafloor (m)", "limit_m": "Limit (m)", "elevation": "Elevation in use (m)",
                     "flagged_before": "Beyond the limit as delivered", "flagged": "Beyond it as used",
                     "dz_after_m": "In use less seafloor (m)", "position_sigma_m": "Position sigma (m)"},
+            note=sigma_note,
         )  # fmt: skip
     return blocks
+
+
+def sigma_marked(collars: pd.DataFrame) -> tuple[pd.DataFrame, str]:
+    """Standard errors of position, already texts, marked where the study's own was put for a missing one."""
+    if not has(collars, "sigma_assumed", "position_sigma_m") or not collars["sigma_assumed"].any():
+        return collars, ""
+    marked = [
+        f"{text} (assumed)" if assumed else text
+        for text, assumed in zip(collars["position_sigma_m"], collars["sigma_assumed"])
+    ]
+    count = int(collars["sigma_assumed"].sum())
+    note = f"Assumed: {count} of {len(collars)} collars came without a standard error and carry that of the study."
+    return collars.assign(position_sigma_m=marked), note
 
 
 def _collar_policy(collars: pd.DataFrame | None, shift_m: float) -> str:

@@ -14,6 +14,7 @@ from sms_resource.reporting.elements import (
     number_text,
     plain_words,
 )
+from sms_resource.reporting.rounding import significant_text
 from sms_resource.reporting.tonnage import rows_at_cutoff, tonnage_table
 
 
@@ -35,7 +36,7 @@ def summary(data: ReportData, cautions: Sequence[Caution]) -> list[Block]:
             )
         )
     blocks.append(Facts(tuple(basis(data))))
-    triggered = [c.title for c in cautions if not c.always]
+    triggered = list(dict.fromkeys(c.title for c in cautions if not c.always))
     blocks.append(
         Paragraph(
             f"Read with the {len(cautions)} cautions of this report; set off by this study:"
@@ -107,7 +108,7 @@ def basis(data: ReportData) -> list[tuple[str, str]]:
         pairs.append(
             (
                 "Body",
-                f"{number_text(whole)} m³ in place, {100 * beyond / whole:.0f} % of it extrapolated;"
+                f"{significant_text(whole, 3)} m³ in place, {100 * beyond / whole:.0f} % of it extrapolated;"
                 f" {data.body.method.rstrip('. ')}".rstrip("; "),
             )
         )

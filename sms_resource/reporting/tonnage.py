@@ -6,7 +6,7 @@ from collections.abc import Sequence
 
 import pandas as pd
 
-from sms_resource.reporting.data import ReportData, has
+from sms_resource.reporting.data import ReportData, cutoff_head, has
 from sms_resource.reporting.elements import Table
 from sms_resource.reporting.rounding import (
     contained_metal,
@@ -71,7 +71,7 @@ def tonnage_table(data: ReportData, rows: pd.DataFrame, title: str, *, first: Se
     head = [*[str(name).replace("_", " ").capitalize() for name in first], "Proposed class"]
     head += [f"Dry tonnes ({unit} dry)", f"Wet tonnes ({unit} wet)"]
     equivalent = ["equivalent"] if "equivalent" in rows and rows["equivalent"].notna().any() else []
-    head += [data.cutoff_label("equivalent").replace(" ", "\u00a0") for _ in equivalent]
+    head += [cutoff_head(data, "equivalent").replace(" ", "\u00a0") for _ in equivalent]
     head += [element_label(metal).replace(" ", "\u00a0") for metal in metals]
     head += [
         f"{element_label(metal).rpartition(' (')[0]} contained ({contained[metal][0]} metal)"

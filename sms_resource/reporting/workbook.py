@@ -4,15 +4,16 @@ from __future__ import annotations
 
 import datetime
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import pandas as pd
 
 from sms_resource.reporting.cautions import all_cautions
-from sms_resource.reporting.data import ReportData
+from sms_resource.reporting.data import ReportData, cutoff_head
 from sms_resource.reporting.elements import cell_text, column_label, plain_words
+from sms_resource.reporting.sections_estimate import beside_labels, value_labels
 from sms_resource.reporting.sections_record import ledger_frame
 from sms_resource.reporting.tonnage import ROUNDING_NOTE, rows_at_cutoff, screens_table
 from sms_resource.units import column_element
@@ -75,8 +76,10 @@ class _Book:
             self._numbers[look] = self.book.add_format({"num_format": look, "valign": "top"})
         return self._numbers[look]
 
-    def sheet(self, name: str, frame: pd.DataFrame | None, note: str) -> None:
-        """One table on a sheet of its own; nothing where it holds no rows."""
+    def sheet(
+        self, name: str, frame: pd.DataFrame | None, note: str, labels: Mapping[str, str] | None = None
+    ) -> None:
+        """One table on a sheet of its own, its heads by ``labels`` where named there; nothing where it holds no rows."""
         if frame is None or not len(frame):
             return
         frame = frame.drop(columns=[c for c in frame.columns if c in ("source_row", "seconds", "time_s")])
@@ -86,7 +89,9 @@ class _Book:
         )
         frame = frame.head(MOST_ROWS)
         for number, column in enumerate(frame.columns):
-            sheet.write_string(1, number, column_label(str(column)), self.head)
+            sheet.write_string(
+                1, number, (labels or {}).get(str(column)) or column_label(str(column)), self.head
+            )
             self._column(sheet, number, str(column), frame[column])
         sheet.freeze_panes(2, 1)
         sheet.autofilter(1, 0, len(frame) + 1, len(frame.columns) - 1)
@@ -150,8 +155,16 @@ def workbook_sheets(data: ReportData) -> list[tuple[str, pd.DataFrame | None, st
             v.mineable_shape,
             f"Connected shapes with their must-take material, unrounded; {label}.",
         ),
-        ("Change of support", v.beside_support, f"Blocks beside the discrete Gaussian model, all classes; {label}."),
-        ("By value", v.by_value, "The same dry tonnes chosen by grade and by value: mean net value per dry tonne."),
+        (
+            "Change of support",
+            v.beside_support,
+            f"Blocks beside the discrete Gaussian model, all classes; {label}.",
+        ),
+        (
+            "By value",
+            v.by_value,
+            "The same dry tonnes chosen by grade and by value: mean net value per dry tonne.",
+        ),
         ("Classes", data.classes.before_after, f"By criteria, after rules, smoothed and final; {label}."),
         ("Scenarios", v.scenarios, f"One row a scenario; {label}."),
         ("Tornado", v.tornado, f"Low, base and high of each decision; {label}."),
@@ -170,6 +183,23 @@ def workbook_sheets(data: ReportData) -> list[tuple[str, pd.DataFrame | None, st
     ]
 
 
+def workbook_heads(data: ReportData) -> dict[str, dict[str, str]]:
+    """Heads of the sheets whose columns carry the unit of the cut-off or of value, by sheet and column."""
+    cut = {
+        "cutoff": f"Cut-off, {cutoff_head(data)}", "equivalent": f"Mean {cutoff_head(data, 'equivalent')}",
+    }  # fmt: skip
+    several = data.value.grade_tonnage is not None and (
+        "cutoff_variable" in data.value.grade_tonnage
+        and data.value.grade_tonnage["cutoff_variable"].nunique() > 1
+    )
+    return {
+        "Estimate": cut,
+        "Grade-tonnage": {"equivalent": cut["equivalent"]} if several else cut,
+        "Change of support": beside_labels(data),
+        "By value": value_labels(data),
+    }
+
+
 def write_workbook(data: ReportData, path: Path) -> Path:
     """Write the workbook and return its path; sheets without rows are left out."""
     book = _Book(path, plain_words(data.subject.title)[:200])
@@ -181,7 +211,8 @@ def write_workbook(data: ReportData, path: Path) -> Path:
         first.write_string(row, 0, name, book.text)
         first.write_string(row, 1, plain_words(text), book.wrapped)
     sheets: Sequence[tuple[str, pd.DataFrame | None, str]] = workbook_sheets(data)
+    labels = workbook_heads(data)
     for name, frame, note in sheets:
-        book.sheet(name, frame, note)
+        book.sheet(name, frame, note, labels.get(name))
     book.book.close()
     return path

@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
+from sms_resource.units import column_element, element_label
 from sms_resource.workflow.splits import CARRIED
 
 
@@ -58,7 +59,11 @@ def named_axis(swaths: pd.DataFrame, frame: str) -> pd.DataFrame:
 
 
 def mean_rows(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
-    """Plain, declustered and block means by metal and domain; the plain mean of everything, surface included."""
+    """Plain, declustered and block means by metal and domain; the plain mean of composites and surface samples too.
+
+    The last is over the composites inside the body's domains and the surface samples, each sample alike: what a mean
+    would be that took both for the same.
+    """
     samples = done["variograms"].samples
     frame = done["classify"].frame[["dry_tonnes", *metals]]
     by_domain = done["estimate"].domain_means.set_index(["domain", "metal"])["mean"]
@@ -81,8 +86,8 @@ def mean_rows(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
                 "difference_pct": 100.0 * (block / declustered - 1.0) if declustered else np.nan,
             }  # fmt: skip
             if domain == "all" and len(surface):
-                every = pd.concat([done["composite"].assays[metal], surface.get(metal)])
-                row["plain_mean_with_surface"] = every.mean()
+                every = pd.concat([part[metal], surface[metal]]) if metal in surface else part[metal]
+                row["mean_with_surface"] = every.mean()
             rows.append(row)
     return pd.DataFrame(rows)
 
@@ -126,7 +131,8 @@ def check_rows(table: pd.DataFrame) -> pd.DataFrame:
     if not len(table):
         return pd.DataFrame(columns=["check", "subject", "value", "limit", "verdict"])
     verdict = table["verdict"].map({"within": "pass", "flag": "flag"}).fillna(table["verdict"])
-    subject = table["domain"].astype(str) + ", " + table["metal"].astype(str)
+    named = [element_label(str(name)) if column_element(str(name)) else str(name) for name in table["metal"]]
+    subject = table["domain"].astype(str) + ", " + pd.Series(named, index=table.index)
     return table.assign(subject=subject, verdict=verdict)[
         ["check", "subject", "value", "limit", "verdict", "figures"]
     ]

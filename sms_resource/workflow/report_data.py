@@ -22,7 +22,7 @@ from sms_resource.reporting.data import (
 )
 from sms_resource.samples.topcut_tables import cut_summary
 from sms_resource.study import Study
-from sms_resource.units import element_column
+from sms_resource.units import element_column, element_label
 from sms_resource.workflow.estimation import search_text
 from sms_resource.workflow.evidence import all_columns, metal_columns
 from sms_resource.workflow.means import (
@@ -148,6 +148,7 @@ def _evidence(study: Study, done: dict[str, Any]) -> Evidence:
     tables = evidence.tables
     collars = evidence.collars.assign(
         assumed_vertical=evidence.collars["hole_id"].isin(evidence.facts["assumed_vertical"]),
+        sigma_assumed=evidence.collars["position_sigma_m"].isna(),
         position_sigma_m=evidence.collars["position_sigma_m"].astype(float).fillna(config.position.sigma_m),
     )
     laboratory = evidence.laboratory
@@ -320,9 +321,12 @@ def _classes(study: Study, done: dict[str, Any], findings: Findings) -> Classes:
     state: ClassState = done["classify"]
     choice = study.config.classes
     criteria = {
-        name.replace("_", " "): ", ".join(map(str, value)) if isinstance(value, tuple) else value
+        criterion_words(name): (
+            ", ".join(map(str, value)) or "none" if isinstance(value, tuple)
+            else element_label(element_column(value)).rpartition(" (")[0] if name == "judged_on" else value
+        )
         for name, value in choice.model_dump().items()
-    }
+    }  # fmt: skip
     steps = {"criteria": "by_criteria", "rules": "after_rules", "smoothed": "smoothed", "final": "final"}
     smoothing = state.smoothing[["proposed_class", *[f"dry_tonnes_{step}" for step in steps]]].rename(
         columns={f"dry_tonnes_{step}": f"{name}_dry_tonnes" for step, name in steps.items()}
@@ -337,6 +341,16 @@ def _classes(study: Study, done: dict[str, Any], findings: Findings) -> Classes:
         flags=flags,
         exploration_target=target_words(state.tables.get("exploration_target")),
     )
+
+
+def criterion_words(name: str) -> str:
+    """A key of the criteria in words with its unit: ``indicated_within_m`` becomes ``Indicated within (m)``."""
+    endings = {"_m": " (m)", "_m3": " (m³)", "_pct": " (%)", "_share": ", share of a block"}
+    for ending, words in endings.items():
+        if name.endswith(ending):
+            name = name.removesuffix(ending) + words
+            break
+    return name.replace("_", " ")
 
 
 def target_words(table: pd.DataFrame | None) -> dict[str, Any] | None:

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.study import Study
-from sms_resource.units import unit_label
+from sms_resource.units import element_label, unit_label
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.means import mean_rows
 
@@ -39,13 +39,13 @@ def truth_page(study: Study, done: dict[str, Any]) -> dict[str, Any] | None:
         filled = frame[metal].notna()
         block = float(np.average(frame.loc[filled, metal], weights=frame.loc[filled, "dry_tonnes"]))
         rows.append(
-            _truth_row(f"mean {metal.partition('_')[0]} of the body", unit_label(metal), known[metal], block,
+            _truth_row(f"mean {_symbol(metal)} of the body", unit_label(metal), known[metal], block,
                        "selective loss of core, smoothing and the few holes")
         )  # fmt: skip
-    for metal in metals:
-        naive = float(np.asarray(plain.loc[metal, "plain_mean_with_surface"]))
+    for metal in metals if "mean_with_surface" in plain else ():
+        naive = float(np.asarray(plain.loc[metal, "mean_with_surface"]))
         rows.append(
-            _truth_row(f"plain mean of all samples, surface included: {metal.partition('_')[0]}",
+            _truth_row(f"mean of composites in the body and surface samples, each alike: {_symbol(metal)}",
                        unit_label(metal), known[metal], naive,
                        "surface samples are richer than the body, and clusters count many times")
         )  # fmt: skip
@@ -54,6 +54,10 @@ def truth_page(study: Study, done: dict[str, Any]) -> dict[str, Any] | None:
         "table": pd.DataFrame(rows),
         "notes": ("The truth is known because the deposit is invented; a real study has no such page.",),
     }
+
+
+def _symbol(metal: str) -> str:
+    return element_label(metal).rpartition(" (")[0]
 
 
 def _truth_row(quantity: str, unit: str, truth: float, estimate: float, cause: str) -> dict[str, Any]:
