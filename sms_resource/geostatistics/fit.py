@@ -280,11 +280,15 @@ def _bounds_hit(problem: _Problem, parameters: Array, sills: Array) -> tuple[str
     floor = 1e-6 * float(sills.sum())
     if np.isnan(problem.fixed[0]) and sills[0] <= floor:
         hit.append("the nugget is at its lower limit, zero")
-    for number, sill in enumerate(sills[1:], start=1):
-        if np.isnan(problem.fixed[number]) and sill <= floor:
+    numbers = list(range(1, len(sills)))
+    if problem.settings.ranges is None and problem.settings.sills is None:  # as the model sorts them
+        majors = [float(triple[0]) for triple in problem.ranges(parameters)]
+        numbers = (np.argsort(np.argsort(majors, kind="stable"), kind="stable") + 1).tolist()
+    for place, (number, sill) in enumerate(zip(numbers, sills[1:]), start=1):
+        if np.isnan(problem.fixed[place]) and sill <= floor:
             hit.append(f"the sill of structure {number} is at its lower limit, zero")
     seen: set[float] = set()
-    for number, (kinds, values) in enumerate(zip(problem.layout_kind, problem.layout_value), start=1):
+    for number, kinds, values in zip(numbers, problem.layout_kind, problem.layout_value):
         for axis in np.flatnonzero(kinds == FREE):
             if values[axis] in seen:
                 continue

@@ -10,6 +10,7 @@ import pandas as pd
 
 from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.elements import Caution, cell_text, number_text
+from sms_resource.reporting.parameters import UNKNOWN, parameter_name, statuses
 from sms_resource.reporting.tonnage import rows_at_cutoff
 from sms_resource.units import column_element, element_label
 
@@ -100,18 +101,28 @@ def estimate(data: ReportData) -> Iterator[Caution]:
         f"Block size: {size}.",
         True,
     )
-    assumed = [record for record in data.variograms if record.assumed or record.bounds_hit]
+    assumed = [r for r in data.variograms if r.assumed or r.bounds_hit or statuses(r)]
     if assumed:
         lines = [
             f"{_named(record.metal)}, {record.domain}: "
-            + "; ".join((*record.assumed, *(f"bound hit: {bound}" for bound in record.bounds_hit)))
+            + "; ".join(
+                (
+                    *record.assumed,
+                    *(f"bound hit: {bound}" for bound in record.bounds_hit),
+                    *(
+                        f"{parameter_name(name)} {UNKNOWN}"
+                        for name, why in statuses(record).items()
+                        if why == UNKNOWN
+                    ),
+                )
+            )
             + f" ({record.sample_count} composites in {record.hole_count} holes)"
             for record in assumed
         ]
         yield Caution(
             "continuity-assumed",
             "Continuity partly assumed",
-            "Part of the variograms is assumed rather than inferred from the samples.",
+            "Part of the variograms is assumed, or stands where the fit stopped, rather than inferred from the samples.",
             f"{len(assumed)} of {len(data.variograms)} variograms. " + ". ".join(lines) + ".",
         )
     others = data.estimation.estimators

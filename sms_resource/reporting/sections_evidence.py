@@ -16,6 +16,14 @@ from sms_resource.reporting.elements import (
     with_table,
 )
 from sms_resource.reporting.figures_continuity import domain_slug
+from sms_resource.reporting.parameters import (
+    AT_BOUND,
+    UNKNOWN,
+    WIDEST_FACTOR,
+    intervals_shown,
+    range_text,
+    undetermined_words,
+)
 from sms_resource.reporting.rounding import significant_text
 from sms_resource.units import column_element, element_label
 
@@ -24,6 +32,11 @@ GEOMETRY_NOTE = (
     "still inside keep their thickness, so the base falls more steeply from the edge, and the holes that fall outside "
     "no longer hold it up; what the outer strip itself is worth stands beside it as the body cut off. Together is "
     "the root of the sum of squares of the base as a whole, the seafloor and half the span of the outlines."
+)
+INTERVAL_NOTE = (
+    f"{AT_BOUND[:1].upper()}{AT_BOUND[1:]}: the fit stopped at a limit set to it, so leaving out holes moves it little and"
+    f" says nothing. {UNKNOWN[:1].upper()}{UNKNOWN[1:]}: the interval spans more than a factor of {WIDEST_FACTOR:g}, or for"
+    " a nugget all from zero to the sill. Relative error: standard error, of a nugget over the total sill."
 )
 
 
@@ -108,15 +121,15 @@ def continuity(data: ReportData) -> list[Block]:
             blocks.append(models)
         blocks.append(Slot((f"variograms_{domain_slug(domain)}",)))
         intervals = [
-            record.intervals.assign(metal=_metal(record))
+            shown.assign(metal=_metal(record))
             for record in records
-            if record.intervals is not None and len(record.intervals)
+            if (shown := intervals_shown(record)) is not None and len(shown)
         ]
         if intervals:
             frame = pd.concat(intervals, ignore_index=True)
             columns = ["metal", *(c for c in frame.columns if c != "metal")]
             title = "Uncertainty of the parameters (leaving out holes in turn)"
-            with_table(blocks, frame, title, columns=columns)
+            with_table(blocks, frame, title, columns=columns, note=INTERVAL_NOTE)
     return blocks
 
 
@@ -136,6 +149,7 @@ def _said(record: VariogramRecord) -> str:
     )
     if record.bounds_hit:
         parts.append(f"Bounds hit by the fit: {'; '.join(record.bounds_hit)}.")
+    parts.append(undetermined_words(record))
     parts.append(f"{record.sample_count} composites in {record.hole_count} holes.")
     return " ".join(part for part in parts if part)
 
@@ -148,12 +162,15 @@ def _models(records: list[VariogramRecord]) -> Table | None:
             continue
         angles = f"{model.azimuth:g}, {model.plunge:g}, {model.tilt:g}"
         rows.append((_metal(record), "nugget", number_text(float(model.nugget), 3), "", "", "", angles))
-        for structure in model.structures:
-            ranges = [number_text(float(r), 3) for r in structure.ranges]
+        for number, structure in enumerate(model.structures, start=1):
+            ranges = [range_text(record, axis, number, float(r)) for axis, r in enumerate(structure.ranges)]
             rows.append(("", str(structure.shape), number_text(float(structure.sill), 3), *ranges, ""))
     if not rows:
         return None
     head = ("Metal", "Structure", "Sill (squared grade)", "Range, major (m)", "Range, semi-major (m)",
             "Range, minor (m)", "Azimuth, plunge, tilt (°)")  # fmt: skip
-    note = "Ranges are practical ranges."
+    note = (
+        "Ranges are practical ranges. A zonal structure varies only across the plane and so has no limit in it. A range"
+        " at its bound, or not determined by the data, is where the fit came to rest, not what was measured."
+    )
     return Table("Models", head, tuple(rows), (False, False, True, True, True, True, False), note)
