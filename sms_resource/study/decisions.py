@@ -57,8 +57,8 @@ def _walk(section: BaseModel, given: Any, prefix: str, study: Study) -> Iterator
         extra = info.json_schema_extra if isinstance(info.json_schema_extra, dict) else {}
         if not extra.get("decision", True) or dotted in ("reasons", "scenarios.single", "scenarios.grid"):
             continue
-        if prefix.startswith("data.") and not stated:
-            continue  # how a file is read is a decision only where the study says so
+        if prefix.startswith(("data.", "exploration")) and not stated:
+            continue  # how a file is read, or a target ranged, is a decision only where the study says so
         plain = section.model_dump(mode="json", include={name})[name]
         reason = study.config.reasons.get(dotted)
         yield Decision(

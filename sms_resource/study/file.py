@@ -11,6 +11,7 @@ from typing import Any, get_args
 from pydantic import BaseModel, ValidationError
 
 from sms_resource.findings import Finding, Findings
+from sms_resource.study.exploration import target_faults
 from sms_resource.study.faults import one_each, place_of, shown, wanted
 from sms_resource.study.files import GRID_ROLES, LAYER_ROLES, TABLE_ROLES
 from sms_resource.study.locate import key_rows, nearest, row_of
@@ -52,6 +53,11 @@ class Study:
     def folder(self) -> Path:
         """Folder of the study file; paths in the study start here."""
         return self.path.parent
+
+    @property
+    def without_drilling(self) -> bool:
+        """Whether the study has no holes, so that it ends in an exploration target."""
+        return self.config.data.collars is None
 
     def resolve(self, name: str) -> Path:
         """Absolute path of a file that the study names."""
@@ -159,14 +165,39 @@ def _toml_row(message: str) -> int | None:
 
 
 def _validate(raw: dict[str, Any], text: str, name: str) -> tuple[StudyConfig | None, Findings]:
-    findings = Findings()
+    rows = key_rows(text)
+    findings = _without_drilling(raw, rows, name)
     try:
-        return StudyConfig.model_validate(raw), findings
+        config = StudyConfig.model_validate(raw)
+        return (None if findings.has_errors else config), findings
     except ValidationError as error:
-        rows = key_rows(text)
         for fault in one_each([dict(fault) for fault in error.errors()]):
             findings.extend([_fault_finding(fault, rows, name)])
         return None, findings
+
+
+def _without_drilling(raw: dict[str, Any], rows: dict[str, int], name: str) -> Findings:
+    """Collars and assays must be there, but for a study that ranges an exploration target from surface samples."""
+    findings, data = Findings(), raw.get("data")
+    if not isinstance(data, dict):
+        return findings
+    missing = [role for role in ("collars", "assays") if data.get(role) is None]
+    surface = data.get("surface_samples") is not None
+    if len(missing) == 2 and surface and "exploration" in raw:
+        return findings
+    for role in missing:
+        dotted = f"data.{role}"
+        if surface:
+            findings.error(
+                "study-no-drilling", f"'{dotted}' is not given: surface samples alone carry no block estimate",
+                "They may support an exploration target at most: tonnes and grade as ranges, stated as conceptual, with too "
+                "little exploration to estimate a resource. For that add [exploration] with a range of thickness; for an "
+                "estimate add collars and assays.", file=name, row=row_of(rows, dotted), column=dotted,
+            )  # fmt: skip
+        else:
+            findings.error("study-missing-key", f"'{dotted}' must be given", f"Add it: {describe(['data', role])}",
+                           file=name, row=row_of(rows, dotted), column=dotted)  # fmt: skip
+    return findings
 
 
 def _fault_finding(fault: dict[str, Any], rows: dict[str, int], name: str) -> Finding:
@@ -182,13 +213,6 @@ def _fault_finding(fault: dict[str, Any], rows: dict[str, int], name: str) -> Fi
         count = len(fault["input"]) if isinstance(fault.get("input"), list | tuple) else 0
         short = f"'{dotted}' is {shown(fault.get('input'))}: it has too few values ({count})"
         return Finding("error", "study-value", short, describe(place), name, row, dotted)
-    given = fault.get("input")
-    if fault["type"] == "missing" and dotted in ("data.collars", "data.assays") and "surface_samples" in (given or ()):
-        return Finding("error", "study-no-drilling",
-                       f"'{dotted}' is not given: surface samples alone carry no block estimate",
-                       "They may support an exploration target at most: tonnes and grade as ranges, stated as conceptual, "
-                       "with too little exploration to estimate a resource. For an estimate add collars and assays.",
-                       name, row, dotted)  # fmt: skip
     if fault["type"] == "missing":
         return Finding("error", "study-missing-key", f"'{dotted}' must be given", f"Add it: {describe(place)}", name,
                        row, dotted)  # fmt: skip
@@ -318,7 +342,10 @@ def _check_sense(study: Study, rows: dict[str, int], findings: Findings) -> None
     if config.top_cuts.apply == "given" and not config.top_cuts.cuts:
         fault("top_cuts.apply", "study-value-missing", "top cuts are to be applied as given, but none is given",
               "Add [top_cuts.cuts.DOMAIN] with a value by element, or set apply = \"proposed\".")  # fmt: skip
-    if (
+    if study.without_drilling:
+        for dotted, code, message, remedy in target_faults(config):
+            fault(dotted, code, message, remedy)
+    elif (
         config.data.densities is None
         and not config.density.assigned_dry_tpm3
         and config.density.method != "mineralogy"

@@ -79,11 +79,16 @@ class LayerFile(Section):
 class DataFiles(Section):
     """All files of a study, each in its role. Only collars, assays and bathymetry must be there."""
 
-    collars: TableFile = key(..., "Where each hole starts, its length and how it ended.", decision=False)
+    collars: TableFile | None = key(
+        None, "Where each hole starts, its length and how it ended. Only a study with [exploration] goes without.",
+        decision=False,
+    )  # fmt: skip
     surveys: TableFile | None = key(None, "Azimuth and dip down the holes.", decision=False)
     runs: TableFile | None = key(None, "Cored lengths and what was recovered of them.", decision=False)
     lithology: TableFile | None = key(None, "Logged rock codes by depth.", decision=False)
-    assays: TableFile = key(..., "Grades by depth.", decision=False)
+    assays: TableFile | None = key(
+        None, "Grades by depth. Only a study with [exploration] goes without.", decision=False
+    )
     densities: TableFile | None = key(None, "Measured densities.", decision=False)
     surface_samples: TableFile | None = key(
         None, "Grabs, chimney pieces and short cores from the seafloor.", decision=False

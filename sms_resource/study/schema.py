@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from sms_resource.study import estimate, evidence, files, outcome
 from sms_resource.study.base import Section, key
+from sms_resource.study.exploration import Exploration
 
 
 class StudyConfig(Section):
@@ -35,6 +36,7 @@ class StudyConfig(Section):
     validation: estimate.Validation = key(estimate.Validation(), "Limits of the checks of the estimate.")
     screens: estimate.Screens = key(estimate.Screens(), "What practice takes from the body.")
     classes: outcome.Classes = key(outcome.Classes(), "Criteria of the proposed classes.")
+    exploration: Exploration = key(Exploration(), "The exploration target of a study without drilling.")
     cutoff: outcome.Cutoff = key(outcome.Cutoff(), "Where the table of tonnes is cut.")
     value: outcome.Value = key(outcome.Value(), "Value and costs.")
     scenarios: outcome.Scenarios = key(outcome.Scenarios(), "Overrides that are run beside the study.")

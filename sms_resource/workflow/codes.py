@@ -10,6 +10,8 @@ CODES: dict[str, str] = {
     "cutoffs-thinned": "A curve at every value of the blocks was thinned to a number that a table can hold.",
     "cutoff-unknown": "No block has the variable that the study cuts on.",
     "chimney-height": "Polygons of chimneys have no height.",
+    "exploration-surface-alone": "The grades of an exploration target rest on surface samples alone.",
+    "exploration-unused": "Scenarios or another run are asked for of a study without drilling, which has neither.",
     "exploration-target": "Material of the body that no class takes in, as ranges with their caution.",
     "equivalent-refused": "A metal equivalent or a value cannot be made from what the study states.",
     "neighbourhood-study": "What the study of neighbourhoods recommends.",

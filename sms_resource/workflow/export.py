@@ -8,7 +8,7 @@ from pathlib import Path
 import pandas as pd
 
 from sms_resource.findings import Findings
-from sms_resource.workflow.folder import is_results, recover
+from sms_resource.workflow.folder import has_blocks, is_results, recover
 from sms_resource.workflow.manifest import read_manifest
 
 
@@ -31,7 +31,7 @@ def export_results(results: Path, out: Path, formats: tuple[str, ...] = ()) -> t
     Raises
     ------
     FileNotFoundError
-        If the folder holds no results.
+        If the folder holds no results, or none with a block model.
     ValueError
         If a format is not known.
     """
@@ -45,6 +45,8 @@ def export_results(results: Path, out: Path, formats: tuple[str, ...] = ()) -> t
     recover(results.absolute())
     if not is_results(results):
         raise FileNotFoundError(f"{results} holds no results")
+    if not has_blocks(results):
+        raise FileNotFoundError(f"{results} holds no block model; a study without drilling has none")
     manifest = read_manifest(results)
     layers = results / "layers"
     record = json.loads((layers / "block_grid.json").read_text(encoding="utf-8"))

@@ -76,6 +76,11 @@ def is_results(folder: Path) -> bool:
     return (folder / "manifest.json").is_file()
 
 
+def has_blocks(folder: Path) -> bool:
+    """Whether some results should hold a block model; those of a study without drilling hold a target in its place."""
+    return (folder / "block_model.parquet").is_file() or not (folder / "exploration_target.csv").is_file()
+
+
 def _alive(process: int) -> bool:
     if sys.platform == "win32":
         return True  # signal 0 would end the process there

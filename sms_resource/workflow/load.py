@@ -99,6 +99,22 @@ def check_truth(context: Context, name: str) -> None:
         )  # fmt: skip
 
 
+def load_without_drilling(context: Context) -> LoadedData:
+    """Read what a study without holes rests on: surface samples, the seafloor, the outline."""
+    from sms_resource.loaders.surface_samples import load_surface
+
+    data, metals = context.config.data, context.config.metals
+    extra = tuple(name for name in metals.summarise if name not in metals.estimate)
+    surface, found = load_surface(table_source(context, data.surface_samples), metals.estimate, extra)
+    context.findings.extend(found)
+    made = LoadedData(
+        surface=surface, seafloor=_grid(context, data.bathymetry), outline=read_layer(context, data.outline, "outline"),
+        files=context.study.files(),
+    )  # fmt: skip
+    context.detail = f"{len(surface)} surface samples, no holes"
+    return made
+
+
 def _grid(context: Context, grid: GridFile) -> Any:
     from sms_resource.loaders.bathymetry import load_grid
 

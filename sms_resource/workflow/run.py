@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 from sms_resource.findings import Findings
 from sms_resource.study import Study, StudyError
-from sms_resource.workflow.folder import ResultFolder
+from sms_resource.workflow.folder import ResultFolder, has_blocks
 from sms_resource.workflow.foresight import override_faults, scenario_faults
 from sms_resource.workflow.manifest import input_hashes
 from sms_resource.workflow.stage import Outcome, Progress, StageCache, run_stages
@@ -69,6 +69,10 @@ def check_study(study: Study) -> Findings:
     """
     from sms_resource.workflow.stages import CHECK_STAGES
 
+    if study.without_drilling:
+        from sms_resource.workflow.prospect import TARGET_STAGES
+
+        return run_stages(TARGET_STAGES, study, keep_on=True).findings
     findings = run_stages(CHECK_STAGES, study, keep_on=True).findings
     findings.extend(override_faults(study))
     findings.extend(scenario_faults(study))
@@ -127,6 +131,8 @@ def run_study(
     """
     from sms_resource.workflow.stages import ESTIMATE_STAGES
 
+    if study.without_drilling:
+        return _run_target(study, out, progress, asked_more=scenarios or against is not None)
     store = (default_cache() if cache else None) if isinstance(cache, bool) else cache
     inputs = input_hashes(study)
     hashes = {role: entry["sha256"] for role, entry in inputs.items() if role != "study"}
@@ -159,6 +165,28 @@ def run_study(
     return result
 
 
+def _run_target(study: Study, out: str | Path | None, progress: Progress | None, asked_more: bool) -> Result:
+    """Run a study without drilling: ranges of an exploration target, and no block model."""
+    from sms_resource.workflow.prospect import TARGET_STAGES
+    from sms_resource.workflow.publish_target import write_target
+
+    outcome = run_stages(TARGET_STAGES, study, progress=progress)
+    if asked_more:
+        outcome.findings.warning(
+            "exploration-unused", "a study without drilling has no scenarios and is compared with no other run",
+            "Change its ranges and run it again.", file=study.path.name,
+        )  # fmt: skip
+    if outcome.findings.has_errors:
+        return Result(outcome.findings)
+    result = Result(outcome.findings, stages=outcome.done)
+    if out is not None:
+        with ResultFolder(out) as folder:
+            result.summary = write_target(folder.staging, study, outcome, input_hashes(study))
+            folder.publish()
+        result.out = folder.out
+    return result
+
+
 def more(
     study: Study,
     outcome: Outcome,
@@ -180,7 +208,12 @@ def more(
         )
         outcome.findings.extend(run.findings)
         extra.update(tables(study, run))
-    if against is not None:
+    if against is not None and not has_blocks(Path(against)):
+        outcome.findings.warning(
+            "against-unreadable", f"the run in {Path(against).name} has no block model to compare with",
+            "Name the results of a study with drilling.", file=study.path.name,
+        )  # fmt: skip
+    elif against is not None:
         from sms_resource.workflow.reproduce import changes_since
 
         try:

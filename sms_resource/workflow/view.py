@@ -5,7 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
-from sms_resource.workflow.folder import is_results, recover
+from sms_resource.workflow.folder import has_blocks, is_results, recover
 
 
 def view_results(
@@ -27,13 +27,15 @@ def view_results(
     Raises
     ------
     FileNotFoundError
-        If the folder holds no results.
+        If the folder holds no results, or none with a block model.
     """
     recover(Path(folder).absolute())
     if not is_results(Path(folder)):
         raise FileNotFoundError(
             f"{folder} holds no results. Make them with: sms-resource run STUDY --out {folder}"
         )
+    if not has_blocks(Path(folder)):
+        raise FileNotFoundError(f"{folder} holds no block model; a study without drilling has none")
     from sms_resource.viewer import ViewerUnavailable, open_scene
 
     try:

@@ -292,10 +292,10 @@ BODIES = [
         "truth.json",
     ),
     one(
-        "no grade in sulphide",
-        lambda s: [row.update(cu_pct="", zn_pct="", au_gpt="", ag_gpt="") for row in s.rows["assays"]],
+        "no grade that is accepted",
+        lambda s: [row.update(method="handheld") for row in s.rows["assays"]],
         "composite-none",
-        None,
+        "assays.csv",
     ),
     one(
         "no densities",
