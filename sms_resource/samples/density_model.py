@@ -234,7 +234,6 @@ def fit_density(
     fitted = pore_frame = None
     if method == "assigned":
         rows = [assigned_row(name, given.get(name), measured, findings) for name in wanted]
-        rows = [with_measured_water(row, measured, findings) for row in rows]
     elif method == "mineralogy":
         rows, pore_frame = mineral_rows(wanted, pores, given, composites, frame, water, settings, findings)
         if metals is not None and not {"cu_pct", "fe_pct"} <= set(metals):
@@ -256,6 +255,9 @@ def fit_density(
             fitted = fit_regression(body, chosen, confidence, findings)
             if fitted is not None:
                 rows = [regression_row(row, fitted, composites) for row in rows]
+    rows = [
+        with_measured_water(row, measured, findings) if row["basis"] == "assigned" else row for row in rows
+    ]
     by_domain = pd.DataFrame(rows, columns=list(COLUMNS))
     if method != "measured_mean":
         findings.extend(measured_findings(by_domain, measured))

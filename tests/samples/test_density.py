@@ -580,3 +580,14 @@ def test_what_is_used_is_not_called_unused() -> None:
         many(), "assigned", domains=["massive"], assigned_dry_tpm3={"massive": 3.0}, porosity={"massive": 0.1}
     )
     assert "density-unused" not in codes(given.findings)
+
+
+def test_an_assigned_domain_under_another_method_takes_measured_water_or_says_that_it_has_none() -> None:
+    both = pd.concat([many(), many(2, 2).assign(domain="cap")])
+    given = {"cap": 2.0, "chimney": 1.8}
+    model = fit_density(both, "regression", domains=["chimney", "cap", "massive"], assigned_dry_tpm3=given)
+    rows = model.by_domain.set_index("domain")
+    assert rows.loc["cap", "wet_base"] == pytest.approx(2.15)  # two pairs of wet and dry, 0.15 apart
+    assert rows.loc["cap", "dry_base"] == 2.0 and np.isnan(rows.loc["chimney", "wet_base"])
+    told = [item.message for item in model.findings if item.code == "density-wet-only"]
+    assert len(told) == 1 and "chimney" in told[0]
