@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import Any
 
 import numpy as np
@@ -10,6 +11,7 @@ import pandas as pd
 from sms_resource.reporting import style
 from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.figures_samples import panel_grid
+from sms_resource.reporting.rounding import group_digits
 from sms_resource.reporting.style import Drawing
 from sms_resource.units import column_element, element_label
 
@@ -39,6 +41,13 @@ def metal_name(metal: str) -> str:
     return element_label(metal) if column_element(metal) else str(metal)
 
 
+def axis_start(frame: pd.DataFrame, axis: str) -> float:
+    """What is taken off the centres of an axis of map coordinates, so that its numbers can be read; else zero."""
+    centres = frame.loc[frame["axis"].astype(str) == axis, "centre_m"].astype(float)
+    least = float(centres.min()) if len(centres) else 0.0
+    return math.floor(least / 100.0) * 100.0 if least >= 1e4 else 0.0
+
+
 def swaths(data: ReportData) -> Drawing | None:
     """Means of composites and blocks in slices: a row a metal, a column an axis, counts as bars."""
     frame = data.estimation.swaths
@@ -59,7 +68,8 @@ def swaths(data: ReportData) -> Drawing | None:
             part = frame[(frame["column"] == metal) & (frame["axis"].astype(str) == name)].sort_values(
                 "centre_m"
             )
-            centre = part["centre_m"].to_numpy(float)
+            start = axis_start(frame, name)
+            centre = part["centre_m"].to_numpy(float) - start
             if "sample_count" in part and len(part):
                 counts = part["sample_count"].to_numpy(float)
                 width = np.min(np.diff(centre)) * 0.85 if len(centre) > 1 else 1.0
@@ -118,7 +128,10 @@ def swaths(data: ReportData) -> Drawing | None:
             if column == 0:
                 axis.set_ylabel(metal_name(metal))
             if row == len(metals) - 1:
-                axis.set_xlabel(AXIS_LABELS.get(name, f"{name} (m)"))
+                label = AXIS_LABELS.get(name, f"{name} (m)")
+                axis.set_xlabel(
+                    label.replace(" (m)", f" less {group_digits(f'{start:.0f}')} m (m)") if start else label
+                )
     figure.legend(*axes[0, 0].get_legend_handles_labels(), loc="outside lower center", ncols=5)
     return Drawing(
         "swaths",

@@ -55,7 +55,10 @@ def estimate(data: ReportData) -> list[Block]:
         labels={m: f"Root mean square error, {element_label(m)}" for m in data.subject.metals},
         note=frames_note(data),
     )  # fmt: skip
-    with_table(blocks, s.neighbourhood, "Neighbourhood study", note=neighbourhood_words(s), most=30)
+    studied = s.neighbourhood
+    if studied is not None and has(studied, "varied"):
+        studied = studied.assign(varied=[str(name).replace("_", " ") for name in studied["varied"]])
+    with_table(blocks, studied, "Neighbourhood study", note=neighbourhood_words(s), most=30)
     blocks.append(Slot(("neighbourhood",)))
     return blocks if s.blocks is not None or s.settings else []
 
@@ -182,6 +185,21 @@ def cost_labels(data: ReportData) -> dict[str, str]:
     }  # fmt: skip
 
 
+def scenarios_shown(data: ReportData, frame: pd.DataFrame) -> pd.DataFrame:
+    """Scenarios with their tonnes and grades; changes as the study writes them and metal stay in the data files."""
+    metals = [metal for metal in data.subject.metals if metal in frame]
+    wanted = ["scenario", "label", "origin", "state", "dry_tonnes", "wet_tonnes", *metals]
+    wanted += [
+        name
+        for name in map(str, frame)
+        if name.endswith("_dry_tonnes") and frame[name].notna().any() and frame[name].any()
+    ]
+    known = [name for name in wanted if name in frame]
+    if known and "state" in known and (frame["state"] == "run").all():
+        known.remove("state")
+    return frame[known] if "dry_tonnes" in known else frame
+
+
 def price_note(data: ReportData) -> str:
     """What a price does to a cut-off on an equivalent; empty where no scenario or grid varies a price."""
     cut, v = data.subject.cutoff or {}, data.value
@@ -225,7 +243,13 @@ def scenarios(data: ReportData) -> list[Block]:
     if v.scenarios is not None and len(v.scenarios):
         blocks += [
             Heading("Scenarios"),
-            frame_table(v.scenarios, f"Scenarios at the study's cut-off ({data.tally_label})", most=40),
+            frame_table(
+                scenarios_shown(data, v.scenarios),
+                f"Scenarios at their cut-off ({data.tally_label})",
+                most=40,
+                labels={"label": "Scenario", "origin": "From", "state": "State"},
+                note=f"The study's own cut-off is {data.cutoff_text}.",
+            ),
         ]
     if price_note(data):
         blocks.append(Paragraph(price_note(data), "note"))

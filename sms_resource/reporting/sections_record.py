@@ -94,8 +94,8 @@ def decisions(data: ReportData) -> list[Block]:
     words = ", ".join(f"{count} {name}" for name, count in counts.items())
     title = "Decisions with most effect, or chosen"
     return [
+        Paragraph(f"{len(frame)} decisions in all: {words}. The full ledger stands further on."),
         frame_table(frame.loc[order].head(8), title, columns=LEDGER_COLUMNS, labels=LEDGER_LABELS),
-        Paragraph(f"{len(frame)} decisions in all: {words}. The full ledger stands further on.", "note"),
     ]
 
 

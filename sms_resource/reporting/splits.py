@@ -41,6 +41,16 @@ def split_rows(data: ReportData, table: pd.DataFrame, column: str) -> pd.DataFra
     return pd.concat([parts, rows[whole]], ignore_index=True)
 
 
+LEAST = (
+    0.001  # of the unit of a column: below it a part is named as small, not by figures that nothing supports
+)
+
+
+def small_text(value: float, figures: int) -> str:
+    """A part of a whole, rounded; parts under a thousandth of the unit as that."""
+    return f"< {LEAST:g}" if 0.0 < value < LEAST else significant_text(value, figures)
+
+
 def mass_table(
     data: ReportData, rows: pd.DataFrame, names: Sequence[str], head: str, title: str, note: str,
     strong: tuple[int, ...],
@@ -57,12 +67,10 @@ def mass_table(
     body = []
     for number, (name, row) in enumerate(zip(names, rows.to_dict("records"), strict=True)):
         cells = [name]
-        cells += [
-            significant_text(float(row[basis]) / scale, figures) for basis in ("dry_tonnes", "wet_tonnes")
-        ]
+        cells += [small_text(float(row[basis]) / scale, figures) for basis in ("dry_tonnes", "wet_tonnes")]
         cells += [significant_text(float(row[metal]), figures) for metal in metals]
         supported = metal_figures(figures, figures)
-        cells += [significant_text(metal_t[m][number] / units[m][1], supported) for m in metals]
+        cells += [small_text(metal_t[m][number] / units[m][1], supported) for m in metals]
         body.append(tuple(cells))
     numeric = (False, *([True] * (len(columns) - 1)))
     return Table(title, tuple(columns), tuple(body), numeric, f"{note} {ROUNDING_NOTE}".strip(), strong)
@@ -79,7 +87,9 @@ def split_tables(data: ReportData) -> list[Block]:
         if len(rows) < 2:
             continue
         total = {"screen": "The whole body"}.get(column, "All")
-        names = [total if name == "all" else f"{str(name)[:1].upper()}{str(name)[1:]}" for name in rows[column]]
+        names = [
+            total if name == "all" else f"{str(name)[:1].upper()}{str(name)[1:]}" for name in rows[column]
+        ]
         label = data.tally_label
         title = f"{label[0].upper()}{label[1:]} at {data.cutoff_text}, {words}"
         blocks.append(mass_table(data, rows, names, head, title, note, (len(rows) - 1,)))

@@ -152,10 +152,9 @@ def key_unit(study: Study, key: str) -> str:
     if key == "cutoff.at":
         if config.cutoff.variable == "value":
             return f"{config.value.currency} per dry t"
-        element = (
-            config.value.equivalent_in if config.cutoff.variable == "equivalent" else config.cutoff.variable
-        )
-        return f"{element.capitalize()}, {unit_label(element_column(element))}"
+        equivalent = config.cutoff.variable == "equivalent"
+        element = config.value.equivalent_in if equivalent else config.cutoff.variable
+        return f"{element.capitalize()}{'Eq' if equivalent else ''}, {unit_label(element_column(element))}"
     last = key.rpartition(".")[2]
     if last == "price":
         metal = config.value.metals.get(key.split(".")[2]) if key.count(".") == 3 else None

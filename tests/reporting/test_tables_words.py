@@ -10,9 +10,11 @@ import pytest
 from sms_resource.geostatistics.verdicts import validation_table
 from sms_resource.reporting.data import ReportData, Subject, ValueEvidence, cutoff_head
 from sms_resource.reporting.elements import column_label, element_words, frame_table
-from sms_resource.reporting.sections_estimate import price_note, value_labels
+from sms_resource.reporting.figures_validation import axis_start
+from sms_resource.reporting.sections_estimate import price_note, scenarios_shown, value_labels
 from sms_resource.reporting.sections_record import input_rows
 from sms_resource.reporting.sections_samples import sigma_marked
+from sms_resource.reporting.splits import small_text
 
 
 def test_masses_are_rounded_and_the_note_says_so() -> None:
@@ -93,3 +95,26 @@ def test_no_check_prints_a_missing_number(smoothing: float, words: str) -> None:
     texts = " ".join(table["figures"])
     assert "nan" not in texts and words in texts and "no slice has" in texts
     assert table["verdict"].iloc[0] == "not judged"
+
+
+def test_swath_axes_of_map_coordinates_start_near_their_data() -> None:
+    frame = pd.DataFrame(
+        {"axis": ["northing", "northing", "elevation"], "centre_m": [6293812.0, 6293905.0, -1640.0]}
+    )
+    assert axis_start(frame, "northing") == 6293800.0
+    assert axis_start(frame, "elevation") == 0.0
+
+
+def test_parts_too_small_to_report_are_named_as_small() -> None:
+    assert small_text(1.7e-8, 2) == "< 0.001"
+    assert small_text(0.0, 2) == "0"
+    assert small_text(0.0123, 2) == "0.012"
+
+
+def test_scenarios_are_shown_without_the_words_of_the_file() -> None:
+    table = pd.DataFrame(
+        {"label": ["a"], "origin": ["grid"], "state": ["run"], "changes": ['{"cutoff.at": 1}'], "dry_tonnes": [1e6],
+         "cu_pct": [2.0], "cu_t": [2e4], "indicated_dry_tonnes": [0.0], "inferred_dry_tonnes": [1e6]}
+    )  # fmt: skip
+    shown = scenarios_shown(ReportData(subject=Subject(metals=("cu_pct",))), table)
+    assert list(shown) == ["label", "origin", "dry_tonnes", "cu_pct", "inferred_dry_tonnes"]
