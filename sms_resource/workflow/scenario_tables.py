@@ -8,6 +8,7 @@ from typing import Any
 
 import pandas as pd
 
+from sms_resource.reporting.rounding import mass_text
 from sms_resource.study import Study
 from sms_resource.units import element_column, unit_label
 from sms_resource.workflow.cheap import NAMED
@@ -47,7 +48,7 @@ def class_words(row: Mapping[Any, Any], base: dict[str, float]) -> list[str]:
         if before and abs(after / before - share) > 5e-4:
             said.append(f"{name.capitalize()} dry t {_percent(after, before)}")
         elif not before and after:
-            said.append(f"{name.capitalize()} from none to {after:,.0f} dry t")
+            said.append(f"{name.capitalize()} from none to {mass_text(float(after), 'dry')}")
     return said
 
 

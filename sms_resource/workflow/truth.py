@@ -11,7 +11,6 @@ import pandas as pd
 from sms_resource.study import Study
 from sms_resource.units import element_label, unit_label
 from sms_resource.workflow.evidence import metal_columns
-from sms_resource.workflow.means import mean_rows
 
 
 def truth_page(study: Study, done: dict[str, Any]) -> dict[str, Any] | None:
@@ -34,7 +33,7 @@ def truth_page(study: Study, done: dict[str, Any]) -> dict[str, Any] | None:
             "wet tonnes of the body", "t wet", known["wet_tonnes"], float(frame["wet_tonnes"].sum()), ""
         ),
     ]
-    plain = mean_rows(done, metals).query("domain == 'all'").set_index("metal")
+    surface = done["composite"].surface
     for metal in metals:
         filled = frame[metal].notna()
         block = float(np.average(frame.loc[filled, metal], weights=frame.loc[filled, "dry_tonnes"]))
@@ -42,10 +41,10 @@ def truth_page(study: Study, done: dict[str, Any]) -> dict[str, Any] | None:
             _truth_row(f"mean {_symbol(metal)} of the body", unit_label(metal), known[metal], block,
                        "selective loss of core, smoothing and the few holes")
         )  # fmt: skip
-    for metal in metals if "mean_with_surface" in plain else ():
-        naive = float(np.asarray(plain.loc[metal, "mean_with_surface"]))
+    for metal in metals if len(surface) else ():
+        naive = float(pd.concat([done["composite"].assays[metal], surface.get(metal)]).mean())
         rows.append(
-            _truth_row(f"mean of composites in the body and surface samples, each alike: {_symbol(metal)}",
+            _truth_row(f"plain mean of all samples, surface included: {_symbol(metal)}",
                        unit_label(metal), known[metal], naive,
                        "surface samples are richer than the body, and clusters count many times")
         )  # fmt: skip

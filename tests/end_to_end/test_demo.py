@@ -112,7 +112,7 @@ def test_the_truth_page_gives_figures_and_causes(demo: Demo, blocks: pd.DataFram
     assert "deposit is invented" in text
     for words in (
         "dry tonnes of the body",
-        "mean cu of the body",
+        "mean Cu of the body",
         "plain mean of all samples, surface included",
     ):
         assert words in text, words
