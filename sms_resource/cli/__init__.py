@@ -354,15 +354,19 @@ def _leave_faulty(findings: Any, as_json: bool) -> NoReturn:
 
 def main() -> None:
     """Run the command line; a fault of the user never shows a traceback."""
+    code: Any = DONE
     try:
         try:
             app()
         except KeyboardInterrupt:
-            sys.exit(INTERRUPTED)
-    except SystemExit as leaving:
-        if leaving.code == INTERRUPTED:
+            code = INTERRUPTED
+        except SystemExit as leaving:
+            code = leaving.code
+        if code == INTERRUPTED:
             sys.stderr.write("sms-resource: stopped; earlier results are as they were\n")
-        raise
+        sys.stdout.flush()
+        sys.stderr.flush()
     except BrokenPipeError:
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        sys.exit(DONE)
+        code = DONE  # the reader has seen enough
+    # Everything is written: the system takes the memory back at once, the interpreter would need a third of a second.
+    os._exit(code if isinstance(code, int) else DONE if code is None else FAULTY)

@@ -288,7 +288,7 @@ def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
     comparison = validation.comparison.set_index("estimator")[metals].T.rename_axis("metal").reset_index()
     return Estimation(
         settings=settings,
-        blocks=done["propose"].frame,
+        blocks=drawn_blocks(done["propose"].frame, metals),
         grid=blocks.model.grid.record(),
         means=mean_rows(done, metals),
         swaths=named_axis(validation.swaths, config.blocks.vertical_frame),
@@ -302,6 +302,14 @@ def _estimation(study: Study, done: dict[str, Any]) -> Estimation:
         neighbourhood_note=recommendation(validation.neighbourhood),
         checks=check_rows(validation.table),
     )
+
+
+def drawn_blocks(frame: pd.DataFrame, metals: list[str]) -> pd.DataFrame:
+    """Columns of the blocks that figures and words are made from; a change in any other redraws nothing."""
+    wanted = {"i", "j", "k", "easting", "northing", "elevation", "volume_m3", "body_fraction", "domain",
+              "dry_density_tpm3", "dry_tonnes", "wet_tonnes", "extrapolation", "nearest_distance_m", "proposed_class",
+              *metals}  # fmt: skip
+    return frame[[name for name in frame if name in wanted]]
 
 
 def composite_rule(config: Any) -> str:
