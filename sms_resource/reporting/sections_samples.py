@@ -127,7 +127,8 @@ def _recovery(data: ReportData) -> list[Block]:
         with_table(
             blocks, bias, "Grade against recovery: rank correlation", most=40,
             labels={"mean_low": "Mean where recovery is low", "mean_high": "Mean where recovery is high",
-                    "biased": "Taken as biased"},
+                    "biased": "Link seen, all tests together",
+                    "not_excluded": "Bias not excluded by the test alone (classes go by this)"},
         )  # fmt: skip
     blocks.append(Slot(("lost_core",)))
     runs = _spaced(e.lost_core)

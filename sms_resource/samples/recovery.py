@@ -93,7 +93,8 @@ def recovery_bias(
     DataFrame
         domain, metal, n, spearman, p_value (of the test alone), p_adjusted (for the number of tests, by Holm's
         step-down), mean_low (grade where recovery is in its lower half), mean_high, biased (True where a link is seen at
-        the adjusted p-value, or cannot be excluded for want of samples), verdict in plain words.
+        the adjusted p-value, or cannot be excluded for want of samples), not_excluded (the same by the p-value of the
+        test alone: what rests on the absence of bias goes by this), verdict in plain words.
 
     Notes
     -----
@@ -133,6 +134,7 @@ def recovery_bias(
     adjusted[judged] = holm(raw[judged])
     table.insert(5, "p_adjusted", adjusted)
     table["biased"] = ~(adjusted >= significance)
+    table["not_excluded"] = ~(raw >= significance)
     table["verdict"] = [
         _verdict(n, rho, p, both, significance)
         for n, rho, p, both in zip(table["n"], table["spearman"], raw, adjusted)

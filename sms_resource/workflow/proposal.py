@@ -170,7 +170,8 @@ def class_context(context: Context) -> Any:
     }
     sigma = evidence.collars["position_sigma_m"].astype(float).fillna(config.position.sigma_m)
     bias = evidence.tables["recovery_bias"]
-    biased = set(bias.loc[bias["biased"], "domain"]) if "biased" in bias else set(config.domains.sulphide)
+    # What asks for the absence of bias goes by each test alone: many tests must not hide one.
+    biased = set(bias.loc[bias["not_excluded"], "domain"]) if len(bias) else set(config.domains.sulphide)
     verdicts = evidence.laboratory.verdicts
     worst: dict[str, str] = {}
     rank = {"good": 0, "caution": 1, "failed": 2, "missing": 3}

@@ -125,6 +125,7 @@ def test_adjusted_p_values_are_those_of_statsmodels() -> None:
     table = recovery_bias(frame.assign(cu_pct=frame["zn_pct"].to_numpy()[::-1]), ["zn_pct", "cu_pct"])
     assert table["p_adjusted"].to_numpy() == pytest.approx(multipletests(table["p_value"], method="holm")[1])
     assert table["biased"].tolist() == (table["p_adjusted"] < 0.05).tolist()
+    assert table["not_excluded"].tolist() == (table["p_value"] < 0.05).tolist()
 
 
 def test_few_samples_are_not_judged_and_count_as_possibly_biased() -> None:
