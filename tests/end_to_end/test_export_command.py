@@ -109,7 +109,7 @@ def test_omf_library_reads_the_model_and_its_layers(
 
 
 def test_netcdf_keeps_the_climate_and_forecast_conventions(exported: Path, blocks: pd.DataFrame) -> None:
-    """Read by h5py, by hand after CF 1.10 (sections 2.6, 3.1, 3.5, 4, 5.6); compliance-checker 6.1 of IOOS, strict, agrees."""
+    """Read by h5py, by hand after CF 1.10 (sections 2.6, 3.1, 3.5, 4, 5.6); the checker of IOOS, strict, agrees."""
     h5py = pytest.importorskip("h5py")
     with h5py.File(exported / "blocks.nc") as data:
 

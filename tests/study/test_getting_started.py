@@ -21,7 +21,7 @@ EXAMPLES = [
 
 
 def test_the_guide_has_examples() -> None:
-    assert {next(iter(example)) for example in EXAMPLES} == {"domains", "scenarios", "cutoff"}
+    assert {next(iter(example)) for example in EXAMPLES} == {"domains", "scenarios", "cutoff", "exploration"}
 
 
 @pytest.mark.parametrize("example", EXAMPLES, ids=lambda example: next(iter(example)))
