@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from typing import Any
 
 from sms_resource.units import column_element, element_label
 
@@ -31,3 +32,11 @@ def round_ranges(true: list[float]) -> tuple[list[float], list[float], list[int]
 def label_of(column: str) -> str:
     """What the colour bar says: name and unit."""
     return element_label(column) if column_element(column) else column.replace("_", " ")
+
+
+def clear_corners(axes: Any) -> None:
+    """Leave out the first and last number of each axis: two would stand on one another where axes meet."""
+    for axis in range(3):
+        names = axes.GetAxisLabels(axis)
+        for end in (0, names.GetNumberOfValues() - 1):
+            names.SetValue(end, "")

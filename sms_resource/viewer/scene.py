@@ -11,7 +11,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from sms_resource.units import column_element
-from sms_resource.viewer.axes import label_of, round_ranges
+from sms_resource.viewer.axes import clear_corners, label_of, round_ranges
 from sms_resource.viewer.geometry import (
     View,
     block_skin,
@@ -358,10 +358,7 @@ class Scene:
             n_ylabels=counts[1], n_zlabels=counts[2], color=INK, font_size=12, location="outer", use_3d_text=False,
             render=False,
         )  # fmt: skip
-        for axis in range(3):
-            names = axes.GetAxisLabels(axis)
-            for end in (0, names.GetNumberOfValues() - 1):
-                names.SetValue(end, "")  # numbers of two axes would stand on one another where these meet
+        clear_corners(axes)
 
     def _height_title(self) -> str:
         if self.view.thickness is not None:
