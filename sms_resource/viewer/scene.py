@@ -351,14 +351,13 @@ class Scene:
         true = self.view.true_ranges(tuple(self.plotter.bounds))
         low, high, counts = round_ranges(true)
         self._bounds = self.view.scene_bounds(low, high)
-        axes: Any = self.plotter.show_bounds(
+        clear_corners(self.plotter.show_bounds(
             bounds=self._bounds, axes_ranges=[v for pair in zip(low, high, strict=True) for v in pair],
             xtitle="Easting (m)", ytitle="Northing (m)",
             ztitle=self._height_title(), fmt="%.0f", n_xlabels=counts[0],
             n_ylabels=counts[1], n_zlabels=counts[2], color=INK, font_size=12, location="outer", use_3d_text=False,
             render=False,
-        )  # fmt: skip
-        clear_corners(axes)
+        ))  # fmt: skip
 
     def _height_title(self) -> str:
         if self.view.thickness is not None:
