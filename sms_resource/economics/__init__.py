@@ -12,7 +12,6 @@ from sms_resource.economics.scenario_terms import CheapScenario
 from sms_resource.economics.scenarios import (
     ScenarioError,
     expand_overrides,
-    heat_table,
     one_at_a_time,
     tornado_table,
 )
@@ -46,7 +45,6 @@ __all__ = [
     "exact_parts",
     "expand_overrides",
     "grade_tonnage",
-    "heat_table",
     "metal_equivalent",
     "mineable_shapes",
     "missing_tonnage",

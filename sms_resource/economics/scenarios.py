@@ -150,23 +150,5 @@ def tornado_table(
     return table.sort_values(["_order", "rank"], ignore_index=True)[columns]
 
 
-def heat_table(results: pd.DataFrame, *, rows: str, columns: str, measure: str) -> pd.DataFrame:
-    """A two-way grid of one measure: values of one key down, of the other across, both in the order met.
-
-    Raises
-    ------
-    ValueError
-        If two scenarios share a cell, which means a third key varies.
-    """
-    twice = results.duplicated([rows, columns])
-    if twice.any():
-        cell = results.loc[twice, [rows, columns]].iloc[0].to_dict()
-        raise ValueError(
-            f"two scenarios share the cell {cell}: a heat table needs exactly two keys that vary"
-        )
-    table = results.pivot(index=rows, columns=columns, values=measure)  # noqa: PD010, a cell holds one scenario
-    return table.reindex(index=pd.unique(results[rows]), columns=pd.unique(results[columns]))
-
-
 def _label(keys: Mapping[str, Any]) -> str:
     return ", ".join(f"{key}={value}" for key, value in keys.items())

@@ -62,26 +62,38 @@ def _thinned(targets: ArrayLike, most: int) -> np.ndarray:
     return places[np.linspace(0, len(places) - 1, most).round().astype(int)]
 
 
-def operations(samples: np.ndarray, points: int) -> float:
-    """Mean floating-point operations of an estimate, counted from its systems and not measured.
+def operation_parts(samples: ArrayLike, points: int, shared: float = 1.0) -> dict[str, np.ndarray]:
+    """Floating-point operations of an estimate with one spherical structure, counted and not measured.
 
     Parameters
     ----------
-    samples : ndarray (targets,)
+    samples : array_like (targets,)
         Samples that each target found.
     points : int
         Points that stand for a block.
+    shared : float
+        Targets that share one factorisation, because they see the same samples.
 
     Returns
     -------
-    float
-        Covariances between samples (17 operations each) and with the points (14 each), factorisation (n^3/3 + n^2) and
-        weights (2 n^2 + 6 n); an upper bound where targets that see the same samples share a factorisation.
+    dict of ndarray (targets,)
+        Covariances between samples (differences, scaling, squares, root and polynomial: 17 each) and with the points (14
+        each, which are scaled before), factorisation, weights, estimate. A square root counts as one.
     """
     n = np.asarray(samples, dtype=float)
-    if not len(n):
-        return float("nan")
-    return float(np.mean(8.5 * n * (n - 1.0) + 14.0 * n * points + n**3 / 3.0 + 3.0 * n**2 + 6.0 * n))
+    return {
+        "sample covariances": n * (n - 1.0) / 2.0 * 17.0 / shared,
+        "factorisation": (n**3 / 3.0 + n**2) / shared,
+        "block covariances": n * points * 14.0,
+        "weights": 2.0 * n**2 + 6.0 * n,
+        "estimate": 4.0 * n,
+    }
+
+
+def operations(samples: ArrayLike, points: int) -> float:
+    """Mean of all :func:`operation_parts` over targets that share nothing; NaN where there are none."""
+    n = np.asarray(samples, dtype=float)
+    return float(np.mean(sum(operation_parts(n, points).values()))) if len(n) else float("nan")
 
 
 def neighbourhood_study(

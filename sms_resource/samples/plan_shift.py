@@ -156,12 +156,9 @@ def horizontal_fit(
     count = np.isfinite(difference).sum(axis=1)
     enough = count >= max(3, int(0.8 * len(x)))
     difference, east, north, count = difference[enough], east[enough], north[enough], count[enough]
-    median = np.nanmedian(difference, axis=1) if len(difference) else np.empty(0)
-    spread = (
-        1.4826 * np.nanmedian(np.abs(difference - median[:, None]), axis=1)
-        if len(difference)
-        else np.empty(0)
-    )
+    some = len(difference) > 0
+    median = np.nanmedian(difference, axis=1) if some else np.empty(0)
+    spread = _spread(difference) if some else np.empty(0)
     table = pd.DataFrame(
         {
             "shift_east_m": east,

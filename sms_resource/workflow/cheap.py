@@ -17,6 +17,7 @@ from sms_resource.units import element_column
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.screening import kept
 from sms_resource.workflow.state import ClassState
+from sms_resource.workflow.tonnage_tables import cutoff_column
 from sms_resource.workflow.worth import cost_model, selling_terms
 
 CHEAP = ("value", "cutoff")
@@ -27,12 +28,6 @@ Row = dict[str, float]
 def is_cheap(changes: dict[str, Any]) -> bool:
     """Whether a scenario changes nothing but value and cut-off."""
     return bool(changes) and all(name.partition(".")[0] in CHEAP for name in changes)
-
-
-def cutoff_column(config: Any) -> str:
-    """Block column that the cut-off is on."""
-    special = {"equivalent": "equivalent", "value": "value_per_dry_tonne"}
-    return special.get(config.cutoff.variable) or element_column(config.cutoff.variable)
 
 
 def cutoff_words(config: Any) -> str:
@@ -128,9 +123,7 @@ def _by_worth(
     table, findings = cheap_scenarios(
         left, [scenario for scenario, _ in wanted.values()], metals=metals, parts="proposed_class"
     )
-    if (
-        findings.has_errors
-    ):  # what is whole has no errors, so this is a difference between the rooms: leave it
+    if findings.has_errors:  # the rooms differ on what is whole: the stages decide
         return {}
     for name in NAMED:
         if f"{name}_dry_tonnes" not in table:

@@ -6,7 +6,7 @@ from typing import Any
 
 import pandas as pd
 
-from sms_resource.workflow.cheap import cutoff_column, cutoff_words
+from sms_resource.workflow.cheap import cutoff_words
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.screening import kept, on_to_delivery, skinned
 from sms_resource.workflow.splits import CARRIED, split_tables
@@ -16,7 +16,7 @@ from sms_resource.workflow.state import (
     ClassState,
     ProposalState,
 )
-from sms_resource.workflow.tonnage_tables import tonnage_table, variable_column
+from sms_resource.workflow.tonnage_tables import cutoff_column, tonnage_table, variable_column
 from sms_resource.workflow.worth import valued
 
 

@@ -390,8 +390,3 @@ def _value(study: Study, done: dict[str, Any], extra: dict[str, Any]) -> ValueEv
         tornado=extra.get("tornado"),
         heat_maps=tuple(extra.get("heat_maps", ())),
     )
-
-
-def judged_metal(config: Any) -> str:
-    """Column of the metal that classes are judged on."""
-    return element_column(config.classes.judged_on)

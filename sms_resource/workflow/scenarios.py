@@ -12,7 +12,7 @@ import pandas as pd
 
 from sms_resource.findings import Findings
 from sms_resource.study import Study, StudyError, decisions
-from sms_resource.workflow.cheap import cheap_rows, cutoff_column, is_cheap, measures_at
+from sms_resource.workflow.cheap import cheap_rows, is_cheap, measures_at
 from sms_resource.workflow.stage import (
     ConfigView,
     Progress,
@@ -21,6 +21,7 @@ from sms_resource.workflow.stage import (
     run_stages,
     stage_key,
 )
+from sms_resource.workflow.tonnage_tables import cutoff_column
 
 Changes = dict[str, Any]
 

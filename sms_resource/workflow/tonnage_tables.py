@@ -21,6 +21,11 @@ def variable_column(variable: str) -> str:
     return SPECIAL.get(variable) or element_column(variable)
 
 
+def cutoff_column(config: Any) -> str:
+    """Block column that the study's cut-off is on."""
+    return variable_column(config.cutoff.variable)
+
+
 def levels(
     values: NDArray[np.float64], wanted: Any, must: Sequence[float], most: int
 ) -> tuple[list[float], int]:

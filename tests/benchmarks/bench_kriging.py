@@ -30,6 +30,7 @@ from sms_resource.geostatistics.inputs import checked_samples
 from sms_resource.geostatistics.kriging import Outputs
 from sms_resource.geostatistics.kriging_run import krige_found
 from sms_resource.geostatistics.kriging_setup import model_arrays
+from sms_resource.geostatistics.neighbourhood_study import operation_parts
 from sms_resource.geostatistics.search_run import Finder, target_chunks
 
 pytestmark = pytest.mark.benchmark
@@ -242,21 +243,6 @@ def test_leave_one_hole_out(capsys):
     assert rows[0]["seconds"] < 5.0
 
 
-def arithmetic(n: int, points: int, shared: float) -> dict[str, float]:
-    """Floating-point operations a block and metal with one spherical structure (a square root counts as one).
-
-    ``shared`` is the number of blocks that share one factorisation.
-    """
-    covariance = 3 + 3 + 5 + 1 + 5  # differences, scaling, squares and sums, root, polynomial
-    return {
-        "sample covariances": n * (n - 1) / 2 * covariance / shared,
-        "factorisation": (n**3 / 3.0 + n**2) / shared,
-        "block covariances": n * points * (3 + 5 + 1 + 5),
-        "weights": 2.0 * n * n + 6.0 * n,
-        "estimate": 4.0 * n,
-    }
-
-
 def test_where_the_time_goes(capsys):
     """Search and kriging apart, on one thread, against the arithmetic and against a matrix product."""
     points, values, holes = deposit(1)
@@ -305,7 +291,7 @@ def test_where_the_time_goes(capsys):
                     estimated += len(runs[0])
                     taken += int(found.count.sum())
             shared = estimated / found_runs
-            parts = arithmetic(round(taken / estimated), 27, shared)
+            parts = {name: float(v) for name, v in operation_parts(taken / estimated, 27, shared).items()}
             operations = sum(parts.values())
             achieved = operations * estimated / spent["kriging"] / 1e9
             rows.append(

@@ -16,7 +16,6 @@ from sms_resource.economics import (
     build_ledger,
     difference_waterfall,
     expand_overrides,
-    heat_table,
     one_at_a_time,
     tornado_table,
 )
@@ -81,15 +80,6 @@ def test_tornado_ranks_by_swing() -> None:
     grades = table[table.measure == "cu_pct"]
     assert grades.key.iloc[0] == "cut" and grades.set_index("key").swing_pct["none"] == 0.0
     assert tornado_table(results.head(0), {"dry_tonnes": 1.0}, ["dry_tonnes"]).empty
-
-
-def test_heat_table_keeps_the_order_met() -> None:
-    results = pd.DataFrame({"x": [2, 2, 1, 1], "y": ["b", "a", "b", "a"], "t": [1.0, 2.0, 3.0, 4.0]})
-    table = heat_table(results, rows="x", columns="y", measure="t")
-    assert table.index.tolist() == [2, 1] and table.columns.tolist() == ["b", "a"]
-    assert table.to_numpy().tolist() == [[1.0, 2.0], [3.0, 4.0]]
-    with pytest.raises(ValueError, match="exactly two"):
-        heat_table(pd.concat([results, results]), rows="x", columns="y", measure="t")
 
 
 DECISIONS = [

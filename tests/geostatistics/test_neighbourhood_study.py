@@ -14,6 +14,7 @@ from sms_resource.geostatistics import (
     neighbourhood_study,
     ordinary_kriging,
 )
+from sms_resource.geostatistics.neighbourhood_study import operation_parts, operations
 
 from .kriging_twin import scene
 
@@ -98,3 +99,16 @@ def test_targets_are_thinned():
     )  # fmt: skip
     assert (made.table["targets"] == 100).all()
     assert made.block_size is None and made.discretisation is None
+
+
+@pytest.mark.parametrize("count", [8, 16, 24, 40])
+def test_counted_arithmetic_is_near_that_of_lapack(count):
+    """Factorisation and weights against dpotrf and dpotrs: LAPACK Working Note 41 (from memory), one right side."""
+    parts = operation_parts(np.array([count]), 27)
+    known = count**3 / 3 + count**2 / 2 + count / 6 + 2 * count**2
+    assert parts["factorisation"][0] + parts["weights"][0] == pytest.approx(
+        known, rel=0.3 if count < 16 else 0.15
+    )
+    assert operations([count, count], 27) == pytest.approx(sum(part[0] for part in parts.values()), rel=1e-12)
+    assert operations([count], 8) < operations([count], 27) < operations([count + 1], 27)
+    assert np.isnan(operations([], 27))
