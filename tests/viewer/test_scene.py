@@ -306,6 +306,9 @@ def test_window_under_xvfb(folder: Path, tmp_path: Path) -> None:
     script.write_text(WINDOW)
     command = [xvfb, "-a", "-s", "-screen 0 1024x768x24", sys.executable, str(script), str(folder)]
     done = subprocess.run(command, capture_output=True, text=True, timeout=300, check=False)
+    if "Could not create shader object" in done.stderr:
+        # Two servers that start at once may take one display number, and one window loses its context: once more.
+        done = subprocess.run(command, capture_output=True, text=True, timeout=300, check=False)
     assert done.returncode == 0, done.stderr[-3000:]
     assert "CLASS vtkX" in done.stdout
 
