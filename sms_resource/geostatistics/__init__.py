@@ -31,8 +31,8 @@ _HOME: dict[str, str] = {
     "sample_findings": "sample_checks",
     "companion_estimates": "companions",
     "leave_one_out": "leave_out",
-    "neighbourhood_study": "neighbourhood_study",
-    "NeighbourhoodStudy": "neighbourhood_study",
+    "neighbourhood_study": "search_study",
+    "NeighbourhoodStudy": "search_study",
     # experimental variograms, fit and validation
     "ExperimentalVariogram": "experimental",
     "experimental_variogram": "experimental",

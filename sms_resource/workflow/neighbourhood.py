@@ -24,7 +24,7 @@ def neighbourhood_table(context: Context) -> pd.DataFrame:
     config = context.config
     if not config.validation.neighbourhood_study:
         return pd.DataFrame()
-    from sms_resource.geostatistics.neighbourhood_study import neighbourhood_study
+    from sms_resource.geostatistics.search_study import neighbourhood_study
 
     blocks: BlockState = context.done["blocks"]
     state: VariogramState = context.done["variograms"]

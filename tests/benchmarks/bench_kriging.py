@@ -30,7 +30,7 @@ from sms_resource.geostatistics.inputs import checked_samples
 from sms_resource.geostatistics.kriging import Outputs
 from sms_resource.geostatistics.kriging_run import krige_found
 from sms_resource.geostatistics.kriging_setup import model_arrays
-from sms_resource.geostatistics.neighbourhood_study import operation_parts
+from sms_resource.geostatistics.search_study import operation_parts
 from sms_resource.geostatistics.search_run import Finder, target_chunks
 
 pytestmark = pytest.mark.benchmark

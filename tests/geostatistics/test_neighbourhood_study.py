@@ -14,7 +14,7 @@ from sms_resource.geostatistics import (
     neighbourhood_study,
     ordinary_kriging,
 )
-from sms_resource.geostatistics.neighbourhood_study import operation_parts, operations
+from sms_resource.geostatistics.search_study import operation_parts, operations
 
 from .kriging_twin import scene
 
