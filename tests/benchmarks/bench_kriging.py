@@ -30,8 +30,8 @@ from sms_resource.geostatistics.inputs import checked_samples
 from sms_resource.geostatistics.kriging import Outputs
 from sms_resource.geostatistics.kriging_run import krige_found
 from sms_resource.geostatistics.kriging_setup import model_arrays
-from sms_resource.geostatistics.search_study import operation_parts
 from sms_resource.geostatistics.search_run import Finder, target_chunks
+from sms_resource.geostatistics.search_study import operation_parts
 
 pytestmark = pytest.mark.benchmark
 CORES = min(2, os.cpu_count() or 1)
