@@ -16,8 +16,7 @@ from sms_resource.study import Study, StudyError
 from sms_resource.units import element_column
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.screening import kept
-from sms_resource.workflow.state import ClassState
-from sms_resource.workflow.tonnage_tables import cutoff_column
+from sms_resource.workflow.tonnage_tables import SPECIAL, cutoff_column
 from sms_resource.workflow.worth import cost_model, selling_terms
 
 CHEAP = ("value", "cutoff")
@@ -32,6 +31,8 @@ def is_cheap(changes: dict[str, Any]) -> bool:
 
 def cutoff_words(config: Any) -> str:
     """The study's cut-off in words with its unit: ``CuEq ≥ 2 %``, ``net value ≥ 200 US$/t dry``."""
+    if config.cutoff.variable not in SPECIAL:
+        return cutoff_phrase(cutoff_column(config), config.cutoff.at)
     return cutoff_phrase(
         cutoff_column(config), config.cutoff.at,
         equivalent_in=element_column(config.value.equivalent_in), currency=config.value.currency,
@@ -56,7 +57,7 @@ def measures_at(table: pd.DataFrame, at: float) -> Row:
     return found
 
 
-def cheap_rows(study: Study, changes: list[dict[str, Any]], state: ClassState) -> dict[int, Row]:
+def cheap_rows(study: Study, changes: list[dict[str, Any]], blocks: pd.DataFrame) -> dict[int, Row]:
     """Measures of scenarios of value and cut-off, as fresh runs give them, bit for bit.
 
     Parameters
@@ -64,15 +65,15 @@ def cheap_rows(study: Study, changes: list[dict[str, Any]], state: ClassState) -
     study : Study
     changes : list of dict
         What each scenario changes; those that are not cheap are passed over.
-    state : ClassState
-        Output of the stage classify of the study as it is.
+    blocks : DataFrame
+        Frame of the stage value of the study as it is.
 
     Returns
     -------
     dict
         Row by position in ``changes``. What is not here has to go through the stages.
     """
-    left = kept(state.frame)
+    left = kept(blocks)
     metals = metal_columns(study.config)
     grades = _Grades(left)
     found: dict[int, Row] = {}
@@ -87,7 +88,7 @@ def cheap_rows(study: Study, changes: list[dict[str, Any]], state: ClassState) -
         except (StudyError, ValueError):
             continue  # the stages tell what is wrong with it
         column = cutoff_column(config)
-        if config.cutoff.variable in ("value", "equivalent"):
+        if config.cutoff.variable in SPECIAL:
             scenario = _scenario(str(index), config, terms, costs)
             if scenario is not None and grades.whole(scenario):
                 by_worth[index] = (scenario, config)
@@ -95,7 +96,7 @@ def cheap_rows(study: Study, changes: list[dict[str, Any]], state: ClassState) -
             by_metal.setdefault(column, {})[index] = config.cutoff.at
     for column, wanted in by_metal.items():
         found.update(_by_metal(left, metals, column, wanted))
-    found.update(_by_worth(left, state.frame.loc[left.index], metals, by_worth))
+    found.update(_by_worth(left, blocks.loc[left.index], metals, by_worth))
     return found
 
 

@@ -65,7 +65,7 @@ def mean_rows(done: dict[str, Any], metals: list[str]) -> pd.DataFrame:
     would be that took both for the same.
     """
     samples = done["variograms"].samples
-    frame = done["classify"].frame[["dry_tonnes", *metals]]
+    frame = done["value"].frame[["dry_tonnes", *metals]]
     by_domain = done["estimate"].domain_means.set_index(["domain", "metal"])["mean"]
     surface = done["composite"].surface
     rows = []
@@ -143,7 +143,7 @@ def support_rows(curves: pd.DataFrame, done: dict[str, Any], config: Any) -> pd.
     if not len(curves):
         return pd.DataFrame(columns=["metal", "cutoff", "support", "proportion", "grade"])
     metal = str(curves["metal"].iloc[0])
-    frame = done["classify"].frame[["domain", "dry_tonnes", metal]]
+    frame = done["value"].frame[["domain", "dry_tonnes", metal]]
     rows = []
     domains = curves["domain"].unique()
     inside = frame[frame["domain"].isin(domains) & frame[metal].notna()]

@@ -1,9 +1,10 @@
-"""Stage classify: value, and the tables of tonnes by proposed class."""
+"""Stages value and classify: what the blocks are worth, and the tables of tonnes by proposed class."""
 
 from __future__ import annotations
 
 from typing import Any
 
+import numpy as np
 import pandas as pd
 
 from sms_resource.workflow.cheap import cutoff_words
@@ -15,25 +16,40 @@ from sms_resource.workflow.state import (
     BlockState,
     ClassState,
     ProposalState,
+    ValueState,
 )
-from sms_resource.workflow.tonnage_tables import cutoff_column, tonnage_table, variable_column
+from sms_resource.workflow.tonnage_tables import (
+    cut_on_worth,
+    cutoff_column,
+    study_steps,
+    tonnage_table,
+    variable_column,
+)
 from sms_resource.workflow.worth import valued
 
 
+def value(context: Context) -> ValueState:
+    """Value the blocks, where the study gives terms; nothing of it depends on what screens take of them but a table."""
+    config = context.config
+    proposal: ProposalState = context.done["propose"]
+    frame, tables, facts = valued(context, proposal.frame.copy(deep=False))
+    variable = cutoff_column(config)
+    return ValueState(frame, facts, {"value_against_grade": by_value(frame, variable, config), **tables})
+
+
 def classify(context: Context) -> ClassState:
-    """Value the blocks, and sum what screens and cut-offs leave of them."""
+    """Sum what screens and cut-offs leave of the blocks; what they are worth counts only where a cut-off is on it."""
     config = context.config
     metals = metal_columns(config)
     blocks: BlockState = context.done["blocks"]
     proposal: ProposalState = context.done["propose"]
-    frame, value_tables, value_facts = valued(context, proposal.frame.copy(deep=False))
+    frame: pd.DataFrame = context.done["value"].frame if cut_on_worth(config) else proposal.frame
     variable, at = cutoff_column(config), config.cutoff.at
     if variable not in frame or not frame[variable].notna().any():
-        if not context.findings.has_errors:
-            context.findings.error(
-                "cutoff-unknown", f"no block has a {config.cutoff.variable} to cut on",
-                "Fill [value.metals], or cut on a metal.", file=context.study.path.name, column="cutoff.variable",
-            )  # fmt: skip
+        context.findings.error(
+            "cutoff-unknown", f"no block has a {config.cutoff.variable} to cut on",
+            "Fill [value.metals], or cut on a metal.", file=context.study.path.name, column="cutoff.variable",
+        )  # fmt: skip
         raise StageStop
     left = kept(frame[summed_columns(frame, metals, config)])
     tonnage, steps = tonnage_table(context, left, metals)
@@ -53,39 +69,37 @@ def classify(context: Context) -> ClassState:
     shape = shapes(frame, blocks, variable, at, metals, config)
     context.detail = f"{above.sum():,.0f} dry t above the cut-off"
     return ClassState(
-        frame=frame,
         reasons=proposal.reasons,
         smoothing=proposal.smoothing,
         waterfall=waterfall,
         grade_tonnage=tonnage,
-        facts={"tally_label": proposal.tally_label, "cutoff_variable": variable, **skin_facts, **value_facts},
+        facts={"tally_label": proposal.tally_label, "cutoff_variable": variable, **skin_facts},
         tables={
             **proposal.tables,
             **split,
             **({} if skins is None else {"dilution_and_loss": skins}),
             "mineable_shape": shape,
-            "value_against_grade": by_value(left, variable, steps),
-            **value_tables,
         },
     )
 
 
 def summed_columns(frame: pd.DataFrame, metals: list[str], config: Any) -> list[str]:
     """Columns that tables of tonnes are summed from; a block has a hundred others, which are dear to select from."""
-    wanted = {*CARRIED, *metals, "kept_share", "domain", "proposed_class", "value_per_dry_tonne", "equivalent",
+    wanted = {*CARRIED, *metals, "kept_share", "domain", "proposed_class",
               *map(variable_column, (config.cutoff.variable, *config.cutoff.curves))}  # fmt: skip
     return [name for name in frame if name in wanted]
 
 
-def by_value(left: pd.DataFrame, variable: str, steps: list[float]) -> pd.DataFrame:
+def by_value(frame: pd.DataFrame, variable: str, config: Any) -> pd.DataFrame:
     """What choosing the same dry tonnes by value would gain over a grade cut-off; empty without value or grade."""
     from sms_resource.economics import value_against_grade
 
-    if "value_per_dry_tonne" not in left or variable == "value_per_dry_tonne":
+    worth = "value_per_dry_tonne"
+    if variable == worth or variable not in frame or worth not in frame or not frame[worth].notna().any():
         return pd.DataFrame()
-    if not left["value_per_dry_tonne"].notna().any():
-        return pd.DataFrame()
-    table = value_against_grade(left, value="value_per_dry_tonne", grade=variable, cutoffs=steps)
+    left = kept(frame[[*CARRIED, "kept_share", variable, worth]])
+    steps = study_steps(config.cutoff, left[variable].to_numpy(dtype=np.float64))
+    table = value_against_grade(left, value=worth, grade=variable, cutoffs=steps)
     return table[table["dry_tonnes"] > 0].reset_index(drop=True)
 
 

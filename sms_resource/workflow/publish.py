@@ -113,7 +113,8 @@ def write_tables(
     """Tables of tonnes and findings; the block model by a thread that is returned."""
     metals = metal_columns(study.config)
     state: ClassState = done["classify"]
-    frame = state.frame[block_columns(state.frame, metals)]
+    blocks: pd.DataFrame = done["value"].frame
+    frame = blocks[block_columns(blocks, metals)]
     writing = pool.submit(frame.to_parquet, folder / "block_model.parquet", index=False, compression="zstd")
     state.grade_tonnage.to_csv(folder / "grade_tonnage.csv", index=False)
     write_splits(folder, state.tables)

@@ -44,6 +44,7 @@ from sms_resource.workflow.state import (
     DensityState,
     EvidenceState,
     ValidationState,
+    ValueState,
     VariogramState,
 )
 
@@ -231,7 +232,7 @@ def _body(study: Study, done: dict[str, Any]) -> BodyEvidence:
         exclusions=data.exclusions,
         volumes=volumes,
         extrapolation={
-            "greatest_distance_m": float(done["classify"].frame["nearest_distance_m"].max()),
+            "greatest_distance_m": float(done["value"].frame["nearest_distance_m"].max()),
             "share_pct": 100.0 * extrapolated,
             "basis": (
                 f"drilled: within {config.body.drilled_within_m:g} m of a hole; below holes that ended in sulphide the "
@@ -378,14 +379,14 @@ def target_words(table: pd.DataFrame | None) -> dict[str, Any] | None:
 
 def _value(study: Study, done: dict[str, Any], extra: dict[str, Any]) -> ValueEvidence:
     state: ClassState = done["classify"]
-    costs = state.tables.get("cutoffs")
+    worth: ValueState = done["value"]
     return ValueEvidence(
-        grade_tonnage=with_equivalent(state.grade_tonnage, state.frame),
+        grade_tonnage=with_equivalent(state.grade_tonnage, worth.frame),
         beside_support=beside_support(done, study.config),
-        by_value=state.tables.get("value_against_grade"),
+        by_value=worth.tables.get("value_against_grade"),
         mineable_shape=state.tables.get("mineable_shape"),
-        equivalent=state.facts.get("equivalent"),
-        cutoff_costs=costs,
+        equivalent=worth.facts.get("equivalent"),
+        cutoff_costs=worth.tables.get("cutoffs"),
         scenarios=extra.get("scenarios"),
         tornado=extra.get("tornado"),
         heat_maps=tuple(extra.get("heat_maps", ())),

@@ -238,7 +238,7 @@ def _result(study: Study, outcome: Outcome, summary: Any) -> Result:
     done = outcome.done
     return Result(
         findings=outcome.findings,
-        block_model=done["blocks"].model.with_frame(done["classify"].frame),
+        block_model=done["blocks"].model.with_frame(done["value"].frame),
         grade_tonnage=done["classify"].grade_tonnage,
         variograms=done["variograms"].inferences,
         summary=summary,

@@ -14,7 +14,6 @@ from sms_resource.findings import Findings
 from sms_resource.study import Study, StudyError, decisions
 from sms_resource.workflow.cheap import cheap_rows, is_cheap, measures_at
 from sms_resource.workflow.stage import (
-    ConfigView,
     Progress,
     StageCache,
     named_files,
@@ -155,7 +154,7 @@ def final_key(study: Study, files: dict[str, str]) -> str:
     keys: dict[str, str] = {}
     named = named_files(files, study)
     for stage in outcome_stages():
-        keys[stage.name] = stage_key(stage, ConfigView(study.config, stage.reads), keys, named)
+        keys[stage.name] = stage_key(stage, study, keys, named)
     return keys["classify"]
 
 
@@ -251,7 +250,7 @@ def at_once(
     if progress:
         progress.started("scenarios", f"{count} scenarios of value and cut-off")
     outcome = run_stages(outcome_stages(), study, store=recent, threads=threads, files=files)
-    found = cheap_rows(study, [scenario.changes for scenario in scenarios], outcome.done["classify"])
+    found = cheap_rows(study, [scenario.changes for scenario in scenarios], outcome.done["value"].frame)
     if progress:
         detail = f"{len(found)} scenarios of value and cut-off, in one pass over the blocks"
         progress.finished("scenarios", time.perf_counter() - begun, detail, False)

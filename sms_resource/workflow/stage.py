@@ -107,6 +107,22 @@ class Context:
 
 
 @dataclass(frozen=True)
+class Also:
+    """Sections and stages that a stage depends on only where a study asks for it.
+
+    Attributes
+    ----------
+    where : callable
+        Takes the whole study, tells whether it does.
+    reads, needs : tuple of str
+    """
+
+    where: Callable[[StudyConfig], bool]
+    reads: tuple[str, ...]
+    needs: tuple[str, ...]
+
+
+@dataclass(frozen=True)
 class Stage:
     """One step of a study.
 
@@ -124,6 +140,8 @@ class Stage:
         Whether the contents of the study's files are part of its key.
     extends : str or None
         Stage to whose frame of blocks this one adds columns; only those are kept.
+    also : Also or None
+        What it depends on in some studies only.
     """
 
     name: str
@@ -133,6 +151,15 @@ class Stage:
     work: Callable[[Context], Any]
     reads_files: bool = False
     extends: str | None = None
+    also: Also | None = None
+
+    def all_reads(self, config: StudyConfig) -> tuple[str, ...]:
+        """Sections that the stage depends on in a given study."""
+        return self.reads + (self.also.reads if self.also and self.also.where(config) else ())
+
+    def all_needs(self, config: StudyConfig) -> tuple[str, ...]:
+        """Stages whose outputs it uses in a given study."""
+        return self.needs + (self.also.needs if self.also and self.also.where(config) else ())
 
 
 @dataclass
@@ -186,13 +213,14 @@ def file_hash(path: Path) -> str:
     return digest.hexdigest()
 
 
-def stage_key(stage: Stage, view: ConfigView, keys: dict[str, str], files: dict[str, str]) -> str:
+def stage_key(stage: Stage, study: Study, keys: dict[str, str], files: dict[str, str]) -> str:
     """Name of a stage's output in the cache: what it reads, what it needs, and the code that makes it."""
+    view = ConfigView(study.config, stage.all_reads(study.config))
     content = {
         "stage": stage.name,
         "code": code_fingerprint(),
         "reads": view.canonical(),
-        "needs": [keys[name] for name in stage.needs],
+        "needs": [keys[name] for name in stage.all_needs(study.config)],
         "files": files if stage.reads_files else {},
     }
     return hashlib.sha256(json.dumps(content, sort_keys=True).encode()).hexdigest()
@@ -258,8 +286,8 @@ def run_stages(
     for stage in stages:
         progress.started(stage.name, stage.label)
         begun = time.perf_counter()
-        view = ConfigView(study.config, stage.reads)
-        key = stage_key(stage, view, keys, named)
+        view = ConfigView(study.config, stage.all_reads(study.config))
+        key = stage_key(stage, study, keys, named)
         keys[stage.name] = key
         kept = store.get(key) if store is not None else None
         base = outcome.done[stage.extends].frame if stage.extends else None

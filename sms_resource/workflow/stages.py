@@ -12,7 +12,8 @@ from sms_resource.workflow import (
     proposal,
     validation,
 )
-from sms_resource.workflow.stage import Stage
+from sms_resource.workflow.stage import Also, Stage
+from sms_resource.workflow.tonnage_tables import cut_on_worth
 
 _SAMPLES = ("metals", "domains", "composites")
 
@@ -89,16 +90,25 @@ PROPOSE = Stage(
     proposal.propose,
     extends="estimate",
 )  # fmt: skip
+VALUE = Stage(
+    "value",
+    "Valuing the blocks",
+    ("cutoff", "value", "metals", "domains"),
+    ("propose",),
+    outcome.value,
+    extends="propose",
+)
+# What a price changes is summed again only where the cut-off is on it.
 CLASSIFY = Stage(
     "classify",
     "Summing tonnes",
-    ("screens", "cutoff", "value", "metals", "domains"),
+    ("screens", "cutoff", "metals", "domains"),
     ("density", "body", "blocks", "propose"),
     outcome.classify,
-    extends="propose",
+    also=Also(cut_on_worth, ("value",), ("value",)),
 )
 
 CHECK_STAGES = (LOAD, CHECK)
 ESTIMATE_STAGES = (
-    LOAD, CHECK, COMPOSITE, DENSITY, BODY, BLOCKS, VARIOGRAMS, ESTIMATE, VALIDATE, PROPOSE, CLASSIFY,
+    LOAD, CHECK, COMPOSITE, DENSITY, BODY, BLOCKS, VARIOGRAMS, ESTIMATE, VALIDATE, PROPOSE, VALUE, CLASSIFY,
 )  # fmt: skip

@@ -168,10 +168,24 @@ class ProposalState:
 
 
 @dataclass(frozen=True, eq=False)
-class ClassState:
-    """Output of the stage classify."""
+class ValueState:
+    """Output of the stage value.
+
+    Attributes
+    ----------
+    frame : DataFrame
+        One row a block, with value_per_dry_tonne, cost_per_dry_tonne and equivalent where the study gives terms.
+    """
 
     frame: pd.DataFrame
+    facts: dict[str, Any] = field(default_factory=dict)
+    tables: dict[str, pd.DataFrame] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, eq=False)
+class ClassState:
+    """Output of the stage classify; the blocks themselves are those of the stage value."""
+
     reasons: pd.DataFrame
     smoothing: pd.DataFrame
     waterfall: pd.DataFrame

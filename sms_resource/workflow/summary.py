@@ -33,7 +33,7 @@ def summarise(study: Study, done: dict[str, Any]) -> Summary:
     state: ClassState = done["classify"]
     metals = metal_columns(study.config)
     at = study.config.cutoff.at
-    table = with_equivalent(state.grade_tonnage, state.frame)
+    table = with_equivalent(state.grade_tonnage, done["value"].frame)
     equivalent = ["equivalent"] if "equivalent" in table else []
     rows = []
     order = {"measured": 0, "indicated": 1, "inferred": 2, "unclassified": 3, "all": 4}

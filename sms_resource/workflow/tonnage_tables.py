@@ -26,6 +26,16 @@ def cutoff_column(config: Any) -> str:
     return variable_column(config.cutoff.variable)
 
 
+def cut_on_worth(config: Any) -> bool:
+    """Whether a table of tonnes is cut on value or on an equivalent, so that prices move it."""
+    return any(variable in SPECIAL for variable in (config.cutoff.variable, *config.cutoff.curves))
+
+
+def study_steps(choice: Any, values: NDArray[np.float64]) -> list[float]:
+    """Cut-offs of tables that tell much apart: those of the study, or a few of all ``values``."""
+    return levels(values, choice.steps, (0.0, choice.at), FEW)[0]
+
+
 def levels(
     values: NDArray[np.float64], wanted: Any, must: Sequence[float], most: int
 ) -> tuple[list[float], int]:
@@ -109,7 +119,7 @@ def tonnage_table(
             )
         )
     own = left[variable_column(choice.variable)].to_numpy(dtype=np.float64)
-    return pd.concat(tables, ignore_index=True), levels(own, choice.steps, (0.0, choice.at), FEW)[0]
+    return pd.concat(tables, ignore_index=True), study_steps(choice, own)
 
 
 def support_levels(choice: Any, variable: str, samples: NDArray[np.float64]) -> NDArray[np.float64]:

@@ -21,7 +21,7 @@ def truth_page(study: Study, done: dict[str, Any]) -> dict[str, Any] | None:
         return None
     truth = json.loads(study.resolve(named).read_text(encoding="utf-8"))
     known = truth["body"]
-    frame = done["classify"].frame
+    frame = done["value"].frame
     metals = metal_columns(config)
     dry = float(frame["dry_tonnes"].sum())
     rows = [

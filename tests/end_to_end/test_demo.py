@@ -123,7 +123,7 @@ def test_the_truth_page_gives_figures_and_causes(demo: Demo, blocks: pd.DataFram
 def test_the_command_prints_stages_the_table_and_where_the_report_is(demo: Demo) -> None:
     lines = demo.printed.splitlines()
     stages = ["load", "check", "composite", "density", "body", "blocks", "variograms", "estimate", "validate",
-              "propose", "classify", "report"]  # fmt: skip
+              "propose", "value", "classify", "report"]  # fmt: skip
     assert [line.split()[0] for line in lines[: len(stages)]] == stages
     assert all(re.search(r"\d+\.\d\d s  ", line) for line in lines[: len(stages)])
     assert "dry" in demo.printed.lower() and str(demo.out / "report.html") in demo.printed

@@ -115,7 +115,7 @@ def test_a_solid_has_its_volume_and_a_constant_grade_stays_as_it_is(
 ) -> None:
     shape, volume = SOLIDS[name]
     outcome = estimated(solid(tmp_path, shape, azimuth))
-    frame = outcome.done["classify"].frame
+    frame = outcome.done["value"].frame
     assert frame["volume_m3"].sum() == pytest.approx(volume, rel=0.005)
     assert frame["dry_tonnes"].sum() == pytest.approx(DENSITY * volume, rel=0.005)
     # weights sum to one: every block has the grade that every sample has

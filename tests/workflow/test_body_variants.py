@@ -133,7 +133,7 @@ def test_other_interpolations_honour_the_contacts(tmp_path: Path, plain: Outcome
 @pytest.mark.parametrize("layout", ["indicator", "signed_distance"])
 def test_logged_domains_keep_their_probability(tmp_path: Path, layout: str) -> None:
     outcome = run(tmp_path, decide(domains={"layout": layout}))
-    frame = outcome.done["classify"].frame
+    frame = outcome.done["value"].frame
     likely = frame[["probability_cap", "probability_massive"]].to_numpy()
     assert (likely >= 0).all() and (likely <= 1).all()
     np.testing.assert_allclose(likely.sum(axis=1), 1.0, atol=1e-6)
@@ -175,7 +175,7 @@ def chimneys(source: str) -> list[Change]:
 @pytest.mark.parametrize("source", ["polygons", "relief"])
 def test_chimneys_are_a_light_domain_on_top(tmp_path: Path, source: str) -> None:
     outcome = run(tmp_path, *chimneys(source))
-    frame = outcome.done["classify"].frame
+    frame = outcome.done["value"].frame
     share = frame["share_chimney"] * frame["volume_m3"]
     wanted = np.pi * 16.0 * 5.0  # on cells of 1 m, and the relief finds the foot by a smoothed seafloor
     assert share.sum() == pytest.approx(wanted, rel=0.35)
@@ -225,7 +225,7 @@ def test_outside_the_tenure_is_taken_and_told(tmp_path: Path) -> None:
     outcome = run(tmp_path, change)
     fall = outcome.done["classify"].waterfall
     assert fall["step"].tolist()[:2] == ["body", "tenure"] and fall["taken_dry_tonnes"].iloc[1] > 0
-    frame = outcome.done["classify"].frame
+    frame = outcome.done["value"].frame
     assert frame.loc[frame["easting"] > CENTRE[0] + 8.0, "kept_share"].max() == 0.0
 
 
@@ -234,7 +234,7 @@ def test_other_vertical_frames_leave_blocks_in_their_place(
     tmp_path: Path, plain: Outcome, frame: str
 ) -> None:
     outcome = run(tmp_path, decide(blocks={"vertical_frame": frame}))
-    there = outcome.done["classify"].frame[["easting", "northing", "elevation", "volume_m3"]]
+    there = outcome.done["value"].frame[["easting", "northing", "elevation", "volume_m3"]]
     pd.testing.assert_frame_equal(there, plain.done["blocks"].model.frame[there.columns.tolist()])
     assert outcome.done["blocks"].frame.kind == frame
     effect = outcome.done["validate"].facts["frames_effect"]
@@ -245,7 +245,9 @@ def test_tonnes_stand_by_slope_of_the_seafloor(tmp_path: Path) -> None:
     outcome = run(tmp_path)
     state = outcome.done["classify"]
     table = state.tables["slope_classes"].set_index("slope")
-    assert table["dry_tonnes"].sum() == pytest.approx(state.frame["dry_tonnes"].sum(), rel=1e-9)
+    assert table["dry_tonnes"].sum() == pytest.approx(
+        outcome.done["value"].frame["dry_tonnes"].sum(), rel=1e-9
+    )
     assert table["share_pct"].sum() == pytest.approx(100.0)
     assert table["area_m2"].sum() == pytest.approx(outcome.done["body"].outline.area, rel=2e-3)
     # The mound's steepest place, by its own formula: 12 / 16 e^-1/2 = 0.455, 24.5 degrees.

@@ -25,7 +25,7 @@ from sms_resource.workflow.scenarios import (
     stage_row_key,
 )
 from sms_resource.workflow.stage import Outcome, run_stages
-from sms_resource.workflow.state import ClassState
+from sms_resource.workflow.state import ValueState
 from tests.economics.test_cheap_scenarios import model
 from tests.end_to_end.small_study import SmallStudy
 
@@ -84,8 +84,8 @@ def store(study: Study, tmp_path_factory: pytest.TempPathFactory) -> StageCache:
 
 
 @pytest.fixture(scope="module")
-def state(study: Study, store: StageCache) -> ClassState:
-    return run_stages(outcome_stages(), study, store=store, files=hashes(study)).done["classify"]
+def blocks(study: Study, store: StageCache) -> pd.DataFrame:
+    return run_stages(outcome_stages(), study, store=store, files=hashes(study)).done["value"].frame
 
 
 def test_every_column_is_that_of_a_fresh_run_bit_for_bit(study: Study, store: StageCache) -> None:
@@ -107,17 +107,17 @@ def test_every_column_is_that_of_a_fresh_run_bit_for_bit(study: Study, store: St
 
 
 def test_a_block_on_the_very_edge_is_taken_as_the_stage_takes_it(
-    study: Study, store: StageCache, state: ClassState, monkeypatch: pytest.MonkeyPatch
+    study: Study, store: StageCache, blocks: pd.DataFrame, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     """A cut-off that is the value of a block itself: the order of the arithmetic decides, so that of the stage is used."""
     priced = study.with_overrides({"cutoff.variable": "value"})
     fresh = run_stages(outcome_stages(), priced, store=store, files=hashes(study))
-    worth = np.sort(fresh.done["classify"].frame["value_per_dry_tonne"].dropna().unique())
+    worth = np.sort(fresh.done["value"].frame["value_per_dry_tonne"].dropna().unique())
     edges = [float(v) for v in worth[len(worth) // 4 :: len(worth) // 6]]
     used = []
     exact = cheap._worth
     monkeypatch.setattr(cheap, "_worth", lambda *given: used.append(1) or exact(*given))
-    rows = cheap.cheap_rows(study, [{"cutoff.variable": "value", "cutoff.at": at} for at in edges], state)
+    rows = cheap.cheap_rows(study, [{"cutoff.variable": "value", "cutoff.at": at} for at in edges], blocks)
     assert len(used) == len(edges) == len(rows)
     for number, at in enumerate(edges):
         changed = study.with_overrides({"cutoff.variable": "value", "cutoff.at": at})
@@ -135,8 +135,8 @@ def test_what_is_not_whole_is_left_to_the_stages_which_tell_why(study: Study, st
         {"density.factor": 1.05, "cutoff.at": 5.0},
         {"cutoff.variable": "value", "cutoff.at": 100.0},
     ]  # fmt: skip
-    state = run_stages(outcome_stages(), study, store=store, files=hashes(study)).done["classify"]
-    assert set(cheap.cheap_rows(study, changes, state)) == {5}
+    blocks = run_stages(outcome_stages(), study, store=store, files=hashes(study)).done["value"].frame
+    assert set(cheap.cheap_rows(study, changes, blocks)) == {5}
     run = run_scenarios(
         study, [Scenario(str(n), c, "list") for n, c in enumerate(changes)], store=store, files=hashes(study)
     )
@@ -155,7 +155,7 @@ def test_a_metal_that_is_not_paid_may_be_missing_from_the_blocks(tmp_path: Path)
     small = load_study(made.write())
     outcome = run_stages(outcome_stages(), small)
     assert not outcome.findings.has_errors, outcome.findings.errors
-    frame = outcome.done["classify"].frame
+    frame = outcome.done["value"].frame
     np.testing.assert_allclose(frame["equivalent"], frame["cu_pct"], rtol=1e-12)
     assert frame["value_per_dry_tonne"].notna().all()
 
@@ -179,10 +179,9 @@ def test_a_thousand_scenarios_of_a_study_of_a_million_blocks(
     large = load_study(made.write())
     frame = model(1_000_000).assign(proposed_class="inferred", kept_share=1.0, volume_m3=4.0)
     frame.loc[::3, "proposed_class"] = "indicated"
-    empty = pd.DataFrame()
     kept = StageCache(tmp_path / "cache")
     # The study's own stages are not part of the measure: their output is at hand.
-    base = Outcome(done={"classify": ClassState(frame, empty, empty, empty, empty)})
+    base = Outcome(done={"value": ValueState(frame)})
     monkeypatch.setattr("sms_resource.workflow.scenarios.run_stages", lambda *_, **__: base)
     kept.put(stage_row_key(final_key(large, {})), {"dry_tonnes": float(frame["dry_tonnes"].sum())})
     run_scenarios(large, scenario_list(large)[:2], store=kept, files={})  # compiles

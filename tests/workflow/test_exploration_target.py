@@ -28,7 +28,8 @@ def made(tmp_path_factory: pytest.TempPathFactory) -> Any:
 def test_blocks_that_no_class_takes_in_are_ranges_around_what_they_hold(made: Any) -> None:
     _, result = made
     state = result.stages["classify"]
-    frame = state.frame[state.frame["kept_share"] > 0]
+    frame = result.stages["value"].frame
+    frame = frame[frame["kept_share"] > 0]
     left = frame[frame["proposed_class"] == "unclassified"]
     held = float((left["dry_tonnes"] * left["kept_share"]).sum())
     table = state.tables["exploration_target"].set_index("quantity")
@@ -66,7 +67,7 @@ def test_a_body_that_classes_take_in_whole_has_no_target(tmp_path: Path) -> None
     small = SmallStudy(tmp_path)
     small.toml["classes"].update(inferred_within_m=500.0, inferred_holes=1, inferred_samples=1, smooth=False)
     result = run_study(load_study(small.write()), None, cache=False)
-    frame = result.stages["classify"].frame
+    frame = result.stages["value"].frame
     assert (frame["proposed_class"] != "unclassified").all()
     assert not len(result.stages["classify"].tables["exploration_target"])
     assert not [item for item in result.findings if item.code == "exploration-target"]

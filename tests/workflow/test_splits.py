@@ -35,7 +35,7 @@ def outcome(tmp_path_factory: pytest.TempPathFactory) -> Outcome:
 
 def test_domains_benches_and_screens_sum_to_the_body(outcome: Outcome) -> None:
     state = outcome.done["classify"]
-    frame, parts = state.frame, state.tables["body_parts"]
+    frame, parts = outcome.done["value"].frame, state.tables["body_parts"]
     assert parts["domain"].nunique() == 2 and parts["floor_elevation"].nunique() > 3
     assert set(parts["screen"]) >= {"kept", "zone vent", "slope"}
     wanted = {name: frame[name].sum() for name in ("volume_m3", "dry_tonnes", "wet_tonnes")}
@@ -66,7 +66,7 @@ def test_each_split_of_grade_and_tonnage_sums_to_the_whole(outcome: Outcome, nam
     whole = table[(table[name] == "all") & (table["proposed_class"] == "all")].set_index("cutoff")
     # By screen it is that of the whole body, and its kept part that of the study's own table.
     if name == "screen":
-        frame = state.frame
+        frame = outcome.done["value"].frame
         for cutoff, tonnes in whole["dry_tonnes"].items():
             assert tonnes == pytest.approx(frame.loc[frame["cu_pct"] >= cutoff, "dry_tonnes"].sum(), rel=1e-9)
         whole = table[(table[name] == "kept") & (table["proposed_class"] == "all")].set_index("cutoff")

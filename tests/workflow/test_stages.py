@@ -41,11 +41,11 @@ def keys_of(study: Study, files: dict[str, str] | None = None) -> dict[str, str]
     """Key of each stage, nothing run."""
     keys: dict[str, str] = {}
     for stage in ESTIMATE_STAGES:
-        keys[stage.name] = stage_key(stage, ConfigView(study.config, stage.reads), keys, files or FILES)
+        keys[stage.name] = stage_key(stage, study, keys, files or FILES)
     return keys
 
 
-def upstream(stage: Stage) -> set[str]:
+def upstream(stage: Stage, config: StudyConfig) -> set[str]:
     """The stage and all that it needs, and what they need."""
     by_name = {item.name: item for item in ESTIMATE_STAGES}
     found, left = set(), [stage.name]
@@ -53,13 +53,14 @@ def upstream(stage: Stage) -> set[str]:
         name = left.pop()
         if name not in found:
             found.add(name)
-            left += by_name[name].needs
+            left += by_name[name].all_needs(config)
     return found
 
 
-def reads(stage: Stage) -> set[str]:
+def reads(stage: Stage, config: StudyConfig) -> set[str]:
     """Sections that a stage depends on, through what it needs as well."""
-    return {section for item in ESTIMATE_STAGES if item.name in upstream(stage) for section in item.reads}
+    above = upstream(stage, config)
+    return {section for item in ESTIMATE_STAGES if item.name in above for section in item.all_reads(config)}
 
 
 def test_a_stage_sees_its_own_sections_only(study: Study) -> None:
@@ -80,12 +81,15 @@ def test_stages_are_declared_in_order_and_of_known_parts() -> None:
     assert ESTIMATE_STAGES[:2] == CHECK_STAGES
 
 
-def test_every_stage_of_a_study_runs_with_what_it_declares(study: Study) -> None:
+@pytest.mark.parametrize("variable", ["cu", "value", "equivalent"])
+def test_every_stage_of_a_study_runs_with_what_it_declares(study: Study, variable: str) -> None:
     """Outputs of stages that are not declared are out of reach, too."""
+    study = study.with_overrides({"cutoff.variable": variable})
+    config = study.config
 
     class Declared(dict[str, Any]):
         def __init__(self, done: dict[str, Any], stage: Stage) -> None:
-            super().__init__({name: done[name] for name in stage.needs})
+            super().__init__({name: done[name] for name in stage.all_needs(config)})
 
         def __missing__(self, name: str) -> Any:
             raise AssertionError(f"the stage has not declared that it needs {name}")
@@ -101,7 +105,7 @@ def test_every_stage_of_a_study_runs_with_what_it_declares(study: Study) -> None
             )
             return stage.work(narrow)
 
-        return Stage(stage.name, stage.label, stage.reads, stage.needs, work, stage.reads_files)
+        return replace(stage, work=work)
 
     outcome = run_stages(tuple(guarded(stage) for stage in ESTIMATE_STAGES), study, threads=1)
     assert not outcome.findings.has_errors, outcome.findings.errors
@@ -163,7 +167,7 @@ def test_a_key_of_the_study_moves_the_stages_that_read_its_section_and_no_other(
         now = getattr(now, name)
     before, after = keys_of(study), keys_of(changed)
     for stage in ESTIMATE_STAGES:
-        touched = section in reads(stage) and now != value and dotted != "kriging.threads"
+        touched = section in reads(stage, changed.config) and now != value and dotted != "kriging.threads"
         assert (before[stage.name] != after[stage.name]) == touched, (dotted, value, now, stage.name)
 
 

@@ -8,6 +8,7 @@ from pathlib import Path
 import pytest
 
 from sms_resource.study import schema
+from sms_resource.workflow.stage import Also
 from sms_resource.workflow.stages import ESTIMATE_STAGES
 
 GUIDE = Path(__file__).parents[2] / "docs" / "getting-started.md"
@@ -16,10 +17,13 @@ UNREAD = {"exploration"}  # of a study without drilling, which has no such stage
 
 
 def again(section: str) -> list[str]:
-    """Stages that read a section, and all that need one of those."""
+    """Stages that read a section, and all that need one of those, in whatever study."""
     made: list[str] = []
     for stage in ESTIMATE_STAGES:
-        if section in stage.reads or any(name in made for name in stage.needs):
+        also = stage.also or Also(bool, (), ())
+        if section in (*stage.reads, *also.reads) or any(
+            name in made for name in (*stage.needs, *also.needs)
+        ):
             made.append(stage.name)
     return made
 

@@ -39,7 +39,7 @@ def made(tmp_path_factory: pytest.TempPathFactory) -> Any:
 def test_every_variable_that_is_asked_for_has_its_curve(made: Any) -> None:
     _, outcome = made
     state = outcome.done["classify"]
-    table, left = state.grade_tonnage, kept(state.frame)
+    table, left = state.grade_tonnage, kept(outcome.done["value"].frame)
     assert list(table["cutoff_variable"].unique()) == [
         "cu_pct",
         "value_per_dry_tonne",
@@ -60,7 +60,7 @@ def test_every_variable_that_is_asked_for_has_its_curve(made: Any) -> None:
 def test_all_cutoffs_are_the_blocks_own_values_and_thinned_where_they_are_many(made: Any) -> None:
     _, outcome = made
     state = outcome.done["classify"]
-    left = kept(state.frame)
+    left = kept(outcome.done["value"].frame)
     mine = state.grade_tonnage[state.grade_tonnage["cutoff_variable"] == "cu_pct"]["cutoff"].unique()
     distinct = left["cu_pct"].nunique()
     assert distinct > 60 and 55 <= len(mine) <= 62  # 60, zero and the study's own
@@ -97,9 +97,7 @@ def test_the_report_gets_what_the_stages_have_made(made: Any) -> None:
         "by_criteria_dry_tonnes", "after_rules_dry_tonnes", "smoothed_dry_tonnes", "final_dry_tonnes",
     ]  # fmt: skip
     totals = data.classes.before_after.iloc[:, 1:].sum()
-    assert totals.to_numpy() == pytest.approx(
-        [outcome.done["classify"].frame["dry_tonnes"].sum()] * 4, rel=1e-9
-    )
+    assert totals.to_numpy() == pytest.approx([outcome.done["value"].frame["dry_tonnes"].sum()] * 4, rel=1e-9)
 
 
 def test_a_deduction_without_a_single_payability_refuses_the_equivalent(tmp_path: Path) -> None:
