@@ -209,6 +209,9 @@ def _run(
     against: Path | None = None,
 ) -> None:
     """Run a study, print what it found and leave with the code that tells how it went."""
+    from sms_resource.reporting import ahead
+
+    ahead.begin(out if cache else None)  # before the slow imports
     from sms_resource.study import StudyError
     from sms_resource.workflow import NotResultsError, run_study
     from sms_resource.workflow.stage import Silent

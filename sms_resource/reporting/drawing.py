@@ -1,22 +1,18 @@
 """Draw the figures of a report: those that changed, on two processors where there are two.
 
 Drawing is what a report spends its time on. A figure whose data are what they were is taken from where the last run kept
-it. Of the others half are drawn by a second interpreter that is given the data in a file; whatever it does not deliver is
-drawn here, so that a report never depends on it. The pictures are the same either way.
+it. Of the others half are drawn by the second interpreter; whatever it does not deliver is drawn here. The pictures are the
+same either way.
 """
 
 from __future__ import annotations
 
 import hashlib
-import os
-import pickle
-import subprocess
-import sys
-import tempfile
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any, Protocol, cast
 
+from sms_resource import second
 from sms_resource.reporting.data import ReportData
 from sms_resource.reporting.figures import MAKERS
 from sms_resource.reporting.reading import Contents, Reading
@@ -159,7 +155,7 @@ def weight(number: int) -> float:
 
 def light(numbers: list[int]) -> bool:
     """Whether a second interpreter would not be worth its start."""
-    return (os.cpu_count() or 1) < 2 or sum(map(weight, numbers)) <= ALONE_UP_TO
+    return second.processors() < 2 or sum(map(weight, numbers)) <= ALONE_UP_TO
 
 
 def halves(numbers: list[int]) -> tuple[list[int], list[int]]:
@@ -174,13 +170,11 @@ def halves(numbers: list[int]) -> tuple[list[int], list[int]]:
 
 
 def draw_in_two(data: ReportData, numbers: list[int]) -> dict[int, Made]:
-    """Figures of some makers, half of them by a second interpreter."""
+    """Figures of some makers, half of them by the second interpreter."""
     ours, theirs = halves(numbers)
-    with tempfile.TemporaryDirectory() as place:
-        other = _start(data, theirs, Path(place))
-        made = draw_some(data, ours)
-        if other is not None:
-            made.update(_collect(other, Path(place)))
+    asked = second.ask(f"{__name__}:draw_some", data, theirs)
+    made = draw_some(data, ours)
+    made.update(second.answer(asked) or {})
     made.update(draw_some(data, [number for number in numbers if number not in made]))
     return made
 
@@ -205,41 +199,3 @@ def finished(drawing: Drawing) -> Drawn:
     picture, vector, table = render(drawing)
     size = (float(drawing.figure.get_figwidth()), float(drawing.figure.get_figheight()))
     return Drawn(replace(drawing, figure=None, size_in=size), picture, vector, table)
-
-
-def _start(data: ReportData, numbers: list[int], place: Path) -> subprocess.Popen[bytes] | None:
-    try:
-        with (place / "data").open("wb") as stream:
-            pickle.dump((data, numbers), stream, protocol=5)
-        return subprocess.Popen(
-            [sys.executable, "-m", "sms_resource.reporting.drawing", str(place)],
-            stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL,
-        )  # fmt: skip
-    except (OSError, pickle.PicklingError, TypeError, AttributeError):
-        return None  # no second interpreter: everything is drawn here
-
-
-def _collect(other: subprocess.Popen[bytes], place: Path) -> dict[int, Made]:
-    try:
-        if other.wait() != 0:
-            return {}
-        # The file was written by our own child into a folder that only we can read.
-        return pickle.loads((place / "drawn").read_bytes())
-    except (OSError, EOFError, pickle.UnpicklingError):
-        return {}
-    finally:
-        if other.poll() is None:
-            other.kill()
-
-
-def main(place: Path) -> None:
-    """Draw the second half of the figures (called in an interpreter of its own)."""
-    data, numbers = pickle.loads((place / "data").read_bytes())
-    (place / "drawn").write_bytes(pickle.dumps(draw_some(data, numbers), protocol=5))
-
-
-if __name__ == "__main__":
-    # Under its own name, so that what is pickled here is known there.
-    from sms_resource.reporting import drawing as this
-
-    this.main(Path(sys.argv[1]))

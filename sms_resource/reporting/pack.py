@@ -31,13 +31,10 @@ def write_pack(data: ReportData, folder: Path, report: Report | None = None) -> 
     folder = Path(folder)
     folder.mkdir(parents=True, exist_ok=True)
     made = report if report is not None else make_report(data, folder)
-    return [write_pdf(made.document, made.pictures, folder / "report.pdf"), *write_forms(data, folder)]
+    forms = [write_workbook(data, folder / "workbook.xlsx"), *write_texts(data, folder)]
+    return [write_pdf(made.document, made.pictures, folder / "report.pdf"), *forms]
 
 
-def write_forms(data: ReportData, folder: Path) -> list[Path]:
-    """Write the pack without its pages: workbook, checklist and method statement; return their paths."""
-    return [
-        write_workbook(data, folder / "workbook.xlsx"),
-        *write_checklist(data, folder),
-        write_method(data, folder / "method.md"),
-    ]
+def write_texts(data: ReportData, folder: Path) -> list[Path]:
+    """Write what of the pack is text: checklist and method statement; return their paths."""
+    return [*write_checklist(data, folder), write_method(data, folder / "method.md")]

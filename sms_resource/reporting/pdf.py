@@ -1,15 +1,10 @@
-"""The report as A4 pages, set by typst with the fonts that it brings.
-
-The document goes to the template as JSON, so that no text from a data file is ever read as mark-up.
-"""
+"""The report as the template of the A4 pages reads it: JSON, so that no text from a data file is ever read as mark-up."""
 
 from __future__ import annotations
 
 import json
 import re
-import tempfile
 from collections.abc import Mapping
-from importlib.resources import files
 from pathlib import Path
 from typing import Any
 
@@ -24,6 +19,7 @@ from sms_resource.reporting.elements import (
     Picture,
     Table,
 )
+from sms_resource.reporting.pages import set_pages
 
 _LONG_WORD = re.compile(r"\S{15,}")
 _BREAK_AFTER = re.compile(r"([_./\\,;:=&?-])(?=\S)")
@@ -111,21 +107,12 @@ def document_record(document: Document) -> dict[str, Any]:
     }
 
 
+def pages_record(document: Document) -> str:
+    """The document as JSON, as the template reads it."""
+    return json.dumps(document_record(document), ensure_ascii=False)
+
+
 def write_pdf(document: Document, pictures: Mapping[str, bytes], path: Path) -> Path:
-    """Set the pages and write them; the same document gives the same bytes.
-
-    Nothing is fetched, and only the fonts inside the typst package are used.
-    """
-    import typst
-
-    with tempfile.TemporaryDirectory(prefix="sms_resource_") as name:
-        room = Path(name)
-        template = files("sms_resource.reporting").joinpath("templates/report.typ").read_bytes()
-        (room / "report.typ").write_bytes(template)
-        record = json.dumps(document_record(document), ensure_ascii=False)
-        (room / "report.json").write_text(record, encoding="utf-8")
-        for key, content in pictures.items():
-            (room / f"{key}.png").write_bytes(content)
-        made = typst.compile(str(room / "report.typ"), root=str(room), ignore_system_fonts=True, timestamp=0)
-    path.write_bytes(made)
+    """Set the pages and write them; the same document gives the same bytes."""
+    path.write_bytes(set_pages(pages_record(document), pictures))
     return path

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 from sms_resource.reporting.data import ReportData
@@ -21,20 +21,25 @@ class Report:
     paths: list[Path]
 
 
+def draw_report(data: ReportData, folder: Path, store: Store | None = None, code: str = "") -> Report:
+    """Draw and build, and write ``figures/`` under ``folder`` but no page; see :func:`make_report`."""
+    folder = Path(folder)
+    folder.mkdir(parents=True, exist_ok=True)
+    drawn, absent = draw_all(data, folder / "figures", store, code)
+    pictures = {item.drawing.key: item.picture for item in drawn}
+    document = build_document(data, [item.drawing for item in drawn], absent)
+    return Report(document, pictures, [path for item in drawn for path in item.paths(folder / "figures")])
+
+
 def make_report(data: ReportData, folder: Path, store: Store | None = None, code: str = "") -> Report:
     """Draw, build and write ``report.html`` and ``figures/`` (PNG, SVG, and ``data/*.csv``) under ``folder``.
 
     Figures whose data are what they were in a run before are taken from ``store``, where the code named by ``code``
     drew them.
     """
-    folder = Path(folder)
-    folder.mkdir(parents=True, exist_ok=True)
-    drawn, absent = draw_all(data, folder / "figures", store, code)
-    pictures = {item.drawing.key: item.picture for item in drawn}
-    paths = [path for item in drawn for path in item.paths(folder / "figures")]
-    document = build_document(data, [item.drawing for item in drawn], absent)
-    paths.insert(0, write_html(document, pictures, folder / "report.html"))
-    return Report(document, pictures, paths)
+    made = draw_report(data, folder, store, code)
+    page = write_html(made.document, made.pictures, Path(folder) / "report.html")
+    return replace(made, paths=[page, *made.paths])
 
 
 def write_report(data: ReportData, folder: Path) -> list[Path]:

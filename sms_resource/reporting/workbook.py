@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import datetime
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
+from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -37,6 +38,26 @@ _FORMATS = (
     ("p_value", "0.0000"),
     ("_m", "0.00"),
 )
+
+
+@dataclass(frozen=True)
+class Content:
+    """A workbook before it is written.
+
+    Attributes
+    ----------
+    title : str
+    basis : list of (name, text)
+        Rows of the first sheet.
+    sheets : list of (name, table, note)
+    heads : dict
+        Heads of columns that are not named by their column alone, by sheet and column.
+    """
+
+    title: str
+    basis: list[tuple[str, str]]
+    sheets: list[tuple[str, pd.DataFrame | None, str]]
+    heads: dict[str, dict[str, str]]
 
 
 def number_format(column: str, values: pd.Series) -> str:
@@ -200,19 +221,28 @@ def workbook_heads(data: ReportData) -> dict[str, dict[str, str]]:
     }
 
 
-def write_workbook(data: ReportData, path: Path) -> Path:
-    """Write the workbook and return its path; sheets without rows are left out."""
-    book = _Book(path, plain_words(data.subject.title)[:200])
+def workbook_content(data: ReportData) -> Content:
+    """What the workbook says, as plain tables."""
+    sheets = [sheet for sheet in workbook_sheets(data) if sheet[1] is not None and len(sheet[1])]
+    return Content(plain_words(data.subject.title), _basis(data), sheets, workbook_heads(data))
+
+
+def save_workbook(content: Content, path: Path) -> Path:
+    """Write a workbook and return its path."""
+    book = _Book(path, content.title[:200])
     first = book.book.add_worksheet("Read me")
     first.set_column(0, 0, 22)
     first.set_column(1, 1, 100)
-    first.write_string(0, 0, plain_words(data.subject.title), book.title)
-    for row, (name, text) in enumerate(_basis(data), 2):
+    first.write_string(0, 0, content.title, book.title)
+    for row, (name, text) in enumerate(content.basis, 2):
         first.write_string(row, 0, name, book.text)
         first.write_string(row, 1, plain_words(text), book.wrapped)
-    sheets: Sequence[tuple[str, pd.DataFrame | None, str]] = workbook_sheets(data)
-    labels = workbook_heads(data)
-    for name, frame, note in sheets:
-        book.sheet(name, frame, note, labels.get(name))
+    for name, frame, note in content.sheets:
+        book.sheet(name, frame, note, content.heads.get(name))
     book.book.close()
     return path
+
+
+def write_workbook(data: ReportData, path: Path) -> Path:
+    """Write the workbook and return its path; sheets without rows are left out."""
+    return save_workbook(workbook_content(data), path)

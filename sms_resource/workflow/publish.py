@@ -10,11 +10,16 @@ from typing import Any
 
 import pandas as pd
 
+from sms_resource import second
 from sms_resource.findings import Findings
+from sms_resource.reporting import ahead
 from sms_resource.reporting.figures_neighbourhood import measured
-from sms_resource.reporting.pack import write_forms
-from sms_resource.reporting.pdf import write_pdf
-from sms_resource.reporting.report import make_report
+from sms_resource.reporting.html import write_html
+from sms_resource.reporting.pack import write_texts
+from sms_resource.reporting.pages import record_key, set_pages
+from sms_resource.reporting.pdf import pages_record
+from sms_resource.reporting.report import draw_report
+from sms_resource.reporting.workbook import Content, save_workbook, workbook_content
 from sms_resource.study import Study, decisions
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.kept_files import KeptFiles
@@ -29,6 +34,7 @@ from sms_resource.workflow.summary import Summary, summarise
 
 def write_results(
     folder: Path,
+    out: Path,
     study: Study,
     outcome: Outcome,
     inputs: dict[str, dict[str, Any]],
@@ -42,6 +48,8 @@ def write_results(
     ----------
     folder : Path
         An empty staging folder.
+    out : Path
+        Where the results will stand.
     study : Study
     outcome : Outcome
         Of all stages.
@@ -59,9 +67,9 @@ def write_results(
     done = outcome.done
     ledger = ledger_table(study, extra)
     kept = KeptFiles(store, outcome)
-    with ThreadPoolExecutor(2) as pool:
-        # The pages and the block model are written by libraries that leave this interpreter free meanwhile.
-        files = write_report_files(folder, study, outcome, inputs, ledger, extra, store, pool)
+    with ThreadPoolExecutor(3) as pool:
+        # Pages, pack and block model come from elsewhere, or from libraries that leave this interpreter free meanwhile.
+        files = write_report_files(folder, out, study, outcome, inputs, ledger, extra, store, pool)
         blocks = write_tables(folder, study, done, outcome.findings, pool)
         kept.write(
             "evidence",
@@ -77,11 +85,11 @@ def write_results(
             kept.write("times", folder / "measured", ("validate",), lambda place: write_times(place, done))
         ledger.to_csv(folder / "decisions.csv", index=False)
         blocks.result()
-        files = [item.result() if isinstance(item, Future) else item for item in files]
+        count = sum(len(item.result()) if isinstance(item, Future) else 1 for item in files)
     if extra and extra.get("scenarios") is not None:
         extra["scenarios"].to_csv(folder / "scenarios.csv", index=False)
     seconds = time.perf_counter() - begun
-    record = StageRecord("report", seconds, f"{len(files)} files", False, "")
+    record = StageRecord("report", seconds, f"{count} files", False, "")
     outcome.records.append(record)
     summary = summarise(study, done)
     facts = {"summary": summary.record(), "cutoff": {"variable": done["classify"].facts["cutoff_variable"],
@@ -115,11 +123,19 @@ def write_tables(
     state: ClassState = done["classify"]
     blocks: pd.DataFrame = done["value"].frame
     frame = blocks[block_columns(blocks, metals)]
-    writing = pool.submit(frame.to_parquet, folder / "block_model.parquet", index=False, compression="zstd")
+    writing = pool.submit(
+        frame.to_parquet, folder / "block_model.parquet", index=False, compression="zstd",
+        use_dictionary=text_columns(frame),
+    )  # fmt: skip
     state.grade_tonnage.to_csv(folder / "grade_tonnage.csv", index=False)
     write_splits(folder, state.tables)
     write_json(folder / "findings.json", findings.to_records())
     return writing
+
+
+def text_columns(frame: pd.DataFrame) -> list[str]:
+    """Columns of a table of blocks that say the same few things over and over; numbers of blocks hardly ever do."""
+    return [str(name) for name in frame if not pd.api.types.is_numeric_dtype(frame[name])]
 
 
 def write_evidence(folder: Path, done: dict[str, Any]) -> None:
@@ -173,6 +189,7 @@ def ledger_table(study: Study, extra: dict[str, Any] | None = None) -> pd.DataFr
 
 def write_report_files(
     folder: Path,
+    out: Path,
     study: Study,
     outcome: Outcome,
     inputs: dict[str, dict[str, Any]],
@@ -180,7 +197,7 @@ def write_report_files(
     extra: dict[str, Any] | None,
     store: StageCache | None,
     pool: Executor,
-) -> list[Path | Future[Path]]:
+) -> list[Path | Future[list[Path]]]:
     """The report, its figures and the pack that a CP takes away; what a thread still writes comes as a future."""
     from sms_resource.workflow.report_data import report_data
     from sms_resource.workflow.truth import truth_page
@@ -192,6 +209,32 @@ def write_report_files(
     }
     truth = truth_page(study, outcome.done)
     data = report_data(study, outcome.done, outcome.findings, ledger, manifest, truth, extra)
-    report = make_report(data, folder, store, code_fingerprint())
-    pages = pool.submit(write_pdf, report.document, report.pictures, folder / "report.pdf")
-    return [*report.paths, pages, *write_forms(data, folder)]
+    # The second interpreter writes the workbook and sets the pages meanwhile.
+    content = workbook_content(data)
+    workbook = pool.submit(place_workbook, ahead.workbook(content), content, folder / "workbook.xlsx")
+    report = draw_report(data, folder, store, code_fingerprint())
+    record = pages_record(report.document)
+    asked = ahead.pages(record, report.pictures)
+    pages = pool.submit(place_pages, asked, record, report.pictures, folder / "report.pdf")
+    if store is not None:
+        pool.submit(store.put, record_key(out), record)
+    page = write_html(report.document, report.pictures, folder / "report.html")
+    return [page, *report.paths, pages, workbook, *write_texts(data, folder)]
+
+
+def place_workbook(asked: Future[bytes] | None, content: Content, path: Path) -> list[Path]:
+    """The workbook, from the second interpreter or written here."""
+    made = second.answer(asked)
+    if made is None:
+        return [save_workbook(content, path)]
+    path.write_bytes(made)
+    return [path]
+
+
+def place_pages(
+    asked: Future[bytes] | None, record: str, pictures: dict[str, bytes], path: Path
+) -> list[Path]:
+    """The PDF, from the second interpreter or set here."""
+    made = second.answer(asked)
+    path.write_bytes(set_pages(record, pictures) if made is None else made)
+    return [path]

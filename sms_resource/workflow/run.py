@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from sms_resource.findings import Findings
+from sms_resource.reporting import ahead
 from sms_resource.study import Study, StudyError
 from sms_resource.workflow.folder import ResultFolder, has_blocks
 from sms_resource.workflow.foresight import override_faults, scenario_faults
@@ -150,6 +151,7 @@ def run_study(
         raise StudyError(early)
     if out is None:
         return _result(study, stages(), None)
+    ahead.begin(Path(out) if store is not None else None)
     with ResultFolder(out) as folder:
         outcome = stages()
         if outcome.findings.has_errors:
@@ -157,7 +159,7 @@ def run_study(
         from sms_resource.workflow.publish import write_results
 
         extra = more(study, outcome, store, hashes, threads, progress, scenarios, against)
-        summary = write_results(folder.staging, study, outcome, inputs, progress, extra, store)
+        summary = write_results(folder.staging, folder.out, study, outcome, inputs, progress, extra, store)
         folder.publish()
     result = _result(study, outcome, summary)
     result.out = folder.out

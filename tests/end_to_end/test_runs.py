@@ -12,7 +12,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from sms_resource import load_study, run_study
+from sms_resource import load_study, run_study, second
 from tests.end_to_end.conftest import FORMULA, MARKUP, Run, command
 from tests.end_to_end.places import contents, tree
 
@@ -278,6 +278,17 @@ def test_a_second_run_takes_every_stage_from_the_cache_and_leaves_the_same_bytes
     assert [stage["from_cache"] for stage in stages] == [True] * (len(stages) - 1) + [False]
     first = contents(run.out)
     assert {name: first[name] for name in contents(out)} == contents(out)
+
+
+@pytest.mark.parametrize("processors", [1, 2])
+def test_the_second_interpreter_changes_no_byte(
+    processors: int, run: Run, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Pages and workbook made here, or by the second interpreter, are those of the first run."""
+    monkeypatch.setattr(second, "processors", lambda: processors)
+    out = tmp_path / "results"
+    run_study(load_study(run.study.path), out, cache=run.store)
+    assert contents(out) == contents(run.out)
 
 
 def test_nothing_is_written_beside_the_results(run: Run) -> None:

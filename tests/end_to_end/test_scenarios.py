@@ -103,9 +103,7 @@ def test_rows_of_scenarios_are_those_of_fresh_runs(study: Study, store: StageCac
             assert row[name] == value, (change, name)
         # the blocks as well, not only their sums
         quick = run_stages(outcome_stages(), fresh_study, store=RecentStages(store), files=hashes(study))
-        pd.testing.assert_frame_equal(
-            quick.done["value"].frame, fresh.done["value"].frame, check_exact=True
-        )
+        pd.testing.assert_frame_equal(quick.done["value"].frame, fresh.done["value"].frame, check_exact=True)
     assert run.base == measures(
         study, run_stages(outcome_stages(), study, store=store, files=hashes(study)).done
     )

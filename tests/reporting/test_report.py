@@ -245,7 +245,7 @@ def test_same_data_same_bytes_drawn_by_one_interpreter_or_two(data, tmp_path, mo
     )
     written = []
     for name, processors in (("a", 1), ("b", 2)):
-        monkeypatch.setattr("os.cpu_count", lambda count=processors: count)
+        monkeypatch.setattr("sms_resource.second.processors", lambda count=processors: count)
         written.append(write_report(small, tmp_path / name))
     assert len(written[0]) == 10  # the page, and three files for each of three figures
     for one, other in zip(*written):
