@@ -127,7 +127,8 @@ def recovered_grades(
     frame: pd.DataFrame, terms: SellingTerms, *, domain: str = "domain", findings: Findings | None = None
 ) -> dict[str, Floats]:
     """Grade x recovery of each metal, in its grade unit per dry tonne lifted."""
-    domains = frame[domain].astype(str).to_numpy(dtype=object) if domain in frame else None
+    told_apart = any(metal.recovery is not None and metal.recovery.by_domain for metal in terms.metals)
+    domains = frame[domain].astype(str).to_numpy(dtype=object) if told_apart and domain in frame else None
     out = {}
     for metal in terms.metals:
         if metal.recovery is None or metal.column not in frame:

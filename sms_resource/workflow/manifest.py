@@ -6,6 +6,7 @@ import importlib.metadata
 import json
 import platform
 import sys
+from functools import cache
 from pathlib import Path
 from typing import Any
 
@@ -27,6 +28,7 @@ _TABLE_ENDINGS = frozenset(
 _BESIDE = frozenset({".dbf", ".shx", ".prj", ".cpg", ".hdr", ".tfw", ".tifw", ".wld", ".asw", ".agw", ".stx"})
 
 
+@cache
 def versions() -> dict[str, str]:
     """Version of the package, of Python and of the libraries that make the numbers."""
     found = {"sms_resource": __version__, "python": platform.python_version()}
