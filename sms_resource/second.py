@@ -16,7 +16,9 @@ import signal
 import subprocess
 import sys
 import threading
+from collections.abc import Mapping
 from concurrent.futures import Future
+from dataclasses import dataclass, field
 from typing import IO, Any, TypeVar
 
 T = TypeVar("T")
@@ -122,6 +124,40 @@ def answer(asked: Future[T] | None) -> T | None:
         return None
 
 
+@dataclass(frozen=True)
+class Call:
+    """A function by ``module:name``, with its arguments."""
+
+    function: str
+    arguments: tuple[Any, ...] = ()
+    named: Mapping[str, Any] = field(default_factory=dict)
+
+
+def perform(calls: Mapping[str, Call]) -> dict[str, Any]:
+    """What each call returns, by its name; made here, one after another."""
+    made = {}
+    for name, call in calls.items():
+        module, _, function = call.function.partition(":")
+        made[name] = getattr(importlib.import_module(module), function)(*call.arguments, **call.named)
+    return made
+
+
+class Aside:
+    """Calls that the second interpreter works on while this one does something else.
+
+    Arguments that several calls share are sent once.
+    """
+
+    def __init__(self, calls: Mapping[str, Call]) -> None:
+        self._calls = calls
+        self._asked = ask(f"{__name__}:perform", calls)
+
+    def results(self) -> dict[str, Any]:
+        """What the calls returned; made here where the second interpreter has not made it, with the errors they raise."""
+        found = answer(self._asked)
+        return perform(self._calls) if found is None else found
+
+
 def serve() -> None:
     """Do what is asked for until nobody asks any more (called in the second interpreter)."""
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # the first one is asked whether to stop
@@ -138,8 +174,7 @@ def serve_one(requests: IO[bytes], replies: IO[bytes]) -> bool:
         task, arguments = pickle.load(requests)
     except EOFError:
         return False
-    module, _, function = task.partition(":")
-    made = getattr(importlib.import_module(module), function)(*arguments)
+    made = perform({"": Call(task, arguments)})[""]
     replies.write(pickle.dumps(made, protocol=5))
     replies.flush()
     return True

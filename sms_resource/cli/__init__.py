@@ -359,7 +359,9 @@ def _leave_faulty(findings: Any, as_json: bool) -> NoReturn:
 def main() -> None:
     """Run the command line; a fault of the user never shows a traceback."""
     code: Any = DONE
-    gc.set_threshold(50_000, 20, 50)  # a command makes little litter, and looking for it took a tenth of a second
+    gc.set_threshold(
+        50_000, 20, 50
+    )  # a command makes little litter, and looking for it took a tenth of a second
     try:
         try:
             app()

@@ -36,7 +36,8 @@ def prepare(out: str) -> None:
     again = bool(out) and set_before(Path(out))
     importlib.import_module("sms_resource.reporting.workbook")
     importlib.import_module("xlsxwriter")
-    if not again:  # figures will have to be drawn
+    if not again:  # evidence will have to be judged, and figures to be drawn
+        importlib.import_module("scipy.stats")
         importlib.import_module("matplotlib.backends.backend_agg")
         importlib.import_module("matplotlib.backends.backend_svg")
 

@@ -160,7 +160,7 @@ def light(numbers: list[int]) -> bool:
 
 def halves(numbers: list[int]) -> tuple[list[int], list[int]]:
     """Makers that are drawn here and by the second interpreter: heaviest first, each to the lighter half."""
-    loads = [0.0, 1.0]  # the second starts later
+    loads = [1.0, 0.0]  # the second has imported what it draws with
     parts: tuple[list[int], list[int]] = ([], [])
     for number in sorted(numbers, key=lambda number: -weight(number)):
         half = int(loads[1] < loads[0])

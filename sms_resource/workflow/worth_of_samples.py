@@ -8,6 +8,8 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
+from sms_resource import second
+from sms_resource.findings import Findings
 from sms_resource.loaders.tables import LoadedData
 from sms_resource.workflow.stage import Context
 
@@ -70,84 +72,102 @@ def describe(
     context: Context, joined: JoinedSamples, options: dict[str, Any]
 ) -> tuple[Any, dict[str, pd.DataFrame]]:
     """The verdicts on the laboratory, and the tables of the evidence; ``options`` are those of compositing."""
-    from sms_resource.samples import bracket, contacts, lognormal, recovery, topcut_tables, topcuts
+    from sms_resource.samples import bracket, contacts, lognormal, topcut_tables, topcuts
+    from sms_resource.samples import surface as floor
 
     data: LoadedData = context.done["load"]
-    config = context.config
     metals = list(joined.metals)
-    sulphide = config.domains.sulphide
+    sulphide = context.config.domains.sulphide
     inside = joined.composites[joined.composites["domain"].isin(sulphide)]
-    laboratory = _laboratory(context, joined)
-    logs = lognormal.lognormal_table(inside, metals)
-    add_findings(context, lognormal.lognormal_findings(logs))
-    profile, contact_verdicts = contacts.contact_analysis(joined.composites, joined.intervals, metals)
-    add_findings(context, contacts.contact_findings(contact_verdicts))
+    aside = second.Aside(tests_of(context, joined, inside))
     tables = {
-        "recovery_bias": recovery.recovery_bias(inside, metals),
         "top_cut_study": topcuts.top_cut_study(inside, metals, weight_column="weight"),
         "top_cut_curves": topcut_tables.cut_curves(inside, metals),
-        "lognormal": logs,
-        "contact_analysis": profile,
-        "contact_verdicts": contact_verdicts,
         "statistics": statistics(inside, metals),
         "lost_core": bracket.lost_core_bracket(
             joined.assays, data.drill.runs, joined.intervals, joined.paths, metals=metals,
             densities=data.drill.densities, options=options, domains=sulphide,
         ),
-        **_surface(context, joined, metals),
-        **_places(context, joined, inside, metals),
-        **_associations(context, joined, inside),
     }  # fmt: skip
-    return laboratory, tables
+    places, found_of_places = _places(context, joined, inside, metals)
+    told = aside.results()
+    laboratory, logs = told["laboratory"], told["lognormal"]
+    profile, contact_verdicts = told["contacts"]
+    bias = told["surface"] if len(joined.surface) else told["surface"].iloc[:0]
+    deleterious, found_of_deleterious = told["deleterious"]
+    add_findings(
+        context,
+        laboratory.findings,
+        lognormal.lognormal_findings(logs),
+        contacts.contact_findings(contact_verdicts),
+        floor.surface_findings(bias),
+    )
+    if len(data.dredges):
+        tables["dredge_tracks"], found = floor.dredge_tracks(data.dredges)
+        add_findings(context, found)
+    add_findings(context, *found_of_places, found_of_deleterious)
+    return laboratory, {
+        **tables,
+        **places,
+        "recovery_bias": told["recovery"],
+        "lognormal": logs,
+        "contact_analysis": profile,
+        "contact_verdicts": contact_verdicts,
+        "surface_bias": bias,
+        "deleterious": deleterious,
+        "associations": told["associations"],
+        "tracers": told["tracers"],
+    }
 
 
-def _laboratory(context: Context, joined: JoinedSamples) -> Any:
-    from sms_resource.samples import quality
-
-    data: LoadedData = context.done["load"]
+def tests_of(context: Context, joined: JoinedSamples, inside: pd.DataFrame) -> dict[str, second.Call]:
+    """The tests and comparisons of the evidence, which need none of each other: the second interpreter makes them."""
     config = context.config
+    metals = list(joined.metals)
     limits = {element: dict(pair) for element, pair in config.laboratory.pair_limits.items()}
-    made = quality.laboratory_quality(
-        data.laboratory,
-        joined.assays,
-        elements=tuple(config.metals.estimate),
-        blank_limits=config.laboratory.blank_limits,
-        family_error=config.laboratory.family_error,
-        pair_limits=limits or None,
-        confidence=config.laboratory.confidence,
-    )
-    add_findings(context, made.findings)
-    return made
-
-
-def _surface(context: Context, joined: JoinedSamples, metals: list[str]) -> dict[str, pd.DataFrame]:
-    """Surface samples against core, and dredges as the tracks that they are."""
-    from sms_resource.samples import surface as floor
-
-    data: LoadedData = context.done["load"]
-    config = context.config
-    bias = floor.surface_bias(
-        joined.surface,
-        joined.composites,
-        metals,
-        config.study.seed,
-        domains=config.domains.sulphide,
-        distance_m=config.surface_samples.compare_within_m,
-        by_type=True,
-    )
-    if not len(joined.surface):
-        bias = bias.iloc[:0]
-    add_findings(context, floor.surface_findings(bias))
-    if not len(data.dredges):
-        return {"surface_bias": bias}
-    tracks, found = floor.dredge_tracks(data.dredges)
-    add_findings(context, found)
-    return {"surface_bias": bias, "dredge_tracks": tracks}
+    laboratory = {
+        "elements": tuple(config.metals.estimate),
+        "blank_limits": config.laboratory.blank_limits,
+        "family_error": config.laboratory.family_error,
+        "pair_limits": limits or None,
+        "confidence": config.laboratory.confidence,
+    }
+    bias = {
+        "domains": config.domains.sulphide,
+        "distance_m": config.surface_samples.compare_within_m,
+        "by_type": True,
+    }
+    room = "sms_resource.samples"
+    table = context.done["load"].laboratory
+    return {
+        "laboratory": second.Call(f"{room}.quality:laboratory_quality", (table, joined.assays), laboratory),
+        "lognormal": second.Call(f"{room}.lognormal:lognormal_table", (inside, metals)),
+        "contacts": second.Call(
+            f"{room}.contacts:contact_analysis", (joined.composites, joined.intervals, metals)
+        ),
+        "recovery": second.Call(f"{room}.recovery:recovery_bias", (inside, metals)),
+        "surface": second.Call(
+            f"{room}.surface:surface_bias",
+            (joined.surface, joined.composites, metals, config.study.seed),
+            bias,
+        ),
+        "deleterious": second.Call(f"{room}.associations:deleterious_summary", (inside,)),
+        "associations": second.Call(
+            f"{room}.associations:metal_associations",
+            (inside, list(joined.elements)),
+            {"by_domain": True},
+        ),
+        "tracers": second.Call(
+            f"{room}.associations:tracer_ratios",
+            (inside,),
+            {"thresholds": dict(config.associations.tracer_thresholds)},
+        ),
+    }
 
 
 def _places(
     context: Context, joined: JoinedSamples, inside: pd.DataFrame, metals: list[str]
-) -> dict[str, pd.DataFrame]:
+) -> tuple[dict[str, pd.DataFrame], list[Findings]]:
     """Twins and clusters of holes, positions by method, and whether collars would fit better elsewhere in plan."""
     from sms_resource.samples import position, twins
     from sms_resource.samples.plan_shift import plan_shift
@@ -155,36 +175,19 @@ def _places(
     data: LoadedData = context.done["load"]
     pairs = twins.twin_report(joined.collars, inside, context.config.checks.twin_distance_m, metals=metals)
     assert data.seafloor is not None  # its absence is an error of the stage load
-    add_findings(
-        context,
-        pairs.findings,
-        plan_shift(joined.collars, data.seafloor, context.config.study.seed).findings,
-    )
+    told = [pairs.findings, plan_shift(joined.collars, data.seafloor, context.config.study.seed).findings]
     by_method = []
     for table, label in ((joined.collars, "collars"), (joined.surface, "surface samples")):
         if len(table):
             placed, found = position.position_table(table, label)
             by_method.append(placed)
-            add_findings(context, found)
+            told.append(found)
     return {
         "twin_pairs": pairs.pairs,
         "twin_clusters": pairs.clusters[pairs.clusters["holes"] > 1].reset_index(drop=True),
         "twins": pairs.comparison,
         "positions": pd.concat(by_method, ignore_index=True) if by_method else pd.DataFrame(),
-    }
-
-
-def _associations(context: Context, joined: JoinedSamples, inside: pd.DataFrame) -> dict[str, pd.DataFrame]:
-    from sms_resource.samples import associations
-
-    deleterious, found = associations.deleterious_summary(inside)
-    add_findings(context, found)
-    thresholds = dict(context.config.associations.tracer_thresholds)
-    return {
-        "deleterious": deleterious,
-        "associations": associations.metal_associations(inside, list(joined.elements), by_domain=True),
-        "tracers": associations.tracer_ratios(inside, thresholds=thresholds),
-    }
+    }, told
 
 
 def statistics(composites: pd.DataFrame, metals: list[str]) -> pd.DataFrame:

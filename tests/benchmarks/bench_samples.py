@@ -1,8 +1,9 @@
 """Speed of the evidence: 20 000 assays in 500 holes through the stages that judge them, and their figures.
 
 Run with ``python -m pytest tests/benchmarks/bench_samples.py -m benchmark -n 0 -s``. The holes are those of the demo, seven
-times over, with every sample cut in three. Clock and processor are both printed; the limit is on the processor's time,
-so that a busy machine does not decide.
+times over, with every sample cut in three. Stages and figures are made first as a run makes them, with the second
+interpreter beside this one; then figure by figure in this one alone, to see what each costs. The limit is on the clock of
+the first.
 """
 
 from __future__ import annotations
@@ -16,6 +17,7 @@ import pytest
 
 from sms_resource import load_study
 from sms_resource.findings import Findings
+from sms_resource.reporting import ahead
 from sms_resource.reporting.data import Evidence, LaboratoryEvidence, ReportData, Subject
 from sms_resource.reporting.drawing import draw_in_two
 from sms_resource.reporting.figures import MAKERS
@@ -75,6 +77,7 @@ def timed(rows: list[dict], what: str, call):
 
 
 def test_twenty_thousand_assays(capsys) -> None:
+    ahead.begin(None)  # as a run does, before it reads the files
     study = load_study(DEMO / "study.toml")
     data = load(Context(study.config, {}, Findings(), study, 1))
     drill = data.drill
@@ -124,14 +127,14 @@ def test_twenty_thousand_assays(capsys) -> None:
     )  # fmt: skip
     makers = dict(MAKERS)
     before = len(rows)
+    both: list[dict] = []
+    numbers = [number for number, (name, _) in enumerate(MAKERS) if name in DRAWN]
+    timed(both, "figures", lambda: draw_in_two(report, numbers))
     with borrowed_settings():
         for name in DRAWN:
             drawing = timed(rows, f"draw {name}", lambda name=name: makers[name](report))
             assert drawing is not None, name
             timed(rows, f"write {name}", lambda drawing=drawing: render(drawing))
-    both: list[dict] = []
-    numbers = [number for number, (name, _) in enumerate(MAKERS) if name in DRAWN]
-    timed(both, "figures", lambda: draw_in_two(report, numbers))
     table = pd.DataFrame(rows)
     stages, figures = table.iloc[:before], table.iloc[before:]
     with capsys.disabled():
@@ -143,4 +146,4 @@ def test_twenty_thousand_assays(capsys) -> None:
         print(
             f"figures as a run draws them, in two processes: {both[0]['clock_s']:.2f} s clock; with stages {whole:.2f} s"
         )
-    assert stages["processor_s"].sum() < LIMIT_S
+    assert whole < LIMIT_S
