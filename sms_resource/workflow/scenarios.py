@@ -12,6 +12,7 @@ import pandas as pd
 
 from sms_resource.findings import Findings
 from sms_resource.study import Study, StudyError, decisions
+from sms_resource.study.locate import key_rows, row_of
 from sms_resource.workflow.cheap import cheap_rows, is_cheap, measures_at
 from sms_resource.workflow.stage import (
     Progress,
@@ -105,14 +106,16 @@ def scenario_list(study: Study) -> list[Scenario]:
             for label, changes in expand_overrides(grids=[{"label": grid.label, "vary": grid.vary}]):
                 scenarios.append(Scenario(label, changes, "grid", grid.label))
     except ScenarioError as error:
-        findings.error("scenario-invalid", str(error), "Mend [scenarios] of the study.", file=study.path.name)
+        findings.error("scenario-invalid", str(error), "Mend [scenarios] of the study.", file=study.path.name,
+                       row=_row(study, "scenarios"), column="scenarios")  # fmt: skip
         raise StudyError(findings) from None
-    for item in choice.single:
-        _check_overrides(study, item.label, item.change, findings)
-    for grid in choice.grid:
+    for number, item in enumerate(choice.single):
+        _check_overrides(study, item.label, item.change, f"scenarios.single.{number}.change", findings)
+    for number, grid in enumerate(choice.grid):
         for name, values in grid.vary.items():
             for value in values:
-                _check_overrides(study, grid.label, {name: value}, findings)
+                place = f"scenarios.grid.{number}.vary"
+                _check_overrides(study, grid.label, {name: value}, place, findings)
     if findings.has_errors:
         raise StudyError(findings)
     if choice.ledger:
@@ -120,15 +123,24 @@ def scenario_list(study: Study) -> list[Scenario]:
     return scenarios
 
 
-def _check_overrides(study: Study, label: str, changes: Changes, findings: Findings) -> None:
-    """Put into words which override of a scenario cannot be made."""
+def _row(study: Study, place: str) -> int | None:
+    """Row of the study file where a key of it stands; None where the file cannot be read any more."""
+    try:
+        text = study.path.read_text(encoding="utf-8", errors="replace")
+    except OSError:
+        return None
+    return row_of(key_rows(text), place)
+
+
+def _check_overrides(study: Study, label: str, changes: Changes, place: str, findings: Findings) -> None:
+    """Put into words which override of a scenario cannot be made, with the row of the scenario."""
     try:
         study.with_overrides(changes)
     except StudyError as error:
         for item in error.findings.errors:
             findings.error(
                 "scenario-invalid", f"scenario '{label}': {item.message}", item.remedy, file=study.path.name,
-                column=item.column,
+                row=_row(study, place), column=item.column,
             )  # fmt: skip
 
 

@@ -202,12 +202,14 @@ def test_check_sees_scenarios_and_overrides_that_a_run_refuses(study: SmallStudy
         )
     )
     path = study.write()
+    lines = path.read_text(encoding="utf-8").splitlines()
+    row = 1 + next(number for number, line in enumerate(lines) if "faktor" in line)
     done = call("check", path, "--json")
     assert done.exit_code == 1
     errors = [item for item in json.loads(done.stdout) if item["severity"] == "error"]
     assert [(item["code"], item["file"], item["row"]) for item in errors] == [
         ("class-override-refused", "overrides.gpkg", 3),
-        ("scenario-invalid", "study.toml", None),
+        ("scenario-invalid", "study.toml", row),
     ]
     # a run without scenarios asks for the overrides alone, before its first stage
     done = call("run", path, "--json", "--out", path.parent / "results")

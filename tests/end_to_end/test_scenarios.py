@@ -196,6 +196,9 @@ def test_a_list_of_scenarios_that_makes_no_sense_is_an_error(
     assert done.exit_code == 1
     (item,) = json.loads(done.stdout)
     assert (item["severity"], item["code"], item["file"]) == ("error", "scenario-invalid", "study.toml")
+    lines = (tmp_path / "study" / "study.toml").read_text(encoding="utf-8").splitlines()
+    headers = [line for line in lines[: item["row"]] if line.startswith("[")]
+    assert headers[-1].strip("[]").startswith("scenarios")  # the row lies in that part of the study
     assert not (tmp_path / "results").exists()
 
 
