@@ -92,6 +92,17 @@ def unit_label(column: str) -> str:
     return LABELS.get(unit, unit)
 
 
+def chance(p: float) -> str:
+    """A p-value as a sentence has it: "p 0.032", "p < 0.001"; more figures say nothing.
+
+    Examples
+    --------
+    >>> chance(0.0321), chance(4e-21)
+    ('p 0.032', 'p < 0.001')
+    """
+    return "p < 0.001" if p < 0.001 else f"p {p:.2g}"
+
+
 def contained_tonnes(dry_tonnes: Number, grade: Number, column: str) -> Number:
     """Metal in tonnes: dry tonnes times a grade in the unit of its column."""
     return dry_tonnes * grade * _FRACTION[column.rpartition("_")[2]]

@@ -280,7 +280,7 @@ def build_body(
         findings.note(
             "extrapolation-limited",
             f"the base was held {extrapolate_below_m:g} m below the ends of open holes; without that limit the body "
-            f"would be about {lost:.3g} m3 larger",
+            f"would be about {lost:,.0f} m3 larger",
             "set extrapolate_below_m to what the geology supports",
         )
     record |= {

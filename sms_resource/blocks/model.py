@@ -209,7 +209,7 @@ def fill_blocks(
         findings.warning(
             "blocks-miss-body",
             f"the block grid leaves out part of the body: {100 * (1 - inside_share):.2g} % of its area in plan and "
-            f"{outside:.3g} m3 above or below the blocks",
+            f"{outside:,.1f} m3 above or below the blocks",
             "extend the grid, or let it be proposed",
         )
     frame = _frame(parts, grid, domains.names)
@@ -218,7 +218,7 @@ def fill_blocks(
     if inside_share >= 1 - 1e-9 and abs(miss) > 1e-3 * body.volume_m3:
         findings.warning(
             "blocks-volume",
-            f"the blocks hold {model.volume_m3:.6g} m3, the body {body.volume_m3:.6g} m3",
+            f"the blocks hold {model.volume_m3:,.0f} m3, the body {body.volume_m3:,.0f} m3",
             "raise split, or use smaller blocks",
         )
     return model

@@ -51,10 +51,11 @@ def flag_classes(
     for metal in metals:
         inferred, indicated = (by_class[metal].loc[name] for name in ("inferred", "indicated"))
         if inferred > indicated:
+            tonnes = float(f"{by_class['dry_tonnes'].loc['inferred']:.2g}")  # as the report rounds them
             findings.warning(
                 "class-inferred-richer",
                 f"Inferred blocks are richer than Indicated in {metal}: {inferred:.3g} against {indicated:.3g}; "
-                f"{by_class['dry_tonnes'].loc['inferred']:,.0f} dry t are Inferred.",
+                f"about {tonnes:,.0f} dry t are Inferred.",
                 "Map the rich Inferred blocks: extrapolated tonnage lies in the best material.",
                 column=metal,
             )

@@ -10,7 +10,7 @@ import pandas as pd
 from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.elements import Caution, number_text
 from sms_resource.reporting.summaries import missing_checks
-from sms_resource.units import element_label
+from sms_resource.units import chance, element_label
 
 FEW_COMPOSITES = 50
 FEW_HOLES = 10
@@ -168,8 +168,8 @@ def samples(data: ReportData) -> Iterator[Caution]:
             said += (
                 " Grade goes with recovery: "
                 + "; ".join(
-                    f"{element_label(r['metal'])} in {r.get('domain', 'all')}: ρ {r['spearman']:+.2f}, p"
-                    f" {r['p_adjusted']:.2g} for all tests together"
+                    f"{element_label(r['metal'])} in {r.get('domain', 'all')}: ρ {r['spearman']:+.2f}, "
+                    f"{chance(r['p_adjusted'])} for all tests together"
                     for r in linked.head(6).to_dict("records")
                 )
                 + "."

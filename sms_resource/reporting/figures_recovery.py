@@ -8,7 +8,7 @@ from sms_resource.reporting import style
 from sms_resource.reporting.data import ReportData, has
 from sms_resource.reporting.figures_samples import domains_of, panel_grid, sample_metals
 from sms_resource.reporting.style import Drawing
-from sms_resource.units import element_label
+from sms_resource.units import chance, element_label
 
 PROBABILITIES = (0.01, 0.05, 0.1, 0.25, 0.5, 0.75, 0.9, 0.95, 0.99)
 
@@ -79,7 +79,7 @@ def recovery(data: ReportData) -> Drawing | None:
         if bias is not None and has(bias, "metal", "spearman", "p_adjusted"):
             mine = bias[bias["metal"] == metal].head(4)
             words = "\n".join(
-                f"{style.short(row.get('domain', ''), 20)}: ρ {row['spearman']:+.2f}, adjusted p {row['p_adjusted']:.2g}"
+                f"{style.short(row.get('domain', ''), 20)}: ρ {row['spearman']:+.2f}, adjusted {chance(row['p_adjusted'])}"
                 for row in mine.to_dict("records")
             )
             axis.set_title(words, fontsize=6)

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from sms_resource.findings import Findings
 from sms_resource.samples.intervals import names, numbers
+from sms_resource.units import chance
 
 Floats = NDArray[np.float64]
 
@@ -133,7 +134,7 @@ def contact_analysis(
                 verdict = "hard" if p < significance else "soft"
                 reason = (
                     f"within {2 * band_m:g} m the grade {'jumps' if verdict == 'hard' else 'does not jump'}: "
-                    f"{mean_one:.3g} against {mean_two:.3g}, p {p:.2g}"
+                    f"{mean_one:.3g} against {mean_two:.3g}, {chance(p)}"
                 )
             verdicts.append((label, metal, len(one), len(two), mean_one, mean_two, ratio, p, verdict, reason))
     return (

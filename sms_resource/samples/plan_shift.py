@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from sms_resource.findings import Findings
 from sms_resource.samples.intervals import numbers
 from sms_resource.samples.position import Seafloor
+from sms_resource.units import chance
 
 Floats = NDArray[np.float64]
 Verdict = Literal["none", "chance", "not resolved", "shift"]
@@ -116,12 +117,12 @@ def _report(found: PlanShift, now: float, at_edge: bool, reach_m: float) -> None
     if found.verdict == "shift":
         found.findings.warning(
             "collar-shift-plan",
-            f"Collars fit the bathymetry better {where}: {fit}, more than chance gives (p {found.p_value:.2g})",
+            f"Collars fit the bathymetry better {where}: {fit}, more than chance gives ({chance(found.p_value)})",
             "Check the datum and the navigation of both; nothing was moved.",
         )
         return
     if found.verdict == "chance":
-        why = f"the best of so many moves gives as much by chance (p {found.p_value:.2g})"
+        why = f"the best of so many moves gives as much by chance ({chance(found.p_value)})"
     else:
         why = (
             f"the best fit lies at the edge of the {reach_m:.0f} m that were searched"

@@ -8,6 +8,7 @@ import pandas as pd
 from sms_resource.findings import Findings
 from sms_resource.samples.intervals import numbers
 from sms_resource.samples.reference_materials import BIAS_CAUTION_PCT, BIAS_FAILED_PCT, LEAST_RESULTS
+from sms_resource.units import chance
 
 NAMED = {
     "references": "reference materials", "blanks": "blanks", "duplicates": "duplicates",
@@ -36,7 +37,7 @@ def reference_verdict(name: str, materials: pd.DataFrame, batches: pd.DataFrame,
         findings.warning(
             "quality-batch-bias",
             f"{name.capitalize()}: batch {batch} is biased by {row['mean_z']:+.1f} SD over {row['n']} reference results "
-            f"(p {row['p_adjusted']:.1g} after allowing for all batches)",
+            f"({chance(row['p_adjusted'])} after allowing for all batches)",
             "Have the batch assayed again, or leave it out.",
         )
     if failures:
@@ -88,12 +89,12 @@ def blank_verdict(name: str, blanks: pd.DataFrame, findings: Findings) -> Line:
     pair = part.loc[np.isfinite(numbers(part, "grade_before"))]
     if len(pair) >= 8 and pair["value"].nunique() > 1 and pair["grade_before"].nunique() > 1:
         answer = spearmanr(pair["grade_before"], pair["value"])
-        text += f", rank correlation with the grade before {answer.statistic:.2f} (p {answer.pvalue:.2g})"
+        text += f", rank correlation with the grade before {answer.statistic:.2f} ({chance(answer.pvalue)})"
         if answer.pvalue < 0.01 and answer.statistic > 0:
             findings.warning(
                 "quality-carry-over",
                 f"{name.capitalize()}: blanks follow the grade of the sample before: rank correlation "
-                f"{answer.statistic:.2f}, p {answer.pvalue:.2g}, {len(pair)} blanks",
+                f"{answer.statistic:.2f}, {chance(answer.pvalue)}, {len(pair)} blanks",
                 "Ask the laboratory to clean between samples.",
             )
     share = failed / len(part)

@@ -14,6 +14,7 @@ from sms_resource.samples.core_length import recovered_lengths, recovered_on_pie
 from sms_resource.samples.desurvey import HolePaths
 from sms_resource.samples.intervals import counted, cut_holes, names, numbers, overlap_pairs, valid_intervals
 from sms_resource.samples.reference_materials import holm
+from sms_resource.units import chance
 
 __all__ = [
     "join_recovery",
@@ -168,7 +169,7 @@ def recovery_bias_findings(table: pd.DataFrame) -> Findings:
         findings.warning(
             "recovery-bias",
             f"{row['metal']} in {row['domain']}: {row['verdict']} (rank correlation {row['spearman']:+.2f}, "
-            f"p {row['p_adjusted']:.2g} for all tests together, {row['p_value']:.2g} alone, {row['n']} samples)",
+            f"{chance(row['p_adjusted'])} for all tests together, {chance(row['p_value'])} alone, {row['n']} samples)",
             "Compare the treatments of lost core.",
         )
     return findings
