@@ -201,7 +201,7 @@ def style_of(name: str, layer: Any, variable: str | None) -> Style:
         label = f"{element_label(column).split(' (')[0]} x thickness ({plan_unit(graded)})"
         return Style(name, shape, graded, class_limits(layer[graded].to_numpy()), label=label)
     if column is None:
-        return Style(name, shape)
+        return Style(name, shape, names="hole_id" if shape == "point" and "hole_id" in layer else None)
     return Style(name, shape, column, class_limits(layer[column].to_numpy()), label=element_label(column))
 
 

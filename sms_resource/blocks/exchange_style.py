@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import sqlite3
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 from xml.sax.saxutils import escape, quoteattr
 
@@ -45,6 +46,8 @@ class Style:
         Polygons without a fill.
     label : str
         What the legend says of the column, with its unit.
+    names : str, optional
+        Column whose texts stand beside the features.
     """
 
     layer: str
@@ -54,13 +57,20 @@ class Style:
     colour: str = "#1f2328"
     outline_only: bool = False
     label: str = ""
+    names: str | None = None
 
     @property
-    def classes(self) -> list[tuple[float, float, str]]:
-        """Lower and upper edge and colour of each class."""
+    def classes(self) -> list[tuple[float, float, str, str]]:
+        """Lower and upper edge, colour and words of each class; the ends are open, being no round numbers."""
         count = len(self.limits) - 1
         steps = np.linspace(0, len(RAMP) - 1, max(count, 1)).round().astype(int)
-        return [(self.limits[n], self.limits[n + 1], RAMP[steps[n]]) for n in range(count)]
+        found = []
+        for n, (low, high) in enumerate(pairwise(self.limits)):
+            words = f"{low:.3g} to {high:.3g}"
+            if count > 1 and n in (0, count - 1):
+                words = f"under {high:.3g}" if n == 0 else f"{low:.3g} and over"
+            found.append((low, high, RAMP[steps[n]], words))
+        return found
 
 
 def class_limits(values: np.ndarray, count: int = 7) -> tuple[float, ...]:
@@ -104,16 +114,21 @@ def qml(style: Style) -> str:
         body = f"{head}<symbols>{symbol}</symbols></renderer-v2>"
     else:
         ranges = "".join(
-            f'<range lower="{low:.15g}" upper="{high:.15g}" symbol="{n}" label="{low:.3g} - {high:.3g}" render="true"/>'
-            for n, (low, high, _) in enumerate(style.classes)
+            f'<range lower="{low:.15g}" upper="{high:.15g}" symbol="{n}" label={quoteattr(words)} render="true"/>'
+            for n, (low, high, _, words) in enumerate(style.classes)
         )
-        symbols = "".join(_symbol(style, str(n), colour) for n, (_, _, colour) in enumerate(style.classes))
+        symbols = "".join(_symbol(style, str(n), colour) for n, (_, _, colour, _) in enumerate(style.classes))
         body = (
             f'<renderer-v2 type="graduatedSymbol" graduatedMethod="GraduatedColor" attr={quoteattr(style.column)} '
             f'enableorderby="0" forceraster="0"><ranges>{ranges}</ranges><symbols>{symbols}</symbols></renderer-v2>'
         )
     doctype = "<!DOCTYPE qgis PUBLIC 'http://mrcc.com/qgis.dtd' 'SYSTEM'>"
-    return f'{doctype}<qgis version="3.22.0" styleCategories="Symbology">{body}</qgis>'
+    if style.names is None:
+        return f'{doctype}<qgis version="3.22.0" styleCategories="Symbology">{body}</qgis>'
+    text = f'<text-style fieldName={quoteattr(style.names)} isExpression="0" fontSize="7" textColor="31,35,40,255">'
+    halo = '<text-buffer bufferDraw="1" bufferSize="0.7" bufferColor="255,255,255,255"/></text-style>'
+    names = f'<labeling type="simple"><settings calloutType="simple">{text}{halo}</settings></labeling>'
+    return f'{doctype}<qgis version="3.22.0" styleCategories="Symbology|Labeling" labelsEnabled="1">{body}{names}</qgis>'
 
 
 def _sld_symbol(style: Style, colour: str) -> str:
@@ -135,11 +150,11 @@ def sld(style: Style) -> str:
     else:
         name = f"<ogc:PropertyName>{escape(style.column)}</ogc:PropertyName>"
         rules = ""
-        for n, (low, high, colour) in enumerate(style.classes):
+        for n, (low, high, colour, words) in enumerate(style.classes):
             last = n == len(style.classes) - 1
             upper = "PropertyIsLessThanOrEqualTo" if last else "PropertyIsLessThan"
             rules += (
-                f"<Rule><Title>{low:.3g} - {high:.3g}</Title><ogc:Filter><ogc:And>"
+                f"<Rule><Title>{escape(words)}</Title><ogc:Filter><ogc:And>"
                 f"<ogc:PropertyIsGreaterThanOrEqualTo>{name}<ogc:Literal>{low:.15g}</ogc:Literal></ogc:PropertyIsGreaterThanOrEqualTo>"
                 f"<ogc:{upper}>{name}<ogc:Literal>{high:.15g}</ogc:Literal></ogc:{upper}>"
                 f"</ogc:And></ogc:Filter>{_sld_symbol(style, colour)}</Rule>"
