@@ -22,7 +22,7 @@ from sms_resource.reporting.style import Drawing, borrowed_settings, render
 # What the slow figures cost against the others, as measured; only the balance of the two halves rests on it.
 WEIGHTS = {"variograms": 5.0, "strip logs": 4.5, "cross-sections": 3.0, "plan of grades": 3.0, "swaths": 2.8,
            "top cuts": 2.3, "contact analysis": 2.0, "slope plan": 2.0, "duplicates": 1.7, "thickness plan": 1.6,
-           "neighbourhood study": 1.6, "recovery": 1.4, "blanks": 0.6, "tracers with depth": 0.5,
+           "neighbourhood study": 1.6, "recovery": 1.4, "blanks": 1.1, "tracers with depth": 0.5,
            "surface against core": 0.5, "change of support": 0.4, "comparison of estimators": 0.3,
            "density": 0.3}  # fmt: skip
 ALONE_UP_TO = 3.0  # less work than this is done before a second interpreter has started

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from sms_resource.reporting import (
+    figures_blanks,
     figures_blocks,
     figures_continuity,
     figures_geology,
@@ -39,7 +40,7 @@ MAKERS: tuple[tuple[str, Maker], ...] = (
     ("tracers with depth", figures_geology.tracers),
     ("surface against core", figures_recovery.surface_against_core),
     ("control charts", figures_quality.control_charts),
-    ("blanks", figures_quality.blanks),
+    ("blanks", figures_blanks.blanks),
     ("duplicates", figures_quality.duplicates),
     ("density", figures_samples.density),
     ("strip logs", figures_strip.strip_logs),

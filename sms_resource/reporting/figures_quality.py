@@ -1,4 +1,4 @@
-"""Laboratory quality: control charts of reference materials, blanks, scatter of duplicates."""
+"""Laboratory quality: control charts of reference materials, scatter of duplicates."""
 
 from __future__ import annotations
 
@@ -101,71 +101,6 @@ def control_charts(data: ReportData) -> Drawing | None:
         "Control charts of reference materials by element.",
         figure,
         frame[keep],
-    )
-
-
-def blanks(data: ReportData) -> Drawing | None:
-    """Blanks in the order of analysis against their limit."""
-    table = data.evidence.laboratory.table
-    if table is None or not has(table, "kind", "element", "value"):
-        return None
-    frame = table[table["kind"] == "blank"]
-    wanted = [m.partition("_")[0] for m in data.subject.metals]
-    frame = frame[frame["element"].isin(wanted)]
-    limit = frame["value_limit"] if "value_limit" in frame else pd.Series(np.nan, index=frame.index)
-    frame = frame.assign(
-        shown=frame["value"].where(frame["value"].notna(), limit / 2), below=frame["value"].isna()
-    )
-    frame = frame[frame["shown"].notna()]
-    elements = [e for e in wanted if (frame["element"] == e).any()][:MOST_PANELS]
-    if not elements:
-        return None
-    rows, columns = panel_grid(len(elements))
-    figure, axes = style.new_figure(4.9 * columns, 2.1 * rows, rows, columns)
-    for axis, element in zip(axes.ravel(), elements):
-        part = frame[frame["element"] == element]
-        place = np.arange(1, len(part) + 1)
-        below = part["below"].to_numpy(bool)
-        axis.plot(
-            place[~below],
-            part["shown"].to_numpy(float)[~below],
-            "o",
-            ms=3.6,
-            mew=0,
-            color=style.LINES[0],
-            label="measured",
-        )
-        axis.plot(
-            place[below],
-            part["shown"].to_numpy(float)[below],
-            "o",
-            ms=3.6,
-            mfc="none",
-            mec=style.QUIET,
-            label="below detection, drawn at half",
-        )
-        if part.get("value_limit") is not None and part["value_limit"].notna().any():
-            axis.axhline(
-                5 * float(part["value_limit"].max()),
-                color="#d55e00",
-                lw=1,
-                ls="--",
-                label="5 detection limits",
-            )
-        axis.set_xlabel("Order of analysis (count)")
-        axis.set_ylabel(element_name(element))
-        axis.set_ylim(bottom=0)
-    for axis in axes.ravel()[len(elements) :]:
-        axis.set_axis_off()
-    figure.legend(*axes[0, 0].get_legend_handles_labels(), loc="outside lower center", ncols=3)
-    return Drawing(
-        "blanks",
-        "evidence",
-        "Blanks",
-        "Material without metal, in the order of analysis.",
-        "Charts of blanks by element.",
-        figure,
-        frame[[c for c in ("batch", "sequence", "element", "value", "value_limit", "shown") if c in frame]],
     )
 
 

@@ -210,3 +210,20 @@ def test_carry_over_that_cannot_be_judged_is_told_once(
     given = with_evidence(data, laboratory=replace(data.evidence.laboratory, blanks=blanks))
     said = [item for block in evidence(given) if isinstance(block, Bullets) for item in block.items]
     assert sum("Carry-over" in item for item in said) == told
+
+
+def test_blanks_are_drawn_against_their_own_limit_and_the_grade_before(data: ReportData) -> None:
+    from sms_resource.reporting.figures_blanks import blank_frame, blanks
+
+    lab = data.evidence.laboratory
+    table = lab.table[lab.table["kind"] == "blank"]
+    judged = table[["element", "sample_id"]].assign(limit=0.07, detection_limit=0.01, grade_before=3.0)
+    given = with_evidence(data, laboratory=replace(lab, blanks=judged))
+    frame = blank_frame(given)
+    assert frame is not None and set(frame["limit"]) == {0.07} and set(frame["grade_before"]) == {3.0}
+    drawn, alone = blanks(given), blanks(with_evidence(data, laboratory=replace(lab, blanks=None)))
+    assert drawn is not None and drawn.figure is not None and alone is not None and alone.figure is not None
+    labels = [text.get_text() for text in drawn.figure.legends[0].get_texts()]
+    assert "7 detection limits" in labels
+    assert len(drawn.figure.axes) == 2 * len(alone.figure.axes)
+    assert "sample before" in drawn.caption and "sample before" not in alone.caption
