@@ -146,7 +146,8 @@ def apply_screens(
     columns = plan_columns(model, body)
     steps: list[tuple[str, str, Array]] = []  # name, what, share of each column taken
     left = np.ones(len(columns))
-    for zone in prepare_zones(zones, tenure, body, findings, settings.exclude_status, settings.vent_buffer_m):
+    crs, status, buffer_m = body.top.crs, settings.exclude_status, settings.vent_buffer_m
+    for zone in prepare_zones(zones, tenure, body.outline, crs, findings, status, buffer_m):
         share = np.minimum(columns.inside_share(zone.geometry), left)
         steps.append((zone.key, zone.what, share))
         left = left - share

@@ -5,7 +5,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any
 
-from sms_resource.blocks.body import Body
 from sms_resource.findings import Findings
 
 TENURE = "tenure"
@@ -24,7 +23,8 @@ class Zone:
 def prepare_zones(
     zones: Any,
     tenure: Any,
-    body: Body,
+    outline: Any,
+    crs: Any,
     findings: Findings,
     exclude_status: tuple[str, ...] | None = None,
     vent_buffer_m: float | None = None,
@@ -37,7 +37,10 @@ def prepare_zones(
         name, status, buffer_m, geometry.
     tenure : shapely geometry or None
         Area held.
-    body : Body
+    outline : shapely geometry
+        Of the body.
+    crs : str or None
+        Its coordinate system.
     findings : Findings
         Zones that cannot be used are added to it.
     exclude_status : tuple of str, optional
@@ -46,10 +49,9 @@ def prepare_zones(
         Buffer round active vents, in place of their own.
     """
     out: list[Zone] = []
-    outline = body.outline
     taken: Any = None
     rows = [] if zones is None else list(zones.to_dict("records"))
-    if rows and not _same_system(zones, body, findings):
+    if rows and not _same_system(zones, crs, findings):
         return []
     held = [
         row["geometry"] for row in rows if str(row.get("status", "")) == TENURE and _usable(row, findings)
@@ -89,16 +91,16 @@ def prepare_zones(
     return out
 
 
-def _same_system(zones: Any, body: Body, findings: Findings) -> bool:
+def _same_system(zones: Any, crs: Any, findings: Findings) -> bool:
     """Whether zones and body share a coordinate system; geopandas itself only warns."""
-    crs = getattr(zones, "crs", None)
-    if crs is None or body.top.crs is None:
+    given = getattr(zones, "crs", None)
+    if given is None or crs is None:
         return True
     from pyproj import CRS
 
-    if CRS.from_user_input(crs).equals(CRS.from_user_input(body.top.crs), ignore_axis_order=True):
+    if CRS.from_user_input(given).equals(CRS.from_user_input(crs), ignore_axis_order=True):
         return True
-    findings.error("screen-crs", f"the zones are in {crs.name}, the body in {body.top.crs}",
+    findings.error("screen-crs", f"the zones are in {given.name}, the body in {crs}",
                    "project the zones into the study's coordinate system")  # fmt: skip
     return False
 

@@ -100,7 +100,7 @@ def check_truth(context: Context, name: str) -> None:
 
 
 def load_without_drilling(context: Context) -> LoadedData:
-    """Read what a study without holes rests on: surface samples, the seafloor, the outline."""
+    """Read what a study without holes rests on: surface samples, the seafloor, the outline, zones."""
     from sms_resource.loaders.surface_samples import load_surface
 
     data, metals = context.config.data, context.config.metals
@@ -109,7 +109,7 @@ def load_without_drilling(context: Context) -> LoadedData:
     context.findings.extend(found)
     made = LoadedData(
         surface=surface, seafloor=_grid(context, data.bathymetry), outline=read_layer(context, data.outline, "outline"),
-        files=context.study.files(),
+        exclusions=read_layer(context, data.exclusions, "exclusions"), files=context.study.files(),
     )  # fmt: skip
     context.detail = f"{len(surface)} surface samples, no holes"
     return made

@@ -45,13 +45,14 @@ def target(context: Context) -> pd.DataFrame:
     config = context.config
     if data.outline is None:
         raise StageStop  # what is wrong with the outline is told where it is read
-    area = float(data.outline.geometry.union_all().area)
+    area, taken, zones = open_area(context, data.outline, data.exclusions)
     thickness = (float(config.exploration.thickness_low_m), float(config.exploration.thickness_high_m))
     given = {name: three_values(name, value) for name, value in config.density.assigned_dry_tpm3.items()}
     density = (float(min(v[0] for v in given.values())), float(max(v[2] for v in given.values())))
     grades = grade_rows(context, data.surface)
     stated = ", ".join(given)
-    basis = f"plan area of the outline, stated thickness and stated dry density of {stated}; every low times every low"
+    plan = "plan area of the outline" + (" without its exclusion zones" if taken > 0 else "")
+    basis = f"{plan}, stated thickness and stated dry density of {stated}; every low times every low"
     made = exploration_target(
         area_m2=(area, area), thickness_m=thickness, dry_density_tpm3=density,
         grades={row[0]: (row[1], row[2]) for row in grades if np.isfinite(row[1])}, basis=basis,
@@ -62,7 +63,7 @@ def target(context: Context) -> pd.DataFrame:
             area * thickness[0],
             area * thickness[1],
             0,
-            f"outline of {area:,.0f} m² in plan, no zone taken out, × stated thickness",
+            f"outline of {area + taken:,.0f} m² in plan, {zones}, × stated thickness",
         ),
         ("thickness_m", *thickness, 0, "stated: exploration.thickness_low_m and thickness_high_m"),
         ("dry_density_tpm3", *density, 0, f"stated: density.assigned_dry_tpm3 of {stated}"),
@@ -85,6 +86,36 @@ def target(context: Context) -> pd.DataFrame:
     )  # fmt: skip
     context.detail = "ranges only"
     return pd.DataFrame(rows, columns=COLUMNS)
+
+
+def open_area(context: Context, outline: Any, exclusions: Any) -> tuple[float, float, str]:
+    """Plan area of the outline that no zone takes, the area that zones take (m²), and both in words.
+
+    Zones go by ``screens.exclude_status`` and ``screens.vent_buffer_m``, as those of a study with drilling do.
+    """
+    from sms_resource.blocks.zones import prepare_zones
+
+    choice = context.config.screens
+    shape, found = outline.geometry.union_all(), Findings()
+    zones = prepare_zones(
+        exclusions, None, shape, outline.crs, found, choice.exclude_status, choice.vent_buffer_m
+    )
+    file = context.study.files().get("exclusions")
+    context.findings.extend(replace(item, file=item.file or file) for item in found)
+    if found.has_errors:
+        raise StageStop
+    whole, taken = float(shape.area), float(sum(zone.geometry.area for zone in zones))
+    if whole - taken <= 1e-9 * whole:
+        context.findings.error(
+            "screen-all-taken", "exclusion zones take the whole outline: nothing is left to range a target over",
+            "Check the zones, screens.exclude_status and screens.vent_buffer_m.", file=context.study.path.name,
+            column="data.exclusions",
+        )  # fmt: skip
+        raise StageStop
+    if exclusions is None:
+        return whole, 0.0, "no zones given"
+    names = "; ".join(zone.what for zone in zones if zone.geometry.area > 0)
+    return whole - taken, taken, f"less {taken:,.0f} m² of zones ({names})" if names else "no zone reaches it"
 
 
 def grade_rows(context: Context, surface: pd.DataFrame) -> list[tuple[str, float, float, int, str]]:
@@ -132,7 +163,7 @@ TARGET_STAGES: tuple[Any, ...] = (
     Stage(
         "target",
         "Ranging the target",
-        ("study", "metals", "assays", "density", "exploration"),
+        ("study", "metals", "assays", "density", "screens", "exploration"),
         ("load", "check"),
         target,
     ),

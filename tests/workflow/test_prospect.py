@@ -63,6 +63,32 @@ def test_ranges_are_area_times_thickness_times_density_by_hand(made: tuple[Path,
     assert table["caution"].str.contains("conceptual").all()
 
 
+def test_exclusion_zones_are_taken_out_and_named(tmp_path: Path) -> None:
+    """Areas by shapely: the outline less the vent with the buffer that the study states; tonnes fall in proportion."""
+    small = undrilled(tmp_path / "study")
+    small.toml["data"]["exclusions"] = SmallStudy(tmp_path / "other").toml["data"]["exclusions"]
+    small.toml["screens"] = {"vent_buffer_m": 9.0}
+    path = small.write()
+    done = call("run", path, "--out", tmp_path / "results")
+    assert done.exit_code == 0, done.output
+    table = pd.read_csv(tmp_path / "results" / "exploration_target.csv").set_index("quantity")
+    outline = gpd.read_file(path.parent / "outline.gpkg").geometry.union_all()
+    zones = gpd.read_file(path.parent / "exclusions.gpkg")
+    vents = zones[zones["status"] == "active_vent"].geometry.buffer(9.0).union_all()
+    left = outline.difference(vents).area
+    assert 0 < left < outline.area
+    assert table.loc["volume_m3", ["low", "high"]].tolist() == pytest.approx([2.0 * left, 12.0 * left])
+    assert table.loc["dry_tonnes", ["low", "high"]].tolist() == pytest.approx([4.8 * left, 43.2 * left])
+    assert (
+        "active vent" in table.loc["volume_m3", "basis"] and "9 m around" in table.loc["volume_m3", "basis"]
+    )
+    small.toml["screens"] = {"vent_buffer_m": 5000.0}
+    done = call("run", small.write(), "--out", tmp_path / "none", "--json")
+    errors = [item for item in json.loads(done.stdout) if item["severity"] == "error"]
+    assert done.exit_code == 1 and [item["code"] for item in errors] == ["screen-all-taken"]
+    assert not (tmp_path / "none").exists()
+
+
 def test_nothing_reads_like_an_estimate(made: tuple[Path, Path, Result]) -> None:
     _, out, done = made
     assert {item.name for item in out.iterdir()} == {
