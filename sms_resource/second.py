@@ -7,7 +7,6 @@ nothing depends on it. Only the standard library is imported here: a run starts 
 
 from __future__ import annotations
 
-import atexit
 import importlib
 import os
 import pickle
@@ -23,10 +22,11 @@ from typing import IO, Any, TypeVar
 
 T = TypeVar("T")
 _PROGRAM = "import sys; sys.path[:] = {path!r}; from sms_resource import second; second.serve()"
-
-
 # What a pipe to a process that ended, or what it sent last, may raise.
-_BROKEN = (OSError, EOFError, ValueError, AttributeError, ImportError, pickle.UnpicklingError)
+_BROKEN = (
+    OSError, pickle.UnpicklingError, AttributeError, ImportError, IndexError, KeyError, TypeError, ValueError, EOFError,
+    MemoryError, RecursionError,
+)  # fmt: skip
 
 
 class SecondLost(Exception):
@@ -99,7 +99,6 @@ def start() -> SecondInterpreter | None:
             _known = SecondInterpreter()
         except OSError:
             return None
-        atexit.register(_known.close)
     return _known
 
 
@@ -165,6 +164,9 @@ def serve() -> None:
     os.dup2(os.open(os.devnull, os.O_WRONLY), 1)  # what a library prints is no reply
     while serve_one(requests, replies):
         pass
+    for thread in threading.enumerate():
+        if thread is not threading.current_thread():
+            thread.join()  # it takes away what it has put on the disk
     os._exit(0)
 
 
