@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -24,23 +25,16 @@ TALL_CHIMNEY_M, TALLEST_CHIMNEY_M = 60.0, 300.0
 CLASSES = ("measured", "indicated", "inferred", "unclassified")
 
 
-def load_outline(
-    path: Path,
-    *,
-    shown_as: str = "",
-    layer: str | None = None,
-    crs: str | None = None,
-    declared_crs: str | None = None,
-    reproject: bool = False,
-) -> tuple[gpd.GeoDataFrame | None, Findings]:
-    """Read the polygons that bound the body in plan.
+@dataclass(frozen=True)
+class LayerSource:
+    """A file that holds a layer of shapes, and how to read it.
 
     Parameters
     ----------
     path : Path
         GeoPackage, Shapefile, GeoJSON or whatever else pyogrio opens.
     shown_as : str
-        Name of the file in findings.
+        Name of the file in findings; the file's own name if empty.
     layer : str, optional
         Layer; the only one if not given.
     crs : str, optional
@@ -48,6 +42,31 @@ def load_outline(
     declared_crs : str, optional
         System of the layer on the user's word, where it has none inside.
     reproject : bool
+    columns : mapping
+        Column as its reader names it to the file's column. One that is not mentioned is looked up under its own name.
+    """
+
+    path: Path
+    shown_as: str = ""
+    layer: str | None = None
+    crs: str | None = None
+    declared_crs: str | None = None
+    reproject: bool = False
+    columns: Mapping[str, str] = field(default_factory=dict)
+
+    @property
+    def name(self) -> str:
+        """Name of the file in findings."""
+        return self.shown_as or self.path.name
+
+
+def load_outline(source: LayerSource) -> tuple[gpd.GeoDataFrame | None, Findings]:
+    """Read the polygons that bound the body in plan.
+
+    Parameters
+    ----------
+    source : LayerSource
+        Its ``columns`` are not used: a name is optional, and stands under ``name``.
 
     Returns
     -------
@@ -55,43 +74,28 @@ def load_outline(
         geometry (polygons, 2D), name, source_row.
     findings : Findings
     """
-    findings = Findings()
-    name = shown_as or path.name
-    frame = read_shapes(path, name, layer, crs, declared_crs, reproject, findings)
+    frame, _, findings = _read(source)
     if frame is None:
         return None, findings
-    frame = _close_lines(frame, name, findings)
-    wrong = ~frame.geom_type.isin(AREAS).to_numpy()
-    kinds = frame.geom_type.to_numpy()[wrong]
-    report_rows(
-        findings, "error", "outline-not-polygon", frame["source_row"].to_numpy()[wrong],
-        [f"An outline is a polygon, and this is a {kind}." for kind in kinds],
-        "Draw it as a polygon; lines must be closed.", file=name, column="geometry",
+    frame = _close_lines(frame, source.name, findings)
+    areas = _areas(
+        frame, "outline-not-polygon", "An outline", "Draw it as a polygon; lines must be closed.", source.name, findings
     )  # fmt: skip
-    out = frame[~wrong].reset_index(drop=True)
+    out = frame[areas].reset_index(drop=True)
     if out.empty:
         return None, findings
     names = find_header("name", [str(column) for column in out.columns])
-    out["name"] = out[names[0]].fillna("").astype(str) if names else ""
+    out["name"] = _text(out, names[0] if names else None)
     return out[["name", "source_row", "geometry"]], findings
 
 
-def load_chimneys(
-    path: Path,
-    *,
-    shown_as: str = "",
-    layer: str | None = None,
-    crs: str | None = None,
-    declared_crs: str | None = None,
-    reproject: bool = False,
-    columns: Mapping[str, str] | None = None,
-) -> tuple[gpd.GeoDataFrame | None, Findings]:
+def load_chimneys(source: LayerSource) -> tuple[gpd.GeoDataFrame | None, Findings]:
     """Read polygons of chimneys with the height of each.
 
     Parameters
     ----------
-    columns : mapping, optional
-        ``name`` and ``height_m`` to the file's columns.
+    source : LayerSource
+        Its ``columns`` map ``name`` and ``height_m``.
 
     Returns
     -------
@@ -100,21 +104,11 @@ def load_chimneys(
         higher than 300 m, is an error and is left out.
     findings : Findings
     """
-    findings = Findings()
-    name = shown_as or path.name
-    frame = read_shapes(path, name, layer, crs, declared_crs, reproject, findings)
-    if frame is None:
+    frame, found, findings = _read(source, ("name", "height_m"), ("height_m",))
+    if frame is None or "height_m" not in found:
         return None, findings
-    found = layer_columns(frame, ("name", "height_m"), ("height_m",), columns or {}, name, findings)
-    if "height_m" not in found:
-        return None, findings
-    rows, header = frame["source_row"].to_numpy(), found["height_m"]
-    areas = frame.geom_type.isin(AREAS).to_numpy()
-    report_rows(
-        findings, "error", "chimney-not-polygon", rows[~areas],
-        [f"A chimney is a polygon, and this is a {kind}." for kind in frame.geom_type.to_numpy()[~areas]],
-        "Draw its foot as a polygon.", file=name, column="geometry",
-    )  # fmt: skip
+    name, rows, header = source.name, frame["source_row"].to_numpy(), found["height_m"]
+    areas = _areas(frame, "chimney-not-polygon", "A chimney", "Draw its foot as a polygon.", name, findings)
     height = _numbers(frame, rows, header, "Write the height in metres.", name, findings)
     with np.errstate(invalid="ignore"):
         high = height > 0
@@ -134,28 +128,19 @@ def load_chimneys(
         )  # fmt: skip
     high &= height <= TALLEST_CHIMNEY_M
     out = frame[["geometry", "source_row"]]
-    out["name"] = frame[found["name"]].fillna("").astype(str).to_numpy() if "name" in found else ""
+    out["name"] = _text(frame, found.get("name"))
     out["height_m"] = height
     out = out[areas & high].reset_index(drop=True)
     return (None if out.empty else out[["name", "height_m", "geometry", "source_row"]]), findings
 
 
-def load_exclusions(
-    path: Path,
-    *,
-    shown_as: str = "",
-    layer: str | None = None,
-    crs: str | None = None,
-    declared_crs: str | None = None,
-    reproject: bool = False,
-    columns: Mapping[str, str] | None = None,
-) -> tuple[gpd.GeoDataFrame | None, Findings]:
+def load_exclusions(source: LayerSource) -> tuple[gpd.GeoDataFrame | None, Findings]:
     """Read zones that are set aside: polygons, or points and lines with a buffer.
 
     Parameters
     ----------
-    columns : mapping, optional
-        ``name``, ``status`` and ``buffer_m`` to the file's columns.
+    source : LayerSource
+        Its ``columns`` map ``name``, ``status`` and ``buffer_m``.
 
     Returns
     -------
@@ -164,64 +149,86 @@ def load_exclusions(
         (0 where not given; the geometry is not buffered), geometry (2D), source_row.
     findings : Findings
     """
-    findings = Findings()
-    name = shown_as or path.name
-    frame = read_shapes(path, name, layer, crs, declared_crs, reproject, findings)
+    frame, found, findings = _read(source, ("name", "status", "buffer_m"), ("status",))
     if frame is None:
         return None, findings
-    found = layer_columns(frame, ("name", "status", "buffer_m"), ("status",), columns or {}, name, findings)
     out = frame[["geometry", "source_row"]]
     rows = out["source_row"].to_numpy()
-    out["name"] = frame[found["name"]].fillna("").astype(str).to_numpy() if "name" in found else ""
-    raw = (
-        frame[found["status"]].fillna("").astype(str).to_numpy()
-        if "status" in found
-        else np.full(len(out), "")
-    )
-    out["status"] = _statuses(raw, rows, found.get("status", "status"), name, findings)
-    out["buffer_m"] = _buffers(frame, out, found.get("buffer_m"), name, findings)
+    out["name"] = _text(frame, found.get("name"))
+    raw = _text(frame, found.get("status")).to_numpy()
+    out["status"] = _statuses(raw, rows, found.get("status", "status"), source.name, findings)
+    out["buffer_m"] = _buffers(frame, out, found.get("buffer_m"), source.name, findings)
     return out[["name", "status", "buffer_m", "geometry", "source_row"]], findings
 
 
-def load_overrides(
-    path: Path,
-    *,
-    shown_as: str = "",
-    layer: str | None = None,
-    crs: str | None = None,
-    declared_crs: str | None = None,
-    reproject: bool = False,
-    columns: Mapping[str, str] | None = None,
-) -> tuple[gpd.GeoDataFrame | None, Findings]:
-    """Read polygons in which a Competent Person sets the class: columns class, reason, by.
+def load_overrides(source: LayerSource) -> tuple[gpd.GeoDataFrame | None, Findings]:
+    """Read polygons in which a Competent Person sets the class.
 
     A polygon without a reason or a name is an error: an override must be owned. So is a class that there is not.
+
+    Parameters
+    ----------
+    source : LayerSource
+        Its ``columns`` map ``class``, ``reason`` and ``by``.
+
+    Returns
+    -------
+    overrides : GeoDataFrame or None
+        class, reason, by (text as in the file, "" where there is none), geometry (2D), source_row.
+    findings : Findings
     """
-    findings = Findings()
-    name = shown_as or path.name
-    frame = read_shapes(path, name, layer, crs, declared_crs, reproject, findings)
+    wanted = ("class", "reason", "by")
+    frame, found, findings = _read(source, wanted, wanted)
     if frame is None:
         return None, findings
-    wanted = ("class", "reason", "by")
-    found = layer_columns(frame, wanted, wanted, columns or {}, name, findings)
     out = frame[["geometry", "source_row"]]
     for column in wanted:
-        out[column] = frame[found[column]].fillna("").astype(str).str.strip() if column in found else ""
+        out[column] = _text(frame, found.get(column)).str.strip()
         blank = (out[column] == "").to_numpy()
         if column in found:
             report_rows(
                 findings, "error", "override-incomplete", out["source_row"].to_numpy()[blank],
                 f"The polygon has no {column}.", "An override needs its class, its reason and who gave it.",
-                file=name, column=found[column],
+                file=source.name, column=found[column],
             )  # fmt: skip
     if "class" in found:
         other = (~out["class"].str.lower().isin([*CLASSES, ""])).to_numpy()
         report_rows(
             findings, "error", "override-class", out["source_row"].to_numpy()[other],
             [f"“{text}” is not a class." for text in out["class"].to_numpy()[other]],
-            f"Use one of: {', '.join(CLASSES)}.", file=name, column=found["class"],
+            f"Use one of: {', '.join(CLASSES)}.", file=source.name, column=found["class"],
         )  # fmt: skip
     return out[[*wanted, "geometry", "source_row"]], findings
+
+
+def _read(
+    source: LayerSource, wanted: tuple[str, ...] = (), needed: tuple[str, ...] = ()
+) -> tuple[Any, dict[str, str], Findings]:
+    """The layer (None where it cannot be used), its columns by their name here, and what is wrong with either."""
+    findings = Findings()
+    frame = read_shapes(
+        source.path, source.name, source.layer, source.crs, source.declared_crs, source.reproject, findings
+    )
+    found: dict[str, str] = {}
+    if frame is not None and wanted:
+        found = layer_columns(frame, wanted, needed, source.columns, source.name, findings)
+    return frame, found, findings
+
+
+def _areas(frame: Any, code: str, thing: str, remedy: str, name: str, findings: Findings) -> np.ndarray:
+    """Which shapes are polygons (n,); any other is an error."""
+    areas: np.ndarray = frame.geom_type.isin(AREAS).to_numpy()
+    report_rows(
+        findings, "error", code, frame["source_row"].to_numpy()[~areas],
+        [f"{thing} is a polygon, and this is a {kind}." for kind in frame.geom_type.to_numpy()[~areas]],
+        remedy, file=name, column="geometry",
+    )  # fmt: skip
+    return areas
+
+
+def _text(frame: Any, header: str | None) -> pd.Series:
+    """A column of a layer as text, "" where it has none."""
+    return pd.Series("", index=frame.index) if header is None else frame[header].fillna("").astype(str)
 
 
 def _close_lines(frame: Any, name: str, findings: Findings) -> Any:

@@ -23,15 +23,13 @@ def override_faults(study: Study) -> Findings:
     What is wrong with the layer itself the stage load tells.
     """
     from sms_resource.loaders.boundaries import load_overrides
+    from sms_resource.workflow.load import layer_source
 
     findings = Findings()
     layer = study.config.data.class_overrides
     if layer is None or study.config.classes.allow_measured:
         return findings
-    frame, _ = load_overrides(
-        study.resolve(layer.file), shown_as=layer.file, layer=layer.layer, crs=study.config.study.crs,
-        declared_crs=layer.crs, reproject=layer.reproject, columns=dict(layer.columns),
-    )  # fmt: skip
+    frame, _ = load_overrides(layer_source(study, layer, study.config.study.crs))
     if frame is None:
         return findings
     for row in frame[frame["class"].str.lower() == "measured"]["source_row"]:

@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from sms_resource.loaders.tables import LoadedData
+from sms_resource.study import Study
 from sms_resource.study.files import GridFile, LayerFile, TableFile
 from sms_resource.workflow.evidence import metal_columns
 from sms_resource.workflow.stage import Context
+
+if TYPE_CHECKING:
+    from sms_resource.loaders.boundaries import LayerSource
 
 
 def table_source(context: Context, table: TableFile) -> Any:
@@ -152,15 +156,21 @@ def _layer(context: Context, layer: LayerFile, role: str) -> Any:
         "exclusions": boundaries.load_exclusions,
         "class_overrides": boundaries.load_overrides,
     }[role]
-    options: dict[str, Any] = {} if role == "outline" else {"columns": dict(layer.columns)}
-    return reader(
-        context.study.resolve(layer.file),
+    return reader(layer_source(context.study, layer, context.config.study.crs))
+
+
+def layer_source(study: Study, layer: LayerFile, crs: str) -> LayerSource:
+    """What the loaders need to know of one layer of the study."""
+    from sms_resource.loaders.boundaries import LayerSource
+
+    return LayerSource(
+        path=study.resolve(layer.file),
         shown_as=layer.file,
         layer=layer.layer,
-        crs=context.config.study.crs,
+        crs=crs,
         declared_crs=layer.crs,
         reproject=layer.reproject,
-        **options,
+        columns=dict(layer.columns),
     )
 
 

@@ -18,7 +18,7 @@ from shapely.geometry import Point, Polygon
 
 from sms_resource.findings import Finding, Findings
 from sms_resource.loaders.bathymetry import load_grid
-from sms_resource.loaders.boundaries import load_exclusions, load_outline
+from sms_resource.loaders.boundaries import LayerSource, load_exclusions, load_outline
 from sms_resource.loaders.checks import CheckSettings, check_data
 from sms_resource.loaders.drilling import load_drilling
 from sms_resource.loaders.laboratory import load_laboratory
@@ -315,10 +315,12 @@ class Study:
             **options,
         )
         found.extend(more)
-        parts["outline"], more = load_outline(self.folder / "outline.gpkg", shown_as="outline.gpkg", crs=CRS)
+        parts["outline"], more = load_outline(
+            LayerSource(self.folder / "outline.gpkg", shown_as="outline.gpkg", crs=CRS)
+        )
         found.extend(more)
         parts["exclusions"], more = load_exclusions(
-            self.folder / "exclusions.gpkg", shown_as="exclusions.gpkg", crs=CRS
+            LayerSource(self.folder / "exclusions.gpkg", shown_as="exclusions.gpkg", crs=CRS)
         )
         found.extend(more)
         return parts, found

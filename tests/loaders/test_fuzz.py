@@ -12,7 +12,7 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
 from sms_resource.loaders.bathymetry import load_grid
-from sms_resource.loaders.boundaries import load_exclusions
+from sms_resource.loaders.boundaries import LayerSource, load_exclusions
 from sms_resource.loaders.checks import check_data
 from sms_resource.loaders.drilling import load_drilling
 from sms_resource.loaders.guess import guess_study
@@ -106,7 +106,7 @@ def test_files_with_bytes_changed(tmp_path: Path, kind: str) -> None:
         if kind in ("workbook", "parquet"):
             load_table(TableSource(path), "lithology")
         elif kind == "layer":
-            load_exclusions(path, crs="EPSG:32702")
+            load_exclusions(LayerSource(path, crs="EPSG:32702"))
         else:
             load_grid(path, crs="EPSG:32702", declared_crs="EPSG:32702")
         guess_study([path])
