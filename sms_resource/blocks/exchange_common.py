@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import json
 import re
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
@@ -95,6 +97,13 @@ def coded_text(codes: Any, words: list[str]) -> pd.Categorical:
     )
 
 
+def restored(values: Any, words: list[str] | None = None, kind: str | None = None) -> Any:
+    """A column as the table had it: text where ``words`` are given, else numbers of the dtype ``kind``."""
+    if words is not None:
+        return coded_text(values, words)
+    return values if kind is None or kind == str(values.dtype) else values.astype(kind)
+
+
 def check_model(model: BlockModel, *, most: int | None = None, what: str = "This format") -> pd.DataFrame:
     """The frame of a model that can be written.
 
@@ -155,14 +164,39 @@ def trimmed(model: BlockModel) -> tuple[BlockGrid, NDArray[np.int64], tuple[int,
     return grid, index - low, (int(low[0]), int(low[1]), int(low[2]))
 
 
-def check_cells(grid: BlockGrid, most: int, what: str) -> None:
-    """Refuse a dense format that would hold more than ``most`` cells."""
+def boxed(
+    model: BlockModel, most: int, what: str
+) -> tuple[pd.DataFrame, BlockGrid, NDArray[np.int64], tuple[int, int, int]]:
+    """What a dense format stores: the frame of a model, and its :func:`trimmed` box, index and beginning.
+
+    Raises
+    ------
+    ExchangeError
+        If the model cannot be written, or the box holds more than ``most`` cells.
+    """
+    frame = check_model(model)
+    grid, index, low = trimmed(model)
     if grid.count > most:
         raise ExchangeError(
             "exchange-too-many",
             f"{what} stores every cell of the box around the body: {grid.count:,} cells, the limit is {most:,}",
             "Write Parquet or .vtu, which store only the blocks that touch the body, or use larger blocks",
         )
+    return frame, grid, index, low
+
+
+def in_order(frame: pd.DataFrame) -> pd.DataFrame:
+    """The rows in the order of a model: by j, then i, then k."""
+    return frame.sort_values(["j", "i", "k"], ignore_index=True)
+
+
+def placed(frame: pd.DataFrame, grid: BlockGrid) -> pd.DataFrame:
+    """Rows of a dense format, which stores no coordinates, :func:`in_order` and with the centres after i, j and k."""
+    frame = in_order(frame)
+    centres = grid.centres(frame["i"], frame["j"], frame["k"])
+    for axis, name in enumerate(PLACE):
+        frame.insert(len(INDEX) + axis, name, centres[:, axis])
+    return frame
 
 
 def grid_text(model: BlockModel) -> str:
@@ -220,3 +254,12 @@ def unreadable(file: Path, kind: str, error: object) -> ExchangeError:
         "exchange-unreadable", f"the file cannot be read as {kind} ({reason})",
         "Write it again, or choose the reader of its true format", file,
     )  # fmt: skip
+
+
+@contextmanager
+def reading(file: Path, kind: str, *errors: type[Exception]) -> Iterator[None]:
+    """While a library reads a file, turn the ``errors`` that it raises into :func:`unreadable`."""
+    try:
+        yield
+    except errors as error:
+        raise unreadable(file, kind, error) from error

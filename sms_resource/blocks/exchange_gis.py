@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
-from sms_resource.blocks.exchange_common import ExchangeError, check_model, is_number, unreadable
+from sms_resource.blocks.exchange_common import ExchangeError, check_model, is_number, reading
 from sms_resource.blocks.exchange_plan import block_plan, metals_of, plan_unit
 from sms_resource.blocks.exchange_style import Style, class_limits, embed_styles
 from sms_resource.blocks.grid import BlockGrid
@@ -217,10 +217,9 @@ def read_layer(path: str | Path, layer: str) -> Any:
     import pyogrio
 
     path = Path(path)
-    try:
+    errors = (pyogrio.errors.DataSourceError, pyogrio.errors.DataLayerError, OSError)
+    with reading(path, f"a GeoPackage with a layer {layer}", *errors):
         frame = gpd.read_file(path, layer=layer, engine="pyogrio")
-    except (pyogrio.errors.DataSourceError, pyogrio.errors.DataLayerError, OSError) as error:
-        raise unreadable(path, f"a GeoPackage with a layer {layer}", error) from error
     if frame.empty:
         raise ExchangeError(
             "exchange-empty", f"layer {layer} has no row", "Write it from tables with rows", path

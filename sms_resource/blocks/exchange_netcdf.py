@@ -17,16 +17,16 @@ from numpy.typing import NDArray
 
 from sms_resource.blocks.exchange_common import (
     PLACE,
-    check_cells,
-    check_model,
-    coded_text,
+    boxed,
     column_unit,
     grid_from_text,
     grid_text,
     is_number,
     model_from,
+    placed,
+    reading,
+    restored,
     text_codes,
-    trimmed,
     unreadable,
 )
 from sms_resource.blocks.grid import BlockGrid
@@ -58,9 +58,7 @@ def to_xarray(model: BlockModel) -> Any:
     """
     import xarray as xr
 
-    frame = check_model(model)
-    grid, index, low = trimmed(model)
-    check_cells(grid, MOST_CELLS, "NetCDF")
+    frame, grid, index, low = boxed(model, MOST_CELLS, "NetCDF")
     shape = grid.shape[::-1]
     where = (index[:, 2], index[:, 1], index[:, 0])
     dataset = xr.Dataset(coords=_coordinates(grid, low))
@@ -193,30 +191,18 @@ def read_netcdf(path: str | Path) -> BlockModel:
     import xarray as xr
 
     path = Path(path)
-    try:
-        with xr.open_dataset(path, engine="h5netcdf") as source:
-            dataset = source.load()
-    except (OSError, ValueError, KeyError) as error:
-        raise unreadable(path, "NetCDF 4", error) from error
+    errors = (OSError, ValueError, KeyError)
+    with reading(path, "NetCDF 4", *errors), xr.open_dataset(path, engine="h5netcdf") as source:
+        dataset = source.load()
     grid, crs = grid_from_text(dataset.attrs.get("block_grid"), path)
     if not {"i", "j", "k", "volume_m3"} <= set(dataset.variables):
         raise unreadable(path, "a block model in NetCDF", "it lacks i, j, k or volume_m3")
-    inside = np.isfinite(dataset["volume_m3"].to_numpy())
-    k, j, i = np.nonzero(inside)
-    order = np.lexsort((k, i, j))
-    k, j, i = k[order], j[order], i[order]
+    k, j, i = np.nonzero(np.isfinite(dataset["volume_m3"].to_numpy()))
     columns: dict[str, Any] = {
         axis: dataset[axis].to_numpy()[rows].astype(np.int32) for axis, rows in (("i", i), ("j", j), ("k", k))
     }
-    centres = grid.centres(columns["i"], columns["j"], columns["k"])
-    columns |= {name: centres[:, axis] for axis, name in enumerate(PLACE)}
     for name, array in dataset.data_vars.items():
-        if array.dims != ("k", "j", "i"):
-            continue
-        values = array.to_numpy()[k, j, i]
-        if "table_words" in array.attrs:
-            columns[str(name)] = coded_text(values, json.loads(array.attrs["table_words"]))
-        else:
-            kind = str(array.attrs.get("table_dtype", values.dtype))
-            columns[str(name)] = values.astype(kind) if kind != str(values.dtype) else values
-    return model_from(pd.DataFrame(columns), grid, crs, path)
+        if array.dims == ("k", "j", "i"):
+            words = json.loads(array.attrs.get("table_words", "null"))
+            columns[str(name)] = restored(array.to_numpy()[k, j, i], words, array.attrs.get("table_dtype"))
+    return model_from(placed(pd.DataFrame(columns), grid), grid, crs, path)

@@ -20,16 +20,16 @@ from sms_resource.blocks.exchange_common import (
     INDEX,
     PLACE,
     ExchangeError,
-    check_cells,
-    check_model,
-    coded_text,
+    boxed,
     column_unit,
     grid_from_text,
     grid_text,
     is_number,
     model_from,
+    placed,
+    reading,
+    restored,
     text_codes,
-    trimmed,
     unreadable,
 )
 from sms_resource.blocks.exchange_plan import metals_of
@@ -101,9 +101,7 @@ def _data(column: pd.Series, where: NDArray[np.int64] | None, count: int, locati
 def _blocks(model: BlockModel) -> Any:
     import omf
 
-    frame = check_model(model)
-    grid, index, _ = trimmed(model)
-    check_cells(grid, MOST_CELLS, "Open Mining Format")
+    frame, grid, index, _ = boxed(model, MOST_CELLS, "Open Mining Format")
     where = np.ravel_multi_index((index[:, 0], index[:, 1], index[:, 2]), grid.shape)
     geometry = omf.VolumeGridGeometry(
         tensor_u=np.full(grid.shape[0], grid.size[0]), tensor_v=np.full(grid.shape[1], grid.size[1]),
@@ -193,12 +191,9 @@ def read_project(path: str | Path) -> Any:
     path = Path(path)
     if not path.is_file():
         raise unreadable(path, "Open Mining Format 1", "it is not a file")
-    try:
-        with path.open("rb") as file:
-            return omf.OMFReader(file).get_project()
-    except (OSError, ValueError, KeyError, TypeError, AttributeError, struct.error, zlib.error,
-            properties.ValidationError) as error:  # fmt: skip
-        raise unreadable(path, "Open Mining Format 1", error) from error
+    errors = (OSError, ValueError, KeyError, TypeError, AttributeError, struct.error, zlib.error)
+    with reading(path, "Open Mining Format 1", *errors, properties.ValidationError), path.open("rb") as file:
+        return omf.OMFReader(file).get_project()
 
 
 def read_omf(path: str | Path) -> BlockModel:
@@ -239,15 +234,7 @@ def read_omf(path: str | Path) -> BlockModel:
             "exchange-columns", "the blocks have no attribute i, j, k", "Write the file with write_omf", path
         )
     inside = np.isfinite(arrays["i"])
-    columns: dict[str, Any] = {}
-    for name, values in arrays.items():
-        kept = values[inside]
-        if name in words:
-            columns[name] = coded_text(kept, words[name])
-        else:
-            columns[name] = kept.astype(kinds.get(name, "float64"))
-    frame = pd.DataFrame(columns).sort_values(["j", "i", "k"], ignore_index=True)
-    centres = grid.centres(frame["i"], frame["j"], frame["k"])
-    for axis, name in enumerate(PLACE):
-        frame.insert(3 + axis, name, centres[:, axis])
-    return model_from(frame, grid, crs, path)
+    frame = pd.DataFrame(
+        {name: restored(values[inside], words.get(name), kinds.get(name)) for name, values in arrays.items()}
+    )
+    return model_from(placed(frame, grid), grid, crs, path)

@@ -15,8 +15,8 @@ from sms_resource.blocks.exchange_common import (
     check_model,
     column_unit,
     is_number,
+    reading,
     trimmed,
-    unreadable,
 )
 from sms_resource.blocks.model import BlockModel
 from sms_resource.units import column_element, unit_label
@@ -157,12 +157,9 @@ def read_plan_raster(path: str | Path) -> pd.DataFrame:
     import rasterio
 
     path = Path(path)
-    try:
-        with rasterio.open(path) as source:
-            image = source.read(1, masked=True)
-            transform, name, unit, crs = source.transform, source.descriptions[0], source.units[0], source.crs
-    except rasterio.errors.RasterioError as error:
-        raise unreadable(path, "a raster", error) from error
+    with reading(path, "a raster", rasterio.errors.RasterioError), rasterio.open(path) as source:
+        image = source.read(1, masked=True)
+        transform, name, unit, crs = source.transform, source.descriptions[0], source.units[0], source.crs
     values = np.ma.filled(image.astype(float), math.nan)
     row, column = np.nonzero(np.isfinite(values))
     if row.size == 0:

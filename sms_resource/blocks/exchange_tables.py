@@ -18,7 +18,7 @@ from sms_resource.blocks.exchange_common import (
     header,
     is_number,
     model_from,
-    unreadable,
+    reading,
 )
 from sms_resource.blocks.grid import BlockGrid
 from sms_resource.blocks.model import BlockModel
@@ -68,10 +68,8 @@ def read_parquet(path: str | Path, *, grid: BlockGrid | None = None, crs: str | 
     import pyarrow.parquet as pq
 
     path = Path(path)
-    try:
+    with reading(path, "Parquet", OSError, pa.ArrowInvalid, pa.ArrowTypeError):
         table = pq.read_table(str(path))
-    except (OSError, pa.ArrowInvalid, pa.ArrowTypeError) as error:
-        raise unreadable(path, "Parquet", error) from error
     if grid is None:
         text = (table.schema.metadata or {}).get(GRID_KEY)
         beside = path.parent / "layers" / "block_grid.json"
@@ -119,10 +117,8 @@ def read_csv(path: str | Path, *, grid: BlockGrid | None = None, crs: str | None
         If the file is missing, broken, empty, or says nothing of its grid.
     """
     path = Path(path)
-    try:
+    with reading(path, "a table of blocks", OSError, ValueError):
         frame = pd.read_csv(path, encoding="utf-8")
-    except (OSError, ValueError, pd.errors.ParserError) as error:
-        raise unreadable(path, "a table of blocks", error) from error
     frame.columns = pd.Index([bare(title) for title in frame.columns])
     if grid is None:
         beside = grid_file(path)

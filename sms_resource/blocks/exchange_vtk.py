@@ -15,14 +15,15 @@ from numpy.typing import NDArray
 
 from sms_resource.blocks.exchange_common import (
     INDEX,
-    check_cells,
+    boxed,
     check_model,
-    coded_text,
     column_unit,
     grid_from_text,
     grid_text,
+    in_order,
     is_number,
     model_from,
+    restored,
     text_codes,
     trimmed,
     unreadable,
@@ -78,9 +79,7 @@ def to_image(model: BlockModel) -> Any:
     import pyvista as pv
     from vtkmodules.vtkCommonMath import vtkMatrix3x3
 
-    frame = check_model(model)
-    grid, index, _ = trimmed(model)
-    check_cells(grid, MOST_CELLS, "A .vti image")
+    frame, grid, index, _ = boxed(model, MOST_CELLS, "A .vti image")
     image = pv.ImageData(
         dimensions=tuple(count + 1 for count in grid.shape), spacing=grid.size, origin=grid.origin
     )
@@ -152,17 +151,11 @@ def read_vtk(path: str | Path) -> BlockModel:
     legend, kinds = json.loads(fields["legend"] or "{}"), json.loads(fields["kinds"] or "{}")
     data = {name: np.asarray(mesh.cell_data[name]) for name in mesh.cell_data}
     keep = data.pop("inside", np.ones(mesh.n_cells, dtype=np.uint8)).astype(bool)
-    columns: dict[str, Any] = {}
-    for name, values in data.items():
-        if name in legend:
-            columns[name] = coded_text(values[keep], legend[name])
-        elif name in kinds and str(values.dtype) != kinds[name]:
-            columns[name] = values[keep].astype(kinds[name])
-        else:
-            columns[name] = values[keep]
-    frame = pd.DataFrame(columns)
+    frame = pd.DataFrame(
+        {name: restored(values[keep], legend.get(name), kinds.get(name)) for name, values in data.items()}
+    )
     if set(INDEX) <= set(frame):  # an image has its own order
-        frame = frame.sort_values(["j", "i", "k"], ignore_index=True)
+        frame = in_order(frame)
     return model_from(frame, grid, crs, path)
 
 
