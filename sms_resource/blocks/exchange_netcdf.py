@@ -191,7 +191,7 @@ def read_netcdf(path: str | Path) -> BlockModel:
     import xarray as xr
 
     path = Path(path)
-    errors = (OSError, ValueError, KeyError)
+    errors = (OSError, ValueError, KeyError, RuntimeError)  # HDF5 answers to some damage with the last
     with reading(path, "NetCDF 4", *errors), xr.open_dataset(path, engine="h5netcdf") as source:
         dataset = source.load()
     grid, crs = grid_from_text(dataset.attrs.get("block_grid"), path)

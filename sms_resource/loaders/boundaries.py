@@ -11,7 +11,6 @@ import numpy as np
 import pandas as pd
 
 from sms_resource.findings import Findings
-from sms_resource.loaders.headers import find_header
 from sms_resource.loaders.parsing import parse_numbers
 from sms_resource.loaders.places import report_rows
 from sms_resource.loaders.shapes import AREAS, layer_columns, read_shapes
@@ -66,7 +65,7 @@ def load_outline(source: LayerSource) -> tuple[gpd.GeoDataFrame | None, Findings
     Parameters
     ----------
     source : LayerSource
-        Its ``columns`` are not used: a name is optional, and stands under ``name``.
+        Its ``columns`` may map ``name``.
 
     Returns
     -------
@@ -74,7 +73,7 @@ def load_outline(source: LayerSource) -> tuple[gpd.GeoDataFrame | None, Findings
         geometry (polygons, 2D), name, source_row.
     findings : Findings
     """
-    frame, _, findings = _read(source)
+    frame, found, findings = _read(source, ("name",))
     if frame is None:
         return None, findings
     frame = _close_lines(frame, source.name, findings)
@@ -84,8 +83,7 @@ def load_outline(source: LayerSource) -> tuple[gpd.GeoDataFrame | None, Findings
     out = frame[areas].reset_index(drop=True)
     if out.empty:
         return None, findings
-    names = find_header("name", [str(column) for column in out.columns])
-    out["name"] = _text(out, names[0] if names else None)
+    out["name"] = _text(out, found.get("name"))
     return out[["name", "source_row", "geometry"]], findings
 
 

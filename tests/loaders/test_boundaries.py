@@ -30,6 +30,16 @@ def save(
     return path
 
 
+def test_the_name_of_an_outline_may_be_mapped_and_an_unknown_column_is_an_error(tmp_path: Path) -> None:
+    path = save(tmp_path / "o.gpkg", [SQUARE], label=["A"])
+    outline, found = load_outline(LayerSource(path, crs=CRS, columns={"name": "label"}))
+    assert outline is not None and list(outline["name"]) == ["A"] and not found.errors
+    _, found = load_outline(LayerSource(path, crs=CRS, columns={"name": "lable"}))
+    assert [(item.code, item.column) for item in found.errors] == [("column-missing", "lable")]
+    _, found = load_outline(LayerSource(path, crs=CRS, columns={"colour": "label"}))
+    assert [item.code for item in found.errors] == ["mapping-unknown"]
+
+
 @pytest.mark.parametrize("suffix", [".gpkg", ".shp", ".geojson", ".fgb"])
 def test_an_outline_in_every_format(tmp_path: Path, suffix: str) -> None:
     path = save(tmp_path / f"o{suffix}", [SQUARE], name=["mound"])
