@@ -7,6 +7,7 @@ nothing depends on it. Only the standard library is imported here: a run starts 
 
 from __future__ import annotations
 
+import contextlib
 import importlib
 import os
 import pickle
@@ -22,6 +23,8 @@ from typing import IO, Any, TypeVar
 
 T = TypeVar("T")
 _PROGRAM = "import sys; sys.path[:] = {path!r}; from sms_resource import second; second.serve()"
+# Sums of threaded products depend on the number of threads, and results must not; the matrices here are small.
+ONE_THREAD = {f"{name}_THREADS": "1" for name in ("OPENBLAS_NUM", "MKL_NUM", "BLIS_NUM", "VECLIB_MAXIMUM")}
 # What a pipe to a process that ended, or what it sent last, may raise.
 _BROKEN = (
     OSError, pickle.UnpicklingError, AttributeError, ImportError, IndexError, KeyError, TypeError, ValueError, EOFError,
@@ -40,7 +43,7 @@ class SecondInterpreter:
         self.owner = os.getpid()
         self.told: set[str] = set()  # what a caller need not tell it again
         self._child = subprocess.Popen(
-            [sys.executable, "-c", _PROGRAM.format(path=sys.path)],
+            [sys.executable, "-c", _PROGRAM.format(path=sys.path)], env={**os.environ, **ONE_THREAD},
             stdin=subprocess.PIPE, stdout=subprocess.PIPE, stderr=subprocess.DEVNULL,
         )  # fmt: skip
         self._asked: queue.SimpleQueue[tuple[bytes, Future[Any]]] = queue.SimpleQueue()
@@ -57,6 +60,10 @@ class SecondInterpreter:
         answer: Future[Any] = Future()
         self._asked.put((message, answer))
         return answer
+
+    def stop(self) -> None:
+        """Ask the child to end; it takes away what it has put on the disk."""
+        self._child.terminate()
 
     def close(self) -> None:
         """End the child, whatever it is doing."""
@@ -100,6 +107,12 @@ def start() -> SecondInterpreter | None:
         except OSError:
             return None
     return _known
+
+
+def stop() -> None:
+    """Ask the second interpreter to end, where there is one."""
+    if _known is not None and _known.alive:
+        _known.stop()
 
 
 def ask(task: str, *arguments: Any) -> Future[Any] | None:
@@ -162,8 +175,10 @@ def serve() -> None:
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # the first one is asked whether to stop
     requests, replies = sys.stdin.buffer, os.fdopen(os.dup(1), "wb")
     os.dup2(os.open(os.devnull, os.O_WRONLY), 1)  # what a library prints is no reply
-    while serve_one(requests, replies):
-        pass
+    signal.signal(signal.SIGTERM, lambda *_: sys.exit())
+    with contextlib.suppress(SystemExit):
+        while serve_one(requests, replies):
+            pass
     for thread in threading.enumerate():
         if thread is not threading.current_thread():
             thread.join()  # it takes away what it has put on the disk

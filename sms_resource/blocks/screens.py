@@ -278,7 +278,7 @@ def _waterfall(
     rows.append({"step": "body", "what": "the whole body"} | {f"taken_{name}": 0.0 for name in total}
                 | {f"remaining_{name}": value for name, value in total.items()})  # fmt: skip
     for name, what, share in steps:
-        taken = {quantity: float(values @ share) for quantity, values in per_column.items()}
+        taken = {quantity: float(np.sum(values * share)) for quantity, values in per_column.items()}
         remaining = {quantity: remaining[quantity] - taken[quantity] for quantity in taken}
         rows.append({"step": name, "what": what} | {f"taken_{q}": v for q, v in taken.items()}
                     | {f"remaining_{q}": v for q, v in remaining.items()})  # fmt: skip

@@ -132,10 +132,11 @@ def skins(
     for other, part in inside:
         skin += part * spared[other]
     outer = float(outside.sum())
-    cut = {name: float(values @ (volume * share)) for name, values in per_m3.items()}
-    loss = {name: float(values @ lost) for name, values in per_m3.items()}
+    # Sums, not products of vectors, which depend on how many threads the linear algebra has.
+    cut = {name: float(np.sum(values * (volume * share))) for name, values in per_m3.items()}
+    loss = {name: float(np.sum(values * lost)) for name, values in per_m3.items()}
     dilution = {
-        name: float(values @ (taken * spared)) + outer * rock[name] for name, values in per_m3.items()
+        name: float(np.sum(values * (taken * spared))) + outer * rock[name] for name, values in per_m3.items()
     }
     delivered = {name: cut[name] - loss[name] + dilution[name] for name in cut}
     rows = [_row(step, sums, metals) for step, sums in

@@ -191,7 +191,7 @@ class _Bodies:
         field = weights @ values + math.sqrt(sill) * (lower @ rng.standard_normal(len(lower)))
         if self.positive:
             field = np.maximum(field, 0.0) ** self.system.sets[pick].parameters.root
-        return float(self.quadrature.areas @ np.maximum(field + self.quadrature.offset, 0.0))
+        return float(np.sum(self.quadrature.areas * np.maximum(field + self.quadrature.offset, 0.0)))
 
 
 def _likely(sets: list[FittedSet], current: Array, scale: float) -> list[FittedSet]:

@@ -10,9 +10,10 @@ from typing import Annotated, Any, NoReturn
 
 import typer
 
-from sms_resource import __version__
+from sms_resource import __version__, second
 from sms_resource.cli.printing import (
     Lines,
+    Stoppable,
     console_of,
     print_findings,
     print_guesses,
@@ -222,7 +223,7 @@ def _run(
     loaded = _load(study, as_json)
     _warn_of_cache(cache)
     console = console_of(stderr=as_json)
-    progress = Silent() if as_json or quiet else Lines(console)
+    progress = Stoppable(Silent() if as_json or quiet else Lines(console))
     try:
         result = run_study(
             loaded, out, progress=progress, threads=threads, cache=cache, scenarios=scenarios, against=against
@@ -234,7 +235,11 @@ def _run(
     except NotResultsError as error:
         _fail_usage(f"{error}; give another folder with --out")
     except OSError as error:
-        _fail_usage(f"the results cannot be written: {error}")
+        # Without a file's name it is no file that failed: a library could not be loaded, or a thread not started.
+        what = "the results cannot be written" if error.filename else "the run stopped, memory may be short"
+        _fail_usage(f"{what}: {error}")
+    finally:
+        progress.close()
     if as_json:
         print_json(result.findings.to_records())
     else:
@@ -359,9 +364,11 @@ def _leave_faulty(findings: Any, as_json: bool) -> NoReturn:
 def main() -> None:
     """Run the command line; a fault of the user never shows a traceback."""
     code: Any = DONE
-    gc.set_threshold(
-        50_000, 20, 50
-    )  # a command makes little litter, and looking for it took a tenth of a second
+    gc.set_threshold(50_000, 20, 50)  # little litter is made, and looking for it took a tenth of a second
+    os.environ.update(second.ONE_THREAD)
+    for name in ("stdout", "stderr"):  # whoever closed one wants no words on it
+        if getattr(sys, name) is None:
+            setattr(sys, name, os.fdopen(os.open(os.devnull, os.O_WRONLY), "w"))
     try:
         try:
             app()
@@ -375,5 +382,6 @@ def main() -> None:
         sys.stderr.flush()
     except BrokenPipeError:
         code = DONE  # the reader has seen enough
+    second.stop()
     # Everything is written: the system takes the memory back at once, the interpreter would need a third of a second.
     os._exit(code if isinstance(code, int) else DONE if code is None else FAULTY)

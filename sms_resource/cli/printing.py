@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import json
+import os
+import signal
 import sys
 from typing import Any
 
@@ -17,7 +19,46 @@ def console_of(stderr: bool = False) -> Any:
     """A console as wide as the terminal; 110 characters where nobody watches."""
     from rich.console import Console
 
-    return Console(stderr=stderr, soft_wrap=False, width=None if sys.stdout.isatty() else 110)
+    class Patient(Console):
+        """A console that falls silent where its reader has gone; the work goes on."""
+
+        def on_broken_pipe(self) -> None:
+            """Print nothing any more."""
+            self.quiet = True
+            os.dup2(os.open(os.devnull, os.O_WRONLY), self.file.fileno())
+
+    return Patient(stderr=stderr, soft_wrap=False, width=None if sys.stdout.isatty() else 110)
+
+
+class Stoppable:
+    """Progress that stops the run once it is asked to, even where a library has swallowed the exception."""
+
+    def __init__(self, inner: Any) -> None:
+        self.inner = inner
+        self.asked = False
+        self._before = signal.signal(signal.SIGINT, self._ask)
+
+    def close(self) -> None:
+        """Give the signal back."""
+        signal.signal(signal.SIGINT, self._before)
+
+    def _ask(self, *_: Any) -> None:
+        self.asked = True
+        raise KeyboardInterrupt
+
+    def started(self, name: str, label: str) -> None:
+        """Hand on, or stop."""
+        self._look()
+        self.inner.started(name, label)
+
+    def finished(self, name: str, seconds: float, detail: str, from_cache: bool) -> None:
+        """Hand on, or stop; the last stage is told before the results take their place."""
+        self._look()
+        self.inner.finished(name, seconds, detail, from_cache)
+
+    def _look(self) -> None:
+        if self.asked:
+            raise KeyboardInterrupt
 
 
 class Lines:

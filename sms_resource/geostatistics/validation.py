@@ -143,7 +143,7 @@ def regression(x: Array, y: Array) -> tuple[float, float, float]:
     if len(x) < 3:
         return math.nan, math.nan, math.nan
     dx, dy = x - x.mean(), y - y.mean()
-    sxx, syy, sxy = float(dx @ dx), float(dy @ dy), float(dx @ dy)
+    sxx, syy, sxy = (float(np.sum(a * b)) for a, b in ((dx, dx), (dy, dy), (dx, dy)))
     tiny = 1e-24 * len(x)
     if sxx <= tiny * float(np.max(np.abs(x))) ** 2:
         return math.nan, math.nan, math.nan

@@ -9,6 +9,7 @@ from sms_resource.findings import Findings
 from sms_resource.loaders.places import header_of, report_rows
 from sms_resource.loaders.source import TableSource
 from sms_resource.loaders.table import load_table
+from sms_resource.loaders.tables import BELOW_DETECTION, MEASURED
 from sms_resource.units import ELEMENTS, element_column, grade_factor, known_unit
 
 _CONVERTED = ("value", "value_limit", "original_value", "original_value_limit", "expected", "expected_sd")
@@ -82,5 +83,8 @@ def _convert(frame: pd.DataFrame, source: TableSource, findings: Findings) -> No
                 **where,
             )
         else:
+            limit = source.detection_limits.get(element, source.detection_limits.get(own, np.nan))
+            open_ = group["value_limit"].isna() & group["value_status"].isin((MEASURED, BELOW_DETECTION))
+            frame.loc[group.index[open_], "value_limit"] = limit
             factor = grade_factor(chosen, ELEMENTS[element])
             frame.loc[group.index, list(_CONVERTED)] *= factor

@@ -9,6 +9,7 @@ from sms_resource.reporting.elements import Block, Bullets, Heading, Paragraph, 
 from sms_resource.reporting.summaries import (
     batches_shown,
     blanks_by_element,
+    elements_with_unit,
     missing_checks,
     named_elements,
     rates_shown,
@@ -44,7 +45,7 @@ def laboratory(data: ReportData) -> list[Block]:
     blocks.append(Slot(("control_charts",)))
     if lab.materials is not None and len(lab.materials):
         with_table(
-            blocks, named_elements(lab.materials), "Reference materials: bias and its interval", most=30,
+            blocks, elements_with_unit(lab.materials), "Reference materials: bias and its interval", most=30,
             columns=("element", "material", "n", "expected", "mean", "bias_pct", "bias_low_pct", "bias_high_pct", "cv_pct",
                      "warnings", "failures"),
             labels={"bias_low_pct": "Bias, lower limit (%)", "bias_high_pct": "Bias, upper limit (%)", "cv_pct": "CV (%)",
@@ -52,7 +53,7 @@ def laboratory(data: ReportData) -> list[Block]:
         )  # fmt: skip
     else:
         with_table(
-            blocks, named_elements(references_by_material(lab.references)), "Reference materials", most=30,
+            blocks, elements_with_unit(references_by_material(lab.references)), "Reference materials", most=30,
             labels={"mean": "Mean of the results"},
         )  # fmt: skip
     bad, said = batches_shown(lab.batches)
@@ -63,7 +64,7 @@ def laboratory(data: ReportData) -> list[Block]:
         labels={"mean_z": "Mean deviation (SD)", "adjusted_p_value": "p after allowing for all"},
     )  # fmt: skip
     blocks.append(Slot(("blanks",)))
-    with_table(blocks, named_elements(blanks_by_element(lab.blanks)), "Blanks", most=20)
+    with_table(blocks, elements_with_unit(blanks_by_element(lab.blanks)), "Blanks", most=20)
     blocks.append(Slot(("duplicates",)))
     with_table(
         blocks, named_elements(lab.duplicates), "Duplicates (statistics named in the heads)", most=30, labels=PAIRS
@@ -81,7 +82,15 @@ def laboratory(data: ReportData) -> list[Block]:
 
 
 def _blind_to_carry_over(blanks: pd.DataFrame | None) -> tuple[str, ...]:
-    """A sentence where no blank names the sample before it."""
-    if blanks is None or not has(blanks, "grade_before") or blanks["grade_before"].notna().any():
+    """A sentence where no blank, or none of some element, names a sample before it whose grade is known."""
+    if blanks is None or not has(blanks, "grade_before", "element"):
         return ()
-    return ("Carry-over is not judged: no blank names the sample before it.",)
+    known = blanks["grade_before"].notna().groupby(blanks["element"], sort=False).any()
+    blind = [str(name).capitalize() for name in known.index[~known]]
+    if not blind:
+        return ()
+    if len(blind) == len(known):
+        return ("Carry-over is not judged: no blank names the sample before it.",)
+    return (
+        f"Carry-over is not judged for {', '.join(blind)}: no blank of it names a sample with a known grade.",
+    )

@@ -8,6 +8,7 @@ import pandas as pd
 
 from sms_resource.reporting.data import has
 from sms_resource.reporting.elements import number_text
+from sms_resource.units import ELEMENTS, element_column, element_label
 
 ASPECTS = {
     "references": "reference materials that can be judged", "blanks": "blanks that can be judged",
@@ -116,6 +117,19 @@ def named_elements(frame: pd.DataFrame | None) -> pd.DataFrame | None:
     if frame is None or not has(frame, "element"):
         return frame
     return frame.assign(element=[str(name).capitalize() for name in frame["element"]])
+
+
+def elements_with_unit(frame: pd.DataFrame | None) -> pd.DataFrame | None:
+    """Elements with the unit that their grades are in: ``cu`` becomes ``Cu (%)``; unknown ones by their name."""
+    if frame is None or not has(frame, "element"):
+        return frame
+    known = {str(name).lower() for name in frame["element"]} & set(ELEMENTS)
+    return frame.assign(
+        element=[
+            element_label(element_column(str(name))) if str(name).lower() in known else str(name).capitalize()
+            for name in frame["element"]
+        ]
+    )
 
 
 def batches_shown(frame: pd.DataFrame | None) -> tuple[pd.DataFrame | None, str]:

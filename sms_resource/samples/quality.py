@@ -159,7 +159,7 @@ def laboratory_quality(
             findings.warning(
                 "quality-missing",
                 f"{row['element'].capitalize()}: {row['figures']}",
-                "State the detection limits of the laboratory.",
+                "State detection_limits in [data.laboratory].",
             )
         none = gone.loc[gone["figures"] == "", "element"]
         if len(none):
@@ -238,7 +238,10 @@ def _blanks(
     for name in dict.fromkeys(rows["element"]):
         known = numbers(table.loc[table["element"] == name], "value_limit")
         status = numbers(table.loc[table["element"] == name], "value_status")
-        known = known[(status == 1) & np.isfinite(known)]
+        below, stated = known[(status == 1) & np.isfinite(known)], known[(status != 2) & np.isfinite(known)]
+        known = (
+            below if len(below) else stated
+        )  # the study may state a limit for results that are all above it
         limits[name] = float(given.get(name, known.max() if len(known) else np.nan))
     detection = np.array([limits[name] for name in rows["element"]], dtype=np.float64)
     originals = _originals(table, assays)

@@ -8,14 +8,14 @@ import pandas as pd
 from sms_resource.findings import Findings
 from sms_resource.samples.intervals import numbers
 from sms_resource.samples.reference_materials import BIAS_CAUTION_PCT, BIAS_FAILED_PCT, LEAST_RESULTS
-from sms_resource.units import chance
+from sms_resource.units import chance, element_column, unit_label
 
 NAMED = {
     "references": "reference materials", "blanks": "blanks", "duplicates": "duplicates",
     "checks": "results of a check laboratory",
 }  # fmt: skip
 ASPECTS = ("references", "blanks", "duplicates", "checks")
-
+FEW_BLANKS = 8  # under so many a rank correlation says nothing (common practice, no source)
 
 Line = tuple[str, str, str, str]
 
@@ -69,36 +69,51 @@ def reference_verdict(name: str, materials: pd.DataFrame, batches: pd.DataFrame,
 
 def blank_verdict(name: str, blanks: pd.DataFrame, findings: Findings) -> Line:
     """Verdict on an element from its blanks, with carry-over from the sample before."""
-    from scipy.stats import spearmanr
-
     mine = blanks.loc[blanks["element"] == name]
-    part = mine.loc[mine["judged"]]
+    if not len(mine):
+        return name, ASPECTS[1], "missing", ""
+    part, unit = mine.loc[mine["judged"]], unit_label(element_column(name))
+    carried, said = _carry_over(name, mine, findings)
     if not len(part):
-        text = f"{len(mine)} blanks, and no detection limit to judge them by" if len(mine) else ""
-        return name, ASPECTS[1], "missing", text
+        text = f"{len(mine)} blanks, and no detection limit to judge them by{said}"
+        return name, ASPECTS[1], "caution" if carried else "missing", text
     failed = int(part["failed"].sum())
-    text = f"{len(part)} blanks, {failed} over {part['limit'].iloc[0]:g}"
     for row in part.loc[part["failed"]].to_dict("records"):
-        before = f", after a sample of {row['grade_before']:g}" if np.isfinite(row["grade_before"]) else ""
+        before = (
+            f", after a sample of {row['grade_before']:.3g} {unit}"
+            if np.isfinite(row["grade_before"])
+            else ""
+        )
         findings.warning(
             "quality-blank-fail",
-            f"{name.capitalize()}: blank {row['sample_id']} holds {row['value']:g}, over {row['limit']:g}{before}",
+            f"{name.capitalize()}: blank {row['sample_id']} holds {row['value']:.3g} {unit}, over {row['limit']:.3g} "
+            f"{unit}{before}",
             "Look for carry-over from the sample before, and for mixed labels.",
             row=row.get("source_row"),
         )
-    pair = part.loc[np.isfinite(numbers(part, "grade_before"))]
-    if len(pair) >= 8 and pair["value"].nunique() > 1 and pair["grade_before"].nunique() > 1:
-        answer = spearmanr(pair["grade_before"], pair["value"])
-        text += f", rank correlation with the grade before {answer.statistic:.2f} ({chance(answer.pvalue)})"
-        if answer.pvalue < 0.01 and answer.statistic > 0:
-            findings.warning(
-                "quality-carry-over",
-                f"{name.capitalize()}: blanks follow the grade of the sample before: rank correlation "
-                f"{answer.statistic:.2f}, {chance(answer.pvalue)}, {len(pair)} blanks",
-                "Ask the laboratory to clean between samples.",
-            )
-    share = failed / len(part)
-    return name, ASPECTS[1], "good" if failed == 0 else "caution" if share <= 0.05 else "failed", text
+    verdict = "failed" if failed / len(part) > 0.05 else "caution" if failed or carried else "good"
+    text = f"{len(part)} blanks, {failed} over {part['limit'].iloc[0]:g} {unit}{said}"
+    return name, ASPECTS[1], verdict, text
+
+
+def _carry_over(name: str, blanks: pd.DataFrame, findings: Findings) -> tuple[bool, str]:
+    """Whether blanks follow the grade of the sample before them, and the test in words; it needs no limit."""
+    from scipy.stats import spearmanr
+
+    pair = blanks.loc[np.isfinite(numbers(blanks, "grade_before")) & np.isfinite(numbers(blanks, "value"))]
+    if len(pair) < FEW_BLANKS or pair["value"].nunique() < 2 or pair["grade_before"].nunique() < 2:
+        return False, ""
+    answer = spearmanr(pair["grade_before"], pair["value"])
+    said = f"rank correlation with the grade before {answer.statistic:.2f} ({chance(answer.pvalue)})"
+    if not (answer.pvalue < 0.01 and answer.statistic > 0):
+        return False, f", {said}"
+    findings.warning(
+        "quality-carry-over",
+        f"{name.capitalize()}: blanks follow the grade of the sample before: rank correlation "
+        f"{answer.statistic:.2f}, {chance(answer.pvalue)}, {len(pair)} blanks",
+        "Ask the laboratory to clean between samples.",
+    )
+    return True, f", carry-over: {said}"
 
 
 def duplicate_verdict(name: str, duplicates: pd.DataFrame, findings: Findings) -> Line:

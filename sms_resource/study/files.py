@@ -34,7 +34,8 @@ class TableFile(Section):
     )
     header_row: int = key(1, "Row of the column names.", ge=1, decision=False)
     detection_limits: dict[str, float] = key(
-        {}, 'Detection limit of each element in the file\'s unit, for results that say only "bdl".'
+        {},
+        'Detection limit of each element in the file\'s unit, for results that say only "bdl" and to judge blanks by.',
     )
     constants: dict[str, str | float] = key(
         {}, 'Values for columns that the file lacks, such as method = "laboratory".'

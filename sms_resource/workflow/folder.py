@@ -106,8 +106,13 @@ def _exchange(one: Path, other: Path) -> bool:
 
 def _sync(folder: Path) -> None:
     """Ask the system to put every file of a folder on the disk."""
-    with ThreadPoolExecutor(8) as pool:  # a disk waits for many files no longer than for one
-        list(pool.map(_sync_file, [path for path in folder.rglob("*") if path.is_file()]))
+    files = [path for path in folder.rglob("*") if path.is_file()]
+    try:
+        with ThreadPoolExecutor(8) as pool:  # a disk waits for many files no longer than for one
+            list(pool.map(_sync_file, files))
+    except RuntimeError:  # no thread can be started
+        for path in files:
+            _sync_file(path)
 
 
 def _sync_file(path: Path) -> None:

@@ -135,6 +135,16 @@ def test_laboratory_results_in_their_own_units(tmp_path: Path) -> None:
     assert list(frame["sequence"]) == [1, 2, 3]
 
 
+def test_detection_limits_of_the_study_are_in_the_unit_of_the_row(tmp_path: Path) -> None:
+    frame, found = laboratory(
+        tmp_path,
+        "kind,element,value,unit\nblank,Cu,150,ppm\nblank,Cu,bdl,ppm\nblank,Cu,<80,ppm\nblank,Zn,9,ppm\n",
+        detection_limits={"cu": 100.0},
+    )
+    assert not found.has_errors
+    np.testing.assert_allclose(frame["value_limit"], [0.01, 0.01, 0.008, np.nan])
+
+
 def test_the_unit_of_the_laboratory_may_stand_in_the_study_or_the_header(tmp_path: Path) -> None:
     frame, found = laboratory(tmp_path, "kind,element,value\nblank,Au,10\n", units={"au": "ppb"})
     assert frame["value"][0] == pytest.approx(0.01) and not found.has_errors

@@ -202,7 +202,7 @@ def test_reference_materials_carry_their_interval_and_bad_batches_are_named(data
     assert any("1 accused, 1 good" in text for text in said)
 
 
-@pytest.mark.parametrize(("before", "told"), [([np.nan, np.nan], 1), ([3.0, np.nan], 0)])
+@pytest.mark.parametrize(("before", "told"), [([np.nan, np.nan], 1), ([3.0, np.nan], 1), ([3.0, 2.0], 0)])
 def test_carry_over_that_cannot_be_judged_is_told_once(
     data: ReportData, before: list[float], told: int
 ) -> None:

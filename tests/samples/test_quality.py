@@ -280,3 +280,21 @@ def test_no_inserts_at_all() -> None:
     assert set(quality.verdicts["verdict"]) == {"missing"}
     assert len(quality.verdicts) == 8
     assert laboratory_quality(empty).verdicts.empty
+
+
+def test_carry_over_under_the_limit_is_a_caution_and_needs_no_limit() -> None:
+    before = np.linspace(1.0, 9.0, 12)
+    assays = pd.DataFrame({"sample_id": [f"S{n}" for n in range(12)], "cu_pct": before})
+    rows = pd.DataFrame({"value": 0.01 + 0.003 * before, "original_sample_id": [f"S{n}" for n in range(12)]})
+    for limits, said in (({"cu": 0.01}, "0 over 0.05 %"), (None, "no detection limit")):
+        quality = laboratory_quality(_long(rows, "blank"), assays, detection_limits=limits)
+        line = quality.verdicts.set_index("aspect").loc["blanks"]
+        assert line["verdict"] == "caution" and said in line["figures"], line["figures"]
+        assert "carry-over: rank correlation with the grade before 1.00 (p < 0.001)" in line["figures"]
+        assert "quality-carry-over" in codes(quality.findings)
+
+
+def test_a_limit_that_the_study_states_serves_blanks_that_all_hold_metal() -> None:
+    rows = _long(pd.DataFrame({"value": [0.01, 0.02]}), "blank").assign(value_status=0, value_limit=0.01)
+    line = laboratory_quality(rows).verdicts.set_index("aspect").loc["blanks"]
+    assert line["verdict"] == "good" and line["figures"] == "2 blanks, 0 over 0.05 %"
