@@ -79,26 +79,54 @@ def holes_agree(mode, first, second):
     return mode == 0 or (mode == 1 and first == second) or (mode == 2 and first != second)
 
 
+@njit(cache=True)
+def separation(x, y, z, i, j):
+    """Components of the separation of two samples, and its square."""
+    dx = x[j] - x[i]
+    dy = y[j] - y[i]
+    dz = z[j] - z[i]
+    return dx, dy, dz, dx * dx + dy * dy + dz * dz
+
+
+@njit(cache=True)
+def add_partners(
+    i, row, both, x, y, z, values, weights, holes, kinds, frames, cosines, bands, modes, edges, lags, reach,
+    slack, measure, out,
+):  # fmt: skip
+    """Add the pairs of sample ``i`` with all later ones to ``out[row]``.
+
+    With ``both`` a pair between two holes is added to the row of the partner's hole too. The other parameters are
+    those of :func:`sum_pairs`.
+    """
+    for j in range(i + 1, x.shape[0]):
+        dx, dy, dz, square = separation(x, y, z, i, j)
+        if dx > reach:
+            break
+        if square > reach * reach or square == 0.0:
+            continue
+        distance = np.sqrt(square)
+        for d in range(kinds.shape[0]):
+            if not holes_agree(modes[d], holes[i], holes[j]):
+                continue
+            inside, along, side, normal = look(
+                dx, dy, dz, distance, kinds[d], frames[d], cosines[d], bands[d, 0], bands[d, 1], slack
+            )
+            if not inside:
+                continue
+            lag = find_lag(distance, edges[d], lags[d])
+            if lag < 0:
+                continue
+            weight, first, second = weights[i] * weights[j], values[i], values[j]
+            add_pair(out[row, d, lag], weight, distance, along, side, normal, first, second, measure)
+            if both and holes[i] != holes[j]:
+                add_pair(out[holes[j], d, lag], weight, distance, along, side, normal, first, second, measure)
+
+
 @njit(parallel=True, cache=True)
 def sum_pairs(
-    x,
-    y,
-    z,
-    values,
-    weights,
-    holes,
-    kinds,
-    frames,
-    cosines,
-    bands,
-    modes,
-    edges,
-    lags,
-    reach,
-    slack,
-    measure,
-    out,
-):
+    x, y, z, values, weights, holes, kinds, frames, cosines, bands, modes, edges, lags, reach, slack,
+    measure, out,
+):  # fmt: skip
     """Sums per group, direction and lag.
 
     Parameters
@@ -122,87 +150,26 @@ def sum_pairs(
     groups = out.shape[0]
     for group in prange(groups):
         for i in range(group, count, groups):
-            for j in range(i + 1, count):
-                dx = x[j] - x[i]
-                if dx > reach:
-                    break
-                dy = y[j] - y[i]
-                dz = z[j] - z[i]
-                square = dx * dx + dy * dy + dz * dz
-                if square > reach * reach or square == 0.0:
-                    continue
-                distance = np.sqrt(square)
-                for d in range(kinds.shape[0]):
-                    if not holes_agree(modes[d], holes[i], holes[j]):
-                        continue
-                    inside, along, side, normal = look(
-                        dx, dy, dz, distance, kinds[d], frames[d], cosines[d], bands[d, 0], bands[d, 1], slack
-                    )
-                    if not inside:
-                        continue
-                    lag = find_lag(distance, edges[d], lags[d])
-                    if lag >= 0:
-                        add_pair(
-                            out[group, d, lag], weights[i] * weights[j], distance, along, side, normal,
-                            values[i], values[j], measure,
-                        )  # fmt: skip
+            add_partners(
+                i, group, False, x, y, z, values, weights, holes, kinds, frames, cosines, bands, modes, edges, lags,
+                reach, slack, measure, out,
+            )  # fmt: skip
 
 
 @njit(cache=True)
 def sum_pairs_by_hole(
-    x,
-    y,
-    z,
-    values,
-    weights,
-    holes,
-    kinds,
-    frames,
-    cosines,
-    bands,
-    modes,
-    edges,
-    lags,
-    reach,
-    slack,
-    measure,
-    out,
-):
+    x, y, z, values, weights, holes, kinds, frames, cosines, bands, modes, edges, lags, reach, slack,
+    measure, out,
+):  # fmt: skip
     """Sums per hole, direction and lag of all pairs in which the hole has a part.
 
     As :func:`sum_pairs`, but ``out`` is (holes, d, k, COLUMNS) and a pair between two holes counts for both.
     """
-    count = x.shape[0]
-    for i in range(count):
-        for j in range(i + 1, count):
-            dx = x[j] - x[i]
-            if dx > reach:
-                break
-            dy = y[j] - y[i]
-            dz = z[j] - z[i]
-            square = dx * dx + dy * dy + dz * dz
-            if square > reach * reach or square == 0.0:
-                continue
-            distance = np.sqrt(square)
-            for d in range(kinds.shape[0]):
-                if not holes_agree(modes[d], holes[i], holes[j]):
-                    continue
-                inside, along, side, normal = look(
-                    dx, dy, dz, distance, kinds[d], frames[d], cosines[d], bands[d, 0], bands[d, 1], slack
-                )
-                if not inside:
-                    continue
-                lag = find_lag(distance, edges[d], lags[d])
-                if lag < 0:
-                    continue
-                weight = weights[i] * weights[j]
-                first = values[i]
-                second = values[j]
-                add_pair(out[holes[i], d, lag], weight, distance, along, side, normal, first, second, measure)
-                if holes[i] != holes[j]:
-                    add_pair(
-                        out[holes[j], d, lag], weight, distance, along, side, normal, first, second, measure
-                    )
+    for i in range(x.shape[0]):
+        add_partners(
+            i, holes[i], True, x, y, z, values, weights, holes, kinds, frames, cosines, bands, modes, edges, lags,
+            reach, slack, measure, out,
+        )  # fmt: skip
 
 
 @njit(cache=True)
@@ -222,12 +189,9 @@ def list_differences(
     count = x.shape[0]
     for i in range(count):
         for j in range(i + 1, count):
-            dx = x[j] - x[i]
+            dx, dy, dz, square = separation(x, y, z, i, j)
             if dx > reach:
                 break
-            dy = y[j] - y[i]
-            dz = z[j] - z[i]
-            square = dx * dx + dy * dy + dz * dz
             if square > reach * reach or square == 0.0 or not holes_agree(mode, holes[i], holes[j]):
                 continue
             distance = np.sqrt(square)
