@@ -14,6 +14,41 @@ TILE = 128
 RUNS = 32
 
 
+# Inlined as written, with whole arrays: as a call, or on slices, the sums take 10 to 40 % longer.
+@njit(cache=True, nogil=True, inline="always")
+def _needed(tile: int, s: int, b: int, shapes: np.ndarray, threshold: np.ndarray) -> float:
+    """Value that a block must reach in one scenario."""
+    return threshold[tile, 0, s] + threshold[tile, 1, s] * shapes[b, 1] + threshold[tile, 2, s] * shapes[b, 2]
+
+
+@njit(cache=True, nogil=True, inline="always")
+def _add_block(
+    run: int,
+    tile: int,
+    b: int,
+    value: np.ndarray,
+    needed: np.ndarray,
+    inside: np.ndarray,
+    quantities: np.ndarray,
+    royalty: np.ndarray,
+    nearness: np.ndarray,
+    sums: np.ndarray,
+) -> None:
+    """Add one block to the sums of one tile, in the scenarios where its value less royalty meets what is needed."""
+    wide = quantities.shape[1]
+    tonnes = quantities[b, 0]
+    for s in range(TILE):
+        x = value[s] - royalty[tile, s] * max(value[s], 0.0)
+        taken = x >= needed[s]
+        inside[s] = 1.0 if taken else 0.0
+        sums[run, tile, wide, s] += tonnes * x if taken else 0.0
+        sums[run, tile, wide + 1, s] += 1.0 if abs(x - needed[s]) <= nearness[tile, s] else 0.0
+    for q in range(wide):
+        quantity = quantities[b, q]
+        for s in range(TILE):
+            sums[run, tile, q, s] += quantity * inside[s]
+
+
 @njit(cache=True, parallel=True, nogil=True)
 def linear_sums(
     grades: np.ndarray,
@@ -43,36 +78,21 @@ def linear_sums(
         Filled: the quantities, then dry tonnes x value, then blocks in doubt. Must come as zeros.
     """
     count, metals = grades.shape
-    wide = quantities.shape[1]
     for run in prange(RUNS):
         value = np.empty(TILE)
         needed = np.empty(TILE)
         inside = np.empty(TILE)
         for tile in range(worth.shape[0]):
             for b in range(run * count // RUNS, (run + 1) * count // RUNS):
-                wet, vessel, lifting = shapes[b, 0], shapes[b, 1], shapes[b, 2]
+                wet = shapes[b, 0]
                 for s in range(TILE):
                     value[s] = -charge[tile, 0, s] - charge[tile, 1, s] * wet
-                    needed[s] = (
-                        threshold[tile, 0, s]
-                        + threshold[tile, 1, s] * vessel
-                        + threshold[tile, 2, s] * lifting
-                    )
+                    needed[s] = _needed(tile, s, b, shapes, threshold)
                 for m in range(metals):
                     grade = grades[b, m]
                     for s in range(TILE):
                         value[s] += worth[tile, m, s] * grade
-                tonnes = quantities[b, 0]
-                for s in range(TILE):
-                    x = value[s] - royalty[tile, s] * max(value[s], 0.0)
-                    taken = x >= needed[s]
-                    inside[s] = 1.0 if taken else 0.0
-                    sums[run, tile, wide, s] += tonnes * x if taken else 0.0
-                    sums[run, tile, wide + 1, s] += 1.0 if abs(x - needed[s]) <= nearness[tile, s] else 0.0
-                for q in range(wide):
-                    quantity = quantities[b, q]
-                    for s in range(TILE):
-                        sums[run, tile, q, s] += quantity * inside[s]
+                _add_block(run, tile, b, value, needed, inside, quantities, royalty, nearness, sums)
 
 
 @njit(cache=True, parallel=True, nogil=True)
@@ -98,7 +118,6 @@ def deducted_sums(
     carrier; the product costs product c. share, worth, by_carrier and flat are (tiles, m, TILE); product (tiles, TILE).
     """
     count, metals = grades.shape
-    wide = quantities.shape[1]
     for run in prange(RUNS):
         value = np.empty(TILE)
         needed = np.empty(TILE)
@@ -106,14 +125,10 @@ def deducted_sums(
         for tile in range(worth.shape[0]):
             for b in range(run * count // RUNS, (run + 1) * count // RUNS):
                 mass = grades[b, carrier]
-                wet, vessel, lifting = shapes[b, 0], shapes[b, 1], shapes[b, 2]
+                wet = shapes[b, 0]
                 for s in range(TILE):
                     value[s] = -charge[tile, 0, s] - charge[tile, 1, s] * wet - product[tile, s] * mass
-                    needed[s] = (
-                        threshold[tile, 0, s]
-                        + threshold[tile, 1, s] * vessel
-                        + threshold[tile, 2, s] * lifting
-                    )
+                    needed[s] = _needed(tile, s, b, shapes, threshold)
                 for m in range(metals):
                     grade = grades[b, m]
                     for s in range(TILE):
@@ -122,14 +137,4 @@ def deducted_sums(
                         least = paid if paid < other else other
                         # written so that a missing grade stays missing
                         value[s] += 0.0 if least < 0.0 else least
-                tonnes = quantities[b, 0]
-                for s in range(TILE):
-                    x = value[s] - royalty[tile, s] * max(value[s], 0.0)
-                    taken = x >= needed[s]
-                    inside[s] = 1.0 if taken else 0.0
-                    sums[run, tile, wide, s] += tonnes * x if taken else 0.0
-                    sums[run, tile, wide + 1, s] += 1.0 if abs(x - needed[s]) <= nearness[tile, s] else 0.0
-                for q in range(wide):
-                    quantity = quantities[b, q]
-                    for s in range(TILE):
-                        sums[run, tile, q, s] += quantity * inside[s]
+                _add_block(run, tile, b, value, needed, inside, quantities, royalty, nearness, sums)
