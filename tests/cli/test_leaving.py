@@ -76,7 +76,7 @@ def test_nothing_runs_on_after_a_stop_while_the_report_is_written(study: Path, t
         for line in run.stdout:
             if line.startswith("classify"):
                 break
-        time.sleep(1.5)
+        time.sleep(0.7)
         children = children_of(run.pid)
         run.send_signal(signal.SIGINT)
         said = run.stderr.read()
