@@ -65,11 +65,6 @@ class SecondInterpreter:
         """Ask the child to end; it takes away what it has put on the disk."""
         self._child.terminate()
 
-    def close(self) -> None:
-        """End the child, whatever it is doing."""
-        self._child.kill()
-        self._child.wait()
-
     def _talk(self) -> None:
         requests, replies = self._child.stdin, self._child.stdout
         assert requests is not None and replies is not None
@@ -144,14 +139,15 @@ class Call:
     arguments: tuple[Any, ...] = ()
     named: Mapping[str, Any] = field(default_factory=dict)
 
+    def make(self) -> Any:
+        """What the function returns; it is called here."""
+        module, _, function = self.function.partition(":")
+        return getattr(importlib.import_module(module), function)(*self.arguments, **self.named)
+
 
 def perform(calls: Mapping[str, Call]) -> dict[str, Any]:
     """What each call returns, by its name; made here, one after another."""
-    made = {}
-    for name, call in calls.items():
-        module, _, function = call.function.partition(":")
-        made[name] = getattr(importlib.import_module(module), function)(*call.arguments, **call.named)
-    return made
+    return {name: call.make() for name, call in calls.items()}
 
 
 class Aside:
@@ -191,7 +187,6 @@ def serve_one(requests: IO[bytes], replies: IO[bytes]) -> bool:
         task, arguments = pickle.load(requests)
     except EOFError:
         return False
-    made = perform({"": Call(task, arguments)})[""]
-    replies.write(pickle.dumps(made, protocol=5))
+    replies.write(pickle.dumps(Call(task, arguments).make(), protocol=5))
     replies.flush()
     return True

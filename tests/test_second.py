@@ -24,8 +24,7 @@ def apart(monkeypatch: pytest.MonkeyPatch) -> Iterator[None]:
     monkeypatch.setattr(second, "_known", None)
     monkeypatch.setattr(second, "processors", lambda: 2)
     yield
-    if second._known is not None:
-        second._known.close()
+    second.stop()
 
 
 def total(values: list[float]) -> float:

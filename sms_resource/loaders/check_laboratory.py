@@ -71,7 +71,13 @@ def _originals(data: LoadedData, file: str | None, findings: Findings) -> None:
         "Write the original's name into original_sample_id.", file=file, column=column,
     )  # fmt: skip
     known = set(data.drill.assays["sample_id"]) | set(data.surface["sample_id"]) | set(frame["sample_id"])
-    lost = pair & ~none & ~np.isin(name.astype(str), np.array(sorted(known), dtype=str))
+    unknown = ~np.isin(name.astype(str), np.array(sorted(known), dtype=str))
+    lost, before = pair & ~none & unknown, (frame["kind"] == "blank").to_numpy() & (name != "") & unknown
+    report_rows(
+        findings, "warning", "original-missing", rows[before],
+        [f"The sample before the blank, “{n}”, is not among the samples." for n in name[before]],
+        "Correct the name; without its grade carry-over is not judged from this blank.", file=file, column=column,
+    )  # fmt: skip
     report_rows(
         findings, "warning", "original-missing", rows[lost],
         [f"The original “{n}” is not among the samples." for n in name[lost]],

@@ -11,7 +11,6 @@ from sms_resource.reporting.summaries import (
     blanks_by_element,
     elements_with_unit,
     missing_checks,
-    named_elements,
     rates_shown,
     references_by_material,
     verdicts_shown,
@@ -67,10 +66,10 @@ def laboratory(data: ReportData) -> list[Block]:
     with_table(blocks, elements_with_unit(blanks_by_element(lab.blanks)), "Blanks", most=20)
     blocks.append(Slot(("duplicates",)))
     with_table(
-        blocks, named_elements(lab.duplicates), "Duplicates (statistics named in the heads)", most=30, labels=PAIRS
+        blocks, elements_with_unit(lab.duplicates), "Duplicates (statistics named in the heads)", most=30, labels=PAIRS
     )  # fmt: skip
     with_table(
-        blocks, named_elements(lab.checks), "Check laboratory (reduced major axis)", most=20, labels=AXIS
+        blocks, elements_with_unit(lab.checks), "Check laboratory (reduced major axis)", most=20, labels=AXIS
     )  # fmt: skip
     with_table(
         blocks, data.evidence.assay_summary, "Assays: below detection, over limit, blank", most=30,

@@ -327,3 +327,21 @@ def test_geometry_uncertainty_of_a_mound(mound: tuple[Body, BlockModel]) -> None
     assert shifted.categories["volume_m3"].sum() == pytest.approx(shifted.volume_m3, rel=1e-9)
     with pytest.raises(ValueError, match="outline_m"):
         body.shifted(outline_m=-500.0)
+
+
+def test_sums_of_skins_do_not_rest_on_products_of_vectors(slab: tuple[Body, BlockModel]) -> None:
+    """To the last bit the sums that NumPy gives; a product of long vectors would go by the threads of the machine."""
+    body, model = slab
+    rng = np.random.default_rng(4)
+    frame = model.frame.assign(cu_pct=rng.lognormal(1.0, 0.8, len(model)))
+    share = rng.random(len(model))
+    made = skins(model.with_frame(frame), body, share, host=Host(2.0), over_cut_m=0.0, metals=["cu_pct"])
+    cut = made.table.set_index("step").loc["cut"]
+    volume = frame["volume_m3"].to_numpy()
+    assert cut["volume_m3"] == np.sum(np.ones(len(volume)) * (volume * share))
+    density = (
+        frame["dry_tonnes"].to_numpy() / volume
+        if "dry_tonnes" in frame
+        else frame["dry_density_tpm3"].to_numpy()
+    )
+    assert cut["dry_tonnes"] == np.sum(density * (volume * share))

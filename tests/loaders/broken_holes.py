@@ -606,6 +606,15 @@ VALUES = [
         "original_sample_id",
     ),
     Case(
+        "blank after an unknown sample",
+        cell("laboratory", 3, "original_sample_id", "X9"),
+        "warning",
+        "original-missing",
+        "laboratory.csv",
+        3,
+        "original_sample_id",
+    ),
+    Case(
         "negative result",
         cell("laboratory", 3, "value", -0.01),
         "error",
